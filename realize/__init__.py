@@ -1,0 +1,1 @@
+"""From a transfer function in s to difference-equation code the firmware can trust."""

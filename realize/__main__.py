@@ -1,0 +1,5 @@
+"""``python -m realize``."""
+
+from realize.cli import main
+
+main()

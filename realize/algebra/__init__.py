@@ -1,0 +1,1 @@
+"""Exact numbers: expressions, polynomials, enclosures, exponentials, roots, rounding."""

@@ -1,0 +1,323 @@
+"""Roots of integer polynomials, isolated rigorously and refined to any number of bits.
+
+Multiplicities are exact (square-free factors), and so are the questions a figure cannot answer: whether a root
+is real, and whether it lies on the imaginary axis. Roots are found by the Ehrlich-Aberth iteration (Aberth,
+Mathematics of Computation 27, 1973) from the Newton polygon's radii (Bini, Numerical Algorithms 13, 1996) in
+fixed-point integers, and enclosed by Smith's discs (Smith, Journal of the ACM 17, 1970): the root nearest to
+``z_i`` lies within ``n |p(z_i)| / prod_j |z_i - z_j|`` wherever the disc meets no other.
+"""
+
+from __future__ import annotations
+
+import cmath
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, field
+from fractions import Fraction
+from functools import lru_cache, partial
+from itertools import pairwise
+from math import floor, isqrt, ldexp, log2, pi, prod
+
+from realize.algebra import polynomial as poly
+
+#: Bits of the first attempt: twice a double's 53, so that two iterations more than a float would need decide
+#: the ordinary case.
+_FIRST_BITS = 128
+
+#: Beyond this a polynomial of the permitted degree (32) with 400-digit coefficients is separated with room to
+#: spare; it is there so that an error in the code above it ends.
+_MOST_BITS = 1 << 17
+
+#: A double carries 53 bits; three more keep its last bit right to within one unit.
+_VALUE_BITS = 56
+
+#: Ehrlich-Aberth converges cubically once separated; clusters and wide spreads take a few dozen steps first.
+_MOST_ITERATIONS = 100
+
+#: Asymmetric start angle: symmetric starting points would stay on the real axis for ever (Aberth 1973).
+_START_ANGLE = 0.7
+
+Disc = tuple[int, int, int]
+
+
+@dataclass(frozen=True)
+class Root:
+    """A real root, or a conjugate pair represented by its member with positive imaginary part.
+
+    Attributes
+    ----------
+    value : complex
+        Right to about one unit in the last place of a double; exactly 0 in a coordinate that is exactly 0.
+    multiplicity : int
+        Exact.
+    enclosure : callable
+        ``enclosure(bits)`` is a disc ``(re, im, rad)`` of integers in units of ``2**-bits`` that holds the
+        root; the radius is at most 2, and coordinates that are exactly 0 are 0.
+    """
+
+    value: complex
+    multiplicity: int
+    enclosure: Callable[[int], Disc] = field(repr=False, compare=False)
+
+    @property
+    def is_pair(self) -> bool:
+        """Whether this stands for a conjugate pair."""
+        return self.value.imag > 0
+
+    @property
+    def count(self) -> int:
+        """Number of roots this stands for: conjugates and multiplicity counted."""
+        return self.multiplicity * (2 if self.is_pair else 1)
+
+
+def origin(multiplicity: int) -> Root:
+    """A root at 0, exactly."""
+    return Root(0j, multiplicity, lambda bits: (0, 0, 0))
+
+
+def rational(value: Fraction, multiplicity: int) -> Root:
+    """A root at a rational number."""
+    return Root(complex(value), multiplicity, lambda bits: (floor(value * (1 << bits)), 0, 1))
+
+
+@lru_cache(maxsize=256)
+def isolate(p: poly.Integers) -> tuple[Root, ...]:
+    """Find all roots of an integer polynomial.
+
+    Parameters
+    ----------
+    p : tuple of int
+        Descending powers, not zero.
+
+    Returns
+    -------
+    tuple of Root
+        In ascending magnitude; real roots before pairs of the same magnitude.
+    """
+    at_origin = poly.trailing_zeros(p)
+    found = [origin(at_origin)] if at_origin else []
+    for factor, multiplicity in poly.square_free(p[: len(p) - at_origin]):
+        for part in _split_symmetric(factor):
+            found += [part.root(i, multiplicity) for i in part.upper_indices()]
+    return tuple(sorted(found, key=lambda r: (abs(r.value), r.value.imag, r.value.real)))
+
+
+def _split_symmetric(p: poly.Integers) -> list[_Factor]:
+    """Set the factor apart whose roots are symmetric about the imaginary axis: all roots on it are in there."""
+    symmetric = poly.greatest_common_divisor(p, poly.reflect(p))
+    rest = poly.quotient(p, symmetric) if len(symmetric) > 1 else p
+    parts = [_Factor(rest, symmetric=False)] if len(rest) > 1 else []
+    return parts + ([_Factor(symmetric, symmetric=True)] if len(symmetric) > 1 else [])
+
+
+class _Factor:
+    """A square-free integer polynomial without a root at 0, and the state of the search for its roots.
+
+    Internally ``x = z 2**self.exponent`` so that every ``|z| <= 1/2``; approximations are pairs of integers in
+    units of ``2**-self.bits``.
+    """
+
+    def __init__(self, p: poly.Integers, *, symmetric: bool) -> None:
+        self.p = p
+        self.symmetric = symmetric
+        logs = [log2(abs(c)) if c else None for c in p]
+        self.exponent = bound_exponent(logs)
+        self.bits = _FIRST_BITS
+        self.z = _starting_points(logs, self.exponent, self.bits)
+        self.radii = [0] * len(self.z)
+        self._solve()
+        while not self._settled():
+            self._double()
+
+    def upper_indices(self) -> list[int]:
+        """Indices of the real roots and of one root of each pair."""
+        return [i for i in range(len(self.z)) if self._is_real(i) or self.z[i][1] > 0]
+
+    def root(self, i: int, multiplicity: int) -> Root:
+        """The i-th root; it keeps this search alive to be refined later."""
+        return Root(self._value(i), multiplicity, partial(self.disc, i))
+
+    def _value(self, i: int) -> complex:
+        re, im = (0 if exact else c for c, exact in zip(self.z[i], self._on_axis(i), strict=True))
+        return complex(_scaled_float(re, self.exponent - self.bits), _scaled_float(im, self.exponent - self.bits))
+
+    def disc(self, i: int, bits: int) -> Disc:
+        """Centre and radius in units of ``2**-bits``."""
+        while self.bits < bits + self.exponent + 4 or self.radii[i] > 1 << (self.bits - self.exponent - bits):
+            self._double()
+        drop = self.bits - self.exponent - bits
+        half = 1 << (drop - 1)
+        on_imaginary, on_real = self._on_axis(i)
+        re, im = self.z[i]
+        radius = -(-self.radii[i] >> drop) + 1
+        return (0 if on_imaginary else (re + half) >> drop, 0 if on_real else (im + half) >> drop, radius)
+
+    def _on_axis(self, i: int) -> tuple[bool, bool]:
+        """Whether the real part, and whether the imaginary part, is exactly 0."""
+        return self._is_imaginary(i), self._is_real(i)
+
+    def _is_real(self, i: int) -> bool:
+        re, im = self.z[i]
+        return abs(im) <= self.radii[i] and self._alone((re, -im), self.radii[i], i)
+
+    def _is_imaginary(self, i: int) -> bool:
+        re, im = self.z[i]
+        return self.symmetric and abs(re) <= self.radii[i] and self._alone((-re, im), self.radii[i], i)
+
+    def _alone(self, centre: tuple[int, int], radius: int, i: int) -> bool:
+        """Whether a disc meets none of the discs other than the i-th.
+
+        A mirror image of disc i that meets no other disc holds the mirror image of root i, which is a root: so
+        it is root i itself, and lies on the axis.
+        """
+        return all(
+            _distance(centre, z) > radius + r
+            for j, (z, r) in enumerate(zip(self.z, self.radii, strict=True))
+            if j != i
+        )
+
+    def _settled(self) -> bool:
+        return all(self._isolated(i) for i in range(len(self.z)))
+
+    def _isolated(self, i: int) -> bool:
+        """Whether disc i is alone, on its side of the axes or on them, and small enough for a double."""
+        if not self._alone(self.z[i], self.radii[i], i):
+            return False
+        return all(
+            on_axis or abs(c) >= self.radii[i] << _VALUE_BITS
+            for c, on_axis in zip(self.z[i], self._on_axis(i), strict=True)
+        )
+
+    def _double(self) -> None:
+        if self.bits >= _MOST_BITS:
+            raise ArithmeticError("the roots of a polynomial could not be separated")
+        self.z = [(re << self.bits, im << self.bits) for re, im in self.z]
+        self.bits *= 2
+        self._solve()
+
+    def _solve(self) -> None:
+        """Iterate until the corrections are down to rounding, then enclose."""
+        coefficients = _fixed_point(self.p, self.exponent, self.bits)
+        small = 4 * len(self.p)
+        for _ in range(_MOST_ITERATIONS):
+            if self._sweep(coefficients) <= small:
+                break
+        self.radii = [self._radius(coefficients, i) for i in range(len(self.z))]
+
+    def _sweep(self, coefficients: list[int]) -> int:
+        """One Ehrlich-Aberth sweep; returns the largest correction."""
+        bits, largest = self.bits, 0
+        for i, z in enumerate(self.z):
+            value, slope = _horner_with_slope(coefficients, z, bits)
+            if slope == (0, 0):
+                slope = (1, 1)
+            newton = _divide(value, slope, bits)
+            pull = self._repulsion(i)
+            factor = _multiply(newton, pull, bits)
+            step = _divide(newton, _nonzero(((1 << bits) - factor[0], -factor[1])), bits)
+            self.z[i] = (z[0] - step[0], z[1] - step[1])
+            largest = max(largest, abs(step[0]), abs(step[1]))
+        return largest
+
+    def _repulsion(self, i: int) -> tuple[int, int]:
+        """``sum_j 1/(z_i - z_j)``."""
+        re = im = 0
+        x, y = self.z[i]
+        one = (1 << self.bits, 0)
+        for j, (u, v) in enumerate(self.z):
+            if j != i:
+                a, b = _divide(one, _nonzero((x - u, y - v)), self.bits)
+                re, im = re + a, im + b
+        return re, im
+
+    def _radius(self, coefficients: list[int], i: int) -> int:
+        """Smith's disc, rounded outward; as large as the search region where the iterate strayed out of it."""
+        z, n = self.z[i], len(self.z)
+        if _distance(z, (0, 0)) >= 1 << self.bits:
+            return 1 << (self.bits + 2)
+        value, _ = _horner_with_slope(coefficients, z, self.bits)
+        # Horner with |z| <= 1 adds at most 1 unit for the coefficient and 2 for the products at each step.
+        size = _distance(value, (0, 0)) + 1 + 3 * (n + 1)
+        apart = prod(_distance(z, other) for j, other in enumerate(self.z) if j != i)
+        return -(-(n * size << self.bits * (n - 1)) // apart) if apart else 1 << (self.bits + 2)
+
+
+def bound_exponent(logs: Sequence[float | None]) -> int:
+    """Exponent k with all roots within ``2**(k - 1)``: Fujiwara's bound (1916) and a bit for its rounding."""
+    lead = logs[0] or 0.0
+    slopes = [(value - lead) / i for i, value in enumerate(logs) if i and value is not None]
+    return floor(max(slopes)) + 4
+
+
+def _starting_points(logs: Sequence[float | None], exponent: int, bits: int) -> list[tuple[int, int]]:
+    """Points on circles whose radii are the slopes of the Newton polygon."""
+    points = [(i, value) for i, value in enumerate(reversed(logs)) if value is not None]
+    found = []
+    for (i, low), (j, high) in _upper_hull(points):
+        log_radius = (low - high) / (j - i) - exponent + bits
+        for k in range(j - i):
+            unit = cmath.rect(2.0 ** (log_radius % 1), 2 * pi * k / (j - i) + _START_ANGLE + i)
+            found.append((_shifted(unit.real, floor(log_radius)), _shifted(unit.imag, floor(log_radius))))
+    return found
+
+
+def _upper_hull(points: list[tuple[int, float]]) -> list[tuple[tuple[int, float], tuple[int, float]]]:
+    """Segments of the upper convex hull of points in ascending abscissa."""
+    hull: list[tuple[int, float]] = []
+    for x, y in points:
+        while len(hull) > 1 and _above(hull[-2], hull[-1], (x, y)):
+            hull.pop()
+        hull.append((x, y))
+    return list(pairwise(hull))
+
+
+def _above(a: tuple[int, float], b: tuple[int, float], c: tuple[int, float]) -> bool:
+    """Whether the chord from ``a`` to ``c`` passes on or above ``b``."""
+    return (c[1] - a[1]) * (b[0] - a[0]) >= (b[1] - a[1]) * (c[0] - a[0])
+
+
+def _shifted(x: float, exponent: int) -> int:
+    return int(ldexp(x, 60)) << (exponent - 60) if exponent >= 60 else int(ldexp(x, max(exponent, -1000)))
+
+
+def _fixed_point(p: poly.Integers, exponent: int, bits: int) -> list[int]:
+    """Monic coefficients of ``p(z 2**exponent)``, each within half a unit of ``2**-bits``."""
+    fixed = []
+    for i, c in enumerate(p):
+        up = bits - exponent * i
+        top, bottom = (c << up, p[0]) if up >= 0 else (c, p[0] << -up)
+        fixed.append((2 * top + bottom) // (2 * bottom))
+    return fixed
+
+
+def _horner_with_slope(
+    coefficients: list[int], z: tuple[int, int], bits: int
+) -> tuple[tuple[int, int], tuple[int, int]]:
+    """Value and derivative of a monic fixed-point polynomial."""
+    x, y = z
+    re, im, dre, dim = coefficients[0], 0, 0, 0
+    for c in coefficients[1:]:
+        dre, dim = (dre * x - dim * y >> bits) + re, (dre * y + dim * x >> bits) + im
+        re, im = (re * x - im * y >> bits) + c, re * y + im * x >> bits
+    return (re, im), (dre, dim)
+
+
+def _multiply(a: tuple[int, int], b: tuple[int, int], bits: int) -> tuple[int, int]:
+    return a[0] * b[0] - a[1] * b[1] >> bits, a[0] * b[1] + a[1] * b[0] >> bits
+
+
+def _divide(a: tuple[int, int], b: tuple[int, int], bits: int) -> tuple[int, int]:
+    size = b[0] * b[0] + b[1] * b[1]
+    return (a[0] * b[0] + a[1] * b[1] << bits) // size, (a[1] * b[0] - a[0] * b[1] << bits) // size
+
+
+def _nonzero(z: tuple[int, int]) -> tuple[int, int]:
+    return z if z != (0, 0) else (1, 0)
+
+
+def _distance(a: tuple[int, int], b: tuple[int, int]) -> int:
+    """Distance of two points, rounded down."""
+    return isqrt((a[0] - b[0]) ** 2 + (a[1] - b[1]) ** 2)
+
+
+def _scaled_float(n: int, exponent: int) -> float:
+    return n / (1 << -exponent) if exponent < 0 else float(n << exponent)

@@ -1,0 +1,1 @@
+"""Number formats, realizations, and the bit-exact model of one sample."""

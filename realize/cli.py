@@ -1,0 +1,200 @@
+"""The commands: options in, text or JSON out, exit status. No mathematics here."""
+
+from __future__ import annotations
+
+import json
+import os
+import sys
+from collections.abc import Callable
+from pathlib import Path
+from typing import Any, TypeVar
+
+import click
+
+from realize.errors import RealizeError
+from realize.version import VERSION
+
+Command = TypeVar("Command", bound=Callable[..., Any])
+
+_DESIGN_OPTIONS = (
+    click.argument("design", metavar="DESIGN"),
+    click.option("--rate", metavar="QUANTITY", help='Sample rate, such as "2 kHz".'),
+    click.option("--period", metavar="QUANTITY", help='Sample period, such as "500 us".'),
+    click.option("--name", metavar="IDENTIFIER", help="Name of the emitted functions and files."),
+    click.option("--method", metavar="METHOD", help='Name of a method, or "auto" for the recommended one.'),
+    click.option("--value", "values", multiple=True, metavar="NAME=NUMBER", help="Replace a value; may be repeated."),
+    click.option("--json", "as_json", is_flag=True, help="Print one JSON document and nothing else."),
+)
+
+
+def _takes_design(command: Command) -> Command:
+    """Add the argument and the options that every command on a design shares."""
+    for option in reversed(_DESIGN_OPTIONS):
+        command = option(command)
+    return command
+
+
+@click.group(context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100})
+@click.version_option(VERSION, prog_name="realize")
+def commands() -> None:
+    """Turn a transfer function in s into difference-equation code that the firmware can trust.
+
+    DESIGN is a design file (ends in .toml), - for one on standard input, or an expression in s.
+
+    \b
+    Start with a file of your own:    realize new roller_gap
+    Is it realizable at all?          realize assess roller_gap.toml
+    What does each method make of it? realize compare roller_gap.toml
+    Write the firmware files:         realize emit roller_gap.toml --out firmware
+    """
+
+
+@commands.command()
+@_takes_design
+def assess(design: str, as_json: bool, **options: Any) -> None:
+    """Say whether DESIGN is realizable, which terms are not, and what would make it so.
+
+    \b
+    Example: realize assess "4.2 + 18/s + 0.09*s" --rate "2 kHz"
+    Lists poles and zeros, names 0.09*s as the term that needs the future, and proposes
+    roll-off poles with their price: phase, noise, converter steps.
+    """
+    from realize.report.documents import assess_document
+    from realize.report.terminal import assess_text
+    from realize.workflow import assess_design
+
+    loaded = _load(design, options)
+    assessment = assess_design(loaded)
+    _print(assess_document(loaded, assessment) if as_json else assess_text(loaded, assessment))
+
+
+@commands.command()
+@_takes_design
+def compare(design: str, as_json: bool, **options: Any) -> None:
+    """Put every method side by side at the chosen rate, with what it did to the design.
+
+    Exit status 0 when the named or the recommended method is acceptable, else 1.
+
+    \b
+    Example: realize compare "5*(0.2*s + 1)/(0.02*s + 1)" --rate "200 Hz"
+    """
+    from realize.report.documents import compare_document
+    from realize.report.terminal import compare_text
+    from realize.workflow import compare as compare_methods
+
+    comparison = compare_methods(_load(design, options))
+    _print(compare_document(comparison) if as_json else compare_text(comparison))
+    if not comparison.acceptable:
+        sys.exit(1)
+
+
+@commands.command()
+@_takes_design
+@click.option("--out", required=True, metavar="DIR", help="Directory for the files; made if missing.")
+def emit(design: str, as_json: bool, out: str, **options: Any) -> None:
+    """Do the whole job and write the C files, the vectors and the record: all or none.
+
+    Refused with exit status 1 when the design is improper, unstable or out of tolerance.
+
+    \b
+    Example: realize emit roller_gap.toml --out firmware
+    Writes firmware/roller_gap.h, .c, _vectors.csv and .record.json.
+    """
+    from realize.firmware.files import write_all
+    from realize.firmware.job import emit as emit_design
+    from realize.report.documents import emit_document
+    from realize.report.terminal import emit_text
+
+    emitted = emit_design(_load(design, options))
+    paths = [str(path) for path in write_all(Path(out), emitted.files)]
+    if as_json:
+        _print(emit_document(emitted, paths))
+    else:
+        _print(emit_text(emitted.comparison, emitted.chosen, paths))
+
+
+@commands.command()
+@click.argument("name")
+def new(name: str) -> None:
+    """Write NAME.toml, a commented starter design that `realize emit` accepts as it is.
+
+    Never overwrites a file.
+
+    \b
+    Example: realize new roller_gap
+             realize emit roller_gap.toml --out firmware
+    """
+    from realize.firmware.files import write_new
+    from realize.starter import starter_text
+
+    path = Path(f"{name}.toml")
+    write_new(path, starter_text(name))
+    click.echo(f"yes: wrote {path}. Next: realize emit {path} --out firmware")
+
+
+def _load(design: str, options: dict[str, Any]) -> Any:
+    """Read a design, with the overrides of the command line."""
+    from realize.design import Overrides, load_design
+
+    overrides = Overrides(
+        options["rate"], options["period"], options["name"], options["method"], _values(options["values"])
+    )
+    return load_design(design, overrides)
+
+
+def _values(pairs: tuple[str, ...]) -> dict[str, str]:
+    values = {}
+    for pair in pairs:
+        name, equals, text = pair.partition("=")
+        if not (name and equals and text):
+            raise RealizeError("--value", f"{pair!r}", "NAME=NUMBER", "--value kp=4.2")
+        values[name.strip()] = text.strip()
+    return values
+
+
+def _print(content: Any) -> None:
+    if isinstance(content, str):
+        click.echo(content, nl=False)
+    else:
+        click.echo(json.dumps(content, indent=2, allow_nan=False))
+
+
+def main(arguments: list[str] | None = None) -> None:
+    """Run a command; turn every error into one clear message and an exit status."""
+    given = sys.argv[1:] if arguments is None else arguments
+    try:
+        commands.main(given, prog_name="realize", standalone_mode=False, color=_color())
+    except RealizeError as error:
+        _fail(error, given)
+    except click.ClickException as error:
+        _usage(error, given)
+    except (click.Abort, KeyboardInterrupt):
+        click.echo("stopped: nothing was written", err=True)
+        sys.exit(130)
+
+
+def _color() -> bool | None:
+    """Whether to keep colour codes: never under NO_COLOR, else as the terminal allows."""
+    return False if os.environ.get("NO_COLOR") else None
+
+
+def _fail(error: RealizeError, given: list[str]) -> None:
+    if "--json" in given:
+        from realize.report.documents import error_document
+
+        _print(error_document(_command_of(given), error))
+    else:
+        click.echo(f"no: {error}" if error.exit_status == 1 else f"error: {error}", err=True)
+    sys.exit(error.exit_status)
+
+
+def _usage(error: click.ClickException, given: list[str]) -> None:
+    if "--json" in given:
+        command = _command_of(given)
+        _fail(RealizeError("command line", error.format_message(), "", f"realize {command} --help"), given)
+    error.show()
+    sys.exit(2)
+
+
+def _command_of(given: list[str]) -> str:
+    return next((word for word in given if word in commands.commands), "")

@@ -1,0 +1,256 @@
+"""From the argument of a command to a design: a file, standard input, or an expression in s."""
+
+from __future__ import annotations
+
+import os.path
+import re
+import sys
+from collections.abc import Mapping
+from typing import BinaryIO
+
+from realize.algebra.expression.tokens import printable, shown
+from realize.design.controller import Controller, read_controller
+from realize.design.gate import Table, WrittenNumber
+from realize.design.later import refuse_later_tables
+from realize.design.model import Design, Overrides
+from realize.design.tables import (
+    read_accept,
+    read_method,
+    read_name,
+    read_rolloff,
+    read_sampling,
+    read_signals,
+    read_target,
+    read_tolerance,
+)
+from realize.errors import RealizeError, Refused
+
+#: Largest design file: twenty times one that uses every key.
+MAX_FILE_BYTES = 2**16
+
+#: Longest line of a design file: the longest expression (4000 characters) and its key. The reader of TOML takes
+#: a time that grows with the square of the dots in a key; so bounded, and in a file of this size, under a second.
+MAX_LINE = 4500
+
+#: Longest path worth looking for: what the common file systems allow for a name.
+MAX_PATH = 255
+
+#: Columns of a line that are quoted with a mistake in its TOML.
+_SHOWN_COLUMNS = 80
+
+STANDARD_INPUT = "-"
+
+_DESIGN_KEYS = (
+    *("name", "transfer", "numerator", "denominator", "zeros", "poles", "gain"),
+    *("about", "revision", "requirement", "author", "values"),
+)
+_TABLES = (
+    *("design", "sampling", "rolloff", "method", "plant", "loop", "schedule"),
+    *("signals", "target", "tolerance", "accept"),
+)
+
+_ARGUMENT = "a design file (its name ends in .toml), - for one on standard input, or an expression in s"
+
+#: What looks more like a path than like algebra: a directory in front, a backslash, or an ending behind.
+_LIKE_A_PATH = re.compile(r"[~.]{0,2}/.*|.*\\.*|[\w ~./-]*\.[A-Za-z]{1,5}~?", re.DOTALL)
+
+
+def load_design(argument: str, overrides: Overrides = Overrides()) -> Design:  # noqa: B008 -- immutable
+    """Read the design a command was given.
+
+    Parameters
+    ----------
+    argument : str
+        A path that ends in ``.toml``, ``-`` for TOML on standard input, or an expression in s.
+    overrides : Overrides
+        What the command line says in place of the file.
+
+    Raises
+    ------
+    RealizeError
+        When it cannot be read or understood.
+    Refused
+        When a cancellation in it hides a growing mode.
+    """
+    if argument == STANDARD_INPUT:
+        return design_from_text(_decoded(_read(sys.stdin.buffer), "standard input"), "standard input", overrides)
+    if argument.lower().endswith(".toml"):
+        return design_from_text(_decoded(_file_content(argument), argument), argument, overrides)
+    return _design_from_expression(argument, overrides)
+
+
+def design_from_text(text: str, source: str, overrides: Overrides = Overrides()) -> Design:  # noqa: B008
+    """Read a design file that is already in memory.
+
+    Parameters
+    ----------
+    text : str
+        TOML.
+    source : str
+        What the user calls it.
+    overrides : Overrides
+        What the command line says in its place.
+
+    Raises
+    ------
+    RealizeError
+        When it cannot be understood.
+    Refused
+        When a cancellation in it hides a growing mode.
+    """
+    return design_from_document(_parsed(text, source), source, overrides)
+
+
+def design_from_document(
+    document: Mapping[str, object],
+    source: str,
+    overrides: Overrides = Overrides(),  # noqa: B008
+) -> Design:
+    """Read a design from the tables of its file."""
+    root = Table(document, source)
+    root.only(_TABLES)
+    table = root.table("design")
+    table.only(_DESIGN_KEYS)
+    return assemble(root, read_controller(table, overrides.values), overrides)
+
+
+def assemble(root: Table, controller: Controller, overrides: Overrides) -> Design:
+    """Put a design together from its transfer function and all other tables."""
+    refuse_later_tables(root)
+    design = root.table("design")
+    sampling = read_sampling(root.table("sampling"), overrides)
+    method, exact_at_rad_s = read_method(root.table("method"), overrides.method)
+    target = read_target(root.table("target"))
+    signals = read_signals(root.table("signals"), target)
+    return Design(
+        source=root.source,
+        name=read_name(design, overrides.name),
+        transfer=controller.transfer,
+        transfer_text=controller.text,
+        about=design.text("about"),
+        revision=design.text("revision"),
+        requirement=design.text("requirement"),
+        author=design.text("author"),
+        values=controller.values,
+        period_s=sampling.period_s,
+        band_rad_s=sampling.band_rad_s,
+        rolloff=read_rolloff(root.table("rolloff"), controller.transfer) if "rolloff" in root else None,
+        method=method,
+        exact_at_rad_s=exact_at_rad_s,
+        input=signals[0],
+        output=signals[1],
+        target=target,
+        tolerance=read_tolerance(root.table("tolerance")),
+        accept=read_accept(root.tables("accept")),
+    )
+
+
+def _design_from_expression(argument: str, overrides: Overrides) -> Design:
+    root = Table({}, "expression")
+    table = _ArgumentTable({"transfer": argument}, "expression", "[design]")
+    try:
+        return assemble(root, read_controller(table, overrides.values), overrides)
+    except Refused:
+        raise
+    except RealizeError as error:
+        advice = _path_advice(argument)
+        if advice is None:
+            raise
+        raise RealizeError(
+            error.where,
+            f"{shown(argument)}, which is no expression in s ({error.found}) and no name of a design file",
+            _ARGUMENT,
+            f"{advice}; for an expression: {error.advice}",
+            error.excerpt,
+        ) from None
+
+
+def _path_advice(argument: str) -> str | None:
+    """What to try with an argument that may be a mistyped path; ``None`` when it cannot be one."""
+    with_ending = f"{argument}.toml"
+    if len(argument) < MAX_PATH and os.path.isfile(with_ending):
+        return f"for the design file, write {printable(with_ending)}"
+    return "for a design file, give a name that ends in .toml" if _LIKE_A_PATH.fullmatch(argument) else None
+
+
+class _ArgumentTable(Table):
+    """The table of a design that was given as an expression: there is no file, table or key to name."""
+
+    def where(self, key: str) -> str:
+        return self.source
+
+
+def _file_content(path: str) -> bytes:
+    try:
+        with open(path, "rb") as file:
+            return _read(file)
+    except FileNotFoundError:
+        found, advice = "no such file", "check the name and the directory"
+    except IsADirectoryError:
+        found, advice = "a directory", "give the name of a file in it"
+    except PermissionError:
+        found, advice = "a file that may not be read", "check its permissions"
+    except (OSError, ValueError) as error:
+        reason = error.strerror if isinstance(error, OSError) and error.strerror else "its name is not possible"
+        found, advice = f"a file that cannot be read: {reason}", "check the name"
+    raise RealizeError(printable(path), found, "a readable design file in TOML", advice)
+
+
+def _read(file: BinaryIO) -> bytes:
+    """No more than is allowed, and one byte to see whether there is more."""
+    return file.read(MAX_FILE_BYTES + 1)
+
+
+def _decoded(content: bytes, source: str) -> str:
+    if len(content) > MAX_FILE_BYTES:
+        raise RealizeError(
+            source,
+            "a file that is too large",
+            f"at most {MAX_FILE_BYTES} bytes",
+            "check that it is a design file",
+        )
+    try:
+        return content.decode("utf-8-sig")
+    except UnicodeDecodeError as error:
+        line = content[: error.start].count(b"\n") + 1
+        raise RealizeError(
+            f"{source}, line {line}", "a byte that is not UTF-8", "text in UTF-8", "save the file as UTF-8"
+        ) from None
+
+
+def _parsed(text: str, source: str) -> dict[str, object]:
+    """Tables of a TOML text; its floats stay as written."""
+    # An expression on the command line needs no TOML.
+    import tomllib
+
+    for number, line in enumerate(text.splitlines(), 1):
+        if len(line) > MAX_LINE:
+            raise RealizeError(
+                f"{source}, line {number}",
+                f"a line of {len(line)} characters",
+                f"at most {MAX_LINE}",
+                "break a list after a comma, or give parts of an expression names under [design.values]",
+            )
+    try:
+        return tomllib.loads(text, parse_float=WrittenNumber)
+    except tomllib.TOMLDecodeError as error:
+        raise _toml_error(str(error), text, source) from None
+    except RecursionError:
+        raise RealizeError(source, "lists or tables nested too deeply", "lists of numbers", "flatten it") from None
+    except ValueError:
+        # The one that is no TOMLDecodeError: an integer beyond what Python converts.
+        raise RealizeError(
+            source, "an integer of thousands of digits", "numbers that a design needs", "use fewer digits"
+        ) from None
+
+
+def _toml_error(message: str, text: str, source: str) -> RealizeError:
+    """Put line and column in front, and quote the line."""
+    match = re.fullmatch(r"(.*) \(at line (\d+), column (\d+)\)", message, re.DOTALL)
+    allowed, advice = "TOML: [table], then lines of key = value", "texts and quantities stand in quotes"
+    if match is None:
+        return RealizeError(source, printable(message), allowed, advice)
+    line, column = int(match[2]), int(match[3])
+    quoted = text.split("\n")[line - 1] if line <= text.count("\n") + 1 else ""
+    excerpt = f"{printable(quoted[:_SHOWN_COLUMNS])}\n{' ' * (column - 1)}^" if column <= _SHOWN_COLUMNS else ""
+    return RealizeError(f"{source}, line {line}, column {column}", printable(match[1]), allowed, advice, excerpt)

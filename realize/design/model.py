@@ -1,0 +1,206 @@
+"""The design: everything one controller or filter is made from, exact and checked.
+
+Lengths of time are in s, angular frequencies in rad/s, as the names say; tolerances and limits in the unit of
+their check. A design that exists has passed the gate: what reads it need not check again.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from fractions import Fraction
+from types import MappingProxyType
+from typing import Any, NamedTuple
+
+from realize.transfer import TransferFunction
+
+#: Published methods, in the order of their table in the README.
+METHODS = (
+    "step-invariant",
+    "ramp-invariant",
+    "impulse-invariant",
+    "forward-difference",
+    "backward-difference",
+    "bilinear",
+    "bilinear-prewarped",
+    "blended-difference",
+    "pole-zero-mapped",
+)
+
+#: Every check by name, with the unit its deviation is measured in; ``None`` where it has no figure.
+CHECK_UNITS: Mapping[str, str | None] = MappingProxyType(
+    {
+        "stability": None,
+        "pole shift": "%",
+        "zero shift": "%",
+        "magnitude in band": "dB",
+        "phase in band": "deg",
+        "low-frequency gain": "%",
+        "step deviation": "%",
+        "step overshoot": "%",
+        "converter step": "%",
+        "saturation recovery": "%",
+        "loop stability": None,
+        "loop phase margin": "deg",
+        "loop sensitivity": "",
+        "loop overshoot": "%",
+    }
+)
+
+#: Keys of the table ``[tolerance]``, with their unit; "" for a plain number.
+TOLERANCE_KEYS: Mapping[str, str] = MappingProxyType(
+    {
+        "pole_shift": "%",
+        "zero_shift": "%",
+        "magnitude_in_band": "dB",
+        "phase_in_band": "deg",
+        "low_frequency_gain": "%",
+        "step_deviation": "%",
+        "step_overshoot": "%",
+        "converter_step": "%",
+        "loop_phase_margin_loss": "deg",
+        "loop_phase_margin_least": "deg",
+        "loop_sensitivity_most": "",
+        "loop_overshoot_rise": "%",
+    }
+)
+
+
+@dataclass(frozen=True)
+class Signal:
+    """What is known of the input or the output.
+
+    Attributes
+    ----------
+    range : pair of Fraction or None
+        Lowest and highest physical value.
+    unit : str
+        Physical unit, as text; may be empty.
+    per_count : Fraction or None
+        Physical size of one count of the converter or timer.
+    offset : int
+        Count at physical zero.
+    type : str or None
+        C type at the interface, where it was named.
+    """
+
+    range: tuple[Fraction, Fraction] | None = None
+    unit: str = ""
+    per_count: Fraction | None = None
+    offset: int = 0
+    type: str | None = None
+
+
+class Rolloff(NamedTuple):
+    """How an improper transfer function is to be made causal.
+
+    ``order`` is ``None`` for as many poles as make it proper, ``pole_rad_s`` for the automatic choice.
+    """
+
+    placement: str = "derivative"
+    order: int | None = None
+    damping: Fraction = Fraction(1)
+    pole_rad_s: Fraction | None = None
+    phase_budget_deg: Fraction = Fraction(6)
+
+
+class Target(NamedTuple):
+    """What the code is written for; ``tracking_time_s`` goes with back-calculation alone."""
+
+    arithmetic: str = "float32"
+    structure: str = "auto"
+    coefficients: str = "inline"
+    recursion_sign: str = "subtract"
+    anti_windup: str = "hold-integral"
+    tracking_time_s: Fraction | None = None
+    guard_nonfinite: bool = True
+
+
+DEFAULT_TARGET = Target()
+
+
+class Accept(NamedTuple):
+    """An agreed deviation: the check, up to which figure (if any) in which unit, why, and who agreed."""
+
+    check: str
+    limit: Fraction | None
+    unit: str
+    because: str
+    by: str
+
+
+class Overrides(NamedTuple):
+    """What the command line says in place of the file, as text."""
+
+    rate: str | None = None
+    period: str | None = None
+    name: str | None = None
+    method: str | None = None
+    values: Mapping[str, str] = MappingProxyType({})
+
+
+@dataclass(frozen=True)
+class Design:
+    """A whole design.
+
+    Attributes
+    ----------
+    source : str
+        Where it was read, for messages; no part of what the design is.
+    name : str
+        A C identifier of at most 24 characters.
+    transfer : TransferFunction
+        Exact and in lowest terms; what cancelled stands in it. May be improper.
+    transfer_text : str
+        The transfer function as the user wrote it, on one line.
+    about, revision, requirement, author : str or None
+        One printable line each.
+    values : tuple of (str, Fraction)
+        Named values, in the order they were written.
+    period_s, band_rad_s, exact_at_rad_s : Fraction or None
+        Sample period, band edge and the frequency of exact prewarping, where they were given.
+    rolloff : Rolloff or None
+        As asked for; ``None`` for a proper transfer function.
+    method : str
+        One of :data:`METHODS`, or "auto".
+    input, output : Signal
+        What is known of the signals.
+    target : Target
+        What the code is written for.
+    tolerance : tuple of (str, Fraction)
+        Tolerances that differ from their defaults, in the order of :data:`TOLERANCE_KEYS` and in its units.
+    accept : tuple of Accept
+        Agreed deviations.
+    """
+
+    source: str = field(compare=False)
+    name: str
+    transfer: TransferFunction
+    transfer_text: str
+    about: str | None = None
+    revision: str | None = None
+    requirement: str | None = None
+    author: str | None = None
+    values: tuple[tuple[str, Fraction], ...] = ()
+    period_s: Fraction | None = None
+    band_rad_s: Fraction | None = None
+    rolloff: Rolloff | None = None
+    method: str = "auto"
+    exact_at_rad_s: Fraction | None = None
+    input: Signal = Signal()
+    output: Signal = Signal()
+    target: Target = DEFAULT_TARGET
+    tolerance: tuple[tuple[str, Fraction], ...] = ()
+    accept: tuple[Accept, ...] = ()
+
+    def resolved(self) -> dict[str, Any]:
+        """Return the whole design, defaults filled in, as a document that JSON can hold.
+
+        Notes
+        -----
+        See :func:`realize.design.record.resolved`; :func:`realize.design.design_from_resolved` reads it back.
+        """
+        # Here, because the record is written in terms of this module.
+        from realize.design.record import resolved
+
+        return resolved(self)

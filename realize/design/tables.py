@@ -1,0 +1,375 @@
+"""The other tables of the design file, each read by one function."""
+
+from __future__ import annotations
+
+import re
+from fractions import Fraction
+from typing import NamedTuple
+
+from realize.algebra.expression.ratio import MAX_DEGREE
+from realize.algebra.expression.tokens import shown
+from realize.algebra.irrational import pi
+from realize.design.gate import (
+    DIMENSIONS,
+    Table,
+    checked_choice,
+    checked_number,
+    checked_quantity,
+    described,
+    not_yet,
+)
+from realize.design.model import (
+    CHECK_UNITS,
+    DEFAULT_TARGET,
+    METHODS,
+    TOLERANCE_KEYS,
+    Accept,
+    Overrides,
+    Rolloff,
+    Signal,
+    Target,
+)
+from realize.errors import RealizeError
+from realize.quantity import format_engineering, round_significant
+from realize.transfer import TransferFunction
+
+#: Longest name of a design: C99 promises to tell apart the first 31 characters of a name that files share, and
+#: the suffixes the code adds differ within their first seven.
+MAX_NAME = 24
+
+#: Longest unit of a signal: a unit, not a sentence.
+MAX_UNIT = 24
+
+#: Farthest offset of a converter in counts: a 32-bit count.
+MAX_OFFSET = 2**31
+
+#: Digits a roll-off pole in Hz is rounded to in rad/s: those that tell every two doubles apart, so that the pole
+#: can be pasted from the record into a design file.
+POLE_DIGITS = 17
+
+#: Most phase a roll-off may be allowed to take, in degrees: that of one pole far above its corner.
+MOST_PHASE_BUDGET_DEG = 90
+
+_DEFAULT_NAME = "controller"
+
+_INTEGER_TYPES = ("int16", "int32")
+_FLOAT_TYPES = {"float": "float32", "float32": "float32", "double": "float64", "float64": "float64"}
+
+_TARGET_KEYS = (
+    *("arithmetic", "structure", "coefficients", "recursion_sign"),
+    *("anti_windup", "tracking_time", "guard_nonfinite"),
+)
+
+_METHODS_TO_COME = ("frequency-fit", "plant-input-mapped")
+
+#: Checks that may be accepted without a figure: what went wrong is a matter of yes or no.
+_LIMIT_OPTIONAL = ("saturation recovery",)
+
+_CHECKS_WITHOUT_FIGURE = tuple(check for check, unit in CHECK_UNITS.items() if unit is None)
+
+#: Words C99 and C++11 keep for themselves, and the file names some systems keep for devices.
+_KEPT_WORDS = frozenset(
+    """
+    alignas alignof and and_eq asm auto bitand bitor bool break case catch char char16_t char32_t class compl
+    const const_cast constexpr continue decltype default delete do double dynamic_cast else enum explicit export
+    extern false float for friend goto if inline int long mutable namespace new noexcept not not_eq nullptr
+    operator or or_eq private protected public register reinterpret_cast restrict return short signed sizeof
+    static static_assert static_cast struct switch template this thread_local throw true try typedef typeid
+    typename union unsigned using virtual void volatile wchar_t while xor xor_eq
+    aux con nul prn
+    """.split()  # noqa: SIM905 -- a list of quoted words hides a missing one
+)
+
+
+class Sampling(NamedTuple):
+    """Sample period and band edge."""
+
+    period_s: Fraction | None
+    band_rad_s: Fraction | None
+
+
+def checked_name(name: str, where: str) -> str:
+    """Check the name of a design, which becomes the prefix of everything in the C code.
+
+    Raises
+    ------
+    RealizeError
+        When it is no C identifier, too long, or kept by the languages or by operating systems.
+    """
+    allowed = f"a C identifier of at most {MAX_NAME} letters, digits and single _ between them, a letter first"
+    if len(name) > MAX_NAME:
+        raise RealizeError(where, f"a name of {len(name)} characters", allowed, "shorten it")
+    # A _ at an end or a double one would make names that C and C++ keep for themselves.
+    if not re.fullmatch(r"[A-Za-z][A-Za-z0-9]*(?:_[A-Za-z0-9]+)*", name):
+        raise RealizeError(where, f"the name {shown(name)}", allowed, "write one such as roller_gap")
+    if name.lower() in _KEPT_WORDS:
+        raise RealizeError(where, f"the name {shown(name)}, a kept word", allowed, f"write {name}_control")
+    return name
+
+
+def read_name(table: Table, override: str | None) -> str:
+    """Read the name of the design."""
+    if override is not None:
+        return checked_name(override, "--name")
+    name = table.text("name")
+    return _DEFAULT_NAME if name is None else checked_name(name, table.where("name"))
+
+
+def read_sampling(table: Table, overrides: Overrides) -> Sampling:
+    """Read rate or period, and the band; the command line replaces the period however the file gives it."""
+    table.only(("rate", "period", "band"))
+    given = _overridden_period(overrides)
+    period_s = _period(table) if given is None else given
+    band_rad_s = table.quantity("band", "angular frequency")
+    if period_s is not None and band_rad_s is not None and band_rad_s * period_s >= pi():
+        raise table.error(
+            "band",
+            f"a band up to {format_engineering(band_rad_s / (2 * pi()), 'Hz')}",
+            f"a band below half the rate, {format_engineering(1 / (2 * period_s), 'Hz')}",
+            "raise the rate, or lower the band",
+        )
+    return Sampling(period_s, band_rad_s)
+
+
+def read_rolloff(table: Table, transfer: TransferFunction) -> Rolloff:
+    """Read how an improper transfer function is to be made causal."""
+    table.only(("placement", "order", "damping", "pole", "phase_budget"))
+    if transfer.relative_degree >= 0:
+        raise RealizeError(
+            f"{table.source}, {table.place}",
+            "a roll-off for a transfer function that is proper",
+            "a roll-off for an improper one only",
+            f"remove the table {table.place}; write a filter you want into the transfer",
+        )
+    asked = Rolloff(
+        placement=table.choice("placement", ("derivative", "whole"), Rolloff().placement),
+        order=_rolloff_order(table, transfer),
+        damping=table.positive_number("damping") or Rolloff().damping,
+        pole_rad_s=_rolloff_pole(table),
+        phase_budget_deg=table.quantity("phase_budget", "angle") or Rolloff().phase_budget_deg,
+    )
+    _check_damping(table, asked, -transfer.relative_degree)
+    if asked.phase_budget_deg >= MOST_PHASE_BUDGET_DEG:
+        raise table.error(
+            "phase_budget",
+            described(table.entries["phase_budget"]),
+            f"an angle below {MOST_PHASE_BUDGET_DEG} deg",
+            "write what the phase margin of the loop can spare",
+        )
+    return asked
+
+
+def read_method(table: Table, override: str | None) -> tuple[str, Fraction | None]:
+    """Read the name of the method and the frequency of exact prewarping in rad/s."""
+    table.only(("name", "exact_at", "compensate_delay"))
+    value, where = (table.entries.get("name", "auto"), table.where("name"))
+    if override is not None:
+        value, where = override, "--method"
+    if value in _METHODS_TO_COME:
+        raise not_yet(where, f"the method {value}", ", ".join(("auto", *METHODS)))
+    name = checked_choice(value, ("auto", *METHODS), where)
+    if table.flag("compensate_delay", False):
+        raise not_yet(table.where("compensate_delay"), "true, for the method frequency-fit", "false")
+    return name, table.quantity("exact_at", "angular frequency")
+
+
+def read_target(table: Table) -> Target:
+    """Read what the code is written for."""
+    default = DEFAULT_TARGET
+    table.only(_TARGET_KEYS)
+    arithmetic = table.choice("arithmetic", ("float32", "float64", *_INTEGER_TYPES), default.arithmetic)
+    if arithmetic in _INTEGER_TYPES:
+        raise not_yet(table.where("arithmetic"), f"{arithmetic} arithmetic", "float32, float64")
+    target = Target(
+        arithmetic=arithmetic,
+        structure=table.choice("structure", ("auto", "direct", "cascade"), default.structure),
+        coefficients=table.choice("coefficients", ("inline", "table"), default.coefficients),
+        recursion_sign=table.choice("recursion_sign", ("subtract", "add"), default.recursion_sign),
+        anti_windup=table.choice("anti_windup", ("hold-integral", "back-calculation", "none"), default.anti_windup),
+        tracking_time_s=table.quantity("tracking_time", "time"),
+        guard_nonfinite=table.flag("guard_nonfinite", default.guard_nonfinite),
+    )
+    _check_tracking_time(table, target)
+    return target
+
+
+def read_signals(table: Table, target: Target) -> tuple[Signal, Signal]:
+    """Read what is known of input and output."""
+    table.only(("input", "output"))
+    first, second = (_signal(table.table(key), target) for key in ("input", "output"))
+    return first, second
+
+
+def read_tolerance(table: Table) -> tuple[tuple[str, Fraction], ...]:
+    """Read the tolerances that differ from their defaults."""
+    table.only(TOLERANCE_KEYS)
+    read = {key: _figure(table, key, unit) for key, unit in TOLERANCE_KEYS.items() if key in table}
+    for key in read:
+        if key.startswith("loop_"):
+            raise not_yet(table.where(key), "a tolerance of the loop", "tolerances of the controller alone")
+    return tuple(read.items())
+
+
+def read_accept(tables: list[Table]) -> tuple[Accept, ...]:
+    """Read the agreed deviations."""
+    accepted: dict[str, Accept] = {}
+    for table in tables:
+        entry = _accept(table)
+        if entry.check in accepted:
+            raise table.error(
+                "check",
+                f'a second entry for "{entry.check}"',
+                "one entry for each check",
+                "keep the one that holds",
+            )
+        accepted[entry.check] = entry
+    return tuple(accepted.values())
+
+
+def _overridden_period(overrides: Overrides) -> Fraction | None:
+    if overrides.rate is not None and overrides.period is not None:
+        raise RealizeError("--rate", "--rate and --period at once", "exactly one of them", "drop one")
+    if overrides.rate is not None:
+        return 1 / checked_quantity(overrides.rate, "rate", "--rate")
+    if overrides.period is not None:
+        return checked_quantity(overrides.period, "time", "--period")
+    return None
+
+
+def _period(table: Table) -> Fraction | None:
+    if "rate" in table and "period" in table:
+        raise table.error("rate", "rate and period at once", "exactly one of them", "remove one")
+    rate_hz = table.quantity("rate", "rate")
+    return table.quantity("period", "time") if rate_hz is None else 1 / rate_hz
+
+
+def _rolloff_order(table: Table, transfer: TransferFunction) -> int | None:
+    lowest = -transfer.relative_degree
+    order = table.integer("order", 1, MAX_DEGREE)
+    if order is not None and not lowest <= order <= MAX_DEGREE - transfer.order:
+        raise table.error(
+            "order",
+            f"{order} roll-off poles",
+            f"from {lowest}, which make it proper, to {MAX_DEGREE - transfer.order}, for degree {MAX_DEGREE}",
+            f"write order = {lowest}, or remove the key",
+        )
+    return order
+
+
+def _rolloff_pole(table: Table) -> Fraction | None:
+    """The pole in rad/s; in Hz it is rounded to the digits that a person can carry over."""
+    if table.entries.get("pole", "auto") == "auto":
+        return None
+    pole_rad_s = table.quantity("pole", "angular frequency")
+    in_hertz = str(table.entries["pole"]).rstrip().endswith("Hz")
+    return round_significant(pole_rad_s, POLE_DIGITS) if pole_rad_s and in_hertz else pole_rad_s
+
+
+def _check_damping(table: Table, asked: Rolloff, lowest_order: int) -> None:
+    if asked.damping == Rolloff().damping:
+        return
+    if (asked.order or lowest_order) != 2:
+        raise table.error(
+            "damping",
+            f"a damping ratio for {asked.order or lowest_order} roll-off poles",
+            "a damping ratio for a pair only",
+            "write order = 2, or remove the damping",
+        )
+    if asked.damping > 1:
+        raise table.error(
+            "damping", described(table.entries["damping"]), "a damping ratio above 0, at most 1", "write 0.7071"
+        )
+
+
+def _check_tracking_time(table: Table, target: Target) -> None:
+    wanted = target.anti_windup == "back-calculation"
+    if wanted and target.tracking_time_s is None:
+        raise table.error(
+            "tracking_time",
+            "nothing",
+            "a time, because anti_windup is back-calculation",
+            'add a line such as tracking_time = "0.2 s"',
+        )
+    if not wanted and target.tracking_time_s is not None:
+        raise table.error(
+            "tracking_time",
+            f"a tracking time with anti_windup {target.anti_windup}",
+            "a tracking time with back-calculation only",
+            'remove it, or write anti_windup = "back-calculation"',
+        )
+
+
+def _signal(table: Table, target: Target) -> Signal:
+    table.only(("range", "unit", "per_count", "offset", "type"))
+    return Signal(
+        range=_range(table),
+        unit=table.text("unit", MAX_UNIT) or "",
+        per_count=table.positive_number("per_count"),
+        offset=table.integer("offset", -MAX_OFFSET, MAX_OFFSET) or 0,
+        type=_signal_type(table, target),
+    )
+
+
+def _range(table: Table) -> tuple[Fraction, Fraction] | None:
+    if "range" not in table:
+        return None
+    ends = [
+        checked_number(end, {}, f"{table.where('range')}, entry {i}") for i, end in enumerate(table.numbers("range"), 1)
+    ]
+    if len(ends) != 2 or ends[0] >= ends[1]:
+        found = f"a list of {len(ends)}" if len(ends) != 2 else "a low end that is not below the high one"
+        raise table.error("range", found, "[low, high] with low below high", "write range = [-1.0, 1.0]")
+    return ends[0], ends[1]
+
+
+def _signal_type(table: Table, target: Target) -> str | None:
+    """The C type at the interface, which in floating point is that of the arithmetic."""
+    if "type" not in table:
+        return None
+    name = table.choice("type", (*_FLOAT_TYPES, *_INTEGER_TYPES), target.arithmetic)
+    if name in _INTEGER_TYPES:
+        raise not_yet(table.where("type"), f"the type {name}", f"the type of the arithmetic, {target.arithmetic}")
+    if _FLOAT_TYPES[name] != target.arithmetic:
+        raise table.error(
+            "type",
+            f"{name}, with {target.arithmetic} arithmetic",
+            f"the type of the arithmetic, {target.arithmetic}",
+            "remove it, or change arithmetic under [target]",
+        )
+    return name
+
+
+def _figure(table: Table, key: str, unit: str) -> Fraction:
+    """A tolerance or limit above zero, in its unit."""
+    value = table.quantity(key, DIMENSIONS[unit]) if unit else table.positive_number(key)
+    assert value is not None  # the key is there
+    return value
+
+
+def _accept(table: Table) -> Accept:
+    table.only(("check", "limit", "because", "by"))
+    for key in ("check", "because", "by"):
+        if key not in table:
+            raise table.error(key, "nothing", "check, because and by in every entry", f'add {key} = ".."')
+    check = table.choice("check", tuple(CHECK_UNITS), "")
+    if check.startswith("loop "):
+        raise not_yet(table.where("check"), "a check of the loop", "checks of the controller alone")
+    because, by = table.text("because"), table.text("by")
+    assert because is not None and by is not None  # noqa: PT018 -- both keys are there
+    return Accept(check, _limit(table, check), CHECK_UNITS[check] or "", because, by)
+
+
+def _limit(table: Table, check: str) -> Fraction | None:
+    unit = CHECK_UNITS[check]
+    if unit is not None and "limit" in table:
+        return _figure(table, "limit", unit)
+    if unit is not None and check not in _LIMIT_OPTIONAL:
+        raise table.error("limit", "nothing", f"a limit in {unit}", f'add a line such as limit = "4 {unit}"')
+    if "limit" in table:
+        raise table.error(
+            "limit",
+            f'a limit for "{check}", which has no figure',
+            f"limits for every check but {', '.join(_CHECKS_WITHOUT_FIGURE)}",
+            "remove the limit",
+        )
+    return None

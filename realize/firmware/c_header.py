@@ -1,0 +1,394 @@
+"""``NAME.h``: where the code comes from, how it is called, what it does not protect from, and its types."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from fractions import Fraction
+from typing import TYPE_CHECKING, Any
+
+from realize.arithmetic.sample import BACK_CALCULATION, HOLD_INTEGRAL, Sample
+from realize.firmware.c_text import (
+    Dialect,
+    comment,
+    dialect,
+    hexadecimal,
+    integer_constant,
+    number_text,
+    wrapped,
+)
+from realize.firmware.emission import Emission
+
+if TYPE_CHECKING:
+    from realize.arithmetic.realization import Section
+
+#: Width of the label column in the header's first comment.
+LABEL = 15
+
+CAUTION = (
+    "Controllers move machines. Check on the bench, with the actuator limited, before closing the loop. This code and "
+    "the tool that wrote it do not replace a functional-safety process (IEC 61508 and its sector standards), local "
+    "codes, or the judgement of a licensed engineer where one is required. Code-generating tools earn credit only "
+    "through verification of their output."
+)
+
+
+def header_text(emission: Emission, sample: Sample, stored: Mapping[str, float]) -> str:
+    """The whole header.
+
+    Parameters
+    ----------
+    emission : Emission
+        What is emitted.
+    sample : Sample
+        The steps of a sample.
+    stored : mapping
+        Field name and value of every coefficient; used with ``coefficients = "table"``.
+    """
+    c = dialect(emission)
+    lines = [
+        *comment(_preamble(emission, sample)),
+        f"#ifndef {c.name}_H",
+        f"#define {c.name}_H",
+        "",
+        *_period(c, emission.realization.period_s),
+        *_limits(c, sample),
+        "#ifdef __cplusplus",
+        'extern "C" {',
+        "#endif",
+        "",
+        *_state(c, sample),
+        *(_table(c, stored) if c.table else []),
+        *_prototypes(c, emission, sample),
+        "#ifdef __cplusplus",
+        "}",
+        "#endif",
+        "",
+        f"#endif /* {c.name}_H */",
+    ]
+    return "\n".join(lines) + "\n"
+
+
+# ---------------------------------------------------------------- the first comment
+
+
+def _preamble(emission: Emission, sample: Sample) -> list[str]:
+    name = emission.name
+    return [
+        *wrapped(f"{name}.h - a difference equation, emitted by realize; its account is {name}.record.json"),
+        "",
+        *([*wrapped(emission.about), ""] if emission.about else []),
+        *_provenance(emission, sample),
+        "",
+        *_paragraph("Calls", _calls(emission)),
+        *_paragraph("Feed-through", _feed_through(emission)),
+        *_paragraph("Arithmetic", _arithmetic()),
+        *_listed("Accepted deviations", [_accepted(entry) for entry in emission.accepted]),
+        *_listed("Not protected", [*_unprotected(emission, sample), *emission.notes]),
+        *_paragraph("Caution", CAUTION)[:-1],
+    ]
+
+
+def _provenance(emission: Emission, sample: Sample) -> list[str]:
+    realization = emission.realization
+    rate = number_text(1 / realization.period_s)
+    labelled = [
+        ("revision", emission.revision),
+        ("requirement", emission.requirement),
+        ("author", emission.author),
+        ("transfer", f"G(s) = {emission.transfer_text}"),
+        *emission.particulars,
+        ("method", emission.method),
+        ("sample period", f"{_period_text(realization.period_s)} s (rate {rate} Hz)"),
+        ("structure", _structure(emission)),
+        ("arithmetic", f"{realization.format.name}, every operation rounded once, to nearest"),
+        ("input", f"the error, reference minus measurement{_input_text(emission)}"),
+        ("output", f"the command{_output_text(emission, sample)}"),
+        ("anti-windup", _anti_windup(emission, sample)),
+        ("input guard", _guard(emission)),
+    ]
+    return [
+        line
+        for label, text in labelled
+        if text
+        for line in wrapped(text, f"{wrapped(label)[0]:<{LABEL}} ", " " * (LABEL + 1))
+    ]
+
+
+def _period_text(period_s: Fraction) -> str:
+    exact = str(period_s)
+    return exact if len(exact) <= len("1/1000000000000") else number_text(period_s)
+
+
+def _structure(emission: Emission) -> str:
+    realization = emission.realization
+    sections = _counted(len(realization.sections), "section")
+    integrals = _counted(len(realization.integral), "integral state")
+    return f"{realization.structure}: {sections} in transposed direct form II; {integrals} in units of the output"
+
+
+def _counted(count: int, what: str) -> str:
+    return f"{count or 'no'} {what}{'' if count == 1 else 's'}"
+
+
+def _range_text(limits: tuple[Fraction, Fraction], unit: str) -> str:
+    return f"{number_text(limits[0])} to {number_text(limits[1])} {unit}".rstrip()
+
+
+def _input_text(emission: Emission) -> str:
+    if emission.input_range is None:
+        return f", in {emission.input_unit}" if emission.input_unit else ""
+    return f"; range {_range_text(emission.input_range, emission.input_unit)}, declared but not enforced"
+
+
+def _output_text(emission: Emission, sample: Sample) -> str:
+    unit = f", in {emission.output_unit}" if emission.output_unit else ""
+    if emission.output_range is None:
+        return f"{unit}; no range was given: nothing limits it"
+    inside = "" if _is_stored_exactly(emission.output_range, sample) else ", rounded inward to the format"
+    return f"; clamped to {_range_text(emission.output_range, emission.output_unit)}{inside}"
+
+
+def _is_stored_exactly(limits: tuple[Fraction, Fraction], sample: Sample) -> bool:
+    assert sample.low is not None
+    assert sample.high is not None
+    return limits == (Fraction(sample.low), Fraction(sample.high))
+
+
+def _anti_windup(emission: Emission, sample: Sample) -> str | None:
+    if not emission.realization.integral:
+        return None
+    if emission.anti_windup == HOLD_INTEGRAL:
+        return (
+            "hold-integral: an integral state is not updated while the unclamped command exceeds what was applied "
+            "and its increment pushes further out"
+        )
+    if emission.anti_windup == BACK_CALCULATION and emission.tracking_time_s is not None:
+        tracking = number_text(emission.tracking_time_s)
+        return f"back-calculation: the integral follows what was applied, tracking time {tracking} s"
+    return "none: the integral goes on while the command is limited"
+
+
+def _guard(emission: Emission) -> str:
+    if emission.guard_nonfinite:
+        return "an input that is NaN or infinite counts as the previous accepted input, 0 at first"
+    return "none: an input that is NaN or infinite spoils the state until it is cleared"
+
+
+def _calls(emission: Emission) -> str:
+    name = emission.name
+    return (
+        f"{name}_clear or {name}_preset once; then, every sample period, either {name}_update alone, or "
+        f"{name}_output with the input, the actuator, and {name}_advance with the same input and what the actuator "
+        f"was really given. {name}_update is the two with the command applied. One {name}_state per instance; no "
+        "function touches anything else, and none may work on one state while another does."
+    )
+
+
+def _feed_through(emission: Emission) -> str:
+    sections = emission.realization.sections
+    if sections and all(section.b[0] != 0 for section in sections):
+        return (
+            "direct: the command depends on the input of the same sample, so it must be computed between sampling "
+            "and the actuator, and every delay there adds to the loop's."
+        )
+    return (
+        "none: the command of a sample does not depend on the input of that sample; it can be computed before sampling."
+    )
+
+
+def _arithmetic() -> str:
+    return (
+        "results are the same, bit for bit, on every IEEE 754 processor that rounds to nearest and does not flush "
+        "subnormal numbers to zero. Fast-math settings, wider evaluation and other float formats stop the "
+        "compilation. Fused multiply-add is kept out: under gcc by its own optimize pragma, elsewhere (clang too) by "
+        "the standard pragma. Do not give clang -ffp-contract=fast or a part of -ffast-math: the first overrides the "
+        "pragma, the second cannot be seen by the preprocessor."
+    )
+
+
+def _accepted(entry: Mapping[str, Any]) -> str:
+    limit, unit = entry.get("limit"), entry.get("unit") or ""
+    figure = number_text(limit) if isinstance(limit, Fraction) else str(limit)
+    up_to = "" if limit is None else f", up to {figure} {unit}".rstrip()
+    by = f" ({entry['by']})" if entry.get("by") else ""
+    return f"{entry['check']}{up_to}: {entry.get('because', '')}{by}"
+
+
+def _unprotected(emission: Emission, sample: Sample) -> list[str]:
+    sections = emission.realization.sections
+    lively = [str(k) for k, section in enumerate(sections, 1) if not _decays(section)]
+    limits = [] if sample.low is not None else ["without an output range nothing limits the command"]
+    undamped = [
+        f"section {', '.join(lively)} has poles that do not decay (undamped or growing): such a pair is not protected "
+        "from windup, the limit of the actuator notwithstanding"
+    ]
+    return [
+        *limits,
+        *(undamped if lively else []),
+        "finite inputs so large that a product overflows: the state stays infinite or NaN until it is cleared"
+        + ("; the command then stays within its limits" if sample.low is not None else ""),
+        "a null pointer, a state that was never cleared, two calls on one state at the same time",
+    ]
+
+
+def _decays(section: Section) -> bool:
+    """Whether all poles lie inside the unit circle (Jury's conditions, exact on stored numbers)."""
+    a1, a2 = (*map(Fraction, section.a), Fraction(0), Fraction(0))[:2]
+    return abs(a2) < 1 and abs(a1) < 1 + a2
+
+
+def _paragraph(label: str, text: str) -> list[str]:
+    return [*wrapped(f"{label}: {text}"), ""]
+
+
+def _listed(label: str, entries: Sequence[str]) -> list[str]:
+    if not entries:
+        return []
+    return [f"{label}:", *(line for entry in entries for line in wrapped(entry, "- ", "  ")), ""]
+
+
+# ---------------------------------------------------------------- macros and types
+
+
+def _period(c: Dialect, period_s: Fraction) -> list[str]:
+    numerator, denominator = (integer_constant(n) for n in (period_s.numerator, period_s.denominator))
+    if numerator is None or denominator is None:
+        numerator, denominator = f"{float(period_s):.16e}", "1"
+        says = "Sample period in seconds, to 17 digits: the exact fraction has no room in an integer constant."
+    else:
+        says = "Sample period in seconds, exactly."
+    return [
+        *comment([says]),
+        f"#define {c.name}_PERIOD_NUMERATOR {numerator}",
+        f"#define {c.name}_PERIOD_DENOMINATOR {denominator}",
+        "",
+    ]
+
+
+def _limits(c: Dialect, sample: Sample) -> list[str]:
+    if sample.low is None or sample.high is None:
+        return []
+    return [
+        "/* The command never leaves these. */",
+        f"#define {c.name}_OUTPUT_LOW {_limit(c, sample.low)}",
+        f"#define {c.name}_OUTPUT_HIGH {_limit(c, sample.high)}",
+        "",
+    ]
+
+
+def _limit(c: Dialect, value: float) -> str:
+    whole = integer_constant(int(value)) if value.is_integer() else None
+    if whole is not None:
+        return whole
+    text = f"({c.literal(value)})" if value < 0 else c.literal(value)
+    return f"{text} /* {hexadecimal(value)} */"
+
+
+def _state(c: Dialect, sample: Sample) -> list[str]:
+    fields = [f"    {c.real} {field}; /* {_meaning(field)} */" for field in sample.fields]
+    nothing = [f"    {c.real} unused; /* a static gain has nothing to remember */"]
+    return ["typedef struct {", *(fields or nothing), f"}} {c.name}_state;", ""]
+
+
+def _meaning(field: str) -> str:
+    """What a state field holds, from its name."""
+    known = {
+        "accepted": "the last input that was finite",
+        "unclamped": "command before the clamp, from output to advance",
+        "command": "command after the clamp, from output to advance",
+    }
+    if field in known:
+        return known[field]
+    part, _, role = field.partition("_")
+    kind, number = part.rstrip("0123456789"), part.lstrip("abcdefghijklmnopqrstuvwxyz")
+    if kind == "integral":
+        return "what the last addition to it lost" if role else f"integral state {number}"
+    if role == "output":
+        return f"what section {number} hands on, from output to advance"
+    return f"section {number}, state {role}"
+
+
+def _table(c: Dialect, stored: Mapping[str, float]) -> list[str]:
+    fields = [f"    {c.real} {field};" for field in stored]
+    says = wrapped(
+        "Every multiplied coefficient. Those that are exactly 0, 1 or -1 are part of the code and not in the table. "
+        "The gain of a section, and settled_bound and settled_floor, serve the preset and follow from the others."
+    )
+    return [
+        *comment(says),
+        "typedef struct {",
+        *(fields or [f"    {c.real} unused; /* nothing is multiplied */"]),
+        f"}} {c.name}_coefficients;",
+        "",
+        f"extern const {c.name}_coefficients {c.name}_nominal; /* the design's own */",
+        "",
+    ]
+
+
+# ---------------------------------------------------------------- functions
+
+
+def _prototypes(c: Dialect, emission: Emission, sample: Sample) -> list[str]:
+    clear, update, output, advance, preset = (signature + ";" for signature in signatures(c))
+    return [
+        "/* All state zero. */",
+        clear,
+        "",
+        *comment(wrapped("One sample: the command for the input, then the state moved on with it.")),
+        update,
+        "",
+        *comment(wrapped(_output_says(sample))),
+        output,
+        "",
+        *comment(wrapped(_advance_says(emission, sample))),
+        advance,
+        "",
+        *comment(wrapped(_preset_says(emission))),
+        preset,
+        "",
+    ]
+
+
+def signatures(c: Dialect) -> tuple[str, str, str, str, str]:
+    """Clear, update, output, advance and preset, as declared and defined."""
+    by_pointer = f", const {c.name}_coefficients *coefficients" if c.table else ""
+    state = f"{c.name}_state *state{by_pointer}"
+    return (
+        f"void {c.name}_clear({c.name}_state *state)",
+        f"{c.real} {c.name}_update({state}, {c.real} input)",
+        f"{c.real} {c.name}_output({state}, {c.real} input)",
+        f"void {c.name}_advance({state}, {c.real} input, {c.real} applied)",
+        f"int {c.name}_preset({state}, {c.real} input, {c.real} output)",
+    )
+
+
+def _output_says(sample: Sample) -> str:
+    clamped = "The clamped command" if sample.low is not None else "The command"
+    return f"{clamped} for the input, with the least work before the actuator; the state does not move on yet."
+
+
+def _advance_says(emission: Emission, sample: Sample) -> str:
+    text = (
+        "The rest of the sample, after output with the same input: applied is what the actuator was really given, "
+        "in units of the command."
+    )
+    if "applied" not in {step.target for step in sample.advance} or not emission.guard_nonfinite:
+        return text
+    return f"{text} A value that is NaN or infinite counts as the command."
+
+
+def _preset_says(emission: Emission) -> str:
+    text = "Bumpless start: at rest at the input, with output as the next output. Returns 1 when that is possible; "
+    if emission.realization.integral:
+        text += (
+            "else 0. With an integral only input 0 is at rest: at any other input the next output is still the one "
+            "asked for, and the integral moves on from there. "
+        )
+    else:
+        text += (
+            "else the state at rest for the input, and 0. Possible is what the gain at rest times the input gives, "
+            "within the rounding of the sample. "
+        )
+    if emission.output_range is not None:
+        text += "An output beyond the clamp counts as the limit, and gives 0 unless the limit is what it rounds to. "
+    return text + "Arguments that are NaN or infinite, and a state that would be, are refused: 0, nothing changed."

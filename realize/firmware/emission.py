@@ -1,0 +1,82 @@
+"""What an emission is made from: a realization and what the header and the record say about it."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from fractions import Fraction
+from typing import TYPE_CHECKING, Any, NamedTuple
+
+from realize.arithmetic.recursion import Recursion
+from realize.arithmetic.sample import HOLD_INTEGRAL
+
+if TYPE_CHECKING:
+    from realize.arithmetic.realization import Realization
+
+
+class Emission(NamedTuple):
+    """Everything that ends up in the files.
+
+    Attributes
+    ----------
+    name : str
+        C identifier, the prefix of every name.
+    realization : Realization
+        The stored numbers.
+    method : str
+        How ``G(s)`` became ``Gd(z)``.
+    transfer_text : str
+        ``G(s)`` as the user wrote it.
+    about, revision, requirement, author : str or None
+        Echoed in the header.
+    particulars : sequence of (str, str)
+        Further label and text lines of the header: values, roll-off.
+    input_range, output_range : tuple of Fraction or None
+        Physical. The command is clamped to the output range.
+    input_unit, output_unit : str
+        May be empty.
+    coefficients : str
+        ``inline``, or ``table`` for a constant struct passed by pointer.
+    recursion_sign : str
+        ``subtract``, or ``add`` where the C text stores ``-a``.
+    anti_windup, tracking_time_s, guard_nonfinite
+        As in :func:`realize.arithmetic.sample.describe`.
+    notes : sequence of str
+        Further sentences for the header on what is not protected.
+    design : mapping
+        The resolved design, for the record.
+    checks, accepted : sequence of mapping
+        For the record; ``accepted`` (check, limit, unit, because, by) for the header too.
+    """
+
+    name: str
+    realization: Realization
+    method: str
+    transfer_text: str
+    about: str | None = None
+    revision: str | None = None
+    requirement: str | None = None
+    author: str | None = None
+    particulars: Sequence[tuple[str, str]] = ()
+    input_range: tuple[Fraction, Fraction] | None = None
+    output_range: tuple[Fraction, Fraction] | None = None
+    input_unit: str = ""
+    output_unit: str = ""
+    coefficients: str = "inline"
+    recursion_sign: str = "subtract"
+    anti_windup: str = HOLD_INTEGRAL
+    tracking_time_s: Fraction | None = None
+    guard_nonfinite: bool = True
+    notes: Sequence[str] = ()
+    design: Mapping[str, Any] = {}
+    checks: Sequence[Mapping[str, Any]] = ()
+    accepted: Sequence[Mapping[str, Any]] = ()
+
+    def recursion(self) -> Recursion:
+        """The bit-exact model, cleared."""
+        return Recursion(
+            self.realization,
+            self.output_range,
+            self.anti_windup,
+            self.tracking_time_s,
+            self.guard_nonfinite,
+        )

@@ -1,0 +1,80 @@
+"""``NAME.record.json``: how the firmware text came to be, for machines."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Mapping
+from fractions import Fraction
+from hashlib import sha256
+from math import isfinite
+from typing import TYPE_CHECKING, Any
+
+from realize.firmware.c_text import hexadecimal
+from realize.version import VERSION
+
+if TYPE_CHECKING:
+    from realize.firmware.emission import Emission
+
+SCHEMA = "realize/1"
+
+#: Significant digits of a measured figure: what stays the same on every machine and every numpy.
+FIGURE_DIGITS = 5
+
+
+def record(emission: Emission, files: Mapping[str, str]) -> dict[str, Any]:
+    """The account of an emission, ready for JSON.
+
+    Parameters
+    ----------
+    emission : Emission
+        What was emitted.
+    files : mapping
+        Name and text of the files it describes.
+
+    Returns
+    -------
+    dict
+        Coefficients in ascending powers of 1/z, ``a`` without its 1 and for subtraction, whatever sign the C text
+        stores. Figures of the checks are rounded to five digits; what is not finite is null.
+    """
+    realization = emission.realization
+    return {
+        "schema": SCHEMA,
+        "design": dict(emission.design),
+        "method": emission.method,
+        "structure": realization.structure,
+        "arithmetic": realization.format.name,
+        "integral": [_coefficient(gain) for gain in realization.integral],
+        "sections": [
+            {"b": [_coefficient(b) for b in section.b], "a": [_coefficient(a) for a in section.a]}
+            for section in realization.sections
+        ],
+        "checks": [_figures(check) for check in emission.checks],
+        "accepted": [_figures(entry) for entry in emission.accepted],
+        "files": {name: sha256(text.encode()).hexdigest() for name, text in files.items()},
+        "tool": {"name": "realize", "version": VERSION},
+    }
+
+
+def record_text(emission: Emission, files: Mapping[str, str]) -> str:
+    """The record as JSON text."""
+    return json.dumps(record(emission, files), indent=2, allow_nan=False) + "\n"
+
+
+def _coefficient(value: float) -> dict[str, Any]:
+    return {"value": str(Fraction(value)), "stored": hexadecimal(value), "fraction_bits": None}
+
+
+def _figures(value: Any) -> Any:
+    """Figures rounded, complex ones taken apart, what is not finite as null."""
+    if isinstance(value, complex):
+        return {"re": _figures(value.real), "im": _figures(value.imag)}
+    if isinstance(value, float):
+        return float(f"{value:.{FIGURE_DIGITS}g}") if isfinite(value) else None
+    if isinstance(value, Fraction):
+        return str(value)
+    if isinstance(value, Mapping):
+        return {key: _figures(entry) for key, entry in value.items()}
+    if isinstance(value, (list, tuple)):
+        return [_figures(entry) for entry in value]
+    return value

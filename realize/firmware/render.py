@@ -1,0 +1,42 @@
+"""From an emission to the text of its four files."""
+
+from __future__ import annotations
+
+from realize.arithmetic.settling import settle
+from realize.firmware.c_header import header_text
+from realize.firmware.c_source import source_text, stored_coefficients
+from realize.firmware.emission import Emission
+from realize.firmware.record import record_text
+from realize.firmware.vectors import vectors_text
+
+
+def render_firmware(emission: Emission) -> dict[str, str]:
+    """The four files of an emission.
+
+    Parameters
+    ----------
+    emission : Emission
+        What to emit.
+
+    Returns
+    -------
+    dict
+        File name and text of header, source, vectors and record, in this order. The same emission gives the same
+        bytes everywhere.
+
+    Raises
+    ------
+    RealizeError
+        When the name is no identifier, the output range holds no value of the format, or rounding moved a pole of a
+        section to z = 1.
+    """
+    name = emission.name
+    sample = emission.recursion().sample
+    settling = settle(emission.realization, sample)
+    stored = stored_coefficients(emission, sample, settling)
+    files = {
+        f"{name}.h": header_text(emission, sample, stored),
+        f"{name}.c": source_text(emission, sample, settling, stored),
+        f"{name}_vectors.csv": vectors_text(emission),
+    }
+    return files | {f"{name}.record.json": record_text(emission, files)}

@@ -1,0 +1,1 @@
+"""The loop around a controller."""

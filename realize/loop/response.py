@@ -1,0 +1,215 @@
+"""Frequency responses as the logarithm of their magnitude and an unwrapped phase, from factors.
+
+Every part answers for arrays of frequencies in rad/s with ``(ln |.|, phase in rad)``. The phase of a factor is
+continuous along the axis (or the circle), a root on it counting as one left of the axis (inside the circle): so the
+phase of a product is unwrapped without looking at neighbours, and its change along a stretch is exact.
+Polynomials are never evaluated; ``exp(jwT) - 1`` is taken by its sine form.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from fractions import Fraction
+from math import log, pi
+from typing import Any, NamedTuple, Protocol
+
+import numpy as np
+import numpy.typing as npt
+
+from realize.checks.modes import every, logarithm
+from realize.transfer import PulseTransferFunction, TransferFunction
+
+Real = npt.NDArray[np.float64]
+Complex = npt.NDArray[np.complex128]
+
+#: Root in ``z - 1`` at z = -1, the end of the frequency axis.
+_AT_NYQUIST = -2.0
+
+
+class Part(Protocol):
+    """Anything with a frequency response."""
+
+    def at(self, w: Real) -> tuple[Real, Real]:
+        """``ln |.|`` and phase at frequencies above 0."""
+
+
+class Start(NamedTuple):
+    """How a response begins at low frequency: ``gain (jw)^order``.
+
+    Attributes
+    ----------
+    order : int
+        Zeros minus poles at the origin.
+    log_gain : float
+        ``ln |gain|``.
+    phase : float
+        Unwrapped phase of the gain: a multiple of pi.
+    """
+
+    order: int
+    log_gain: float
+    phase: float
+
+
+class Continuous:
+    """A transfer function at ``s = jw``.
+
+    Attributes
+    ----------
+    features : array of complex
+        Roots off the origin in rad/s: what the response is shaped by.
+    growing : int
+        Poles right of the imaginary axis.
+    start : Start
+        Behaviour at low frequency.
+    """
+
+    def __init__(self, transfer: TransferFunction) -> None:
+        self._gain = float(log_size(transfer.gain)), 0.0 if transfer.gain > 0 else pi
+        self._zeros, self._poles = (_array(every(roots)) for roots in (transfer.zeros, transfer.poles))
+        self.features = np.concatenate([self._zeros[self._zeros != 0], self._poles[self._poles != 0]])
+        self.growing = int(np.sum(self._poles.real > 0))
+        kept = [roots[roots != 0] for roots in (self._zeros, self._poles)]
+        phase = self._gain[1] + float(_phase_in_s(kept[0], _ZERO)[0] - _phase_in_s(kept[1], _ZERO)[0])
+        self.start = Start(
+            transfer.zeros_minus_poles_at_origin, log_size(transfer.low_frequency_gain), _multiple_of_pi(phase)
+        )
+
+    def at(self, w: Real) -> tuple[Real, Real]:
+        """``ln |G(jw)|`` and phase."""
+        over, under = (_size_in_s(roots, w) for roots in (self._zeros, self._poles))
+        lead, lag = (_phase_in_s(roots, w) for roots in (self._zeros, self._poles))
+        return self._gain[0] + over - under, self._gain[1] + lead - lag
+
+
+class Sampled:
+    """A pulse transfer function at ``z = exp(jwT)``, 0 < wT <= pi.
+
+    Attributes
+    ----------
+    features, growing, start
+        As for :class:`Continuous`: ``ln(z)/T`` for the roots, poles outside the unit circle.
+    end_phase : float
+        Unwrapped phase at half the sample rate, a multiple of pi; a pole at z = -1 is passed outside.
+    """
+
+    def __init__(self, pulse: PulseTransferFunction) -> None:
+        self._period_s = float(pulse.period_s)
+        gain = pulse.gain
+        self._gain = log_size(gain), 0.0 if gain > 0 else pi
+        self._zeros, self._poles = (_OnCircle(every(roots)) for roots in (pulse.zeros, pulse.poles))
+        away = [d for d in (*every(pulse.zeros), *every(pulse.poles)) if d not in (0, -1)]
+        self.features = _array([logarithm(d) / self._period_s for d in away])
+        self.growing = self._poles.outside
+        k = pulse.zeros_minus_poles_at_one
+        self.start = Start(k, log_size(pulse.low_frequency_gain), _multiple_of_pi(self._phase_without(0.0, 0j)))
+        # (z + 1) at z = -1 - 0 has the phase pi.
+        turns = pi * (self._zeros.count(_AT_NYQUIST) - self._poles.count(_AT_NYQUIST))
+        self.end_phase = _multiple_of_pi(self._phase_without(pi, complex(_AT_NYQUIST)) + turns)
+
+    def at(self, w: Real) -> tuple[Real, Real]:
+        """``ln |Gd(exp(jwT))|`` and phase."""
+        half = w * (self._period_s / 2)
+        sine = np.sin(half)
+        turned = -2 * sine * sine + 2j * sine * np.cos(half)
+        over, lead = self._zeros.at(2 * half, turned)
+        under, lag = self._poles.at(2 * half, turned)
+        return self._gain[0] + over - under, self._gain[1] + lead - lag
+
+    def _phase_without(self, angle: float, excluded: complex) -> float:
+        at = np.array([angle]), np.array([-1 + np.exp(1j * angle) if angle else 0j])
+        lead, lag = (roots.without(excluded).at(*at)[1] for roots in (self._zeros, self._poles))
+        return self._gain[1] + float(lead[0] - lag[0])
+
+
+class _OnCircle:
+    """Factors ``z - root`` on the unit circle, the roots given as ``z - 1``."""
+
+    def __init__(self, deltas: Sequence[complex]) -> None:
+        self._deltas = _array(deltas)[:, None]
+        excess = 2 * self._deltas.real + np.abs(self._deltas) ** 2
+        self._grows = excess > 0
+        self.outside = int(np.sum(self._grows))
+        # exp(j angle) - root = exp(j angle) (1 - root exp(-j angle)) inside, -root (1 - exp(j angle)/root) outside:
+        # the bracket stays right of the imaginary axis.
+        self._turned = np.where(self._grows, -1 / np.where(self._grows, 1 + self._deltas, 1), 1)
+        self._fixed = float(np.sum(np.where(self._grows, np.angle(-1 - self._deltas), 0)))
+        self._inside = len(deltas) - self.outside
+
+    def count(self, delta: float) -> int:
+        return int(np.sum(self._deltas == delta))
+
+    def without(self, delta: complex) -> _OnCircle:
+        return _OnCircle([complex(d) for d in self._deltas.ravel() if d != delta])
+
+    def at(self, angle: Real, turned: Complex) -> tuple[Real, Real]:
+        """``ln |.|`` and phase of the product at ``exp(j angle) = 1 + turned``."""
+        factor = turned - self._deltas
+        with np.errstate(divide="ignore"):
+            size = np.log(np.abs(factor)).sum(axis=0)
+        bracket = factor * np.where(self._grows, self._turned, np.conj(1 + turned))
+        return size, self._fixed + self._inside * angle + np.angle(bracket).sum(axis=0)
+
+
+class Delay:
+    """``exp(-s delay)``."""
+
+    def __init__(self, delay_s: float) -> None:
+        self.delay_s = delay_s
+
+    def at(self, w: Real) -> tuple[Real, Real]:
+        """No gain, and a phase that falls in proportion."""
+        return np.zeros_like(w), -self.delay_s * w
+
+
+class Hold:
+    """``(1 - exp(-sT))/(sT)``: a held sample, seen as a filter."""
+
+    def __init__(self, period_s: float) -> None:
+        self.period_s = period_s
+
+    def at(self, w: Real) -> tuple[Real, Real]:
+        """``ln |sin x / x|`` and ``-x``, half a turn back at every zero, ``x = wT/2``."""
+        x = w * (self.period_s / 2)
+        with np.errstate(divide="ignore"):
+            return np.log(np.abs(np.sinc(x / pi))), -x + pi * np.floor(x / pi)
+
+
+def log_size(value: Fraction) -> float:
+    """``ln |value|`` of a rational of any size but 0."""
+    return log(abs(value.numerator)) - log(value.denominator)
+
+
+def combined(parts: Sequence[Part], w: Real) -> tuple[Real, Real]:
+    """``ln |.|`` and phase of a product of parts."""
+    sizes, phases = zip(*(part.at(w) for part in parts), strict=True)
+    return sum(sizes[1:], sizes[0]), sum(phases[1:], phases[0])
+
+
+def phase_at(part: Part, w: float) -> float:
+    """Phase in rad at one frequency."""
+    return float(part.at(np.array([w]))[1][0])
+
+
+_ZERO: Real = np.zeros(1)
+
+
+def _array(roots: Sequence[complex]) -> Complex:
+    return np.array(roots, dtype=complex)
+
+
+def _multiple_of_pi(phase: float) -> float:
+    return pi * round(phase / pi)
+
+
+def _size_in_s(roots: Complex, w: Real) -> Any:
+    re, im = roots.real[:, None], w - roots.imag[:, None]
+    with np.errstate(divide="ignore"):
+        return 0.5 * np.log(re * re + im * im).sum(axis=0)
+
+
+def _phase_in_s(roots: Complex, w: Real) -> Any:
+    """Phase of ``prod(jw - root)``: a root right of the axis turns the other way."""
+    re, im = roots.real[:, None], w - roots.imag[:, None]
+    angle = np.arctan2(im, np.abs(re))
+    return np.where(re > 0, pi - angle, angle).sum(axis=0)

@@ -1,0 +1,84 @@
+"""The published methods from ``G(s)`` to ``Gd(z)``.
+
+To add one: write a unit that returns a :class:`Conversion`, its formula and source in the docstring, and add a
+line to :data:`METHODS`.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from fractions import Fraction
+
+from realize.algebra.enclosure import Unresolved
+from realize.errors import RealizeError, Refused
+from realize.methods.conversion import CARRIED_BITS, Conversion, Discretization, pulse_transfer_function
+from realize.methods.invariant import impulse_invariant, ramp_invariant, step_invariant
+from realize.methods.mapped import pole_zero_mapped
+from realize.methods.substitution import (
+    backward_difference,
+    bilinear,
+    bilinear_prewarped,
+    blended_difference,
+    forward_difference,
+)
+from realize.transfer import TransferFunction
+
+Convert = Callable[[TransferFunction, Fraction, Fraction | None], Conversion]
+
+#: Every method by its name, in the order in which tables show them.
+METHODS: dict[str, Convert] = {
+    "step-invariant": step_invariant,
+    "ramp-invariant": ramp_invariant,
+    "impulse-invariant": impulse_invariant,
+    "forward-difference": forward_difference,
+    "backward-difference": backward_difference,
+    "bilinear": bilinear,
+    "bilinear-prewarped": bilinear_prewarped,
+    "blended-difference": blended_difference,
+    "pole-zero-mapped": pole_zero_mapped,
+}
+
+
+def discretize(
+    transfer: TransferFunction, period_s: Fraction, method: str, exact_at_rad_s: Fraction | None = None
+) -> Discretization:
+    """Turn a proper transfer function into a pulse transfer function.
+
+    Parameters
+    ----------
+    transfer : TransferFunction
+        Proper.
+    period_s : Fraction
+        Sample period, positive.
+    method : str
+        A key of :data:`METHODS`.
+    exact_at_rad_s : Fraction, optional
+        For ``bilinear-prewarped``: the frequency at which the response is kept exactly.
+
+    Raises
+    ------
+    RealizeError
+        When the method is unknown.
+    Refused
+        When the transfer function is improper or the method does not apply; the message says why.
+    """
+    if method not in METHODS:
+        raise RealizeError("method", f"unknown name {method!r}", ", ".join(METHODS), "use one of these names")
+    if transfer.relative_degree < 0:
+        raise Refused(
+            "transfer",
+            f"it is improper: its numerator has {-transfer.relative_degree} more than its denominator's degree",
+            "as many poles as zeros, or more",
+            "add a roll-off pole first",
+        )
+    conversion = METHODS[method](transfer, period_s, exact_at_rad_s)
+    try:
+        pulse = pulse_transfer_function(conversion, period_s)
+    except Unresolved:
+        raise Refused(
+            "method", "its gain at z = 1 cannot be told from zero", "", "choose another method or sample rate"
+        ) from None
+    return Discretization(method, pulse, conversion)
+
+
+__all__ = ["CARRIED_BITS", "METHODS", "Conversion", "Discretization", "discretize"]

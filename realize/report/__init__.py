@@ -1,0 +1,1 @@
+"""What people and scripts read: terminal screens and JSON documents."""

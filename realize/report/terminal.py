@@ -1,0 +1,332 @@
+"""What people read in the terminal: at most 100 columns, whole sentences, no colour needed.
+
+Every screen starts with yes or no, then says why, then what to do. Figures have at most five significant
+digits.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Sequence
+from math import log, pi
+from textwrap import fill
+
+from realize.algebra.expression.printing import format_transfer
+from realize.algebra.roots import Root
+from realize.checks import Check
+from realize.design import Design
+from realize.quantity import format_engineering
+from realize.realizability import Assessment
+from realize.report.documents import natural_frequency_and_damping
+from realize.rolloff import Proposal, rolloff_toml
+from realize.workflow import Comparison, MethodResult
+
+WIDTH = 100
+
+#: Longest transfer function printed in lowest terms: beyond it the user's own text says more.
+_LONGEST_TRANSFER = 400
+
+#: Decay that is called gone: 1 %.
+_DECAYED = log(100)
+
+#: Checks with a column of their own in the comparison, with the words that head it.
+_COLUMNS = (
+    ("pole shift", ("pole", "shift", "%")),
+    ("zero shift", ("zero", "shift", "%")),
+    ("magnitude in band", ("gain", "in band", "dB")),
+    ("phase in band", ("phase", "in band", "deg")),
+    ("low-frequency gain", ("gain", "at 0 Hz", "%")),
+    ("step deviation", ("step", "deviates", "%")),
+    ("step overshoot", ("step", "overshoot", "points")),
+    ("converter step", ("converter", "step", "%")),
+)
+
+#: Checks without a column, named in words where they are out.
+_UNSHOWN = ("stability", "saturation recovery")
+
+#: Differences below this are the dust of 400-digit numbers and of floating point.
+_LEAST_SHOWN = 1e-12
+
+#: Differences above this are lost causes, by whatever factor.
+_MOST_SHOWN = 1e6
+
+_MULTIPLE = {1: "", 2: "double", 3: "triple"}
+
+CAUTION = (
+    "Controllers move machines: check on the bench with the actuator limited before closing the loop. This is no "
+    "functional-safety process (IEC 61508 and its sector standards), and replaces neither local codes nor the "
+    "judgement of a licensed engineer where one is required."
+)
+
+
+def assess_text(design: Design, assessment: Assessment) -> str:
+    """The screen of `realize assess`."""
+    blocks = [_verdict(design, assessment), _transfer_block(design, assessment)]
+    blocks += _roots_block("Poles", assessment.transfer.poles), _roots_block("Zeros", assessment.transfer.zeros)
+    if assessment.terms:
+        blocks.append(_heading("What makes it improper") + _list(term.text for term in assessment.terms))
+        blocks.append(_proposals_block(assessment.proposals))
+    if assessment.notes:
+        blocks.append(_heading("Notes") + _list(assessment.notes))
+    if assessment.proposals:
+        blocks.append(
+            _heading("To take the first proposal, add to the design file") + rolloff_toml(assessment.proposals[0])
+        )
+    return "\n".join(blocks)
+
+
+def compare_text(comparison: Comparison) -> str:
+    """The screen of `realize compare`."""
+    blocks = [_comparison_verdict(comparison), _setting(comparison), _methods_table(comparison.methods)]
+    refused = [m for m in comparison.methods if m.refused]
+    if refused:
+        blocks.append(_heading("Refused") + _list(f"{m.method}: {m.refused}" for m in refused))
+    if comparison.chosen and comparison.chosen.refused is None:
+        blocks.append(_checks_block(comparison.chosen))
+    if comparison.design.method == "auto" and comparison.recommended:
+        blocks.append(
+            _heading("To pin the method, add to the design file") + f'[method]\nname = "{comparison.recommended}"\n'
+        )
+    return "\n".join(blocks)
+
+
+def emit_text(comparison: Comparison, chosen: MethodResult, paths: Sequence[str]) -> str:
+    """The screen of `realize emit`."""
+    design = comparison.design
+    assert chosen.realization is not None
+    reason = comparison.because if design.method == "auto" else "named in the design, every check passed"
+    first = f"yes: {design.name} is emitted by {chosen.method}: {reason}"
+    what = (
+        f"{chosen.realization.structure} structure in {design.target.arithmetic}, "
+        f"{_count(len(chosen.realization.integral), 'integral state')}, "
+        f"{_count(len(chosen.realization.sections), 'section')}"
+    )
+    blocks = [_wrapped(first), _setting(comparison), _checks_block(chosen)]
+    accepted = [f"{c.check}: {a.because} ({a.by})" for c, a in chosen.accepted]
+    blocks += [_heading("Accepted deviations") + _list(accepted)] if accepted else []
+    blocks.append(_heading(f"Written ({what})") + "".join(f"  {path}\n" for path in paths))
+    if design.method == "auto":
+        blocks.append(_heading("To pin the method, add to the design file") + f'[method]\nname = "{chosen.method}"\n')
+    return "\n".join([*blocks, _wrapped(CAUTION)])
+
+
+def _verdict(design: Design, assessment: Assessment) -> str:
+    if assessment.realizable:
+        return _wrapped(
+            f"yes: {design.name} is realizable: at least as many poles as zeros. "
+            "Next: `realize compare` shows what each method makes of it."
+        )
+    best = assessment.proposals[0]
+    lost = "" if best.phase_lost_deg is None else f" and costs {best.phase_lost_deg:.3g} deg at the band edge"
+    fits = "" if best.within_window else " It lies outside its window: see below."
+    return _wrapped(
+        f"no: {design.name} is not realizable: {assessment.terms[0].text}. Add a roll-off pole: the first proposal "
+        f"below is at {_hz(float(best.pole_rad_s))}{lost}.{fits}"
+    )
+
+
+def _transfer_block(design: Design, assessment: Assessment) -> str:
+    reduced = format_transfer(assessment.transfer.numerator, assessment.transfer.denominator)
+    lines = [design.transfer_text]
+    if len(reduced) <= _LONGEST_TRANSFER and reduced != design.transfer_text:
+        lines.append(f"= {reduced}")
+    lines.append(f"relative degree {assessment.transfer.relative_degree}")
+    return _heading("Transfer function") + "".join(_wrapped(line, indent="  ") for line in lines)
+
+
+def _roots_block(title: str, roots: Sequence[Root]) -> str:
+    if not roots:
+        return _heading(title) + "  none\n"
+    head = ["natural frequency", "damping ratio", "falls to 1 % in", "s in rad/s", ""]
+    rows = [_root_row(root) for root in roots]
+    return _heading(title) + _table([head, *rows])
+
+
+def _root_row(root: Root) -> list[str]:
+    frequency, damping = natural_frequency_and_damping(root.value)
+    decay = -root.value.real
+    time = format_engineering(_DECAYED / decay, "s") if decay > 0 else "never" if decay == 0 else "grows"
+    shown = "-" if damping is None else f"{damping:.5g}"
+    times = _MULTIPLE.get(root.multiplicity, f"{root.multiplicity}-fold")
+    return [_in_hz(frequency), shown, time, _complex_text(root.value), times]
+
+
+def _proposals_block(proposals: Sequence[Proposal]) -> str:
+    head = ["placement", "order", "damping", "pole", "phase", "gain above", "converter", "window", "fits"]
+    unit = ["", "", "", "rad/s", "lost", "band", "step", "rad/s", ""]
+    rows = [
+        [
+            p.placement,
+            str(p.order),
+            f"{float(p.damping):.4g}",
+            f"{float(p.pole_rad_s):.5g}",
+            _optional(p.phase_lost_deg, " deg"),
+            _optional(p.high_frequency_gain, ""),
+            _optional(p.converter_step_percent, " %"),
+            _window(p.window_rad_s),
+            "yes" if p.within_window else "no",
+        ]
+        for p in proposals
+    ]
+    reasons = [f"{p.placement}, order {p.order}: {reason}" for p in proposals[:1] for reason in p.reasons]
+    return _heading("Roll-off proposals, best first") + _table([head, unit, *rows]) + _list(reasons)
+
+
+def _window(window: tuple[float, float | None] | None) -> str:
+    if window is None:
+        return "empty"
+    low, high = window
+    return f"from {low:.5g}" if high is None else f"{low:.5g} to {high:.5g}"
+
+
+def _comparison_verdict(comparison: Comparison) -> str:
+    chosen, name = comparison.chosen, comparison.design.name
+    if chosen is None:
+        return _wrapped(f"no: nothing can be emitted for {name}: {comparison.because}.")
+    if chosen.refused:
+        return _wrapped(f"no: {chosen.method} does not apply to {name}: {chosen.refused}.")
+    if comparison.design.method == "auto":
+        return _wrapped(f"yes: {chosen.method} is recommended for {name}: {comparison.because}.")
+    if chosen.acceptable:
+        return _wrapped(f"yes: {chosen.method}, which the design names, is within every tolerance.")
+    names = ", ".join(dict.fromkeys(check.check for check in chosen.blocking))
+    also = f" Recommended instead: {comparison.recommended}." if comparison.recommended else ""
+    return _wrapped(f"no: {chosen.method}, which the design names, is out of tolerance on {names}.{also}")
+
+
+def _setting(comparison: Comparison) -> str:
+    """Rate, band and roll-off: what every figure below rests on."""
+    period = float(comparison.period_s)
+    lines = [f"rate {format_engineering(1 / period, 'Hz')}, period {format_engineering(period, 's')}"]
+    lines.append(comparison.band_rests_on)
+    causal = comparison.causal
+    if causal.proposal is not None:
+        origin = "assumed, since the design has no [rolloff]" if causal.assumed else "as the design asks"
+        p = causal.proposal
+        lines.append(
+            f"roll-off ({origin}): {p.placement}, order {p.order}, pole at {_hz(float(p.pole_rad_s))}"
+            + ("" if p.phase_lost_deg is None else f", {p.phase_lost_deg:.3g} deg lost at the band edge")
+        )
+    return "".join(_wrapped(line, indent="  ") for line in lines)
+
+
+def _methods_table(methods: Sequence[MethodResult]) -> str:
+    head = [["", "method", *(words[i] for _, words in _COLUMNS)] for i in range(3)]
+    head[1][:2] = head[2][:2] = ["", ""]
+    rows = [[_good(m), m.method, *(_cell(m, name) for name, _ in _COLUMNS)] for m in methods]
+    key = (
+        "Each figure is the difference between the stored numbers and the design; ! is out of tolerance, "
+        "* out but accepted, - undefined (which does not block)."
+    )
+    out = _out_without_column(methods)
+    return _table([*head, _tolerance_row(methods), *rows], gap=1) + _wrapped(key) + _list(out)
+
+
+def _out_without_column(methods: Sequence[MethodResult]) -> list[str]:
+    """What is out but has no column, methods with the same reason together."""
+    names: dict[str, list[str]] = {}
+    for method in methods:
+        for check in method.blocking:
+            if check.check in _UNSHOWN:
+                names.setdefault(f"out on {check.check}: {check.reason}", []).append(method.method)
+    return [f"{', '.join(who)}: {what}" for what, who in names.items()]
+
+
+def _good(method: MethodResult) -> str:
+    return "yes" if method.acceptable else "no"
+
+
+def _tolerance_row(methods: Sequence[MethodResult]) -> list[str]:
+    tolerances = {c.check: c.tolerance for m in methods for c in m.stored_checks if c.tolerance is not None}
+    return ["", "(tolerance)", *(_figure(tolerances.get(name)) for name, _ in _COLUMNS)]
+
+
+def _cell(method: MethodResult, name: str) -> str:
+    check = next((c for c in method.stored_checks if c.check == name), None)
+    if check is None or check.difference is None:
+        return "-"
+    accepted = any(c is check for c, _ in method.accepted)
+    mark = "*" if accepted else "!" if check.verdict == "out" else ""
+    return _figure(check.difference, 2) + mark
+
+
+def _checks_block(result: MethodResult) -> str:
+    """One row a check: what the method did, and what rounding the stored numbers made of it."""
+    head = [
+        ["check", "design", "stored", "difference", "", "tolerance", "verdict"],
+        ["", "", "", "by method", "as stored", "", ""],
+    ]
+    exact = {check.check: check for check in result.checks if check.of == "exact"}
+    rows = [_check_row(check, exact.get(check.check, check)) for check in result.stored_checks]
+    reasons = [f"{c.check}: {c.reason}" for c in result.stored_checks if c.reason and c.verdict != "within"]
+    block = _heading(f"Checks of {result.method}") + _table([*head, *rows]) + _list(reasons)
+    return block + (_heading("Notes") + _list(result.notes) if result.notes else "")
+
+
+def _check_row(stored: Check, exact: Check) -> list[str]:
+    unit = f" {stored.unit}" if stored.unit and stored.tolerance is not None else ""
+    return [
+        stored.check,
+        _value_text(stored.reference),
+        _value_text(stored.obtained),
+        _figure(exact.difference),
+        _figure(stored.difference),
+        _figure(stored.tolerance) + unit,
+        stored.verdict,
+    ]
+
+
+def _figure(value: float | None, digits: int = 3) -> str:
+    """A difference or tolerance: two or three digits tell how close it came."""
+    if value is not None and 0 < value < _LEAST_SHOWN:
+        return f"<{_LEAST_SHOWN:g}"
+    if value is not None and value > _MOST_SHOWN:
+        return f">{_MOST_SHOWN:g}"
+    return "-" if value is None else f"{value:.{digits}g}"
+
+
+def _value_text(value: float | complex | str | None) -> str:
+    if isinstance(value, complex):
+        return _complex_text(value)
+    return value if isinstance(value, str) else _optional(value, "")
+
+
+def _complex_text(z: complex) -> str:
+    if z.imag == 0:
+        return f"{z.real:.5g}"
+    return f"{z.real:.4g}+-{abs(z.imag):.5g}j" if z.real else f"+-{abs(z.imag):.5g}j"
+
+
+def _optional(value: float | None, unit: str) -> str:
+    return "-" if value is None else f"{value:.5g}{unit}"
+
+
+def _hz(rad_s: float) -> str:
+    return f"{_in_hz(rad_s)} ({rad_s:.5g} rad/s)"
+
+
+def _in_hz(rad_s: float) -> str:
+    return format_engineering(rad_s / (2 * pi), "Hz")
+
+
+def _count(n: int, noun: str) -> str:
+    return f"{n or 'no'} {noun}{'' if n == 1 else 's'}"
+
+
+def _heading(text: str) -> str:
+    return f"{text}\n"
+
+
+def _list(items: Iterable[str]) -> str:
+    return "".join(_wrapped(item, indent="  - ", rest="    ") for item in items)
+
+
+def _wrapped(text: str, indent: str = "", rest: str | None = None) -> str:
+    follow = indent if rest is None else rest
+    return fill(text, WIDTH, initial_indent=indent, subsequent_indent=follow, break_on_hyphens=False) + "\n"
+
+
+def _table(rows: Sequence[Sequence[str]], gap: int = 2) -> str:
+    """Columns flush left, each as wide as its widest cell, ``gap`` spaces apart."""
+    widths = [max(len(row[i]) for row in rows) for i in range(len(rows[0]))]
+    lines = ((" " * gap).join(cell.ljust(w) for cell, w in zip(row, widths, strict=True)) for row in rows)
+    return "".join(f"  {line.rstrip()}\n" for line in lines)

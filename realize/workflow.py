@@ -1,0 +1,425 @@
+"""The whole job in the order a person would do it: causal first, then the methods, the checks, the gate.
+
+Every step is a function from values to values; nothing here prints, and nothing touches the disk.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from functools import cached_property
+from typing import Any, NamedTuple
+
+from realize.arithmetic.formats import FORMATS
+from realize.arithmetic.realization import Realization, realization, stored_pulse
+from realize.arithmetic.recursion import Recursion
+from realize.band import band_edge
+from realize.checks import Check, ContinuousReference, Signals, Tolerances, root_notes, run_checks
+from realize.design import Accept, Design, require_period
+from realize.errors import Refused
+from realize.methods import METHODS, Discretization, discretize
+from realize.realizability import Assessment, assess
+from realize.rolloff import Proposal, circumstances, proposal_for, proposals, rolloff_toml
+from realize.transfer import TransferFunction
+
+#: Near-ties are recommended in this order: the methods people know best first, then the table's order.
+TIE_ORDER = (
+    "bilinear",
+    "ramp-invariant",
+    "pole-zero-mapped",
+    *(name for name in METHODS if name not in ("bilinear", "ramp-invariant", "pole-zero-mapped")),
+)
+
+#: Worst ratios within 5 % of each other are a tie: the figures behind them are read from grids that fine.
+TIE_RATIO = 1.05
+
+
+class Causal(NamedTuple):
+    """A design with a transfer function that can be discretized.
+
+    Attributes
+    ----------
+    transfer : TransferFunction
+        Proper.
+    proposal : Proposal or None
+        The roll-off that made it so.
+    assumed : bool
+        Whether that roll-off is a proposal the design did not ask for.
+    """
+
+    transfer: TransferFunction
+    proposal: Proposal | None
+    assumed: bool
+
+
+@dataclass(frozen=True)
+class MethodResult:
+    """What one method made of a design.
+
+    Attributes
+    ----------
+    method : str
+        Its name.
+    refused : str or None
+        Why it does not apply; then everything below is empty.
+    discretization, realization : Discretization, Realization or None
+        ``Gd(z)``, and its stored numbers.
+    checks : tuple of Check
+        On the stored numbers, and on the exact ones where these differ.
+    blocking : tuple of Check
+        Checks of the stored numbers that are out and not covered by an acceptance.
+    accepted : tuple of (Check, Accept)
+        Checks that are out, and the agreement that covers them.
+    notes : tuple of str
+        What the user should know.
+    """
+
+    method: str
+    refused: str | None
+    discretization: Discretization | None = None
+    realization: Realization | None = None
+    checks: tuple[Check, ...] = ()
+    blocking: tuple[Check, ...] = ()
+    accepted: tuple[tuple[Check, Accept], ...] = ()
+    notes: tuple[str, ...] = ()
+
+    @property
+    def acceptable(self) -> bool:
+        """Whether code may be emitted from it."""
+        return self.refused is None and not self.blocking
+
+    @property
+    def stability(self) -> str | None:
+        """``stable``, ``marginal`` or ``unstable``, of the stored numbers."""
+        found = next((c for c in self.stored_checks if c.check == "stability"), None)
+        return str(found.obtained) if found else None
+
+    @property
+    def stored_checks(self) -> tuple[Check, ...]:
+        """The checks that decide."""
+        return tuple(c for c in self.checks if c.of == "stored")
+
+    @cached_property
+    def worst(self) -> tuple[float, Check] | None:
+        """Largest ratio of difference to tolerance over the stored checks, and the check it belongs to."""
+        ratios = [
+            (c.difference / c.tolerance, c)
+            for c in self.stored_checks
+            if c.difference is not None and c.tolerance and c.verdict != "undefined"
+        ]
+        return max(ratios, key=lambda pair: pair[0], default=None)
+
+
+@dataclass(frozen=True)
+class Comparison:
+    """Every method side by side.
+
+    Attributes
+    ----------
+    design : Design
+        As the user wrote it.
+    causal : Causal
+        With the roll-off that was needed, if any.
+    period_s : Fraction
+        Sample period.
+    band_rad_s, band_rests_on : Fraction, str
+        Band edge, and the sentence that says where it comes from.
+    methods : tuple of MethodResult
+        In the order of :data:`realize.methods.METHODS`.
+    recommended : str or None
+        Name of the recommended method.
+    because : str
+        The reason, or what stands in the way.
+    """
+
+    design: Design
+    causal: Causal
+    period_s: Fraction
+    band_rad_s: Fraction
+    band_rests_on: str
+    methods: tuple[MethodResult, ...]
+    recommended: str | None
+    because: str
+
+    @property
+    def chosen(self) -> MethodResult | None:
+        """The method the design names, or the recommended one."""
+        name = self.recommended if self.design.method == "auto" else self.design.method
+        return next((m for m in self.methods if m.method == name), None)
+
+    @property
+    def acceptable(self) -> bool:
+        """Whether the chosen method may be emitted."""
+        return self.chosen is not None and self.chosen.acceptable
+
+
+def assess_design(design: Design) -> Assessment:
+    """Say whether a design is realizable, and what would make it so."""
+    return assess(design.transfer, **_circumstances(design))
+
+
+def _circumstances(design: Design) -> dict[str, Any]:
+    """What roll-off poles are judged by, as far as the design says."""
+    signals, tolerances = _signals(design), Tolerances.of(design.tolerance)
+    given = {
+        "period_s": design.period_s,
+        "band_rad_s": design.band_rad_s,
+        "converter_step_tolerance_percent": tolerances.exact("converter_step"),
+        "input_per_count": signals.input_per_count,
+        "output_span": signals.output_span,
+        "method": design.method,
+    }
+    return given | ({"phase_budget_deg": design.rolloff.phase_budget_deg} if design.rolloff else {})
+
+
+def make_causal(design: Design, *, assume: bool) -> Causal:
+    """Apply the roll-off a design asks for, or the best proposal.
+
+    Parameters
+    ----------
+    assume : bool
+        Whether the best proposal may stand in for a missing ``[rolloff]``; else an improper design is refused.
+
+    Raises
+    ------
+    Refused
+        When the design is improper and has no ``[rolloff]``; the message holds the lines to paste.
+    RealizeError
+        When ``[rolloff]`` does not fit the transfer function.
+    """
+    transfer, asked = design.transfer, design.rolloff
+    if asked is None and transfer.relative_degree >= 0:
+        return Causal(transfer, None, assumed=False)
+    around = circumstances(transfer, **_circumstances(design))
+    if asked is None:
+        if not assume:
+            raise _improper(assess_design(design))
+        best = proposals(transfer, around)[0]
+        return Causal(best.transfer, best, assumed=True)
+    proposal = proposal_for(
+        transfer,
+        around,
+        placement=asked.placement,
+        order=asked.order,
+        damping=asked.damping,
+        pole_rad_s=asked.pole_rad_s,
+    )
+    return Causal(proposal.transfer, proposal, assumed=False)
+
+
+def _improper(assessment: Assessment) -> Refused:
+    return Refused(
+        "transfer",
+        f"not realizable: {assessment.terms[0].text}",
+        "as many poles as zeros, or more",
+        "add these lines to the design file, or choose another proposal of `realize assess`:\n\n"
+        + rolloff_toml(assessment.proposals[0]),
+    )
+
+
+def compare(design: Design) -> Comparison:
+    """Run every method and every check.
+
+    Raises
+    ------
+    RealizeError
+        When the design has no sample rate, or its ``[rolloff]`` does not fit.
+    """
+    return _comparison(design, make_causal(design, assume=True), tuple(METHODS))
+
+
+def choose(design: Design) -> Comparison:
+    """Run what emission needs: the named method alone, or every method where the design leaves it open.
+
+    Raises
+    ------
+    RealizeError
+        As :func:`compare`, and :class:`Refused` when the design is improper and has no ``[rolloff]``.
+    """
+    names = tuple(METHODS) if design.method == "auto" else (design.method,)
+    return _comparison(design, make_causal(design, assume=False), names)
+
+
+def _comparison(design: Design, causal: Causal, names: Sequence[str]) -> Comparison:
+    period_s = require_period(design)
+    band_rad_s, rests_on = band_edge(design.transfer, period_s, design.band_rad_s)
+    reference = ContinuousReference(causal.transfer, period_s, band_rad_s)
+    results = tuple(_result(design, causal.transfer, reference, name) for name in names)
+    recommended, because = _recommendation(results)
+    return Comparison(design, causal, period_s, band_rad_s, rests_on, results, recommended, because)
+
+
+def _result(design: Design, transfer: TransferFunction, reference: ContinuousReference, name: str) -> MethodResult:
+    exact_at, notes = _exact_at(design, reference, name)
+    try:
+        made = discretize(transfer, reference.period_s, name, exact_at)
+        stored = realization(made.pulse, FORMATS[design.target.arithmetic], design.target.structure)
+    except Refused as refusal:
+        return MethodResult(name, f"{refusal.where}: {refusal.found}")
+    checks = _checks(design, reference, made, stored)
+    blocking, accepted = gate(checks, design.accept)
+    notes += made.conversion.notes + root_notes(made.pulse, transfer)
+    return MethodResult(name, None, made, stored, checks, blocking, accepted, notes)
+
+
+def _exact_at(design: Design, reference: ContinuousReference, name: str) -> tuple[Fraction | None, tuple[str, ...]]:
+    """Where prewarping is exact: as the design says, else at the band edge."""
+    if name != "bilinear-prewarped":
+        return None, ()
+    if design.exact_at_rad_s is not None:
+        return design.exact_at_rad_s, ()
+    return reference.band_rad_s, ("exact at the band edge, since the design names no exact_at",)
+
+
+def _checks(
+    design: Design, reference: ContinuousReference, made: Discretization, stored: Realization
+) -> tuple[Check, ...]:
+    """Checks of the stored numbers, followed by those of the exact ones that differ in their figure."""
+    signals, tolerances = _signals(design), Tolerances.of(design.tolerance)
+    simulate = _simulate(design, stored) if signals.output_range else None
+    of_stored = run_checks(reference, stored_pulse(stored), "stored", tolerances, signals, simulate=simulate)
+    of_exact = run_checks(
+        reference, made.pulse, "exact", tolerances, signals, known_stability=_image_stability(reference, made)
+    )
+    by_name = {check.check: check for check in of_stored}
+    return of_stored + tuple(check for check in of_exact if _differs(check, by_name[check.check]))
+
+
+def _simulate(design: Design, stored: Realization) -> Callable[[Sequence[float]], list[float]]:
+    """The emitted recursion, cleared before each run."""
+    target = design.target
+    model = Recursion(stored, design.output.range, target.anti_windup, target.tracking_time_s, target.guard_nonfinite)
+
+    def run(inputs: Sequence[float]) -> list[float]:
+        model.clear()
+        return model.run(inputs)
+
+    return run
+
+
+def _image_stability(reference: ContinuousReference, made: Discretization) -> str | None:
+    """Stability where the denominator is not rational: those methods map the half plane onto the disc."""
+    return None if made.has_exact_denominator else reference.stability
+
+
+def _differs(exact: Check, stored: Check) -> bool:
+    """Whether rounding changed a verdict or the figure people read (five significant digits)."""
+    shown = [None if c.difference is None else f"{c.difference:.5g}" for c in (exact, stored)]
+    return exact.verdict != stored.verdict or shown[0] != shown[1]
+
+
+def gate(
+    checks: Sequence[Check], acceptances: Sequence[Accept]
+) -> tuple[tuple[Check, ...], tuple[tuple[Check, Accept], ...]]:
+    """Split the stored checks that are out into those that block and those that an acceptance covers.
+
+    Lost stability is never covered: only a growing mode that the design itself has may be accepted.
+    """
+    blocking, accepted = [], []
+    for check in checks:
+        if check.of == "stored" and check.verdict == "out":
+            agreement = next((a for a in acceptances if _covers(a, check)), None)
+            if agreement is None:
+                blocking.append(check)
+            else:
+                accepted.append((check, agreement))
+    return tuple(blocking), tuple(accepted)
+
+
+def _covers(agreement: Accept, check: Check) -> bool:
+    if agreement.check != check.check:
+        return False
+    if check.check == "stability":
+        return check.reference == check.obtained
+    if agreement.limit is None:
+        return check.difference is None or check.check == "saturation recovery"
+    return check.difference is not None and Fraction(check.difference) <= agreement.limit
+
+
+def _recommendation(results: Sequence[MethodResult]) -> tuple[str | None, str]:
+    """The acceptable method with the smallest worst ratio; near-ties by :data:`TIE_ORDER`."""
+    acceptable = [r for r in results if r.acceptable]
+    if not acceptable:
+        return None, _nothing_acceptable(results)
+    least = min(_ratio(r) for r in acceptable)
+    near = [r for r in acceptable if _ratio(r) <= TIE_RATIO * least]
+    best = min(near, key=lambda r: TIE_ORDER.index(r.method))
+    if best.worst is None:
+        return best.method, "no check has a figure; first in the order of preference"
+    ratio, check = best.worst
+    reason = f"its worst figure, {check.check}, uses {100 * ratio:.3g} % of its tolerance"
+    if len(near) > 1:
+        return best.method, f"{reason}; preferred among {len(near)} methods within 5 % of each other"
+    return best.method, f"{reason}, the least of {len(acceptable)} acceptable methods"
+
+
+def _ratio(result: MethodResult) -> float:
+    return result.worst[0] if result.worst else 0.0
+
+
+def _nothing_acceptable(results: Sequence[MethodResult]) -> str:
+    tried = [r for r in results if r.refused is None]
+    if not tried:
+        return f"no method applies: {results[0].refused}"
+    closest = min(tried, key=_ratio)
+    names = ", ".join(dict.fromkeys(c.check for c in closest.blocking))
+    return f"no method is within tolerance; {closest.method} comes closest and is out on {names}"
+
+
+def refuse_unacceptable(comparison: Comparison) -> MethodResult:
+    """The chosen method, or a refusal that says what failed and what would help.
+
+    Raises
+    ------
+    Refused
+        When nothing may be emitted.
+    """
+    chosen = comparison.chosen
+    if chosen is None:
+        raise Refused(
+            "checks",
+            comparison.because,
+            "every check within its tolerance",
+            _advice(comparison),
+        )
+    if chosen.refused is not None:
+        raise Refused("[method] name", f"{chosen.method} does not apply: {chosen.refused}", "", "choose another method")
+    if chosen.blocking:
+        found = "; ".join(_failure(check) for check in chosen.blocking)
+        raise Refused(
+            "checks",
+            f"{chosen.method} is out of tolerance: {found}",
+            "every check within its tolerance",
+            _advice(comparison),
+        )
+    return chosen
+
+
+def _failure(check: Check) -> str:
+    if check.difference is None or check.tolerance is None or check.check == "stability":
+        return f"{check.check}: {check.reason}"
+    return f"{check.check} differs by {check.difference:.5g} {check.unit} (tolerance {check.tolerance:.5g})"
+
+
+def _advice(comparison: Comparison) -> str:
+    """What would help, from the first check in the way."""
+    tried = [r for r in comparison.methods if r.refused is None]
+    chosen = comparison.chosen or min(tried, key=_ratio, default=None)
+    if chosen is None:
+        return "see `realize compare` for why each method was refused"
+    exact_is_good = {c.check for c in chosen.checks if c.of == "exact" and c.verdict == "within"}
+    if any(check.check in exact_is_good for check in chosen.blocking):
+        if comparison.design.target.arithmetic == "float32":
+            return 'rounding is at fault, not the method: arithmetic = "float64", or a lower sample rate'
+        return "rounding is at fault, not the method: a lower sample rate"
+    if any(check.check == "stability" for check in chosen.blocking):
+        return 'another method; or, where the design itself has the growing mode, [[accept]] check = "stability"'
+    return (
+        "a higher sample rate, another method (`realize compare` shows them side by side), "
+        "or [[accept]] with a limit and a reason"
+    )
+
+
+def _signals(design: Design) -> Signals:
+    return Signals(design.input.range, design.input.per_count, design.output.range, design.target.tracking_time_s)

@@ -1,0 +1,122 @@
+"""Realizations for the tests of the firmware: a grid over every option, and random ones. All data invented."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from fractions import Fraction
+from itertools import product
+from math import cos, pi
+from random import Random
+
+from realize.arithmetic.formats import FORMATS, FloatFormat
+from realize.arithmetic.realization import Realization, Section
+from realize.firmware import Emission
+
+PERIOD_S = Fraction(1, 2000)
+UNIT_RANGE = (Fraction(-1), Fraction(1))
+
+#: Ranges whose ends are integers, fractions that no format holds, zero at one end, and none.
+RANGES = (UNIT_RANGE, (Fraction(-1, 3), Fraction(7, 10)), (Fraction(0), Fraction(10)), None)
+
+
+def rounded(target: FloatFormat, *values: float | str | Fraction) -> tuple[float, ...]:
+    """Values of a format, from what a person would write."""
+    return tuple(target.round(Fraction(value)) for value in values)
+
+
+def section(target: FloatFormat, b: tuple[float | str, ...], a: tuple[float | str, ...] = ()) -> Section:
+    return Section(rounded(target, *b), rounded(target, *a))
+
+
+def parts(target: FloatFormat) -> dict[str, tuple[Section, ...]]:
+    """Kinds of rest, by what is special about them."""
+    second = section(target, ("1.3", "-2.1", "0.9"), ("-1.4", "0.55"))
+    return {
+        "nothing": (),
+        "gain": (section(target, ("4.2",)),),
+        "unit gain": (section(target, ("-1",)),),
+        "first order": (section(target, ("4.2", "-3.1"), ("-0.38",)),),
+        "second order": (second,),
+        "zeros and ones": (
+            section(target, ("0", "1", "-1"), ("-1.4", "0.55")),
+            section(target, ("1", "0", "1"), ("0", "0.25")),
+            section(target, ("0", "0.5"), ("0",)),
+        ),
+        "undamped": (second, section(target, ("0.125", "0", "-0.125"), ("-1.9", "1"))),
+        "gain inside": (section(target, ("1", "0.5"), ("-0.5",)), section(target, ("0.75",)), second),
+    }
+
+
+def chains(target: FloatFormat) -> tuple[tuple[float, ...], ...]:
+    """Integral chains of 0, 1, 2 and 3 states, one with a gain of exactly 1 and one with a gain of 0."""
+    gains = ((), ("0.009",), ("-1",), ("0.02", "0.0004"), ("0", "0.001"), ("0.1", "-0.01", "0.003"))
+    return tuple(rounded(target, *chain) for chain in gains)
+
+
+def grid() -> Iterator[Emission]:
+    """Every kind of rest, chain, range, anti-windup, guard, storage and sign, in both formats."""
+    kinds = ("hold-integral", "back-calculation", "none")
+    options = list(product(kinds, (True, False), ("inline", "table"), ("subtract", "add")))
+    count = 0
+    for target in FORMATS.values():
+        for sections, chain in product(parts(target).values(), chains(target)):
+            if not sections and not chain:
+                continue
+            anti_windup, guard, coefficients, sign = options[count % len(options)]
+            yield emission(
+                f"g{count}",
+                Realization(target, "direct" if len(sections) < 2 else "cascade", chain, sections, PERIOD_S),
+                output_range=RANGES[count % 5 % len(RANGES)],
+                anti_windup=anti_windup,
+                guard_nonfinite=guard,
+                coefficients=coefficients,
+                recursion_sign=sign,
+            )
+            count += 1
+
+
+def emission(name: str, realization: Realization, **options: object) -> Emission:
+    """An emission whose text tries to break out of its comment."""
+    made = Emission(
+        name,
+        realization,
+        "bilinear",
+        "kp + ki/s */ int broken; /* ??/",
+        about="an invented servo \\",
+        author="??/\nZo\u00eb */ #error",
+        input_range=(Fraction(-8), Fraction(8)),
+        input_unit="mm",
+    )
+    if options.get("anti_windup") == "back-calculation":
+        options["tracking_time_s"] = Fraction(1, 100)
+    return made._replace(**options)
+
+
+def random_emission(name: str, seed: int) -> Emission:
+    """A random stable realization with random options."""
+    draw = Random(seed)
+    target = draw.choice(list(FORMATS.values()))
+    sections = tuple(_random_section(draw, target) for _ in range(draw.choice((0, 1, 1, 2, 3))))
+    order = draw.choice((0, 1, 1, 2, 3)) or (0 if sections else 1)
+    chain = rounded(target, *(draw.choice((-1, 1)) * 10.0 ** draw.uniform(-6, 0) for _ in range(order)))
+    low = draw.choice((0.0, -1.0, -(10.0 ** draw.uniform(-2, 3))))
+    high = draw.choice((1.0, 10.0 ** draw.uniform(-2, 3)))
+    return emission(
+        name,
+        Realization(target, "cascade", chain, sections, PERIOD_S),
+        output_range=draw.choice((None, (Fraction(low), Fraction(high)))),
+        input_range=draw.choice((None, (Fraction(-8), Fraction(8)), (Fraction(0), Fraction(1, 3)))),
+        anti_windup=draw.choice(("hold-integral", "back-calculation", "none")),
+        guard_nonfinite=draw.random() < 0.7,
+        coefficients=draw.choice(("inline", "table")),
+        recursion_sign=draw.choice(("subtract", "add")),
+    )
+
+
+def _random_section(draw: Random, target: FloatFormat) -> Section:
+    order = draw.choice((0, 1, 2, 2))
+    b = [draw.choice((0.0, 1.0, -1.0, draw.gauss(0, 2), draw.gauss(0, 2))) for _ in range(order)]
+    b.insert(draw.randint(0, order), draw.gauss(0, 2))
+    r = draw.random()
+    poles = ((), (r * draw.choice((-1, 1)),), (-2 * r * cos(draw.uniform(0, pi)), r * r))[order]
+    return section(target, tuple(b), poles)

@@ -1,0 +1,179 @@
+"""The header: what a stranger to the design needs, and macros a build can rely on."""
+
+from __future__ import annotations
+
+import re
+from fractions import Fraction
+
+import pytest
+
+from realize.arithmetic.formats import FLOAT32, FLOAT64, FloatFormat
+from realize.arithmetic.realization import Realization, Section
+from realize.firmware import Emission, render_firmware
+from realize.firmware.c_text import WIDTH
+from tests.firmware.bench import ZIG, Bench
+from tests.firmware.designs import UNIT_RANGE, grid, section
+
+
+def servo(target: FloatFormat = FLOAT32, period_s: Fraction = Fraction(1, 2000), **options: object) -> Emission:
+    rest = (section(target, ("4.2", "-3.1"), ("-0.38",)),)
+    realization = Realization(target, "direct", (target.round(Fraction("0.009")),), rest, period_s)
+    made = Emission("roller_gap", realization, "bilinear", "kp + ki/s", output_range=UNIT_RANGE)
+    return made._replace(**options)
+
+
+def header(emission: Emission) -> str:
+    return render_firmware(emission)["roller_gap.h"]
+
+
+def said(emission: Emission) -> str:
+    """The header's first comment as running text."""
+    text = header(emission).partition(" */\n")[0]
+    return " ".join(text.replace("\n *", " ").split())
+
+
+@pytest.mark.parametrize(
+    ("option", "value", "sentence"),
+    [
+        ("about", "roller gap of a dough sheeter (invented)", "roller gap of a dough sheeter (invented)"),
+        ("revision", "B", "revision B"),
+        ("requirement", "REQ-7", "requirement REQ-7"),
+        ("author", "J. Doe", "author J. Doe"),
+        ("transfer_text", "4.2 + 18/s", "transfer G(s) = 4.2 + 18/s"),
+        ("particulars", (("roll-off", "1 pole at 300 Hz"),), "roll-off 1 pole at 300 Hz"),
+        ("method", "ramp-invariant", "method ramp-invariant"),
+        ("input_unit", "mm", "input the error, reference minus measurement, in mm"),
+        (
+            "input_range",
+            (Fraction(-8), Fraction(8)),
+            "reference minus measurement; range -8 to 8, declared but not enforced",
+        ),
+        ("output_range", None, "output the command; no range was given: nothing limits it"),
+        ("output_range", None, "- without an output range nothing limits the command"),
+        ("output_range", UNIT_RANGE, "output the command; clamped to -1 to 1 anti-windup"),
+        ("output_range", (Fraction(-1, 3), Fraction(1)), "clamped to -1/3 to 1, rounded inward to the format"),
+        ("anti_windup", "none", "anti-windup none: the integral goes on while the command is limited"),
+        ("guard_nonfinite", False, "input guard none: an input that is NaN or infinite spoils the state"),
+        ("notes", ("a remark from above",), "- a remark from above"),
+        (
+            "accepted",
+            ({"check": "step overshoot", "limit": Fraction(4), "unit": "%", "because": "ramped", "by": "ab"},),
+            "Accepted deviations: - step overshoot, up to 4 %: ramped (ab)",
+        ),
+        (
+            "accepted",
+            ({"check": "stability", "limit": None, "unit": "", "because": "so is the plant", "by": "ab"},),
+            "Accepted deviations: - stability: so is the plant (ab)",
+        ),
+    ],
+)
+def test_the_header_says_what_the_design_says(option: str, value: object, sentence: str) -> None:
+    assert sentence in said(servo(**{option: value}))
+
+
+@pytest.mark.parametrize(
+    "sentence",
+    [
+        "sample period 1/2000 s (rate 2000 Hz)",
+        "structure direct: 1 section in transposed direct form II; 1 integral state",
+        "arithmetic float32, every operation rounded once, to nearest",
+        "anti-windup hold-integral: an integral state is not updated while",
+        "input guard an input that is NaN or infinite counts as the previous accepted input",
+        "Calls: roller_gap_clear or roller_gap_preset once",
+        "Feed-through: direct: the command depends on the input of the same sample",
+        "Fused multiply-add is kept out",
+        "does not flush subnormal numbers to zero",
+        "finite inputs so large that a product overflows",
+        "Check on the bench, with the actuator limited, before closing the loop.",
+        "IEC 61508",
+        "the judgement of a licensed engineer",
+        "its account is roller_gap.record.json",
+    ],
+)
+def test_the_header_of_every_design_says(sentence: str) -> None:
+    assert sentence in said(servo())
+
+
+def test_back_calculation_names_its_tracking_time() -> None:
+    text = said(servo(anti_windup="back-calculation", tracking_time_s=Fraction(1, 5)))
+    assert "back-calculation: the integral follows what was applied, tracking time 0.2 s" in text
+
+
+def test_a_strictly_proper_design_has_no_feed_through() -> None:
+    lag = Realization(FLOAT32, "direct", (), (section(FLOAT32, ("0", "0.5"), ("-0.5",)),), Fraction(1, 2000))
+    assert "Feed-through: none" in said(servo()._replace(realization=lag))
+
+
+@pytest.mark.parametrize(
+    ("a", "protected"),
+    [(("-1.9", "1"), False), (("-1.9", "0.99"), True), (("1",), False), (("-0.9",), True), (("0", "-1"), False)],
+)
+def test_poles_that_do_not_decay_are_named_as_not_protected(a: tuple[str, ...], protected: bool) -> None:
+    numerator = ("1",) * (len(a) + 1)
+    rest = Realization(FLOAT64, "direct", (), (section(FLOAT64, numerator, a),), Fraction(1, 2000))
+    assert ("section 1 has poles that do not decay" not in said(servo()._replace(realization=rest))) == protected
+
+
+def macros(text: str) -> dict[str, str]:
+    return dict(re.findall(r"#define roller_gap_(\w+) (.*)", text))
+
+
+def test_macros_are_usable_by_the_preprocessor(bench: Bench) -> None:
+    where = bench.emitted([servo()])
+    (where / "uses.c").write_text(
+        '#include "roller_gap.h"\n'
+        "#if roller_gap_PERIOD_NUMERATOR != 1 || roller_gap_PERIOD_DENOMINATOR != 2000\n#error period\n#endif\n"
+        "#if roller_gap_OUTPUT_LOW != -1 || roller_gap_OUTPUT_HIGH != 1\n#error limits\n#endif\n"
+        "#if 0 - roller_gap_OUTPUT_LOW != 1\n#error sign\n#endif\n"
+        "typedef int needed[roller_gap_OUTPUT_HIGH];\n"
+    )
+    bench.compile((*ZIG, "cc", "-std=c99", "-pedantic", "-Wall", "-Werror", "-c", "uses.c", "-o", "uses.o"), where)
+
+
+def test_a_limit_that_is_no_integer_is_a_literal_inside_the_range() -> None:
+    found = macros(header(servo(output_range=(Fraction(-1, 3), Fraction(7, 10)))))
+    assert found["OUTPUT_LOW"] == "(-3.33333313e-01f) /* -0x1.555554p-2 */"
+    assert found["OUTPUT_HIGH"] == "6.99999988e-01f /* 0x1.666666p-1 */"
+
+
+def test_a_period_beyond_an_integer_constant_is_given_to_17_digits() -> None:
+    found = macros(header(servo(period_s=Fraction(1, 3) + Fraction(1, 10**30))))
+    assert found["PERIOD_NUMERATOR"] == "3.3333333333333331e-01"
+    assert found["PERIOD_DENOMINATOR"] == "1"
+    wide = macros(header(servo(period_s=Fraction(1, 10**12))))
+    assert (wide["PERIOD_NUMERATOR"], wide["PERIOD_DENOMINATOR"]) == ("1", "1000000000000LL")
+
+
+def test_without_a_range_there_are_no_limits_to_rely_on() -> None:
+    assert "OUTPUT_LOW" not in macros(header(servo(output_range=None)))
+
+
+def test_every_line_fits_and_every_field_says_what_it_holds() -> None:
+    for emission in grid():
+        files = render_firmware(emission)
+        text = files[f"{emission.name}.h"]
+        fields = text.partition("typedef struct {\n")[2].partition("}")[0].splitlines()
+        assert fields
+        assert all(re.fullmatch(r"    (float|double) \w+; /\* [\w ,']+ \*/", field) for field in fields)
+        assert all(len(line) <= WIDTH for line in text.splitlines())
+
+
+def test_a_static_gain_has_a_state_that_is_still_a_struct() -> None:
+    gain = Realization(FLOAT32, "direct", (), (Section((2.5,), ()),), Fraction(1, 2000))
+    assert "float unused;" in header(servo(guard_nonfinite=False)._replace(realization=gain))
+
+
+def test_a_table_without_coefficients_is_still_a_struct(bench: Bench) -> None:
+    bare = Realization(FLOAT32, "direct", (1.0,), (), Fraction(1, 2000))
+    emission = servo(coefficients="table")._replace(realization=bare)
+    where = bench.emitted([emission])
+    assert "float unused; /* nothing is multiplied */" in header(emission)
+    bench.compile((*ZIG, "cc", "-std=c99", "-pedantic", "-Wall", "-Werror", "-c", "roller_gap.c", "-o", "x.o"), where)
+
+
+def test_the_table_names_every_multiplied_coefficient() -> None:
+    text = header(servo(coefficients="table", recursion_sign="add"))
+    table = text.partition("from the others. */\ntypedef struct {\n")[2] or text.rpartition("typedef struct {\n")[2]
+    fields = re.findall(r"    float (\w+);", table.partition("}")[0])
+    assert fields == ["section1_b0", "section1_b1", "section1_minus_a1", "section1_gain", "integral1_gain"]
+    assert "float roller_gap_update(roller_gap_state *state, const roller_gap_coefficients *coefficients, float" in text

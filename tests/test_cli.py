@@ -1,0 +1,261 @@
+"""The commands from outside: exit status, screens, JSON, and that nothing heavy is loaded."""
+
+import json
+import subprocess
+import sys
+from pathlib import Path
+from typing import Any
+
+import pytest
+
+from realize.cli import commands, main
+
+FIXTURES = Path(__file__).parent.parent / "fixtures"
+ROLLER_GAP = str(FIXTURES / "roller_gap.toml")
+IMPROPER = str(FIXTURES / "roller_gap_improper.toml")
+DESIGNS = sorted(str(path) for path in FIXTURES.glob("*.toml"))
+
+
+class Answer:
+    def __init__(self, status: int, out: str, err: str) -> None:
+        self.status = status
+        self.out = out
+        self.err = err
+
+    @property
+    def document(self) -> dict[str, Any]:
+        def refuse(constant: str) -> None:
+            raise AssertionError(f"{constant} is no JSON")
+
+        return dict(json.loads(self.out, parse_constant=refuse))
+
+
+@pytest.fixture
+def run(capsys: pytest.CaptureFixture[str]) -> Any:
+    def runner(*arguments: str) -> Answer:
+        status = 0
+        try:
+            main(list(arguments))
+        except SystemExit as stop:
+            status = stop.code if isinstance(stop.code, int) else 1
+        out, err = capsys.readouterr()
+        return Answer(status, out, err)
+
+    return runner
+
+
+@pytest.mark.parametrize("command", sorted(commands.commands))
+def test_help_has_a_worked_example(run: Any, command: str) -> None:
+    answer = run(command, "--help")
+    assert answer.status == 0
+    assert f"Example: realize {command}" in answer.out
+
+
+def test_only_the_commands_that_are_built_exist() -> None:
+    assert sorted(commands.commands) == ["assess", "compare", "emit", "new"]
+
+
+def test_version(run: Any) -> None:
+    assert run("--version").out.startswith("realize, version ")
+
+
+@pytest.mark.parametrize("design", DESIGNS, ids=lambda path: Path(path).stem)
+@pytest.mark.parametrize("command", ["assess", "compare"])
+def test_screens_fit_100_columns_and_say_yes_or_no_first(run: Any, command: str, design: str) -> None:
+    answer = run(command, design)
+    assert answer.status in (0, 1)
+    assert answer.out.startswith(("yes: ", "no: "))
+    assert max(len(line) for line in answer.out.splitlines()) <= 100
+    assert "\x1b" not in answer.out
+
+
+def test_assess_names_the_improper_term_and_the_lines_to_paste(run: Any) -> None:
+    answer = run("assess", IMPROPER)
+    assert answer.status == 0
+    assert "0.09*s grows without bound; a pure derivative needs the future" in " ".join(answer.out.split())
+    assert '[rolloff]\nplacement = "derivative"\n' in answer.out
+
+
+def test_assess_document(run: Any) -> None:
+    document = run("assess", IMPROPER, "--json").document
+    assert document["schema"] == "realize/1"
+    assert document["command"] == "assess"
+    assert document["design"] == {"name": "roller_gap", "transfer": "kp + ki/s + kd*s"}
+    assert document["numerator"] == ["9", "420", "1800"]
+    assert document["denominator"] == ["100", "0"]
+    assert document["relative_degree"] == -1
+    assert document["realizable"] is False
+    assert document["improper_terms"] == [{"power": 1, "coefficient": "9/100"}]
+    assert document["cancelled"] == []
+    assert [set(p) for p in document["poles"]] == [
+        {"re", "im", "multiplicity", "natural_frequency_rad_s", "damping_ratio"}
+    ]
+    keys = {
+        *("placement", "order", "damping", "pole_rad_s", "numerator", "denominator", "relative_degree"),
+        *("phase_lost_deg", "high_frequency_gain", "converter_step_percent", "window_rad_s", "within_window"),
+    }
+    assert all(set(p) == keys for p in document["proposals"])
+
+
+@pytest.mark.parametrize("design", DESIGNS, ids=lambda path: Path(path).stem)
+def test_compare_document(run: Any, design: str) -> None:
+    answer = run("compare", design, "--json")
+    document = answer.document
+    assert len(document["methods"]) == 9
+    for method in document["methods"]:
+        if method["refused"]:
+            assert method["numerator"] is None
+            assert method["sections"] is None
+            assert method["checks"] == []
+            continue
+        assert len(method["numerator"]) == len(method["denominator"])
+        assert method["denominator"][0] == 1
+        assert method["stability"] in ("stable", "marginal", "unstable")
+        assert all(len(s["b"]) == len(s["a"]) + 1 for s in method["sections"])
+        for check in method["checks"]:
+            assert check["verdict"] in ("within", "out", "undefined")
+            assert check["of"] in ("stored", "exact")
+            assert check["difference"] is None or check["difference"] >= 0
+    named = [m for m in document["methods"] if m["acceptable"]]
+    assert (document["recommended"] is not None) == bool(named)
+    assert answer.status in (0, 1)
+
+
+def test_compare_of_an_improper_design_says_which_roll_off_it_assumed(run: Any) -> None:
+    answer = run("compare", IMPROPER, "--json")
+    assert answer.document["rolloff"]["placement"] == "derivative"
+    assert answer.document["rolloff_assumed"] is True
+    assert "assumed, since the design has no [rolloff]" in " ".join(run("compare", IMPROPER).out.split())
+
+
+def test_emit_writes_four_files_and_the_same_bytes_again(run: Any, tmp_path: Path) -> None:
+    first, second = tmp_path / "first", tmp_path / "second"
+    assert run("emit", ROLLER_GAP, "--out", str(first)).status == 0
+    assert run("emit", ROLLER_GAP, "--out", str(second)).status == 0
+    names = sorted(path.name for path in first.iterdir())
+    assert names == ["roller_gap.c", "roller_gap.h", "roller_gap.record.json", "roller_gap_vectors.csv"]
+    assert all((first / name).read_bytes() == (second / name).read_bytes() for name in names)
+
+
+def test_emit_document_holds_the_record(run: Any, tmp_path: Path) -> None:
+    document = run("emit", ROLLER_GAP, "--out", str(tmp_path), "--json").document
+    assert [Path(path).name for path in document["written"]] == [
+        *("roller_gap.h", "roller_gap.c", "roller_gap_vectors.csv", "roller_gap.record.json")
+    ]
+    assert document["record"] == json.loads((tmp_path / "roller_gap.record.json").read_text())
+
+
+def test_emit_of_an_improper_design_refuses_and_prints_the_lines_to_paste(run: Any, tmp_path: Path) -> None:
+    answer = run("emit", IMPROPER, "--out", str(tmp_path / "never"))
+    assert answer.status == 1
+    assert answer.out == ""
+    assert answer.err.startswith("no: ")
+    assert '[rolloff]\nplacement = "derivative"' in answer.err
+    assert not (tmp_path / "never").exists()
+
+
+def test_the_lines_to_paste_make_it_emit(run: Any, tmp_path: Path) -> None:
+    refusal = run("emit", IMPROPER, "--out", str(tmp_path / "never")).err
+    lines = refusal[refusal.index("[rolloff]") :]
+    design = tmp_path / "pasted.toml"
+    design.write_text(Path(IMPROPER).read_text(encoding="utf-8") + "\n" + lines, encoding="utf-8")
+    assert run("emit", str(design), "--out", str(tmp_path / "out")).status == 0
+
+
+def test_new_writes_a_design_that_emits_unchanged_and_never_overwrites(
+    run: Any, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.chdir(tmp_path)
+    assert run("new", "mixer_speed").status == 0
+    text = Path("mixer_speed.toml").read_text(encoding="utf-8")
+    assert run("emit", "mixer_speed.toml", "--out", "firmware").status == 0
+    again = run("new", "mixer_speed")
+    assert again.status == 2
+    assert "mixer_speed.toml" in again.err
+    assert Path("mixer_speed.toml").read_text(encoding="utf-8") == text
+
+
+OVERRIDES = [
+    (["--rate", "4 kHz"], "1/4000"),
+    (["--period", "1 ms"], "1/1000"),
+]
+
+
+@pytest.mark.parametrize(("options", "period"), OVERRIDES)
+def test_the_command_line_overrides_the_file(run: Any, options: list[str], period: str) -> None:
+    assert run("compare", ROLLER_GAP, "--json", *options).document["period_s"] == period
+
+
+def test_values_override_the_file(run: Any) -> None:
+    document = run("assess", IMPROPER, "--json", "--value", "kd=0.18").document
+    assert document["improper_terms"] == [{"power": 1, "coefficient": "9/50"}]
+
+
+def test_a_design_may_come_on_standard_input() -> None:
+    text = Path(ROLLER_GAP).read_bytes()
+    process = subprocess.run(
+        [sys.executable, "-m", "realize", "assess", "-", "--json"], input=text, capture_output=True, check=True
+    )
+    assert json.loads(process.stdout)["design"]["name"] == "roller_gap"
+
+
+NOT_UNDERSTOOD = [
+    (["assess", "2s"], "2*s"),
+    (["assess", "1/(s-s)"], "zero"),
+    (["assess", "nowhere.toml"], "nowhere.toml"),
+    (["assess", "."], "."),
+    (["compare", "1/(s+1)"], "no sample rate"),
+    (["compare", "1/(s+1)", "--rate", "0 Hz"], "rate"),
+    (["compare", "1/(s+1)", "--period", "-1 s"], "period"),
+    (["compare", "1/(s+1)", "--rate", "1 parsec"], "parsec"),
+    (["compare", "1/(s+1)", "--rate", "1 kHz", "--method", "bilinaer"], "bilinear"),
+    (["assess", "k/s", "--value", "k"], "--value"),
+    (["assess", "__import__('os')"], "column 12"),
+    (["emit", "1/(s+1)"], "--out"),
+    (["assess"], "DESIGN"),
+    (["rates", "1/s"], "rates"),
+]
+
+
+@pytest.mark.parametrize(("arguments", "fragment"), NOT_UNDERSTOOD, ids=lambda value: str(value)[:40])
+def test_what_is_not_understood_is_one_clear_message(run: Any, arguments: list[str], fragment: str) -> None:
+    answer = run(*arguments)
+    assert answer.status == 2
+    assert answer.out == ""
+    assert fragment in answer.err
+    assert "Traceback" not in answer.err
+
+
+@pytest.mark.parametrize(("arguments", "fragment"), NOT_UNDERSTOOD, ids=lambda value: str(value)[:40])
+def test_errors_are_json_where_json_is_asked_for(run: Any, arguments: list[str], fragment: str) -> None:
+    answer = run(*arguments, "--json")
+    assert answer.status == 2
+    assert set(answer.document) == {"schema", "command", "error"}
+    assert set(answer.document["error"]) == {"where", "found", "allowed", "try"}
+    assert fragment in " ".join(answer.document["error"].values())
+
+
+def test_improper_refusal_is_json_too(run: Any, tmp_path: Path) -> None:
+    answer = run("emit", IMPROPER, "--out", str(tmp_path / "never"), "--json")
+    assert answer.status == 1
+    assert "[rolloff]" in answer.document["error"]["try"]
+
+
+def test_no_command_loads_scipy_or_matplotlib(tmp_path: Path) -> None:
+    script = (
+        "import sys; from realize.cli import main\n"
+        f"try: main(['emit', {ROLLER_GAP!r}, '--out', {str(tmp_path)!r}])\n"
+        "finally: heavy = {'scipy', 'matplotlib', 'mpmath', 'importlib.metadata'} & set(sys.modules)\n"
+        "assert not heavy, heavy\n"
+    )
+    subprocess.run([sys.executable, "-c", script], check=True, capture_output=True)
+
+
+def test_no_color_is_respected(tmp_path: Path) -> None:
+    process = subprocess.run(
+        [sys.executable, "-m", "realize", "assess", IMPROPER],
+        env={"NO_COLOR": "1", "PATH": ""},
+        capture_output=True,
+        check=True,
+    )
+    assert b"\x1b" not in process.stdout
