@@ -7,7 +7,7 @@ figure. Hz becomes rad/s by the ``pi`` that is right to 400 digits.
 from __future__ import annotations
 
 import re
-from decimal import Decimal
+from decimal import ROUND_HALF_EVEN, Decimal
 from fractions import Fraction
 from typing import Literal
 
@@ -61,15 +61,10 @@ _EXAMPLES: dict[Dimension, str] = {
 _LITERAL = r"[0-9.]+(?:[eE][-+]?[0-9]+)?"
 _QUANTITY = re.compile(rf"(?P<number>[-+]?{_LITERAL}(?:\s*/\s*{_LITERAL})?)\s*(?P<unit>.*)", re.DOTALL)
 
-#: Units with prefixes, largest first, with their size in the unit without prefix.
+#: Units with prefixes that figures are written in, largest first, by the unit without prefix.
 _PREFIXED: dict[str, tuple[tuple[str, Fraction], ...]] = {
-    "Hz": (("MHz", Fraction(10**6)), ("kHz", Fraction(10**3)), ("Hz", Fraction(1))),
-    "s": (
-        ("s", Fraction(1)),
-        ("ms", Fraction(1, 10**3)),
-        ("us", Fraction(1, 10**6)),
-        ("ns", Fraction(1, 10**9)),
-    ),
+    "Hz": tuple((name, _UNITS["rate"][name]) for name in ("MHz", "kHz", "Hz")),
+    "s": tuple((name, _UNITS["time"][name]) for name in ("s", "ms", "us", "ns")),
 }
 
 
@@ -105,9 +100,9 @@ def quantity_allowed(dimension: Dimension) -> str:
     return f'a number with its unit ({", ".join(units)}), such as "{_EXAMPLES[dimension]}"'
 
 
-def round_significant(value: Fraction, digits: int) -> Fraction:
-    """Round half to even to a number of significant decimal digits; the result is exact."""
-    return Fraction(rounded(value, digits))
+def round_significant(value: Fraction, digits: int, rounding: str = ROUND_HALF_EVEN) -> Fraction:
+    """Round to a number of significant decimal digits, by a mode of ``decimal``; the result is exact."""
+    return Fraction(rounded(value, digits, rounding))
 
 
 def format_engineering(value: Fraction | float, unit: str) -> str:

@@ -9,23 +9,22 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from fractions import Fraction
-from typing import NamedTuple
+from typing import NamedTuple, Unpack
 
-from realize.algebra.expression.printing import exact_text, format_polynomial, rounded
+from realize.algebra.expression.printing import exact_text, format_polynomial
 from realize.algebra.irrational import pi
 from realize.algebra.roots import Root
-from realize.quantity import SHOWN_DIGITS, format_engineering
+from realize.quantity import SHOWN_DIGITS, format_engineering, round_significant
 from realize.rolloff import (
-    CONVERTER_STEP_PERCENT,
-    PAIR_DAMPING,
-    PHASE_BUDGET_DEG,
     Circumstances,
+    Known,
     Proposal,
     circumstances,
     decimal_or_quotient,
     finite_figure,
     proposals,
     samples_per_band_period,
+    shapes,
     split,
 )
 from realize.transfer import TransferFunction
@@ -88,50 +87,25 @@ class Assessment(NamedTuple):
     around: Circumstances
 
 
-def assess(
-    transfer: TransferFunction,
-    *,
-    period_s: Fraction | None = None,
-    band_rad_s: Fraction | None = None,
-    phase_budget_deg: Fraction = PHASE_BUDGET_DEG,
-    converter_step_tolerance_percent: Fraction = CONVERTER_STEP_PERCENT,
-    input_per_count: Fraction | None = None,
-    output_span: Fraction | None = None,
-    method: str = "auto",
-) -> Assessment:
+def assess(transfer: TransferFunction, *, band_rad_s: Fraction | None = None, **known: Unpack[Known]) -> Assessment:
     """Say whether a transfer function is realizable, what is not, and what would make it so.
 
     Parameters
     ----------
     transfer : TransferFunction
         As the user wrote it.
-    period_s, band_rad_s : Fraction or None
-        Sample period, and band edge where the design names one.
-    phase_budget_deg : Fraction
-        Phase a roll-off may take at the band edge.
-    converter_step_tolerance_percent : Fraction
-        What one input count may do to the output at once, in % of its span.
-    input_per_count, output_span : Fraction or None
-        Physical size of one input count, and of the whole output range.
-    method : str
-        Name of the method the design asks for, or "auto".
+    band_rad_s : Fraction or None
+        Band edge, where the design names one.
+    **known
+        What else the design says of itself, as for :func:`realize.rolloff.circumstances`.
 
     Raises
     ------
     RealizeError
         When the phase budget is not above 0 and below 90 deg.
     """
-    around = circumstances(
-        transfer,
-        period_s=period_s,
-        band_rad_s=band_rad_s,
-        phase_budget_deg=phase_budget_deg,
-        converter_step_tolerance_percent=converter_step_tolerance_percent,
-        input_per_count=input_per_count,
-        output_span=output_span,
-        method=method,
-    )
-    terms = tuple(_term(power, coefficient, period_s) for power, coefficient in improper_terms(transfer))
+    around = circumstances(transfer, band_rad_s=band_rad_s, **known)
+    terms = tuple(_term(power, coefficient, around.period_s) for power, coefficient in improper_terms(transfer))
     notes = [*_causality_notes(transfer), *_root_notes(transfer)]
     if terms:
         notes += [around.band_rests_on, *_window_notes(-transfer.relative_degree, around)]
@@ -168,7 +142,7 @@ def polynomial_text(p: Sequence[Fraction | int]) -> str:
 
 
 def _shown(x: Fraction) -> Fraction:
-    return x if len(exact_text(x)) <= _LONGEST_NUMBER else Fraction(rounded(x, SHOWN_DIGITS))
+    return x if len(exact_text(x)) <= _LONGEST_NUMBER else round_significant(x, SHOWN_DIGITS)
 
 
 def _term(power: int, coefficient: Fraction, period_s: Fraction | None) -> Term:
@@ -189,9 +163,7 @@ def _causality_notes(transfer: TransferFunction) -> list[str]:
     """What the relative degree means for the program, and what was cancelled to get it."""
     notes = []
     if len(transfer.cancelled) > 1:
-        notes.append(
-            f"numerator and denominator shared the factor {polynomial_text(transfer.cancelled)}: cancelled"
-        )
+        notes.append(f"numerator and denominator shared the factor {polynomial_text(transfer.cancelled)}: cancelled")
     if transfer.relative_degree == 0:
         notes.append(
             f"direct feed-through {polynomial_text((transfer.feed_through,))}: "
@@ -233,11 +205,9 @@ def _root_text(root: Root) -> str:
 
 def _window_notes(excess: int, around: Circumstances) -> list[str]:
     """How far below the rate the band must lie for a roll-off to fit in between."""
-    shapes = [(excess, Fraction(1)), (excess + 1, Fraction(1))]
-    shapes += [(2, PAIR_DAMPING)] if excess <= 2 else []
     needs = [
         f"rate/{samples:.3g} for {_shape_text(order, damping)}"
-        for order, damping in shapes
+        for order, damping in shapes(excess)
         if (samples := samples_per_band_period(order, damping, around)) is not None
     ]
     if around.period_s is None or not needs:

@@ -10,7 +10,6 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import cached_property
-from math import prod
 
 from realize.algebra import polynomial as poly
 from realize.algebra.roots import Root, isolate
@@ -148,27 +147,15 @@ class PulseTransferFunction:
     @cached_property
     def low_frequency_gain(self) -> Fraction:
         """Limit of ``((z - 1)/T)^-k Gd(z)`` for z to 1, k = zeros minus poles at z = 1."""
-        n, d = (_lowest_after_shift(p) for p in (self.numerator, self.denominator))
+        n, d = (
+            poly.shift(p, Fraction(1))[-1 - _multiplicity_at_zero(roots)]
+            for p, roots in ((self.numerator, self.zeros), (self.denominator, self.poles))
+        )
         return n / d * self.period_s**self.zeros_minus_poles_at_one
-
-
-def degree_of(roots: Sequence[Root]) -> int:
-    """Number of roots, conjugates and multiplicities counted."""
-    return sum(root.count for root in roots)
-
-
-def expand(gain: complex, roots: Sequence[complex], at: complex) -> complex:
-    """``gain * prod(at - root)`` in floating point."""
-    return gain * prod((at - root for root in roots), start=complex(1))
 
 
 def _multiplicity_at_zero(roots: Sequence[Root]) -> int:
     return sum(root.multiplicity for root in roots if root.value == 0)
-
-
-def _lowest_after_shift(p: Sequence[Fraction]) -> Fraction:
-    """First coefficient, from the lowest power of ``z - 1`` up, that is not zero."""
-    return next(c for c in reversed(poly.shift(p, Fraction(1))) if c)
 
 
 def _fractions(p: Sequence[Fraction | int]) -> poly.Rationals:

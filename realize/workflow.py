@@ -68,7 +68,7 @@ class MethodResult:
     checks : tuple of Check
         On the stored numbers, and on the exact ones where these differ.
     blocking : tuple of Check
-        Checks of the stored numbers that are out and not covered by an acceptance.
+        Checks that are out and not covered by an acceptance.
     accepted : tuple of (Check, Accept)
         Checks that are out, and the agreement that covers them.
     notes : tuple of str
@@ -312,13 +312,14 @@ def _differs(exact: Check, stored: Check) -> bool:
 def gate(
     checks: Sequence[Check], acceptances: Sequence[Accept]
 ) -> tuple[tuple[Check, ...], tuple[tuple[Check, Accept], ...]]:
-    """Split the stored checks that are out into those that block and those that an acceptance covers.
+    """Split the checks that are out into those that block and those that an acceptance covers.
 
-    Lost stability is never covered: only a growing mode that the design itself has may be accepted.
+    A method that is out by itself blocks even where rounding happens to bring its stored numbers back. Lost stability
+    is never covered: only a growing mode that the design itself has may be accepted.
     """
     blocking, accepted = [], []
     for check in checks:
-        if check.of == "stored" and check.verdict == "out":
+        if check.verdict == "out":
             agreement = next((a for a in acceptances if _covers(a, check)), None)
             if agreement is None:
                 blocking.append(check)
@@ -363,8 +364,7 @@ def _nothing_acceptable(results: Sequence[MethodResult]) -> str:
     if not tried:
         return f"no method applies: {results[0].refused}"
     closest = min(tried, key=_ratio)
-    names = ", ".join(dict.fromkeys(c.check for c in closest.blocking))
-    return f"no method is within tolerance; {closest.method} comes closest and is out on {names}"
+    return f"no method is within tolerance; {closest.method} comes closest: {_failures(closest)}"
 
 
 def refuse_unacceptable(comparison: Comparison) -> MethodResult:
@@ -375,25 +375,20 @@ def refuse_unacceptable(comparison: Comparison) -> MethodResult:
     Refused
         When nothing may be emitted.
     """
-    chosen = comparison.chosen
+    chosen, allowed = comparison.chosen, "every check within its tolerance"
     if chosen is None:
-        raise Refused(
-            "checks",
-            comparison.because,
-            "every check within its tolerance",
-            _advice(comparison),
-        )
+        raise Refused("checks", comparison.because, allowed, _advice(comparison))
     if chosen.refused is not None:
-        raise Refused("[method] name", f"{chosen.method} does not apply: {chosen.refused}", "", "choose another method")
+        advice = _alternative(comparison.design) or "choose another method"
+        raise Refused("[method] name", f"{chosen.method} does not apply: {chosen.refused}", "", advice)
     if chosen.blocking:
-        found = "; ".join(_failure(check) for check in chosen.blocking)
-        raise Refused(
-            "checks",
-            f"{chosen.method} is out of tolerance: {found}",
-            "every check within its tolerance",
-            _advice(comparison),
-        )
+        found = f"{chosen.method} is out of tolerance: {_failures(chosen)}"
+        raise Refused("checks", found, allowed, _advice(comparison))
     return chosen
+
+
+def _failures(result: MethodResult) -> str:
+    return "; ".join(dict.fromkeys(_failure(check) for check in result.blocking))
 
 
 def _failure(check: Check) -> str:
@@ -402,20 +397,28 @@ def _failure(check: Check) -> str:
     return f"{check.check} differs by {check.difference:.5g} {check.unit} (tolerance {check.tolerance:.5g})"
 
 
+def _alternative(design: Design) -> str:
+    """Another method that would do, in place of the one that the design names."""
+    other = compare(design).recommended if design.method != "auto" else None
+    return f'name = "{other}" under [method], which is within every tolerance' if other else ""
+
+
 def _advice(comparison: Comparison) -> str:
-    """What would help, from the first check in the way."""
+    """What would help, from what stands in the way."""
     tried = [r for r in comparison.methods if r.refused is None]
-    chosen = comparison.chosen or min(tried, key=_ratio, default=None)
-    if chosen is None:
-        return "see `realize compare` for why each method was refused"
-    exact_is_good = {c.check for c in chosen.checks if c.of == "exact" and c.verdict == "within"}
-    if any(check.check in exact_is_good for check in chosen.blocking):
-        if comparison.design.target.arithmetic == "float32":
-            return 'rounding is at fault, not the method: arithmetic = "float64", or a lower sample rate'
-        return "rounding is at fault, not the method: a lower sample rate"
-    if any(check.check == "stability" for check in chosen.blocking):
-        return 'another method; or, where the design itself has the growing mode, [[accept]] check = "stability"'
-    return (
+    closest = comparison.chosen or min(tried, key=_ratio, default=None)
+    if closest is None:
+        return "`realize compare` shows why each method was refused"
+    if any(c.check == "stability" for c in closest.blocking):
+        own = all(c.reference == c.obtained for c in closest.blocking if c.check == "stability")
+        if own:
+            return 'where the growing mode is meant, [[accept]] with check = "stability", because and by'
+        return _alternative(comparison.design) or "another method, or a higher sample rate"
+    unspoilt = {c.check for c in closest.checks if c.of == "exact" and c.verdict == "within"}
+    if all(c.check in unspoilt for c in closest.blocking):
+        wider = 'arithmetic = "float64", or ' if comparison.design.target.arithmetic == "float32" else ""
+        return f"rounding is at fault, not the method: {wider}a lower sample rate"
+    return _alternative(comparison.design) or (
         "a higher sample rate, another method (`realize compare` shows them side by side), "
         "or [[accept]] with a limit and a reason"
     )

@@ -87,7 +87,7 @@ def roots(draw: st.DrawFn, rate_hz: Fraction, kinds: tuple[str, ...] = KINDS) ->
     multiplicity = draw(st.sampled_from((1, 1, 1, 2, 3)))
     if kind == "origin":
         return ExactRoot(Fraction(0), Fraction(0), multiplicity)
-    low, high = {"slow": (-9, -3), "stiff": (1, 2), "growing": (-4, 1), "growing pair": (-4, 0)}.get(kind, (-3, 1))
+    low, high = {"slow": (-9, -3), "stiff": (1, 6), "growing": (-4, 1), "growing pair": (-4, 0)}.get(kind, (-3, 1))
     size = draw(decimals(low, high)) * rate_hz
     damping = draw(decimals(-12, -2)) if kind == "light" else draw(decimals(-1, 0))
     return {

@@ -77,17 +77,24 @@ def correctly_rounded(enclose: Callable[[int], Enclosure], target: FloatFormat) 
         ``enclose(bits)`` encloses the vector to about that many bits; may raise ``Unresolved``.
     target : FloatFormat
         The format of the result.
+
+    Raises
+    ------
+    Unresolved
+        When no permitted number of bits tells two values of the format apart.
+    Refused
+        When an entry is beyond the format.
     """
     bits = FIRST_BITS
     while True:
         try:
             ends = [_rounded_ends(low, high, unit, target) for low, high, unit in enclose(bits).intervals()]
-        except Unresolved:
+            if bits >= MOST_BITS or all(low == high for low, high in ends):
+                return tuple(low if low == high else _tie(low, high, target) for low, high in ends)
+        except (Unresolved, Refused):
+            # An end beyond the format may be the enclosure's width alone.
             if bits >= MOST_BITS:
                 raise
-            ends = [(0.0, 1.0)]
-        if bits >= MOST_BITS or all(low == high for low, high in ends):
-            return tuple(low if low == high else _even_neighbour(low, high) for low, high in ends)
         bits = min(2 * bits, MOST_BITS)
 
 
@@ -97,8 +104,10 @@ def _rounded_ends(low: int, high: int, unit: int, target: FloatFormat) -> tuple[
     return first, first if low == high else target.round_ratio(high, unit)
 
 
-def _even_neighbour(low: float, high: float) -> float:
-    """The one of two neighbouring values with the even significand: the finer one is the odd one."""
+def _tie(low: float, high: float, target: FloatFormat) -> float:
+    """The even one of two neighbouring values; in units of the finer one, the odd one is odd."""
+    if target.round((Fraction(low) + Fraction(high)) / 2) not in (low, high):
+        raise Unresolved
     (low_top, low_unit), (high_top, high_unit) = low.as_integer_ratio(), high.as_integer_ratio()
     unit = max(low_unit, high_unit)
     low_count, high_count = low_top * (unit // low_unit), high_top * (unit // high_unit)

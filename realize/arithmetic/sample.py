@@ -140,8 +140,13 @@ def describe(
     Raises
     ------
     RealizeError
-        When no value of the format lies in the output range, or back-calculation has no tracking time.
+        When the realization is empty, no value of the format lies in the output range, or back-calculation has no
+        tracking time.
     """
+    if not (realization.sections or realization.integral):
+        raise RealizeError(
+            "realization", "it is empty", "a section or an integral state", "check the transfer function"
+        )
     low, high = _inward(output_range, realization.format) if output_range else (None, None)
     output, result = _output_steps(realization, low is not None)
     gain = _tracking_gain(realization, tracking_time_s) if anti_windup == BACK_CALCULATION else 0.0

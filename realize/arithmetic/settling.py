@@ -129,8 +129,8 @@ def _bound(realization: Realization, exact: Sequence[Fraction], stored: Sequence
     Notes
     -----
     ``u`` is half a unit in the last place of 1, ``h`` half the least subnormal, ``gamma_k = k u/(1 - k u)``. The answer
-    ``fl(fl(g) x)`` of a section is within ``e |x| + h`` of ``g x``, ``e = |fl(g) - g| + u |fl(g)|``. ``b_0 x + s_1`` adds
-    up ``b_i x`` and ``-a_i y`` with at most ``2n + 1`` roundings each, in ``2n + 1`` products. So a section adds
+    ``fl(fl(g) x)`` of a section is within ``e |x| + h`` of ``g x``, ``e = |fl(g) - g| + u |fl(g)|``. ``b_0 x + s_1``
+    adds up ``b_i x`` and ``-a_i y`` with at most ``2n + 1`` roundings each, in ``2n + 1`` products. So a section adds
     ``c |x| + d`` with ``c = gamma_{2n+1} (sum |b| + (|g| + e) sum |a|) + e |sum a|`` and
     ``d = h (2n + 1 + 2 sum |a|)``, and hands on ``|g| + c`` times what came in. The asked output is within ``u`` of
     the exact one; the three roundings of the comparison are covered by ``1 + 8 u``, their underflow by ``2 h``.
@@ -143,7 +143,9 @@ def _bound(realization: Realization, exact: Sequence[Fraction], stored: Sequence
         k = 2 * len(section.a) + 1
         forward = sum((abs(Fraction(b)) for b in section.b), Fraction(0))
         back = sum((abs(Fraction(a)) for a in section.a), Fraction(0))
-        c = k * u / (1 - k * u) * (forward + (abs(gain) + e) * back) + e * abs(sum(map(Fraction, section.a), Fraction(0)))
+        c = k * u / (1 - k * u) * (forward + (abs(gain) + e) * back) + e * abs(
+            sum(map(Fraction, section.a), Fraction(0))
+        )
         floor = (abs(gain) + c) * floor + h * (k + 2 * back)
         error = (abs(gain) + c) * error + c * size
         size *= abs(gain)

@@ -149,7 +149,8 @@ def _sampled_peak(design: StepResponse, sampled: SampledResponse) -> float:
         return sampled.at(at) / design.final
 
     k = _greatest(sampled.samples, sampled.values / design.final, measure)
-    return max(float(measure(np.array([k]))[0]), sampled.final / design.final)
+    near = np.append(design.samples_around_peak, k)
+    return max(float(measure(near).max()), sampled.final / design.final)
 
 
 def _greatest(samples: Whole, figures: Real, measure: Callable[[Whole], Real]) -> int:

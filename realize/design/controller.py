@@ -6,6 +6,7 @@ from collections import Counter
 from collections.abc import Callable, Iterable, Mapping
 from fractions import Fraction
 from functools import reduce
+from graphlib import CycleError, TopologicalSorter
 from typing import NamedTuple
 
 from realize.algebra import polynomial as poly
@@ -21,7 +22,7 @@ from realize.algebra.expression import (
 )
 from realize.algebra.expression.ratio import MAX_DEGREE, Ratio, UnfitError
 from realize.algebra.expression.tokens import listed, nearest, shown
-from realize.design.gate import Table, WrittenNumber, checked_number, described
+from realize.design.gate import LARGEST, Table, WrittenNumber, checked_number, described
 from realize.errors import RealizeError, Refused
 from realize.quantity import SHOWN_DIGITS, round_significant
 from realize.transfer import TransferFunction
@@ -38,12 +39,8 @@ LONGEST_PLAIN = 40
 #: Digits that tell every two doubles apart.
 DOUBLE_DIGITS = 17
 
-#: Farthest corner in rad/s, and one over the nearest to zero: no machine comes near, and float64 still holds
-#: the cube of it, so that figures about poles and zeros can be computed without a thought.
-FARTHEST_CORNER_RAD_S = 10**100
-
-#: Largest ratio of leading or of trailing coefficients, and one over the smallest: it must fit float64, which
-#: ends at 1.8e308.
+#: Largest value, and largest ratio of leading or of trailing coefficients (and one over the smallest ratio): they
+#: must fit float64, which ends at 1.8e308.
 LARGEST_GAIN = 10**300
 
 #: The forms of a transfer function, by their keys.
@@ -117,11 +114,11 @@ def _refuse_out_of_range(numerator: poly.Rationals, denominator: poly.Rationals,
     """Refuse corners and gains that float64 could not hold; they are slips of an exponent."""
     n, d = (_without_origin(p) for p in (numerator, denominator))
     for p, name in ((n, "zero"), (d, "pole")):
-        if not (_bounded_by(p, FARTHEST_CORNER_RAD_S) and _bounded_by(p[::-1], FARTHEST_CORNER_RAD_S)):
+        if not (_bounded_by(p, LARGEST) and _bounded_by(p[::-1], LARGEST)):
             raise RealizeError(
                 where,
                 f"a {name} too far from or too near to s = 0",
-                f"zeros and poles at 0, or from {1 / FARTHEST_CORNER_RAD_S:.0e} to {FARTHEST_CORNER_RAD_S:.0e} rad/s",
+                f"zeros and poles at 0, or from {1 / LARGEST:.0e} to {LARGEST:.0e} rad/s",
                 "check the powers of ten",
             )
     for gain in (abs(n[0] / d[0]), abs(n[-1] / d[-1])):
@@ -205,9 +202,10 @@ def _product(table: Table, key: str, values: Mapping[str, Fraction]) -> Ratio:
         _root(entry, values, f"{where}, entry {i}") for i, entry in enumerate(_bounded_list(table, key, MAX_DEGREE), 1)
     ]
     _refuse_lone(roots, where)
-    factors = [(1, -2 * re, re**2 + im**2) if im else (1, -re) for re, im in roots if im >= 0]
+    one = Fraction(1)
+    factors: list[poly.Rationals] = [(one, -2 * re, re**2 + im**2) if im else (one, -re) for re, im in roots if im >= 0]
     return _within_bounds(
-        lambda: reduce(ratio.multiply, (ratio.polynomial(f) for f in factors), ratio.constant(Fraction(1))), where
+        lambda: reduce(ratio.multiply, (ratio.polynomial(f) for f in factors), ratio.constant(one)), where
     )
 
 
@@ -348,9 +346,6 @@ def _names_in_number(value: object, where: str) -> tuple[str, ...]:
 
 def _resolve(written: Mapping[str, _Written]) -> dict[str, Fraction]:
     """Evaluate each value after those it refers to; the result keeps the order they were written in."""
-    # Not needed by a design whose values are numbers only, and not by the commands at all.
-    from graphlib import CycleError, TopologicalSorter
-
     graph = {
         name: [other for other in _names(entry.value, entry.where) if other in written]
         for name, entry in written.items()
@@ -368,5 +363,13 @@ def _resolve(written: Mapping[str, _Written]) -> dict[str, Fraction]:
         ) from None
     values: dict[str, Fraction] = {}
     for name in order:
-        values[name] = checked_number(written[name].value, values, written[name].where)
+        where = written[name].where
+        values[name] = checked_number(written[name].value, values, where)
+        if abs(values[name]) > LARGEST_GAIN:
+            raise RealizeError(
+                where,
+                "a value that is too large",
+                f"values from -{LARGEST_GAIN:.0e} to {LARGEST_GAIN:.0e}",
+                "check the powers of ten",
+            )
     return {name: values[name] for name in written}

@@ -18,6 +18,10 @@ from realize.quantity import Dimension, parse_quantity, quantity_allowed
 #: Longest line of text (about, requirement, ...): two lines of a comment of 100 columns.
 MAX_TEXT = 200
 
+#: Largest quantity, corner in rad/s or signal, and one over the smallest: no machine comes near, and float64 still
+#: holds the cube of it, so that figures can be computed from it without a thought.
+LARGEST = 10**100
+
 #: How a quantity in each unit of a check or tolerance is read.
 DIMENSIONS: dict[str, Dimension] = {"%": "percent", "dB": "decibel", "deg": "angle"}
 
@@ -153,7 +157,7 @@ class Table:
         value = self.number(key)
         if value is not None and value <= 0:
             raise self.error(key, described(self.entries[key]), "a number above zero", "check the sign")
-        return value
+        return None if value is None else within_range(value, self.where(key))
 
     def quantity(self, key: str, dimension: Dimension, *, zero: bool = False) -> Fraction | None:
         """Read a quantity above zero (or at zero, where that makes sense); ``None`` where it is missing."""
@@ -210,7 +214,16 @@ def checked_quantity(value: object, dimension: Dimension, where: str, *, zero: b
     if result < 0 or (result == 0 and not zero):
         bound = "zero or more" if zero else "above zero"
         raise RealizeError(where, shown(value), f"a quantity {bound}", "check the number and its sign")
-    return result
+    return within_range(result, where)
+
+
+def within_range(value: Fraction, where: str) -> Fraction:
+    """Refuse a number whose figures float64 could not hold: a slip of an exponent."""
+    if value and not Fraction(1, LARGEST) <= abs(value) <= LARGEST:
+        size = "large" if abs(value) > 1 else "small"
+        allowed = f"zero, or sizes from {1 / LARGEST:.0e} to {LARGEST:.0e}"
+        raise RealizeError(where, f"a number that is too {size}", allowed, "check the power of ten")
+    return value
 
 
 def checked_choice(value: object, options: Sequence[str], where: str) -> str:

@@ -17,6 +17,7 @@ from realize.design.gate import (
     checked_quantity,
     described,
     not_yet,
+    within_range,
 )
 from realize.design.model import (
     CHECK_UNITS,
@@ -42,6 +43,11 @@ MAX_UNIT = 24
 
 #: Farthest offset of a converter in counts: a 32-bit count.
 MAX_OFFSET = 2**31
+
+#: Shortest and longest period in s: a terahertz is beyond any converter, and thirty years between two samples beyond
+#: any process.
+SHORTEST_PERIOD_S = Fraction(1, 10**12)
+LONGEST_PERIOD_S = Fraction(10**9)
 
 #: Digits a roll-off pole in Hz is rounded to in rad/s: those that tell every two doubles apart, so that the pole
 #: can be pasted from the record into a design file.
@@ -230,17 +236,30 @@ def _overridden_period(overrides: Overrides) -> Fraction | None:
     if overrides.rate is not None and overrides.period is not None:
         raise RealizeError("--rate", "--rate and --period at once", "exactly one of them", "drop one")
     if overrides.rate is not None:
-        return 1 / checked_quantity(overrides.rate, "rate", "--rate")
+        return _checked_period(1 / checked_quantity(overrides.rate, "rate", "--rate"), "--rate")
     if overrides.period is not None:
-        return checked_quantity(overrides.period, "time", "--period")
+        return _checked_period(checked_quantity(overrides.period, "time", "--period"), "--period")
     return None
 
 
 def _period(table: Table) -> Fraction | None:
     if "rate" in table and "period" in table:
         raise table.error("rate", "rate and period at once", "exactly one of them", "remove one")
-    rate_hz = table.quantity("rate", "rate")
-    return table.quantity("period", "time") if rate_hz is None else 1 / rate_hz
+    rate_hz, period_s = table.quantity("rate", "rate"), table.quantity("period", "time")
+    if rate_hz is not None:
+        return _checked_period(1 / rate_hz, table.where("rate"))
+    return None if period_s is None else _checked_period(period_s, table.where("period"))
+
+
+def _checked_period(period_s: Fraction, where: str) -> Fraction:
+    if not SHORTEST_PERIOD_S <= period_s <= LONGEST_PERIOD_S:
+        raise RealizeError(
+            where,
+            f"a period of {format_engineering(period_s, 's')}",
+            f"from {float(SHORTEST_PERIOD_S):.0e} s to {float(LONGEST_PERIOD_S):.0e} s",
+            "check the power of ten and the unit",
+        )
+    return period_s
 
 
 def _rolloff_order(table: Table, transfer: TransferFunction) -> int | None:
@@ -313,13 +332,16 @@ def _signal(table: Table, target: Target) -> Signal:
 def _range(table: Table) -> tuple[Fraction, Fraction] | None:
     if "range" not in table:
         return None
-    ends = [
-        checked_number(end, {}, f"{table.where('range')}, entry {i}") for i, end in enumerate(table.numbers("range"), 1)
-    ]
+    where = table.where("range")
+    ends = [_range_end(end, f"{where}, entry {i}") for i, end in enumerate(table.numbers("range"), 1)]
     if len(ends) != 2 or ends[0] >= ends[1]:
         found = f"a list of {len(ends)}" if len(ends) != 2 else "a low end that is not below the high one"
         raise table.error("range", found, "[low, high] with low below high", "write range = [-1.0, 1.0]")
     return ends[0], ends[1]
+
+
+def _range_end(value: object, where: str) -> Fraction:
+    return within_range(checked_number(value, {}, where), where)
 
 
 def _signal_type(table: Table, target: Target) -> str | None:

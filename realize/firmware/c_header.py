@@ -6,8 +6,9 @@ from collections.abc import Mapping, Sequence
 from fractions import Fraction
 from typing import TYPE_CHECKING, Any
 
-from realize.arithmetic.sample import BACK_CALCULATION, HOLD_INTEGRAL, Sample
+from realize.arithmetic.sample import BACK_CALCULATION, HOLD_INTEGRAL, Sample, variables
 from realize.firmware.c_text import (
+    WIDTH,
     Dialect,
     comment,
     dialect,
@@ -123,7 +124,8 @@ def _structure(emission: Emission) -> str:
     realization = emission.realization
     sections = _counted(len(realization.sections), "section")
     integrals = _counted(len(realization.integral), "integral state")
-    return f"{realization.structure}: {sections} in transposed direct form II; {integrals} in units of the output"
+    units = " in units of the output" if realization.integral else ""
+    return f"{realization.structure}: {sections} in transposed direct form II; {integrals}{units}"
 
 
 def _counted(count: int, what: str) -> str:
@@ -226,7 +228,7 @@ def _unprotected(emission: Emission, sample: Sample) -> list[str]:
         *limits,
         *(undamped if lively else []),
         "finite inputs so large that a product overflows: the state stays infinite or NaN until it is cleared"
-        + ("; the command then stays within its limits" if sample.low is not None else ""),
+        + ("; the command stays within its limits (NaN counts as the low one)" if sample.low is not None else ""),
         "a null pointer, a state that was never cleared, two calls on one state at the same time",
     ]
 
@@ -351,15 +353,21 @@ def _prototypes(c: Dialect, emission: Emission, sample: Sample) -> list[str]:
 
 def signatures(c: Dialect) -> tuple[str, str, str, str, str]:
     """Clear, update, output, advance and preset, as declared and defined."""
-    by_pointer = f", const {c.name}_coefficients *coefficients" if c.table else ""
-    state = f"{c.name}_state *state{by_pointer}"
+    state, value = f"{c.name}_state *state", f"{c.real} input"
+    both = [state, *([f"const {c.name}_coefficients *coefficients"] if c.table else [])]
     return (
-        f"void {c.name}_clear({c.name}_state *state)",
-        f"{c.real} {c.name}_update({state}, {c.real} input)",
-        f"{c.real} {c.name}_output({state}, {c.real} input)",
-        f"void {c.name}_advance({state}, {c.real} input, {c.real} applied)",
-        f"int {c.name}_preset({state}, {c.real} input, {c.real} output)",
+        f"void {c.name}_clear({state})",
+        _signature(f"{c.real} {c.name}_update", [*both, value]),
+        _signature(f"{c.real} {c.name}_output", [*both, value]),
+        _signature(f"void {c.name}_advance", [*both, value, f"{c.real} applied"]),
+        _signature(f"int {c.name}_preset", [*both, value, f"{c.real} output"]),
     )
+
+
+def _signature(function: str, parameters: Sequence[str]) -> str:
+    """On one line, or a line for each parameter."""
+    line = f"{function}({', '.join(parameters)})"
+    return line if len(line) < WIDTH else f"{function}(\n    " + ",\n    ".join(parameters) + ")"
 
 
 def _output_says(sample: Sample) -> str:
@@ -372,9 +380,10 @@ def _advance_says(emission: Emission, sample: Sample) -> str:
         "The rest of the sample, after output with the same input: applied is what the actuator was really given, "
         "in units of the command."
     )
-    if "applied" not in {step.target for step in sample.advance} or not emission.guard_nonfinite:
-        return text
-    return f"{text} A value that is NaN or infinite counts as the command."
+    if "applied" not in variables(sample.advance):
+        return f"{text} This design does not use it."
+    guarded = " A value that is NaN or infinite counts as the command."
+    return text + (guarded if emission.guard_nonfinite else "")
 
 
 def _preset_says(emission: Emission) -> str:

@@ -44,7 +44,8 @@ def _place(item: tuple[str, float]) -> tuple[bool, int, bool, str]:
     """Sections first, each ``b``, ``a``, gain; then the integral's, then the rest."""
     part, _, role = item[0].partition("_")
     number = part.lstrip("abcdefghijklmnopqrstuvwxyz")
-    return not part.startswith("section"), int(number or LAST), not role.startswith("b"), role
+    order = role.replace("minus_", "").replace("b", " ")
+    return not part.startswith("section"), int(number or LAST), role == "gain", order
 
 
 def source_text(emission: Emission, sample: Sample, settling: Settling, stored: Mapping[str, float]) -> str:

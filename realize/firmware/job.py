@@ -8,10 +8,11 @@ from dataclasses import dataclass
 from typing import Any
 
 from realize.band import frequency_text
+from realize.checks import Check
 from realize.design import Accept, Design
 from realize.firmware.emission import Emission
 from realize.firmware.render import render_firmware
-from realize.workflow import Causal, Check, Comparison, MethodResult, choose, refuse_unacceptable
+from realize.workflow import Causal, Comparison, MethodResult, choose, refuse_unacceptable
 
 
 @dataclass(frozen=True)

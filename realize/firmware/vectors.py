@@ -1,29 +1,32 @@
 """``NAME_vectors.csv``: inputs from integer arithmetic, and the model's answers to them.
 
 Full scale is the ends of the input range, or -1 and 1. Every input is a value of the format: a fraction ``m/2^15`` of
-full scale, times a power of two in the saturating steps.
+full scale, times a power of two where the command is to stay within its limits or to be driven beyond them.
 """
 
 from __future__ import annotations
 
 from fractions import Fraction
-from math import comb
+from math import comb, isfinite
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from realize.arithmetic.recursion import Recursion
-from realize.arithmetic.sample import largest
+from realize.arithmetic.sample import Sample, largest
 from realize.firmware.c_text import hexadecimal
 
 if TYPE_CHECKING:
     from realize.arithmetic.formats import FloatFormat
     from realize.firmware.emission import Emission
 
-#: Samples of each segment: an impulse and a step long enough to see the answer, a sweep up to half the rate, noise to
-#: exercise every rounding, each level of the two saturating passes, and inputs that are not finite. 1,056 in all,
-#: 1,024 where inputs are not guarded.
-IMPULSE, STEP, SWEEP, NOISE, HELD, NONFINITE = 64, 128, 256, 192, 24, 32
+#: Samples of each segment: an impulse; noise within the limits, to compare every rounding where no clamp hides it; a
+#: step long enough to see the answer; a sweep up to half the rate; noise at full scale; each level of the two
+#: saturating passes; inputs that are not finite. 1,248 in all, 1,216 where inputs are not guarded.
+IMPULSE, QUIET, STEP, SWEEP, NOISE, HELD, NONFINITE = 64, 192, 128, 256, 192, 24, 32
+
+#: Where the saturating passes begin.
+SATURATING = IMPULSE + QUIET + STEP + SWEEP + NOISE
 
 #: One part of full scale.
 UNIT = 1 << 15
@@ -31,8 +34,8 @@ UNIT = 1 << 15
 #: The drive makes this many times what saturates the command.
 OVERDRIVE = 4.0
 
-#: Step of the second drive where it does not suffice.
-HARDER = 32.0
+#: Where the second drive does not suffice: how much more each try drives, and how many tries there are.
+HARDER, TRIES = 32.0, 6
 
 #: The drive stays this factor below the largest value of the format: room for the gains of the realization.
 HEADROOM = 2.0**-40
@@ -55,26 +58,27 @@ def vectors(emission: Emission) -> tuple[list[float], list[float]]:
     Notes
     -----
     Where the past weighs more than the second pass can drive (a chain of integral states that nothing holds), that pass
-    is driven harder until the command meets both limits, or the format has no room.
+    is driven harder until the command meets both limits, a few times at most.
     """
     model = emission.recursion()
+    target, limits = emission.realization.format, {model.sample.low, model.sample.high}
     low, high = _full_scale(emission)
-    first, second = _drives(emission, max(abs(low), abs(high)))
-    room = largest(emission.realization.format) * HEADROOM
-    while True:
-        inputs = _in_format(_inputs(emission, (first, second), low, high), emission.realization.format)
+    first, second = _drives(emission, model.sample, max(abs(low), abs(high)))
+    quiet = _quiet(emission, model.sample, low, high)
+    harder = [second * HARDER**k for k in range(TRIES) if second * HARDER**k < largest(target) * HEADROOM]
+    for drive in harder or [second]:
+        inputs = _in_format(_inputs(emission, quiet, (first, drive), low, high), target)
         model.clear()
         outputs = model.run(inputs)
-        met = {model.sample.low, model.sample.high} <= {None, *outputs}
-        if met or second * HARDER > room:
-            return inputs, outputs
-        second *= HARDER
+        if limits <= {None, *outputs[SATURATING:]}:
+            break
+    return inputs, outputs
 
 
-def _inputs(emission: Emission, drives: tuple[float, float], low: float, high: float) -> list[float]:
+def _inputs(emission: Emission, quiet: float, drives: tuple[float, float], low: float, high: float) -> list[float]:
     """All segments."""
-    parts = [*_impulse(), *[UNIT] * STEP, *_sweep(), *_noise()]
-    inputs = [_scaled(m, low, high) for m in parts]
+    inputs = [_scaled(m, low, high) for m in (*_impulse(), *_noise(QUIET), *[UNIT] * STEP, *_sweep(), *_noise(NOISE))]
+    inputs[IMPULSE : IMPULSE + QUIET] = [x * quiet for x in inputs[IMPULSE : IMPULSE + QUIET]]
     for drive in (drives[0], -drives[1]):
         for share, part in LEVELS:
             inputs += [share * drive + _scaled(part, low, high)] * HELD
@@ -85,11 +89,23 @@ def _in_format(inputs: list[float], target: FloatFormat) -> list[float]:
     return inputs if target.name == "float64" else [float(x) for x in np.array(inputs, np.float32)]
 
 
-def _drives(emission: Emission, full: float) -> tuple[float, float]:
+def _quiet(emission: Emission, sample: Sample, low: float, high: float) -> float:
+    """The largest power of two, at most 1, by which noise is scaled to keep the command within half its limits."""
+    if sample.low is None or sample.high is None:
+        return 1.0
+    noise = [_scaled(m, low, high) for m in _noise(QUIET)]
+    peak = max(map(abs, Recursion(emission.realization, None, "none").run(noise)))
+    within, quiet = max(abs(sample.low), abs(sample.high)) / 2, 1.0
+    while isfinite(peak) and peak * quiet > within > 0:
+        quiet /= 2
+    return quiet
+
+
+def _drives(emission: Emission, sample: Sample, full: float) -> tuple[float, float]:
     """Amplitudes that saturate the command: through everything, and through the integral states alone."""
-    if emission.output_range is None:
+    if sample.low is None or sample.high is None:
         return full * OVERDRIVE, full * OVERDRIVE
-    limit = float(max(map(abs, emission.output_range)))
+    limit = max(abs(sample.low), abs(sample.high))
     realization = emission.realization
     answers = Recursion(realization, None, "none").run([full] * HELD)
     peak = max(map(abs, answers)) / full
@@ -109,7 +125,8 @@ def _drive(limit: float, responses: list[float], full: float, room: float) -> fl
 def _full_scale(emission: Emission) -> tuple[float, float]:
     target = emission.realization.format
     low, high = emission.input_range or (Fraction(-1), Fraction(1))
-    ends = target.round(low), target.round(high)
+    most = Fraction(largest(target))
+    ends = target.round(max(low, -most)), target.round(min(high, most))
     return ends if any(ends) else (-1.0, 1.0)
 
 
@@ -133,11 +150,11 @@ def _sweep() -> list[int]:
     return parts
 
 
-def _noise() -> list[int]:
+def _noise(count: int) -> list[int]:
     """High halves of ``s <- 1664525 s + 1013904223 mod 2^32`` from 1 (Knuth and Lewis; constants from memory)."""
     parts = []
     state = 1
-    for _ in range(NOISE):
+    for _ in range(count):
         state = (1664525 * state + 1013904223) % (1 << 32)
         parts.append((state >> 16) - UNIT)
     return parts

@@ -160,6 +160,11 @@ class ContinuousLoop:
         return found
 
     @property
+    def grid(self) -> Real:
+        """Frequencies in rad/s that follow every feature of the response."""
+        return self._scan.w
+
+    @property
     def _high_gain(self) -> float:
         """``ln`` of the gain at infinity of the rational part."""
         n, d = self.ratio

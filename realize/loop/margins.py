@@ -8,7 +8,7 @@ the response and refined to rounding; a touch between two grid points is found f
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from math import exp, floor, inf, log10, pi
+from math import degrees, exp, floor, inf, log10, pi
 from typing import NamedTuple
 
 import numpy as np
@@ -90,14 +90,17 @@ class Ends(NamedTuple):
 
     Attributes
     ----------
-    start : GainCrossover-like tuple
+    start : pair of float
         ``(ln |L|, phase)`` at w = 0; ``inf`` with a pole there, the phase then being that of its residue.
-    end : tuple
+    end : pair of float or None
         ``(ln |L|, phase or None)`` at half the sample rate or at infinity; None where the phase has no limit.
+    end_rad_s : float
+        Half the sample rate, or infinity.
     """
 
     start: tuple[float, float]
     end: tuple[float, float | None]
+    end_rad_s: float = inf
 
 
 class Margins(NamedTuple):
@@ -212,24 +215,31 @@ class Scan:
 
     def sensitivity_peak(self) -> tuple[float, float]:
         """Greatest ``|1/(1 + L)|`` on and between the grid points, and its frequency."""
-        distance = _distance(self.log, self.phase)
-        i = np.arange(1, len(distance) - 1)
-        lowest = i[(distance[i] <= distance[i - 1]) & (distance[i] <= distance[i + 1])]
-        lowest = lowest[np.argsort(distance[lowest], kind="stable")[:_PEAKS]]
-        ends = [(float(distance[k]), float(self.w[k])) for k in (0, -1)]
-        if not len(lowest):
-            least, at = min(ends)
-            return 1 / least if least else inf, at
-        first, last = self.w[lowest - 1], self.w[lowest + 1]
-        rows = np.arange(len(lowest))
-        for _ in range(_PEAK_ROUNDS):
-            points = first[:, None] + (last - first)[:, None] * (np.arange(_PARTS + 1) / _PARTS)
-            near = _distance(*self.evaluate(points.ravel())).reshape(points.shape)
-            k = np.argmin(near, axis=1)
-            first, last = points[rows, np.maximum(k - 1, 0)], points[rows, np.minimum(k + 1, _PARTS)]
-        best = int(np.argmin(near[rows, k]))
-        least, at = min((float(near[best, k[best]]), float(points[best, k[best]])), *ends)
+        least, at = lowest(lambda w: _distance(*self.evaluate(w)), self.w, _distance(self.log, self.phase))
         return 1 / least if least else inf, at
+
+
+def lowest(function: Callable[[Real], Real], w: Real, values: Real) -> tuple[float, float]:
+    """Least value of a function, and where, from its values on a grid that resolves it.
+
+    Notes
+    -----
+    The stretches around the lowest local minima are divided again and again.
+    """
+    inner = values[1:-1]
+    i = 1 + np.flatnonzero((inner <= values[:-2]) & (inner <= values[2:]))
+    i = i[np.argsort(values[i], kind="stable")[:_PEAKS]]
+    best = min((float(values[k]), float(w[k])) for k in (0, -1))
+    if not len(i):
+        return best
+    first, last, rows = w[i - 1], w[i + 1], np.arange(len(i))
+    for _ in range(_PEAK_ROUNDS):
+        points = first[:, None] + (last - first)[:, None] * (np.arange(_PARTS + 1) / _PARTS)
+        found = function(points.ravel()).reshape(points.shape)
+        k = np.argmin(found, axis=1)
+        first, last = points[rows, np.maximum(k - 1, 0)], points[rows, np.minimum(k + 1, _PARTS)]
+    row = int(np.argmin(found[rows, k]))
+    return min((float(found[row, k[row]]), float(points[row, k[row]])), best)
 
 
 def encirclements(crossovers: Sequence[GainCrossover], ends: Ends) -> int | None:
@@ -249,10 +259,10 @@ def encirclements(crossovers: Sequence[GainCrossover], ends: Ends) -> int | None
     """
     if any(abs(c.rotation) < ON_POINT * max(1.0, abs(c.phase)) for c in crossovers):
         return None
-    if any(abs(size) < ON_POINT and phase is not None and _is_odd(phase) for size, phase in ends):
+    if any(abs(size) < ON_POINT and phase is not None and _is_odd(phase) for size, phase in ends[:2]):
         return None
     twice = sum(-2 * c.direction * _odd_levels_passed(c.phase) for c in crossovers)
-    (start, start_phase), (end, end_phase) = ends
+    (start, start_phase), (end, end_phase) = ends[:2]
     # At a multiple m of pi, m levels are passed in both halves together, be m odd or even.
     twice -= round(start_phase / pi) if start > 0 else 0
     twice += round(end_phase / pi) if end > 0 and end_phase is not None else 0
@@ -260,37 +270,50 @@ def encirclements(crossovers: Sequence[GainCrossover], ends: Ends) -> int | None
 
 
 def margins(
-    scan: Scan, crossovers: Sequence[GainCrossover], phase_crossovers: Sequence[PhaseCrossover], ends: Ends, *, stable: bool
+    scan: Scan,
+    crossovers: Sequence[GainCrossover],
+    phase_crossovers: Sequence[PhaseCrossover],
+    ends: Ends | None,
+    *,
+    stable: bool | None,
 ) -> Margins:
     """Read all figures.
 
     Parameters
     ----------
-    stable : bool
-        Of the closed loop: decides the sign of the phase margin, and whether there is a delay margin.
+    ends : Ends or None
+        None where the response is known on a band only; the figures then are those of the band.
+    stable : bool or None
+        Of the closed loop: decides the sign of the phase margin, and whether there is a delay margin. None where it
+        is not known: signs are then those of a loop without growing modes of its own.
     """
-    at_ends = [
-        PhaseCrossover(w, size)
-        for w, (size, phase) in zip((0.0, inf), ends, strict=True)
-        if abs(size) < inf and (phase is None or _is_odd(phase))
-    ]
-    points = [*phase_crossovers, *at_ends]
+    points = [*phase_crossovers, *(_real_ends(ends) if ends else ())]
     below = max((p for p in points if p.log_gain <= ON_POINT), key=lambda p: p.log_gain, default=None)
     above = min((p for p in points if p.log_gain >= -ON_POINT), key=lambda p: p.log_gain, default=None)
-    nearest = _nearest_crossover(crossovers, stable=stable)
-    delay = min((c.lag_left / c.w_rad_s for c in crossovers), default=None) if stable else None
+    nearest = _nearest_crossover(crossovers, stable=bool(stable))
+    margin = None if nearest is None else _signed(nearest, stable=bool(stable))
+    has_delay = stable or (stable is None and margin is not None and margin > 0)
     peak, at = scan.sensitivity_peak()
     return Margins(
         exp(-min(below.log_gain, 0.0)) if below else None,
         below.w_rad_s if below else None,
         exp(-max(above.log_gain, 0.0)) if above else None,
         above.w_rad_s if above else None,
-        None if nearest is None else np.degrees(_signed(nearest, stable=stable)).item(),
+        None if margin is None else degrees(margin),
         None if nearest is None else nearest.w_rad_s,
-        delay,
-        *_with_ends(peak, at, ends),
+        min((c.lag_left / c.w_rad_s for c in crossovers), default=None) if has_delay else None,
+        *(_with_ends(peak, at, ends) if ends else (peak, at)),
         tuple(c.w_rad_s for c in crossovers),
     )
+
+
+def _real_ends(ends: Ends) -> list[PhaseCrossover]:
+    """Ends at which the response is negative, or approaches every phase, with a finite gain."""
+    return [
+        PhaseCrossover(w, size)
+        for w, (size, phase) in ((0.0, ends.start), (ends.end_rad_s, ends.end))
+        if abs(size) < inf and (phase is None or _is_odd(phase))
+    ]
 
 
 def _signed(crossover: GainCrossover, *, stable: bool) -> float:
@@ -306,7 +329,8 @@ def _nearest_crossover(crossovers: Sequence[GainCrossover], *, stable: bool) -> 
 def _with_ends(peak: float, at: float, ends: Ends) -> tuple[float | None, float | None]:
     """The peak, or the sensitivity at an end of the axis where that is larger."""
     best: tuple[float, float | None] = (peak, at)
-    for w, (size, phase) in zip((0.0, None), ends, strict=True):
+    last = ends.end_rad_s if ends.end_rad_s < inf else None
+    for w, (size, phase) in ((0.0, ends.start), (last, ends.end)):
         if size < _MOST_LOG:
             # Without a limit of the phase every phase is approached, the worst one too.
             value = exp(size) * (np.cos(phase) if phase is not None else -1.0)

@@ -10,7 +10,8 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from fractions import Fraction
-from math import log, pi
+from itertools import zip_longest
+from math import exp, log, pi, prod
 from typing import Any, NamedTuple, Protocol
 
 import numpy as np
@@ -21,6 +22,7 @@ from realize.transfer import PulseTransferFunction, TransferFunction
 
 Real = npt.NDArray[np.float64]
 Complex = npt.NDArray[np.complex128]
+Whole = npt.NDArray[np.int64]
 
 #: Root in ``z - 1`` at z = -1, the end of the frequency axis.
 _AT_NYQUIST = -2.0
@@ -66,6 +68,8 @@ class Continuous:
 
     def __init__(self, transfer: TransferFunction) -> None:
         self._gain = float(log_size(transfer.gain)), 0.0 if transfer.gain > 0 else pi
+        low = transfer.low_frequency_gain
+        self._low_gain = log_size(low), 0.0 if low > 0 else pi
         self._zeros, self._poles = (_array(every(roots)) for roots in (transfer.zeros, transfer.poles))
         self.features = np.concatenate([self._zeros[self._zeros != 0], self._poles[self._poles != 0]])
         self.growing = int(np.sum(self._poles.real > 0))
@@ -74,6 +78,39 @@ class Continuous:
         self.start = Start(
             transfer.zeros_minus_poles_at_origin, log_size(transfer.low_frequency_gain), _multiple_of_pi(phase)
         )
+
+    def value(self, s: Complex) -> Complex:
+        """``G(s)`` anywhere off its poles."""
+        value = np.full(len(s), exp(self._low_gain[0]) * np.cos(self._low_gain[1]), complex)
+        for zero, pole in zip_longest(sorted(self._zeros, key=abs), sorted(self._poles, key=abs)):
+            if zero is not None:
+                value *= _factor(zero, s)
+            if pole is not None:
+                value /= _factor(pole, s)
+        return value
+
+    def expansion(self, a: float, resolved_rad_s: float, powers: int) -> Real:
+        """First coefficients of G in powers of ``u = a/(s + a)``; roots beyond what is resolved are static.
+
+        Returns
+        -------
+        array, (powers + 1,)
+            Ascending; zeros where G grows with frequency as far as it is resolved.
+        """
+        zeros, poles = ([r for r in roots if abs(r) < resolved_rad_s] for roots in (self._zeros, self._poles))
+        order = len(poles) - len(zeros)
+        series = np.zeros(powers + 1, complex)
+        if not 0 <= order <= powers:
+            return series.real
+        # 1 - s/root = (-a/root) (1 - (1 + root/a) u)/u, and s = a (1 - u)/u.
+        lead = prod(-a / z if z else a for z in zeros) / prod(-a / p if p else a for p in poles)
+        series[order] = exp(self._low_gain[0]) * np.cos(self._low_gain[1]) * lead
+        for zero in zeros:
+            series[1:] -= (1 + zero / a) * series[:-1]
+        for pole in poles:
+            for k in range(order + 1, powers + 1):
+                series[k] += (1 + pole / a) * series[k - 1]
+        return series.real
 
     def at(self, w: Real) -> tuple[Real, Real]:
         """``ln |G(jw)|`` and phase."""
@@ -192,6 +229,10 @@ def phase_at(part: Part, w: float) -> float:
 
 
 _ZERO: Real = np.zeros(1)
+
+
+def _factor(root: complex, s: Complex) -> Complex:
+    return 1 - s / root if root else s
 
 
 def _array(roots: Sequence[complex]) -> Complex:

@@ -165,30 +165,39 @@ def _prewarped_parts(
     numerator: poly.Integers, denominator: poly.Integers, angle: Fraction, bits: int
 ) -> tuple[Enclosure, Enclosure]:
     """Numerator and monic denominator with ``x = K (z - 1)/(z + 1)``."""
-    order = len(denominator) - 1
-    top, bottom = (_prewarped(p, order, angle, bits) for p in (numerator, denominator))
+    order = poly.degree(denominator)
+    top, bottom = (_prewarped(p, angle, bits) for p in (numerator, denominator))
     mid, rad = bottom.entry(0)
     if bits > _VANISHING_BITS and abs(mid) >> (max(abs(m) for m in bottom.mid)).bit_length() - _VANISHING_BITS == 0:
         _refuse_pole_at_infinity(None)
     # The integer coefficients may be of any size: bring the lead near 1 before inverting it.
     size = mid.bit_length() - bits
     inverse = reciprocal(*_shifted(mid, rad, size), bits)
-    return tuple(v.times(*inverse).scaled(Fraction(2) ** -size) for v in (top, bottom))  # type: ignore[return-value]
+    scaled = [v.times(*inverse).scaled(Fraction(2) ** -size) for v in (top, bottom)]
+    shared = [_shared_factors(p, order) for p in (numerator, denominator)]
+    return scaled[0].convolve_integers(shared[0]), scaled[1].convolve_integers(shared[1])
 
 
 def _shifted(mid: int, rad: int, places: int) -> tuple[int, int]:
     return (mid >> places, (rad >> places) + 2) if places >= 0 else (mid << -places, rad << -places)
 
 
-def _prewarped(p: poly.Integers, order: int, angle: Fraction, bits: int) -> Enclosure:
-    """``sum_i p_i K^i (z - 1)^i (z + 1)^(order - i)``."""
+def _shared_factors(p: poly.Integers, order: int) -> poly.Integers:
+    """Factors at z = 1 and z = -1 that every term of :func:`_prewarped` shares: kept exact."""
+    return poly.multiply(poly.power((1, -1), poly.trailing_zeros(p)), poly.power((1, 1), order - poly.degree(p)))
+
+
+def _prewarped(p: poly.Integers, angle: Fraction, bits: int) -> Enclosure:
+    """``sum_i p_i K^i (z - 1)^i (z + 1)^(degree - i)``, without the powers of ``z - 1`` that all terms share."""
     k, spread = _warp_factor(angle, bits)
+    lowest, highest = poly.trailing_zeros(p), poly.degree(p)
     power, radius = 1 << bits, 0
-    zero = integers([0] * (order + 1))
+    zero = integers([0] * (highest - lowest + 1))
     total = Enclosure(zero, zero, bits)
     for i, c in enumerate(reversed(p)):
-        basis = integers(poly.multiply(poly.power((1, -1), i), poly.power((1, 1), order - i)))
-        total = total + Enclosure(basis * (c * power), abs(basis) * (abs(c) * radius), bits)
+        if i >= lowest:
+            basis = integers(poly.multiply(poly.power((1, -1), i - lowest), poly.power((1, 1), highest - i)))
+            total = total + Enclosure(basis * (c * power), abs(basis) * (abs(c) * radius), bits)
         radius = (power * spread + radius * (k + spread) >> bits) + 2
         power = power * k >> bits
     return total

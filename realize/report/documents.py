@@ -7,6 +7,7 @@ from fractions import Fraction
 from math import isfinite, pi
 from typing import Any
 
+from realize.algebra.expression import exact_text
 from realize.algebra.roots import Root
 from realize.algebra.rounding import FLOAT64
 from realize.checks import Check
@@ -51,7 +52,7 @@ def assess_document(design: Design, assessment: Assessment) -> Document:
         "poles": _roots(transfer.poles),
         "zeros": _roots(transfer.zeros),
         "cancelled": _exact(transfer.cancelled) if len(transfer.cancelled) > 1 else [],
-        "improper_terms": [{"power": t.power, "coefficient": str(t.coefficient)} for t in assessment.terms],
+        "improper_terms": [{"power": t.power, "coefficient": exact_text(t.coefficient)} for t in assessment.terms],
         "proposals": [proposal_document(p) for p in assessment.proposals],
         "notes": list(assessment.notes),
     }
@@ -63,7 +64,7 @@ def proposal_document(proposal: Proposal) -> Document:
         "placement": proposal.placement,
         "order": proposal.order,
         "damping": float(proposal.damping),
-        "pole_rad_s": str(proposal.pole_rad_s),
+        "pole_rad_s": exact_text(proposal.pole_rad_s),
         "numerator": _exact(proposal.transfer.numerator),
         "denominator": _exact(proposal.transfer.denominator),
         "relative_degree": proposal.relative_degree,
@@ -79,7 +80,7 @@ def compare_document(comparison: Comparison) -> Document:
     """The answer of `realize compare`."""
     causal = comparison.causal
     return heading("compare", comparison.design) | {
-        "period_s": str(comparison.period_s),
+        "period_s": exact_text(comparison.period_s),
         "band_hz": float(comparison.band_rad_s) / (2 * pi),
         "band_rests_on": comparison.band_rests_on,
         "rolloff": proposal_document(causal.proposal) if causal.proposal else None,
@@ -98,7 +99,13 @@ def method_document(result: MethodResult) -> Document:
         "stability": result.stability,
         "checks": [check_document(check) for check in result.checks],
         "accepted": [
-            {"check": c.check, "limit": str(a.limit), "because": a.because, "by": a.by} for c, a in result.accepted
+            {
+                "check": c.check,
+                "limit": None if a.limit is None else exact_text(a.limit),
+                "because": a.because,
+                "by": a.by,
+            }
+            for c, a in result.accepted
         ],
         "notes": list(result.notes),
     }
@@ -164,7 +171,7 @@ def natural_frequency_and_damping(root: complex) -> tuple[float, float | None]:
 
 
 def _exact(coefficients: Sequence[int | Fraction]) -> list[str]:
-    return [str(c) for c in coefficients]
+    return [exact_text(c) for c in coefficients]
 
 
 def _value(value: float | complex | str | None) -> float | str | Document | None:

@@ -266,6 +266,10 @@ def test_polynomials_are_printed_the_way_people_write_them(p: poly.Rationals, te
     assert format_polynomial(p) == text
 
 
+def test_a_decimal_beyond_the_powers_of_ten_that_are_read_is_printed_as_a_quotient() -> None:
+    assert format_polynomial((F(3, 10**410),)) == f"3/1{'0' * 410}"
+
+
 def test_the_variable_can_be_z() -> None:
     assert format_transfer((F(1), F(2)), (F(1), F(-1)), "z") == "(z + 2)/(z - 1)"
 

@@ -101,6 +101,11 @@ def test_the_ends_of_the_formats() -> None:
     assert least_normal(FLOAT64).hex() == "0x1.0000000000000p-1022"
 
 
+def test_a_realization_of_nothing_is_refused() -> None:
+    with pytest.raises(RealizeError, match="realization: it is empty"):
+        describe(Realization(FLOAT32, "direct", (), (), PERIOD_S))
+
+
 def test_a_range_between_two_values_of_the_format_is_refused() -> None:
     realization = Realization(FLOAT32, "direct", (), (Section((2.0,), ()),), PERIOD_S)
     gap = (1 + Fraction(1, 10**9), 1 + Fraction(2, 10**9))

@@ -165,6 +165,7 @@ def test_a_broken_value_that_is_replaced_does_no_harm() -> None:
         ('transfer = "1"\n[design.values]\nk = ""', "[design.values] k", "no expression", "write one"),
         ('transfer = "1"\n[design.values]\nk = "1/0"', "[design.values] k", "a denominator of zero", "check"),
         ('transfer = "1"\n[design.values]\nk = 1e999', "[design.values] k", "the power of ten", "exponent"),
+        ('transfer = "1"\n[design.values]\nk = -1e301', "[design.values] k", "too large", "powers of ten"),
         ('transfer = "1"\n[design.values]\nk = {a = 1}', "[design.values] k", "a table", "write a number"),
         ('transfer = "1"\n[design.values]\nk = "k"', "[design.values] k", "k -> k", "give one of k a number"),
         (

@@ -26,7 +26,7 @@ from realize.design import (
 )
 from realize.design.gate import WrittenNumber
 from realize.design.load import MAX_FILE_BYTES, MAX_LINE, design_from_document
-from realize.errors import RealizeError
+from realize.errors import RealizeError, Refused
 
 F = Fraction
 DESIGN = '[design]\ntransfer = "kp + 2/s"\n[design.values]\nkp = 3\n[sampling]\nrate = "1 kHz"\n'
@@ -293,3 +293,14 @@ def test_reading_an_expression_loads_neither_toml_nor_help_with_mistakes() -> No
     )
     done = subprocess.run([sys.executable, "-c", script], capture_output=True, text=True, check=True)
     assert done.stdout == "[]\n"
+
+
+def test_a_hidden_growing_mode_in_an_expression_is_refused_even_where_it_looks_like_a_path() -> None:
+    with pytest.raises(Refused) as caught:
+        load_design("s/(s-1) - 1/(s-1)")
+    assert (caught.value.where, caught.value.exit_status) == ("expression", 1)
+
+
+def test_an_integer_longer_than_any_number_of_a_design_is_refused() -> None:
+    with pytest.raises(RealizeError, match="a very large number"):
+        design_from_document({"design": {"numerator": [1 << 70000], "denominator": [1]}}, "s.toml")

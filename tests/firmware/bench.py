@@ -25,15 +25,21 @@ WARNINGS = (
 ZIG = (sys.executable, "-m", "ziglang")
 ZIG_TRAPS = ("-fsanitize=undefined", "-fsanitize-trap=undefined")
 GCC_TRAPS = ("-fsanitize=undefined", "-fsanitize-undefined-trap-on-error")
+#: One design in so many: prime to the number of options in the grid, so that every share has them all.
+SHARE = 5
 RUNNER = Path(__file__).with_name("runner.py")
 
 
 class Toolchain(NamedTuple):
-    """How emitted code is compiled (``code``), and how what is only there to test it is (``plain``)."""
+    """How emitted code is compiled (``code``), and how what is only there to test it is (``plain``).
+
+    The first of each family takes every design, the others a ``share`` of them, each its own.
+    """
 
     name: str
     code: tuple[str, ...]
     plain: tuple[str, ...]
+    share: slice = slice(None)
 
 
 def toolchains() -> list[Toolchain]:
@@ -41,16 +47,19 @@ def toolchains() -> list[Toolchain]:
     zig = (*ZIG, "cc")
     found = [
         Toolchain("clang-c99", (*zig, "-std=c99", "-O2", *ZIG_TRAPS), zig),
-        Toolchain("clang-gnu11-unoptimised", (*zig, "-std=gnu11", "-O0", *ZIG_TRAPS), zig),
-        Toolchain("clang-c++11", (*ZIG, "c++", "-x", "c++", "-std=c++11", "-O2", *ZIG_TRAPS), zig),
+        Toolchain("clang-gnu11-unoptimised", (*zig, "-std=gnu11", "-O0", *ZIG_TRAPS), zig, slice(0, None, SHARE)),
+        Toolchain(
+            "clang-c++11", (*ZIG, "c++", "-x", "c++", "-std=c++11", "-O2", *ZIG_TRAPS), zig, slice(1, None, SHARE)
+        ),
     ]
     if shutil.which("gcc"):
         found += [
-            Toolchain("gcc-c99", ("gcc", "-std=c99", "-O1", *GCC_TRAPS), ("gcc",)),
             Toolchain("gcc-gnu11", ("gcc", "-std=gnu11", "-O2", *_widest()), ("gcc",)),
+            Toolchain("gcc-c99", ("gcc", "-std=c99", "-O1", *GCC_TRAPS), ("gcc",), slice(2, None, SHARE)),
         ]
     if shutil.which("g++") and shutil.which("gcc"):
-        found += [Toolchain("g++-c++11", ("g++", "-x", "c++", "-std=c++11", "-O2", *GCC_TRAPS), ("gcc",))]
+        cpp = ("g++", "-x", "c++", "-std=c++11", "-O2", *GCC_TRAPS)
+        found += [Toolchain("g++-c++11", cpp, ("gcc",), slice(3, None, SHARE))]
     return found
 
 
@@ -91,9 +100,7 @@ class Bench:
 
     def compiler(self, command: Sequence[str], where: Path) -> subprocess.CompletedProcess[str]:
         """Run a compiler in a directory."""
-        return subprocess.run(
-            command, cwd=where, env=self._environment, capture_output=True, text=True, check=False
-        )
+        return subprocess.run(command, cwd=where, env=self._environment, capture_output=True, text=True, check=False)
 
     def compile(self, command: Sequence[str], where: Path) -> str:
         """Run a compiler that must be content, and say nothing."""
@@ -115,19 +122,16 @@ class Bench:
             write_all(where, render_firmware(emission))
         return where
 
-    def build(
-        self, emissions: Sequence[Emission], toolchain: Toolchain, where: Path | None = None, beside: str = ""
-    ) -> Program:
-        """Compile the emissions into one library: the code as the toolchain says, what wraps it (and is beside) as C."""
-        where = where or self.emitted(emissions)
+    def build(self, emissions: Sequence[Emission], toolchain: Toolchain, beside: str = "") -> Program:
+        """Compile the emissions into one library: the code as the toolchain says, wrappers and what is beside as C."""
+        where = self.emitted(emissions)
         (where / "code.c").write_text("".join(f'#include "{emission.name}.c"\n' for emission in emissions))
         (where / "wrappers.c").write_text(beside + "".join(map(_wrappers, emissions)))
-        code, wrappers, library = (f"{toolchain.name}-{end}" for end in ("code.o", "wrappers.o", "library.so"))
-        self.compile((*toolchain.code, *WARNINGS, "-fPIC", "-c", "code.c", "-o", code), where)
-        self.compile((*toolchain.plain, "-w", "-O1", "-fPIC", "-c", "wrappers.c", "-o", wrappers), where)
-        alone = ("-nostdlib", "-Wl,-z,defs")  # whatever the code called would be missing
-        self.compile((*toolchain.plain, "-shared", *alone, code, wrappers, "-o", library), where)
-        return Program(where / library)
+        self.compile((*toolchain.code, *WARNINGS, "-fPIC", "-c", "code.c", "-o", "code.o"), where)
+        self.compile((*toolchain.plain, "-w", "-O1", "-fPIC", "-c", "wrappers.c", "-o", "wrappers.o"), where)
+        alone = ("-shared", "-nostdlib", "-Wl,-z,defs")  # whatever the code called would be missing
+        self.compile((*toolchain.plain, *alone, "code.o", "wrappers.o", "-o", "library.so"), where)
+        return Program(where / "library.so")
 
 
 def _wrappers(emission: Emission) -> str:

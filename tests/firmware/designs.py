@@ -7,11 +7,13 @@ from fractions import Fraction
 from itertools import product
 from math import cos, pi
 from random import Random
+from typing import Any
 
 from realize.arithmetic.formats import FORMATS, FloatFormat
 from realize.arithmetic.realization import Realization, Section
 from realize.firmware import Emission
 
+Number = float | str | Fraction
 PERIOD_S = Fraction(1, 2000)
 UNIT_RANGE = (Fraction(-1), Fraction(1))
 
@@ -19,12 +21,16 @@ UNIT_RANGE = (Fraction(-1), Fraction(1))
 RANGES = (UNIT_RANGE, (Fraction(-1, 3), Fraction(7, 10)), (Fraction(0), Fraction(10)), None)
 
 
-def rounded(target: FloatFormat, *values: float | str | Fraction) -> tuple[float, ...]:
+#: Step through the options from design to design: prime to their number, so that all meet all kinds of realization.
+STRIDE = 7
+
+
+def rounded(target: FloatFormat, *values: Number) -> tuple[float, ...]:
     """Values of a format, from what a person would write."""
     return tuple(target.round(Fraction(value)) for value in values)
 
 
-def section(target: FloatFormat, b: tuple[float | str, ...], a: tuple[float | str, ...] = ()) -> Section:
+def section(target: FloatFormat, b: tuple[Number, ...], a: tuple[Number, ...] = ()) -> Section:
     return Section(rounded(target, *b), rounded(target, *a))
 
 
@@ -54,7 +60,7 @@ def chains(target: FloatFormat) -> tuple[tuple[float, ...], ...]:
 
 
 def grid() -> Iterator[Emission]:
-    """Every kind of rest, chain, range, anti-windup, guard, storage and sign, in both formats."""
+    """Every kind of rest, chain, range, anti-windup, guard, storage and sign, in both formats; then odd ones."""
     kinds = ("hold-integral", "back-calculation", "none")
     options = list(product(kinds, (True, False), ("inline", "table"), ("subtract", "add")))
     count = 0
@@ -62,7 +68,7 @@ def grid() -> Iterator[Emission]:
         for sections, chain in product(parts(target).values(), chains(target)):
             if not sections and not chain:
                 continue
-            anti_windup, guard, coefficients, sign = options[count % len(options)]
+            anti_windup, guard, coefficients, sign = options[count * STRIDE % len(options)]
             yield emission(
                 f"g{count}",
                 Realization(target, "direct" if len(sections) < 2 else "cascade", chain, sections, PERIOD_S),
@@ -73,9 +79,17 @@ def grid() -> Iterator[Emission]:
                 recursion_sign=sign,
             )
             count += 1
+    gain = Realization(FORMATS["float32"], "direct", (), (section(FORMATS["float32"], ("2.5",)),), PERIOD_S)
+    yield emission("stateless", gain, guard_nonfinite=False)
+    bare = Realization(FORMATS["float32"], "direct", (-1.0,), (), PERIOD_S)
+    yield emission("tableless", bare, coefficients="table", output_range=UNIT_RANGE)
+    for name in ("section1", "integral1", "state", "input", "applied", "coefficients", "zero"):
+        yield emission(
+            name, Realization(bare.format, "direct", (0.25,), gain.sections, PERIOD_S), output_range=UNIT_RANGE
+        )
 
 
-def emission(name: str, realization: Realization, **options: object) -> Emission:
+def emission(name: str, realization: Realization, **options: Any) -> Emission:
     """An emission whose text tries to break out of its comment."""
     made = Emission(
         name,

@@ -15,8 +15,10 @@ from tests.firmware.designs import grid
 # every function visible, every branch as written
 INSTRUMENTED = Toolchain(
     "instrumented",
-    (*ZIG, "cc", "-std=c99", "-O0", "-fno-sanitize=all", "-Dstatic=", "-Dinline=")
-    + ("-fsanitize-coverage=trace-pc-guard,pc-table",),
+    (
+        *(*ZIG, "cc", "-std=c99", "-O0", "-fno-sanitize=all", "-Dstatic=", "-Dinline="),
+        "-fsanitize-coverage=trace-pc-guard,pc-table",
+    ),
     (*ZIG, "cc"),
 )
 GRID = list(grid())
@@ -59,7 +61,9 @@ def obstructed(emission: Emission) -> list[str]:
 
 def test_the_instrumentation_sees_branches_that_are_not_taken(program: Program) -> None:
     guarded = next(emission for emission in GRID if emission.guard_nonfinite)
-    told = program.run([f"d {guarded.name}", "c", "u 0x1p+0", f"b {guarded.name}_update 0", f"b {guarded.name}_update 1"])
+    told = program.run(
+        [f"d {guarded.name}", "c", "u 0x1p+0", f"b {guarded.name}_update 0", f"b {guarded.name}_update 1"]
+    )
     assert int(told[1]) > int(told[2]) > 0
 
 

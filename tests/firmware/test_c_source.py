@@ -5,13 +5,17 @@ from __future__ import annotations
 import platform
 import re
 import shutil
+from fractions import Fraction
 from pathlib import Path
 
 import pytest
 
+from realize.arithmetic.formats import FORMATS
+from realize.arithmetic.realization import Realization
 from realize.firmware import Emission, render_firmware
 from tests.firmware.bench import WARNINGS, ZIG, Bench
-from tests.firmware.designs import grid
+from tests.firmware.designs import PERIOD_S, UNIT_RANGE, grid, parts, rounded
+from tests.firmware.designs import emission as emission_of
 
 CLANG, GCC = (*ZIG, "cc"), ("gcc",)
 COMPILERS = [CLANG, *([GCC] if shutil.which("gcc") else [])]
@@ -20,16 +24,9 @@ KNOWN = {emission.name: emission for emission in grid()}
 
 def chosen(arithmetic: str) -> Emission:
     """A limited cascade with everything in it."""
-    return next(
-        emission
-        for emission in KNOWN.values()
-        if emission.realization.format.name == arithmetic
-        and len(emission.realization.sections) == 2
-        and emission.realization.integral
-        and emission.output_range
-        and emission.guard_nonfinite
-        and emission.anti_windup == "hold-integral"
-    )
+    target = FORMATS[arithmetic]
+    chain, sections = rounded(target, "0.02", "0.0004"), parts(target)["undamped"]
+    return emission_of("everything", Realization(target, "cascade", chain, sections, PERIOD_S), output_range=UNIT_RANGE)
 
 
 @pytest.fixture(scope="module", params=["float32", "float64"])
@@ -103,11 +100,19 @@ def fused(bench: Bench, where: Path, command: tuple[str, ...], source: str) -> l
     return [match[0] for match in FUSED.findall((where / "x.s").read_text())]
 
 
+def in_pairs() -> Emission:
+    """A design for which gcc 12 makes vectors of a sum and a difference, and fuses them whatever it was told."""
+    target = FORMATS["float64"]
+    realization = Realization(target, "direct", (-1.0,), parts(target)["second order"], PERIOD_S)
+    return emission_of("in_pairs", realization, output_range=(Fraction(0), Fraction(10)))
+
+
+@pytest.mark.parametrize("emission", [chosen("float32"), chosen("float64"), in_pairs()], ids=["32", "64", "in pairs"])
 def test_nothing_is_fused_where_the_processor_could(emission: Emission, bench: Bench) -> None:
     where = bench.emitted([emission])
     without = [line for line in (where / f"{emission.name}.c").read_text().splitlines() if "#pragma" not in line]
     (where / "without.c").write_text("\n".join(without) + "\n")
-    tries = [(*CLANG, "-O2", "-target", "aarch64-freestanding")]
+    tries: list[tuple[str, ...]] = [(*CLANG, "-O2", "-target", "aarch64-freestanding")]
     if GCC in COMPILERS and platform.machine() == "x86_64":
         tries.append((*GCC, "-std=gnu11", "-O3", "-march=haswell"))
     for command in tries:
@@ -140,14 +145,8 @@ def test_every_coefficient_is_written_in_decimal_and_in_hexadecimal(name: str) -
     pairs = re.findall(r"(-?[\d.]+e[+-]\d+)f?[,;] /\* (\S+)", text)
     digits = 9 if emission.realization.format.name == "float32" else 17
     for decimal, exact in pairs:
-        assert emission.realization.format.round(_rational(decimal)) == float.fromhex(exact)
+        assert emission.realization.format.round(Fraction(decimal)) == float.fromhex(exact)
         assert len(re.sub(r"e.*|[-.]", "", decimal)) == digits
     stored = {float.fromhex(exact) for _, exact in pairs}
     wanted = {c for s in emission.realization.sections for c in (*s.b, *s.a) if abs(c) not in (0, 1)}
     assert {abs(c) for c in wanted} <= {abs(c) for c in stored}
-
-
-def _rational(decimal: str):  # type: ignore[no-untyped-def]
-    from fractions import Fraction
-
-    return Fraction(decimal)

@@ -17,7 +17,7 @@ from tests.firmware.bench import Bench, Program, toolchains, value
 from tests.firmware.designs import PERIOD_S, UNIT_RANGE, emission, rounded, section
 
 KP, KI, KD, POLE_RAD_S = Fraction("4.2"), Fraction(18), Fraction("0.09"), Fraction(1900)
-#: Between the derivative time kd/kp = 21 ms and the integral time kp/ki = 233 ms (Astrom and Hagglund's rule, from memory).
+#: Between derivative time kd/kp = 21 ms and integral time kp/ki = 233 ms (Astrom and Hagglund's rule, from memory).
 TRACKING_TIME_S = Fraction("0.07")
 KINDS = ("hold-integral", "back-calculation", "none")
 
@@ -66,7 +66,7 @@ def open_loop(program: Program, name: str, inputs: Sequence[float]) -> list[floa
 def closed_loop(program: Program, name: str, references: Sequence[tuple[int, float]]) -> list[list[float]]:
     """Commands for a plant of gain 2 and a time constant of 0.5 s, for each stretch of a reference."""
     stretches = [f"l {float(count).hex()} {reference.hex()}" for count, reference in references]
-    said = program.run([f"d {name}", "c", f"s {0.999.hex()} {0.002.hex()}", *stretches])
+    said = program.run([f"d {name}", "c", f"s {(0.999).hex()} {(0.002).hex()}", *stretches])
     commands = [value(s) for s in said]
     ends = [sum(count for count, _ in references[: k + 1]) for k in range(len(references))]
     return [commands[end - count : end] for end, (count, _) in zip(ends, references, strict=True)]

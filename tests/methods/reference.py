@@ -20,7 +20,7 @@ _FIRST_DIGITS, _MOST_DIGITS = 300, 20000
 #: Digits of the rounding errors of a few hundred operations, and of differences of neighbouring roots.
 _SLACK_DIGITS = 60
 
-#: Digits every coefficient is right to when it is handed out.
+#: Digits every coefficient is right to when it is handed out, unless more are asked for.
 DIGITS = 40
 
 #: Below half the least subnormal double (2**-1075 = 2.5e-324) a coefficient is stored as 0.
@@ -33,17 +33,21 @@ Coefficients = tuple[list[Fraction], list[Fraction]]
 
 
 def coefficients(
-    design: Factored, period_s: Fraction, method: str, exact_at_rad_s: Fraction | None = None
+    design: Factored,
+    period_s: Fraction,
+    method: str,
+    exact_at_rad_s: Fraction | None = None,
+    digits: int = DIGITS,
 ) -> Coefficients:
     """Numerator and denominator, descending powers of z, each right to 40 digits or below 1e-330 and then 0."""
-    digits = _FIRST_DIGITS
-    while digits <= _MOST_DIGITS:
-        with mp.workdps(digits):
+    working = max(_FIRST_DIGITS, 2 * digits)
+    while working <= _MOST_DIGITS:
+        with mp.workdps(working):
             numerator, denominator = _REFERENCES[method](design, period_s, exact_at_rad_s)
-            error = mp.mpf(10) ** (_SLACK_DIGITS - digits)
-            if all(_is_good(c, error) for c in numerator + denominator):
+            allowed = mp.mpf(10) ** (_SLACK_DIGITS + digits - working)
+            if all(_is_good(c, allowed) for c in numerator + denominator):
                 return [_settled(c) for c in numerator], [_settled(c) for c in denominator]
-        digits *= 2
+        working *= 2
     raise ArithmeticError("the reference did not settle")
 
 
@@ -240,14 +244,14 @@ def _times(p: Polynomial, factor: Any) -> Polynomial:
     return [(c * factor, size * abs(factor)) for c, size in p]
 
 
-def _is_good(c: Tracked, error: Any) -> bool:
+def _is_good(c: Tracked, allowed: Any) -> bool:
+    """Whether rounding errors are below the digits asked for; ``allowed`` is the error with those digits added."""
     value, size = c
-    if isinstance(value, Fraction):
-        return True
-    lost = size * error
-    return bool(lost <= abs(value) * mp.mpf(10) ** -DIGITS or abs(value) + lost < NEGLIGIBLE)
+    return isinstance(value, Fraction) or bool(size * allowed <= abs(value) or abs(value) + size * allowed < NEGLIGIBLE)
 
 
 def _settled(c: Tracked) -> Fraction:
-    value = c[0] if isinstance(c[0], Fraction) else exactly(c[0])
-    return value if isinstance(c[0], Fraction) or abs(c[0]) >= NEGLIGIBLE else Fraction(0)
+    value, _ = c
+    if isinstance(value, Fraction):
+        return value
+    return exactly(value) if abs(value) >= NEGLIGIBLE else Fraction(0)

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Sequence
-from decimal import MAX_EMAX, MIN_EMIN, Context, Decimal
+from decimal import MAX_EMAX, MIN_EMIN, ROUND_HALF_EVEN, Context, Decimal
 from fractions import Fraction
 
 from realize.algebra.expression.ratio import MAX_BITS, MAX_EXPONENT, UnfitError
@@ -57,8 +57,17 @@ def decimal_text(value: Fraction | int, digits: int = TWIN_DIGITS) -> str:
     return str(rounded(value, digits))
 
 
-def rounded(value: Fraction | int, digits: int) -> Decimal:
-    """Round half to even to a number of significant digits, straight from the exact value.
+def rounded(value: Fraction | int, digits: int, rounding: str = ROUND_HALF_EVEN) -> Decimal:
+    """Round to a number of significant digits, straight from the exact value.
+
+    Parameters
+    ----------
+    value : Fraction or int
+        Any number.
+    digits : int
+        At least 1.
+    rounding : str
+        A rounding mode of ``decimal``.
 
     Notes
     -----
@@ -66,7 +75,7 @@ def rounded(value: Fraction | int, digits: int) -> Decimal:
     change a figure.
     """
     exact = Fraction(value)
-    context = Context(prec=digits, Emax=MAX_EMAX, Emin=MIN_EMIN)
+    context = Context(prec=digits, rounding=rounding, Emax=MAX_EMAX, Emin=MIN_EMIN)
     return context.divide(Decimal(exact.numerator), Decimal(exact.denominator)).normalize(context)
 
 

@@ -1,0 +1,93 @@
+"""The record: exact, hashed, and the same on every machine."""
+
+from __future__ import annotations
+
+import json
+from fractions import Fraction
+from hashlib import sha256
+from typing import Any
+
+import pytest
+
+from realize.firmware import Emission, render_firmware
+from realize.version import VERSION
+from tests.firmware.designs import UNIT_RANGE, grid
+
+DESIGNS = list(grid())
+
+
+def recorded(emission: Emission) -> dict[str, Any]:
+    return dict(json.loads(render_firmware(emission)[f"{emission.name}.record.json"]))
+
+
+def test_its_keys_are_those_others_rely_on() -> None:
+    assert list(recorded(DESIGNS[0])) == [
+        *("schema", "design", "method", "structure", "arithmetic", "integral", "sections", "checks", "accepted"),
+        *("files", "tool"),
+    ]
+    assert recorded(DESIGNS[0])["schema"] == "realize/1"
+
+
+@pytest.mark.parametrize("emission", DESIGNS, ids=lambda e: e.name)
+def test_every_coefficient_is_recorded_twice_exactly_and_for_subtraction(emission: Emission) -> None:
+    said, realization = recorded(emission), emission.realization
+    assert said["arithmetic"] == realization.format.name
+    assert said["structure"] == realization.structure
+    groups = [(said["integral"], realization.integral)]
+    for section, stored in zip(said["sections"], realization.sections, strict=True):
+        groups += [(section["b"], stored.b), (section["a"], stored.a)]
+    for entries, values in groups:
+        assert [Fraction(entry["value"]) for entry in entries] == list(map(Fraction, values))
+        assert [float.fromhex(entry["stored"]) for entry in entries] == list(values)
+        assert all(entry["fraction_bits"] is None for entry in entries)
+
+
+def test_the_hashes_are_those_of_the_files() -> None:
+    files = render_firmware(DESIGNS[0])
+    said = recorded(DESIGNS[0])["files"]
+    assert list(said) == [name for name in files if not name.endswith(".json")]
+    assert all(sha256(files[name].encode()).hexdigest() == digest for name, digest in said.items())
+
+
+def test_the_version_is_recorded_and_nowhere_in_what_is_hashed() -> None:
+    files = render_firmware(DESIGNS[0])
+    assert recorded(DESIGNS[0])["tool"] == {"name": "realize", "version": VERSION}
+    assert all(VERSION not in text for name, text in files.items() if name.endswith((".h", ".c")))
+
+
+def test_figures_are_rounded_and_what_is_not_finite_is_null() -> None:
+    check = {
+        "check": "pole shift",
+        "reference": complex(-1.23456789, 2.0),
+        "obtained": float("nan"),
+        "difference": 0.123456789,
+        "tolerance": 2.0,
+        "worst": [1.0 / 3.0, float("inf")],
+    }
+    emission = DESIGNS[0]._replace(checks=[check], accepted=[{"check": "pole shift", "limit": Fraction(5, 2)}])
+    said = recorded(emission)
+    assert said["checks"] == [
+        {
+            "check": "pole shift",
+            "reference": {"re": -1.2346, "im": 2.0},
+            "obtained": None,
+            "difference": 0.12346,
+            "tolerance": 2.0,
+            "worst": [0.33333, None],
+        }
+    ]
+    assert said["accepted"] == [{"check": "pole shift", "limit": "5/2"}]
+
+
+def test_the_design_is_recorded_as_it_was_given() -> None:
+    design = {"name": "g0", "values": {"kp": "21/5"}, "about": "\u00b5", "signals": {"output": {"range": ["-1", "1"]}}}
+    assert recorded(DESIGNS[0]._replace(design=design))["design"] == design
+
+
+def test_rendering_twice_gives_the_same_bytes_in_the_same_order() -> None:
+    for emission in DESIGNS[:12]:
+        first, second = render_firmware(emission), render_firmware(emission._replace(output_range=UNIT_RANGE))
+        assert list(first) == [f"{emission.name}{end}" for end in (".h", ".c", "_vectors.csv", ".record.json")]
+        assert list(render_firmware(emission).items()) == list(first.items())
+        assert first.keys() == second.keys()
+        assert all(text.isascii() and text.endswith("\n") and "\r" not in text for text in first.values())

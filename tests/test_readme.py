@@ -1,0 +1,41 @@
+"""What the README prints is what the commands print."""
+
+import os
+import re
+from pathlib import Path
+
+import pytest
+
+from realize.cli import main
+
+ROOT = Path(__file__).parent.parent
+README = (ROOT / "README.md").read_text(encoding="utf-8")
+EXAMPLES = [
+    block.split("\n", 1) for block in re.findall(r"^```console\n\$ realize (.*?)^```$", README, re.DOTALL | re.MULTILINE)
+]
+
+
+def test_there_are_worked_examples() -> None:
+    assert len(EXAMPLES) >= 3
+
+
+@pytest.mark.parametrize(("command", "output"), EXAMPLES, ids=[command for command, _ in EXAMPLES])
+def test_the_output_of_the_worked_example_is_real(
+    command: str,
+    output: str,
+    tmp_path: Path,
+    monkeypatch: pytest.MonkeyPatch,
+    capsys: pytest.CaptureFixture[str],
+) -> None:
+    os.symlink(ROOT / "fixtures", tmp_path / "fixtures")
+    monkeypatch.chdir(tmp_path)
+    main(command.split())
+    assert capsys.readouterr().out == output
+
+
+def test_the_emitted_code_it_quotes_is_real(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    main(["emit", str(ROOT / "fixtures" / "roller_gap.toml"), "--out", str(tmp_path)])
+    emitted = (tmp_path / "roller_gap.c").read_text(encoding="utf-8")
+    quoted = re.findall(r"^```c\n(float roller_gap_update.*?)^```$", README, re.DOTALL | re.MULTILINE)
+    assert quoted
+    assert all(text in emitted for text in quoted)
