@@ -5,7 +5,7 @@ from __future__ import annotations
 import json
 import os
 import sys
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import Any, TypeVar
 
@@ -45,6 +45,7 @@ def commands() -> None:
     Start with a file of your own:    realize new roller_gap
     Is it realizable at all?          realize assess roller_gap.toml
     What does each method make of it? realize compare roller_gap.toml
+    Which rate does it really need?   realize rates roller_gap.toml
     Write the firmware files:         realize emit roller_gap.toml --out firmware
     """
 
@@ -86,6 +87,41 @@ def compare(design: str, as_json: bool, **options: Any) -> None:
     _print(compare_document(comparison) if as_json else compare_text(comparison))
     if not comparison.acceptable:
         sys.exit(1)
+
+
+@commands.command()
+@_takes_design
+@click.option("--from", "low", metavar="QUANTITY", help="Lowest rate; by default 4 times the crossover or band.")
+@click.option("--to", "high", metavar="QUANTITY", help="Highest rate; by default 200 times the crossover or band.")
+@click.option("--points", default=60, show_default=True, metavar="N", help="Rates on the logarithmic grid.")
+def rates(design: str, as_json: bool, low: str | None, high: str | None, points: int, **options: Any) -> None:
+    """Find the lowest rate that each method can live with, over a range of rates.
+
+    A method's rate is the lowest from which all higher ones in the range pass every check. The
+    design's own rate is not needed. Progress goes to standard error.
+
+    \b
+    Example: realize rates roller_gap.toml --from "200 Hz" --to "20 kHz"
+    """
+    from realize.quantity import parse_quantity
+    from realize.rates import rates as over_rates
+    from realize.report.range_of_rates import rates_document, rates_text
+
+    ends = [parse_quantity(end, "rate", key) if end else None for end, key in ((low, "--from"), (high, "--to"))]
+    loaded = _load(design, options)
+    found = over_rates(loaded, low_hz=ends[0], high_hz=ends[1], points=points, follow=_with_progress(points))
+    _print(rates_document(found) if as_json else rates_text(found))
+
+
+def _with_progress(length: int) -> Callable[[Iterator[Any]], Iterator[Any]]:
+    """Pass results on one by one, with a bar on standard error where that is a terminal."""
+
+    def follow(results: Iterator[Any]) -> Iterator[Any]:
+        hidden = not sys.stderr.isatty()
+        with click.progressbar(results, length=length, label="rates", file=sys.stderr, hidden=hidden) as bar:
+            yield from bar
+
+    return follow
 
 
 @commands.command()

@@ -50,18 +50,16 @@ class TransferFunction:
             When the transfer function is zero, when its denominator is, or when the cancellation hides a
             growing mode.
         """
-        n, d = poly.integer_form(_fractions(numerator), _fractions(denominator))
+        n, d = poly.integer_form(poly.rationals(numerator), poly.rationals(denominator))
         if not d:
-            raise Refused(
-                "transfer", "the denominator is zero", "a denominator other than zero", "check the values"
-            )
+            raise Refused("transfer", "the denominator is zero", "a denominator other than zero", "check the values")
         if not n:
             raise Refused("transfer", "it is zero", "a transfer function other than zero", "check the values")
         common = poly.greatest_common_divisor(n, d)
         _refuse_hidden_growth(common)
         n, d = poly.integer_form(
-            poly.divide(_fractions(n), _fractions(common))[0],
-            poly.divide(_fractions(d), _fractions(common))[0],
+            poly.divide(poly.rationals(n), poly.rationals(common))[0],
+            poly.divide(poly.rationals(d), poly.rationals(common))[0],
         )
         sign = 1 if d[0] > 0 else -1
         return cls(poly.scale(n, sign), poly.scale(d, sign), common)
@@ -156,10 +154,6 @@ class PulseTransferFunction:
 
 def _multiplicity_at_zero(roots: Sequence[Root]) -> int:
     return sum(root.multiplicity for root in roots if root.value == 0)
-
-
-def _fractions(p: Sequence[Fraction | int]) -> poly.Rationals:
-    return tuple(Fraction(c) for c in p)
 
 
 def _refuse_hidden_growth(common: poly.Integers) -> None:

@@ -9,19 +9,31 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import cached_property
-from typing import Any, NamedTuple
+from typing import TYPE_CHECKING, Any, NamedTuple
 
 from realize.arithmetic.formats import FORMATS
 from realize.arithmetic.realization import Realization, realization, stored_pulse
 from realize.arithmetic.recursion import Recursion
 from realize.band import band_edge
 from realize.checks import Check, ContinuousReference, Signals, Tolerances, root_notes, run_checks
-from realize.design import Accept, Design, require_period
+from realize.design import Accept, Design, Rolloff, require_period
+from realize.design.model import LOOP_METHODS
 from realize.errors import Refused
 from realize.methods import METHODS, Discretization, discretize
 from realize.realizability import Assessment, assess
-from realize.rolloff import Proposal, circumstances, proposal_for, proposals, rolloff_toml
-from realize.transfer import TransferFunction
+from realize.rolloff import (
+    Circumstances,
+    Proposal,
+    apply_rolloff,
+    circumstances,
+    proposal_for,
+    proposals,
+    rolloff_toml,
+)
+from realize.transfer import PulseTransferFunction, TransferFunction
+
+if TYPE_CHECKING:
+    from realize.loop_design import LoopResult, LoopSetting
 
 #: Near-ties are recommended in this order: the methods people know best first, then the table's order.
 TIE_ORDER = (
@@ -29,6 +41,7 @@ TIE_ORDER = (
     "ramp-invariant",
     "pole-zero-mapped",
     *(name for name in METHODS if name not in ("bilinear", "ramp-invariant", "pole-zero-mapped")),
+    *LOOP_METHODS,
 )
 
 #: Worst ratios within 5 % of each other are a tie: the figures behind them are read from grids that fine.
@@ -46,11 +59,14 @@ class Causal(NamedTuple):
         The roll-off that made it so.
     assumed : bool
         Whether that roll-off is a proposal the design did not ask for.
+    note : str
+        What is odd about it; may be empty.
     """
 
     transfer: TransferFunction
     proposal: Proposal | None
     assumed: bool
+    note: str = ""
 
 
 @dataclass(frozen=True)
@@ -73,6 +89,8 @@ class MethodResult:
         Checks that are out, and the agreement that covers them.
     notes : tuple of str
         What the user should know.
+    loop : LoopResult or None
+        The loops around it, where the design has a plant.
     """
 
     method: str
@@ -83,6 +101,7 @@ class MethodResult:
     blocking: tuple[Check, ...] = ()
     accepted: tuple[tuple[Check, Accept], ...] = ()
     notes: tuple[str, ...] = ()
+    loop: LoopResult | None = None
 
     @property
     def acceptable(self) -> bool:
@@ -164,7 +183,7 @@ def _circumstances(design: Design) -> dict[str, Any]:
     signals, tolerances = _signals(design), Tolerances.of(design.tolerance)
     given = {
         "period_s": design.period_s,
-        "band_rad_s": design.band_rad_s,
+        "band_rad_s": _band(design, design.transfer)[0] if _follows_crossover(design) else design.band_rad_s,
         "converter_step_tolerance_percent": tolerances.exact("converter_step"),
         "input_per_count": signals.input_per_count,
         "output_span": signals.output_span,
@@ -196,16 +215,60 @@ def make_causal(design: Design, *, assume: bool) -> Causal:
         if not assume:
             raise _improper(assess_design(design))
         best = proposals(transfer, around)[0]
-        return Causal(best.transfer, best, assumed=True)
-    proposal = proposal_for(
-        transfer,
-        around,
-        placement=asked.placement,
-        order=asked.order,
-        damping=asked.damping,
-        pole_rad_s=asked.pole_rad_s,
+        asked = Rolloff(best.placement, best.order, best.damping, None, best.phase_budget_deg)
+        return _with_rolloff(design, asked, around, assumed=True)
+    return _with_rolloff(design, asked, around, assumed=False)
+
+
+def _with_rolloff(design: Design, asked: Rolloff, around: Circumstances, *, assumed: bool) -> Causal:
+    """Apply a roll-off; with a plant, an automatic pole follows the crossover that it moves."""
+
+    def proposed(at: Circumstances) -> Proposal:
+        return proposal_for(
+            design.transfer,
+            at,
+            placement=asked.placement,
+            order=asked.order,
+            damping=asked.damping,
+            pole_rad_s=asked.pole_rad_s,
+        )
+
+    if not _follows_crossover(design) or asked.pole_rad_s is not None:
+        proposal = proposed(around)
+        return Causal(proposal.transfer, proposal, assumed)
+    from realize.loop import settled_pole
+    from realize.loop_design import plants_of
+
+    def at_crossover(crossover_rad_s: float) -> Circumstances:
+        return around._replace(band_rad_s=Fraction(crossover_rad_s))
+
+    settled = settled_pole(
+        float(around.band_rad_s),
+        lambda crossover: proposed(at_crossover(crossover)).pole_rad_s,
+        lambda pole: apply_rolloff(
+            design.transfer, asked.placement, asked.order or -design.transfer.relative_degree, asked.damping, pole
+        ),
+        plants_of(design),
     )
-    return Causal(proposal.transfer, proposal, assumed=False)
+    proposal = proposed(at_crossover(settled.crossover_rad_s))
+    note = (
+        ""
+        if settled.converged
+        else (
+            "the roll-off pole did not settle: each pole moves the crossover to where another is called for; name one "
+            "with pole under [rolloff]"
+        )
+    )
+    return Causal(proposal.transfer, proposal, assumed, note)
+
+
+def _follows_crossover(design: Design) -> bool:
+    """Whether the crossover of the loop is the band edge."""
+    if design.plant is None or design.band_rad_s is not None:
+        return False
+    from realize.loop_design import loop_band
+
+    return loop_band(design, design.transfer) is not None
 
 
 def _improper(assessment: Assessment) -> Refused:
@@ -226,7 +289,7 @@ def compare(design: Design) -> Comparison:
     RealizeError
         When the design has no sample rate, or its ``[rolloff]`` does not fit.
     """
-    return _comparison(design, make_causal(design, assume=True), tuple(METHODS))
+    return _comparison(design, make_causal(design, assume=True), methods_for(design))
 
 
 def choose(design: Design) -> Comparison:
@@ -237,30 +300,75 @@ def choose(design: Design) -> Comparison:
     RealizeError
         As :func:`compare`, and :class:`Refused` when the design is improper and has no ``[rolloff]``.
     """
-    names = tuple(METHODS) if design.method == "auto" else (design.method,)
+    names = methods_for(design) if design.method == "auto" else (design.method,)
     return _comparison(design, make_causal(design, assume=False), names)
+
+
+def methods_for(design: Design) -> tuple[str, ...]:
+    """The methods to put side by side: those that know the loop too, where there is one or they are named."""
+    named = design.method if design.method in LOOP_METHODS else None
+    return tuple(METHODS) + (LOOP_METHODS if design.plant is not None else (named,) if named else ())
 
 
 def _comparison(design: Design, causal: Causal, names: Sequence[str]) -> Comparison:
     period_s = require_period(design)
-    band_rad_s, rests_on = band_edge(design.transfer, period_s, design.band_rad_s)
+    band_rad_s, rests_on = _band(design, causal.transfer)
     reference = ContinuousReference(causal.transfer, period_s, band_rad_s)
-    results = tuple(_result(design, causal.transfer, reference, name) for name in names)
+    setting = _setting(design, causal.transfer, period_s)
+    results = tuple(_result(design, reference, setting, name) for name in names)
     recommended, because = _recommendation(results)
     return Comparison(design, causal, period_s, band_rad_s, rests_on, results, recommended, because)
 
 
-def _result(design: Design, transfer: TransferFunction, reference: ContinuousReference, name: str) -> MethodResult:
+def _band(design: Design, controller: TransferFunction) -> tuple[Fraction, str]:
+    """Band edge: as the design says, else the crossover of its loop, else as it is assumed."""
+    if design.plant is not None and design.band_rad_s is None:
+        from realize.loop_design import loop_band
+
+        found = loop_band(design, controller)
+        if found is not None:
+            return found
+    return band_edge(design.transfer, design.period_s, design.band_rad_s)
+
+
+def _setting(design: Design, controller: TransferFunction, period_s: Fraction) -> LoopSetting | None:
+    """The loops; what analyses them is loaded only where there is a plant, which keeps the start short."""
+    if design.plant is None:
+        return None
+    from realize.loop_design import loop_setting
+
+    return loop_setting(design, controller, period_s)
+
+
+def _result(design: Design, reference: ContinuousReference, setting: LoopSetting | None, name: str) -> MethodResult:
     exact_at, notes = _exact_at(design, reference, name)
     try:
-        made = discretize(transfer, reference.period_s, name, exact_at)
+        made = _discretized(design, reference, setting, name, exact_at)
         stored = realization(made.pulse, FORMATS[design.target.arithmetic], design.target.structure)
     except Refused as refusal:
         return MethodResult(name, f"{refusal.where}: {refusal.found}")
-    checks = _checks(design, reference, made, stored)
+    as_stored = stored_pulse(stored)
+    checks = _checks(design, reference, made, stored, as_stored)
+    loop = setting.result(made.pulse, as_stored) if setting else None
+    checks += loop.checks if loop else ()
     blocking, accepted = gate(checks, design.accept)
-    notes += made.conversion.notes + root_notes(made.pulse, transfer)
-    return MethodResult(name, None, made, stored, checks, blocking, accepted, notes)
+    notes += made.conversion.notes + root_notes(made.pulse, reference.transfer) + (loop.notes if loop else ())
+    return MethodResult(name, None, made, stored, checks, blocking, accepted, notes, loop)
+
+
+def _discretized(
+    design: Design,
+    reference: ContinuousReference,
+    setting: LoopSetting | None,
+    name: str,
+    exact_at: Fraction | None,
+) -> Discretization:
+    if name not in LOOP_METHODS:
+        return discretize(reference.transfer, reference.period_s, name, exact_at)
+    from realize.loop_design import Band, loop_method
+
+    band = Band(reference.transfer, reference.period_s, reference.band_rad_s)
+    return loop_method(name, setting, band, design)
 
 
 def _exact_at(design: Design, reference: ContinuousReference, name: str) -> tuple[Fraction | None, tuple[str, ...]]:
@@ -273,12 +381,16 @@ def _exact_at(design: Design, reference: ContinuousReference, name: str) -> tupl
 
 
 def _checks(
-    design: Design, reference: ContinuousReference, made: Discretization, stored: Realization
+    design: Design,
+    reference: ContinuousReference,
+    made: Discretization,
+    stored: Realization,
+    as_stored: PulseTransferFunction,
 ) -> tuple[Check, ...]:
     """Checks of the stored numbers, followed by those of the exact ones that differ in their figure."""
     signals, tolerances = _signals(design), Tolerances.of(design.tolerance)
     simulate = _simulate(design, stored) if signals.output_range else None
-    of_stored = run_checks(reference, stored_pulse(stored), "stored", tolerances, signals, simulate=simulate)
+    of_stored = run_checks(reference, as_stored, "stored", tolerances, signals, simulate=simulate)
     of_exact = run_checks(
         reference, made.pulse, "exact", tolerances, signals, known_stability=_image_stability(reference, made)
     )

@@ -52,7 +52,7 @@ def test_help_has_a_worked_example(run: Any, command: str) -> None:
 
 
 def test_only_the_commands_that_are_built_exist() -> None:
-    assert sorted(commands.commands) == ["assess", "compare", "emit", "new"]
+    assert sorted(commands.commands) == ["assess", "compare", "emit", "new", "rates"]
 
 
 def test_version(run: Any) -> None:
@@ -213,7 +213,7 @@ NOT_UNDERSTOOD = [
     (["assess", "__import__('os')"], "column 12"),
     (["emit", "1/(s+1)"], "--out"),
     (["assess"], "DESIGN"),
-    (["rates", "1/s"], "rates"),
+    (["words", "1/s"], "words"),
 ]
 
 

@@ -243,7 +243,7 @@ def _remainder_modulo_prime(p: list[int], q: list[int]) -> list[int]:
 
 def quotient(p: Sequence[int], q: Sequence[int]) -> Integers:
     """Primitive quotient of ``p`` by a divisor ``q`` that is known to leave no remainder."""
-    return primitive(divide(_rational(p), _rational(q))[0])
+    return primitive(divide(rationals(p), rationals(q))[0])
 
 
 def square_free(p: Sequence[int]) -> tuple[tuple[Integers, int], ...]:
@@ -265,5 +265,6 @@ def square_free(p: Sequence[int]) -> tuple[tuple[Integers, int], ...]:
     return tuple(factors)
 
 
-def _rational(p: Sequence[int]) -> Rationals:
+def rationals(p: Sequence[Fraction | int]) -> Rationals:
+    """The same coefficients as rationals."""
     return tuple(Fraction(c) for c in p)

@@ -128,6 +128,11 @@ class _Factor:
         while not self._settled():
             self._double()
 
+    @property
+    def _noise(self) -> int:
+        """Bound on the rounding of a value: Horner with |z| <= 1 adds 1 unit a coefficient, 2 a product."""
+        return 3 * len(self.p)
+
     def upper_indices(self) -> list[int]:
         """Indices of the real roots and of one root of each pair."""
         return [i for i in range(len(self.z)) if self._is_real(i) or self.z[i][1] > 0]
@@ -170,9 +175,7 @@ class _Factor:
         it is root i itself, and lies on the axis.
         """
         return all(
-            _distance(centre, z) > radius + r
-            for j, (z, r) in enumerate(zip(self.z, self.radii, strict=True))
-            if j != i
+            _distance(centre, z) > radius + r for j, (z, r) in enumerate(zip(self.z, self.radii, strict=True)) if j != i
         )
 
     def _settled(self) -> bool:
@@ -190,9 +193,47 @@ class _Factor:
     def _double(self) -> None:
         if self.bits >= _MOST_BITS:
             raise ArithmeticError("the roots of a polynomial could not be separated")
+        clusters = self._clusters()
         self.z = [(re << self.bits, im << self.bits) for re, im in self.z]
         self.bits *= 2
+        for cluster in clusters:
+            self._spread(cluster)
         self._solve()
+
+    def _clusters(self) -> list[list[int]]:
+        """Groups of approximations that may share their nearest root."""
+        reach = [self._reach(i) for i in range(len(self.z))]
+        left, groups = list(range(len(self.z))), []
+        while left:
+            group = [left.pop(0)]
+            for i in group:
+                near = [j for j in left if _distance(self.z[i], self.z[j]) <= reach[i] + reach[j]]
+                left = [j for j in left if j not in near]
+                group += near
+            groups.append(sorted(group))
+        return [group for group in groups if len(group) > 1]
+
+    def _reach(self, i: int) -> int:
+        """How far the nearest root may be: the degree times Newton's step, rounding included."""
+        value, slope = _horner_with_slope(_fixed_point(self.p, self.exponent, self.bits), self.z[i], self.bits)
+        step = (_distance(value, (0, 0)) + 1 + self._noise << self.bits) // max(_distance(slope, (0, 0)), 1)
+        return len(self.z) * step + 1
+
+    def _spread(self, cluster: list[int]) -> None:
+        """Start a cluster anew around its centre, on the circles of the Newton polygon there.
+
+        Left where they are, m approximations crawl: each step would take them (m - 1)/m of the way only.
+        """
+        coefficients = _fixed_point(self.p, self.exponent, self.bits)
+        m = len(cluster)
+        centre = _mean([self.z[i] for i in cluster])
+        for _ in range(2):
+            taylor = _taylor(coefficients, centre, m, self.bits)
+            shift = _divide(taylor[m - 1], _nonzero(taylor[m]), self.bits)
+            centre = centre[0] - shift[0] // m, centre[1] - shift[1] // m
+        logs = [_log2_size(a, self.bits) for a in reversed(_taylor(coefficients, centre, m, self.bits))]
+        for i, (re, im) in zip(cluster, _starting_points(logs, 0, self.bits), strict=True):
+            self.z[i] = centre[0] + re, centre[1] + im
 
     def _solve(self) -> None:
         """Iterate until the corrections are down to rounding, then enclose."""
@@ -208,9 +249,10 @@ class _Factor:
         bits, largest = self.bits, 0
         for i, z in enumerate(self.z):
             value, slope = _horner_with_slope(coefficients, z, bits)
-            if slope == (0, 0):
-                slope = (1, 1)
-            newton = _divide(value, slope, bits)
+            if _distance(value, (0, 0)) <= self._noise:
+                # Nothing but rounding is left to follow; repelled by its neighbours it would only stray.
+                continue
+            newton = _divide(value, _nonzero(slope), bits)
             pull = self._repulsion(i)
             factor = _multiply(newton, pull, bits)
             step = _divide(newton, _nonzero(((1 << bits) - factor[0], -factor[1])), bits)
@@ -235,8 +277,7 @@ class _Factor:
         if _distance(z, (0, 0)) >= 1 << self.bits:
             return 1 << (self.bits + 2)
         value, _ = _horner_with_slope(coefficients, z, self.bits)
-        # Horner with |z| <= 1 adds at most 1 unit for the coefficient and 2 for the products at each step.
-        size = _distance(value, (0, 0)) + 1 + 3 * (n + 1)
+        size = _distance(value, (0, 0)) + 1 + self._noise
         apart = prod(_distance(z, other) for j, other in enumerate(self.z) if j != i)
         return -(-(n * size << self.bits * (n - 1)) // apart) if apart else 1 << (self.bits + 2)
 
@@ -299,6 +340,27 @@ def _horner_with_slope(
         dre, dim = (dre * x - dim * y >> bits) + re, (dre * y + dim * x >> bits) + im
         re, im = (re * x - im * y >> bits) + c, re * y + im * x >> bits
     return (re, im), (dre, dim)
+
+
+def _taylor(coefficients: list[int], centre: tuple[int, int], count: int, bits: int) -> list[tuple[int, int]]:
+    """Taylor coefficients 0 to ``count`` of a fixed-point polynomial about a point, by repeated Horner division."""
+    rest = [(c, 0) for c in coefficients]
+    found = []
+    for _ in range(count + 1):
+        for i in range(1, len(rest)):
+            re, im = _multiply(rest[i - 1], centre, bits)
+            rest[i] = rest[i][0] + re, rest[i][1] + im
+        found.append(rest.pop() if rest else (0, 0))
+    return found
+
+
+def _mean(points: list[tuple[int, int]]) -> tuple[int, int]:
+    return sum(z[0] for z in points) // len(points), sum(z[1] for z in points) // len(points)
+
+
+def _log2_size(z: tuple[int, int], bits: int) -> float:
+    size = isqrt(z[0] * z[0] + z[1] * z[1])
+    return log2(max(size, 1)) - bits
 
 
 def _multiply(a: tuple[int, int], b: tuple[int, int], bits: int) -> tuple[int, int]:

@@ -7,7 +7,7 @@ is one real number, rounded once. Section coefficients are in ascending powers o
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import NamedTuple
@@ -217,8 +217,8 @@ def _without_vanishing_lead(p: poly.Rationals) -> poly.Rationals:
     return p[first:]
 
 
-def _factors(roots: object) -> tuple[_Factor, ...]:
-    return tuple(_Factor(root) for root in roots for _ in range(root.multiplicity))  # type: ignore[attr-defined]
+def _factors(roots: Iterable[Root]) -> tuple[_Factor, ...]:
+    return tuple(_Factor(root) for root in roots for _ in range(root.multiplicity))
 
 
 def _direct(rest: _Rest, target: FloatFormat) -> tuple[Section, ...]:
@@ -240,9 +240,7 @@ def _direct(rest: _Rest, target: FloatFormat) -> tuple[Section, ...]:
 
 def _refuse_moved(section: Section, rest: _Rest) -> None:
     """Refuse a section in which rounding has moved a root off z = 1 or z = -1."""
-    for factors, p, what in zip(
-        (rest.zeros, rest.poles), _section_polynomials(section), ("zero", "pole"), strict=True
-    ):
+    for factors, p, what in zip((rest.zeros, rest.poles), _section_polynomials(section), ("zero", "pole"), strict=True):
         for delta in _ON_POINTS:
             wanted = sum(1 for f in factors if f.is_fixed and f.root.value.real == delta)
             shifted = poly.shift(p, Fraction(delta + 1))

@@ -27,6 +27,10 @@ Whole = npt.NDArray[np.int64]
 _SERIES_TERMS = 24
 
 
+#: Factor by which a section may amplify a slow signal before it takes it back: half a digit.
+_EASY = 3.0
+
+
 class Chain:
     """A strictly proper factored ratio as ``c (v - A)^-1 b``.
 
@@ -39,8 +43,9 @@ class Chain:
 
     Notes
     -----
-    Each zero goes with the pole nearest to it, so that no section amplifies what a later one takes back. Sections
-    without a zero come first: they smooth what the others differentiate.
+    ``1 - v/zero`` adds a derivative. Over a pole that is no faster than the zero the derivative is at hand; over a
+    faster one it is a small difference of large numbers. So zeros are given poles in ascending size, each the nearest
+    of those that are slow enough. Sections without a zero come first: they smooth what the others differentiate.
     """
 
     def __init__(self, gain: float, zeros: Sequence[complex], poles: Sequence[complex]) -> None:
@@ -72,25 +77,25 @@ def _without_common_origin(zeros: Sequence[complex], poles: Sequence[complex]) -
 
 def _in_order(zeros: Sequence[complex], poles: Sequence[complex]) -> list[tuple[complex, complex | None]]:
     """Poles with their zeros: those without one first, slow before fast."""
-    partner = _nearest(zeros, poles)
+    partner = _partners(zeros, poles)
     order = sorted(range(len(poles)), key=lambda i: (i in partner, abs(poles[i])))
     return [(poles[i], partner.get(i)) for i in order]
 
 
-def _nearest(zeros: Sequence[complex], poles: Sequence[complex]) -> dict[int, complex]:
-    """Give every zero a pole of its own, the closest pairs (in ratio) first."""
-    pairs = sorted(
-        (abs(pole - zero) / (abs(pole) + abs(zero)), i, j)
-        for i, pole in enumerate(poles)
-        for j, zero in enumerate(zeros)
-    )
+def _partners(zeros: Sequence[complex], poles: Sequence[complex]) -> dict[int, complex]:
+    """Give every zero a pole of its own; by the pole's index."""
     partner: dict[int, complex] = {}
-    placed: set[int] = set()
-    for _, i, j in pairs:
-        if i not in partner and j not in placed:
-            partner[i] = zeros[j]
-            placed.add(j)
+    for zero in sorted(zeros, key=abs):
+        free = (i for i in range(len(poles)) if i not in partner)
+        partner[min(free, key=lambda i: _strain(poles[i], zero))] = zero
     return partner
+
+
+def _strain(pole: complex, zero: complex) -> tuple[float, float]:
+    """How much the section of a pole and a zero loses, then how far they are apart in ratio."""
+    if zero == 0:
+        return abs(pole), 0.0
+    return max(_EASY, abs(1 - pole / zero)), abs(pole - zero) / (abs(pole) + abs(zero))
 
 
 def _section(pole: complex, zero: complex | None) -> tuple[complex, complex, complex]:

@@ -183,7 +183,7 @@ def _phase_check(ranges: Ranges, value: Complex, asked: Asked) -> Check:
 def _worst(asked: Asked, frequencies: Real, values: Real, bounds: tuple[Real, Real]) -> Check:
     """The check at the frequency where a value lies farthest outside its bounds."""
     if not len(frequencies):
-        return asked.undefined("a root on the imaginary axis lies near every frequency of the band")
+        return asked.undefined("at no frequency of the band are both responses finite and other than 0")
     low, high = bounds
     distances = np.maximum(np.maximum(low - values, values - high), 0.0)
     i = int(np.argmax(distances)) if distances.any() else int(np.argmax(frequencies))

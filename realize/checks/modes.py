@@ -49,10 +49,8 @@ def in_words(root: complex) -> str:
     """A root in s for people: frequency in Hz first, and the damping ratio of a pair."""
     if root == 0:
         return "s = 0"
-    text = frequency_text(abs(root))
-    if root.imag == 0:
-        return f"{'-' if root.real < 0 else '+'}{text}"
-    return f"{text}, damping ratio {_shown(damping(root))}"
+    kind = f"damping ratio {_shown(damping(root))}" if root.imag else "real" if root.real < 0 else "real and positive"
+    return f"{frequency_text(abs(root))}, {kind}"
 
 
 def in_disc_words(delta: complex) -> str:

@@ -2,9 +2,9 @@
 
 Time is counted in samples. What is looked at, and how densely: every sample up to 1500; beyond, the first 256, then
 times in steps of 2 %, and for every oscillating mode, while it lives, one whole cycle of 16 points again and again,
-25 % later each time; both in wider steps where that would be more than 500 times and 2000 points. Within a sample,
-four points per radian of the fastest live mode, as far as the bounds below allow; between points that close, extremes
-come from the cubic through values and slopes.
+25 % later each time; both in wider steps where that would be more than 500 times and 2000 points; and the samples
+next to every extreme that lies between those. Within a sample, four points per radian of the fastest live mode, as
+far as the bounds below allow; between points that close, extremes come from the cubic through values and slopes.
 
 Poles are right to a double's precision, so after x radians of an oscillation its phase is right to 1e-16 x.
 """
@@ -121,8 +121,9 @@ class StepResponse:
         if self.last <= _ALL_SAMPLES:
             return np.arange(self.last + 1)
         spread = _spread(self.last, _TIME_RATIO, _MOST_TIMES)
-        samples = np.unique(np.concatenate([np.arange(_FIRST_SAMPLES), spread, spread + 1, *self._cycle_samples()]))
-        return samples[samples <= self.last]
+        samples = self._known(np.arange(_FIRST_SAMPLES), spread, spread + 1, *self._cycle_samples())
+        extremes = np.floor(_Grid(self, samples).extremes).astype(np.int64)
+        return self._known(samples, extremes - 1, extremes, extremes + 1)
 
     @cached_property
     def bounds(self) -> tuple[Real, Real]:
@@ -190,6 +191,11 @@ class StepResponse:
     def _grid(self) -> _Grid:
         return _Grid(self, self.samples)
 
+    def _known(self, *parts: Whole) -> Whole:
+        """Samples of the horizon among some, ascending."""
+        samples = np.unique(np.concatenate(parts))
+        return samples[(samples >= 0) & (samples <= self.last)]
+
     def _cycle_samples(self) -> list[Whole]:
         """One cycle of each oscillating mode, again and again while it lives."""
         cycles = [(c, d) for c, d in zip(self._cycles, self._decays, strict=True) if c < self.last]
@@ -232,7 +238,8 @@ class StepResponse:
             value, slope = (v.reshape(times.shape) for v in self.at(times.ravel()))
             rising = np.sign(self.final) * slope
             row, i = np.nonzero((rising[:, :-1] > 0) & (rising[:, 1:] <= 0))
-            highest = np.argsort(-value[row, i] / self.final, kind="stable")[:_REFINED_PEAKS]
+            height = np.maximum(value[row, i] / self.final, value[row, i + 1] / self.final)
+            highest = np.argsort(-height, kind="stable")[:_REFINED_PEAKS]
             row, i = row[highest], i[highest]
             best = max(best, self._highest(times[row, i], times[row, i + 1]))
             if stride == 1:
@@ -257,7 +264,10 @@ class _Grid:
         self._slopes = slope[:-1], slope[1:]
         turns = resolved & (slope[:-1] * slope[1:] < 0)
         extreme = left.copy()
-        extreme[turns], _ = _cubic_extreme(left[turns], right[turns], slope[:-1][turns], slope[1:][turns], step[turns])
+        extreme[turns], after = _cubic_extreme(
+            left[turns], right[turns], slope[:-1][turns], slope[1:][turns], step[turns]
+        )
+        self.extremes = self.times[:-1][turns] + after
         self.low = np.minimum(np.minimum(left, right), extreme)
         self.high = np.maximum(np.maximum(left, right), extreme)
 

@@ -91,8 +91,6 @@ def _schur_cohn(p: poly.Integers, bits: int) -> bool | None:
         most = max(map(abs, a)) + radius
         a = [c - (k * d >> bits) for c, d in zip(a[:-1], a[:0:-1], strict=True)]
         radius = 2 * radius + (spread * most >> bits) + 2
-        if a[0] <= radius:
-            return None
         up = max(0, bits - a[0].bit_length())
         a, radius = [c << up for c in a], radius << up
     return True

@@ -125,7 +125,7 @@ def check_overshoot(
     """
     asked = Asked("step overshoot", of, "%", float(tolerances.exact("step_overshoot")))
     if classes[0] != STABLE:
-        kind = "grows" if classes[0] == UNSTABLE else "does not settle: a pole lies on the imaginary axis"
+        kind = "grows" if classes[0] == UNSTABLE else "integrates, or rings without end"
         return asked.undefined(f"the design {kind}, so there is no final value")
     if k:
         return asked.undefined("the final value is 0")

@@ -11,11 +11,15 @@ from fractions import Fraction
 from realize.design.load import design_from_text, load_design
 from realize.design.model import (
     CHECK_UNITS,
+    LOOP_METHODS,
     METHODS,
     TOLERANCE_KEYS,
     Accept,
     Design,
+    LoopTable,
     Overrides,
+    PlantCase,
+    PlantTable,
     Rolloff,
     Signal,
     Target,
@@ -26,11 +30,15 @@ from realize.errors import RealizeError
 
 __all__ = [
     "CHECK_UNITS",
+    "LOOP_METHODS",
     "METHODS",
     "TOLERANCE_KEYS",
     "Accept",
     "Design",
+    "LoopTable",
     "Overrides",
+    "PlantCase",
+    "PlantTable",
     "Rolloff",
     "Signal",
     "Target",

@@ -3,45 +3,25 @@
 from __future__ import annotations
 
 from collections import Counter
-from collections.abc import Callable, Iterable, Mapping
+from collections.abc import Callable, Collection, Iterable, Mapping
 from fractions import Fraction
 from functools import reduce
-from graphlib import CycleError, TopologicalSorter
 from typing import NamedTuple
 
 from realize.algebra import polynomial as poly
-from realize.algebra.expression import (
-    RESERVED_NAMES,
-    decimal_text,
-    evaluate_transfer,
-    exact_text,
-    format_transfer,
-    names_in,
-    ratio,
-    read_exact,
-)
+from realize.algebra.expression import decimal_text, evaluate_transfer, exact_text, format_transfer, ratio
 from realize.algebra.expression.ratio import MAX_DEGREE, Ratio, UnfitError
-from realize.algebra.expression.tokens import listed, nearest, shown
-from realize.design.gate import LARGEST, Table, WrittenNumber, checked_number, described
+from realize.design.gate import LARGEST, Table, checked_number
+from realize.design.values import LARGEST_GAIN, Values, names_of, resolve, used_names, useless, written_values
 from realize.errors import RealizeError, Refused
 from realize.quantity import SHOWN_DIGITS, round_significant
 from realize.transfer import TransferFunction
-
-#: Most named values: three for each of the 33 coefficients of a polynomial.
-MAX_VALUES = 100
-
-#: Longest name of a value: twice that of a design, so that a description fits.
-MAX_VALUE_NAME = 48
 
 #: Longest exact number that is readable: a quotient of two of 19 digits, more than a double has.
 LONGEST_PLAIN = 40
 
 #: Digits that tell every two doubles apart.
 DOUBLE_DIGITS = 17
-
-#: Largest value, and largest ratio of leading or of trailing coefficients (and one over the smallest ratio): they
-#: must fit float64, which ends at 1.8e308.
-LARGEST_GAIN = 10**300
 
 #: The forms of a transfer function, by their keys.
 FORMS = (("transfer",), ("numerator", "denominator"), ("zeros", "poles", "gain"))
@@ -54,17 +34,10 @@ class Controller(NamedTuple):
 
     transfer: TransferFunction
     text: str
-    values: tuple[tuple[str, Fraction], ...]
+    values: Values
 
 
-class _Written(NamedTuple):
-    """A value as it stands somewhere: in the file or on the command line."""
-
-    value: object
-    where: str
-
-
-def read_controller(table: Table, overrides: Mapping[str, str]) -> Controller:
+def read_controller(table: Table, overrides: Mapping[str, str], elsewhere: Collection[str] = ()) -> Controller:
     """Read values and transfer function from the table ``[design]``.
 
     Parameters
@@ -73,11 +46,17 @@ def read_controller(table: Table, overrides: Mapping[str, str]) -> Controller:
         The table; its unknown keys are already refused.
     overrides : mapping of str to str
         Values from the command line, by name.
+    elsewhere : collection of str
+        Names that a value of the command line may be meant for in another table.
     """
     form = _form(table)
-    written = _written_values(table.table("values"), overrides)
-    _refuse_useless(overrides, written, table, form)
-    values = _resolve(written)
+    roots = [name for key in form for name in names_of(table.entries.get(key), table.where(key))]
+    written = written_values(table.table("values"), overrides, roots)
+    known = {*used_names({*roots, *written}, written), *elsewhere}
+    for name in overrides:
+        if name not in known:
+            raise useless(name, f"--value {name}", known)
+    values = resolve(written)
     numerator, denominator = _POLYNOMIALS[form](table, values)
     transfer = reduced(numerator, denominator, table.where(form[0]))
     text = str(table.entries["transfer"]) if "transfer" in table else _readable(numerator, denominator)
@@ -168,10 +147,7 @@ def _readable(numerator: poly.Rationals, denominator: poly.Rationals) -> str:
 
 
 def _from_expression(table: Table, values: Mapping[str, Fraction]) -> tuple[poly.Rationals, poly.Rationals]:
-    text = table.entries["transfer"]
-    if not isinstance(text, str) or isinstance(text, WrittenNumber):
-        raise table.error("transfer", described(text), "an expression in s, in quotes", 'write transfer = "4.2 + 18/s"')
-    return evaluate_transfer(text, values, table.where("transfer"))
+    return evaluate_transfer(table.expression("transfer", "4.2 + 18/s"), values, table.where("transfer"))
 
 
 def _from_coefficients(table: Table, values: Mapping[str, Fraction]) -> tuple[poly.Rationals, poly.Rationals]:
@@ -266,110 +242,3 @@ def _bounded_list(table: Table, key: str, longest: int) -> list[object]:
 
 
 _POLYNOMIALS = dict(zip(FORMS, (_from_expression, _from_coefficients, _from_roots), strict=True))
-
-
-def _written_values(table: Table, overrides: Mapping[str, str]) -> dict[str, _Written]:
-    """Values by name, those of the command line in place of the file's."""
-    written = {name: _Written(value, table.where(name)) for name, value in table.entries.items()}
-    written |= {name: _Written(text, f"--value {name}") for name, text in overrides.items()}
-    if len(written) > MAX_VALUES:
-        raise RealizeError(
-            f"{table.source}, {table.place}",
-            f"{len(written)} values",
-            f"at most {MAX_VALUES} values",
-            "write the numbers into the transfer",
-        )
-    for name, entry in written.items():
-        checked_value_name(name, entry.where)
-    return written
-
-
-def checked_value_name(name: str, where: str) -> str:
-    """Check the name of a value.
-
-    Raises
-    ------
-    RealizeError
-        When an expression could not refer to it.
-    """
-    if name in RESERVED_NAMES:
-        raise RealizeError(
-            where,
-            f"a value named {name}, which has a meaning of its own",
-            f"any name but {listed(RESERVED_NAMES)}",
-            f"call it {name}_value",
-        )
-    if not (name.isascii() and name.isidentifier()) or len(name) > MAX_VALUE_NAME:
-        raise RealizeError(
-            where,
-            f"a value named {shown(name)}",
-            f"names of ASCII letters, digits and _, at most {MAX_VALUE_NAME} characters, no digit first",
-            "rename it",
-        )
-    return name
-
-
-def _refuse_useless(
-    overrides: Mapping[str, str], written: Mapping[str, _Written], table: Table, form: tuple[str, ...]
-) -> None:
-    """A value on the command line that nothing uses is a slip of the pen."""
-    used = {name for value, where in written.values() for name in _names(value, where)}
-    used |= {name for key in form for name in _names(table.entries.get(key), table.where(key))}
-    in_file = table.table("values").entries
-    for name in overrides:
-        if name not in used and name not in in_file:
-            known = sorted(used | set(in_file))
-            like = nearest(name, known)
-            raise RealizeError(
-                f"--value {name}",
-                "a value that nothing uses",
-                listed(known) or "no values: the transfer has no names",
-                f"did you mean {like}?" if like else "remove it",
-            )
-
-
-def _names(value: object, where: str) -> tuple[str, ...]:
-    """Names that an entry refers to, or a list of entries and pairs."""
-    entries = value if isinstance(value, list) else [value]
-    parts = [part for entry in entries for part in (entry if isinstance(entry, list) else [entry])]
-    return tuple(name for part in parts for name in _names_in_number(part, where))
-
-
-def _names_in_number(value: object, where: str) -> tuple[str, ...]:
-    if not isinstance(value, str) or isinstance(value, WrittenNumber):
-        return ()
-    try:
-        return names_in(value, where) if read_exact(value.strip()) is None else ()
-    except UnfitError:
-        return ()  # refused where it is read
-
-
-def _resolve(written: Mapping[str, _Written]) -> dict[str, Fraction]:
-    """Evaluate each value after those it refers to; the result keeps the order they were written in."""
-    graph = {
-        name: [other for other in _names(entry.value, entry.where) if other in written]
-        for name, entry in written.items()
-    }
-    try:
-        order = list(TopologicalSorter(graph).static_order())
-    except CycleError as error:
-        # The list runs from what is referred to, to what refers to it.
-        cycle = list(reversed(error.args[1]))
-        raise RealizeError(
-            written[cycle[0]].where,
-            f"values that refer to each other: {' -> '.join(cycle)}",
-            "values that refer to numbers in the end",
-            f"give one of {listed(cycle[1:])} a number",
-        ) from None
-    values: dict[str, Fraction] = {}
-    for name in order:
-        where = written[name].where
-        values[name] = checked_number(written[name].value, values, where)
-        if abs(values[name]) > LARGEST_GAIN:
-            raise RealizeError(
-                where,
-                "a value that is too large",
-                f"values from -{LARGEST_GAIN:.0e} to {LARGEST_GAIN:.0e}",
-                "check the powers of ten",
-            )
-    return {name: values[name] for name in written}

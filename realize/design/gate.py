@@ -11,7 +11,7 @@ from typing import TypeGuard
 
 from realize.algebra.expression import evaluate_constant, read_exact
 from realize.algebra.expression.ratio import MAX_BITS, UnfitError
-from realize.algebra.expression.tokens import listed, literal, nearest, shown
+from realize.algebra.expression.tokens import VALUES_TABLE, listed, literal, nearest, shown
 from realize.errors import RealizeError
 from realize.quantity import Dimension, parse_quantity, quantity_allowed
 
@@ -91,7 +91,8 @@ class Table:
     def tables(self, key: str) -> list[Table]:
         """Open an array of tables; empty where it is missing."""
         entries = self.entries.get(key, [])
-        place = f"[{self._place_below(key)}]"
+        below = self._place_below(key)
+        place = f"[{below}]" if below.endswith("]") else below
         if not isinstance(entries, list) or not all(is_table(entry) for entry in entries):
             raise RealizeError(
                 f"{self.source}, {place}",
@@ -123,6 +124,13 @@ class Table:
         if not value.isprintable() or not value.strip():
             found = "a text with control characters" if value.strip() else "an empty text"
             raise self.error(key, found, allowed, "write a plain line, or remove the key")
+        return value
+
+    def expression(self, key: str, example: str) -> str:
+        """Read the text of an expression in s, to be evaluated."""
+        value = self.entries[key]
+        if not isinstance(value, str) or isinstance(value, WrittenNumber):
+            raise self.error(key, described(value), "an expression in s, in quotes", f'write {key} = "{example}"')
         return value
 
     def choice(self, key: str, options: Sequence[str], default: str) -> str:
@@ -178,7 +186,9 @@ def is_table(value: object) -> TypeGuard[Mapping[str, object]]:
     return isinstance(value, Mapping)
 
 
-def checked_number(value: object, values: Mapping[str, Fraction], where: str) -> Fraction:
+def checked_number(
+    value: object, values: Mapping[str, Fraction], where: str, values_table: str = VALUES_TABLE
+) -> Fraction:
     """Read a number, exactly: an integer, a decimal, or an expression in a string.
 
     Parameters
@@ -189,6 +199,8 @@ def checked_number(value: object, values: Mapping[str, Fraction], where: str) ->
         Names an expression may use.
     where : str
         The place, as the user knows it.
+    values_table : str
+        Where the user may name values for it.
     """
     try:
         if isinstance(value, WrittenNumber):
@@ -201,7 +213,7 @@ def checked_number(value: object, values: Mapping[str, Fraction], where: str) ->
     if exact is not None:
         return exact
     if isinstance(value, str):
-        return evaluate_constant(value, values, where)
+        return evaluate_constant(value, values, where, values_table)
     raise RealizeError(where, described(value), _NUMBER, "write a number")
 
 

@@ -6,13 +6,14 @@ import os.path
 import re
 import sys
 from collections.abc import Mapping
+from functools import partial
 from typing import BinaryIO
 
 from realize.algebra.expression.tokens import printable, shown
 from realize.design.controller import Controller, read_controller
 from realize.design.gate import Table, WrittenNumber
-from realize.design.later import refuse_later_tables
-from realize.design.model import Design, Overrides
+from realize.design.model import DEFAULT_LOOP, Design, LoopTable, Overrides, PlantTable
+from realize.design.plant import MAX_RESPONSE_BYTES, names_in_plant, read_loop, read_plant
 from realize.design.tables import (
     read_accept,
     read_method,
@@ -22,6 +23,7 @@ from realize.design.tables import (
     read_signals,
     read_target,
     read_tolerance,
+    refuse_schedule,
 )
 from realize.errors import RealizeError, Refused
 
@@ -49,6 +51,8 @@ _TABLES = (
     *("signals", "target", "tolerance", "accept"),
 )
 
+_DESIGN_FILE = "a readable design file in TOML"
+
 _ARGUMENT = "a design file (its name ends in .toml), - for one on standard input, or an expression in s"
 
 #: What looks more like a path than like algebra: a directory in front, a backslash, or an ending behind.
@@ -70,16 +74,23 @@ def load_design(argument: str, overrides: Overrides = Overrides()) -> Design:  #
     RealizeError
         When it cannot be read or understood.
     Refused
-        When a cancellation in it hides a growing mode.
+        When a cancellation in it hides a growing mode, or a plant is improper.
     """
     if argument == STANDARD_INPUT:
-        return design_from_text(_decoded(_read(sys.stdin.buffer), "standard input"), "standard input", overrides)
+        content = _read(sys.stdin.buffer, MAX_FILE_BYTES)
+        return design_from_text(_decoded(content, "standard input", MAX_FILE_BYTES), "standard input", overrides)
     if argument.lower().endswith(".toml"):
-        return design_from_text(_decoded(_file_content(argument), argument), argument, overrides)
+        text = _file_text(argument, printable(argument), MAX_FILE_BYTES, _DESIGN_FILE)
+        return design_from_text(text, argument, overrides, os.path.dirname(argument))
     return _design_from_expression(argument, overrides)
 
 
-def design_from_text(text: str, source: str, overrides: Overrides = Overrides()) -> Design:  # noqa: B008
+def design_from_text(
+    text: str,
+    source: str,
+    overrides: Overrides = Overrides(),  # noqa: B008
+    folder: str = "",
+) -> Design:
     """Read a design file that is already in memory.
 
     Parameters
@@ -90,36 +101,43 @@ def design_from_text(text: str, source: str, overrides: Overrides = Overrides())
         What the user calls it.
     overrides : Overrides
         What the command line says in its place.
+    folder : str
+        Directory that paths in it start from; empty for the current one.
 
     Raises
     ------
     RealizeError
         When it cannot be understood.
     Refused
-        When a cancellation in it hides a growing mode.
+        When a cancellation in it hides a growing mode, or a plant is improper.
     """
-    return design_from_document(_parsed(text, source), source, overrides)
+    return design_from_document(_parsed(text, source), source, overrides, folder)
 
 
 def design_from_document(
     document: Mapping[str, object],
     source: str,
     overrides: Overrides = Overrides(),  # noqa: B008
+    folder: str = "",
 ) -> Design:
     """Read a design from the tables of its file."""
     root = Table(document, source)
     root.only(_TABLES)
     table = root.table("design")
     table.only(_DESIGN_KEYS)
-    return assemble(root, read_controller(table, overrides.values), overrides)
+    controller = read_controller(table, overrides.values, names_in_plant(root.table("plant"), overrides.values))
+    plant = None
+    if "plant" in root:
+        plant = read_plant(root.table("plant"), overrides.values, partial(_response_text, folder))
+    return assemble(root, controller, plant, overrides)
 
 
-def assemble(root: Table, controller: Controller, overrides: Overrides) -> Design:
-    """Put a design together from its transfer function and all other tables."""
-    refuse_later_tables(root)
+def assemble(root: Table, controller: Controller, plant: PlantTable | None, overrides: Overrides) -> Design:
+    """Put a design together from controller, plant and all other tables."""
+    refuse_schedule(root)
     design = root.table("design")
     sampling = read_sampling(root.table("sampling"), overrides)
-    method, exact_at_rad_s = read_method(root.table("method"), overrides.method)
+    method = read_method(root.table("method"), overrides.method)
     target = read_target(root.table("target"))
     signals = read_signals(root.table("signals"), target)
     return Design(
@@ -135,8 +153,11 @@ def assemble(root: Table, controller: Controller, overrides: Overrides) -> Desig
         period_s=sampling.period_s,
         band_rad_s=sampling.band_rad_s,
         rolloff=read_rolloff(root.table("rolloff"), controller.transfer) if "rolloff" in root else None,
-        method=method,
-        exact_at_rad_s=exact_at_rad_s,
+        method=method.name,
+        exact_at_rad_s=method.exact_at_rad_s,
+        compensate_delay=method.compensate_delay,
+        plant=plant,
+        loop=_loop(root, plant),
         input=signals[0],
         output=signals[1],
         target=target,
@@ -145,11 +166,25 @@ def assemble(root: Table, controller: Controller, overrides: Overrides) -> Desig
     )
 
 
+def _loop(root: Table, plant: PlantTable | None) -> LoopTable:
+    if "loop" not in root:
+        return DEFAULT_LOOP
+    table = root.table("loop")
+    if plant is None:
+        raise RealizeError(
+            f"{table.source}, {table.place}",
+            "a loop without a plant",
+            "[loop] beside [plant]",
+            "add [plant] with the transfer of what the controller drives, or remove [loop]",
+        )
+    return read_loop(table)
+
+
 def _design_from_expression(argument: str, overrides: Overrides) -> Design:
     root = Table({}, "expression")
     table = _ArgumentTable({"transfer": argument}, "expression", "[design]")
     try:
-        return assemble(root, read_controller(table, overrides.values), overrides)
+        return assemble(root, read_controller(table, overrides.values), None, overrides)
     except Refused:
         raise
     except RealizeError as error:
@@ -180,10 +215,19 @@ class _ArgumentTable(Table):
         return self.source
 
 
-def _file_content(path: str) -> bytes:
+def _response_text(folder: str, path: str, where: str) -> str:
+    wanted = "a readable measured response; its path starts from the directory of the design file"
+    return _file_text(os.path.join(folder, path), where, MAX_RESPONSE_BYTES, wanted)
+
+
+def _file_text(path: str, where: str, most_bytes: int, wanted: str) -> str:
+    return _decoded(_file_content(path, where, most_bytes, wanted), where, most_bytes)
+
+
+def _file_content(path: str, where: str, most_bytes: int, wanted: str) -> bytes:
     try:
         with open(path, "rb") as file:
-            return _read(file)
+            return _read(file, most_bytes)
     except FileNotFoundError:
         found, advice = "no such file", "check the name and the directory"
     except IsADirectoryError:
@@ -193,28 +237,25 @@ def _file_content(path: str) -> bytes:
     except (OSError, ValueError) as error:
         reason = error.strerror if isinstance(error, OSError) and error.strerror else "its name is not possible"
         found, advice = f"a file that cannot be read: {reason}", "check the name"
-    raise RealizeError(printable(path), found, "a readable design file in TOML", advice)
+    raise RealizeError(where, found, wanted, advice)
 
 
-def _read(file: BinaryIO) -> bytes:
+def _read(file: BinaryIO, most_bytes: int) -> bytes:
     """No more than is allowed, and one byte to see whether there is more."""
-    return file.read(MAX_FILE_BYTES + 1)
+    return file.read(most_bytes + 1)
 
 
-def _decoded(content: bytes, source: str) -> str:
-    if len(content) > MAX_FILE_BYTES:
+def _decoded(content: bytes, where: str, most_bytes: int) -> str:
+    if len(content) > most_bytes:
         raise RealizeError(
-            source,
-            "a file that is too large",
-            f"at most {MAX_FILE_BYTES} bytes",
-            "check that it is a design file",
+            where, "a file that is too large", f"at most {most_bytes} bytes", "check that it is the right file"
         )
     try:
         return content.decode("utf-8-sig")
     except UnicodeDecodeError as error:
         line = content[: error.start].count(b"\n") + 1
         raise RealizeError(
-            f"{source}, line {line}", "a byte that is not UTF-8", "text in UTF-8", "save the file as UTF-8"
+            f"{where}, line {line}", "a byte that is not UTF-8", "text in UTF-8", "save the file as UTF-8"
         ) from None
 
 

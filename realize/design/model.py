@@ -27,6 +27,9 @@ METHODS = (
     "pole-zero-mapped",
 )
 
+#: Methods that know about the loop, in the order of their table in the README.
+LOOP_METHODS = ("frequency-fit", "plant-input-mapped")
+
 #: Every check by name, with the unit its deviation is measured in; ``None`` where it has no figure.
 CHECK_UNITS: Mapping[str, str | None] = MappingProxyType(
     {
@@ -64,6 +67,10 @@ TOLERANCE_KEYS: Mapping[str, str] = MappingProxyType(
         "loop_overshoot_rise": "%",
     }
 )
+
+
+#: The transfer function of a wire.
+UNITY = TransferFunction((1,), (1,))
 
 
 @dataclass(frozen=True)
@@ -119,6 +126,65 @@ class Target(NamedTuple):
 DEFAULT_TARGET = Target()
 
 
+class PlantCase(NamedTuple):
+    """The plant for one set of values.
+
+    Attributes
+    ----------
+    name : str
+        "nominal" or as given; empty where there is one case only.
+    transfer : TransferFunction
+        From the controller's output to the plant's output, proper, without dead time; 1 for a measured plant.
+    dead_time_s : Fraction
+        Zero or more: all of it, that of the sensor too.
+    sensor : TransferFunction
+        In the feedback path, before the sampler; proper.
+    values : tuple of (str, Fraction)
+        Named values, in the order they were written.
+    """
+
+    name: str
+    transfer: TransferFunction
+    dead_time_s: Fraction = Fraction(0)
+    sensor: TransferFunction = UNITY
+    values: tuple[tuple[str, Fraction], ...] = ()
+
+
+class PlantTable(NamedTuple):
+    """What the controller is connected to: transfer functions, or a measured response.
+
+    Attributes
+    ----------
+    transfer_text : str or None
+        The transfer function as the user wrote it, on one line; ``None`` for a measured plant.
+    cases : tuple of PlantCase
+        The nominal one first. A measured plant has one, whose dead time and sensor multiply the response.
+    sensor_text : str or None
+        The sensor as the user wrote it, on one line.
+    response : str or None
+        Path of the measured response, as written.
+    response_text : str or None
+        What stands in that file, lines ended by a line feed; not yet parsed.
+    """
+
+    transfer_text: str | None
+    cases: tuple[PlantCase, ...]
+    sensor_text: str | None = None
+    response: str | None = None
+    response_text: str | None = None
+
+
+class LoopTable(NamedTuple):
+    """Delay from sampling to output, in samples or in s (the other one is ``None``), and its jitter in s."""
+
+    compute_delay_samples: Fraction | None = Fraction(1)
+    compute_delay_s: Fraction | None = None
+    jitter_s: Fraction | None = None
+
+
+DEFAULT_LOOP = LoopTable()
+
+
 class Accept(NamedTuple):
     """An agreed deviation: the check, up to which figure (if any) in which unit, why, and who agreed."""
 
@@ -162,7 +228,13 @@ class Design:
     rolloff : Rolloff or None
         As asked for; ``None`` for a proper transfer function.
     method : str
-        One of :data:`METHODS`, or "auto".
+        One of :data:`METHODS` or :data:`LOOP_METHODS`, or "auto".
+    compensate_delay : bool
+        Whether the method frequency-fit is to make up for hold and compute delay.
+    plant : PlantTable or None
+        What the controller is connected to.
+    loop : LoopTable
+        What delays the controller; counts where there is a plant.
     input, output : Signal
         What is known of the signals.
     target : Target
@@ -187,6 +259,9 @@ class Design:
     rolloff: Rolloff | None = None
     method: str = "auto"
     exact_at_rad_s: Fraction | None = None
+    compensate_delay: bool = False
+    plant: PlantTable | None = None
+    loop: LoopTable = DEFAULT_LOOP
     input: Signal = Signal()
     output: Signal = Signal()
     target: Target = DEFAULT_TARGET

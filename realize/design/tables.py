@@ -22,6 +22,7 @@ from realize.design.gate import (
 from realize.design.model import (
     CHECK_UNITS,
     DEFAULT_TARGET,
+    LOOP_METHODS,
     METHODS,
     TOLERANCE_KEYS,
     Accept,
@@ -66,7 +67,8 @@ _TARGET_KEYS = (
     *("anti_windup", "tracking_time", "guard_nonfinite"),
 )
 
-_METHODS_TO_COME = ("frequency-fit", "plant-input-mapped")
+#: The method that can make up for delay.
+_COMPENSATING = "frequency-fit"
 
 #: Checks that may be accepted without a figure: what went wrong is a matter of yes or no.
 _LIMIT_OPTIONAL = ("saturation recovery",)
@@ -92,6 +94,14 @@ class Sampling(NamedTuple):
 
     period_s: Fraction | None
     band_rad_s: Fraction | None
+
+
+class Method(NamedTuple):
+    """Name of a method, and what only some methods ask for."""
+
+    name: str
+    exact_at_rad_s: Fraction | None
+    compensate_delay: bool
 
 
 def checked_name(name: str, where: str) -> str:
@@ -165,18 +175,28 @@ def read_rolloff(table: Table, transfer: TransferFunction) -> Rolloff:
     return asked
 
 
-def read_method(table: Table, override: str | None) -> tuple[str, Fraction | None]:
-    """Read the name of the method and the frequency of exact prewarping in rad/s."""
+def read_method(table: Table, override: str | None) -> Method:
+    """Read the name of the method, the frequency of exact prewarping, and whether it compensates delay."""
     table.only(("name", "exact_at", "compensate_delay"))
     value, where = (table.entries.get("name", "auto"), table.where("name"))
     if override is not None:
         value, where = override, "--method"
-    if value in _METHODS_TO_COME:
-        raise not_yet(where, f"the method {value}", ", ".join(("auto", *METHODS)))
-    name = checked_choice(value, ("auto", *METHODS), where)
-    if table.flag("compensate_delay", False):
-        raise not_yet(table.where("compensate_delay"), "true, for the method frequency-fit", "false")
-    return name, table.quantity("exact_at", "angular frequency")
+    name = checked_choice(value, ("auto", *METHODS, *LOOP_METHODS), where)
+    compensate_delay = table.flag("compensate_delay", False)
+    if compensate_delay and name not in ("auto", _COMPENSATING):
+        raise table.error(
+            "compensate_delay",
+            f"true, with the method {name}",
+            f"true with the method {_COMPENSATING} or auto only",
+            f'remove it, or write name = "{_COMPENSATING}"',
+        )
+    return Method(name, table.quantity("exact_at", "angular frequency"), compensate_delay)
+
+
+def refuse_schedule(root: Table) -> None:
+    """Answer the table of gains that change while running, which is planned."""
+    if "schedule" in root:
+        raise not_yet(f"{root.source}, [schedule]", "a schedule of gains", "constant values")
 
 
 def read_target(table: Table) -> Target:
@@ -210,9 +230,6 @@ def read_tolerance(table: Table) -> tuple[tuple[str, Fraction], ...]:
     """Read the tolerances that differ from their defaults."""
     table.only(TOLERANCE_KEYS)
     read = {key: _figure(table, key, unit) for key, unit in TOLERANCE_KEYS.items() if key in table}
-    for key in read:
-        if key.startswith("loop_"):
-            raise not_yet(table.where(key), "a tolerance of the loop", "tolerances of the controller alone")
     return tuple(read.items())
 
 
@@ -374,8 +391,6 @@ def _accept(table: Table) -> Accept:
         if key not in table:
             raise table.error(key, "nothing", "check, because and by in every entry", f'add {key} = ".."')
     check = table.choice("check", tuple(CHECK_UNITS), "")
-    if check.startswith("loop "):
-        raise not_yet(table.where("check"), "a check of the loop", "checks of the controller alone")
     because, by = table.text("because"), table.text("by")
     assert because is not None and by is not None  # noqa: PT018 -- both keys are there
     return Accept(check, _limit(table, check), CHECK_UNITS[check] or "", because, by)
@@ -386,7 +401,8 @@ def _limit(table: Table, check: str) -> Fraction | None:
     if unit is not None and "limit" in table:
         return _figure(table, "limit", unit)
     if unit is not None and check not in _LIMIT_OPTIONAL:
-        raise table.error("limit", "nothing", f"a limit in {unit}", f'add a line such as limit = "4 {unit}"')
+        allowed, line = (f"a limit in {unit}", f'limit = "4 {unit}"') if unit else ("a limit", "limit = 2.5")
+        raise table.error("limit", "nothing", allowed, f"add a line such as {line}")
     if "limit" in table:
         raise table.error(
             "limit",

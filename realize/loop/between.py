@@ -5,7 +5,7 @@ from __future__ import annotations
 from fractions import Fraction
 from functools import lru_cache
 from math import ceil, log
-from typing import NamedTuple
+from typing import Any, NamedTuple
 
 import numpy as np
 
@@ -84,11 +84,12 @@ def _within_period(plant: Plant, period_s: Fraction, offset: Fraction) -> Within
     chain, c, d = _plant_states(plant)
     period, n = float(period_s), chain.order
     times = _times([abs(p) * period for p in every(plant.transfer.poles)])
-    moved = np.eye(n + 1) + np.stack([held_change(chain, t * period) for t in times])
+    whole = np.eye(n + 1, dtype=complex)
+    moved = np.stack([whole + held_change(chain, t * period) for t in times])
     read = np.zeros((2, n + 1), complex)
     read[0, :n], read[0, n] = c, d
     read[1, :n], read[1, n] = period * (c @ chain.a), period * (c @ chain.b)
-    at_sample = np.eye(n + 1) + held_change(chain, float(offset) * period)
+    at_sample = whole + held_change(chain, float(offset) * period)
     behind = np.append(chain.c, chain.d) @ at_sample
     fine = np.stack([held_change(chain, h * period / _PARTS) for h in np.diff(times)])
     to_end = held_change(chain, period)
@@ -178,12 +179,12 @@ def _refined(within: WithinPeriod, start: Complex, i: int) -> tuple[float, float
     step = float(within.times[i + 1] - within.times[i]) / _PARTS
     j = int(np.argmax((slope[:-1] > 0) & (slope[1:] <= 0)))
     ends = value[j], value[j + 1], slope[j], slope[j + 1]
-    top = float(max(_top(*ends, step), value.max()))
+    top = max(float(_top(*ends, step)), float(value.max()))
     share = slope[j] / (slope[j] - slope[j + 1]) if slope[j] > slope[j + 1] else 0.0
     return top, float(within.times[i] + (j + share) * step)
 
 
-def _top(left: Real, right: Real, left_slope: Real, right_slope: Real, step: Real) -> Real:
-    """Height between two points with slopes of opposite sign: mean of what the parabola gives from either side."""
+def _top(left: Any, right: Any, left_slope: Any, right_slope: Any, step: Any) -> Any:
+    """Height between points with slopes of opposite sign: mean of what the parabola gives from either side."""
     fall = np.maximum(left_slope - right_slope, 5e-324)
     return (left + right + step * (left_slope**2 + right_slope**2) / (2 * fall)) / 2

@@ -21,7 +21,7 @@ from realize.checks.modes import in_words
 from realize.checks.schur import MARGINAL, STABLE, UNSTABLE
 from realize.checks.stability import continuous_stability
 from realize.errors import Refused
-from realize.loop.grid import graded, with_turns
+from realize.loop.grid import graded, with_jumps, with_turns
 from realize.loop.margins import (
     Ends,
     GainCrossover,
@@ -46,6 +46,9 @@ _QUIET = 0.02
 #: Turns of the dead time that are resolved beyond that point: the next phase crossover lies within one.
 _TURNS_BEYOND = 2
 
+
+#: Ratio of the next frequencies where there was no phase crossover yet.
+_FURTHER = 8
 
 #: Multiple of the highest corner above which a gain that does not fall to 0 only approaches its limit.
 _SETTLED = 30
@@ -152,8 +155,8 @@ class ContinuousLoop:
     def margins(self) -> Margins:
         """Gain, phase and delay margins, and the sensitivity peak."""
         exact = not (self.delay_s or self.hold_s)
-        points = self._exact_phase_crossovers() if exact else self._scan.phase_crossovers()
-        found = margins(self._scan, self.crossovers, points, self._ends, stable=self.verdict.is_stable)
+        points = self._exact_phase_crossovers() if exact else self._phase_crossovers()
+        found = margins(self._scan, self.crossovers, points, self._ends, self.verdict.stability)
         if exact and self._high_gain >= 0 and self.verdict.is_stable:
             # A gain that stays at 1 or more meets the critical point at some high frequency, however short the delay.
             return found._replace(delay_margin_s=0.0)
@@ -185,10 +188,21 @@ class ContinuousLoop:
     def _scan(self) -> Scan:
         low, high = self._span()
         grid = graded(self._rational.features, low, high)
-        delay = float(self.delay_s + (self.hold_s or 0))
-        if delay:
-            grid = with_turns(grid, delay, low, self._last_turn(grid, delay))
+        if self._turning_s:
+            # Beyond, the phase turns ever on while nothing depends on it any more.
+            last = self._last_turn(grid, self._turning_s)
+            grid = self._turned(grid[grid < last], low, last)
         return Scan(self.response, grid)
+
+    @property
+    def _turning_s(self) -> float:
+        """Delay, and period of the hold."""
+        return float(self.delay_s + (self.hold_s or 0))
+
+    def _turned(self, grid: Real, first: float, last: float) -> Real:
+        """Add what delay and hold need between two frequencies."""
+        grid = with_turns(grid, self._turning_s, first, last)
+        return with_jumps(grid, 2 * pi / float(self.hold_s)) if self.hold_s else grid
 
     def _last_turn(self, grid: Real, delay_s: float) -> float:
         """Frequency up to which the turns of the delays are resolved."""
@@ -212,6 +226,17 @@ class ContinuousLoop:
         marks += [1 / float(self.hold_s)] if self.hold_s else []
         marks = marks or [1.0]
         return min(marks) / BEYOND, max(marks) * BEYOND
+
+    def _phase_crossovers(self) -> tuple[PhaseCrossover, ...]:
+        """Phase crossovers up to the first that the falling gain passes, for which the grid may have to go on."""
+        found = self._scan.phase_crossovers()
+        _, high = self._span()
+        last = float(self.grid[-1])
+        while last < high and not any(point.log_gain < 0 for point in found):
+            first, last = last, min(_FURTHER * last, high)
+            grid = graded(self._rational.features, first, last)
+            found += Scan(self.response, self._turned(grid, first, last)).phase_crossovers()
+        return found
 
     def _exact_phase_crossovers(self) -> tuple[PhaseCrossover, ...]:
         """Roots of the imaginary part of ``N(jw) conj(D(jw))`` at which the real part is negative."""
@@ -238,9 +263,7 @@ def gain_crossovers_rad_s(ratio: Ratio) -> tuple[tuple[float, int], ...]:
     return tuple((sqrt(-r.value.real), r.multiplicity) for r in _negative_roots(difference[::2]))
 
 
-def _with_directions(
-    found: tuple[tuple[float, int], ...], loop: ContinuousLoop
-) -> tuple[GainCrossover, ...]:
+def _with_directions(found: tuple[tuple[float, int], ...], loop: ContinuousLoop) -> tuple[GainCrossover, ...]:
     """Give each crossover its phase and the direction in which the gain passes 1."""
     if not found:
         return ()
@@ -252,7 +275,8 @@ def _with_directions(
         directions.append(0 if multiplicity % 2 == 0 else (-1 if above else 1))
         above ^= multiplicity % 2 == 1
     _, phase = loop.response(w)
-    return tuple(GainCrossover(*map(float, pair), d) for *pair, d in zip(w, phase, directions, strict=True))
+    crossings = zip(w, phase, directions, strict=True)
+    return tuple(GainCrossover(float(at), float(turn), way) for at, turn, way in crossings)
 
 
 def _positive_frequencies(odd: poly.Integers) -> list[float]:

@@ -44,9 +44,7 @@ def highest_crossover_rad_s(controller: TransferFunction, plants: Sequence[Plant
     controller : TransferFunction
         Improper or not.
     """
-    found = (
-        gain_crossovers_rad_s(series(controller, plant.transfer, plant.sensor)) for plant in plants
-    )
+    found = (gain_crossovers_rad_s(series(controller, plant.transfer, plant.sensor)) for plant in plants)
     return max((crossovers[-1][0] for crossovers in found if crossovers), default=None)
 
 

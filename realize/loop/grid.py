@@ -56,6 +56,14 @@ def with_turns(grid: Real, delay_s: float, low_rad_s: float, high_rad_s: float) 
     return _distinct(np.concatenate([grid, added]), min(grid[0], low_rad_s), max(grid[-1], high_rad_s))
 
 
+def with_jumps(grid: Real, every_rad_s: float) -> Real:
+    """Add both sides of all multiples of a frequency, at which the phase jumps."""
+    count = int(min(grid[-1] / every_rad_s, _MOST_POINTS))
+    jumps = every_rad_s * np.arange(1, count + 1)
+    both = np.concatenate([jumps * (1 - _LEAST_WIDTH), jumps * (1 + _LEAST_WIDTH)])
+    return _distinct(np.concatenate([grid, both]), float(grid[0]), float(grid[-1]))
+
+
 def _around(centre: float, width: float, high_rad_s: float) -> Real:
     reach = asinh((high_rad_s + centre) / width) + STEP
     offsets = width * np.sinh(np.arange(0.0, reach, STEP))
@@ -67,4 +75,5 @@ def _distinct(points: Real, low: float, high: float) -> Real:
     inside = np.sort(points[(points > low) & (points < high)])
     bounded = np.concatenate([[low], inside, [high]])
     apart = np.diff(bounded) > _SAME * bounded[1:]
-    return bounded[np.concatenate([[True], apart[:-1], [True]])]
+    distinct: Real = bounded[np.concatenate([[True], apart[:-1], [True]])]
+    return distinct

@@ -79,7 +79,8 @@ def _alias_size(chain: TransferFunction, w: Real, turn: float) -> Real:
     size, _ = response.at(aliases.ravel())
     near: Real = np.exp(2 * size).reshape(aliases.shape).sum(axis=1)
     ends = (count + 0.5) * turn + np.array([[1.0], [-1.0]]) * w
-    return np.sqrt(near + _beyond(chain, ends, turn).sum(axis=0))
+    size_of_all: Real = np.sqrt(near + _beyond(chain, ends, turn).sum(axis=0))
+    return size_of_all
 
 
 def _beyond(chain: TransferFunction, start: Real, turn: float) -> Real:

@@ -8,12 +8,12 @@ the response and refined to rounding; a touch between two grid points is found f
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from math import degrees, exp, floor, inf, log10, pi
+from math import cos, degrees, exp, floor, inf, log10, pi
 from typing import NamedTuple
 
 import numpy as np
-import numpy.typing as npt
 
+from realize.checks.schur import MARGINAL, STABLE
 from realize.loop.response import Real
 
 #: Logarithm of the gain, and phase in rad, within which a crossing counts as lying on the critical point: rounding of
@@ -183,10 +183,11 @@ class Scan:
         above = self.log > 0
         i = np.flatnonzero(above[:-1] != above[1:])
         w = _solved(lambda at: self.evaluate(at)[0], self.w[i], self.w[i + 1], self.log[i], self.log[i + 1])
-        log_gain, phase = self.evaluate(w) if len(w) else (w, w)
+        phase = self.evaluate(w)[1] if len(w) else w
         direction = np.where(above[i], -1, 1)
         # A root on the axis takes the gain through 1 on both sides of it, never at a jump: every bracket is one.
-        return tuple(GainCrossover(*map(float, pair), int(d)) for *pair, d in zip(w, phase, direction, strict=True))
+        found = zip(w, phase, direction, strict=True)
+        return tuple(GainCrossover(float(at), float(turn), int(way)) for at, turn, way in found)
 
     def phase_crossovers(self) -> tuple[PhaseCrossover, ...]:
         """All frequencies with a phase of an odd multiple of half a turn."""
@@ -274,8 +275,7 @@ def margins(
     crossovers: Sequence[GainCrossover],
     phase_crossovers: Sequence[PhaseCrossover],
     ends: Ends | None,
-    *,
-    stable: bool | None,
+    stability: str | None,
 ) -> Margins:
     """Read all figures.
 
@@ -283,17 +283,19 @@ def margins(
     ----------
     ends : Ends or None
         None where the response is known on a band only; the figures then are those of the band.
-    stable : bool or None
-        Of the closed loop: decides the sign of the phase margin, and whether there is a delay margin. None where it
-        is not known: signs are then those of a loop without growing modes of its own.
+    stability : str or None
+        Class of the closed loop: decides the sign of the phase margin, and whether there is a delay margin. None where
+        it is not known: signs are then those of a loop without growing modes of its own.
     """
+    stable = stability == STABLE
     points = [*phase_crossovers, *(_real_ends(ends) if ends else ())]
     below = max((p for p in points if p.log_gain <= ON_POINT), key=lambda p: p.log_gain, default=None)
     above = min((p for p in points if p.log_gain >= -ON_POINT), key=lambda p: p.log_gain, default=None)
-    nearest = _nearest_crossover(crossovers, stable=bool(stable))
-    margin = None if nearest is None else _signed(nearest, stable=bool(stable))
-    has_delay = stable or (stable is None and margin is not None and margin > 0)
+    nearest = _nearest_crossover(crossovers, stable=stable)
+    margin = None if nearest is None else _signed(nearest, stable=stable)
+    has_delay = stable or (stability is None and margin is not None and margin > 0)
     peak, at = scan.sensitivity_peak()
+    bounded = stability != MARGINAL
     return Margins(
         exp(-min(below.log_gain, 0.0)) if below else None,
         below.w_rad_s if below else None,
@@ -302,7 +304,7 @@ def margins(
         None if margin is None else degrees(margin),
         None if nearest is None else nearest.w_rad_s,
         min((c.lag_left / c.w_rad_s for c in crossovers), default=None) if has_delay else None,
-        *(_with_ends(peak, at, ends) if ends else (peak, at)),
+        *(_with_ends(peak if bounded else inf, at, ends) if ends else (peak, at)),
         tuple(c.w_rad_s for c in crossovers),
     )
 
@@ -333,7 +335,7 @@ def _with_ends(peak: float, at: float, ends: Ends) -> tuple[float | None, float 
     for w, (size, phase) in ((0.0, ends.start), (last, ends.end)):
         if size < _MOST_LOG:
             # Without a limit of the phase every phase is approached, the worst one too.
-            value = exp(size) * (np.cos(phase) if phase is not None else -1.0)
+            value = exp(size) * (cos(phase) if phase is not None else -1.0)
             there = 1 / abs(1 + value) if value != -1 else inf
             # Between equals the end is where the peak is approached.
             best = (there, w) if there >= best[0] * (1 - ON_POINT) else best
@@ -373,9 +375,7 @@ def _touches(w: Real, value: Real, level: float | None) -> Real:
     return vertex[np.abs(vertex - w[i + 1]) > _CLOSED * 1e4 * w[i + 1]]
 
 
-def _solved(
-    function: Callable[[Real], Real], first: Real, last: Real, at_first: Real, at_last: Real
-) -> Real:
+def _solved(function: Callable[[Real], Real], first: Real, last: Real, at_first: Real, at_last: Real) -> Real:
     """A zero in every bracket: false position, its end values halved where one end stays (the Illinois rule)."""
     a, b = np.array(first, float), np.array(last, float)
     fa, fb = (np.clip(f, -_MOST_LOG, _MOST_LOG) for f in (at_first, at_last))

@@ -10,6 +10,7 @@ from __future__ import annotations
 import csv
 from collections.abc import Sequence
 from functools import cached_property
+from itertools import pairwise
 from math import isfinite, log, pi
 from typing import NamedTuple
 
@@ -141,7 +142,7 @@ def _require_ascending(frequency: Sequence[float], where: str) -> None:
         raise RealizeError(
             where, f"the first frequency is {frequency[0]:.5g} Hz", "frequencies above 0", "leave out the point at 0"
         )
-    for i, (before, after) in enumerate(zip(frequency, frequency[1:], strict=False), 2):
+    for i, (before, after) in enumerate(pairwise(frequency), 2):
         if after <= before:
             raise RealizeError(
                 where,
@@ -152,7 +153,7 @@ def _require_ascending(frequency: Sequence[float], where: str) -> None:
 
 
 def _require_resolved(frequency: Sequence[float], phase_deg: Sequence[float], where: str) -> None:
-    for i, (before, after) in enumerate(zip(phase_deg, phase_deg[1:], strict=False)):
+    for i, (before, after) in enumerate(pairwise(phase_deg)):
         jump = abs((after - before + 180) % 360 - 180)
         if jump > _MOST_JUMP_DEG:
             raise RealizeError(
@@ -223,7 +224,7 @@ class MeasuredLoop:
     @cached_property
     def margins(self) -> Margins:
         """Margins as far as the band shows them; stability is not known."""
-        return margins(self._scan, self.crossovers, self._scan.phase_crossovers(), None, stable=None)
+        return margins(self._scan, self.crossovers, self._scan.phase_crossovers(), None, None)
 
     @property
     def notes(self) -> tuple[str, ...]:

@@ -12,7 +12,7 @@ from collections.abc import Sequence
 from fractions import Fraction
 from itertools import zip_longest
 from math import exp, log, pi, prod
-from typing import Any, NamedTuple, Protocol
+from typing import NamedTuple, Protocol
 
 import numpy as np
 import numpy.typing as npt
@@ -25,7 +25,7 @@ Complex = npt.NDArray[np.complex128]
 Whole = npt.NDArray[np.int64]
 
 #: Root in ``z - 1`` at z = -1, the end of the frequency axis.
-_AT_NYQUIST = -2.0
+_AT_NYQUIST = -2 + 0j
 
 
 class Part(Protocol):
@@ -67,17 +67,16 @@ class Continuous:
     """
 
     def __init__(self, transfer: TransferFunction) -> None:
-        self._gain = float(log_size(transfer.gain)), 0.0 if transfer.gain > 0 else pi
+        self._gain = log_size(transfer.gain), 0.0 if transfer.gain > 0 else pi
         low = transfer.low_frequency_gain
         self._low_gain = log_size(low), 0.0 if low > 0 else pi
         self._zeros, self._poles = (_array(every(roots)) for roots in (transfer.zeros, transfer.poles))
-        self.features = np.concatenate([self._zeros[self._zeros != 0], self._poles[self._poles != 0]])
+        self._factors = _OnAxis(np.concatenate([self._zeros, self._poles]), len(self._zeros))
+        away = self._factors.without(0j)
+        self.features = away.roots
         self.growing = int(np.sum(self._poles.real > 0))
-        kept = [roots[roots != 0] for roots in (self._zeros, self._poles)]
-        phase = self._gain[1] + float(_phase_in_s(kept[0], _ZERO)[0] - _phase_in_s(kept[1], _ZERO)[0])
-        self.start = Start(
-            transfer.zeros_minus_poles_at_origin, log_size(transfer.low_frequency_gain), _multiple_of_pi(phase)
-        )
+        phase = self._gain[1] + float(away.at(np.zeros(1))[1][0])
+        self.start = Start(transfer.zeros_minus_poles_at_origin, log_size(low), _multiple_of_pi(phase))
 
     def value(self, s: Complex) -> Complex:
         """``G(s)`` anywhere off its poles."""
@@ -114,13 +113,35 @@ class Continuous:
 
     def at(self, w: Real) -> tuple[Real, Real]:
         """``ln |G(jw)|`` and phase."""
-        over, under = (_size_in_s(roots, w) for roots in (self._zeros, self._poles))
-        lead, lag = (_phase_in_s(roots, w) for roots in (self._zeros, self._poles))
-        return self._gain[0] + over - under, self._gain[1] + lead - lag
+        size, turn = self._factors.at(w)
+        return self._gain[0] + size, self._gain[1] + turn
+
+
+class _OnAxis:
+    """Factors ``jw - root``, the zeros first."""
+
+    def __init__(self, roots: Complex, zeros: int) -> None:
+        self.roots = roots
+        self._signs = np.where(np.arange(len(roots)) < zeros, 1.0, -1.0)[:, None]
+        self._re, self._im = np.abs(roots.real)[:, None], roots.imag[:, None]
+        # A root right of the axis turns the other way, from half a turn.
+        grows = roots.real > 0
+        self._turns = np.where(grows[:, None], -self._signs, self._signs)
+        self._fixed = float(pi * self._signs[grows].sum())
+
+    def without(self, root: complex) -> _OnAxis:
+        kept = self.roots != root
+        return _OnAxis(self.roots[kept], int(np.sum(kept & (self._signs[:, 0] > 0))))
+
+    def at(self, w: Real) -> tuple[Real, Real]:
+        im = w - self._im
+        with np.errstate(divide="ignore"):
+            size = (self._signs * np.log(self._re * self._re + im * im)).sum(axis=0) / 2
+        return size, self._fixed + (self._turns * np.arctan2(im, self._re)).sum(axis=0)
 
 
 class Sampled:
-    """A pulse transfer function at ``z = exp(jwT)``, 0 < wT <= pi.
+    """A product of pulse transfer functions of one period at ``z = exp(jwT)``, 0 < wT <= pi.
 
     Attributes
     ----------
@@ -130,62 +151,65 @@ class Sampled:
         Unwrapped phase at half the sample rate, a multiple of pi; a pole at z = -1 is passed outside.
     """
 
-    def __init__(self, pulse: PulseTransferFunction) -> None:
-        self._period_s = float(pulse.period_s)
-        gain = pulse.gain
-        self._gain = log_size(gain), 0.0 if gain > 0 else pi
-        self._zeros, self._poles = (_OnCircle(every(roots)) for roots in (pulse.zeros, pulse.poles))
-        away = [d for d in (*every(pulse.zeros), *every(pulse.poles)) if d not in (0, -1)]
+    def __init__(self, *pulses: PulseTransferFunction) -> None:
+        self._period_s = float(pulses[0].period_s)
+        gains = [pulse.gain for pulse in pulses]
+        self._gain = sum(map(log_size, gains)), pi * sum(gain < 0 for gain in gains)
+        zeros, poles = ([d for pulse in pulses for d in every(getattr(pulse, kind))] for kind in ("zeros", "poles"))
+        self._factors = _OnCircle(_array([*zeros, *poles]), len(zeros))
+        away = [d for d in (*zeros, *poles) if d not in (0, -1)]
         self.features = _array([logarithm(d) / self._period_s for d in away])
-        self.growing = self._poles.outside
-        k = pulse.zeros_minus_poles_at_one
-        self.start = Start(k, log_size(pulse.low_frequency_gain), _multiple_of_pi(self._phase_without(0.0, 0j)))
+        self.growing = self._factors.poles_outside
+        self.start = Start(
+            sum(pulse.zeros_minus_poles_at_one for pulse in pulses),
+            sum(log_size(pulse.low_frequency_gain) for pulse in pulses),
+            _multiple_of_pi(self._phase_without(0.0, 0j)),
+        )
         # (z + 1) at z = -1 - 0 has the phase pi.
-        turns = pi * (self._zeros.count(_AT_NYQUIST) - self._poles.count(_AT_NYQUIST))
-        self.end_phase = _multiple_of_pi(self._phase_without(pi, complex(_AT_NYQUIST)) + turns)
+        turns = pi * (zeros.count(_AT_NYQUIST) - poles.count(_AT_NYQUIST))
+        self.end_phase = _multiple_of_pi(self._phase_without(pi, _AT_NYQUIST) + turns)
 
     def at(self, w: Real) -> tuple[Real, Real]:
         """``ln |Gd(exp(jwT))|`` and phase."""
         half = w * (self._period_s / 2)
         sine = np.sin(half)
-        turned = -2 * sine * sine + 2j * sine * np.cos(half)
-        over, lead = self._zeros.at(2 * half, turned)
-        under, lag = self._poles.at(2 * half, turned)
-        return self._gain[0] + over - under, self._gain[1] + lead - lag
+        size, turn = self._factors.at(2 * half, -2 * sine * sine + 2j * sine * np.cos(half))
+        return self._gain[0] + size, self._gain[1] + turn
 
     def _phase_without(self, angle: float, excluded: complex) -> float:
-        at = np.array([angle]), np.array([-1 + np.exp(1j * angle) if angle else 0j])
-        lead, lag = (roots.without(excluded).at(*at)[1] for roots in (self._zeros, self._poles))
-        return self._gain[1] + float(lead[0] - lag[0])
+        turned = np.array([-2.0 + 0j if angle else 0j])
+        return self._gain[1] + float(self._factors.without(excluded).at(np.array([angle]), turned)[1][0])
 
 
 class _OnCircle:
-    """Factors ``z - root`` on the unit circle, the roots given as ``z - 1``."""
+    """Factors ``z - root`` on the unit circle, the roots given as ``z - 1``, the zeros first."""
 
-    def __init__(self, deltas: Sequence[complex]) -> None:
-        self._deltas = _array(deltas)[:, None]
-        excess = 2 * self._deltas.real + np.abs(self._deltas) ** 2
-        self._grows = excess > 0
-        self.outside = int(np.sum(self._grows))
+    def __init__(self, deltas: Complex, zeros: int) -> None:
+        self._deltas = deltas
+        self._signs = np.where(np.arange(len(deltas)) < zeros, 1.0, -1.0)
+        excess = 2 * deltas.real + np.abs(deltas) ** 2
+        grows = excess > 0
+        self.poles_outside = int(np.sum(grows & (self._signs < 0)))
         # exp(j angle) - root = exp(j angle) (1 - root exp(-j angle)) inside, -root (1 - exp(j angle)/root) outside:
         # the bracket stays right of the imaginary axis.
-        self._turned = np.where(self._grows, -1 / np.where(self._grows, 1 + self._deltas, 1), 1)
-        self._fixed = float(np.sum(np.where(self._grows, np.angle(-1 - self._deltas), 0)))
-        self._inside = len(deltas) - self.outside
-
-    def count(self, delta: float) -> int:
-        return int(np.sum(self._deltas == delta))
+        self._grows = grows[:, None]
+        self._turned = np.where(grows, -1 / np.where(grows, 1 + deltas, 1), 1)[:, None]
+        self._fixed = float(np.sum(np.where(grows, self._signs * np.angle(-1 - deltas), 0)))
+        self._inside = float(np.sum(self._signs[~grows]))
 
     def without(self, delta: complex) -> _OnCircle:
-        return _OnCircle([complex(d) for d in self._deltas.ravel() if d != delta])
+        kept = self._deltas != delta
+        return _OnCircle(self._deltas[kept], int(np.sum(kept & (self._signs > 0))))
 
     def at(self, angle: Real, turned: Complex) -> tuple[Real, Real]:
         """``ln |.|`` and phase of the product at ``exp(j angle) = 1 + turned``."""
-        factor = turned - self._deltas
+        factor = (turned - self._deltas[:, None]) * np.where(self._grows, self._turned, np.conj(1 + turned))
         with np.errstate(divide="ignore"):
-            size = np.log(np.abs(factor)).sum(axis=0)
-        bracket = factor * np.where(self._grows, self._turned, np.conj(1 + turned))
-        return size, self._fixed + self._inside * angle + np.angle(bracket).sum(axis=0)
+            size = np.log(np.abs(factor))
+        # What is outside was divided by its root.
+        signs = self._signs[:, None]
+        size = (signs * (size - np.log(np.abs(self._turned)))).sum(axis=0)
+        return size, self._fixed + self._inside * angle + (signs * np.angle(factor)).sum(axis=0)
 
 
 class Delay:
@@ -228,9 +252,6 @@ def phase_at(part: Part, w: float) -> float:
     return float(part.at(np.array([w]))[1][0])
 
 
-_ZERO: Real = np.zeros(1)
-
-
 def _factor(root: complex, s: Complex) -> Complex:
     return 1 - s / root if root else s
 
@@ -241,16 +262,3 @@ def _array(roots: Sequence[complex]) -> Complex:
 
 def _multiple_of_pi(phase: float) -> float:
     return pi * round(phase / pi)
-
-
-def _size_in_s(roots: Complex, w: Real) -> Any:
-    re, im = roots.real[:, None], w - roots.imag[:, None]
-    with np.errstate(divide="ignore"):
-        return 0.5 * np.log(re * re + im * im).sum(axis=0)
-
-
-def _phase_in_s(roots: Complex, w: Real) -> Any:
-    """Phase of ``prod(jw - root)``: a root right of the axis turns the other way."""
-    re, im = roots.real[:, None], w - roots.imag[:, None]
-    angle = np.arctan2(im, np.abs(re))
-    return np.where(re > 0, pi - angle, angle).sum(axis=0)

@@ -7,7 +7,6 @@ long dead time makes its degree too high are encirclements counted instead.
 
 from __future__ import annotations
 
-from fractions import Fraction
 from functools import cached_property
 from math import exp, inf, pi
 
@@ -20,6 +19,7 @@ from realize.loop.grid import graded, with_turns
 from realize.loop.held import HeldPlant
 from realize.loop.margins import Ends, GainCrossover, Margins, Scan, encirclements, margins
 from realize.loop.response import Delay, Part, Real, Sampled, combined
+from realize.methods.conversion import CARRIED_BITS
 from realize.transfer import PulseTransferFunction
 
 #: Degree of the closed-loop polynomial up to which it is decided by recursion: 64^2/2 steps take some 10 ms.
@@ -42,12 +42,12 @@ class SampledLoop:
         self.controller = controller
         self.held = held
         self.period_s = held.period_s
-        self._factors = Sampled(controller), _sampled_plant(held)
+        self._rational = Sampled(controller, held.pulse)
 
     @cached_property
     def parts(self) -> tuple[Part, ...]:
-        """Factors of the open loop: controller, plant, whole samples of delay."""
-        return (*self._factors, Delay(float(self.held.whole * self.period_s)))
+        """Factors of the open loop: controller and plant, whole samples of delay."""
+        return (self._rational, Delay(float(self.held.whole * self.period_s)))
 
     def response(self, w_rad_s: Real) -> tuple[Real, Real]:
         """``ln |L|`` and unwrapped phase in rad, up to half the sample rate."""
@@ -55,7 +55,7 @@ class SampledLoop:
 
     def controller_response(self, w_rad_s: Real) -> tuple[Real, Real]:
         """``ln |C|`` and unwrapped phase in rad."""
-        return self._factors[0].at(w_rad_s)
+        return Sampled(self.controller).at(w_rad_s)
 
     @property
     def grid(self) -> Real:
@@ -83,9 +83,7 @@ class SampledLoop:
     def margins(self) -> Margins:
         """Gain, phase and delay margins, and the sensitivity peak."""
         scan = self._scan
-        return margins(
-            scan, self.crossovers, scan.phase_crossovers(), self._ends, stable=self.verdict.is_stable
-        )
+        return margins(scan, self.crossovers, scan.phase_crossovers(), self._ends, self.verdict.stability)
 
     @property
     def _degree(self) -> int:
@@ -93,15 +91,15 @@ class SampledLoop:
 
     def _closed(self, bits: int, hidden: int) -> list[circle.Ball]:
         """``z^d A_c A_p + B_c B_p`` less a known factor ``(z - 1)^hidden``."""
-        conversion = self.held.conversion
+        conversion, carried = self.held.conversion, max(bits, CARRIED_BITS)
         below = circle.product(
             circle.rational_balls(self.controller.denominator, bits),
-            circle.balls(conversion.denominator(bits), bits),
+            circle.balls(conversion.denominator(carried), bits),
             bits,
         )
         above = circle.product(
             circle.rational_balls(self.controller.numerator, bits),
-            circle.balls(conversion.numerator(bits), bits),
+            circle.balls(conversion.numerator(carried), bits),
             bits,
         )
         return circle.without_ones(circle.total(below + [(0, 0)] * self.held.whole, above), hidden)
@@ -110,39 +108,32 @@ class SampledLoop:
         turns = encirclements(self.crossovers, self._ends)
         if turns is None:
             return Verdict(MARGINAL, "the Nyquist curve passes through the critical point")
-        growing = sum(part.growing for part in self._factors) - turns
+        growing = self._rational.growing - turns
         return Verdict(UNSTABLE if growing else STABLE, f"encirclements counted: {growing} growing modes")
 
     @cached_property
     def _ends(self) -> Ends:
-        order = sum(part.start.order for part in self._factors)
-        size = sum(part.start.log_gain for part in self._factors)
+        order, size, start_phase = self._rational.start
         start = size if order == 0 else (inf if order < 0 else -inf)
-        start_phase = sum(part.start.phase for part in self._factors)
         nyquist = pi / float(self.period_s)
         end = float(self.response(np.array([nyquist]))[0][0])
-        end_phase = sum(part.end_phase for part in self._factors) - pi * self.held.whole
+        end_phase = self._rational.end_phase - pi * self.held.whole
         return Ends((start, start_phase), (end, end_phase), nyquist)
 
     @cached_property
     def _scan(self) -> Scan:
         nyquist = pi / float(self.period_s)
-        features = np.concatenate([part.features for part in self._factors])
+        features = self._rational.features
         low = min(self._lowest(), nyquist) / BEYOND
         grid = graded(features, low, nyquist)
         return Scan(self.response, with_turns(grid, float(self.held.whole * self.period_s), low, nyquist))
 
     def _lowest(self) -> float:
         """Lowest frequency at which anything happens."""
-        sizes = np.abs(np.concatenate([part.features for part in self._factors]))
-        order = sum(part.start.order for part in self._factors)
-        size = sum(part.start.log_gain for part in self._factors)
+        sizes = np.abs(self._rational.features)
+        order, size, _ = self._rational.start
         marks = [float(sizes.min(initial=inf))] + ([exp(-size / order)] if order else [])
         return min(marks)
-
-
-def _sampled_plant(held: HeldPlant) -> Sampled:
-    return Sampled(held.pulse)
 
 
 def _at_one(*groups: tuple[object, ...]) -> int:

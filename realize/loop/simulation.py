@@ -7,13 +7,14 @@ follows its poles, and its highest point refined. Figures are measured to roundi
 
 from __future__ import annotations
 
-from math import inf, log
+from math import log
 from typing import NamedTuple
 
 import numpy as np
 
 from realize.checks.modes import every, logarithm
 from realize.loop.between import WithinPeriod, figures_between, within_period
+from realize.loop.blocks import moved_in_blocks, starting
 from realize.loop.figures import StepFigures, final_value
 from realize.loop.response import Complex, Whole
 from realize.loop.sampled import SampledLoop
@@ -23,21 +24,27 @@ from realize.transfer import PulseTransferFunction
 #: Decay that ends the simulation: exp(-18) = 1.5e-8 of a step, a hundredth of 1e-4 points.
 _LIFETIME = 18.0
 
-#: Up to here every sample is looked at; beyond, times in this ratio.
-_ALL_SAMPLES = 4096
-_TIME_RATIO = 1.002
+#: Samples that are all looked at.
+_FIRST_SAMPLES = 64
+
+#: Turn, in radians of the fastest live mode, from one sample that is looked at to the next: the parabola through three
+#: then misses a peak by less than 1e-5 of the mode.
+_TURN = 0.25
+
+#: Samples looked at in this way at the most; beyond, times in this ratio.
+_MOST_LOOKED_AT = 16384
+_TIME_RATIO = 1.005
+
+#: Highest peaks that are closed in on, and parts into which the stretch around each is divided, until it is down to
+#: neighbouring samples.
+_PEAKS = 4
+_BETWEEN = 32
 
 #: Samples beyond which a loop is not followed: the modes left are slower than 1e8 samples.
 _MOST_SAMPLES = 2**40
 
-#: Samples of delay up to which they are states of one map for each sample; beyond, a whole block goes at once, which
-#: may be as long as the delay.
+#: Samples of delay up to which they are states of one map for each sample; beyond, a whole block goes at once.
 _DENSE_DELAY = 8
-_MOST_BLOCK = 64
-
-#: Blocks followed at the most, and change of the controller's output, in units of its greatest, below which it rests.
-_MOST_BLOCKS = 1 << 14
-_AT_REST = 1e-9
 
 
 def step_figures(loop: SampledLoop) -> StepFigures | None:
@@ -51,7 +58,7 @@ def step_figures(loop: SampledLoop) -> StepFigures | None:
     if final is None or not loop.verdict.is_stable:
         return None
     within = within_period(loop.held)
-    samples, moving = _run(loop, within)
+    samples, moving = _run(loop, within, final)
     return figures_between(loop.held, within, samples, moving, final)
 
 
@@ -68,27 +75,67 @@ class _Map(NamedTuple):
     rows: Complex
 
 
-def _run(loop: SampledLoop, within: WithinPeriod) -> tuple[Whole, Complex]:
+def _run(loop: SampledLoop, within: WithinPeriod, final: float) -> tuple[Whole, Complex]:
     """Samples, and for each the plant's states and input at the change of the input that follows it by the delay."""
     if loop.held.whole > _DENSE_DELAY:
-        return _in_blocks(loop, within)
-    change, start, rows = _dense(loop, within)
-    last = _last_sample(change[:-1, :-1])
-    first = sequence(change, start, min(last, _ALL_SAMPLES) + 1)
-    samples = np.arange(first.shape[1])
-    if last > _ALL_SAMPLES:
-        count = int(log(last / _ALL_SAMPLES) / log(_TIME_RATIO)) + 1
-        later = np.unique(np.floor(_ALL_SAMPLES * _TIME_RATIO ** np.arange(1, count + 1)).astype(np.int64))
-        samples = np.concatenate([samples, later])
-        first = np.concatenate([first, moved(change, start, later)], axis=1)
-    return samples, product(rows, first)
+        control = _pulse_states(loop.controller)
+        moving = moved_in_blocks(control, within, loop.held.whole, starting(control, loop.held.whole))
+        return np.arange(moving.shape[1]), moving
+    mapped = _dense(loop, within)
+    samples = _looked_at(np.asarray(np.linalg.eigvals(mapped.change[:-1, :-1]), complex))
+    consecutive = int(np.argmax(np.append(np.diff(samples), 2) > 1)) + 1
+    moving = product(mapped.rows, sequence(mapped.change, mapped.start, consecutive))
+    if consecutive == len(samples):
+        return samples, moving
+    start = samples[:consecutive], moving
+    return _closed_in(mapped, *_merged(mapped, *start, samples[consecutive:]), within.read[0] / final)
 
 
-def _last_sample(change: Complex) -> int:
-    """Samples until the slowest mode has died."""
-    rates = [-logarithm(complex(delta)).real for delta in np.linalg.eigvals(change)]
-    slowest = min(rates, default=inf)
-    return int(min(_LIFETIME / slowest, _MOST_SAMPLES)) + 2 if slowest > 0 else _MOST_SAMPLES
+def _looked_at(deltas: Complex) -> Whole:
+    """Samples to look at, by the modes of the closed loop, given as ``z - 1``: each as long as it lives."""
+    logs = [logarithm(complex(delta)) for delta in deltas]
+    lives = sorted((min(_LIFETIME / max(-x.real, 1e-300), _MOST_SAMPLES), abs(x)) for x in logs)
+    looked_at, last = [np.arange(_FIRST_SAMPLES + 1)], _FIRST_SAMPLES
+    for i, (life, _) in enumerate(lives):
+        end = int(life) + 2
+        if end > last:
+            stride = max(1, int(_TURN / max(speed for _, speed in lives[i:])))
+            looked_at.append(_spread(last, end, stride))
+            last = end
+    return np.unique(np.concatenate(looked_at))
+
+
+def _spread(first: int, last: int, stride: int) -> Whole:
+    """Samples in equal strides as long as there are not too many, then in equal ratios."""
+    even = min(last, first + stride * _MOST_LOOKED_AT)
+    samples = np.arange(first, even + stride, stride)
+    if even == last:
+        return samples
+    count = int(log(last / even) / log(_TIME_RATIO)) + 1
+    return np.concatenate([samples, np.floor(even * _TIME_RATIO ** np.arange(1, count + 1)).astype(np.int64)])
+
+
+def _merged(mapped: _Map, samples: Whole, moving: Complex, added: Whole) -> tuple[Whole, Complex]:
+    every_one = np.concatenate([samples, added])
+    order = np.argsort(every_one, kind="stable")
+    columns = product(mapped.rows, moved(mapped.change, mapped.start, added))
+    return every_one[order], np.concatenate([moving, columns], axis=1)[:, order]
+
+
+def _closed_in(mapped: _Map, samples: Whole, moving: Complex, height: Complex) -> tuple[Whole, Complex]:
+    """Add samples around the highest peaks until each has both its neighbours."""
+    while True:
+        value = product(height[None], moving)[0].real
+        i = 1 + np.flatnonzero((value[1:-1] >= value[:-2]) & (value[1:-1] >= value[2:]))
+        rise, fall = value[i] - value[i - 1], value[i] - value[i + 1]
+        # Vertex of the parabola through three samples, as if they were evenly spaced.
+        top = value[i] + (rise - fall) ** 2 / (8 * np.maximum(rise + fall, 5e-324))
+        highest = i[np.argsort(-top, kind="stable")[:_PEAKS]]
+        around = [np.linspace(samples[k - 1], samples[k + 1], _BETWEEN + 1).astype(np.int64) for k in highest]
+        added = np.setdiff1d(np.concatenate(around), samples) if around else samples[:0]
+        if not len(added):
+            return samples, moving
+        samples, moving = _merged(mapped, samples, moving, added)
 
 
 def _dense(loop: SampledLoop, within: WithinPeriod) -> _Map:
@@ -119,81 +166,5 @@ def _dense(loop: SampledLoop, within: WithinPeriod) -> _Map:
         change[line + i, line + i] -= 1
         change[line + i] += np.eye(size)[line + i + 1] if i + 1 < d else command
     rows = np.vstack([np.eye(size, dtype=complex)[plant], now])
-    return _Map(change, _start(control, n, d), rows)
-
-
-def _start(control: States, n: int, d: int) -> Complex:
-    """Everything at rest until the first change of the input arrives; the controller has seen a constant error of 1."""
-    state = np.zeros(control.order, complex)
-    line = np.zeros(d, complex)
-    for i in range(d):
-        line[i] = control.c @ state + control.d
-        state = state + control.a @ state + control.b
-    return np.concatenate([np.zeros(n, complex), line, state, [1.0]])
-
-
-def _in_blocks(loop: SampledLoop, within: WithinPeriod) -> tuple[Whole, Complex]:
-    """Long delays: the inputs of a whole block are known before it begins."""
-    control, n, d = _pulse_states(loop.controller), len(within.measured) - 1, loop.held.whole
-    start = _start(control, n, d)
-    length = min(d, _MOST_BLOCK)
-    lifted = _lifted(*_one_sample(control, within), n, length)
-    state, pending = np.concatenate([start[:n], start[n + d :]]), start[n : n + d]
-    blocks: list[Complex] = []
-    quiet, reference, size = 0, 0.0, 0.0
-    for _ in range(_MOST_BLOCKS):
-        block, pending = pending[:length], pending[length:]
-        out = (lifted.from_state @ state + lifted.from_input @ block).reshape(length, n + 1)
-        state = lifted.power @ state + lifted.reach @ block
-        blocks.append(np.vstack([out[:, :n].T, block]))
-        pending = np.concatenate([pending, out[:, n]])
-        # At rest when no input has moved from one and the same value for longer than the delay.
-        size = max(size, float(np.abs(out[:, n]).max()))
-        if float(np.abs(out[:, n] - reference).max()) > _AT_REST * size:
-            quiet, reference = 0, out[-1, n]
-        quiet += length
-        if quiet > 3 * d + _MOST_BLOCK:
-            break
-    moving = np.concatenate(blocks, axis=1)
-    return np.arange(moving.shape[1]), moving
-
-
-class _Lifted(NamedTuple):
-    """A block of samples as one map from the state before it and its inputs."""
-
-    from_state: Complex
-    from_input: Complex
-    power: Complex
-    reach: Complex
-
-
-def _one_sample(control: States, within: WithinPeriod) -> tuple[Complex, Complex, Complex, complex]:
-    """``next = F state + g input``, ``command = h state + j input``: plant and sensor, controller, the constant 1."""
-    n, m = len(within.measured) - 1, control.order
-    plant, own, one = slice(0, n), slice(n, n + m), n + m
-    f = np.eye(n + m + 1, dtype=complex)
-    f[plant, plant] += within.to_end[:n, :n]
-    f[own, own] += control.a
-    f[own, plant], f[own, one] = -np.outer(control.b, within.measured[:n]), control.b
-    g = np.concatenate([within.to_end[:n, n], -control.b * within.measured[n], [0]])
-    h = np.concatenate([-control.d * within.measured[:n], control.c, [control.d]])
-    return f, g, h, -control.d * within.measured[n]
-
-
-def _lifted(f: Complex, g: Complex, h: Complex, j: complex, n: int, length: int) -> _Lifted:
-    """Plant states and commands of a block, sample by sample."""
-    read = np.vstack([np.eye(len(g), dtype=complex)[:n], h])
-    at_once = np.append(np.zeros(n, complex), j)
-    power = np.eye(len(g), dtype=complex)
-    from_state, answers, reach = [], [at_once], []
-    for _ in range(length):
-        from_state.append(read @ power)
-        reach.append(power @ g)
-        answers.append(read @ reach[-1])
-        power = f @ power
-    from_input = np.zeros((length, n + 1, length), complex)
-    for i in range(length):
-        from_input[i, :, : i + 1] = np.array(answers[i::-1]).T
-    return _Lifted(
-        np.concatenate(from_state), from_input.reshape(-1, length), power, np.array(reach[::-1]).T
-    )
+    state, under_way = starting(control, d)
+    return _Map(change, np.concatenate([np.zeros(n, complex), under_way, state, [1.0]]), rows)

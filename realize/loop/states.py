@@ -71,14 +71,14 @@ def held_change(system: States, time: float) -> Complex:
     n = system.order
     m = np.zeros((n + 1, n + 1), complex)
     m[:n, :n], m[:n, n] = system.a, system.b
-    return exponential_less_one(m * time)
+    return exponential_less_one(m * complex(time))
 
 
 def exponential_less_one(x: Complex) -> Complex:
     """``exp(x) - 1`` by its series and doubling: ``D`` becomes ``2 D + D D``, which keeps what is small."""
     norm = float(np.abs(x).sum(axis=0).max(initial=0.0))
     halvings = max(0, ceil(log2(2 * norm))) if norm > 0 else 0
-    small = np.ldexp(1.0, -halvings) * x
+    small: Complex = x * complex(0.5**halvings)
     total = small
     for i in range(_TERMS, 1, -1):
         total = small + small @ total / i

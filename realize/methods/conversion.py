@@ -30,6 +30,10 @@ _CARRIED_RELATIVE_BITS = 160
 #: Values below the least subnormal of float64 count as 0: nothing downstream can hold them.
 _NEGLIGIBLE_BITS = 1100
 
+#: A numerator whose last coefficients are below this fraction of the largest has zeros at z = 0 instead: to a
+#: recursion in float64 they are the same by a hundred orders of magnitude.
+_AT_ORIGIN_BITS = 400
+
 #: ``exp(709)`` is the largest power of e that float64 can hold, to within a factor of 2.
 MOST_GROWTH = 709
 
@@ -157,9 +161,24 @@ def _carried_with_shift(conversion: Conversion) -> tuple[poly.Rationals, poly.Ra
     lead_zeros = _leading_zeros(conversion.structural)
     known |= {i: Fraction(0) for i in range(lead_zeros)}
     kept = poly.trimmed(_with_structure(_carried(shifted, known).midpoints(), known))
+    kept = _with_zeros_at_origin(kept, conversion.zeros_at_one)
     numerator = poly.shift(kept, Fraction(-1)) if kept else ()
     padded = (Fraction(0),) * (n + 1 - len(numerator)) + numerator
     return _with_structure(padded, conversion.structural), kept
+
+
+def _with_zeros_at_origin(p: poly.Rationals, zeros_at_one: int) -> poly.Rationals:
+    """Put zeros that no format can tell from z = 0 there, exactly; ``p`` is in powers of ``z - 1``.
+
+    They come from poles that decay within a fraction of a period, and crowd together seen from z = 1.
+    """
+    if not p:
+        return p
+    free = poly.shift(p[: len(p) - zeros_at_one], Fraction(-1))
+    least = max(abs(c) for c in free) / (1 << _AT_ORIGIN_BITS)
+    last = max(i for i, c in enumerate(free) if abs(c) > least)
+    moved = free[: last + 1] + (Fraction(0),) * (len(free) - 1 - last)
+    return poly.shift(moved, Fraction(1)) + p[len(p) - zeros_at_one :]
 
 
 def _leading_zeros(structural: Mapping[int, Fraction]) -> int:

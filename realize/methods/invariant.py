@@ -15,7 +15,7 @@ from realize.algebra.elementary import exponential
 from realize.algebra.enclosure import Enclosure
 from realize.algebra.exponential import image_polynomial, normalised, sampled_response
 from realize.algebra.roots import Disc, Root
-from realize.methods.conversion import Conversion, mapped, refuse_growth
+from realize.methods.conversion import Conversion, Enclose, mapped, refuse_growth
 from realize.transfer import TransferFunction
 
 
@@ -49,9 +49,7 @@ def ramp_invariant(transfer: TransferFunction, period_s: Fraction, exact_at_rad_
     return _exponential_conversion(transfer, period_s, numerator, zeros_at_one=2, structural={})
 
 
-def impulse_invariant(
-    transfer: TransferFunction, period_s: Fraction, exact_at_rad_s: Fraction | None
-) -> Conversion:
+def impulse_invariant(transfer: TransferFunction, period_s: Fraction, exact_at_rad_s: Fraction | None) -> Conversion:
     """``D + T (Z{g(k T)} - g(0+)/2)``: keeps the impulse response, aliases.
 
     Source: Jackson, IEEE Signal Processing Letters 7(10), 2000; Mecklenbraeuker, Signal Processing 80(8), 2000.
@@ -93,7 +91,7 @@ def exponential_denominator(transfer: TransferFunction, period_s: Fraction, bits
 def _exponential_conversion(
     transfer: TransferFunction,
     period_s: Fraction,
-    numerator: object,
+    numerator: Enclose,
     *,
     zeros_at_one: int,
     structural: dict[int, Fraction],
@@ -101,7 +99,7 @@ def _exponential_conversion(
 ) -> Conversion:
     refuse_growth(transfer.poles, period_s)
     return Conversion(
-        lru_cache(maxsize=8)(numerator),  # type: ignore[arg-type]
+        lru_cache(maxsize=8)(numerator),
         lambda bits: exponential_denominator(transfer, period_s, bits),
         mapped_exponentially(transfer.poles, period_s),
         None,
@@ -122,9 +120,7 @@ def _monic_numerator(transfer: TransferFunction, period_s: Fraction) -> poly.Rat
     return tuple(lead * c for c in normalised(transfer.numerator, period_s))
 
 
-def _response(
-    transfer: TransferFunction, integrations: int, period_s: Fraction, count: int, bits: int
-) -> Enclosure:
+def _response(transfer: TransferFunction, integrations: int, period_s: Fraction, count: int, bits: int) -> Enclosure:
     numerator = _monic_numerator(transfer, period_s)
     return sampled_response(numerator, transfer.denominator, integrations, period_s, count, bits)
 

@@ -27,16 +27,12 @@ _BLEND = Fraction(7, 8)
 _VANISHING_BITS = 600
 
 
-def forward_difference(
-    transfer: TransferFunction, period_s: Fraction, exact_at_rad_s: Fraction | None
-) -> Conversion:
+def forward_difference(transfer: TransferFunction, period_s: Fraction, exact_at_rad_s: Fraction | None) -> Conversion:
     """``s = (z - 1)/T`` (Euler): explicit; stable poles may leave the unit circle."""
     return _theta_method(transfer, period_s, Fraction(0))
 
 
-def backward_difference(
-    transfer: TransferFunction, period_s: Fraction, exact_at_rad_s: Fraction | None
-) -> Conversion:
+def backward_difference(transfer: TransferFunction, period_s: Fraction, exact_at_rad_s: Fraction | None) -> Conversion:
     """``s = (z - 1)/(T z)`` (Euler): implicit; adds damping."""
     return _theta_method(transfer, period_s, Fraction(1))
 
@@ -46,16 +42,12 @@ def bilinear(transfer: TransferFunction, period_s: Fraction, exact_at_rad_s: Fra
     return _theta_method(transfer, period_s, Fraction(1, 2))
 
 
-def blended_difference(
-    transfer: TransferFunction, period_s: Fraction, exact_at_rad_s: Fraction | None
-) -> Conversion:
+def blended_difference(transfer: TransferFunction, period_s: Fraction, exact_at_rad_s: Fraction | None) -> Conversion:
     """``s = (8/(7 T))(z - 1)/(z + 1/7)`` (Al-Alaoui 1993): between backward difference and bilinear."""
     return _theta_method(transfer, period_s, _BLEND)
 
 
-def bilinear_prewarped(
-    transfer: TransferFunction, period_s: Fraction, exact_at_rad_s: Fraction | None
-) -> Conversion:
+def bilinear_prewarped(transfer: TransferFunction, period_s: Fraction, exact_at_rad_s: Fraction | None) -> Conversion:
     """``s = (w/tan(w T/2))(z - 1)/(z + 1)``: bilinear, exact at w with ``0 < w T < pi``."""
     assert exact_at_rad_s is not None
     angle = exact_at_rad_s * period_s

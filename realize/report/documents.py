@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from fractions import Fraction
 from math import isfinite, pi
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from realize.algebra.expression import exact_text
 from realize.algebra.roots import Root
@@ -17,6 +17,9 @@ from realize.firmware.job import Emitted
 from realize.realizability import Assessment
 from realize.rolloff import Proposal
 from realize.workflow import Comparison, MethodResult
+
+if TYPE_CHECKING:
+    from realize.loop_design import LoopResult
 
 SCHEMA = "realize/1"
 
@@ -95,19 +98,34 @@ def method_document(result: MethodResult) -> Document:
     """One method: coefficients, stored sections, checks."""
     document: Document = {"method": result.method, "refused": result.refused, "acceptable": result.acceptable}
     document |= _coefficients(result)
-    return document | {
-        "stability": result.stability,
-        "checks": [check_document(check) for check in result.checks],
-        "accepted": [
-            {
-                "check": c.check,
-                "limit": None if a.limit is None else exact_text(a.limit),
-                "because": a.because,
-                "by": a.by,
-            }
-            for c, a in result.accepted
-        ],
-        "notes": list(result.notes),
+    return (
+        document
+        | {
+            "stability": result.stability,
+            "checks": [check_document(check) for check in result.checks],
+            "accepted": [
+                {
+                    "check": c.check,
+                    "limit": None if a.limit is None else exact_text(a.limit),
+                    "because": a.because,
+                    "by": a.by,
+                }
+                for c, a in result.accepted
+            ],
+            "notes": list(result.notes),
+        }
+        | (_loop(result.loop) if result.loop else {})
+    )
+
+
+def _loop(loop: LoopResult) -> Document:
+    """The loops around a method's controller."""
+    ledger = loop.ledger
+    return {
+        "loop": list(loop.entries),
+        "phase_ledger_deg": None if ledger is None else dict(ledger.items) | {"total": ledger.total_deg},
+        "phase_ledger_at_rad_s": None if ledger is None else ledger.w_rad_s,
+        "jitter_margin_s": None if loop.jitter is None else loop.jitter.jitter_s,
     }
 
 

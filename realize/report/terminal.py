@@ -6,9 +6,10 @@ digits.
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from math import log, pi
 from textwrap import fill
+from typing import TYPE_CHECKING, Any
 
 from realize.algebra.expression.printing import format_transfer
 from realize.algebra.roots import Root
@@ -19,6 +20,9 @@ from realize.realizability import Assessment
 from realize.report.documents import natural_frequency_and_damping
 from realize.rolloff import Proposal, rolloff_toml
 from realize.workflow import Comparison, MethodResult
+
+if TYPE_CHECKING:
+    from realize.loop_design import LoopResult
 
 WIDTH = 100
 
@@ -63,13 +67,13 @@ def assess_text(design: Design, assessment: Assessment) -> str:
     blocks = [_verdict(design, assessment), _transfer_block(design, assessment)]
     blocks += _roots_block("Poles", assessment.transfer.poles), _roots_block("Zeros", assessment.transfer.zeros)
     if assessment.terms:
-        blocks.append(_heading("What makes it improper") + _list(term.text for term in assessment.terms))
+        blocks.append(heading("What makes it improper") + bullets(term.text for term in assessment.terms))
         blocks.append(_proposals_block(assessment.proposals))
     if assessment.notes:
-        blocks.append(_heading("Notes") + _list(assessment.notes))
+        blocks.append(heading("Notes") + bullets(assessment.notes))
     if assessment.proposals:
         blocks.append(
-            _heading("To take the first proposal, add to the design file") + rolloff_toml(assessment.proposals[0])
+            heading("To take the first proposal, add to the design file") + rolloff_toml(assessment.proposals[0])
         )
     return "\n".join(blocks)
 
@@ -79,12 +83,12 @@ def compare_text(comparison: Comparison) -> str:
     blocks = [_comparison_verdict(comparison), _setting(comparison), _methods_table(comparison.methods)]
     refused = [m for m in comparison.methods if m.refused]
     if refused:
-        blocks.append(_heading("Refused") + _list(f"{m.method}: {m.refused}" for m in refused))
+        blocks.append(heading("Refused") + bullets(f"{m.method}: {m.refused}" for m in refused))
     if comparison.chosen and comparison.chosen.refused is None:
         blocks.append(_checks_block(comparison.chosen))
     if comparison.design.method == "auto" and comparison.recommended:
         blocks.append(
-            _heading("To pin the method, add to the design file") + f'[method]\nname = "{comparison.recommended}"\n'
+            heading("To pin the method, add to the design file") + f'[method]\nname = "{comparison.recommended}"\n'
         )
     return "\n".join(blocks)
 
@@ -100,25 +104,25 @@ def emit_text(comparison: Comparison, chosen: MethodResult, paths: Sequence[str]
         f"{_count(len(chosen.realization.integral), 'integral state')}, "
         f"{_count(len(chosen.realization.sections), 'section')}"
     )
-    blocks = [_wrapped(first), _setting(comparison), _checks_block(chosen)]
+    blocks = [wrapped(first), _setting(comparison), _checks_block(chosen)]
     accepted = [f"{c.check}: {a.because} ({a.by})" for c, a in chosen.accepted]
-    blocks += [_heading("Accepted deviations") + _list(accepted)] if accepted else []
-    blocks.append(_heading(f"Written ({what})") + "".join(f"  {path}\n" for path in paths))
+    blocks += [heading("Accepted deviations") + bullets(accepted)] if accepted else []
+    blocks.append(heading(f"Written ({what})") + "".join(f"  {path}\n" for path in paths))
     if design.method == "auto":
-        blocks.append(_heading("To pin the method, add to the design file") + f'[method]\nname = "{chosen.method}"\n')
-    return "\n".join([*blocks, _wrapped(CAUTION)])
+        blocks.append(heading("To pin the method, add to the design file") + f'[method]\nname = "{chosen.method}"\n')
+    return "\n".join([*blocks, wrapped(CAUTION)])
 
 
 def _verdict(design: Design, assessment: Assessment) -> str:
     if assessment.realizable:
-        return _wrapped(
+        return wrapped(
             f"yes: {design.name} is realizable: at least as many poles as zeros. "
             "Next: `realize compare` shows what each method makes of it."
         )
     best = assessment.proposals[0]
     lost = "" if best.phase_lost_deg is None else f" and costs {best.phase_lost_deg:.3g} deg at the band edge"
     fits = "" if best.within_window else " It lies outside its window: see below."
-    return _wrapped(
+    return wrapped(
         f"no: {design.name} is not realizable: {assessment.terms[0].text}. Add a roll-off pole: the first proposal "
         f"below is at {_hz(float(best.pole_rad_s))}{lost}.{fits}"
     )
@@ -130,15 +134,15 @@ def _transfer_block(design: Design, assessment: Assessment) -> str:
     if len(reduced) <= _LONGEST_TRANSFER and reduced != design.transfer_text:
         lines.append(f"= {reduced}")
     lines.append(f"relative degree {assessment.transfer.relative_degree}")
-    return _heading("Transfer function") + "".join(_wrapped(line, indent="  ") for line in lines)
+    return heading("Transfer function") + "".join(wrapped(line, indent="  ") for line in lines)
 
 
 def _roots_block(title: str, roots: Sequence[Root]) -> str:
     if not roots:
-        return _heading(title) + "  none\n"
+        return heading(title) + "  none\n"
     head = ["natural frequency", "damping ratio", "falls to 1 % in", "s in rad/s", ""]
     rows = [_root_row(root) for root in roots]
-    return _heading(title) + _table([head, *rows])
+    return heading(title) + table([head, *rows])
 
 
 def _root_row(root: Root) -> list[str]:
@@ -168,7 +172,7 @@ def _proposals_block(proposals: Sequence[Proposal]) -> str:
         for p in proposals
     ]
     reasons = [f"{p.placement}, order {p.order}: {reason}" for p in proposals[:1] for reason in p.reasons]
-    return _heading("Roll-off proposals, best first") + _table([head, unit, *rows]) + _list(reasons)
+    return heading("Roll-off proposals, best first") + table([head, unit, *rows]) + bullets(reasons)
 
 
 def _window(window: tuple[float, float | None] | None) -> str:
@@ -181,16 +185,16 @@ def _window(window: tuple[float, float | None] | None) -> str:
 def _comparison_verdict(comparison: Comparison) -> str:
     chosen, name = comparison.chosen, comparison.design.name
     if chosen is None:
-        return _wrapped(f"no: nothing can be emitted for {name}: {comparison.because}.")
+        return wrapped(f"no: nothing can be emitted for {name}: {comparison.because}.")
     if chosen.refused:
-        return _wrapped(f"no: {chosen.method} does not apply to {name}: {chosen.refused}.")
+        return wrapped(f"no: {chosen.method} does not apply to {name}: {chosen.refused}.")
     if comparison.design.method == "auto":
-        return _wrapped(f"yes: {chosen.method} is recommended for {name}: {comparison.because}.")
+        return wrapped(f"yes: {chosen.method} is recommended for {name}: {comparison.because}.")
     if chosen.acceptable:
-        return _wrapped(f"yes: {chosen.method}, which the design names, is within every tolerance.")
+        return wrapped(f"yes: {chosen.method}, which the design names, is within every tolerance.")
     names = ", ".join(dict.fromkeys(check.check for check in chosen.blocking))
     also = f" Recommended instead: {comparison.recommended}." if comparison.recommended else ""
-    return _wrapped(f"no: {chosen.method}, which the design names, is out of tolerance on {names}.{also}")
+    return wrapped(f"no: {chosen.method}, which the design names, is out of tolerance on {names}.{also}")
 
 
 def _setting(comparison: Comparison) -> str:
@@ -206,7 +210,8 @@ def _setting(comparison: Comparison) -> str:
             f"roll-off ({origin}): {p.placement}, order {p.order}, pole at {_hz(float(p.pole_rad_s))}"
             + ("" if p.phase_lost_deg is None else f", {p.phase_lost_deg:.3g} deg lost at the band edge")
         )
-    return "".join(_wrapped(line, indent="  ") for line in lines)
+        lines += [causal.note] if causal.note else []
+    return "".join(wrapped(line, indent="  ") for line in lines)
 
 
 def _methods_table(methods: Sequence[MethodResult]) -> str:
@@ -218,7 +223,7 @@ def _methods_table(methods: Sequence[MethodResult]) -> str:
         "* out but accepted, - undefined (which does not block)."
     )
     out = _out_without_column(methods)
-    return _table([*head, _tolerance_row(methods), *rows], gap=1) + _wrapped(key) + _list(out)
+    return table([*head, _tolerance_row(methods), *rows], gap=1) + wrapped(key) + bullets(out)
 
 
 def _out_without_column(methods: Sequence[MethodResult]) -> list[str]:
@@ -258,8 +263,52 @@ def _checks_block(result: MethodResult) -> str:
     exact = {check.check: check for check in result.checks if check.of == "exact"}
     rows = [_check_row(check, exact.get(check.check, check)) for check in result.stored_checks]
     reasons = [f"{c.check}: {c.reason}" for c in result.stored_checks if c.reason and c.verdict != "within"]
-    block = _heading(f"Checks of {result.method}") + _table([*head, *rows]) + _list(reasons)
-    return block + (_heading("Notes") + _list(result.notes) if result.notes else "")
+    block = heading(f"Checks of {result.method}") + table([*head, *rows]) + bullets(reasons)
+    block += _loop_block(result.loop) if result.loop else ""
+    return block + (heading("Notes") + bullets(result.notes) if result.notes else "")
+
+
+def _loop_block(loop: LoopResult) -> str:
+    """The loops before and after, and where the phase at the crossover went."""
+    head = [
+        ["loop", "stable", "phase", "gain", "gain cut", "delay", "crossover", "maximum", "step"],
+        ["", "", "margin", "margin", "margin", "margin", "", "sensitivity", "overshoot"],
+    ]
+    kinds = ("continuous", "discrete")
+    lines = table([*head, *(_loop_row(kind, entry[kind]) for entry in loop.entries for kind in kinds)]).splitlines()
+    block = "\n" + "\n".join(lines[: len(head)]) + "\n"
+    for i, entry in enumerate(loop.entries):
+        first = len(head) + len(kinds) * i
+        title = [f"  case {entry['case']}:"] if entry["case"] else []
+        block += "\n".join([*title, *lines[first : first + len(kinds)]]) + "\n"
+    if loop.ledger is not None:
+        items = [*loop.ledger.items, ("total", loop.ledger.total_deg)]
+        block += "\n" + heading(f"Phase at the crossover, {_hz(loop.ledger.w_rad_s)}, against the ideal controller")
+        # Adding 0 turns a rounded -0 into 0.
+        block += table([[name, f"{round(value, 2) + 0.0:.2f} deg"] for name, value in items])
+    if loop.jitter is not None:
+        margin = format_engineering(loop.jitter.jitter_s, "s")
+        block += wrapped(f"jitter margin {margin}: delay may vary by so much (sufficient, not necessary)", indent="  ")
+    return block + "\n"
+
+
+def _loop_row(kind: str, figures: Mapping[str, Any]) -> list[str]:
+    stable, crossover, delay = figures["stable"], figures["crossover_rad_s"], figures["delay_margin_s"]
+    return [
+        kind,
+        "-" if stable is None else "yes" if stable else "no",
+        _with_unit(figures["phase_margin_deg"], " deg"),
+        _with_unit(figures["gain_margin_db"], " dB"),
+        _with_unit(figures["gain_reduction_margin_db"], " dB"),
+        "-" if delay is None else format_engineering(delay, "s"),
+        "-" if crossover is None else _in_hz(crossover),
+        _with_unit(figures["maximum_sensitivity"], ""),
+        _with_unit(figures["step_overshoot_percent"], " %"),
+    ]
+
+
+def _with_unit(value: float | None, unit: str) -> str:
+    return "-" if value is None else f"{value:.3g}{unit}"
 
 
 def _check_row(stored: Check, exact: Check) -> list[str]:
@@ -312,20 +361,23 @@ def _count(n: int, noun: str) -> str:
     return f"{n or 'no'} {noun}{'' if n == 1 else 's'}"
 
 
-def _heading(text: str) -> str:
+def heading(text: str) -> str:
+    """A line above a block."""
     return f"{text}\n"
 
 
-def _list(items: Iterable[str]) -> str:
-    return "".join(_wrapped(item, indent="  - ", rest="    ") for item in items)
+def bullets(items: Iterable[str]) -> str:
+    """One item a line, wrapped."""
+    return "".join(wrapped(item, indent="  - ", rest="    ") for item in items)
 
 
-def _wrapped(text: str, indent: str = "", rest: str | None = None) -> str:
+def wrapped(text: str, indent: str = "", rest: str | None = None) -> str:
+    """A paragraph within the width."""
     follow = indent if rest is None else rest
     return fill(text, WIDTH, initial_indent=indent, subsequent_indent=follow, break_on_hyphens=False) + "\n"
 
 
-def _table(rows: Sequence[Sequence[str]], gap: int = 2) -> str:
+def table(rows: Sequence[Sequence[str]], gap: int = 2) -> str:
     """Columns flush left, each as wide as its widest cell, ``gap`` spaces apart."""
     widths = [max(len(row[i]) for row in rows) for i in range(len(rows[0]))]
     lines = ((" " * gap).join(cell.ljust(w) for cell, w in zip(row, widths, strict=True)) for row in rows)

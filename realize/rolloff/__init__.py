@@ -7,13 +7,7 @@ Polynomials are in descending powers of s, frequencies and poles in rad/s, phase
 """
 
 from realize.rolloff.case import PAIR_DAMPING, shapes
-from realize.rolloff.criteria import (
-    CONVERTER_STEP_PERCENT,
-    PHASE_BUDGET_DEG,
-    Circumstances,
-    Known,
-    circumstances,
-)
+from realize.rolloff.criteria import CONVERTER_STEP_PERCENT, PHASE_BUDGET_DEG, Circumstances, Known, circumstances
 from realize.rolloff.figures import decimal_or_quotient, finite_figure
 from realize.rolloff.filters import Split, apply_rolloff, split
 from realize.rolloff.proposal import Proposal, proposal_for, proposals, rolloff_toml

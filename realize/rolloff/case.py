@@ -10,7 +10,7 @@ from realize.algebra.expression.ratio import MAX_DEGREE
 from realize.errors import RealizeError
 from realize.rolloff.criteria import Circumstances
 from realize.rolloff.figures import decimal_or_quotient
-from realize.rolloff.filters import Split, rationals, split
+from realize.rolloff.filters import Split, split
 from realize.transfer import TransferFunction
 
 #: Damping ratio offered for a pair: 1/sqrt(2), the largest bandwidth without a resonance peak, to the four
@@ -120,7 +120,7 @@ def _refusal(key: str, found: str, allowed: str, advice: str) -> RealizeError:
 def _share_at(transfer: TransferFunction, improper: poly.Rationals, w: Fraction) -> complex | None:
     """``P(jw)/C(jw)`` from exact values; ``None`` where ``C(jw)`` is 0, or too near it for a double."""
     part = _at_imaginary(improper, w)
-    n, d = (_at_imaginary(rationals(p), w) for p in (transfer.numerator, transfer.denominator))
+    n, d = (_at_imaginary(poly.rationals(p), w) for p in (transfer.numerator, transfer.denominator))
     top = (part[0] * d[0] - part[1] * d[1], part[0] * d[1] + part[1] * d[0])
     size = n[0] ** 2 + n[1] ** 2
     try:

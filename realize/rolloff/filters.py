@@ -39,8 +39,8 @@ def split(transfer: TransferFunction) -> Split:
     transfer : TransferFunction
         Proper or improper.
     """
-    denominator = rationals(transfer.denominator)
-    quotient, remainder = poly.divide(rationals(transfer.numerator), denominator)
+    denominator = poly.rationals(transfer.denominator)
+    quotient, remainder = poly.divide(poly.rationals(transfer.numerator), denominator)
     constant = quotient[-1] if quotient else Fraction(0)
     return Split(poly.subtract(quotient, poly.trimmed((constant,))), constant, remainder, denominator)
 
@@ -85,8 +85,3 @@ def apply_rolloff(
     return TransferFunction.from_polynomials(
         poly.add(poly.multiply(kept, lag), filtered), poly.multiply(lag, parts.denominator)
     )
-
-
-def rationals(p: poly.Integers) -> poly.Rationals:
-    """The same polynomial over the rationals."""
-    return tuple(Fraction(c) for c in p)

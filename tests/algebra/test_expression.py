@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import re
 import time
 from collections.abc import Callable
@@ -14,8 +15,10 @@ from hypothesis import strategies as st
 
 from realize.algebra import polynomial as poly
 from realize.algebra.expression import (
+    DelayedTransfer,
     decimal_text,
     evaluate_constant,
+    evaluate_delayed_transfer,
     evaluate_transfer,
     exact_text,
     format_polynomial,
@@ -341,7 +344,9 @@ def test_the_decimal_twin_has_20_digits(text: str, digits: str) -> None:
         ("nan", 1, "nan, which is no finite number", "write a number"),
         ("1 + inf", 5, "inf, which is no finite number", "write a number"),
         ("sqrt", 1, "sqrt without parentheses", "sqrt"),
-        ("exp(-s)", 1, "exp", "dead time belongs to a plant and is not supported yet"),
+        ("1 + 2*exp(-0.1*s)", 7, "exp, which makes no ratio", "dead time belongs to the plant: write it under"),
+        ("exp", 1, "exp, which makes no ratio", "dead time belongs to the plant"),
+        ("exq(1)", 1, 'the unknown function "exq"', "a ratio of polynomials"),
         ("kp(s)", 1, "kp used like a function", r"write kp\*\("),
         ("s(1)", 1, "s used like a function", r"write s\*\("),
         ("pi(1)", 1, "pi used like a function", "write"),
@@ -407,8 +412,100 @@ def test_s_is_refused_where_a_constant_is_expected() -> None:
         constant("2*s")
 
 
+@pytest.mark.parametrize(("text", "column"), [("2*exp(1)", 3), ("exp", 1)])
+def test_exp_is_refused_where_a_constant_is_expected(text: str, column: int) -> None:
+    with pytest.raises(RealizeError, match=f"here, column {column}: exp where a constant is expected"):
+        constant(text)
+
+
 def test_names_are_listed_once_and_without_the_reserved_ones() -> None:
-    assert names_in("kp + ki/s + sqrt(kp)*pi", "here") == ("kp", "ki")
+    assert names_in("kp + ki/s + sqrt(kp)*pi*exp(-kp*s)", "here") == ("kp", "ki")
+
+
+# -- dead time ------------------------------------------------------------------------------------------------
+
+
+def with_dead_time(text: str) -> DelayedTransfer:
+    return evaluate_delayed_transfer(text, VALUES, "here", "[plant.values]")
+
+
+@pytest.mark.parametrize(
+    ("text", "ratio_text", "dead_time_s"),
+    [
+        ("kp/(s+1)", "kp/(s+1)", F(0)),
+        ("exp(-0.002*s)", "1", F(2, 1000)),
+        ("exp(-tau*s)/(s+1)", "1/(s+1)", F(2, 1000)),
+        ("2/(s+1)*exp(-s/3)*exp(-tau*s)", "2/(s+1)", F(1, 3) + F(2, 1000)),
+        ("(kp*exp(-s)/s)*(s+1)", "(kp/s)*(s+1)", F(1)),
+        ("-exp(-(s + 2*s))", "-1", F(3)),
+        ("(2*exp(-s)/s)^2", "4/s^2", F(2)),
+        ("exp(-s)^0", "1", F(0)),
+        ("exp(-zero*s)/s", "1/s", F(0)),
+        ("exp(0)", "1", F(0)),
+        ("exp((zero - 1)*s)", "1", F(1)),
+        ("exp(-sqrt(4)*s)", "1", F(2)),
+        ("1/(s + sqrt(2))", "1/(s + sqrt(2))", F(0)),
+    ],
+)
+def test_dead_time_is_a_factor_and_factors_add_up(text: str, ratio_text: str, dead_time_s: Fraction) -> None:
+    assert with_dead_time(text) == (*transfer(ratio_text), dead_time_s)
+
+
+times = st.fractions(min_value=0, max_value=10, max_denominator=1000)
+
+
+@given(trees, st.lists(st.tuples(times, st.booleans()), max_size=4))
+def test_dead_time_leaves_the_ratio_as_it_is(tree: Tree, delays: list[tuple[Fraction, bool]]) -> None:
+    plain = outcome(tree[0])
+    assume(not isinstance(plain, RealizeError))
+    text = f"({tree[0]})"
+    for time_s, behind in delays:
+        factor = f"exp(-{time_s}*s)"
+        text = f"({text})*{factor}" if behind else f"{factor}*({text})"
+    assert with_dead_time(text) == (*plain, sum((time_s for time_s, _ in delays), F(0)))  # type: ignore[misc]
+
+
+@pytest.mark.parametrize(
+    ("text", "column", "found", "advice"),
+    [
+        ("exp(0.1*s)", 1, "a prediction: acausal", r"exp\(-0.002\*s\)"),
+        ("exp(-(zero - kp)*s)", 1, "a prediction: acausal", "minus sign"),
+        ("2/exp(-s)", 2, "a division by dead time, which is a prediction", "minus sign"),
+        ("1/(exp(-zero*s)*s)", 2, "a division by dead time", "minus sign"),
+        ("exp(-s)^-1", 8, "a negative power of dead time, which is a prediction", "minus sign"),
+        ("exp(-s)^0.5", 8, "an exponent that is not an integer", "sqrt"),
+        ("1 + exp(-s)", 3, "dead time in one term of a sum", "measured response"),
+        ("exp(-s) - exp(-s)", 9, "dead time in one term of a sum", "multiply the whole"),
+        ("1/(s + 2*exp(-zero*s))", 6, "dead time in one term of a sum", "multiply the whole"),
+        ("exp(-1)", 1, "something other than a constant times s", "exponential of a constant as a number"),
+        ("exp(-s-1)", 1, "something other than a constant times s", "dead time as"),
+        ("exp(-s^2)", 1, "something other than a constant times s", "anything else as a ratio"),
+        ("exp(-1/s)", 1, "something other than a constant times s", "dead time as"),
+        ("exp(-s^2/s)", 1, "something other than a constant times s", "dead time as"),
+        ("exp(-exp(-s))", 1, "dead time in the exponent of exp", "as a factor"),
+        ("2^exp(-s)", 2, "dead time in an exponent", "as a factor"),
+        ("sqrt(exp(-s))", 1, "dead time in a square root", "as a factor"),
+        ("exp", 1, "exp without parentheses", r"write exp\(-0.002\*s\)"),
+        ("EXP(-s)", 1, 'the unknown function "EXP"', "did you mean exp"),
+        ("exp(-s", 4, "never closed", "close it"),
+        ("exp(-td*s)", 6, 'the unknown name "td"', r"under \[plant.values\]"),
+        # Each has 9 * 1369 bits below the line; six are more than the bound.
+        ("*".join(f"exp(-s/(pi+{k})^9)" for k in range(20)), 85, "a number that becomes too long", "fewer digits"),
+    ],
+)
+def test_each_mistake_with_dead_time_is_named(text: str, column: int, found: str, advice: str) -> None:
+    with pytest.raises(RealizeError) as caught:
+        with_dead_time(text)
+    assert caught.value.where == f"here, column {column}"
+    assert re.search(found, caught.value.found)
+    assert re.search(advice, caught.value.advice)
+    assert caught.value.allowed
+
+
+@pytest.mark.parametrize("text", [" " * MAX_LENGTH + "s", "(" * 100])
+def test_the_table_that_names_values_is_the_one_of_the_expression(text: str) -> None:
+    with pytest.raises(RealizeError, match=r"under \[plant.values\]"):
+        with_dead_time(text)
 
 
 @pytest.mark.parametrize(
@@ -454,12 +551,14 @@ def test_each_bound_admits_its_limit_and_refuses_the_next(largest: str, beyond: 
         "+".join(["s"] * 2000),
         "9" * 799 + "^400^400",
         "2^" * 1999 + "2",
+        "*".join(f"exp(-s/(pi+{k}))" for k in range(220)),
     ],
-    ids=["powers of pi", "reciprocals", "poles", "terms", "large base", "tower"],
+    ids=["powers of pi", "reciprocals", "poles", "terms", "large base", "tower", "dead times"],
 )
 def test_hostile_texts_are_answered_not_computed_forever(text: str) -> None:
     started = time.perf_counter()
-    outcome(text)
+    with contextlib.suppress(RealizeError):
+        with_dead_time(text)
     assert time.perf_counter() - started < NOT_A_HANG_S
 
 
@@ -474,13 +573,16 @@ pieces = st.lists(
 
 @given(st.one_of(st.text(), grammar_like, pieces))
 def test_any_text_is_read_or_refused_clearly(text: str) -> None:
-    result = outcome(text)
-    if isinstance(result, RealizeError):
-        assert result.where.startswith("here")
-        assert result.allowed
-        assert all(line.isprintable() for line in str(result).split("\n"))
-    else:
-        assert any(result[1])
+    for read in (transfer, with_dead_time):
+        try:
+            result = read(text)
+        except RealizeError as error:
+            assert error.where.startswith("here")  # noqa: PT017 -- both outcomes are right
+            assert error.allowed  # noqa: PT017
+            assert all(line.isprintable() for line in str(error).split("\n"))  # noqa: PT017
+        else:
+            assert any(result[1])
+            assert getattr(result, "dead_time_s", 0) >= 0
 
 
 @given(st.text(alphabet="s+*/^() 12kp\u00b2\u2212\t", min_size=1, max_size=200))

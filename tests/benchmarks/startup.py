@@ -16,7 +16,7 @@ from pathlib import Path
 from statistics import median
 from tempfile import TemporaryDirectory
 
-DESIGN = Path("fixtures/roller_gap.toml")
+DESIGN = Path("fixtures/extruder_heater.toml")
 YARDSTICK = [sys.executable, "-c", "import numpy, click"]
 
 #: What the project allows itself.

@@ -14,7 +14,7 @@ from realize.algebra import polynomial as poly
 from realize.algebra.expression import evaluate_transfer
 from realize.algebra.irrational import pi, square_root
 from realize.design import Design, Overrides, design_from_text
-from realize.design.controller import MAX_VALUES
+from realize.design.values import MAX_VALUES
 from realize.errors import RealizeError, Refused
 from realize.transfer import TransferFunction
 
@@ -115,6 +115,7 @@ def test_a_broken_value_that_is_replaced_does_no_harm() -> None:
         ("transfer = ['1']", "[design] transfer", "a list", 'write transfer = "'),
         ('transfer = ""', "[design] transfer", "no expression", "write one"),
         ('transfer = "2s"', "[design] transfer, column 2", '"s" right after "2"', "write 2*s"),
+        ('transfer = "2*exp(-s)"', "[design] transfer, column 3", "exp", "dead time belongs to the plant"),
         ('transfer = "0*s"', "[design] transfer", "that is zero", "check the values"),
         ("numerator = [0, 0.0]\ndenominator = [1]", "[design] numerator", "that is zero", "check the values"),
         ("numerator = []\ndenominator = [1]", "[design] numerator", "that is zero", "check the values"),
@@ -211,6 +212,8 @@ def test_a_cycle_is_shown_in_the_direction_it_refers() -> None:
         ('transfer = "kp/s"', {"kp": "2s"}, "--value kp, column 2", "right after", "write 2*s"),
         ('transfer = "kp/s"', {"kp": "inf"}, "--value kp, column 1", "no finite number", "write a number"),
         ('transfer = "s"', {"s": "1"}, "--value s", "a meaning of its own", "s_value"),
+        ('transfer = "s"', {"exp": "1"}, "--value exp", "a meaning of its own", "exp_value"),
+        ('transfer = "kp/s"', {"kp": "1", "k2": "k3", "k3": "1"}, "--value k2", "that nothing uses", "kp?"),
     ],
 )
 def test_a_mistake_on_the_command_line_names_the_option(

@@ -17,6 +17,7 @@ from hypothesis import strategies as st
 
 from realize.design import (
     CHECK_UNITS,
+    LOOP_METHODS,
     METHODS,
     TOLERANCE_KEYS,
     Design,
@@ -219,12 +220,14 @@ KEYS = (
     *("name", "transfer", "numerator", "denominator", "zeros", "poles", "gain", "about", "values", "rate"),
     *("period", "band", "placement", "order", "damping", "pole", "phase_budget", "exact_at", "input", "output"),
     *("range", "unit", "per_count", "offset", "type", "arithmetic", "anti_windup", "tracking_time", "limit"),
-    *("check", "because", "by", "kp", "case", "sensor", "dead_time", "compute_delay", *TOLERANCE_KEYS),
+    *("check", "because", "by", "kp", "case", "sensor", "dead_time", "response", "compute_delay", "jitter"),
+    *("compensate_delay", "exp", *TOLERANCE_KEYS),
 )
 words = st.sampled_from(
     (
         *("1 kHz", "1/3 ms", "20 Hz", "300 rad/s", "1 %", "6 deg", "auto", "kp + 2/s", "3*s", "1/(s+1)", "kp", "1/3"),
-        *("float32", "int16", "back-calculation", "derivative", "2s", "", "\n", "1e999", *METHODS, *CHECK_UNITS),
+        *("float32", "int16", "back-calculation", "derivative", "2s", "", "\n", "1e999", "exp(-kp*s)/(s+1)"),
+        *("1 sample", "0 s", *METHODS, *LOOP_METHODS, *CHECK_UNITS),
     )
 )
 scalars = st.one_of(

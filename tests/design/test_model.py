@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 from realize.checks.tolerances import DEFAULTS
-from realize.design import CHECK_UNITS, METHODS, TOLERANCE_KEYS
+from realize.design import CHECK_UNITS, LOOP_METHODS, METHODS, TOLERANCE_KEYS
 from realize.methods import METHODS as KNOWN_METHODS
 
 
 def test_every_method_there_is_can_be_named_and_no_other() -> None:
     assert set(METHODS) == set(KNOWN_METHODS)
+    assert not set(METHODS) & set(LOOP_METHODS)
 
 
 def test_every_tolerance_with_a_default_can_be_set_in_its_unit() -> None:

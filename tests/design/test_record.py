@@ -11,7 +11,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from realize.design import Design, design_from_resolved, design_from_text, load_design
+from realize.design import Design, Overrides, design_from_resolved, design_from_text, load_design
 from realize.errors import RealizeError
 
 F = Fraction
@@ -72,8 +72,50 @@ because = "b"
 by = "x"
 """
 
+SMALL = '[design]\ntransfer = "1"\n'
+PLANT = (
+    SMALL
+    + """
+[method]
+name = "frequency-fit"
+compensate_delay = true
+[plant]
+transfer = "k*exp(-td*s)/(J*s^2 + s)"
+dead_time = "1/3 ms"
+sensor = "(s + w)/((s + w)*(tf*s + 1))"
+[plant.values]
+k = 2
+J = 0.05
+td = 0.001
+tf = "1/5000"
+w = "2*pi*50"
+[[plant.case]]
+name = "light"
+values = { J = "1/30", td = "pi/1000" }
+[[plant.case]]
+name = "soft"
+values = { k = 1 }
+[loop]
+compute_delay = "1.5 samples"
+jitter = "20 us"
+[tolerance]
+loop_sensitivity_most = 1.8
+[[accept]]
+check = "loop sensitivity"
+limit = 2.2
+because = "b"
+by = "x"
+"""
+)
+
 TEXTS = {
     "everything": EVERYTHING,
+    "plant and loop": PLANT,
+    "one case": SMALL + '[plant]\ntransfer = "1/s"',
+    "a delay in seconds": SMALL + '[plant]\ntransfer = "1/s"\n[loop]\ncompute_delay = "1/3 ms"',
+    "no delay": SMALL + '[plant]\ntransfer = "1/s"\n[loop]\ncompute_delay = "0 s"\njitter = "0 s"',
+    "compensation by choice": SMALL + "[method]\ncompensate_delay = true",
+    "a value of twice the longest digits": '[design]\ntransfer = "k"\n[design.values]\nk = "(pi+1)^40/(pi+2)^40"',
     "only a transfer": '[design]\ntransfer = "2*s"',
     "automatic roll-off": '[design]\ntransfer = "2*s"\n[rolloff]',
     "zeros and poles": "[design]\ngain = 2\nzeros = [[-1, 2], [-1, -2]]\npoles = [-3, -4, -5]",
@@ -90,11 +132,55 @@ def everything() -> Any:
     return through_json(design_from_text(EVERYTHING, "servo.toml"))
 
 
+def plant_document() -> Any:
+    return through_json(design_from_text(PLANT, "servo.toml"))
+
+
+def changed(document: Any, path: tuple[Any, ...], value: object) -> Any:
+    inner = document
+    for step in path[:-1]:
+        inner = inner[step]
+    inner[path[-1]] = value
+    return document
+
+
 @pytest.mark.parametrize("text", TEXTS.values(), ids=TEXTS)
 def test_a_design_comes_back_whole_from_its_record(text: str) -> None:
     design = design_from_text(text, "servo.toml")
     assert design_from_resolved(through_json(design)) == design
     assert design_from_resolved(design.resolved()) == design
+
+
+def test_a_measured_plant_comes_back_whole_without_its_file(tmp_path: Path) -> None:
+    (tmp_path / "plant.csv").write_text("frequency_hz,magnitude_db,phase_deg\n1,0,-10\n", newline="\r\n")
+    text = '[plant]\nresponse = "plant.csv"\ndead_time = "1 ms"\nsensor = "exp(-s)/(s+1)"'
+    design = design_from_text(SMALL + text, "servo.toml", Overrides(), str(tmp_path))
+    document = through_json(design)
+    assert design_from_resolved(document) == design
+    assert document["plant"]["response_text"] == "frequency_hz,magnitude_db,phase_deg\n1,0,-10\n"
+    assert str(tmp_path) not in json.dumps(document)
+
+
+def test_a_plant_is_exact_in_the_record_case_by_case() -> None:
+    plant = plant_document()["plant"]
+    assert (plant["transfer"], plant["response"]) == ("k*exp(-td*s)/(J*s^2 + s)", None)
+    nominal, light, soft = plant["cases"]
+    assert [case["name"] for case in plant["cases"]] == ["nominal", "light", "soft"]
+    assert (nominal["numerator"], nominal["denominator"]) == (["40"], ["1", "20", "0"])
+    assert (light["numerator"], light["denominator"]) == (["60"], ["1", "30", "0"])
+    assert (soft["numerator"], soft["denominator"]) == (["20"], ["1", "20", "0"])
+    assert nominal["dead_time_s"] == "1/750"  # 1/3 ms and 1 ms
+    # 1/3 ms and pi = 3.14159 26535 89793 23846 264 ms, added by hand.
+    assert light["dead_time_s_decimal"] == "0.0034749259869231265718"
+    assert nominal["sensor"]["denominator"] == ["1", "5000"]
+    assert len(nominal["sensor"]["cancelled"]) == 2
+    assert light["values"][1] == {"name": "J", "value": "1/30"}
+
+
+def test_the_delay_of_the_loop_is_in_one_unit_and_stands_beside_a_plant() -> None:
+    loop = {"compute_delay_samples": "3/2", "compute_delay_s": None, "jitter_s": "1/50000"}
+    assert plant_document()["loop"] == loop
+    assert (everything()["plant"], everything()["loop"]) == (None, None)
 
 
 def test_there_are_fixtures() -> None:
@@ -171,7 +257,7 @@ def test_the_keys_are_the_same_for_every_design() -> None:
         (("denominator",), ["1.5", None], "record, [design] denominator", "nothing"),
         (("denominator",), [1.5], "record, [design] denominator", "a binary number"),
         (("denominator",), "1", "record, [design] denominator", '"1"'),
-        (("cancelled",), ["9" * 30000], "record, [design] cancelled", "a number of 30000 characters"),
+        (("cancelled",), ["9" * 50000], "record, [design] cancelled", "a number of 50000 characters"),
         (("values",), {"kp": "1"}, "record, [[values]]", "a table"),
         (("values", 0, "name"), "s", "record, [[values]] number 1, name", "a meaning of its own"),
         (("values", 0, "value"), "1/0", "record, [[values]] number 1, value", "a denominator of zero"),
@@ -190,14 +276,80 @@ def test_the_keys_are_the_same_for_every_design() -> None:
 def test_a_record_that_was_tampered_with_is_refused(
     path: tuple[Any, ...], value: object, where: str, found: str
 ) -> None:
-    document = everything()
-    inner = document
-    for step in path[:-1]:
-        inner = inner[step]
-    inner[path[-1]] = value
     with pytest.raises(RealizeError) as caught:
-        design_from_resolved(document)
+        design_from_resolved(changed(everything(), path, value))
     assert caught.value.where == where
+    assert found in caught.value.found
+
+
+CASE = ("plant", "cases", 1)
+
+
+@pytest.mark.parametrize(
+    ("path", "value", "where", "found"),
+    [
+        (("plant",), None, "record, [loop]", "a loop without a plant"),
+        (("plant",), {}, "record, [plant] cases", "0 cases"),
+        (("plant",), [], "record, [plant]", "a list"),
+        (("plant", "extra"), 1, "record, [plant]", "the unknown key"),
+        (("plant", "cases"), [], "record, [plant] cases", "0 cases"),
+        (("plant", "cases"), {}, "record, [[plant.cases]]", "a table"),
+        (("plant", "transfer"), None, "record, [plant] transfer", "nothing"),
+        (("plant", "transfer"), 3, "record, [plant] transfer", "the number 3"),
+        (("plant", "response"), "p.csv", "record, [plant] cases", "3 cases named nominal, light, soft"),
+        (("plant", "response_text"), "1,2", "record, [plant] response_text", '"1,2"'),
+        ((*CASE, "name"), "nominal", "record, [plant] cases", "named nominal, nominal, soft"),
+        ((*CASE, "name"), "a\nb", "record, [[plant.cases]] number 2, name", "control characters"),
+        ((*CASE, "extra"), 1, "record, [[plant.cases]] number 2", "the unknown key"),
+        ((*CASE, "numerator"), ["0"], "record, [[plant.cases]] number 2, numerator", "that is zero"),
+        ((*CASE, "denominator"), ["0"], "record, [[plant.cases]] number 2, numerator", "a denominator of zero"),
+        ((*CASE, "dead_time_s"), "-1/3", "record, [[plant.cases]] number 2, dead_time_s", '"-1/3 s"'),
+        ((*CASE, "dead_time_s"), None, "record, [[plant.cases]] number 2, dead_time_s", "nothing"),
+        ((*CASE, "dead_time_s"), 0.5, "record, [[plant.cases]] number 2, dead_time_s", "a binary number"),
+        ((*CASE, "sensor"), None, "record, [[plant.cases]] number 2, sensor, cancelled", "a list of 0"),
+        (
+            (*CASE, "sensor", "numerator"),
+            ["1", "2", "3"],
+            "record, [[plant.cases]] number 2, sensor, numerator",
+            "improper",
+        ),
+        ((*CASE, "values", 0, "name"), "s", "record, [[plant.cases]] number 2, values number 1, name", "a meaning"),
+        (("loop", "compute_delay_s"), "1", "record, [loop] compute_delay_s", "a second compute_delay"),
+        (("loop", "jitter_s"), "-1", "record, [loop] jitter", '"-1 s"'),
+        (("loop", "delay"), "-1", "record, [loop]", "the unknown key"),
+        (("method", "compensate_delay"), "yes", "record, [method] compensate_delay", '"yes"'),
+        (("method", "name"), "bilinear", "record, [method] compensate_delay", "with the method bilinear"),
+    ],
+)
+def test_a_plant_that_was_tampered_with_is_refused(
+    path: tuple[Any, ...], value: object, where: str, found: str
+) -> None:
+    with pytest.raises(RealizeError) as caught:
+        design_from_resolved(changed(plant_document(), path, value))
+    assert caught.value.where == where
+    assert found in caught.value.found
+
+
+@pytest.mark.parametrize(
+    ("key", "value", "found"),
+    [
+        ("response_text", None, "nothing"),
+        ("response_text", 3, "the number 3"),
+        ("response_text", "", "nothing but blanks"),
+        ("response_text", "1" * 200000, "a text of 200000 characters"),
+        ("response_text", "\ud800", "the character U+D800"),
+        ("transfer", "1/s", '"1/s"'),
+        ("response", "", "an empty text"),
+    ],
+)
+def test_a_measured_plant_that_was_tampered_with_is_refused(
+    tmp_path: Path, key: str, value: object, found: str
+) -> None:
+    (tmp_path / "p.csv").write_text("1,2")
+    design = design_from_text(SMALL + '[plant]\nresponse = "p.csv"', "servo.toml", Overrides(), str(tmp_path))
+    with pytest.raises(RealizeError) as caught:
+        design_from_resolved(changed(through_json(design), ("plant", key), value))
+    assert caught.value.where.startswith(f"record, [plant] {key}")
     assert found in caught.value.found
 
 
@@ -210,7 +362,7 @@ json_values = st.recursive(
 
 @given(st.data())
 def test_any_change_to_a_record_is_read_or_refused(data: st.DataObject) -> None:
-    document = everything()
+    document = data.draw(st.sampled_from([everything, plant_document]))()
     key = data.draw(st.sampled_from(sorted(document)))
     inner = document
     while data.draw(st.booleans()) and isinstance(inner[key], dict | list) and inner[key]:

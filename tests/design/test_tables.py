@@ -9,8 +9,8 @@ import pytest
 
 from realize.algebra.irrational import pi
 from realize.design import (
+    LOOP_METHODS,
     METHODS,
-    TOLERANCE_KEYS,
     Accept,
     Design,
     Overrides,
@@ -85,10 +85,17 @@ def test_name_and_method_of_the_command_line_win() -> None:
     assert (read(text).name, read(text).method) == ("gap", "bilinear")
 
 
-@pytest.mark.parametrize("name", ["auto", *METHODS])
+@pytest.mark.parametrize("name", ["auto", *METHODS, *LOOP_METHODS])
 def test_every_method_can_be_named(name: str) -> None:
     design = read(f'[method]\nname = "{name}"\nexact_at = "40 rad/s"\ncompensate_delay = false')
-    assert (design.method, design.exact_at_rad_s) == (name, F(40))
+    assert (design.method, design.exact_at_rad_s, design.compensate_delay) == (name, F(40), False)
+    assert read("", method=name) == read(f'[method]\nname = "{name}"')
+
+
+@pytest.mark.parametrize("text", ["", 'name = "auto"\n', 'name = "frequency-fit"\n'])
+def test_delay_is_compensated_by_the_method_that_can_or_by_whichever_is_chosen(text: str) -> None:
+    assert read(f"[method]\n{text}compensate_delay = true").compensate_delay
+    assert not read(f"[method]\n{text}").compensate_delay
 
 
 def test_a_rolloff_has_defaults() -> None:
@@ -174,6 +181,37 @@ pole_shift = "0.5%"
     )
 
 
+def test_tolerances_of_the_loop_come_in_their_units() -> None:
+    text = """[tolerance]
+loop_overshoot_rise = "3 %"
+loop_sensitivity_most = 1.8
+loop_phase_margin_least = "45 deg"
+loop_phase_margin_loss = "1/3 deg"
+"""
+    assert read(text).tolerance == (
+        ("loop_phase_margin_loss", F(1, 3)),
+        ("loop_phase_margin_least", F(45)),
+        ("loop_sensitivity_most", F(9, 5)),
+        ("loop_overshoot_rise", F(3)),
+    )
+
+
+@pytest.mark.parametrize(
+    ("check", "limit", "expected"),
+    [
+        ("loop stability", "", (None, "")),
+        ("loop phase margin", 'limit = "12 deg"\n', (F(12), "deg")),
+        ("loop sensitivity", "limit = 2.5\n", (F(5, 2), "")),
+        ("loop sensitivity", 'limit = "5/2"\n', (F(5, 2), "")),
+        ("loop overshoot", 'limit = "4 %"\n', (F(4), "%")),
+    ],
+)
+def test_a_deviation_of_the_loop_can_be_agreed_to(
+    check: str, limit: str, expected: tuple[Fraction | None, str]
+) -> None:
+    assert read(ACCEPT.format(check, limit)).accept == (Accept(check, *expected, "b", "x"),)
+
+
 def test_agreed_deviations_carry_limit_reason_and_initials() -> None:
     text = """[[accept]]
 check = "step overshoot"
@@ -233,6 +271,19 @@ LONG = "x" * 201
         ("[method]\nname = 1", "[method] name", "the number 1", "one of these"),
         ('[method]\nexact_at = "0 Hz"', "[method] exact_at", '"0 Hz"', "its sign"),
         ('[method]\ncompensate_delay = "no"', "[method] compensate_delay", '"no"', "true"),
+        (
+            '[method]\nname = "bilinear"\ncompensate_delay = true',
+            "[method] compensate_delay",
+            "with the method bilinear",
+            'name = "frequency-fit"',
+        ),
+        (
+            '[method]\nname = "plant-input-mapped"\ncompensate_delay = true',
+            "[method] compensate_delay",
+            "with the method plant-input-mapped",
+            "remove it",
+        ),
+        ('[method]\nname = "frequency-fitt"', "[method] name", '"frequency-fitt"', '"frequency-fit"?'),
         ("[signals.inptu]", "[signals]", 'the unknown key "inptu"', "did you mean input?"),
         ("[signals.input]\nrange = [1, 1]", "[signals.input] range", "not below", "range = [-1.0, 1.0]"),
         ("[signals.input]\nrange = [1]", "[signals.input] range", "a list of 1", "range = [-1.0, 1.0]"),
@@ -258,6 +309,10 @@ LONG = "x" * 201
         ),
         ('[target]\ntracking_time = "1 s"', "[target] tracking_time", "with anti_windup", "back-calculation"),
         ('[tolerance]\npole_shft = "1 %"', "[tolerance]", 'the unknown key "pole_shft"', "pole_shift?"),
+        ('[tolerance]\nloop_sensitivity_most = "1 %"', "[tolerance] loop_sensitivity_most, column 3", '"%"', ""),
+        ("[tolerance]\nloop_sensitivity_most = -1", "[tolerance] loop_sensitivity_most", "number -1", "the sign"),
+        ('[tolerance]\nloop_overshoot_rise = "1 deg"', "[tolerance] loop_overshoot_rise", "an angle", "percentage"),
+        (ACCEPT.format("loop sensitivity", ""), "[[accept]] number 1, limit", "nothing", "limit = 2.5"),
         ('[tolerance]\npole_shift = "1 dB"', "[tolerance] pole_shift", "belongs to a level", "a percentage"),
         ("[tolerance]\npole_shift = 1", "[tolerance] pole_shift", "the number 1", "in quotes"),
         ("[accept]", "[[accept]]", "a table", "two brackets"),
@@ -336,7 +391,6 @@ def test_an_order_that_leaves_it_improper_is_refused() -> None:
         ({"rate": "1 Hz", "period": "1 s"}, "--rate", "at once"),
         ({"name": "while"}, "--name", "a kept word"),
         ({"method": "bilinar"}, "--method", '"bilinar"'),
-        ({"method": "frequency-fit"}, "--method", "not supported yet"),
     ],
 )
 def test_a_mistake_on_the_command_line_names_the_option(overrides: dict[str, str], where: str, found: str) -> None:
@@ -368,54 +422,11 @@ def test_what_c_or_a_file_system_would_trip_over_is_no_name(name: str) -> None:
         ('[target]\narithmetic = "int16"', "[target] arithmetic"),
         ('[target]\narithmetic = "int32"', "[target] arithmetic"),
         ('[signals.input]\ntype = "int16"', "[signals.input] type"),
-        ('[method]\nname = "frequency-fit"', "[method] name"),
-        ('[method]\nname = "plant-input-mapped"', "[method] name"),
-        ("[method]\ncompensate_delay = true", "[method] compensate_delay"),
-        *((f'[tolerance]\n{key} = "1 {unit}"', f"[tolerance] {key}") for key, unit in TOLERANCE_KEYS.items()
-          if key.startswith("loop") and unit),
-        ("[tolerance]\nloop_sensitivity_most = 1.8", "[tolerance] loop_sensitivity_most"),
-        (ACCEPT.format("loop overshoot", 'limit = "3 %"\n'), "[[accept]] number 1, check"),
-        ('[plant]\ntransfer = "1/s"', "[plant]"),
-        ('[plant]\nresponse = "p.csv"\ndead_time = "0 s"', "[plant]"),
-        (
-            '[plant]\ntransfer = "1/(J*s)"\nsensor = "1/(s+2)"\n[plant.values]\nJ = 2\n'
-            '[[plant.case]]\nname = "light"\nvalues = { J = 0.02 }',
-            "[plant]",
-        ),
-        ("[loop]", "[loop]"),
-        ('[loop]\ncompute_delay = "1 sample"\njitter = "20 us"', "[loop]"),
-        ('[loop]\ncompute_delay = "0.1 ms"', "[loop]"),
         ("[schedule]", "[schedule]"),
     ],
-)  # fmt: skip
+)
 def test_what_is_planned_is_answered_and_never_ignored(text: str, where: str) -> None:
     error = refusal(text)
     assert error.where == f"servo.toml, {where}"
     assert "not supported yet" in error.found
     assert error.advice == "remove it for now"
-
-
-@pytest.mark.parametrize(
-    ("text", "where", "found"),
-    [
-        ("[plant]", "[plant]", "neither transfer nor response"),
-        ('[plant]\ntransfer = "1"\nresponse = "p"', "[plant]", "at once"),
-        ('[plant]\ntransfr = "1"', "[plant]", "unknown key"),
-        ('[plant]\ntransfer = "1/J"', "[plant] transfer, column 3", "unknown name"),
-        ("[plant]\ntransfer = 1", "[plant] transfer", "the number 1"),
-        ('[plant]\ntransfer = "1"\nsensor = "1/0"', "[plant] sensor, column 2", "division by zero"),
-        ('[plant]\ntransfer = "1"\ndead_time = "-1 s"', "[plant] dead_time", '"-1 s"'),
-        ('[plant]\nresponse = ""', "[plant] response", "an empty text"),
-        ('[plant]\ntransfer = "1"\n[plant.case]', "[[plant.case]]", "a table"),
-        ('[plant]\ntransfer = "1"\n[[plant.case]]\nvalue = 1', "[[plant.case]] number 1", "unknown key"),
-        ('[plant]\ntransfer = "1"\n[[plant.case]]\nvalues = {J = "2s"}', "[[plant.case]] number 1, values, J, column 2",
-         "right after"),
-        ('[loop]\ncompute_delay = 1', "[loop] compute_delay", "the number 1"),
-        ('[loop]\ncompute_delay = "1 V"', "[loop] compute_delay", 'the unit "V"'),
-        ('[loop]\njitter = "1"', "[loop] jitter", "without a unit"),
-    ],
-)  # fmt: skip
-def test_a_mistake_in_what_is_planned_is_a_mistake_all_the_same(text: str, where: str, found: str) -> None:
-    error = refusal(text)
-    assert error.where == f"servo.toml, {where}"
-    assert found in error.found

@@ -26,6 +26,17 @@ DIGITS = 40
 #: Below half the least subnormal double (2**-1075 = 2.5e-324) a coefficient is stored as 0.
 NEGLIGIBLE = mp.mpf(10) ** -330
 
+#: Weights of the difference family.
+THETA = {
+    "forward-difference": Fraction(0),
+    "backward-difference": Fraction(1),
+    "bilinear": Fraction(1, 2),
+    "blended-difference": Fraction(7, 8),
+}
+
+#: Methods that map poles by the exponential.
+EXPONENTIAL = ("step-invariant", "ramp-invariant", "impulse-invariant", "pole-zero-mapped")
+
 #: A value and the sum of the magnitudes it was formed from.
 Tracked = tuple[Any, Any]
 Polynomial = list[Tracked]
@@ -60,6 +71,22 @@ def exactly(x: Any) -> Fraction:
     """The rational a binary number of mpmath is."""
     sign, mantissa, exponent, _ = mp.mpf(x)._mpf_
     return (-1) ** sign * int(mantissa) * Fraction(2) ** exponent
+
+
+def image(root: ExactRoot, period_s: Fraction, method: str, angle: Fraction | None) -> Any:
+    """``z - 1`` of a root in s (the member of a pair in the upper half plane), by the definition of the method.
+
+    ``angle`` is the frequency to be exact at times the period.
+    """
+    x = mp.mpc(number(root.re * period_s), number(root.im * period_s))
+    if method in EXPONENTIAL:
+        return mp.expm1(x)
+    if method == "bilinear-prewarped":
+        assert angle is not None
+        factor = number(angle) / mp.tan(number(angle) / 2)
+        return 2 * x / (factor - x)
+    # s T = (z - 1)/(theta z + 1 - theta), solved for z - 1.
+    return x / (1 - number(THETA[method]) * x)
 
 
 def normalised(roots: Sequence[ExactRoot], period_s: Fraction) -> list[tuple[Any, int]]:

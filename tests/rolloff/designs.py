@@ -12,16 +12,10 @@ from hypothesis import assume
 from hypothesis import strategies as st
 
 from realize.errors import RealizeError
-from realize.rolloff import (
-    PAIR_DAMPING,
-    Circumstances,
-    Proposal,
-    circumstances,
-)
+from realize.rolloff import PAIR_DAMPING, Circumstances, Proposal, circumstances
 from realize.transfer import TransferFunction
 
 F = Fraction
-
 
 #: An invented servo for a roller gap: 4.2 + 18/s + 0.09 s.
 PID = TransferFunction.from_polynomials([F("0.09"), F("4.2"), 18], [1, 0])

@@ -8,19 +8,11 @@ from typing import Any
 import pytest
 
 from realize.errors import RealizeError
-from realize.rolloff import (
-    circumstances,
-    proposal_for,
-)
+from realize.rolloff import circumstances, proposal_for
 from realize.transfer import TransferFunction
-from tests.rolloff.designs import (
-    CUBIC,
-    LAG,
-    PID,
-)
+from tests.rolloff.designs import CUBIC, LAG, PID
 
 F = Fraction
-
 
 DOUBLE = TransferFunction.from_polynomials([1, 0, 0], [1])
 STEEP = TransferFunction.from_polynomials([1] * 33, [1] + [0] * 30 + [1])

@@ -8,22 +8,9 @@ from typing import Any
 import pytest
 from scipy.optimize import brentq
 
-from realize.rolloff import (
-    PAIR_DAMPING,
-    apply_rolloff,
-    circumstances,
-    proposal_for,
-)
+from realize.rolloff import PAIR_DAMPING, apply_rolloff, circumstances, proposal_for
 from realize.transfer import TransferFunction
-from tests.rolloff.designs import (
-    BAND_RAD_S,
-    PID,
-    SIGNALS,
-    at,
-    tight,
-    ways_out,
-    window,
-)
+from tests.rolloff.designs import BAND_RAD_S, PID, SIGNALS, at, tight, ways_out, window
 
 F = Fraction
 

@@ -6,10 +6,7 @@ from fractions import Fraction
 
 import pytest
 
-from realize.rolloff import (
-    decimal_or_quotient,
-    finite_figure,
-)
+from realize.rolloff import decimal_or_quotient, finite_figure
 
 F = Fraction
 

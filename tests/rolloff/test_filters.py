@@ -7,20 +7,9 @@ from fractions import Fraction
 from hypothesis import assume, given
 from hypothesis import strategies as st
 
-from realize.rolloff import (
-    apply_rolloff,
-    split,
-)
+from realize.rolloff import apply_rolloff, split
 from realize.transfer import TransferFunction
-from tests.rolloff.designs import (
-    PID,
-    at,
-    dampings,
-    improper,
-    placements,
-    poles,
-    value,
-)
+from tests.rolloff.designs import PID, at, dampings, improper, placements, poles, value
 
 F = Fraction
 

@@ -9,18 +9,9 @@ import pytest
 from hypothesis import assume, given
 from hypothesis import strategies as st
 
-from realize.rolloff import (
-    circumstances,
-    proposal_for,
-    proposals,
-)
+from realize.rolloff import circumstances, proposal_for, proposals
 from realize.transfer import TransferFunction
-from tests.rolloff.designs import (
-    BAND_RAD_S,
-    PID,
-    improper,
-    tight,
-)
+from tests.rolloff.designs import BAND_RAD_S, PID, improper, tight
 
 F = Fraction
 

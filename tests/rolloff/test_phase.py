@@ -11,13 +11,7 @@ from hypothesis import assume, example, given
 from hypothesis import strategies as st
 from scipy.optimize import brentq
 
-from realize.rolloff import (
-    PAIR_DAMPING,
-    apply_rolloff,
-    circumstances,
-    proposal_for,
-    proposals,
-)
+from realize.rolloff import PAIR_DAMPING, apply_rolloff, circumstances, proposal_for, proposals
 from realize.transfer import TransferFunction
 from tests.rolloff.designs import (
     BAND_RAD_S,

@@ -9,23 +9,9 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from realize.quantity import parse_quantity
-from realize.rolloff import (
-    PAIR_DAMPING,
-    circumstances,
-    proposal_for,
-    proposals,
-    rolloff_toml,
-)
+from realize.rolloff import PAIR_DAMPING, circumstances, proposal_for, proposals, rolloff_toml
 from realize.transfer import TransferFunction
-from tests.rolloff.designs import (
-    BAND_RAD_S,
-    CUBIC,
-    LAG,
-    PID,
-    improper,
-    settings_around,
-    window,
-)
+from tests.rolloff.designs import BAND_RAD_S, CUBIC, LAG, PID, improper, settings_around, window
 
 F = Fraction
 

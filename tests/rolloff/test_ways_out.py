@@ -9,16 +9,8 @@ from typing import Any
 from hypothesis import given
 from hypothesis import strategies as st
 
-from realize.rolloff import (
-    circumstances,
-    proposal_for,
-)
-from tests.rolloff.designs import (
-    BAND_RAD_S,
-    PID,
-    placements,
-    ways_out,
-)
+from realize.rolloff import circumstances, proposal_for
+from tests.rolloff.designs import BAND_RAD_S, PID, placements, ways_out
 
 F = Fraction
 

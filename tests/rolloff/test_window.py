@@ -7,19 +7,9 @@ from math import atan, degrees, inf, pi, radians, tan
 
 import pytest
 
-from realize.rolloff import (
-    circumstances,
-    proposal_for,
-    samples_per_band_period,
-)
+from realize.rolloff import circumstances, proposal_for, samples_per_band_period
 from realize.transfer import TransferFunction
-from tests.rolloff.designs import (
-    BAND_RAD_S,
-    PHASE_TOLERANCE_DEG,
-    PID,
-    tight,
-    window,
-)
+from tests.rolloff.designs import BAND_RAD_S, PHASE_TOLERANCE_DEG, PID, tight, window
 
 F = Fraction
 

@@ -13,8 +13,8 @@ from fractions import Fraction
 
 from realize.algebra.expression.ratio import MAX_BITS, MAX_EXPONENT, UnfitError
 
-#: Most digits of an exact number: 10**k has 3.3 k bits.
-MAX_EXACT_DIGITS = 3 * MAX_BITS // 10
+#: Most characters of an exact number: sign, line, and above and below it the longest integer (log10(2) < 0.30103).
+MAX_EXACT_DIGITS = 2 * (MAX_BITS * 30103 // 100000 + 1) + 2
 
 #: Digits of the decimal twin of an exact number: a few more than the 17 that tell all doubles apart.
 TWIN_DIGITS = 20

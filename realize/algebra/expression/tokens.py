@@ -63,6 +63,10 @@ _STAND_INS = {
 _ALLOWED_CHARACTERS = "numbers, names, + - * / ^, parentheses, sqrt(...), pi and s"
 
 
+#: Where the values of a controller are named.
+VALUES_TABLE = "[design.values]"
+
+
 class Token(NamedTuple):
     """A piece of an expression: its kind (number, name, operator or end), its text and where it starts."""
 
@@ -72,10 +76,11 @@ class Token(NamedTuple):
 
 
 class Text(NamedTuple):
-    """An expression and the place it stands in, as the user knows it."""
+    """An expression, the place it stands in, as the user knows it, and the table that names values for it."""
 
     text: str
     where: str
+    values_table: str = VALUES_TABLE
 
     def error(self, start: int, problem: UnfitError) -> RealizeError:
         """Compose the one complaint about the character at ``start``."""
@@ -102,7 +107,7 @@ def tokens(source: Text) -> list[Token]:
             source.where,
             f"an expression of {len(text)} characters",
             f"at most {MAX_LENGTH} characters",
-            "give parts of it names under [design.values]",
+            f"give parts of it names under {source.values_table}",
         )
     found: list[Token] = []
     position = 0

@@ -88,7 +88,7 @@ class _Transform:
 
     def _bandwidth(self, loop: ContinuousLoop) -> float:
         w = loop.grid
-        answer = np.abs(self._answer(1j * w))
+        answer = np.abs(self._answer(np.asarray(1j * w, complex)))
         wide = w[answer >= _BANDWIDTH * np.nanmax(answer)]
         return float(wide[-1])
 
@@ -106,11 +106,11 @@ class _Transform:
     def window(self, length_s: float, points: int) -> _Window:
         """The response on half of ``points`` times up to ``length_s``."""
         sigma, step = _DAMPING / length_s, 2 * length_s / points
-        s = sigma + 1j * (pi / length_s) * np.arange(points // 2 + 1)
+        s = np.asarray(sigma + 1j * (pi / length_s) * np.arange(points // 2 + 1), complex)
         known = _Arrivals(self, pi / step)
         weight = np.exp(-_ROLL[0] * np.linspace(0, 1, len(s)) ** _ROLL[1])
         rest = (self._answer(s) - known.transform(s)) / s * weight
-        times = step * np.arange(points // 2)
+        times: Real = step * np.arange(points // 2, dtype=float)
         summed = np.fft.irfft(rest, points)[: points // 2] / step * np.exp(sigma * times)
         return _Window(times, summed + known.response(times))
 

@@ -1,0 +1,267 @@
+"""Linear paths between the signals of a realization, exactly.
+
+A path is a ratio of polynomials in descending powers of z. A chain of sections composes its paths directly; any
+other structure is described by the matrices ``x[k+1] = A x[k] + B u[k]``, ``y[k] = C x[k] + D u[k]``, found by
+running its own recursion on unit vectors. Inputs are the input and the places where something is rounded; outputs
+are whatever must not overflow.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from fractions import Fraction
+from functools import reduce
+from itertools import accumulate
+from typing import NamedTuple
+
+from realize.algebra import polynomial as poly
+from realize.errors import RealizeError
+
+Vector = tuple[Fraction, ...]
+Matrix = tuple[Vector, ...]
+
+#: ``b`` and ``a`` of a section in ascending powers of 1/z, ``a`` without its leading 1.
+Coefficients = tuple[Sequence[Fraction | int], Sequence[Fraction | int]]
+
+
+class PulseRatio(NamedTuple):
+    """A path: ``numerator/denominator`` in lowest terms, descending powers of z, the denominator's lead 1."""
+
+    numerator: poly.Rationals
+    denominator: poly.Rationals
+
+
+class StateSpace(NamedTuple):
+    """Matrices of ``x[k+1] = A x[k] + B u[k]``, ``y[k] = C x[k] + D u[k]``, as tuples of rows."""
+
+    A: Matrix
+    B: Matrix
+    C: Matrix
+    D: Matrix
+
+
+def pulse_ratio(numerator: Sequence[Fraction | int], denominator: Sequence[Fraction | int]) -> PulseRatio:
+    """Bring a path to lowest terms.
+
+    Parameters
+    ----------
+    numerator, denominator : sequence of Fraction or int
+        Descending powers of z.
+
+    Raises
+    ------
+    RealizeError
+        When the denominator is zero, or its degree is below the numerator's: the output would come before its cause.
+    """
+    top, bottom = (poly.trimmed(Fraction(c) for c in p) for p in (numerator, denominator))
+    if len(bottom) < max(len(top), 1):
+        raise RealizeError(
+            "path",
+            f"numerator of degree {poly.degree(top)} over a denominator of degree {poly.degree(bottom)}",
+            "a denominator other than zero, of at least the numerator's degree",
+            "divide both by the same power of z, or delay the path",
+        )
+    if not top:
+        return PulseRatio((), (Fraction(1),))
+    common = poly.greatest_common_divisor(poly.primitive(top), poly.primitive(bottom))
+    if len(common) > 1:
+        top, bottom = (poly.divide(p, tuple(map(Fraction, common)))[0] for p in (top, bottom))
+    return PulseRatio(poly.scale(top, 1 / bottom[0]), poly.scale(bottom, 1 / bottom[0]))
+
+
+def section_ratio(b: Sequence[Fraction | int], a: Sequence[Fraction | int]) -> PulseRatio:
+    """Path through a section; ``b`` and ``a`` in ascending powers of 1/z, ``a`` without its leading 1."""
+    order = max(len(b) - 1, len(a))
+    return pulse_ratio((*b, *(0,) * (order + 1 - len(b))), (1, *a, *(0,) * (order - len(a))))
+
+
+def in_series(*ratios: PulseRatio) -> PulseRatio:
+    """Product of paths."""
+    return reduce(_product, ratios, PulseRatio((Fraction(1),), (Fraction(1),)))
+
+
+def in_parallel(*ratios: PulseRatio) -> PulseRatio:
+    """Sum of paths."""
+    return reduce(_sum, ratios, PulseRatio((), (Fraction(1),)))
+
+
+def scaled(ratio: PulseRatio, factor: Fraction) -> PulseRatio:
+    """Path times a number."""
+    return PulseRatio(poly.scale(ratio.numerator, factor), ratio.denominator) if factor else in_parallel()
+
+
+def input_paths(sections: Sequence[Coefficients]) -> tuple[PulseRatio, ...]:
+    """Paths from the input of a chain to the output of each section."""
+    return tuple(accumulate((section_ratio(*section) for section in sections), _product))
+
+
+def rounding_paths(
+    sections: Sequence[Coefficients], shapings: Sequence[Sequence[int]]
+) -> tuple[tuple[PulseRatio, ...], ...]:
+    """Paths from every rounding in a chain of direct form I sections to the output of every section.
+
+    Parameters
+    ----------
+    sections : sequence of Coefficients
+        ``(b, a)`` of each, in the order in which a sample passes them.
+    shapings : sequence of sequence of int
+        For each section, what its recursion makes of the error of its one rounding before ``1/a`` does the rest, in
+        ascending powers of 1/z: ``(1,)`` plain, ``(1, -1)`` when the discarded fraction is added back next sample.
+
+    Returns
+    -------
+    tuple of tuple of PulseRatio
+        Entry ``[i][j]``, j up to i: from the rounding in section j to the output of section i.
+
+    Notes
+    -----
+    ``y[k] = round(sum b x - sum a y)`` makes the rounding error an input of ``1/a``, even where a zero of ``b``
+    cancels a pole.
+    """
+    rows: list[tuple[PulseRatio, ...]] = []
+    for (b, a), shaping in zip(sections, shapings, strict=True):
+        earlier = rows[-1] if rows else ()
+        section = section_ratio(b, a)
+        rows.append((*(_product(path, section) for path in earlier), section_ratio(shaping, a)))
+    return tuple(rows)
+
+
+def probed(
+    step: Callable[[Vector, Vector], tuple[Sequence[Fraction], Sequence[Fraction]]], states: int, inputs: int
+) -> StateSpace:
+    """Matrices of a recursion, found by running it on unit vectors.
+
+    Parameters
+    ----------
+    step : callable
+        ``step(state, inputs)`` returns the next state and the outputs, in rational arithmetic, nothing rounded.
+    states, inputs : int
+        Lengths of its arguments.
+
+    Raises
+    ------
+    RealizeError
+        When the step does not answer zero with zero: it is not linear, an offset was left in.
+    """
+    zero = (Fraction(0),) * (states + inputs)
+    if any(any(part) for part in step(zero[:states], zero[states:])):
+        raise RealizeError(
+            "recursion", "it answers zero with something else", "a linear recursion", "take the offsets out"
+        )
+    answers = []
+    for i in range(states + inputs):
+        unit = (*zero[:i], Fraction(1), *zero[i + 1 :])
+        answers.append(step(unit[:states], unit[states:]))
+    following, outputs = (_transposed([tuple(answer[part]) for answer in answers]) for part in (0, 1))
+    return StateSpace(
+        *(tuple(row[:states] for row in following), tuple(row[states:] for row in following)),
+        *(tuple(row[:states] for row in outputs), tuple(row[states:] for row in outputs)),
+    )
+
+
+def paths(system: StateSpace) -> tuple[tuple[PulseRatio, ...], ...]:
+    """Paths from every input of a system to every output.
+
+    Returns
+    -------
+    tuple of tuple of PulseRatio
+        Entry ``[output][input]``.
+
+    Notes
+    -----
+    ``adj(zI - A)`` and the characteristic polynomial by the recursion of Faddeev and LeVerrier, exactly.
+    """
+    adjugate, bottom = _adjugate(system.A)
+    terms = [_multiply(_multiply(system.C, N), system.B) for N in adjugate]
+    return tuple(
+        tuple(
+            pulse_ratio(poly.add(poly.scale(bottom, d), poly.trimmed(term[i][j] for term in terms)), bottom)
+            for j, d in enumerate(row)
+        )
+        for i, row in enumerate(system.D)
+    )
+
+
+def state_paths(system: StateSpace) -> tuple[tuple[PulseRatio, ...], tuple[PulseRatio, ...]]:
+    """Paths from the first input to every state, and from something added to every state to the first output."""
+    n = len(system.A)
+    none = (Fraction(0),)
+    reached = paths(StateSpace(system.A, tuple(row[:1] for row in system.B), _identity(n), (none,) * n))
+    seen = paths(StateSpace(system.A, _identity(n), system.C[:1], (none * n,)))
+    return tuple(row[0] for row in reached), seen[0]
+
+
+def controllable_form(ratio: PulseRatio) -> StateSpace:
+    """The form whose states are the last values of ``u/a``: ``A`` has minus the denominator in its first row."""
+    n = poly.degree(ratio.denominator)
+    top = (*(Fraction(0),) * (n + 1 - len(ratio.numerator)), *ratio.numerator)
+    lower = _identity(n)[: n - 1]
+    first = tuple(-c for c in ratio.denominator[1:])
+    last = tuple(b - top[0] * a for b, a in zip(top[1:], ratio.denominator[1:], strict=True))
+    return StateSpace((first, *lower), _transposed(_identity(n)[:1]), (last,), ((top[0],),))
+
+
+def normal_form(ratio: PulseRatio, pole: tuple[Fraction, Fraction]) -> StateSpace:
+    """The coupled form of a second-order path: ``A = [[s, w], [-w, s]]`` for the poles ``s +- jw``.
+
+    Parameters
+    ----------
+    ratio : PulseRatio
+        Its numerator and direct term are kept; its poles are replaced by the given ones.
+    pole : tuple of Fraction
+        ``s`` and ``w``, as stored.
+
+    Notes
+    -----
+    With ``B = (0, 1)'``: ``adj(zI - A) B = (w, z - s)'``, so ``C = ((c0 + c1 s)/w, c1)`` gives ``c1 z + c0``.
+    """
+    s, w = pole
+    bottom = (Fraction(1), -2 * s, s * s + w * w)
+    direct = ratio.numerator[0] if len(ratio.numerator) == len(bottom) else Fraction(0)
+    rest = poly.subtract(ratio.numerator, poly.scale(bottom, direct))
+    c1, c0 = (*(Fraction(0),) * (2 - len(rest)), *rest)
+    one, none = Fraction(1), Fraction(0)
+    return StateSpace(((s, w), (-w, s)), ((none,), (one,)), (((c0 + c1 * s) / w, c1),), ((direct,),))
+
+
+def _product(first: PulseRatio, second: PulseRatio) -> PulseRatio:
+    return pulse_ratio(
+        poly.multiply(first.numerator, second.numerator), poly.multiply(first.denominator, second.denominator)
+    )
+
+
+def _sum(first: PulseRatio, second: PulseRatio) -> PulseRatio:
+    crossed = (
+        poly.multiply(first.numerator, second.denominator),
+        poly.multiply(second.numerator, first.denominator),
+    )
+    return pulse_ratio(poly.add(*crossed), poly.multiply(first.denominator, second.denominator))
+
+
+def _adjugate(A: Matrix) -> tuple[list[Matrix], poly.Rationals]:
+    """Coefficients of ``adj(zI - A)`` and of ``det(zI - A)``, descending powers of z."""
+    n = len(A)
+    adjugate, bottom = [], [Fraction(1)]
+    N = _identity(n)
+    for k in range(1, n + 1):
+        adjugate.append(N)
+        AN = _multiply(A, N)
+        bottom.append(-sum((AN[i][i] for i in range(n)), Fraction(0)) / k)
+        N = tuple(tuple(c + bottom[-1] * (i == j) for j, c in enumerate(row)) for i, row in enumerate(AN))
+    return adjugate, tuple(bottom)
+
+
+def _identity(n: int) -> Matrix:
+    return tuple(tuple(Fraction(i == j) for j in range(n)) for i in range(n))
+
+
+def _multiply(first: Matrix, second: Matrix) -> Matrix:
+    columns = _transposed(second)
+    return tuple(
+        tuple(sum((a * b for a, b in zip(row, column, strict=True) if a and b), Fraction(0)) for column in columns)
+        for row in first
+    )
+
+
+def _transposed(rows: Sequence[Vector]) -> Matrix:
+    return tuple(zip(*rows, strict=True))

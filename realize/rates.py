@@ -1,0 +1,240 @@
+"""Which rate a design really needs: every method over a range of rates, judged by the same checks.
+
+Rates are on a logarithmic grid, three significant digits each, so what is found is right to one step of the grid: a
+measurement, not a proof.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator, Sequence
+from concurrent.futures import ProcessPoolExecutor
+from dataclasses import replace
+from fractions import Fraction
+from math import pi
+from typing import Any, NamedTuple
+
+from realize.band import band_edge
+from realize.design import Design, design_from_resolved
+from realize.errors import RealizeError
+from realize.quantity import format_engineering, round_significant
+from realize.workflow import MethodResult, compare
+
+#: Grid of the default range: sixty rates over a factor of 50 are 6.9 % apart.
+POINTS = 60
+
+#: Ends of the default range, as multiples of the band edge or crossover: below four samples per period of it nothing
+#: sensible is left, above two hundred rounding is what grows.
+LOWEST_MULTIPLE, HIGHEST_MULTIPLE = 4, 200
+
+#: Most rates of one run.
+MOST_POINTS = 1000
+
+_DIGITS = 3
+
+
+class Outcome(NamedTuple):
+    """One method at one rate.
+
+    Attributes
+    ----------
+    acceptable : bool
+        Whether it may be emitted.
+    out : tuple of str
+        Checks in the way, the worst first.
+    refused : str or None
+        Why it does not apply.
+    """
+
+    acceptable: bool
+    out: tuple[str, ...]
+    refused: str | None
+
+
+class MethodRates(NamedTuple):
+    """One method over the range.
+
+    Attributes
+    ----------
+    method : str
+        Its name.
+    lowest_hz : Fraction or None
+        Lowest rate of the grid from which all higher ones are acceptable; None where the highest is not.
+    binding : str or None
+        What fails at the next rate below (or at the highest, where ``lowest_hz`` is None).
+    outcomes : tuple of Outcome
+        In the order of the rates.
+    """
+
+    method: str
+    lowest_hz: Fraction | None
+    binding: str | None
+    outcomes: tuple[Outcome, ...]
+
+
+class Rates(NamedTuple):
+    """What a range of rates does to a design.
+
+    Attributes
+    ----------
+    design : Design
+        As the user wrote it; its own rate does not matter.
+    rates_hz : tuple of Fraction
+        Ascending.
+    methods : tuple of MethodRates
+        In the order of the tables.
+    rests_on : str
+        What the range was taken from.
+    rules : tuple of str
+        Rules of thumb beside the computed answer.
+    """
+
+    design: Design
+    rates_hz: tuple[Fraction, ...]
+    methods: tuple[MethodRates, ...]
+    rests_on: str
+    rules: tuple[str, ...]
+
+
+def rates(
+    design: Design,
+    *,
+    low_hz: Fraction | None = None,
+    high_hz: Fraction | None = None,
+    points: int = POINTS,
+    workers: int = 2,
+    follow: Callable[[Iterator[dict[str, Outcome]]], Iterator[dict[str, Outcome]]] = iter,
+) -> Rates:
+    """Run every method at every rate of a range.
+
+    Parameters
+    ----------
+    design : Design
+        Its rate is replaced.
+    low_hz, high_hz : Fraction, optional
+        Ends of the range; by default from 4 to 200 times the crossover or band edge.
+    points : int
+        Rates on the logarithmic grid.
+    workers : int
+        Processes.
+    follow : callable
+        Passes the results on one by one, to show progress.
+
+    Raises
+    ------
+    RealizeError
+        When the range is empty or the grid too fine.
+    """
+    edge, sentence = _edge(design)
+    base_hz = Fraction(edge) / Fraction(2 * pi)
+    grid = _grid(low_hz or LOWEST_MULTIPLE * base_hz, high_hz or HIGHEST_MULTIPLE * base_hz, points)
+    with ProcessPoolExecutor(workers, initializer=_load, initargs=(design.resolved(),)) as pool:
+        try:
+            found = list(follow(pool.map(_outcomes, grid)))
+        except BaseException:
+            pool.shutdown(cancel_futures=True)
+            raise
+    methods = tuple(_summary(name, grid, [outcomes[name] for outcomes in found]) for name in found[-1])
+    return Rates(design, grid, methods, sentence, _rules(design, float(base_hz)))
+
+
+def answer(found: Rates) -> str:
+    """The answer in one line: the lowest rate of every method that has one, and what binds the first."""
+    able = sorted((m for m in found.methods if m.lowest_hz is not None), key=lambda m: m.lowest_hz or 0)
+    if not able:
+        return "no method is acceptable up to the highest rate of the range"
+    names = "; ".join(f"{m.method} from {_hz(m.lowest_hz)}" for m in able)
+    binding = able[0].binding
+    return f"{names}; {binding} binds" if binding else f"{names}, the lowest rate of the range"
+
+
+def _hz(rate: Fraction | None) -> str:
+    return format_engineering(rate or Fraction(0), "Hz")
+
+
+def _edge(design: Design) -> tuple[Fraction, str]:
+    """What rates are multiples of: the band, or the crossover, or the corners."""
+    if design.plant is not None and design.band_rad_s is None:
+        from realize.loop_design import loop_band
+
+        found = loop_band(design, design.transfer)
+        if found is not None:
+            return found
+    return band_edge(design.transfer, None, design.band_rad_s)
+
+
+def _grid(low_hz: Fraction, high_hz: Fraction, points: int) -> tuple[Fraction, ...]:
+    """A logarithmic grid of numbers with three significant digits, without repetitions."""
+    if not 0 < low_hz < high_hz:
+        raise RealizeError(
+            "--from and --to",
+            f"{float(low_hz):.5g} Hz to {float(high_hz):.5g} Hz",
+            "a range that rises",
+            "exchange them",
+        )
+    if not 2 <= points <= MOST_POINTS:
+        raise RealizeError("--points", str(points), f"2 to {MOST_POINTS}", f"--points {POINTS}")
+    ratio = float(high_hz / low_hz)
+    exact = [low_hz * Fraction(ratio ** (i / (points - 1))) for i in range(points)]
+    return tuple(sorted({round_significant(rate, _DIGITS) for rate in exact}))
+
+
+_design: Design | None = None
+
+
+def _load(resolved: dict[str, Any]) -> None:
+    """Give a worker process its design: roots found so far do not travel between processes."""
+    global _design
+    _design = design_from_resolved(resolved)
+
+
+def _outcomes(rate_hz: Fraction) -> dict[str, Outcome]:
+    assert _design is not None
+    try:
+        results = compare(replace(_design, method="auto", period_s=1 / rate_hz)).methods
+    except RealizeError as error:
+        return {"": Outcome(False, (), str(error))}
+    return {result.method: _outcome(result) for result in results}
+
+
+def _outcome(result: MethodResult) -> Outcome:
+    worst = sorted(result.blocking, key=lambda c: -(c.difference or 0) / (c.tolerance or 1))
+    return Outcome(result.acceptable, tuple(dict.fromkeys(c.check for c in worst)), result.refused)
+
+
+def _summary(name: str, grid: Sequence[Fraction], outcomes: Sequence[Outcome]) -> MethodRates:
+    first = len(outcomes)
+    while first and outcomes[first - 1].acceptable:
+        first -= 1
+    binding = _what_failed(outcomes[first - 1]) if first else None
+    return MethodRates(name, grid[first] if first < len(grid) else None, binding, tuple(outcomes))
+
+
+def _what_failed(outcome: Outcome) -> str:
+    return "refusal" if outcome.refused else outcome.out[0]
+
+
+def _rules(design: Design, base_hz: float) -> tuple[str, ...]:
+    """Rules of thumb; the books were not at hand, so they are from memory."""
+    rules = [
+        f"20 to 40 times the bandwidth (Franklin, Powell & Workman, from memory): {20 * base_hz:.4g} to "
+        f"{40 * base_hz:.4g} Hz, the band edge or crossover standing in for the bandwidth"
+    ]
+    rise_s = _rise_time_s(design)
+    if rise_s:
+        rules.append(
+            f"4 to 10 samples per rise time (Astrom & Wittenmark, from memory): {4 / rise_s:.4g} to "
+            f"{10 / rise_s:.4g} Hz"
+        )
+    return tuple(rules)
+
+
+def _rise_time_s(design: Design) -> float | None:
+    """Rise time of the continuous loop, for a proper controller; None without a loop that settles."""
+    if design.plant is None or design.transfer.relative_degree < 0:
+        return None
+    from realize.loop import ContinuousLoop, continuous_step
+    from realize.loop_design import plants_of
+
+    plants = plants_of(design)
+    step = continuous_step(ContinuousLoop(design.transfer, plants[0])) if plants else None
+    return step.rise_time_s if step else None

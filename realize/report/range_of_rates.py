@@ -1,0 +1,54 @@
+"""The answer of `realize rates`, for people and for scripts; apart, because it loads what runs in parallel."""
+
+from __future__ import annotations
+
+from realize.quantity import format_engineering
+from realize.rates import MethodRates, Rates, answer
+from realize.report.documents import Document
+from realize.report.documents import heading as document_heading
+from realize.report.terminal import bullets, heading, table, wrapped
+
+
+def rates_text(found: Rates) -> str:
+    """The screen of `realize rates`."""
+    able = any(method.lowest_hz is not None for method in found.methods)
+    first = wrapped(f"{'yes' if able else 'no'}: {found.design.name}: {answer(found)}.")
+    low, high = (format_engineering(rate, "Hz") for rate in (found.rates_hz[0], found.rates_hz[-1]))
+    setting = [f"{len(found.rates_hz)} rates from {low} to {high}, on a logarithmic grid", found.rests_on]
+    head = ["method", "lowest rate", "what binds there"]
+    rows = [[m.method, _lowest(m), _binding(m)] for m in found.methods]
+    blocks = [first, "".join(wrapped(line, indent="  ") for line in setting), table([head, *rows])]
+    return "\n".join([*blocks, heading("Rules of thumb, for comparison") + bullets(found.rules)])
+
+
+def _lowest(method: MethodRates) -> str:
+    return "-" if method.lowest_hz is None else format_engineering(method.lowest_hz, "Hz")
+
+
+def _binding(method: MethodRates) -> str:
+    if method.lowest_hz is not None:
+        return method.binding or "nothing: it passes over the whole range"
+    return f"{method.binding}, still out at the highest rate"
+
+
+def rates_document(found: Rates) -> Document:
+    """The answer of `realize rates`."""
+    return document_heading("rates", found.design) | {
+        "rates_hz": [float(rate) for rate in found.rates_hz],
+        "rests_on": found.rests_on,
+        "methods": [_method_rates(method, found) for method in found.methods],
+        "answer": answer(found),
+        "rules_of_thumb": list(found.rules),
+    }
+
+
+def _method_rates(method: MethodRates, found: Rates) -> Document:
+    return {
+        "method": method.method,
+        "lowest_hz": None if method.lowest_hz is None else float(method.lowest_hz),
+        "binding": method.binding,
+        "outcomes": [
+            {"rate_hz": float(rate), "acceptable": o.acceptable, "out": list(o.out), "refused": o.refused}
+            for rate, o in zip(found.rates_hz, method.outcomes, strict=True)
+        ],
+    }

@@ -1,0 +1,58 @@
+"""Data flows one way: no module imports from a layer above its own, and the core stays light."""
+
+import ast
+import sys
+from pathlib import Path
+
+import pytest
+
+import realize
+
+PACKAGE = Path(realize.__file__).parent
+
+#: From the bottom up; modules of one layer may import each other.
+LAYERS = (
+    ("errors", "version"),
+    ("algebra",),
+    ("transfer", "quantity"),
+    ("design", "starter"),
+    ("band", "rolloff", "realizability"),
+    ("methods",),
+    ("checks",),
+    ("loop",),
+    ("arithmetic",),
+    ("loop_design",),
+    ("workflow",),
+    ("firmware", "rates"),
+    ("report",),
+    ("cli", "__main__", "__init__"),
+)
+RANK = {name: rank for rank, names in enumerate(LAYERS) for name in names}
+CORE = ("algebra", "methods", "checks", "arithmetic")
+MODULES = sorted(path.relative_to(PACKAGE) for path in PACKAGE.rglob("*.py"))
+
+
+def _imports(path: Path) -> set[str]:
+    tree = ast.parse((PACKAGE / path).read_text(encoding="utf-8"))
+    names = {alias.name for node in ast.walk(tree) if isinstance(node, ast.Import) for alias in node.names}
+    return names | {node.module for node in ast.walk(tree) if isinstance(node, ast.ImportFrom) and node.module}
+
+
+def _layer(path: Path) -> str:
+    return path.parts[0].removesuffix(".py")
+
+
+def test_every_module_has_a_layer() -> None:
+    assert {_layer(path) for path in MODULES} <= set(RANK)
+
+
+@pytest.mark.parametrize("path", MODULES, ids=str)
+def test_nothing_lower_knows_anything_higher(path: Path) -> None:
+    used = {name.split(".")[1] for name in _imports(path) if name.startswith("realize.")}
+    assert {name for name in used if RANK[name] > RANK[_layer(path)]} == set()
+
+
+@pytest.mark.parametrize("path", [path for path in MODULES if _layer(path) in CORE], ids=str)
+def test_the_core_imports_numpy_and_the_standard_library_only(path: Path) -> None:
+    outside = {name.split(".")[0] for name in _imports(path)} - set(sys.stdlib_module_names)
+    assert outside <= {"numpy", "realize"}
