@@ -2,6 +2,7 @@
 
 import os
 import re
+import shlex
 from pathlib import Path
 
 import pytest
@@ -29,7 +30,7 @@ def test_the_output_of_the_worked_example_is_real(
 ) -> None:
     os.symlink(ROOT / "fixtures", tmp_path / "fixtures")
     monkeypatch.chdir(tmp_path)
-    main(command.split())
+    main(shlex.split(command))
     assert capsys.readouterr().out == output
 
 

@@ -198,7 +198,7 @@ def controllable_form(ratio: PulseRatio) -> StateSpace:
     lower = _identity(n)[: n - 1]
     first = tuple(-c for c in ratio.denominator[1:])
     last = tuple(b - top[0] * a for b, a in zip(top[1:], ratio.denominator[1:], strict=True))
-    return StateSpace((first, *lower), _transposed(_identity(n)[:1]), (last,), ((top[0],),))
+    return StateSpace((first, *lower)[:n], _transposed(_identity(n)[:1]), (last,), ((top[0],),))
 
 
 def normal_form(ratio: PulseRatio, pole: tuple[Fraction, Fraction]) -> StateSpace:

@@ -15,8 +15,8 @@ against the output; a history that lost what the limit cut off is, for it leaves
 other one when the error returns, or stays when it should leave. (The clamped history of a pure integrator is the held
 law itself, and passes.)
 
-Back-calculation may pull its integral further than the others; being at a limit while the error is held
-is justified by the first two laws alone, so that a tracking time that is too short is found out.
+Back-calculation may pull its integral further than the others; but it is at a limit while the error is held only where
+one of the first two laws asks for that half of the range, so that a tracking time that is too short is found out.
 """
 
 from __future__ import annotations
@@ -220,7 +220,8 @@ def _compared(laws: _Laws, errors: Sequence[float], simulate: Simulate) -> _Wors
         strict_low, strict_high = _hull(asked[:2])
         strict = (output <= laws.low) | (output >= laws.high)
         strict[2 * laws.held :] = False
-        low, high = np.where(strict, strict_low, low), np.where(strict, strict_high, high)
+        half = laws.span / 2
+        low, high = np.where(strict, strict_low - half, low), np.where(strict, strict_high + half, high)
     distance = np.maximum(np.maximum(low - output, output - high), 0.0)
     i = int(np.argmax(distance))
     wanted = float(np.clip(output[i], low[i], high[i]))

@@ -48,7 +48,7 @@ _CYCLE_POINTS = 16
 _CYCLE_RATIO = 1.25
 _MOST_CYCLE_POINTS = 2000
 
-#: Finest and coarsest division of a sample, and points within samples altogether.
+#: Most parts a sample is divided into, and most points within samples altogether.
 _MOST_DIVISIONS = 64
 _MOST_POINTS = 16384
 

@@ -90,10 +90,11 @@ def check_deviation(
     at = np.array([k])
     value, (low, high) = float(sampled.at(at)[0]), (float(b[0]) for b in design.bounds_after(at))
     nearest = min(max(value, low), high)
-    reason = (
-        f"greatest at sample {k}, {format_engineering(k * period_s, 's')} after the step; in % of {design.size:.5g}, "
-        f"the greatest value within {format_engineering(design.last * period_s, 's')}"
-    )
+    where = f"greatest at sample {k}, {format_engineering(k * period_s, 's')} after the step"
+    if value == nearest:
+        where = "no sample leaves what the design passes through over the period that follows"
+    horizon = format_engineering(design.last * period_s, "s")
+    reason = f"{where}; in % of {design.size:.5g}, the greatest value within {horizon}"
     if sampled.last < inf:
         reason += "; the response grows without bound"
     return asked.measured(nearest, value, 100 * abs(value - nearest) / design.size, reason)

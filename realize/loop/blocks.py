@@ -11,12 +11,20 @@ from typing import NamedTuple
 import numpy as np
 
 from realize.loop.between import WithinPeriod
-from realize.loop.response import Complex
+from realize.loop.figures import highest_peaks
+from realize.loop.response import Complex, Whole
 from realize.loop.states import States, product
 
 #: Samples in a block at the most, and blocks that are followed.
 _MOST_SAMPLES = 64
 _MOST_BLOCKS = 4096
+
+#: Samples that are looked at, one in several of them where there are more; all of them in the first blocks, and in
+#: those around the highest peaks.
+_LOOKED_AT = 16384
+_MOST_STRIDE = 16
+_FIRST_BLOCKS = 64
+_PEAKS = 4
 
 #: Change of the controller's output, in units of its greatest, below which it rests.
 _AT_REST = 1e-9
@@ -49,24 +57,44 @@ def starting(control: States, delay: int) -> tuple[Complex, Complex]:
     return state, outputs
 
 
-def moved_in_blocks(control: States, within: WithinPeriod, delay: int, start: tuple[Complex, Complex]) -> Complex:
-    """Plant states and input at every change of the input, until all is at rest.
+def moved_in_blocks(
+    control: States, within: WithinPeriod, start: tuple[Complex, Complex], final: float
+) -> tuple[Whole, Complex]:
+    """Plant states and input at changes of the input, until all is at rest.
 
     Parameters
     ----------
     start : pair of array
-        As from :func:`starting`.
+        As from :func:`starting`; the delay is that of its outputs.
+    final : float
+        Final value of the plant's output.
 
     Returns
     -------
-    array, (order + 1, samples)
+    samples : array of int, (count,)
+        Which changes: all of them, or beyond the first blocks one in several, and all around the highest outputs.
+    moving : array, (order + 1, count)
     """
-    n, length = len(within.measured) - 1, min(delay, _MOST_SAMPLES)
+    n, length = len(within.measured) - 1, min(len(start[1]), _MOST_SAMPLES)
     block = _block(*_one_sample(control, within), n, length)
-    state, pending = np.concatenate([np.zeros(n, complex), start[0], [1.0]]), start[1]
+    states, inputs = _followed(block, np.concatenate([np.zeros(n, complex), start[0], [1.0]]), start[1], length)
+    stride = min(_MOST_STRIDE, -(-inputs.size // _LOOKED_AT))
+    every_one = _placed(block, states, inputs, np.arange(len(inputs)), stride)
+    if stride == 1:
+        return every_one
+    value = (within.read[0] @ every_one[1]).real / final
+    highest = every_one[0][highest_peaks(value, _PEAKS)] // length
+    near = np.concatenate([np.arange(_FIRST_BLOCKS), highest, highest + 1, np.maximum(highest, 1) - 1])
+    full = _placed(block, states, inputs, np.unique(near[near < len(inputs)]), 1)
+    samples, first = np.unique(np.concatenate([full[0], every_one[0]]), return_index=True)
+    return samples, np.concatenate([full[1], every_one[1]], axis=1)[:, first]
+
+
+def _followed(block: _Block, state: Complex, pending: Complex, length: int) -> tuple[Complex, Complex]:
+    """States before each block, and its inputs."""
     before: list[Complex] = []
     inputs: list[Complex] = []
-    quiet, reference, size = 0, 0.0 + 0j, 0.0
+    delay, quiet, reference, size = len(pending), 0, 0.0 + 0j, 0.0
     while len(inputs) < _MOST_BLOCKS and quiet <= 3 * delay + _MOST_SAMPLES:
         now, pending = pending[:length], pending[length:]
         commands = _mapped(block.commands, state, now)
@@ -79,9 +107,19 @@ def moved_in_blocks(control: States, within: WithinPeriod, delay: int, start: tu
         if float(np.abs(commands - reference).max()) > _AT_REST * size:
             quiet, reference = 0, complex(commands[-1])
         quiet += length
-    states, received = np.array(before).T, np.array(inputs).T
-    plant = (product(block.plant[0], states) + product(block.plant[1], received)).reshape(length, n, -1)
-    return np.vstack([np.moveaxis(plant, 0, 2).reshape(n, -1), received.T.ravel()])
+    return np.array(before), np.array(inputs)
+
+
+def _placed(block: _Block, states: Complex, inputs: Complex, chosen: Whole, stride: int) -> tuple[Whole, Complex]:
+    """Plant states and input at every ``stride``-th sample of some blocks."""
+    length = inputs.shape[1]
+    at = np.arange(0, length, stride)
+    n = len(block.plant[0]) // length
+    from_state, from_input = (m.reshape(length, n, -1)[at].reshape(len(at) * n, -1) for m in block.plant)
+    plant = product(from_state, states[chosen].T) + product(from_input, inputs[chosen].T)
+    placed = np.moveaxis(plant.reshape(len(at), n, -1), 0, 2).reshape(n, -1)
+    samples = (chosen[:, None] * length + at).ravel()
+    return samples, np.vstack([placed, inputs[chosen][:, at].ravel()])
 
 
 def _mapped(maps: tuple[Complex, Complex], state: Complex, inputs: Complex) -> Complex:

@@ -162,7 +162,7 @@ class _Judge:
         name, most = "loop sensitivity", self._figure("loop_sensitivity_most")
         obtained, wanted = sampled.margins.maximum_sensitivity, delayed.margins.maximum_sensitivity
         if not _is_stable(sampled) or obtained is None:
-            return self._check(name, wanted, obtained, None, most, "", "the sampled loop is not stable", within=False)
+            return self._check(name, wanted, None, None, most, "", "the sampled loop is not stable", within=False)
         reason = f"greatest at {_frequency(sampled.margins.peak_rad_s)}; at most {most:.5g}"
         start = wanted if wanted is not None and _is_stable(delayed) and wanted < most else most
         if start == most:

@@ -7,7 +7,7 @@ from typing import NamedTuple
 import numpy as np
 
 from realize.loop.plant import Plant
-from realize.loop.response import Real
+from realize.loop.response import Real, Whole
 from realize.transfer import PulseTransferFunction, TransferFunction
 
 #: The band that counts as settled, of the final value.
@@ -102,3 +102,12 @@ def _between(times_s: Real, values: Real, i: int, level: float) -> float:
     rise = values[i + 1] - values[i]
     part = (level - values[i]) / rise if rise else 0.0
     return float(times_s[i] + min(max(part, 0.0), 1.0) * (times_s[i + 1] - times_s[i]))
+
+
+def highest_peaks(values: Real, count: int) -> Whole:
+    """Indices of the highest local maxima, each taken for as high as the parabola through its neighbours."""
+    i = 1 + np.flatnonzero((values[1:-1] >= values[:-2]) & (values[1:-1] >= values[2:]))
+    rise, fall = values[i] - values[i - 1], values[i] - values[i + 1]
+    top = values[i] + (rise - fall) ** 2 / (8 * np.maximum(rise + fall, 5e-324))
+    highest: Whole = i[np.argsort(-top, kind="stable")[:count]]
+    return highest

@@ -15,7 +15,7 @@ import numpy as np
 from realize.checks.modes import every, logarithm
 from realize.loop.between import WithinPeriod, figures_between, within_period
 from realize.loop.blocks import moved_in_blocks, starting
-from realize.loop.figures import StepFigures, final_value
+from realize.loop.figures import StepFigures, final_value, highest_peaks
 from realize.loop.response import Complex, Whole
 from realize.loop.sampled import SampledLoop
 from realize.loop.states import States, moved, product, sequence, states
@@ -79,8 +79,7 @@ def _run(loop: SampledLoop, within: WithinPeriod, final: float) -> tuple[Whole, 
     """Samples, and for each the plant's states and input at the change of the input that follows it by the delay."""
     if loop.held.whole > _DENSE_DELAY:
         control = _pulse_states(loop.controller)
-        moving = moved_in_blocks(control, within, loop.held.whole, starting(control, loop.held.whole))
-        return np.arange(moving.shape[1]), moving
+        return moved_in_blocks(control, within, starting(control, loop.held.whole), final)
     mapped = _dense(loop, within)
     samples = _looked_at(np.asarray(np.linalg.eigvals(mapped.change[:-1, :-1]), complex))
     consecutive = int(np.argmax(np.append(np.diff(samples), 2) > 1)) + 1
@@ -126,12 +125,10 @@ def _closed_in(mapped: _Map, samples: Whole, moving: Complex, height: Complex) -
     """Add samples around the highest peaks until each has both its neighbours."""
     while True:
         value = product(height[None], moving)[0].real
-        i = 1 + np.flatnonzero((value[1:-1] >= value[:-2]) & (value[1:-1] >= value[2:]))
-        rise, fall = value[i] - value[i - 1], value[i] - value[i + 1]
-        # Vertex of the parabola through three samples, as if they were evenly spaced.
-        top = value[i] + (rise - fall) ** 2 / (8 * np.maximum(rise + fall, 5e-324))
-        highest = i[np.argsort(-top, kind="stable")[:_PEAKS]]
-        around = [np.linspace(samples[k - 1], samples[k + 1], _BETWEEN + 1).astype(np.int64) for k in highest]
+        around = [
+            np.linspace(samples[k - 1], samples[k + 1], _BETWEEN + 1).astype(np.int64)
+            for k in highest_peaks(value, _PEAKS)
+        ]
         added = np.setdiff1d(np.concatenate(around), samples) if around else samples[:0]
         if not len(added):
             return samples, moving

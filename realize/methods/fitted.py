@@ -21,7 +21,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from fractions import Fraction
-from math import isqrt, sqrt
+from math import frexp, isqrt, sqrt
 from typing import Any, NamedTuple
 
 import numpy as np
@@ -189,10 +189,15 @@ def frequency_fit(
 def _refuse_unfit(transfer: TransferFunction, period_s: Fraction, band_rad_s: Fraction) -> None:
     if transfer.relative_degree < 0:
         raise Refused(
-            "transfer", f"{METHOD} needs a proper one", "as many poles as zeros, or more", "add a roll-off pole first"
+            "transfer",
+            f"it is improper: its numerator has {-transfer.relative_degree} more than its denominator's degree",
+            "as many poles as zeros, or more",
+            "add a roll-off pole first",
         )
     if transfer.order == 0:
-        raise Refused("method", f"{METHOD} has nothing to fit to a pure gain", "poles or zeros", "any other method")
+        raise Refused(
+            "method", f"{METHOD} finds nothing to fit in a pure gain", "one pole at least", "use any other method"
+        )
     if band_rad_s * period_s >= pi():
         raise Refused(
             "method",
@@ -406,10 +411,19 @@ class _Frame:
 
 def _range_bits(transfer: TransferFunction, frequencies: Sequence[float]) -> int:
     """Bits by which the factors of G, or of their images, may differ over the grid."""
-    low, top = frequencies[0], frequencies[-1]
-    roots = transfer.poles + transfer.zeros
-    # In x the highest frequency lies farther out than in s T/2, by less than 2^4 at 0.95 of the Nyquist frequency.
-    return sum(root.count * (4 + int(top / max(_size(root.value), low)).bit_length()) for root in roots)
+    low, top = _exponent(frequencies[0]), _exponent(frequencies[-1])
+    bits = 0
+    for root in transfer.poles + transfer.zeros:
+        size = _exponent(_size(root.value))
+        # In x the highest frequency lies farther out than in s T/2, by less than 2^4 at 0.95 of the Nyquist frequency.
+        distance = 4 + max(0, top - max(size, low))
+        depth = max(0, size - _exponent(root.value.real)) if root.is_pair and root.value.real else 0
+        bits += root.count * (distance + depth)
+    return bits
+
+
+def _exponent(value: float) -> int:
+    return frexp(value)[1] if value else -1100
 
 
 def _on_axis(p: Array, powers: Array, bits: int) -> _Complex:
@@ -539,19 +553,11 @@ class _Problem:
         denominator, moved = self._tamed(denominator)
         order = self._frame.transfer.order - poly.degree(self._frame.kept_zeros)
         start = self._fit(integers([self._one] + [0] * order), denominator, moved)
-        change = self._changes(start, None)[0]
-        return self._fit(_plus(start.numerator, change), denominator, moved)
+        return self._fit(_plus(start.numerator, self.changes(start, None)[0]), denominator, moved)
 
-    def step(self, fit: _Fit, facing: _Complex, halvings: int) -> _Fit:
-        """Change numerator and denominator together, to the least error of the linear problem.
-
-        Notes
-        -----
-        ``H = 1/(G E)`` as far as not kept, ``V = H N/D``. The error ``V - 1`` changes with N by ``H dN/D``; with D it
-        changes by ``-dD/D`` in the iteration of Sanathanan and Koerner, by ``-V dD/D`` to first order (Gauss-Newton):
-        ``facing`` is 1 or V.
-        """
-        numerator, denominator = (c >> halvings for c in self._changes(fit, facing))
+    def changed(self, fit: _Fit, changes: tuple[Array, Array], halvings: int) -> _Fit:
+        """Another fit, by :meth:`changes` halved so often."""
+        numerator, denominator = (change >> halvings for change in changes)
         wanted = _plus(fit.denominator, denominator)
         tamed, moved = self._tamed(wanted)
         if moved:
@@ -569,8 +575,15 @@ class _Problem:
         band, total = (frame.squared_error(ratio, weights) for weights in (self._band, self._weights))
         return _Fit(numerator, denominator, ratio, band, total, moved)
 
-    def _changes(self, fit: _Fit, facing: _Complex | None) -> tuple[Array, Array]:
-        """Changes of numerator and denominator but for constant terms; of the numerator alone without ``facing``."""
+    def changes(self, fit: _Fit, facing: _Complex | None) -> tuple[Array, Array]:
+        """Changes of numerator and denominator (but for constant terms) to the least error of the linear problem.
+
+        Notes
+        -----
+        ``H = 1/(G E)`` as far as not kept, ``V = H N/D``. The error ``V - 1`` changes with N by ``H dN/D``; with D it
+        changes by ``-dD/D`` in the iteration of Sanathanan and Koerner, by ``-V dD/D`` to first order (Gauss-Newton):
+        ``facing`` is 1 or V, or None to change the numerator alone.
+        """
         frame = self._frame
         inverse = frame.over(self.design(), frame.values(fit.denominator))
         columns = [(frame.times(frame.per_target, inverse), len(fit.numerator) - 1)]
@@ -633,13 +646,14 @@ def _fitted(problem: _Problem, start: Array) -> _Fit:
     """Sanathanan and Koerner's iteration, then Gauss and Newton's."""
     best = current = problem.closest_with(start)
     for _ in range(_MOST_STEPS):
-        last, current = current, problem.step(current, problem.design(), 0)
+        last = current
+        current = problem.changed(last, problem.changes(last, problem.design()), 0)
         best = min(best, current, key=problem.rank)
         if abs(current.total - last.total) <= last.total * _SETTLED:
             break
     for _ in range(_MOST_STEPS):
-        last = best
-        tries = (problem.step(last, last.ratio, halvings) for halvings in range(_MOST_HALVINGS + 1))
+        last, changes = best, problem.changes(best, best.ratio)
+        tries = (problem.changed(last, changes, halvings) for halvings in range(_MOST_HALVINGS + 1))
         best = next((fit for fit in tries if problem.rank(fit) < problem.rank(last)), last)
         if last.total - best.total <= last.total * _SETTLED:
             break

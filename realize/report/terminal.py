@@ -47,9 +47,6 @@ _COLUMNS = (
 #: Checks without a column, named in words where they are out.
 _UNSHOWN = ("stability", "saturation recovery")
 
-#: Differences below this are the dust of 400-digit numbers and of floating point.
-_LEAST_SHOWN = 1e-12
-
 #: Differences above this are lost causes, by whatever factor.
 _MOST_SHOWN = 1e6
 
@@ -326,8 +323,6 @@ def _check_row(stored: Check, exact: Check) -> list[str]:
 
 def _figure(value: float | None, digits: int = 3) -> str:
     """A difference or tolerance: two or three digits tell how close it came."""
-    if value is not None and 0 < value < _LEAST_SHOWN:
-        return f"<{_LEAST_SHOWN:g}"
     if value is not None and value > _MOST_SHOWN:
         return f">{_MOST_SHOWN:g}"
     return "-" if value is None else f"{value:.{digits}g}"

@@ -38,7 +38,8 @@ Recursion = tuple[tuple[Fraction, ...], tuple[Fraction, ...]]
 def exact(value: object) -> Fraction:
     """An mpmath number as a rational."""
     sign, mantissa, exponent, _ = mpmath.mpf(value)._mpf_
-    return (-1 if sign else 1) * Fraction(int(mantissa)) * Fraction(2) ** exponent
+    size = Fraction(int(mantissa)) * Fraction(2) ** int(exponent)
+    return -size if sign else size
 
 
 def pair(radius: Fraction, angle: object) -> poly.Rationals:
@@ -165,12 +166,12 @@ def test_enclosure_holds_the_sum_in_100_digits(ratio: PulseRatio, bits: int) -> 
     ids=["two pairs", "one pair twice", "pair and both ends", "real three times"],
 )
 def test_blocks_agree_with_the_terms_one_by_one(factors: tuple[poly.Rationals, ...]) -> None:
-    """Slow enough for the sums over blocks, fast enough to be summed in 100 digits: 60 time constants."""
+    """Slow enough for the sums over blocks, fast enough to be summed in 100 digits: 40 time constants."""
     bottom: poly.Rationals = (Fraction(1),)
     for factor in factors:
         bottom = poly.multiply(bottom, factor)
     ratio = pulse_ratio((1, Fraction(-1, 3), Fraction(1, 5)), bottom)
-    assert_holds(peak_gain(ratio), direct_sum(ratio, 60_000 if len(factors) > 1 else 30_000))
+    assert_holds(peak_gain(ratio), direct_sum(ratio, 40_000))
 
 
 @given(
@@ -285,7 +286,7 @@ def test_no_input_exceeds_the_gain(ratio: PulseRatio, values: list[int]) -> None
 
 def test_long_attaining_input_comes_within_the_tail() -> None:
     """After 300 samples, ``0.9^300`` of the pair is left."""
-    ratio, value = turning_pair(Fraction(9, 10), 4)
+    ratio, value = turning_pair(Fraction(9, 10), 3)
     assert value * (1 - Fraction(1, 10**13)) <= driven(ratio, attaining_input(ratio, 300))[-1] <= value
 
 
@@ -334,7 +335,7 @@ def chain_step(sections: list[Recursion]) -> object:
 
 @given(
     st.lists(
-        st.tuples(st.tuples(*[fractions(-2, 2, 4)] * 3), st.tuples(*[fractions(-1, 1, 8)] * 2)), min_size=1, max_size=3
+        st.tuples(st.tuples(*[fractions(-2, 2, 4)] * 3), st.tuples(*[fractions(-1, 1, 8)] * 2)), min_size=1, max_size=2
     )
 )
 def test_composed_paths_are_those_of_the_recursion_itself(sections: list[Recursion]) -> None:

@@ -136,7 +136,8 @@ def test_a_tracking_time_of_one_sample_drives_a_pid_to_the_wrong_limit(tracking_
     check = judged("PID", known, integrals_apart(counterpart("PID"), known))
     assert check.verdict == verdict
     if verdict == "out":
-        assert (check.obtained, check.reference) == (-1.0, 1.0)
+        # Both laws are at 1 then, so anything in the upper half would do.
+        assert (check.obtained, check.reference, check.difference) == (-1.0, 0.0, 50.0)
 
 
 def test_an_output_that_stays_at_the_limit_when_the_error_has_reversed_is_found_out() -> None:

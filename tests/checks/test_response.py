@@ -263,7 +263,9 @@ def test_bounds_hold_every_value_of_their_period_and_are_reached(
     samples = np.arange(start, start + 40)
     low, high = response.bounds_after(samples)
     inside = (samples[:, None] + np.linspace(0, 1, 200, endpoint=False)).astype(np.float64)
-    values = np.append(response.at(inside.ravel())[0].reshape(inside.shape), response.at(samples + 1.0)[0][:, None], 1)
+    values = np.append(
+        response.at(inside.ravel())[0].reshape(inside.shape), response.at(samples.astype(float) + 1)[0][:, None], 1
+    )
     # The cubic between points at most a quarter radian apart, and 200 points at most 3/200 rad apart.
     slack = 2e-5 * np.abs(values).max() + np.ptp(values, axis=1) * 3e-4
     assert np.all(low <= values.min(axis=1) + slack)

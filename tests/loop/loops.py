@@ -11,7 +11,6 @@ from realize.loop import Margins, Plant
 from realize.transfer import PulseTransferFunction, TransferFunction
 from tests.loop.independent import Figures, Ratio
 
-
 #: What margins, crossovers and sensitivity peaks are promised to.
 RELATIVE = 1e-6
 

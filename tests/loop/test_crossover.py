@@ -61,7 +61,11 @@ def test_pole_and_crossover_settle_on_each_other() -> None:
 
 def test_a_pole_that_comes_back_is_reported_as_not_settled() -> None:
     """A rule that answers a low crossover with a high pole and the other way round goes in a circle."""
-    found = settled_pole(20.0, lambda w: Fraction(30) if w > 15 else Fraction(3000), _causal, [LIGHT])
+    low, high = (highest_crossover_rad_s(_causal(pole), [LIGHT]) for pole in (Fraction(30), Fraction(3000)))
+    assert low is not None
+    assert high is not None
+    between = (low + high) / 2
+    found = settled_pole(20.0, lambda w: Fraction(30 if w > between else 3000), _causal, [LIGHT])
     assert not found.converged
     assert len(found.poles_rad_s) == 2
 

@@ -93,7 +93,7 @@ def test_the_stability_limit_is_told_to_the_last_digit(gain: str, stability: str
 
 
 def test_antenna_servo_has_the_published_equivalent_damping() -> None:
-    """Franklin, Powell & Workman: ``1/(s (10 s + 1))``, ``(10 s + 1)/(s + 1)``, T = 1 s: damping 0.2145 (recomputed)."""
+    """Franklin, Powell & Workman, T = 1 s: damping 0.2145 (recomputed)."""
     period = Fraction(1)
     pulse = discretize(transfer("10 1", "1 1"), period, "pole-zero-mapped").pulse
     held = held_plant(Plant(transfer("1", "10 1 0")), period, Fraction(0))
