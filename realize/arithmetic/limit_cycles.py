@@ -95,7 +95,7 @@ class Unforced(NamedTuple):
     kept : tuple of (int, int)
         Ranges of what else is in it.
     largest_sum : int
-        In a step, per step of the output.
+        In a step, per step of the output, the unit included.
     """
 
     step: Callable[[tuple[Counts, ...]], tuple[Counts, ...]]
@@ -148,7 +148,7 @@ def rounded_sum(a: Sequence[int], unit: int, rounding: Rounding) -> Unforced:
     def step(state: tuple[Counts, ...]) -> tuple[Counts, ...]:
         return rounding.apply(_fed_back(a, state), unit), *state[:-1]
 
-    return Unforced(step, _recursive(a, unit), 1, rounding, len(a), (), sum(map(abs, a)))
+    return Unforced(step, _recursive(a, unit), 1, rounding, len(a), (), unit + sum(map(abs, a)))
 
 
 def rounded_products(a: Sequence[int], unit: int, rounding: Rounding) -> Unforced:
@@ -158,7 +158,7 @@ def rounded_products(a: Sequence[int], unit: int, rounding: Rounding) -> Unforce
         return sum(rounding.apply(-c * y, unit) for c, y in zip(a, state, strict=True)), *state[:-1]
 
     inexact = sum(1 for c in a if c % unit)
-    return Unforced(step, _recursive(a, unit), inexact, rounding, len(a), (), sum(map(abs, a)))
+    return Unforced(step, _recursive(a, unit), inexact, rounding, len(a), (), unit + sum(map(abs, a)))
 
 
 def error_feedback(a: Sequence[int], unit: int, rounding: Rounding) -> Unforced:
@@ -177,7 +177,7 @@ def error_feedback(a: Sequence[int], unit: int, rounding: Rounding) -> Unforced:
         ceil(-(rounding.centre + rounding.half_range) * unit),
         floor((rounding.half_range - rounding.centre) * unit),
     )
-    return Unforced(step, path, 1, rounding, len(a), (discarded,), sum(map(abs, a)))
+    return Unforced(step, path, 1, rounding, len(a), (discarded,), unit + sum(map(abs, a)))
 
 
 def outputs(recursion: Unforced, start: Sequence[int], count: int) -> list[int]:

@@ -15,9 +15,9 @@ from realize.loop.figures import highest_peaks
 from realize.loop.response import Complex, Whole
 from realize.loop.states import States, product
 
-#: Samples in a block at the most, and blocks that are followed.
+#: Samples in a block at the most, and samples that are followed.
 _MOST_SAMPLES = 64
-_MOST_BLOCKS = 4096
+_MOST_FOLLOWED = 1 << 18
 
 #: Samples that are looked at, one in several of them where there are more; all of them in the first blocks, and in
 #: those around the highest peaks.
@@ -59,8 +59,8 @@ def starting(control: States, delay: int) -> tuple[Complex, Complex]:
 
 def moved_in_blocks(
     control: States, within: WithinPeriod, start: tuple[Complex, Complex], final: float
-) -> tuple[Whole, Complex]:
-    """Plant states and input at changes of the input, until all is at rest.
+) -> tuple[Whole, Complex] | None:
+    """Plant states and input at changes of the input, until all is at rest; None where that takes too long.
 
     Parameters
     ----------
@@ -77,7 +77,10 @@ def moved_in_blocks(
     """
     n, length = len(within.measured) - 1, min(len(start[1]), _MOST_SAMPLES)
     block = _block(*_one_sample(control, within), n, length)
-    states, inputs = _followed(block, np.concatenate([np.zeros(n, complex), start[0], [1.0]]), start[1], length)
+    followed = _followed(block, np.concatenate([np.zeros(n, complex), start[0], [1.0]]), start[1], length)
+    if followed is None:
+        return None
+    states, inputs = followed
     stride = min(_MOST_STRIDE, -(-inputs.size // _LOOKED_AT))
     every_one = _placed(block, states, inputs, np.arange(len(inputs)), stride)
     if stride == 1:
@@ -90,12 +93,14 @@ def moved_in_blocks(
     return samples, np.concatenate([full[1], every_one[1]], axis=1)[:, first]
 
 
-def _followed(block: _Block, state: Complex, pending: Complex, length: int) -> tuple[Complex, Complex]:
-    """States before each block, and its inputs."""
+def _followed(block: _Block, state: Complex, pending: Complex, length: int) -> tuple[Complex, Complex] | None:
+    """States before each block, and its inputs; None where all is not at rest after the last one."""
     before: list[Complex] = []
     inputs: list[Complex] = []
     delay, quiet, reference, size = len(pending), 0, 0.0 + 0j, 0.0
-    while len(inputs) < _MOST_BLOCKS and quiet <= 3 * delay + _MOST_SAMPLES:
+    while quiet <= 3 * delay + _MOST_SAMPLES:
+        if len(inputs) * length > _MOST_FOLLOWED:
+            return None
         now, pending = pending[:length], pending[length:]
         commands = _mapped(block.commands, state, now)
         before.append(state)

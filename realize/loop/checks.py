@@ -176,7 +176,8 @@ class _Judge:
         if not _is_stable(sampled):
             return self._check(name, None, None, None, rise, "%", "the sampled loop is not stable", within=False)
         if sampled.step is None:
-            return self.undefined(name, "the plant's output has no final value other than 0")
+            reason = "the plant's output has no final value other than 0, or takes too many samples to reach it"
+            return self.undefined(name, reason)
         obtained = sampled.step.overshoot_percent
         if delayed.step is None:
             return self.undefined(name, "the continuous loop with hold and delay does not settle")

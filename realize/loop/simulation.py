@@ -48,7 +48,10 @@ _DENSE_DELAY = 8
 
 
 def step_figures(loop: SampledLoop) -> StepFigures | None:
-    """Figures of the step; None where the loop is not stable or has no final value but 0.
+    """Figures of the step.
+
+    None where the loop is not stable, has no final value but 0, or, with more than 8 samples of delay, is not at rest
+    after a quarter of a million samples.
 
     Parameters
     ----------
@@ -58,7 +61,10 @@ def step_figures(loop: SampledLoop) -> StepFigures | None:
     if final is None or not loop.verdict.is_stable:
         return None
     within = within_period(loop.held)
-    samples, moving = _run(loop, within, final)
+    followed = _run(loop, within, final)
+    if followed is None:
+        return None
+    samples, moving = followed
     return figures_between(loop.held, within, samples, moving, final)
 
 
@@ -75,8 +81,11 @@ class _Map(NamedTuple):
     rows: Complex
 
 
-def _run(loop: SampledLoop, within: WithinPeriod, final: float) -> tuple[Whole, Complex]:
-    """Samples, and for each the plant's states and input at the change of the input that follows it by the delay."""
+def _run(loop: SampledLoop, within: WithinPeriod, final: float) -> tuple[Whole, Complex] | None:
+    """Samples, and for each the plant's states and input at the change of the input that follows it by the delay.
+
+    None where the output is not followed until it rests.
+    """
     if loop.held.whole > _DENSE_DELAY:
         control = _pulse_states(loop.controller)
         return moved_in_blocks(control, within, starting(control, loop.held.whole), final)

@@ -154,7 +154,8 @@ def frequency_fit(
     Returns
     -------
     Discretization
-        Named :data:`METHOD`, exact; the notes tell the residual and that of the best of the nine.
+        Named :data:`METHOD`, exact, with G's order and low-frequency gain; the notes tell the residual and that of the
+        best of the nine.
 
     Raises
     ------
@@ -165,10 +166,14 @@ def frequency_fit(
 
     Notes
     -----
-    The residual is the root of ``sum q weight^2 |Gd - G|^2 / sum q weight^2 |G|^2`` over the grid, q being the width in
-    ln w, so that it is a relative error. It is never above that of the best of the nine, those left out that turn a
-    decaying pole into a growing one: where no fit is below it, the result is that method's own pulse transfer
-    function, and a note says so.
+    The residual is the root of ``sum q weight^2 |Gd - G|^2 / sum q weight^2 |G|^2`` over the grid up to the band edge
+    (G compensated), q being the width in ln w, so that it is a relative error. Above the band a small share of the
+    relative error is added while fitting (:data:`_SHARE_ABOVE`). The residual is never above that of the best of the
+    nine, where those do not count that make a decaying pole grow: where no fit is below it, the result is that
+    method's own pulse transfer function (with its low-frequency gain), and a note says so.
+
+    Lead is had from zeros and poles that the design has anyway: a first-order controller can make up for little delay,
+    and what a higher order makes up for, it pays with gain above the band.
     """
     _refuse_unfit(transfer, period_s, band_rad_s)
     frame = _Frame(transfer, period_s, _grid(transfer, period_s, band_rad_s), compensation)

@@ -230,6 +230,15 @@ def test_long_delays_in_blocks_agree_with_sample_by_sample() -> None:
     assert np.diff(np.diff(found)) == pytest.approx(0, abs=0.03)
 
 
+def test_a_loop_that_rests_only_after_millions_of_samples_of_a_long_delay_has_no_figures() -> None:
+    """Dead time of 2000 samples and a tail a thousand dead times long: no figure rather than a wrong one."""
+    period = Fraction(1, 5000)
+    pulse = discretize(transfer("0.4 0.002", "1 0"), period, "bilinear").pulse
+    loop = SampledLoop(pulse, held_plant(Plant(transfer("1", "1 1"), Fraction("0.4")), period, Fraction(0)))
+    assert loop.verdict.is_stable
+    assert step_figures(loop) is None
+
+
 def test_the_second_road_itself_is_right_on_a_closed_form() -> None:
     """Runge-Kutta steps on the integrator with dead time: 50 %."""
     _, output = delayed_step(Ratio([1.0], [1.0, 0.0]), Ratio([1.0], [1.0]), 1.0, 50, 5.0)

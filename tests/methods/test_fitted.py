@@ -126,8 +126,8 @@ def wanted(asked: Design, w: Real, compensation: Compensation | None) -> Complex
     value = value * np.exp(1j * w * float(compensation.delay_s))
     # The hold, averaged over the period it holds for: (1 - exp(-j w T))/(j w T).
     turn = 1j * w * float(asked.period_s)
-    held: Complex = turn / (1 - np.exp(-turn))
-    return value * held if compensation.hold else value
+    held: Complex = value * turn / (1 - np.exp(-turn))
+    return held if compensation.hold else value
 
 
 def grid(asked: Design, count: int = 3000) -> Real:
@@ -205,8 +205,7 @@ def test_a_note_tells_both_residuals(name: str, choice: int) -> None:
     compared = discretize(asked.transfer, asked.period_s, other, asked.band_rad_s)
     for told, pulse in ((own, made.pulse), (best, compared.pulse)):
         measured = residual(asked, pulse, compensation)
-        # At a narrow resonance the evenly spaced grid of the tests and the denser one of the fit see other peaks.
-        assert float(told) / 100 == pytest.approx(measured, rel=0.2, abs=DOUBLES)
+        assert float(told) / 100 == pytest.approx(measured, rel=GRIDS_DIFFER - 1, abs=DOUBLES)
 
 
 @every_fit
@@ -297,6 +296,19 @@ def test_no_fitted_pole_rings_where_the_design_does_not(name: str, choice: int) 
         assert abs(x) <= 2 * (1 + 1e-12), root
 
 
+def test_forward_difference_does_not_count_where_it_loses_stability() -> None:
+    # It leads, which suits the compensation, but takes the pole at -2500 rad/s to z = -1.5.
+    asked, compensation = design(1, real(-1), real(-2500), 1000, 200), Compensation(False, Fraction(1, 2000))
+    made = asked.fitted(compensation=compensation)
+    forward, stable = (
+        residual(asked, discretize(asked.transfer, asked.period_s, name).pulse, compensation)
+        for name in ("forward-difference", "bilinear")
+    )
+    assert forward < stable
+    assert "forward" not in made.conversion.notes[0]
+    assert stability(made.pulse.denominator) == STABLE
+
+
 def test_poles_that_would_ring_are_moved_and_a_note_says_so() -> None:
     # A-weighting (IEC 61672-1) up to 16 kHz at 48 kHz: its pole pair is at a quarter of the rate, and the fit with the
     # least error has a pole at z = -0.99.
@@ -309,18 +321,33 @@ def test_poles_that_would_ring_are_moved_and_a_note_says_so() -> None:
     assert residual(asked, made.pulse) <= 0.5 * least_of_nine(asked)
 
 
-@pytest.mark.parametrize("name", ["lead", "PID", "notch", "resonant controller", "non-minimum-phase", "low-pass"])
-def test_an_independent_optimiser_finds_nothing_closer_nearby(name: str) -> None:
+@pytest.mark.parametrize(
+    ("name", "choice"),
+    [
+        ("lead", 0),
+        ("PID", 0),
+        ("PID", 1),
+        ("notch", 0),
+        ("notch", 2),
+        ("resonance near Nyquist", 0),
+        ("resonance near Nyquist", 1),
+        ("resonant controller", 0),
+        ("non-minimum-phase", 0),
+        ("low-pass", 0),
+    ],
+)
+def test_an_independent_optimiser_finds_nothing_closer_nearby(name: str, choice: int) -> None:
     # The same norm on another grid: the band, and above it a tenth of the residual of the best of the nine.
-    asked, made = DESIGNS[name], cached_fit(name, 0)
+    asked, made = DESIGNS[name], cached_fit(name, choice)
+    compensation = options_of(asked)[choice]
     edge, top = float(asked.band_rad_s), 0.95 * np.pi / float(asked.period_s)
-    inside, above = grid(asked, 1000), np.geomspace(edge, top, 60)[1:]
+    inside, above = grid(asked, 1000), np.geomspace(edge, top, 60)[1:] if edge < top else np.empty(0)
     w = np.append(inside, above)
-    share = 0.1 * least_of_nine(asked)
-    weights = np.append(np.full(len(inside), len(inside) ** -0.5), np.full(len(above), share * len(above) ** -0.5))
+    share = 0.1 * least_of_nine(asked, compensation)
+    weights = np.append(np.full(len(inside), len(inside) ** -0.5), share * np.full(len(above), len(above)) ** -0.5)
     half = w * float(asked.period_s) / 2
     delta = 2j * np.sin(half) * np.exp(1j * half)
-    goal = wanted(asked, w, None)
+    goal = wanted(asked, w, compensation)
     tops, bottoms = (
         np.array([float(c) for c in reversed(poly.shift(p, Fraction(1)))])
         for p in (made.pulse.numerator, made.pulse.denominator)

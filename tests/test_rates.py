@@ -1,0 +1,59 @@
+"""Rates: the lowest from which everything passes, found by the same checks as everywhere else."""
+
+from fractions import Fraction
+
+import pytest
+
+from realize.design import design_from_text
+from realize.errors import RealizeError
+from realize.rates import answer, rates
+from realize.report.range_of_rates import rates_document, rates_text
+from realize.workflow import compare
+
+LAG = '[design]\nname = "lag"\ntransfer = "1/(0.01*s + 1)"\n[sampling]\nband = "16 Hz"\n'
+
+
+@pytest.fixture(scope="module")
+def found():  # type: ignore[no-untyped-def]
+    return rates(design_from_text(LAG, "test.toml"), points=8)
+
+
+def test_each_answer_is_what_the_checks_say_there_and_one_rate_below(found) -> None:  # type: ignore[no-untyped-def]
+    for method in found.methods:
+        acceptable = [outcome.acceptable for outcome in method.outcomes]
+        if method.lowest_hz is not None:
+            first = found.rates_hz.index(method.lowest_hz)
+            assert all(acceptable[first:])
+            assert first == 0 or not acceptable[first - 1]
+        else:
+            assert not acceptable[-1]
+
+
+def test_the_outcomes_are_those_of_a_comparison_at_that_rate(found) -> None:  # type: ignore[no-untyped-def]
+    rate = found.rates_hz[3]
+    one = compare(design_from_text(LAG + f'period = "1/{rate} s"\n', "test.toml"))
+    assert {m.method: m.acceptable for m in one.methods} == {
+        m.method: m.outcomes[3].acceptable for m in found.methods
+    }
+
+
+def test_the_default_range_is_4_to_200_times_the_band(found) -> None:  # type: ignore[no-untyped-def]
+    assert found.rates_hz[0] == 64
+    assert found.rates_hz[-1] == 3200
+
+
+def test_screen_and_document_agree(found) -> None:  # type: ignore[no-untyped-def]
+    document, text = rates_document(found), rates_text(found)
+    assert document["answer"] == answer(found)
+    assert text.startswith(("yes: ", "no: "))
+    assert max(len(line) for line in text.splitlines()) <= 100
+    assert [m["method"] for m in document["methods"]] == [m.method for m in found.methods]
+
+
+@pytest.mark.parametrize(
+    ("low", "high", "points", "named"),
+    [(Fraction(100), Fraction(10), 8, "--from"), (None, None, 1, "--points"), (None, None, 5000, "--points")],
+)
+def test_an_empty_range_is_refused(low: Fraction | None, high: Fraction | None, points: int, named: str) -> None:
+    with pytest.raises(RealizeError, match=named):
+        rates(design_from_text(LAG, "test.toml"), low_hz=low, high_hz=high, points=points)
