@@ -207,6 +207,12 @@ def main(arguments: list[str] | None = None) -> None:
     except (click.Abort, KeyboardInterrupt):
         click.echo("stopped: nothing was written", err=True)
         sys.exit(130)
+    except BrokenPipeError:
+        # The reader has what it wanted; what is left in the buffer has nowhere to go.
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+    except Exception as error:  # whatever the user typed, the answer is a sentence
+        found = f"an error of realize itself, {type(error).__name__}: {error}"
+        _fail(RealizeError("internal", found, "", "report it together with the design file"), given)
 
 
 def _color() -> bool | None:

@@ -45,7 +45,8 @@ def jitter_margin(loop: SampledLoop) -> JitterMargin | None:
     Returns
     -------
     JitterMargin or None
-        None where the loop is not stable, or plant and sensor answer at once, so that the condition cannot hold.
+        None where the loop is not stable, where plant and sensor answer at once, so that the condition cannot hold, or
+        where their corners lie so far above the rate that the aliases are too many to sum.
 
     Notes
     -----
@@ -56,6 +57,8 @@ def jitter_margin(loop: SampledLoop) -> JitterMargin | None:
     if chain.relative_degree == 0 or not loop.verdict.is_stable:
         return None
     period = float(loop.period_s)
+    if _aliases(chain, 2 * pi / period) > _MOST_ALIASES:
+        return None
 
     def room(w: Real) -> Real:
         log_gain, phase = loop.response(w)
@@ -73,14 +76,19 @@ def jitter_margin(loop: SampledLoop) -> JitterMargin | None:
 
 def _alias_size(chain: TransferFunction, w: Real, turn: float) -> Real:
     """``sqrt(sum_k |G(j(w + k turn))|^2)``: near terms one by one, the rest by its integral (Euler-Maclaurin)."""
-    response, corner = Continuous(chain), max((abs(r.value) for r in chain.poles + chain.zeros), default=0.0)
-    count = min(max(ceil(_CORNERS * corner / turn), _LEAST_ALIASES), _MOST_ALIASES)
+    response, count = Continuous(chain), _aliases(chain, turn)
     aliases = np.abs(w[:, None] + turn * np.arange(-count, count + 1))
     size, _ = response.at(aliases.ravel())
     near: Real = np.exp(2 * size).reshape(aliases.shape).sum(axis=1)
     ends = (count + 0.5) * turn + np.array([[1.0], [-1.0]]) * w
     size_of_all: Real = np.sqrt(near + _beyond(chain, ends, turn).sum(axis=0))
     return size_of_all
+
+
+def _aliases(chain: TransferFunction, turn: float) -> int:
+    """How many are summed on each side."""
+    corner = max((abs(r.value) for r in chain.poles + chain.zeros), default=0.0)
+    return max(ceil(_CORNERS * corner / turn), _LEAST_ALIASES)
 
 
 def _beyond(chain: TransferFunction, start: Real, turn: float) -> Real:
