@@ -84,7 +84,12 @@ def loop_band(design: Design, controller: TransferFunction) -> tuple[Fraction, s
     if crossover is None:
         return None
     edge = Fraction(crossover)
-    return edge, f"band edge {frequency_text(edge)}: the crossover of controller, plant and sensor"
+    return edge, crossover_sentence(edge)
+
+
+def crossover_sentence(edge_rad_s: Fraction) -> str:
+    """Where a band edge comes from that is a crossover."""
+    return f"band edge {frequency_text(edge_rad_s)}: the crossover of controller, plant and sensor"
 
 
 def compute_delay_s(design: Design, period_s: Fraction) -> Fraction:

@@ -17,7 +17,7 @@ from realize.band import band_edge
 from realize.design import Design, design_from_resolved
 from realize.errors import RealizeError
 from realize.quantity import format_engineering, round_significant
-from realize.workflow import MethodResult, compare
+from realize.workflow import MethodResult, compare, methods_for
 
 #: Grid of the default range: sixty rates over a factor of 50 are 6.9 % apart.
 POINTS = 60
@@ -30,6 +30,9 @@ LOWEST_MULTIPLE, HIGHEST_MULTIPLE = 4, 200
 MOST_POINTS = 1000
 
 _DIGITS = 3
+
+#: Stands for all methods where a rate cannot be used by any.
+_EVERY_METHOD = "every method"
 
 
 class Outcome(NamedTuple):
@@ -133,7 +136,7 @@ def rates(
         except BaseException:
             pool.shutdown(cancel_futures=True)
             raise
-    methods = tuple(_summary(name, grid, [outcomes[name] for outcomes in found]) for name in found[-1])
+    methods = tuple(_summary(name, grid, [_of(name, outcomes) for outcomes in found]) for name in methods_for(design))
     return Rates(design, grid, methods, sentence, _rules(design, float(base_hz)))
 
 
@@ -144,7 +147,9 @@ def answer(found: Rates) -> str:
         return "no method is acceptable up to the highest rate of the range"
     names = "; ".join(f"{m.method} from {_hz(m.lowest_hz)}" for m in able)
     binding = able[0].binding
-    return f"{names}; {binding} binds" if binding else f"{names}, the lowest rate of the range"
+    if binding is None:
+        return f"{names}; the lowest rate of the range is good enough for {able[0].method}"
+    return f"{names}; below {_hz(able[0].lowest_hz)} {binding} binds"
 
 
 def _hz(rate: Fraction | None) -> str:
@@ -192,8 +197,12 @@ def _outcomes(rate_hz: Fraction) -> dict[str, Outcome]:
     try:
         results = compare(replace(_design, method="auto", period_s=1 / rate_hz)).methods
     except RealizeError as error:
-        return {"": Outcome(False, (), str(error))}
+        return {_EVERY_METHOD: Outcome(False, (), f"{error.where}: {error.found}")}
     return {result.method: _outcome(result) for result in results}
+
+
+def _of(name: str, outcomes: dict[str, Outcome]) -> Outcome:
+    return outcomes[name] if name in outcomes else outcomes[_EVERY_METHOD]
 
 
 def _outcome(result: MethodResult) -> Outcome:
@@ -210,21 +219,18 @@ def _summary(name: str, grid: Sequence[Fraction], outcomes: Sequence[Outcome]) -
 
 
 def _what_failed(outcome: Outcome) -> str:
-    return "refusal" if outcome.refused else outcome.out[0]
+    return f"refused: {outcome.refused}" if outcome.refused else outcome.out[0]
 
 
 def _rules(design: Design, base_hz: float) -> tuple[str, ...]:
-    """Rules of thumb; the books were not at hand, so they are from memory."""
+    """Rules of thumb, both from memory: the books were not at hand."""
     rules = [
-        f"20 to 40 times the bandwidth (Franklin, Powell & Workman, from memory): {20 * base_hz:.4g} to "
+        f"20 to 40 times the bandwidth (Franklin, Powell & Workman): {20 * base_hz:.4g} to "
         f"{40 * base_hz:.4g} Hz, the band edge or crossover standing in for the bandwidth"
     ]
     rise_s = _rise_time_s(design)
     if rise_s:
-        rules.append(
-            f"4 to 10 samples per rise time (Astrom & Wittenmark, from memory): {4 / rise_s:.4g} to "
-            f"{10 / rise_s:.4g} Hz"
-        )
+        rules.append(f"4 to 10 samples per rise time (Astrom & Wittenmark): {4 / rise_s:.4g} to {10 / rise_s:.4g} Hz")
     return tuple(rules)
 
 

@@ -87,7 +87,13 @@ class Assessment(NamedTuple):
     around: Circumstances
 
 
-def assess(transfer: TransferFunction, *, band_rad_s: Fraction | None = None, **known: Unpack[Known]) -> Assessment:
+def assess(
+    transfer: TransferFunction,
+    *,
+    band_rad_s: Fraction | None = None,
+    band_rests_on: str | None = None,
+    **known: Unpack[Known],
+) -> Assessment:
     """Say whether a transfer function is realizable, what is not, and what would make it so.
 
     Parameters
@@ -96,6 +102,8 @@ def assess(transfer: TransferFunction, *, band_rad_s: Fraction | None = None, **
         As the user wrote it.
     band_rad_s : Fraction or None
         Band edge, where the design names one.
+    band_rests_on : str or None
+        Where that figure comes from, if not from the design itself.
     **known
         What else the design says of itself, as for :func:`realize.rolloff.circumstances`.
 
@@ -104,7 +112,7 @@ def assess(transfer: TransferFunction, *, band_rad_s: Fraction | None = None, **
     RealizeError
         When the phase budget is not above 0 and below 90 deg.
     """
-    around = circumstances(transfer, band_rad_s=band_rad_s, **known)
+    around = circumstances(transfer, band_rad_s=band_rad_s, band_rests_on=band_rests_on, **known)
     terms = tuple(_term(power, coefficient, around.period_s) for power, coefficient in improper_terms(transfer))
     notes = [*_causality_notes(transfer), *_root_notes(transfer)]
     if terms:

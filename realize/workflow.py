@@ -168,22 +168,39 @@ class Comparison:
         return next((m for m in self.methods if m.method == name), None)
 
     @property
+    def closest(self) -> MethodResult | None:
+        """The chosen method, else the one that came closest to being acceptable."""
+        tried = [m for m in self.methods if m.refused is None]
+        return self.chosen or min(tried, key=_ratio, default=None)
+
+    @property
     def acceptable(self) -> bool:
         """Whether the chosen method may be emitted."""
         return self.chosen is not None and self.chosen.acceptable
 
 
 def assess_design(design: Design) -> Assessment:
-    """Say whether a design is realizable, and what would make it so."""
-    return assess(design.transfer, **_circumstances(design))
+    """Say whether a design is realizable, and what would make it so; with a plant, every pole settled in its loop."""
+    assessment = assess(design.transfer, **_circumstances(design))
+    if assessment.realizable or not _follows_crossover(design):
+        return assessment
+    settled = [
+        _with_rolloff(
+            design, Rolloff(p.placement, p.order, p.damping, None, p.phase_budget_deg), assessment.around, assumed=True
+        ).proposal
+        for p in assessment.proposals
+    ]
+    return assessment._replace(proposals=tuple(p for p in settled if p is not None))
 
 
 def _circumstances(design: Design) -> dict[str, Any]:
     """What roll-off poles are judged by, as far as the design says."""
     signals, tolerances = _signals(design), Tolerances.of(design.tolerance)
+    edge, rests_on = _band(design, design.transfer) if _follows_crossover(design) else (design.band_rad_s, None)
     given = {
         "period_s": design.period_s,
-        "band_rad_s": _band(design, design.transfer)[0] if _follows_crossover(design) else design.band_rad_s,
+        "band_rad_s": edge,
+        "band_rests_on": rests_on,
         "converter_step_tolerance_percent": tolerances.exact("converter_step"),
         "input_per_count": signals.input_per_count,
         "output_span": signals.output_span,
@@ -237,10 +254,11 @@ def _with_rolloff(design: Design, asked: Rolloff, around: Circumstances, *, assu
         proposal = proposed(around)
         return Causal(proposal.transfer, proposal, assumed)
     from realize.loop import settled_pole
-    from realize.loop_design import plants_of
+    from realize.loop_design import crossover_sentence, plants_of
 
     def at_crossover(crossover_rad_s: float) -> Circumstances:
-        return around._replace(band_rad_s=Fraction(crossover_rad_s))
+        edge = Fraction(crossover_rad_s)
+        return around._replace(band_rad_s=edge, band_rests_on=crossover_sentence(edge))
 
     settled = settled_pole(
         float(around.band_rad_s),
@@ -464,6 +482,8 @@ def _recommendation(results: Sequence[MethodResult]) -> tuple[str | None, str]:
     reason = f"its worst figure, {check.check}, uses {100 * ratio:.3g} % of its tolerance"
     if len(near) > 1:
         return best.method, f"{reason}; preferred among {len(near)} methods within 5 % of each other"
+    if len(acceptable) == 1:
+        return best.method, f"{reason}; it is the only acceptable method"
     return best.method, f"{reason}, the least of {len(acceptable)} acceptable methods"
 
 
@@ -504,9 +524,11 @@ def _failures(result: MethodResult) -> str:
 
 
 def _failure(check: Check) -> str:
-    if check.difference is None or check.tolerance is None or check.check == "stability":
+    if check.difference is None or not check.tolerance:
         return f"{check.check}: {check.reason}"
-    return f"{check.check} differs by {check.difference:.5g} {check.unit} (tolerance {check.tolerance:.5g})"
+    unit = f" {check.unit}" if check.unit else ""
+    where = f"; {check.reason}" if check.check.startswith("loop") else ""
+    return f"{check.check} differs by {check.difference:.5g}{unit} (tolerance {check.tolerance:.5g}{unit}){where}"
 
 
 def _alternative(design: Design) -> str:
@@ -517,8 +539,7 @@ def _alternative(design: Design) -> str:
 
 def _advice(comparison: Comparison) -> str:
     """What would help, from what stands in the way."""
-    tried = [r for r in comparison.methods if r.refused is None]
-    closest = comparison.chosen or min(tried, key=_ratio, default=None)
+    closest = comparison.closest
     if closest is None:
         return "`realize compare` shows why each method was refused"
     if any(c.check == "stability" for c in closest.blocking):
@@ -526,6 +547,10 @@ def _advice(comparison: Comparison) -> str:
         if own:
             return 'where the growing mode is meant, [[accept]] with check = "stability", because and by'
         return _alternative(comparison.design) or "another method, or a higher sample rate"
+    if any(c.check == "loop stability" and c.reference != "stable" for c in closest.blocking):
+        return (
+            "the sign and the gain of [plant]: the loop is not stable before sampling either, and no method mends that"
+        )
     unspoilt = {c.check for c in closest.checks if c.of == "exact" and c.verdict == "within"}
     if all(c.check in unspoilt for c in closest.blocking):
         wider = 'arithmetic = "float64", or ' if comparison.design.target.arithmetic == "float32" else ""

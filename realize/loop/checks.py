@@ -94,9 +94,19 @@ def measured_loop_checks(
 
 
 def worst_case(checks: Sequence[Check]) -> Check:
-    """The check to show of one that was made for several cases: out before within, then by the room that is used."""
+    """The check to show of one that was made for several cases.
+
+    Out before within, then by the room that is used, then by what is left of it to the floor.
+    """
     rank = {OUT: 2, WITHIN: 1, UNDEFINED: 0}
-    return max(checks, key=lambda check: (rank[check.verdict], _used(check)))
+    return max(checks, key=lambda check: (rank[check.verdict], _used(check), _badness(check)))
+
+
+def _badness(check: Check) -> float:
+    """How bad the figure itself is: a small phase margin, a large sensitivity or overshoot."""
+    if not isinstance(check.obtained, float):
+        return 0.0
+    return -check.obtained if check.check == "loop phase margin" else check.obtained
 
 
 def _used(check: Check) -> float:
@@ -138,6 +148,12 @@ class _Judge:
             return self._check(
                 name, wanted, obtained, None, loss, "deg", "the sampled loop is not stable", within=False
             )
+        if obtained is None and sampled.verdict is None and wanted is not None:
+            reason = (
+                f"the continuous loop crosses over at {_frequency(delayed.margins.crossover_rad_s)}, and no crossover "
+                "is left below half the sample rate where the plant was measured"
+            )
+            return self._check(name, wanted, None, None, loss, "deg", reason, within=False)
         if obtained is None:
             return self.undefined(name, "there is no gain crossover")
         where = f"at {_frequency(sampled.margins.crossover_rad_s)}"

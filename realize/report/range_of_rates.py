@@ -17,8 +17,20 @@ def rates_text(found: Rates) -> str:
     setting = [f"{len(found.rates_hz)} rates from {low} to {high}, on a logarithmic grid", found.rests_on]
     head = ["method", "lowest rate", "what binds there"]
     rows = [[m.method, _lowest(m), _binding(m)] for m in found.methods]
+    setting += _own_rate(found)
     blocks = [first, "".join(wrapped(line, indent="  ") for line in setting), table([head, *rows])]
     return "\n".join([*blocks, heading("Rules of thumb, for comparison") + bullets(found.rules)])
+
+
+def _own_rate(found: Rates) -> list[str]:
+    """Where the design's own rate lies."""
+    able = [m for m in found.methods if m.lowest_hz is not None]
+    if found.design.period_s is None or not able:
+        return []
+    own_hz = 1 / found.design.period_s
+    chosen = next((m for m in able if m.method == found.design.method), min(able, key=lambda m: m.lowest_hz or 0))
+    times = float(own_hz / (chosen.lowest_hz or 1))
+    return [f"the design's own {format_engineering(own_hz, 'Hz')} is {times:.3g} times the least for {chosen.method}"]
 
 
 def _lowest(method: MethodRates) -> str:

@@ -6,7 +6,8 @@ digits.
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping, Sequence
+import re
+from collections.abc import Iterable, Mapping, Sequence, Set
 from math import log, pi
 from textwrap import fill
 from typing import TYPE_CHECKING, Any
@@ -25,6 +26,9 @@ if TYPE_CHECKING:
     from realize.loop_design import LoopResult
 
 WIDTH = 100
+
+#: The space between a number and its unit.
+_UNIT_AFTER_NUMBER = re.compile(r"([0-9]) (?=(?:%|Hz|kHz|MHz|rad/s|deg|dB|s|ms|us)(?![A-Za-z]))")
 
 #: Longest transfer function printed in lowest terms: beyond it the user's own text says more.
 _LONGEST_TRANSFER = 400
@@ -45,7 +49,29 @@ _COLUMNS = (
 )
 
 #: Checks without a column, named in words where they are out.
-_UNSHOWN = ("stability", "saturation recovery")
+_UNSHOWN = (
+    "stability",
+    "saturation recovery",
+    "loop stability",
+    "loop phase margin",
+    "loop sensitivity",
+    "loop overshoot",
+)
+
+#: Unit of the values of a check, where it is not that of the difference.
+_VALUE_UNITS = {
+    "pole shift": "rad/s",
+    "zero shift": "rad/s",
+    "magnitude in band": "dB",
+    "phase in band": "deg",
+    "step overshoot": "%",
+    "converter step": "%",
+    "loop phase margin": "deg",
+    "loop overshoot": "%",
+}
+
+#: Checks whose difference is one of percentages: points.
+_IN_POINTS = ("step overshoot", "loop overshoot")
 
 #: Differences above this are lost causes, by whatever factor.
 _MOST_SHOWN = 1e6
@@ -68,7 +94,7 @@ def assess_text(design: Design, assessment: Assessment) -> str:
         blocks.append(_proposals_block(assessment.proposals))
     if assessment.notes:
         blocks.append(heading("Notes") + bullets(assessment.notes))
-    if assessment.proposals:
+    if assessment.proposals and design.rolloff is None:
         blocks.append(
             heading("To take the first proposal, add to the design file") + rolloff_toml(assessment.proposals[0])
         )
@@ -81,13 +107,15 @@ def compare_text(comparison: Comparison) -> str:
     refused = [m for m in comparison.methods if m.refused]
     if refused:
         blocks.append(heading("Refused") + bullets(f"{m.method}: {m.refused}" for m in refused))
-    if comparison.chosen and comparison.chosen.refused is None:
-        blocks.append(_checks_block(comparison.chosen))
+    if comparison.closest and comparison.closest.refused is None:
+        blocks.append(_checks_block(comparison.closest))
     if comparison.design.method == "auto" and comparison.recommended:
-        blocks.append(
-            heading("To pin the method, add to the design file") + f'[method]\nname = "{comparison.recommended}"\n'
-        )
+        blocks.append(_pin(comparison.recommended))
     return "\n".join(blocks)
+
+
+def _pin(method: str) -> str:
+    return heading("To pin the method, under [method]") + f'name = "{method}"\n'
 
 
 def emit_text(comparison: Comparison, chosen: MethodResult, paths: Sequence[str]) -> str:
@@ -101,13 +129,18 @@ def emit_text(comparison: Comparison, chosen: MethodResult, paths: Sequence[str]
         f"{_count(len(chosen.realization.integral), 'integral state')}, "
         f"{_count(len(chosen.realization.sections), 'section')}"
     )
-    blocks = [wrapped(first), _setting(comparison), _checks_block(chosen)]
-    accepted = [f"{c.check}: {a.because} ({a.by})" for c, a in chosen.accepted]
-    blocks += [heading("Accepted deviations") + bullets(accepted)] if accepted else []
+    blocks = [wrapped(first + _accepted_words(chosen)), _setting(comparison), _checks_block(chosen)]
     blocks.append(heading(f"Written ({what})") + "".join(f"  {path}\n" for path in paths))
-    if design.method == "auto":
-        blocks.append(heading("To pin the method, add to the design file") + f'[method]\nname = "{chosen.method}"\n')
+    blocks += [_pin(chosen.method)] if design.method == "auto" else []
     return "\n".join([*blocks, wrapped(CAUTION)])
+
+
+def _accepted_words(result: MethodResult) -> str:
+    """For the first line: what is out but agreed to."""
+    if not result.accepted:
+        return ""
+    names = dict.fromkeys(check.check for check, _ in result.accepted)
+    return f"; with {_count(len(names), 'accepted deviation')}: {', '.join(names)}"
 
 
 def _verdict(design: Design, assessment: Assessment) -> str:
@@ -115,6 +148,11 @@ def _verdict(design: Design, assessment: Assessment) -> str:
         return wrapped(
             f"yes: {design.name} is realizable: at least as many poles as zeros. "
             "Next: `realize compare` shows what each method makes of it."
+        )
+    if design.rolloff is not None:
+        return wrapped(
+            f"yes: {design.name} is realizable with the roll-off that it asks for; as it is written it is not: "
+            f"{assessment.terms[0].text}. Next: `realize compare`."
         )
     best = assessment.proposals[0]
     lost = "" if best.phase_lost_deg is None else f" and costs {best.phase_lost_deg:.3g} deg at the band edge"
@@ -186,9 +224,11 @@ def _comparison_verdict(comparison: Comparison) -> str:
     if chosen.refused:
         return wrapped(f"no: {chosen.method} does not apply to {name}: {chosen.refused}.")
     if comparison.design.method == "auto":
-        return wrapped(f"yes: {chosen.method} is recommended for {name}: {comparison.because}.")
+        agreed = _accepted_words(chosen)
+        return wrapped(f"yes: {chosen.method} is recommended for {name}: {comparison.because}{agreed}.")
     if chosen.acceptable:
-        return wrapped(f"yes: {chosen.method}, which the design names, is within every tolerance.")
+        agreed = _accepted_words(chosen)
+        return wrapped(f"yes: {chosen.method}, which the design names, is within every tolerance{agreed}.")
     names = ", ".join(dict.fromkeys(check.check for check in chosen.blocking))
     also = f" Recommended instead: {comparison.recommended}." if comparison.recommended else ""
     return wrapped(f"no: {chosen.method}, which the design names, is out of tolerance on {names}.{also}")
@@ -208,6 +248,8 @@ def _setting(comparison: Comparison) -> str:
             + ("" if p.phase_lost_deg is None else f", {p.phase_lost_deg:.3g} deg lost at the band edge")
         )
         lines += [causal.note] if causal.note else []
+        if not p.within_window:
+            lines.append(f"the roll-off pole lies outside its window, {_window(p.window_rad_s)} rad/s: " + p.reasons[0])
     return "".join(wrapped(line, indent="  ") for line in lines)
 
 
@@ -220,7 +262,7 @@ def _methods_table(methods: Sequence[MethodResult]) -> str:
         "* out but accepted, - undefined (which does not block)."
     )
     out = _out_without_column(methods)
-    return table([*head, _tolerance_row(methods), *rows], gap=1) + wrapped(key) + bullets(out)
+    return table([*head, _tolerance_row(methods), *rows]) + wrapped(key) + bullets(out)
 
 
 def _out_without_column(methods: Sequence[MethodResult]) -> list[str]:
@@ -254,13 +296,16 @@ def _cell(method: MethodResult, name: str) -> str:
 def _checks_block(result: MethodResult) -> str:
     """One row a check: what the method did, and what rounding the stored numbers made of it."""
     head = [
-        ["check", "design", "stored", "difference", "", "tolerance", "verdict"],
-        ["", "", "", "by method", "as stored", "", ""],
+        ["check", "in", "design", "stored", "difference", "", "tolerance", "verdict"],
+        ["", "", "", "", "by method", "as stored", "", ""],
     ]
     exact = {check.check: check for check in result.checks if check.of == "exact"}
-    rows = [_check_row(check, exact.get(check.check, check)) for check in result.stored_checks]
-    reasons = [f"{c.check}: {c.reason}" for c in result.stored_checks if c.reason and c.verdict != "within"]
+    agreed = {check.check for check, _ in result.accepted}
+    rows = [_check_row(check, exact.get(check.check, check), agreed) for check in result.stored_checks]
+    reasons = [f"{c.check}: {c.reason}" for c in result.stored_checks if c.reason and _wants_words(c)]
     block = heading(f"Checks of {result.method}") + table([*head, *rows]) + bullets(reasons)
+    accepted = [f"{c.check}, {_value_text(c.obtained)} obtained: {a.because} ({a.by})" for c, a in result.accepted]
+    block += ("\n" + heading("Accepted deviations") + bullets(accepted)) if accepted else ""
     block += _loop_block(result.loop) if result.loop else ""
     return block + (heading("Notes") + bullets(result.notes) if result.notes else "")
 
@@ -279,14 +324,18 @@ def _loop_block(loop: LoopResult) -> str:
         title = [f"  case {entry['case']}:"] if entry["case"] else []
         block += "\n".join([*title, *lines[first : first + len(kinds)]]) + "\n"
     if loop.ledger is not None:
-        items = [*loop.ledger.items, ("total", loop.ledger.total_deg)]
-        block += "\n" + heading(f"Phase at the crossover, {_hz(loop.ledger.w_rad_s)}, against the ideal controller")
+        left = loop.entries[0]["discrete"]["phase_margin_deg"]
+        items = [*loop.ledger.items, ("in all", loop.ledger.total_deg)]
+        items += [("phase margin left", left)] if left is not None else []
+        block += "\n" + heading(
+            f"Phase at the crossover, {_hz(loop.ledger.w_rad_s)}, against controller and plant alone"
+        )
         # Adding 0 turns a rounded -0 into 0.
         block += table([[name, f"{round(value, 2) + 0.0:.2f} deg"] for name, value in items])
     if loop.jitter is not None:
         margin = format_engineering(loop.jitter.jitter_s, "s")
         block += wrapped(f"jitter margin {margin}: delay may vary by so much (sufficient, not necessary)", indent="  ")
-    return block + "\n"
+    return block
 
 
 def _loop_row(kind: str, figures: Mapping[str, Any]) -> list[str]:
@@ -308,16 +357,24 @@ def _with_unit(value: float | None, unit: str) -> str:
     return "-" if value is None else f"{value:.3g}{unit}"
 
 
-def _check_row(stored: Check, exact: Check) -> list[str]:
-    unit = f" {stored.unit}" if stored.unit and stored.tolerance is not None else ""
+def _wants_words(check: Check) -> bool:
+    """Whether a figure alone would puzzle: not within, or two values that differ by nothing."""
+    differ = _value_text(check.reference) != _value_text(check.obtained)
+    return check.verdict != "within" or (check.difference == 0 and differ)
+
+
+def _check_row(stored: Check, exact: Check, agreed: Set[str]) -> list[str]:
+    unit = "points" if stored.check in _IN_POINTS else stored.unit
+    verdict = "accepted" if stored.verdict == "out" and stored.check in agreed else stored.verdict
     return [
         stored.check,
+        _VALUE_UNITS.get(stored.check, ""),
         _value_text(stored.reference),
         _value_text(stored.obtained),
         _figure(exact.difference),
         _figure(stored.difference),
-        _figure(stored.tolerance) + unit,
-        stored.verdict,
+        f"{_figure(stored.tolerance)} {unit}".strip(),
+        verdict,
     ]
 
 
@@ -367,13 +424,16 @@ def bullets(items: Iterable[str]) -> str:
 
 
 def wrapped(text: str, indent: str = "", rest: str | None = None) -> str:
-    """A paragraph within the width."""
+    """A paragraph within the width; a number stays with its unit."""
     follow = indent if rest is None else rest
-    return fill(text, WIDTH, initial_indent=indent, subsequent_indent=follow, break_on_hyphens=False) + "\n"
+    whole = _UNIT_AFTER_NUMBER.sub("\\1\0", text)
+    lines = fill(whole, WIDTH, initial_indent=indent, subsequent_indent=follow, break_on_hyphens=False)
+    return lines.replace("\0", " ") + "\n"
 
 
-def table(rows: Sequence[Sequence[str]], gap: int = 2) -> str:
-    """Columns flush left, each as wide as its widest cell, ``gap`` spaces apart."""
+def table(rows: Sequence[Sequence[str]]) -> str:
+    """Columns flush left, each as wide as its widest cell, two spaces apart, or one where room is short."""
     widths = [max(len(row[i]) for row in rows) for i in range(len(rows[0]))]
+    gap = 2 if sum(widths) + 2 * len(widths) <= WIDTH else 1
     lines = ((" " * gap).join(cell.ljust(w) for cell, w in zip(row, widths, strict=True)) for row in rows)
     return "".join(f"  {line.rstrip()}\n" for line in lines)

@@ -72,7 +72,11 @@ class Known(TypedDict, total=False):
 
 
 def circumstances(
-    transfer: TransferFunction, *, band_rad_s: Fraction | None = None, **known: Unpack[Known]
+    transfer: TransferFunction,
+    *,
+    band_rad_s: Fraction | None = None,
+    band_rests_on: str | None = None,
+    **known: Unpack[Known],
 ) -> Circumstances:
     """Collect what a roll-off of ``transfer`` is judged by; the band edge is assumed where none is given.
 
@@ -82,6 +86,8 @@ def circumstances(
         ``C(s)`` as the user wrote it.
     band_rad_s : Fraction or None
         Band edge, where the design names one.
+    band_rests_on : str or None
+        Where that figure comes from, if not from the design itself.
     **known
         ``period_s``, ``phase_budget_deg``, ``converter_step_tolerance_percent``, ``input_per_count``,
         ``output_span`` and ``method`` as in :class:`Circumstances`, as far as the design says.
@@ -92,7 +98,7 @@ def circumstances(
         When the phase budget is not above 0 and below 90 deg.
     """
     edge, rests_on = band_edge(transfer, known.get("period_s"), band_rad_s)
-    around = Circumstances(edge, rests_on, **known)
+    around = Circumstances(edge, band_rests_on or rests_on, **known)
     if not 0 < around.phase_budget_deg < LARGEST_BUDGET_DEG:
         raise RealizeError(
             "[rolloff] phase_budget",
