@@ -6,6 +6,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import cached_property
+from math import degrees, pi, remainder
 from typing import Any, NamedTuple
 
 import numpy as np
@@ -33,7 +34,7 @@ from realize.loop import (
     read_response,
     worst_case,
 )
-from realize.loop.response import Continuous, Real
+from realize.loop.response import Continuous, Real, phase_at
 from realize.methods import Discretization
 from realize.methods.fitted import Compensation, Weight, frequency_fit
 from realize.transfer import PulseTransferFunction, TransferFunction
@@ -90,6 +91,30 @@ def loop_band(design: Design, controller: TransferFunction) -> tuple[Fraction, s
 def crossover_sentence(edge_rad_s: Fraction) -> str:
     """Where a band edge comes from that is a crossover."""
     return f"band edge {frequency_text(edge_rad_s)}: the crossover of controller, plant and sensor"
+
+
+def phase_margins_deg(design: Design, rolled_off: Sequence[TransferFunction]) -> tuple[tuple[float, float | None], ...]:
+    """Phase margin of the continuous loop before and after each roll-off, worst case; empty without a crossover."""
+    plants = plants_of(design)
+    before = [margin for plant in plants if (margin := _margin_at_crossover_deg(design.transfer, plant)) is not None]
+    if not before:
+        return ()
+    return tuple((min(before), _least_margin_deg(controller, plants)) for controller in rolled_off)
+
+
+def _least_margin_deg(controller: TransferFunction, plants: Sequence[Plant]) -> float | None:
+    margins = (ContinuousLoop(controller, plant).margins.phase_margin_deg for plant in plants)
+    return min((margin for margin in margins if margin is not None), default=None)
+
+
+def _margin_at_crossover_deg(controller: TransferFunction, plant: Plant) -> float | None:
+    """Angle left to -180 deg at the highest crossover, of an improper controller too."""
+    crossover = highest_crossover_rad_s(controller, [plant])
+    if crossover is None:
+        return None
+    parts = (controller, plant.transfer, plant.sensor)
+    phase = sum(phase_at(Continuous(part), crossover) for part in parts) - crossover * float(plant.dead_time_s)
+    return degrees(remainder(phase + pi, 2 * pi))
 
 
 def compute_delay_s(design: Design, period_s: Fraction) -> Fraction:

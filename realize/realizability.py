@@ -77,6 +77,9 @@ class Assessment(NamedTuple):
         Sentences for people.
     around : Circumstances
         Band edge, budget and signals the proposals were judged by.
+    phase_margins_deg : tuple of (float, float or None)
+        With a plant, for each proposal: the phase margin of the continuous loop before, at the highest crossover of
+        the transfer function as written, and after; of the worst case.
     """
 
     transfer: TransferFunction
@@ -85,6 +88,7 @@ class Assessment(NamedTuple):
     proposals: tuple[Proposal, ...]
     notes: tuple[str, ...]
     around: Circumstances
+    phase_margins_deg: tuple[tuple[float, float | None], ...] = ()
 
 
 def assess(

@@ -182,15 +182,26 @@ class Comparison:
 def assess_design(design: Design) -> Assessment:
     """Say whether a design is realizable, and what would make it so; with a plant, every pole settled in its loop."""
     assessment = assess(design.transfer, **_circumstances(design))
-    if assessment.realizable or not _follows_crossover(design):
+    if assessment.realizable or design.plant is None:
         return assessment
+    from realize.loop_design import phase_margins_deg
+
+    assessment = assessment._replace(proposals=_settled_proposals(design, assessment))
+    margins = phase_margins_deg(design, [p.transfer for p in assessment.proposals])
+    return assessment._replace(phase_margins_deg=margins)
+
+
+def _settled_proposals(design: Design, assessment: Assessment) -> tuple[Proposal, ...]:
+    """The proposals, each with the pole that its own crossover calls for."""
+    if not _follows_crossover(design):
+        return assessment.proposals
     settled = [
         _with_rolloff(
             design, Rolloff(p.placement, p.order, p.damping, None, p.phase_budget_deg), assessment.around, assumed=True
         ).proposal
         for p in assessment.proposals
     ]
-    return assessment._replace(proposals=tuple(p for p in settled if p is not None))
+    return tuple(p for p in settled if p is not None)
 
 
 def _circumstances(design: Design) -> dict[str, Any]:

@@ -13,9 +13,13 @@ from realize.errors import Refused
 #: Bits of the first enclosure: enough for float64 with 139 bits of cancellation to spare.
 FIRST_BITS = 192
 
-#: An enclosure that still holds one rounding boundary at this width is taken to be that boundary: the numbers
-#: the methods produce from designs of a few hundred digits do not come within 2**-4000 of one otherwise.
-MOST_BITS = 4096
+#: An enclosure narrower than this fraction of its value that still holds one rounding boundary is taken to be that
+#: boundary: the numbers the methods produce from designs of a few hundred digits do not come so near one otherwise.
+_TIE_BITS = 4000
+
+#: Working bits after which a result is given up: stiff designs of high order lose some thousands of bits to repeated
+#: squaring, and none of the permitted degree loses so many.
+MOST_BITS = 1 << 16
 
 
 @dataclass(frozen=True)
@@ -88,26 +92,27 @@ def correctly_rounded(enclose: Callable[[int], Enclosure], target: FloatFormat) 
     bits = FIRST_BITS
     while True:
         try:
-            ends = [_rounded_ends(low, high, unit, target) for low, high, unit in enclose(bits).intervals()]
-            if bits >= MOST_BITS or all(low == high for low, high in ends):
-                return tuple(low if low == high else _tie(low, high, target) for low, high in ends)
+            return tuple(_rounded(interval, target) for interval in enclose(bits).intervals())
         except (Unresolved, Refused):
             # An end beyond the format may be the enclosure's width alone.
             if bits >= MOST_BITS:
                 raise
-        bits = min(2 * bits, MOST_BITS)
+        bits *= 2
 
 
-def _rounded_ends(low: int, high: int, unit: int, target: FloatFormat) -> tuple[float, float]:
-    """Both ends of ``[low, high] / unit``, rounded."""
-    first = target.round_ratio(low, unit)
-    return first, first if low == high else target.round_ratio(high, unit)
-
-
-def _tie(low: float, high: float, target: FloatFormat) -> float:
-    """The even one of two neighbouring values; in units of the finer one, the odd one is odd."""
-    if target.round((Fraction(low) + Fraction(high)) / 2) not in (low, high):
+def _rounded(interval: tuple[int, int, int], target: FloatFormat) -> float:
+    """The value that both ends of ``[low, high] / unit`` round to, or the even one at a tie."""
+    low, high, unit = interval
+    ends = target.round_ratio(low, unit), target.round_ratio(high, unit)
+    if ends[0] == ends[1]:
+        return ends[0]
+    if (high - low) << _TIE_BITS > max(abs(low), abs(high)):
         raise Unresolved
+    return _even_neighbour(*ends)
+
+
+def _even_neighbour(low: float, high: float) -> float:
+    """The even one of two neighbouring values; in units of the finer one, the odd one is odd."""
     (low_top, low_unit), (high_top, high_unit) = low.as_integer_ratio(), high.as_integer_ratio()
     unit = max(low_unit, high_unit)
     low_count, high_count = low_top * (unit // low_unit), high_top * (unit // high_unit)

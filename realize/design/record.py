@@ -60,9 +60,9 @@ def resolved(design: Design) -> dict[str, Any]:
     -------
     dict
         ``name``, ``about``, ``revision``, ``requirement``, ``author``; ``transfer`` (as written), ``numerator``,
-        ``denominator``, ``cancelled`` (exact, descending powers of s); ``values`` (a list of name and value);
-        ``sampling``, ``rolloff`` (or null), ``method``, ``plant`` and ``loop`` (or null), ``signals``, ``target``,
-        ``tolerance`` (those that differ from their defaults) and ``accept``.
+        ``denominator``, ``cancelled`` (exact, descending powers of s; ``cancelled`` is empty where nothing was);
+        ``values`` (a list of name and value); ``sampling``, ``rolloff`` (or null), ``method``, ``plant`` and ``loop``
+        (or null), ``signals``, ``target``, ``tolerance`` (those that differ from their defaults) and ``accept``.
     """
     return {
         "name": design.name,
@@ -70,11 +70,11 @@ def resolved(design: Design) -> dict[str, Any]:
         "transfer": design.transfer_text,
         **_written_transfer(design.transfer),
         "values": _written_values(design.values),
-        "sampling": {**_exact("period_s", design.period_s), **_exact("band_rad_s", design.band_rad_s)},
+        "sampling": {**exact_entry("period_s", design.period_s), **exact_entry("band_rad_s", design.band_rad_s)},
         "rolloff": None if design.rolloff is None else _with_exact_numbers(design.rolloff._asdict()),
         "method": {
             "name": design.method,
-            **_exact("exact_at_rad_s", design.exact_at_rad_s),
+            **exact_entry("exact_at_rad_s", design.exact_at_rad_s),
             "compensate_delay": design.compensate_delay,
         },
         "plant": None if design.plant is None else _written_plant(design.plant),
@@ -172,7 +172,7 @@ def _case(case: Table) -> PlantCase:
 
 
 def _transfer(table: Table) -> TransferFunction:
-    cancelled = _coefficients(table, "cancelled")
+    cancelled = _coefficients(table, "cancelled") if table.numbers("cancelled") else (Fraction(1),)
     numerator, denominator = (
         poly.multiply(_coefficients(table, key), cancelled) for key in ("numerator", "denominator")
     )
@@ -233,14 +233,14 @@ def _without_twins(table: Table) -> Table:
 
 def _written_transfer(transfer: TransferFunction) -> dict[str, list[str]]:
     return {
-        **_exact_list("numerator", transfer.numerator),
-        **_exact_list("denominator", transfer.denominator),
-        **_exact_list("cancelled", transfer.cancelled),
+        **exact_entries("numerator", transfer.numerator),
+        **exact_entries("denominator", transfer.denominator),
+        **exact_entries("cancelled", transfer.cancelled if len(transfer.cancelled) > 1 else ()),
     }
 
 
 def _written_values(values: Values) -> list[dict[str, Any]]:
-    return [{"name": name, **_exact("value", value)} for name, value in values]
+    return [{"name": name, **exact_entry("value", value)} for name, value in values]
 
 
 def _written_plant(plant: PlantTable) -> dict[str, Any]:
@@ -254,7 +254,7 @@ def _written_plant(plant: PlantTable) -> dict[str, Any]:
                 "name": case.name or None,
                 "values": _written_values(case.values),
                 **_written_transfer(case.transfer),
-                **_exact("dead_time_s", case.dead_time_s),
+                **exact_entry("dead_time_s", case.dead_time_s),
                 "sensor": _written_transfer(case.sensor),
             }
             for case in plant.cases
@@ -263,11 +263,11 @@ def _written_plant(plant: PlantTable) -> dict[str, Any]:
 
 
 def _signal(signal: Signal) -> dict[str, Any]:
-    ends = {"range": None} if signal.range is None else _exact_list("range", signal.range)
+    ends = {"range": None} if signal.range is None else exact_entries("range", signal.range)
     return {
         **ends,
         "unit": signal.unit or None,
-        **_exact("per_count", signal.per_count),
+        **exact_entry("per_count", signal.per_count),
         "offset": signal.offset,
         "type": signal.type,
     }
@@ -277,20 +277,26 @@ def _with_exact_numbers(entries: Mapping[str, Any]) -> dict[str, Any]:
     """Write the exact numbers among the entries as text."""
     written: dict[str, Any] = {}
     for key, value in entries.items():
-        written |= _exact(key, value) if isinstance(value, Fraction) else {key: value}
+        written |= exact_entry(key, value) if isinstance(value, Fraction) else {key: value}
     return written
 
 
-def _exact(key: str, value: Fraction | None) -> dict[str, str | None]:
-    """An exact number, and its twin where it is long."""
+def exact_entry(key: str, value: Fraction | None) -> dict[str, str | None]:
+    """Write an exact number, and its twin where it is long.
+
+    Returns
+    -------
+    dict
+        ``key``, with null where there is no number, and perhaps ``key_decimal``.
+    """
     if value is None:
         return {key: None}
     text = exact_text(value)
     return {key: text} if len(text) <= LONGEST_PLAIN else {key: text, key + _TWIN: decimal_text(value)}
 
 
-def _exact_list(key: str, numbers: Sequence[Fraction | int]) -> dict[str, list[str]]:
-    """Exact numbers, and their twins where one is long."""
+def exact_entries(key: str, numbers: Sequence[Fraction | int]) -> dict[str, list[str]]:
+    """Write exact numbers, and their twins where one is long, as :func:`exact_entry` does."""
     texts = [exact_text(c) for c in numbers]
     if all(len(text) <= LONGEST_PLAIN for text in texts):
         return {key: texts}

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 from realize.arithmetic.sample import BACK_CALCULATION, HOLD_INTEGRAL, Sample, variables
 from realize.firmware.c_text import (
+    LONGEST_EXACT,
     WIDTH,
     Dialect,
     comment,
@@ -18,6 +19,7 @@ from realize.firmware.c_text import (
     wrapped,
 )
 from realize.firmware.emission import Emission
+from realize.firmware.loop_text import loop_entries, loop_sentence
 
 if TYPE_CHECKING:
     from realize.arithmetic.realization import Section
@@ -83,8 +85,10 @@ def _preamble(emission: Emission, sample: Sample) -> list[str]:
         *_paragraph("Calls", _calls(emission)),
         *_paragraph("Feed-through", _feed_through(emission)),
         *_paragraph("Arithmetic", _arithmetic()),
+        *_loop(emission.loop),
         *_listed("Accepted deviations", [_accepted(entry) for entry in emission.accepted]),
-        *_listed("Not protected", [*_unprotected(emission, sample), *emission.notes]),
+        *_listed("Not protected", _unprotected(emission, sample)),
+        *_listed("Method notes", emission.notes),
         *_paragraph("Caution", CAUTION)[:-1],
     ]
 
@@ -102,8 +106,10 @@ def _provenance(emission: Emission, sample: Sample) -> list[str]:
         ("sample period", f"{_period_text(realization.period_s)} s (rate {rate} Hz)"),
         ("structure", _structure(emission)),
         ("arithmetic", f"{realization.format.name}, every operation rounded once, to nearest"),
-        ("input", f"the error, reference minus measurement{_input_text(emission)}"),
-        ("output", f"the command{_output_text(emission, sample)}"),
+        ("input", f"the input (for a controller the error, reference minus measurement){_input_text(emission)}"),
+        ("input count", _count_text(emission.input_count, emission.input_unit)),
+        ("output", f"the output (for a controller the command; so called below){_output_text(emission, sample)}"),
+        ("output count", _count_text(emission.output_count, emission.output_unit)),
         ("anti-windup", _anti_windup(emission, sample)),
         ("input guard", _guard(emission)),
     ]
@@ -148,6 +154,17 @@ def _output_text(emission: Emission, sample: Sample) -> str:
         return f"{unit}; no range was given: nothing limits it"
     inside = "" if _is_stored_exactly(emission.output_range, sample) else ", rounded inward to the format"
     return f"; clamped to {_range_text(emission.output_range, emission.output_unit)}{inside}"
+
+
+def _count_text(count: tuple[Fraction, int] | None, unit: str) -> str | None:
+    """The converter beside the code, which itself works in physical units."""
+    if count is None:
+        return None
+    size, at_zero = count
+    exact = str(size)
+    figure = exact if len(exact) <= LONGEST_EXACT else number_text(size)
+    zero = f"; count {at_zero} stands for 0" if at_zero else ""
+    return f"1 count = {figure} {unit}".rstrip() + f"{zero}; converting is up to the caller"
 
 
 def _is_stored_exactly(limits: tuple[Fraction, Fraction], sample: Sample) -> bool:
@@ -237,6 +254,13 @@ def _decays(section: Section) -> bool:
     """Whether all poles lie inside the unit circle (Jury's conditions, exact on stored numbers)."""
     a1, a2 = (*map(Fraction, section.a), Fraction(0), Fraction(0))[:2]
     return abs(a2) < 1 and abs(a1) < 1 + a2
+
+
+def _loop(loop: Mapping[str, Any] | None) -> list[str]:
+    if loop is None:
+        return []
+    entries = [line for entry in loop_entries(loop) for line in wrapped(entry, "- ", "  ")]
+    return [*wrapped(f"Loop: {loop_sentence(loop)}"), *entries, ""]
 
 
 def _paragraph(label: str, text: str) -> list[str]:

@@ -30,6 +30,12 @@ FAST_MATH = (
 #: Mantissa digits, least and largest exponent of IEEE 754 binary32 and binary64 as ``<float.h>`` counts them.
 IEEE_754 = {"FLT": (24, -125, 128), "DBL": (53, -1021, 1024)}
 
+#: What to do where a type has another form.
+_WIDEN = {
+    "FLT": "compile for a processor whose float is that, or set the option that makes it so",
+    "DBL": "give double its 64 bits (avr-gcc: -mdouble=64), or emit with arithmetic float32",
+}
+
 
 def stored_coefficients(emission: Emission, sample: Sample, settling: Settling) -> dict[str, float]:
     """Field name and value of every coefficient the C text stores."""
@@ -92,19 +98,34 @@ def _refusals(c: Dialect) -> list[str]:
         f"{c.macros}_MAX_EXP != {most}",
     )
     subnormal = f"{c.macros}_HAS_SUBNORM"
+    evaluated = f"{c.name} needs {c.real} evaluated as {c.real}"
     return [
-        *_refusal(FAST_MATH, f"{c.name} must not be compiled with fast-math settings"),
-        *_refusal(("!defined(FLT_EVAL_METHOD)", evaluation), f"{c.name} needs {c.real} evaluated as {c.real}"),
-        *_refusal(form, f"{c.name} needs {c.real} to be IEEE 754 binary{32 if c.macros == 'FLT' else 64}"),
-        *_refusal((f"defined({subnormal}) && {subnormal} == 0",), f"{c.name} needs subnormal numbers of {c.real}"),
+        *_refusal(
+            FAST_MATH,
+            f"{c.name} must not be compiled with fast-math settings",
+            "remove -ffast-math, -Ofast, /fp:fast or the part of them that is set",
+        ),
+        *_refusal(("!defined(FLT_EVAL_METHOD)",), evaluated, "compile as C99 or C++11, or later"),
+        *_refusal((evaluation,), evaluated, "on x86 compile with -msse2 -mfpmath=sse"),
+        *_refusal(
+            form,
+            f"{c.name} needs {c.real} to be IEEE 754 binary{32 if c.macros == 'FLT' else 64}",
+            _WIDEN[c.macros],
+        ),
+        *_refusal(
+            (f"defined({subnormal}) && {subnormal} == 0",),
+            f"{c.name} needs subnormal numbers of {c.real}",
+            "switch flush-to-zero off, or take another floating-point library",
+        ),
         "",
     ]
 
 
-def _refusal(conditions: Sequence[str], says: str) -> list[str]:
+def _refusal(conditions: Sequence[str], says: str, advice: str) -> list[str]:
+    """Stop the compilation; the message is one, on two lines."""
     whole = " || ".join(conditions)
     parted = " || \\\n    ".join(conditions)
-    return [f"#if {whole if len(whole) < WIDTH - 4 else parted}", f'#error "{says}"', "#endif"]
+    return [f"#if {whole if len(whole) < WIDTH - 4 else parted}", f'#error "{says}: \\', f'{advice}"', "#endif"]
 
 
 def _contraction_off() -> list[str]:

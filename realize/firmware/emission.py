@@ -34,6 +34,8 @@ class Emission(NamedTuple):
         Physical. The command is clamped to the output range.
     input_unit, output_unit : str
         May be empty.
+    input_count, output_count : (Fraction, int) or None
+        Physical size of one count, and the count at physical zero.
     coefficients : str
         ``inline``, or ``table`` for a constant struct passed by pointer.
     recursion_sign : str
@@ -41,9 +43,14 @@ class Emission(NamedTuple):
     anti_windup, tracking_time_s, guard_nonfinite
         As in :func:`realize.arithmetic.sample.describe`.
     notes : sequence of str
-        Further sentences for the header on what is not protected.
+        What the method has to say, for the header.
     design : mapping
         The resolved design, for the record.
+    causal : mapping
+        What was discretized: the transfer function after roll-off, and its band. For the record.
+    loop : mapping or None
+        The loops, where the design has a plant; see :func:`realize.firmware.job.loop_document`. For the record and
+        the header.
     checks, accepted : sequence of mapping
         For the record; ``accepted`` (check, limit, unit, because, by) for the header too.
     """
@@ -61,6 +68,8 @@ class Emission(NamedTuple):
     output_range: tuple[Fraction, Fraction] | None = None
     input_unit: str = ""
     output_unit: str = ""
+    input_count: tuple[Fraction, int] | None = None
+    output_count: tuple[Fraction, int] | None = None
     coefficients: str = "inline"
     recursion_sign: str = "subtract"
     anti_windup: str = HOLD_INTEGRAL
@@ -68,6 +77,8 @@ class Emission(NamedTuple):
     guard_nonfinite: bool = True
     notes: Sequence[str] = ()
     design: Mapping[str, Any] = {}
+    causal: Mapping[str, Any] = {}
+    loop: Mapping[str, Any] | None = None
     checks: Sequence[Mapping[str, Any]] = ()
     accepted: Sequence[Mapping[str, Any]] = ()
 

@@ -5,14 +5,28 @@ from __future__ import annotations
 import json
 from collections.abc import Mapping
 from dataclasses import dataclass
-from typing import Any
+from fractions import Fraction
+from typing import TYPE_CHECKING, Any
 
+from realize.algebra.expression import decimal_text
 from realize.band import frequency_text
 from realize.checks import Check
-from realize.design import Accept, Design
+from realize.design import Accept, Design, Signal
+from realize.design.record import exact_entries, exact_entry
+from realize.firmware.c_text import number_text
 from realize.firmware.emission import Emission
+from realize.firmware.record import FIGURE_DIGITS
 from realize.firmware.render import render_firmware
+from realize.rolloff import Proposal
 from realize.workflow import Causal, Comparison, MethodResult, choose, refuse_unacceptable
+
+if TYPE_CHECKING:
+    from realize.loop import Ledger
+    from realize.loop_design import LoopResult
+
+#: Decimals of the phases in the ledger, in deg. Each is a difference of angles in double precision, of up to 1e4 rad
+#: each to 1e-16 of itself (6e-11 deg); smaller phases than a millionth would be digits of that noise.
+LEDGER_DECIMALS = 6
 
 
 @dataclass(frozen=True)
@@ -72,13 +86,17 @@ def _emission(comparison: Comparison, chosen: MethodResult) -> Emission:
         output_range=design.output.range,
         input_unit=design.input.unit,
         output_unit=design.output.unit,
+        input_count=_count(design.input),
+        output_count=_count(design.output),
         coefficients=target.coefficients,
         recursion_sign=target.recursion_sign,
         anti_windup=target.anti_windup,
         tracking_time_s=target.tracking_time_s,
         guard_nonfinite=target.guard_nonfinite,
-        notes=chosen.notes,
+        notes=[note for note in chosen.notes if chosen.loop is None or note not in chosen.loop.notes],
         design=design.resolved(),
+        causal=_causal(comparison),
+        loop=None if chosen.loop is None else loop_document(comparison, chosen.loop),
         checks=[vars(check) for check in chosen.checks],
         accepted=[_accepted(check, agreement) for check, agreement in chosen.accepted],
     )
@@ -87,7 +105,7 @@ def _emission(comparison: Comparison, chosen: MethodResult) -> Emission:
 def _particulars(comparison: Comparison) -> list[tuple[str, str]]:
     """Header lines on the values and on the roll-off."""
     design = comparison.design
-    named = ", ".join(f"{name} = {float(value):.5g}" for name, value in design.values)
+    named = ", ".join(f"{name} = {number_text(value)}" for name, value in design.values)
     return [("values", named), ("roll-off", _rolloff(comparison.causal)), ("band", comparison.band_rests_on)]
 
 
@@ -96,6 +114,68 @@ def _rolloff(causal: Causal) -> str:
     if proposal is None:
         return ""
     return f"{proposal.placement}, order {proposal.order}, pole at {frequency_text(proposal.pole_rad_s)}"
+
+
+def _count(signal: Signal) -> tuple[Fraction, int] | None:
+    return None if signal.per_count is None else (signal.per_count, signal.offset)
+
+
+def _causal(comparison: Comparison) -> dict[str, Any]:
+    """What was discretized, exactly, and the band; a band that the design does not give is a figure."""
+    causal, given = comparison.causal, comparison.design.band_rad_s
+    band = exact_entry("band_rad_s", given)
+    if given is None:
+        band = {"band_rad_s": decimal_text(comparison.band_rad_s, FIGURE_DIGITS)}
+    return {
+        **exact_entries("numerator", causal.transfer.numerator),
+        **exact_entries("denominator", causal.transfer.denominator),
+        "rolloff": None if causal.proposal is None else _rolloff_document(causal.proposal, causal.assumed),
+        **band,
+        "band_rests_on": comparison.band_rests_on,
+    }
+
+
+def _rolloff_document(proposal: Proposal, assumed: bool) -> dict[str, Any]:
+    return {
+        "placement": proposal.placement,
+        "order": proposal.order,
+        **exact_entry("damping", proposal.damping),
+        **exact_entry("pole_rad_s", proposal.pole_rad_s),
+        "assumed": assumed,
+    }
+
+
+def loop_document(comparison: Comparison, loop: LoopResult) -> dict[str, Any]:
+    """The loops around the chosen method's controller.
+
+    Returns
+    -------
+    dict
+        ``compute_delay_s``, ``compute_delay_samples`` (exact); ``measured``, whether the plant is a measured
+        response, so that stability was not judged; ``cases``, each with ``case``, ``continuous`` and ``discrete``
+        figures; ``phase_ledger_deg`` and ``phase_ledger_at_rad_s``; ``jitter_margin_s``; ``notes``.
+    """
+    # Here, because what analyses loops is loaded only where there is a plant.
+    from realize.loop_design import compute_delay_s
+
+    design, ledger = comparison.design, loop.ledger
+    delay_s = compute_delay_s(design, comparison.period_s)
+    return {
+        "compute_delay_s": delay_s,
+        "compute_delay_samples": delay_s / comparison.period_s,
+        "measured": design.plant is not None and design.plant.response_text is not None,
+        "cases": loop.entries,
+        "phase_ledger_deg": None if ledger is None else _ledger(ledger),
+        "phase_ledger_at_rad_s": None if ledger is None else ledger.w_rad_s,
+        "jitter_margin_s": None if loop.jitter is None else loop.jitter.jitter_s,
+        "notes": loop.notes,
+    }
+
+
+def _ledger(ledger: Ledger) -> dict[str, float]:
+    """Adding 0 turns a rounded -0 into 0."""
+    items = (*ledger.items, ("total", ledger.total_deg))
+    return {name: round(value_deg, LEDGER_DECIMALS) + 0.0 for name, value_deg in items}
 
 
 def _accepted(check: Check, agreement: Accept) -> dict[str, Any]:

@@ -9,6 +9,7 @@ from hashlib import sha256
 from math import isfinite
 from typing import TYPE_CHECKING, Any
 
+from realize.algebra.expression import exact_text
 from realize.firmware.c_text import hexadecimal
 from realize.version import VERSION
 
@@ -35,12 +36,13 @@ def record(emission: Emission, files: Mapping[str, str]) -> dict[str, Any]:
     -------
     dict
         Coefficients in ascending powers of 1/z, ``a`` without its 1 and for subtraction, whatever sign the C text
-        stores. Figures of the checks are rounded to five digits; what is not finite is null.
+        stores. Figures of the checks and of the loop are rounded to five digits; what is not finite is null.
     """
     realization = emission.realization
     return {
         "schema": SCHEMA,
         "design": dict(emission.design),
+        "causal": dict(emission.causal),
         "method": emission.method,
         "structure": realization.structure,
         "arithmetic": realization.format.name,
@@ -51,6 +53,7 @@ def record(emission: Emission, files: Mapping[str, str]) -> dict[str, Any]:
         ],
         "checks": [_figures(check) for check in emission.checks],
         "accepted": [_figures(entry) for entry in emission.accepted],
+        "loop": _figures(emission.loop),
         "files": {name: sha256(text.encode()).hexdigest() for name, text in files.items()},
         "tool": {"name": "realize", "version": VERSION},
     }
@@ -72,7 +75,7 @@ def _figures(value: Any) -> Any:
     if isinstance(value, float):
         return float(f"{value:.{FIGURE_DIGITS}g}") if isfinite(value) else None
     if isinstance(value, Fraction):
-        return str(value)
+        return exact_text(value)
     if isinstance(value, Mapping):
         return {key: _figures(entry) for key, entry in value.items()}
     if isinstance(value, (list, tuple)):

@@ -129,7 +129,7 @@ def _carried(enclose: Enclose, structural: Mapping[int, Fraction]) -> Enclosure:
             enclosure = enclose(bits)
         except Unresolved:
             enclosure = None
-        if enclosure and (bits >= MOST_BITS or _resolved(enclosure, structural)):
+        if enclosure and _resolved(enclosure, structural):
             return enclosure
         if bits >= MOST_BITS:
             raise Unresolved

@@ -56,9 +56,22 @@ def assess_document(design: Design, assessment: Assessment) -> Document:
         "zeros": _roots(transfer.zeros),
         "cancelled": _exact(transfer.cancelled) if len(transfer.cancelled) > 1 else [],
         "improper_terms": [{"power": t.power, "coefficient": exact_text(t.coefficient)} for t in assessment.terms],
-        "proposals": [proposal_document(p) for p in assessment.proposals],
+        "proposals": [
+            proposal_document(p) | margins
+            for p, margins in zip(assessment.proposals, _margins(assessment), strict=True)
+        ],
         "notes": list(assessment.notes),
     }
+
+
+def _margins(assessment: Assessment) -> list[Document]:
+    """Phase margin before and after each proposal, where there is a plant."""
+    if not assessment.phase_margins_deg:
+        return [{} for _ in assessment.proposals]
+    return [
+        {"phase_margin_before_deg": _number(before), "phase_margin_after_deg": _number(after)}
+        for before, after in assessment.phase_margins_deg
+    ]
 
 
 def proposal_document(proposal: Proposal) -> Document:

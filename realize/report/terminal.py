@@ -91,7 +91,7 @@ def assess_text(design: Design, assessment: Assessment) -> str:
     blocks += _roots_block("Poles", assessment.transfer.poles), _roots_block("Zeros", assessment.transfer.zeros)
     if assessment.terms:
         blocks.append(heading("What makes it improper") + bullets(term.text for term in assessment.terms))
-        blocks.append(_proposals_block(assessment.proposals))
+        blocks.append(_proposals_block(assessment.proposals) + _margins_list(assessment))
     if assessment.notes:
         blocks.append(heading("Notes") + bullets(assessment.notes))
     if assessment.proposals and design.rolloff is None:
@@ -208,6 +208,22 @@ def _proposals_block(proposals: Sequence[Proposal]) -> str:
     ]
     reasons = [f"{p.placement}, order {p.order}: {reason}" for p in proposals[:1] for reason in p.reasons]
     return heading("Roll-off proposals, best first") + table([head, unit, *rows]) + bullets(reasons)
+
+
+def _margins_list(assessment: Assessment) -> str:
+    """What each proposal leaves of the phase margin."""
+    lines = (
+        f"{_shape(p)}: phase margin of the loop {before:.3g} deg before, "
+        + ("none" if after is None else f"{after:.3g} deg")
+        + " after"
+        for p, (before, after) in zip(assessment.proposals, assessment.phase_margins_deg, strict=False)
+    )
+    return bullets(lines)
+
+
+def _shape(p: Proposal) -> str:
+    damping = "" if p.damping == 1 else f", damping {float(p.damping):.4g}"
+    return f"{p.placement}, order {p.order}{damping}"
 
 
 def _window(window: tuple[float, float | None] | None) -> str:

@@ -183,6 +183,20 @@ def test_the_delay_of_the_loop_is_in_one_unit_and_stands_beside_a_plant() -> Non
     assert (everything()["plant"], everything()["loop"]) == (None, None)
 
 
+def test_where_nothing_cancelled_there_is_nothing_in_the_record() -> None:
+    # in the controller s + 100 pi cancels; in the plant nothing does
+    assert len(everything()["cancelled"]) == 2
+    nominal = plant_document()["plant"]["cases"][0]
+    assert (nominal["cancelled"], len(nominal["sensor"]["cancelled"])) == ([], 2)
+    one_case = through_json(design_from_text(TEXTS["one case"], "servo.toml"))
+    assert (one_case["cancelled"], one_case["plant"]["cases"][0]["sensor"]["cancelled"]) == ([], [])
+
+
+def test_a_common_factor_of_1_is_none() -> None:
+    design = design_from_text(TEXTS["one case"], "servo.toml")
+    assert design_from_resolved(changed(through_json(design), ("cancelled",), ["1"])) == design
+
+
 def test_there_are_fixtures() -> None:
     assert len(FIXTURES) >= 7
 
@@ -257,6 +271,8 @@ def test_the_keys_are_the_same_for_every_design() -> None:
         (("denominator",), ["1.5", None], "record, [design] denominator", "nothing"),
         (("denominator",), [1.5], "record, [design] denominator", "a binary number"),
         (("denominator",), "1", "record, [design] denominator", '"1"'),
+        (("cancelled",), "1", "record, [design] cancelled", '"1"'),
+        (("cancelled",), ["0"], "record, [design] numerator", "a denominator of zero"),
         (("cancelled",), ["9" * 50000], "record, [design] cancelled", "a number of 50000 characters"),
         (("values",), {"kp": "1"}, "record, [[values]]", "a table"),
         (("values", 0, "name"), "s", "record, [[values]] number 1, name", "a meaning of its own"),
@@ -306,7 +322,7 @@ CASE = ("plant", "cases", 1)
         ((*CASE, "dead_time_s"), "-1/3", "record, [[plant.cases]] number 2, dead_time_s", '"-1/3 s"'),
         ((*CASE, "dead_time_s"), None, "record, [[plant.cases]] number 2, dead_time_s", "nothing"),
         ((*CASE, "dead_time_s"), 0.5, "record, [[plant.cases]] number 2, dead_time_s", "a binary number"),
-        ((*CASE, "sensor"), None, "record, [[plant.cases]] number 2, sensor, cancelled", "a list of 0"),
+        ((*CASE, "sensor"), None, "record, [[plant.cases]] number 2, sensor, numerator", "a list of 0"),
         (
             (*CASE, "sensor", "numerator"),
             ["1", "2", "3"],

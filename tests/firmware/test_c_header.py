@@ -43,19 +43,27 @@ def said(emission: Emission) -> str:
         ("transfer_text", "4.2 + 18/s", "transfer G(s) = 4.2 + 18/s"),
         ("particulars", (("roll-off", "1 pole at 300 Hz"),), "roll-off 1 pole at 300 Hz"),
         ("method", "ramp-invariant", "method ramp-invariant"),
-        ("input_unit", "mm", "input the error, reference minus measurement, in mm"),
+        ("input_unit", "mm", "input the input (for a controller the error, reference minus measurement), in mm"),
+        ("input_count", (Fraction(1, 2000), 0), "input count 1 count = 1/2000; converting is up to the caller"),
+        ("input_count", (Fraction(1, 8), 2048), "1 count = 1/8; count 2048 stands for 0; converting"),
+        ("output_count", (Fraction(1, 4200), 0), "output count 1 count = 1/4200; converting"),
+        ("output_count", (Fraction(10**60, 3 * 10**60 + 1), 0), "output count 1 count = about 0.33333; converting"),
         (
             "input_range",
             (Fraction(-8), Fraction(8)),
-            "reference minus measurement; range -8 to 8, declared but not enforced",
+            "reference minus measurement); range -8 to 8, declared but not enforced",
         ),
-        ("output_range", None, "output the command; no range was given: nothing limits it"),
+        ("output_range", None, "so called below); no range was given: nothing limits it"),
         ("output_range", None, "- without an output range nothing limits the command"),
-        ("output_range", UNIT_RANGE, "output the command; clamped to -1 to 1 anti-windup"),
+        (
+            "output_range",
+            UNIT_RANGE,
+            "output the output (for a controller the command; so called below); clamped to -1 to 1 anti-windup",
+        ),
         ("output_range", (Fraction(-1, 3), Fraction(1)), "clamped to -1/3 to 1, rounded inward to the format"),
         ("anti_windup", "none", "anti-windup none: the integral goes on while the command is limited"),
         ("guard_nonfinite", False, "input guard none: an input that is NaN or infinite spoils the state"),
-        ("notes", ("a remark from above",), "- a remark from above"),
+        ("notes", ("a remark from above",), "at the same time Method notes: - a remark from above Caution"),
         (
             "accepted",
             ({"check": "step overshoot", "limit": Fraction(4), "unit": "%", "because": "ramped", "by": "ab"},),
@@ -70,6 +78,80 @@ def said(emission: Emission) -> str:
 )
 def test_the_header_says_what_the_design_says(option: str, value: Any, sentence: str) -> None:
     assert sentence in said(servo(**{option: value}))
+
+
+def test_the_unit_of_a_count_is_that_of_its_signal() -> None:
+    text = said(servo(input_count=(Fraction(1, 2000), 0), input_unit="mm", output_count=(Fraction(1), 0)))
+    assert "1 count = 1/2000 mm; converting" in text
+    assert "1 count = 1; converting" in text
+
+
+FIGURES = {
+    "stable": True,
+    "phase_margin_deg": 200 / 3,
+    "gain_margin_db": None,
+    "gain_reduction_margin_db": None,
+    "maximum_sensitivity": 1.25,
+    "step_overshoot_percent": 17.0,
+}
+
+
+def loop(figures: dict[str, Any], case: str = "", **options: Any) -> dict[str, Any]:
+    plain = {
+        "compute_delay_s": Fraction(1, 2000),
+        "compute_delay_samples": Fraction(1),
+        "measured": False,
+        "cases": ({"case": case, "discrete": FIGURES | figures},),
+        "jitter_margin_s": None,
+        "notes": (),
+    }
+    return plain | options
+
+
+@pytest.mark.parametrize(
+    ("given", "sentence"),
+    [
+        (
+            loop({}),
+            "Loop: checked with the command reaching the actuator 1 sample (500 us) after the input was sampled; "
+            "margins hold only then. - stable, phase margin 66.667 deg, maximum sensitivity 1.25, step overshoot 17 % "
+            "Not protected",
+        ),
+        (
+            loop({}, compute_delay_s=Fraction(0), compute_delay_samples=Fraction(0)),
+            "reaching the actuator 0 samples (0 s) after",
+        ),
+        (
+            loop({}, compute_delay_s=Fraction(3, 4000), compute_delay_samples=Fraction(3, 2)),
+            "reaching the actuator 1.5 samples (750 us) after",
+        ),
+        (
+            loop({"gain_margin_db": 26.0}, "heavy */"),
+            "- case heavy * /: stable, phase margin 66.667 deg, gain margin 26 dB,",
+        ),
+        (loop({"gain_reduction_margin_db": 6.0}), "deg, margin to a lower gain 6 dB, maximum"),
+        (loop({"stable": False}), "- NOT STABLE, phase margin"),
+        (loop({"stable": None}), "- stability not judged, phase margin"),
+        (loop({}, measured=True), "- the plant is a measured response: whether the loop is stable was not judged Not"),
+        (loop({}, jitter_margin_s=0.02), "- jitter margin 20 ms: the delay may grow by up to so much"),
+        (loop({}, notes=("aliases",)), "overshoot 17 % - aliases Not protected"),
+    ],
+)
+def test_the_header_says_in_which_loop_the_design_was_checked(given: dict[str, Any], sentence: str) -> None:
+    assert sentence in said(servo(loop=given))
+
+
+def test_the_jitter_margin_of_several_cases_is_the_nominal_ones() -> None:
+    cases = tuple({"case": case, "discrete": FIGURES} for case in ("nominal", "heavy"))
+    assert "jitter margin 20 ms (nominal case): the" in said(servo(loop=loop({}, cases=cases, jitter_margin_s=0.02)))
+
+
+def test_without_a_plant_the_header_is_silent_about_loops() -> None:
+    assert "Loop:" not in said(servo())
+
+
+def test_without_notes_there_is_no_heading_for_them() -> None:
+    assert "Method notes" not in said(servo())
 
 
 @pytest.mark.parametrize(

@@ -43,6 +43,7 @@ def test_fast_math_settings_stop_the_compilation(
     done = bench.compiler((*compiler, *flags, "-c", f"{emission.name}.c", "-o", "x.o"), where)
     assert done.returncode != 0
     assert f"{emission.name} must not be compiled with fast-math settings" in done.stderr
+    assert "remove -ffast-math" in done.stderr
 
 
 @pytest.mark.parametrize("flag", ["-funsafe-math-optimizations", "-freciprocal-math", "-fno-signed-zeros"])
@@ -50,6 +51,9 @@ def test_the_parts_of_fast_math_that_gcc_shows_stop_it_too(flag: str, emission: 
     if GCC in COMPILERS:
         done = bench.compiler((*GCC, flag, "-c", f"{emission.name}.c", "-o", "x.o"), bench.emitted([emission]))
         assert "must not be compiled with fast-math settings" in done.stderr
+
+
+EVALUATION = "#undef FLT_EVAL_METHOD\n#define FLT_EVAL_METHOD"
 
 
 def replaced(where: Path, emission: Emission, old: str, new: str) -> None:
@@ -61,20 +65,30 @@ def replaced(where: Path, emission: Emission, old: str, new: str) -> None:
 
 
 @pytest.mark.parametrize(
-    ("arithmetic", "machine", "says"),
+    ("arithmetic", "machine", "says", "advises"),
     [
-        ("float32", "#undef FLT_EVAL_METHOD\n#define FLT_EVAL_METHOD 1", "needs float evaluated as float"),
-        ("float32", "#undef FLT_EVAL_METHOD\n#define FLT_EVAL_METHOD (-1)", "needs float evaluated as float"),
-        ("float32", "#undef FLT_EVAL_METHOD", "needs float evaluated as float"),
-        ("float64", "#undef FLT_EVAL_METHOD\n#define FLT_EVAL_METHOD 2", "needs double evaluated as double"),
-        ("float32", "#undef FLT_RADIX\n#define FLT_RADIX 16", "needs float to be IEEE 754 binary32"),
-        ("float64", "#undef DBL_MANT_DIG\n#define DBL_MANT_DIG 24", "needs double to be IEEE 754 binary64"),
-        ("float32", "#undef FLT_MAX_EXP\n#define FLT_MAX_EXP 127", "needs float to be IEEE 754 binary32"),
-        ("float32", "#undef FLT_HAS_SUBNORM\n#define FLT_HAS_SUBNORM 0", "needs subnormal numbers of float"),
+        ("float32", f"{EVALUATION} 1", "needs float evaluated as float", "compile with -msse2 -mfpmath=sse"),
+        ("float32", f"{EVALUATION} (-1)", "needs float evaluated as float", "compile with -msse2 -mfpmath=sse"),
+        ("float32", "#undef FLT_EVAL_METHOD", "needs float evaluated as float", "compile as C99 or C++11, or later"),
+        ("float64", f"{EVALUATION} 2", "needs double evaluated as double", "compile with -msse2 -mfpmath=sse"),
+        ("float32", "#undef FLT_RADIX\n#define FLT_RADIX 16", "needs float to be IEEE 754 binary32", "the option"),
+        (
+            "float64",
+            "#undef DBL_MANT_DIG\n#define DBL_MANT_DIG 24",
+            "needs double to be IEEE 754 binary64",
+            "emit with arithmetic float32",
+        ),
+        ("float32", "#undef FLT_MAX_EXP\n#define FLT_MAX_EXP 127", "needs float to be IEEE 754 binary32", "the option"),
+        (
+            "float32",
+            "#undef FLT_HAS_SUBNORM\n#define FLT_HAS_SUBNORM 0",
+            "needs subnormal numbers of float",
+            "switch flush-to-zero off",
+        ),
     ],
 )
-def test_a_machine_with_other_numbers_stops_the_compilation(
-    arithmetic: str, machine: str, says: str, bench: Bench
+def test_a_machine_with_other_numbers_stops_the_compilation_and_says_what_to_do(
+    arithmetic: str, machine: str, says: str, advises: str, bench: Bench
 ) -> None:
     emission = chosen(arithmetic)
     where = bench.emitted([emission])
@@ -82,6 +96,7 @@ def test_a_machine_with_other_numbers_stops_the_compilation(
     done = bench.compiler((*CLANG, "-c", f"{emission.name}.c", "-o", "x.o"), where)
     assert done.returncode != 0
     assert says in done.stderr
+    assert advises in done.stderr
 
 
 def test_double_evaluation_of_float_does_not_harm_double(bench: Bench) -> None:

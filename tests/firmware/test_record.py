@@ -10,6 +10,7 @@ from typing import Any
 import pytest
 
 from realize.firmware import Emission, render_firmware
+from realize.firmware.record import record
 from realize.version import VERSION
 from tests.firmware.designs import UNIT_RANGE, grid
 
@@ -22,8 +23,8 @@ def recorded(emission: Emission) -> dict[str, Any]:
 
 def test_its_keys_are_those_others_rely_on() -> None:
     assert list(recorded(DESIGNS[0])) == [
-        *("schema", "design", "method", "structure", "arithmetic", "integral", "sections", "checks", "accepted"),
-        *("files", "tool"),
+        *("schema", "design", "causal", "method", "structure", "arithmetic", "integral", "sections", "checks"),
+        *("accepted", "loop", "files", "tool"),
     ]
     assert recorded(DESIGNS[0])["schema"] == "realize/1"
 
@@ -77,6 +78,15 @@ def test_figures_are_rounded_and_what_is_not_finite_is_null() -> None:
         }
     ]
     assert said["accepted"] == [{"check": "pole shift", "limit": "5/2"}]
+
+
+def test_figures_of_the_loop_are_rounded_and_its_delay_is_exact() -> None:
+    loop = {"compute_delay_s": Fraction(1, 3), "cases": ({"case": "a", "discrete": {"phase_margin_deg": 200 / 3}},)}
+    assert record(DESIGNS[0]._replace(loop=loop), {})["loop"] == {
+        "compute_delay_s": "1/3",
+        "cases": [{"case": "a", "discrete": {"phase_margin_deg": 66.667}}],
+    }
+    assert recorded(DESIGNS[0])["loop"] is None
 
 
 def test_the_design_is_recorded_as_it_was_given() -> None:
