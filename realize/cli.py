@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import os
+import re
 import sys
 from collections.abc import Callable, Iterator
 from pathlib import Path
@@ -16,20 +17,39 @@ from realize.version import VERSION
 
 Command = TypeVar("Command", bound=Callable[..., Any])
 
+#: Columns of an error, where the terminal has as many; below the least, wrapping would only hide what is said.
+_COLUMNS, _LEAST_COLUMNS = 100, 40
+
 _DESIGN_OPTIONS = (
     click.argument("design", metavar="DESIGN"),
-    click.option("--rate", metavar="QUANTITY", help='Sample rate, such as "2 kHz".'),
-    click.option("--period", metavar="QUANTITY", help='Sample period, such as "500 us".'),
     click.option("--name", metavar="IDENTIFIER", help="Name of the emitted functions and files."),
     click.option("--method", metavar="METHOD", help='Name of a method, or "auto" for the recommended one.'),
     click.option("--value", "values", multiple=True, metavar="NAME=NUMBER", help="Replace a value; may be repeated."),
     click.option("--json", "as_json", is_flag=True, help="Print one JSON document and nothing else."),
 )
 
+_RATE_OPTIONS = (
+    click.option("--rate", metavar="QUANTITY", help='Sample rate, such as "2 kHz".'),
+    click.option("--period", metavar="QUANTITY", help='Sample period, such as "500 us".'),
+)
+
+#: What an argument may be, by its name.
+_ARGUMENTS = {
+    "design": "a design file (ends in .toml), - for one on standard input, or an expression in s",
+    "name": "the name of the design to start, such as roller_gap",
+}
+
 
 def _takes_design(command: Command) -> Command:
     """Add the argument and the options that every command on a design shares."""
     for option in reversed(_DESIGN_OPTIONS):
+        command = option(command)
+    return command
+
+
+def _takes_rate(command: Command) -> Command:
+    """Add the options of a command that works at one rate."""
+    for option in reversed(_RATE_OPTIONS):
         command = option(command)
     return command
 
@@ -50,7 +70,8 @@ def commands() -> None:
     """
 
 
-@commands.command()
+@commands.command(short_help="Say whether DESIGN is realizable, and what is not.")
+@_takes_rate
 @_takes_design
 def assess(design: str, as_json: bool, **options: Any) -> None:
     """Say whether DESIGN is realizable, which terms are not, and what would make it so.
@@ -69,7 +90,8 @@ def assess(design: str, as_json: bool, **options: Any) -> None:
     _print(assess_document(loaded, assessment) if as_json else assess_text(loaded, assessment))
 
 
-@commands.command()
+@commands.command(short_help="Put every method side by side at one rate.")
+@_takes_rate
 @_takes_design
 def compare(design: str, as_json: bool, **options: Any) -> None:
     """Put every method side by side at the chosen rate, with what it did to the design.
@@ -89,12 +111,12 @@ def compare(design: str, as_json: bool, **options: Any) -> None:
         sys.exit(1)
 
 
-@commands.command()
+@commands.command(short_help="Find the lowest rate each method can live with.")
 @_takes_design
 @click.option("--from", "low", metavar="QUANTITY", help="Lowest rate; by default 4 times the crossover or band.")
 @click.option("--to", "high", metavar="QUANTITY", help="Highest rate; by default 200 times the crossover or band.")
-@click.option("--points", default=60, show_default=True, metavar="N", help="Rates on the logarithmic grid.")
-def rates(design: str, as_json: bool, low: str | None, high: str | None, points: int, **options: Any) -> None:
+@click.option("--points", default="60", show_default=True, metavar="N", help="Rates on the logarithmic grid.")
+def rates(design: str, as_json: bool, low: str | None, high: str | None, points: str, **options: Any) -> None:
     """Find the lowest rate that each method can live with, over a range of rates.
 
     A method's rate is the lowest from which all higher ones in the range pass every check. The
@@ -108,9 +130,19 @@ def rates(design: str, as_json: bool, low: str | None, high: str | None, points:
     from realize.report.range_of_rates import rates_document, rates_text
 
     ends = [parse_quantity(end, "rate", key) if end else None for end, key in ((low, "--from"), (high, "--to"))]
+    count = _count(points, "--points")
     loaded = _load(design, options)
-    found = over_rates(loaded, low_hz=ends[0], high_hz=ends[1], points=points, follow=_with_progress(points))
+    found = over_rates(loaded, low_hz=ends[0], high_hz=ends[1], points=count, follow=_with_progress(count))
     _print(rates_document(found) if as_json else rates_text(found))
+
+
+def _count(text: str, where: str) -> int:
+    """Read a whole number of a few digits."""
+    from realize.algebra.expression.tokens import shown
+
+    if not (text.isascii() and text.isdigit() and len(text) < 10):
+        raise RealizeError(where, shown(text), "a whole number", f"{where} 60")
+    return int(text)
 
 
 def _with_progress(length: int) -> Callable[[Iterator[Any]], Iterator[Any]]:
@@ -124,7 +156,8 @@ def _with_progress(length: int) -> Callable[[Iterator[Any]], Iterator[Any]]:
     return follow
 
 
-@commands.command()
+@commands.command(short_help="Write the C files, the vectors and the record.")
+@_takes_rate
 @_takes_design
 @click.option("--out", required=True, metavar="DIR", help="Directory for the files; made if missing.")
 def emit(design: str, as_json: bool, out: str, **options: Any) -> None:
@@ -141,6 +174,8 @@ def emit(design: str, as_json: bool, out: str, **options: Any) -> None:
     from realize.report.documents import emit_document
     from realize.report.terminal import emit_text
 
+    if not out.strip():
+        raise RealizeError("--out", "an empty name", "a directory for the files", "--out firmware, or --out . for here")
     emitted = emit_design(_load(design, options))
     paths = [str(path) for path in write_all(Path(out), emitted.files)]
     if as_json:
@@ -149,7 +184,7 @@ def emit(design: str, as_json: bool, out: str, **options: Any) -> None:
         _print(emit_text(emitted.comparison, emitted.chosen, paths))
 
 
-@commands.command()
+@commands.command(short_help="Write NAME.toml, a commented starter design.")
 @click.argument("name")
 def new(name: str) -> None:
     """Write NAME.toml, a commented starter design that `realize emit` accepts as it is.
@@ -173,7 +208,7 @@ def _load(design: str, options: dict[str, Any]) -> Any:
     from realize.design import Overrides, load_design
 
     overrides = Overrides(
-        options["rate"], options["period"], options["name"], options["method"], _values(options["values"])
+        options.get("rate"), options.get("period"), options["name"], options["method"], _values(options["values"])
     )
     return load_design(design, overrides)
 
@@ -226,16 +261,101 @@ def _fail(error: RealizeError, given: list[str]) -> None:
 
         _print(error_document(_command_of(given), error))
     else:
-        click.echo(f"no: {error}" if error.exit_status == 1 else f"error: {error}", err=True)
+        click.echo(_error_text(error), err=True)
     sys.exit(error.exit_status)
 
 
+def _error_text(error: RealizeError) -> str:
+    """An error as the terminal shows it: wrapped, but what is quoted or to be pasted stays as it is."""
+    from shutil import get_terminal_size
+
+    width = max(_LEAST_COLUMNS, min(_COLUMNS, get_terminal_size((_COLUMNS, 24)).columns))
+    lines = _wrapped("no: " if error.exit_status == 1 else "error: ", f"{error.where}: {error.found}", width)
+    lines += [f"  {line}" for line in error.excerpt.splitlines()]
+    lines += _wrapped("  allowed: ", error.allowed, width) if error.allowed else []
+    lines += _wrapped("  try: ", error.advice, width) if error.advice else []
+    return "\n".join(lines)
+
+
+def _wrapped(label: str, text: str, width: int) -> list[str]:
+    """The first line of a text, wrapped below its label; the others are lines to paste."""
+    from textwrap import wrap
+
+    first, *others = text.split("\n")
+    rows = wrap(
+        label + first,
+        width,
+        subsequent_indent=" " * len(label),
+        break_long_words=False,
+        break_on_hyphens=False,
+    )
+    return rows + others
+
+
 def _usage(error: click.ClickException, given: list[str]) -> None:
-    if "--json" in given:
-        command = _command_of(given)
-        _fail(RealizeError("command line", error.format_message(), "", f"realize {command} --help"), given)
-    error.show()
-    sys.exit(2)
+    """Answer a mistake in the command line; no command at all is a question for help."""
+    if not given:
+        error.show()
+        sys.exit(error.exit_code)
+    context = getattr(error, "ctx", None) or _context_of(given)
+    _fail(_usage_error(error, context, given), given)
+
+
+def _usage_error(error: click.ClickException, context: click.Context, given: list[str]) -> RealizeError:
+    """Say what the option library found, in the words of every other error."""
+    command, help_advice = context.command, f"{context.command_path} --help"
+    names = [name for parameter in command.get_params(context) for name in parameter.opts if name.startswith("--")]
+    if isinstance(error, click.MissingParameter) and error.param is not None:
+        return _missing(error.param, command)
+    if isinstance(error, click.NoSuchOption):
+        return _unknown("option", error.option_name, names, context)
+    if isinstance(error, click.BadOptionUsage):
+        option = next(p for p in command.get_params(context) if error.option_name in p.opts)
+        return _misused(error.option_name, option)
+    if isinstance(command, click.Group):
+        word = next((word for word in given if not word.startswith("-")), "")
+        return _unknown("command", word, sorted(commands.commands), context)
+    message = error.format_message().rstrip(".")
+    usage = " ".join([context.command_path, *command.collect_usage_pieces(context)])
+    advice = f"put what has blanks in quotes, or see {help_advice}"
+    return RealizeError(context.command_path, message[:1].lower() + message[1:], usage, advice)
+
+
+def _missing(parameter: click.Parameter, command: click.Command) -> RealizeError:
+    """Answer an option or argument that has to be there, with the example of the command."""
+    example = re.search(r"Example: (.*)", command.help or "")
+    advice = example[1] if example else f"realize {command.name} --help"
+    name = parameter.opts[0] if isinstance(parameter, click.Option) else (parameter.name or "").upper()
+    return RealizeError(name, "nothing", _allowed(parameter), advice)
+
+
+def _misused(name: str, option: click.Parameter) -> RealizeError:
+    """Answer an option without its value, or a switch with one."""
+    if isinstance(option, click.Option) and option.is_flag:
+        return RealizeError(name, "a value", "no value: the option stands alone", f"write {name}")
+    return RealizeError(name, "nothing", _allowed(option), f"write {name} {option.metavar}")
+
+
+def _allowed(parameter: click.Parameter) -> str:
+    text = parameter.help if isinstance(parameter, click.Option) else _ARGUMENTS[parameter.name or ""]
+    return (text or "")[:1].lower() + (text or "")[1:].rstrip(".")
+
+
+def _unknown(kind: str, word: str, known: list[str], context: click.Context) -> RealizeError:
+    from realize.algebra.expression.tokens import nearest, shown
+
+    # Dashes would count as likeness.
+    stem = nearest(word.lstrip("-"), (name.lstrip("-") for name in known))
+    like = next((name for name in known if name.lstrip("-") == stem), None)
+    advice = f"did you mean {like}?" if like else f"{context.command_path} --help"
+    return RealizeError(context.command_path, f"the unknown {kind} {shown(word)}", ", ".join(known), advice)
+
+
+def _context_of(given: list[str]) -> click.Context:
+    """The command that was meant, where the option library does not say."""
+    name = _command_of(given)
+    top = click.Context(commands, info_name="realize")
+    return click.Context(commands.commands[name], info_name=name, parent=top) if name else top
 
 
 def _command_of(given: list[str]) -> str:

@@ -12,7 +12,16 @@ from realize.algebra import polynomial as poly
 from realize.algebra.expression import decimal_text, evaluate_transfer, exact_text, format_transfer, ratio
 from realize.algebra.expression.ratio import MAX_DEGREE, Ratio, UnfitError
 from realize.design.gate import LARGEST, Table, checked_number
-from realize.design.values import LARGEST_GAIN, Values, names_of, resolve, used_names, useless, written_values
+from realize.design.values import (
+    LARGEST_GAIN,
+    Values,
+    names_of,
+    refuse_unused,
+    resolve,
+    used_names,
+    useless,
+    written_values,
+)
 from realize.errors import RealizeError, Refused
 from realize.quantity import SHOWN_DIGITS, round_significant
 from realize.transfer import TransferFunction
@@ -59,6 +68,7 @@ def read_controller(table: Table, overrides: Mapping[str, str], elsewhere: Colle
     values = resolve(written)
     numerator, denominator = _POLYNOMIALS[form](table, values)
     transfer = reduced(numerator, denominator, table.where(form[0]))
+    refuse_unused(table.table("values"), overrides, roots)
     text = str(table.entries["transfer"]) if "transfer" in table else _readable(numerator, denominator)
     return Controller(transfer, " ".join(text.split()), tuple(values.items()))
 

@@ -51,6 +51,15 @@ _TABLES = (
     *("signals", "target", "tolerance", "accept"),
 )
 
+#: What the reader of TOML says of a name that stands twice.
+_SAID_TWICE = re.compile(r"Cannot (?:declare|overwrite|redefine|mutate) |Duplicate inline table key ")
+
+#: The name of a table on a line of its own, of a key in a line of its own, and of a key in braces as that reader quotes
+#: it; as much of them as fits a message.
+_HEADER = re.compile(r"""\s*(\[\[?[\w."' -]{1,60}\]\]?)""")
+_KEY = re.compile(r"""\s*([\w."' -]{1,60}?)\s*=""")
+_INLINE_KEY = re.compile(r"Duplicate inline table key '(.{1,60}?)'")
+
 _DESIGN_FILE = "a readable design file in TOML"
 
 _ARGUMENT = "a design file (its name ends in .toml), - for one on standard input, or an expression in s"
@@ -287,11 +296,28 @@ def _parsed(text: str, source: str) -> dict[str, object]:
 
 def _toml_error(message: str, text: str, source: str) -> RealizeError:
     """Put line and column in front, and quote the line."""
-    match = re.fullmatch(r"(.*) \(at line (\d+), column (\d+)\)", message, re.DOTALL)
+    match = re.fullmatch(r"(.*) \(at (?:line (\d+), column (\d+)|end of document)\)", message, re.DOTALL)
+    if match is not None and _SAID_TWICE.match(match[1]):
+        return _twice(match[1], int(match[2] or 0), text, source)
     allowed, advice = "TOML: [table], then lines of key = value", "texts and quantities stand in quotes"
-    if match is None:
+    if match is None or match[2] is None:
         return RealizeError(source, printable(message), allowed, advice)
     line, column = int(match[2]), int(match[3])
     quoted = text.split("\n")[line - 1] if line <= text.count("\n") + 1 else ""
     excerpt = f"{printable(quoted[:_SHOWN_COLUMNS])}\n{' ' * (column - 1)}^" if column <= _SHOWN_COLUMNS else ""
     return RealizeError(f"{source}, line {line}, column {column}", printable(match[1]), allowed, advice, excerpt)
+
+
+def _twice(message: str, line: int, text: str, source: str) -> RealizeError:
+    """Name the table or key that stands twice; line 0 is the last one."""
+    lines = text.rstrip().split("\n")
+    number = line or len(lines)
+    quoted = lines[number - 1]
+    header, key = _HEADER.match(quoted), _INLINE_KEY.match(message) or _KEY.match(quoted)
+    if header:
+        found, advice = f"the table {printable(header[1])} stands twice", "join the two"
+    else:
+        found = f"the key {printable(key[1])} stands twice" if key else "a key stands twice"
+        advice = "keep the one that holds"
+    allowed = "each table once, and each key once in its table"
+    return RealizeError(f"{source}, line {number}", found, allowed, advice, printable(quoted[:_SHOWN_COLUMNS]))

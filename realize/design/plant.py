@@ -8,19 +8,21 @@ from fractions import Fraction
 from realize.algebra.expression import evaluate_delayed_transfer
 from realize.algebra.expression.tokens import shown
 from realize.design.controller import reduced
-from realize.design.gate import Table, within_range
+from realize.design.gate import Table, described, within_range
 from realize.design.model import UNITY, LoopTable, PlantCase, PlantTable
 from realize.design.values import (
     Written,
     checked_value_name,
     in_table,
     names_of,
+    refuse_unused,
     resolve,
     used_names,
     useless,
     written_values,
 )
 from realize.errors import RealizeError, Refused
+from realize.quantity import format_engineering
 from realize.transfer import TransferFunction
 
 #: Most cases beside the nominal one: both ends of five values.
@@ -66,12 +68,15 @@ def read_plant(table: Table, overrides: Mapping[str, str], read_file: Callable[[
     table.only(("transfer", "response", "dead_time", "sensor", "values", "case"))
     _refuse_two_descriptions(table)
     cases = table.tables("case")
-    written = written_values(table.table("values"), overrides, {*_roots(table), *_names_in(cases)})
+    values, roots = table.table("values"), {*_roots(table), *_names_in(cases)}
+    written = written_values(values, overrides, roots)
     nominal = _case(table, NOMINAL if cases else "", written)
+    corners = _corners(table, cases, written)
+    refuse_unused(values, overrides, roots)
     path = table.text("response")
     return PlantTable(
         _one_line(table, "transfer"),
-        (nominal, *_corners(table, cases, written)),
+        (nominal, *corners),
         _one_line(table, "sensor"),
         path,
         None if path is None else checked_response(*_file(table, path, read_file)),
@@ -185,8 +190,20 @@ def _case(table: Table, name: str, written: Mapping[str, Written]) -> PlantCase:
     behind = "" if name in ("", NOMINAL) else f", case {shown(name)}"
     (transfer, own_s), (sensor, sensor_s) = (_part(table, key, values, table.where(key) + behind) for key in _PARTS)
     stated_s = table.quantity("dead_time", "time", zero=True) or Fraction(0)
+    if own_s and "dead_time" in table:
+        _refuse_dead_time_twice(table, own_s)
     dead_time_s = within_range(stated_s + own_s + sensor_s, table.where("dead_time") + behind)
     return PlantCase(name, transfer, dead_time_s, sensor, tuple(values.items()))
+
+
+def _refuse_dead_time_twice(table: Table, own_s: Fraction) -> None:
+    raise table.error(
+        "dead_time",
+        f"dead time stands twice: {described(table.entries['dead_time'])} here, and "
+        f"{format_engineering(own_s, 's')} in transfer as a factor exp(-T*s)",
+        "dead time of a plant in one place; that of the sensor stands in its own expression",
+        "remove one of the two; where there are both, write their sum",
+    )
 
 
 def _part(table: Table, key: str, values: Mapping[str, Fraction], where: str) -> tuple[TransferFunction, Fraction]:

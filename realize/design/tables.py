@@ -67,8 +67,12 @@ _TARGET_KEYS = (
     *("anti_windup", "tracking_time", "guard_nonfinite"),
 )
 
-#: The method that can make up for delay.
+#: The method that can make up for delay, and the one that is exact at a frequency.
 _COMPENSATING = "frequency-fit"
+_PREWARPED = "bilinear-prewarped"
+
+#: A number with a unit behind it, where no unit is wanted; 2e-3 and 2*pi are none.
+_WITH_UNIT = re.compile(r"\s*[-+]?[0-9.]++(?:[eE][-+]?[0-9]++)?+\s*[A-Za-z%].*", re.DOTALL)
 
 #: Checks that may be accepted without a figure: what went wrong is a matter of yes or no.
 _LIMIT_OPTIONAL = ("saturation recovery",)
@@ -183,14 +187,12 @@ def read_method(table: Table, override: str | None) -> Method:
         value, where = override, "--method"
     name = checked_choice(value, ("auto", *METHODS, *LOOP_METHODS), where)
     compensate_delay = table.flag("compensate_delay", False)
-    if compensate_delay and name not in ("auto", _COMPENSATING):
-        raise table.error(
-            "compensate_delay",
-            f"true, with the method {name}",
-            f"true with the method {_COMPENSATING} or auto only",
-            f'remove it, or write name = "{_COMPENSATING}"',
-        )
-    return Method(name, table.quantity("exact_at", "angular frequency"), compensate_delay)
+    if compensate_delay:
+        _refuse_other_method(table, "compensate_delay", "true", name, _COMPENSATING)
+    exact_at_rad_s = table.quantity("exact_at", "angular frequency")
+    if exact_at_rad_s is not None:
+        _refuse_other_method(table, "exact_at", "a frequency", name, _PREWARPED)
+    return Method(name, exact_at_rad_s, compensate_delay)
 
 
 def refuse_schedule(root: Table) -> None:
@@ -247,6 +249,17 @@ def read_accept(tables: list[Table]) -> tuple[Accept, ...]:
             )
         accepted[entry.check] = entry
     return tuple(accepted.values())
+
+
+def _refuse_other_method(table: Table, key: str, found: str, name: str, only: str) -> None:
+    """Refuse a key that the named method would ignore."""
+    if name not in ("auto", only):
+        raise table.error(
+            key,
+            f"{found}, with the method {name}",
+            f"{found} with the method {only} or auto only",
+            f'remove it, or write name = "{only}"',
+        )
 
 
 def _overridden_period(overrides: Overrides) -> Fraction | None:
@@ -380,6 +393,14 @@ def _signal_type(table: Table, target: Target) -> str | None:
 
 def _figure(table: Table, key: str, unit: str) -> Fraction:
     """A tolerance or limit above zero, in its unit."""
+    written = table.entries[key]
+    if not unit and isinstance(written, str) and _WITH_UNIT.fullmatch(written):
+        raise table.error(
+            key,
+            described(written),
+            "a plain number above zero: a ratio, which has no unit",
+            f"write a plain number, such as {key} = 2.5",
+        )
     value = table.quantity(key, DIMENSIONS[unit]) if unit else table.positive_number(key)
     assert value is not None  # the key is there
     return value

@@ -64,6 +64,27 @@ def written_values(table: Table, overrides: Mapping[str, str], roots: Iterable[s
     return {name: entry for name, entry in written.items() if name in known}
 
 
+def refuse_unused(table: Table, overrides: Mapping[str, str], roots: Iterable[str]) -> None:
+    """Refuse a value of the file that is in no use, neither as the file stands nor with the command line.
+
+    Parameters
+    ----------
+    table, overrides, roots
+        As for :func:`written_values`.
+
+    Raises
+    ------
+    RealizeError
+        When nothing uses one, or only another one that nothing uses.
+    """
+    in_file, needed = in_table(table), set(roots)
+    written = in_file | {name: Written(text, f"--value {name}") for name, text in overrides.items()}
+    used = used_names(needed, in_file) | used_names(needed, written)
+    for name, entry in in_file.items():
+        if name not in used:
+            raise useless(name, entry.where, used)
+
+
 def in_table(table: Table) -> dict[str, Written]:
     """Values of the file, as they stand there."""
     return {name: Written(value, table.where(name)) for name, value in table.entries.items()}

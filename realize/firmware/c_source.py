@@ -125,7 +125,7 @@ def _refusal(conditions: Sequence[str], says: str, advice: str) -> list[str]:
     """Stop the compilation; the message is one, on two lines."""
     whole = " || ".join(conditions)
     parted = " || \\\n    ".join(conditions)
-    return [f"#if {whole if len(whole) < WIDTH - 4 else parted}", f'#error "{says}: \\', f'{advice}"', "#endif"]
+    return [f"#if {whole if len(whole) < WIDTH - 4 else parted}", f'#error "{says}:\\', f' {advice}"', "#endif"]
 
 
 def _contraction_off() -> list[str]:

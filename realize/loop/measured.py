@@ -16,6 +16,7 @@ from typing import NamedTuple
 
 import numpy as np
 
+from realize.algebra.expression.tokens import shown
 from realize.band import frequency_text
 from realize.errors import RealizeError
 from realize.loop.margins import GainCrossover, Margins, Scan, margins
@@ -98,33 +99,49 @@ def read_response(text: str, where: str = "[plant] response") -> MeasuredRespons
     RealizeError
         When a column is missing, a number is none, frequencies do not ascend, or there are too few points.
     """
-    rows = [row for row in csv.reader(text.splitlines()) if any(cell.strip() for cell in row)]
+    lines = text.removeprefix("\N{ZERO WIDTH NO-BREAK SPACE}").splitlines()
+    reader = csv.reader(lines)
+    # Each row with the number of its line, which is where the user looks.
+    rows = [(reader.line_num, row) for row in reader if any(cell.strip() for cell in row)]
     if not rows:
         raise RealizeError(where, "the file is empty", _EXPECTED, "export the measurement as text")
-    names = [cell.strip().lower().lstrip("\N{ZERO WIDTH NO-BREAK SPACE}") for cell in rows[0]]
-    for name in COLUMNS:
-        if names.count(name) != 1:
-            found = "missing" if name not in names else "there more than once"
-            raise RealizeError(where, f"the column {name} is {found}", _EXPECTED, "name the columns in the first line")
-    places = [names.index(name) for name in COLUMNS]
-    points = [_point(row, places, f"{where}, point {i}") for i, row in enumerate(rows[1:], 1)]
+    (first, head), *body = rows
+    places = _places(head, lines[first - 1], f"{where}, line {first}")
+    points = [_point(row, len(head), places, lines[i - 1], f"{where}, line {i}") for i, row in body]
     if len(points) < LEAST_POINTS:
         raise RealizeError(
             where, f"it has {len(points)} points", f"at least {LEAST_POINTS}", "measure at more frequencies"
         )
     frequency, magnitude, phase = zip(*points, strict=True)
-    _require_ascending(frequency, where)
-    _require_resolved(frequency, phase, where)
+    numbers = [i for i, _ in body]
+    _require_ascending(frequency, numbers, where)
+    _require_resolved(frequency, phase, numbers, where)
     return MeasuredResponse(frequency, magnitude, phase)
 
 
 _EXPECTED = f"a first line with {', '.join(COLUMNS)}, and a line for each frequency"
 
 
-def _point(row: Sequence[str], places: Sequence[int], where: str) -> list[float]:
+def _places(head: Sequence[str], line: str, where: str) -> list[int]:
+    """Where each column stands."""
+    names = [cell.strip().lower() for cell in head]
+    for name in COLUMNS:
+        if names.count(name) != 1:
+            found = "is missing" if name not in names else "is there more than once"
+            advice = "name the columns in the first line, with commas between them"
+            raise RealizeError(where, f"the column {name} {found} in {shown(line.strip())}", _EXPECTED, advice)
+    return [names.index(name) for name in COLUMNS]
+
+
+def _point(row: Sequence[str], width: int, places: Sequence[int], line: str, where: str) -> list[float]:
     if len(row) <= max(places):
-        raise RealizeError(where, f"it has {len(row)} columns", _EXPECTED, "complete the line or remove it")
-    return [_number(row[place], name, where) for place, name in zip(places, COLUMNS, strict=True)]
+        found, advice = "only ", "separate the numbers with commas; complete the line or remove it"
+    elif any(cell.strip() for cell in row[width:]):
+        found, advice = "", "write decimal points; use commas between the numbers only"
+    else:
+        return [_number(row[place], name, where) for place, name in zip(places, COLUMNS, strict=True)]
+    count = f"{found}{len(row)} column{'' if len(row) == 1 else 's'}"
+    raise RealizeError(where, f"{count} in {shown(line.strip())}", f"{width} columns, as in the first line", advice)
 
 
 def _number(cell: str, name: str, where: str) -> float:
@@ -133,31 +150,34 @@ def _number(cell: str, name: str, where: str) -> float:
     except ValueError:
         value = float("nan")
     if not isfinite(value):
-        raise RealizeError(where, f"{name} is {cell.strip()!r}", "a finite number", "correct or remove the line")
+        raise RealizeError(where, f"{name} is {shown(cell.strip())}", "a finite number", "correct or remove the line")
     return value
 
 
-def _require_ascending(frequency: Sequence[float], where: str) -> None:
+def _require_ascending(frequency: Sequence[float], lines: Sequence[int], where: str) -> None:
     if frequency[0] <= 0:
         raise RealizeError(
-            where, f"the first frequency is {frequency[0]:.5g} Hz", "frequencies above 0", "leave out the point at 0"
+            f"{where}, line {lines[0]}",
+            f"the first frequency is {frequency[0]:.5g} Hz",
+            "frequencies above 0",
+            "leave out the point at 0",
         )
-    for i, (before, after) in enumerate(pairwise(frequency), 2):
+    for line, (before, after) in zip(lines[1:], pairwise(frequency), strict=True):
         if after <= before:
             raise RealizeError(
-                where,
-                f"point {i} is at {after:.5g} Hz, after {before:.5g} Hz",
+                f"{where}, line {line}",
+                f"{after:.5g} Hz after {before:.5g} Hz",
                 "ascending frequencies",
                 "sort the lines by frequency, each once",
             )
 
 
-def _require_resolved(frequency: Sequence[float], phase_deg: Sequence[float], where: str) -> None:
+def _require_resolved(frequency: Sequence[float], phase_deg: Sequence[float], lines: Sequence[int], where: str) -> None:
     for i, (before, after) in enumerate(pairwise(phase_deg)):
         jump = abs((after - before + 180) % 360 - 180)
         if jump > _MOST_JUMP_DEG:
             raise RealizeError(
-                where,
+                f"{where}, line {lines[i + 1]}",
                 f"the phase changes by {jump:.5g} deg between {frequency[i]:.5g} and {frequency[i + 1]:.5g} Hz",
                 f"at most {_MOST_JUMP_DEG:.5g} deg from one frequency to the next",
                 "measure at more frequencies there",

@@ -47,7 +47,7 @@ def check(design: Factored, period_s: Fraction, method: str, exact_at_rad_s: Fra
 
 @pytest.mark.parametrize("method", reference.METHODS)
 @given(sampled_designs(16), decimals(-4, 0))
-@settings(max_examples=14)
+@settings(max_examples=4)
 def test_every_coefficient_is_the_correctly_rounded_one(
     method: str, drawn: tuple[Factored, Fraction], angle: Fraction
 ) -> None:

@@ -23,8 +23,12 @@ MAX_DIGITS = 800
 #: Characters shown to the left and to the right of the caret: with the indent they fit 100 columns.
 _WINDOW = 40
 
-#: Likeness from which a known word is suggested: one letter wrong in a word of two is still a hint.
-_LEAST_LIKENESS = 0.5
+#: Likeness (twice the letters in common over all letters) from which a known word is suggested: one letter wrong in
+#: three leaves 2/3, and two in four would be a word of its own.
+_LEAST_LIKENESS = 0.65
+
+#: Letters of the shortest word that is like another: of two, one is always another name, ki and kp.
+_SHORTEST_LIKE = 3
 
 #: Most names listed in one message: two lines of them.
 _MOST_LISTED = 16
@@ -153,7 +157,7 @@ def nearest(word: str, known: Iterable[str]) -> str | None:
     """Known word most like ``word``, or ``None`` when nothing is like it."""
     candidates = list(known)
     folded = [candidate for candidate in candidates if candidate.casefold() == word.casefold()]
-    if folded or len(word) > 4 * max(map(len, candidates), default=0):
+    if folded or not _SHORTEST_LIKE <= len(word) <= 4 * max(map(len, candidates), default=0):
         return next(iter(folded), None)
     # Only in the path of an error, and then it costs as much as the rest of the reading.
     from difflib import get_close_matches
