@@ -6,11 +6,12 @@ Every step is a function from values to values; nothing here prints, and nothing
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from functools import cached_property
 from typing import TYPE_CHECKING, Any, NamedTuple
 
+from realize.algebra.enclosure import Unresolved
 from realize.arithmetic.formats import FORMATS
 from realize.arithmetic.realization import Realization, realization, stored_pulse
 from realize.arithmetic.recursion import Recursion
@@ -171,7 +172,7 @@ class Comparison:
     def closest(self) -> MethodResult | None:
         """The chosen method, else the one that came closest to being acceptable."""
         tried = [m for m in self.methods if m.refused is None]
-        return self.chosen or min(tried, key=_ratio, default=None)
+        return self.chosen or min(tried, key=_distance, default=None)
 
     @property
     def acceptable(self) -> bool:
@@ -376,13 +377,33 @@ def _result(design: Design, reference: ContinuousReference, setting: LoopSetting
         stored = realization(made.pulse, FORMATS[design.target.arithmetic], design.target.structure)
     except Refused as refusal:
         return MethodResult(name, f"{refusal.where}: {refusal.found}")
+    except Unresolved:
+        return MethodResult(name, "a coefficient cannot be told from a neighbour at any permitted precision")
     as_stored = stored_pulse(stored)
-    checks = _checks(design, reference, made, stored, as_stored)
+    checks = _with_added_growth(_checks(design, reference, made, stored, as_stored), reference.transfer, as_stored)
     loop = setting.result(made.pulse, as_stored) if setting else None
     checks += loop.checks if loop else ()
     blocking, accepted = gate(checks, design.accept)
     notes += made.conversion.notes + root_notes(made.pulse, reference.transfer) + (loop.notes if loop else ())
     return MethodResult(name, None, made, stored, checks, blocking, accepted, notes, loop)
+
+
+def _with_added_growth(
+    checks: tuple[Check, ...], transfer: TransferFunction, stored: PulseTransferFunction
+) -> tuple[Check, ...]:
+    """Mark the stability check where the stored numbers have more growing poles than the design."""
+    own = sum(root.count for root in transfer.poles if root.value.real > 0)
+    # |z|^2 - 1 from z - 1, which keeps its digits next to the circle.
+    growing = [r for r in stored.poles if 2 * r.value.real + abs(r.value) ** 2 > 0]
+    if sum(root.count for root in growing) <= own:
+        return checks
+    farthest = max(growing, key=lambda root: abs(1 + root.value))
+    at = 1 + farthest.value
+    reason = f"the stored numbers have a growing pole that the design does not have; the farthest is z = {at:.5g}"
+    return tuple(
+        replace(c, difference=2.0, reason=reason, verdict="out") if c.check == "stability" and c.of == "stored" else c
+        for c in checks
+    )
 
 
 def _discretized(
@@ -473,10 +494,15 @@ def _covers(agreement: Accept, check: Check) -> bool:
     if agreement.check != check.check:
         return False
     if check.check == "stability":
-        return check.reference == check.obtained
+        return _is_own_growth(check)
     if agreement.limit is None:
         return check.difference is None or check.check == "saturation recovery"
     return check.difference is not None and Fraction(check.difference) <= agreement.limit
+
+
+def _is_own_growth(check: Check) -> bool:
+    """Whether a failed stability check is about a growing mode of the design, and nothing beyond it."""
+    return check.reference == check.obtained and check.difference == 1
 
 
 def _recommendation(results: Sequence[MethodResult]) -> tuple[str | None, str]:
@@ -502,11 +528,16 @@ def _ratio(result: MethodResult) -> float:
     return result.worst[0] if result.worst else 0.0
 
 
+def _distance(result: MethodResult) -> tuple[int, float]:
+    """How far from acceptable: lost stability and failures without a figure count before any ratio."""
+    return sum(1 for c in result.blocking if not c.tolerance or c.difference is None), _ratio(result)
+
+
 def _nothing_acceptable(results: Sequence[MethodResult]) -> str:
     tried = [r for r in results if r.refused is None]
     if not tried:
         return f"no method applies: {results[0].refused}"
-    closest = min(tried, key=_ratio)
+    closest = min(tried, key=_distance)
     return f"no method is within tolerance; {closest.method} comes closest: {_failures(closest)}"
 
 
@@ -554,7 +585,7 @@ def _advice(comparison: Comparison) -> str:
     if closest is None:
         return "`realize compare` shows why each method was refused"
     if any(c.check == "stability" for c in closest.blocking):
-        own = all(c.reference == c.obtained for c in closest.blocking if c.check == "stability")
+        own = all(_is_own_growth(c) for c in closest.blocking if c.check == "stability")
         if own:
             return 'where the growing mode is meant, [[accept]] with check = "stability", because and by'
         return _alternative(comparison.design) or "another method, or a higher sample rate"

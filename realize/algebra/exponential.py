@@ -16,7 +16,7 @@ from math import factorial, log2
 import numpy as np
 
 from realize.algebra import polynomial as poly
-from realize.algebra.enclosure import Enclosure, integers
+from realize.algebra.enclosure import Enclosure, Unresolved, integers
 from realize.algebra.roots import bound_exponent
 
 
@@ -181,6 +181,9 @@ def _exponential_modulo(modulus: Enclosure, exponent: int, time: Fraction = Frac
     total = total.widened(2)
     for _ in range(squarings):
         total = _reduced(total.convolve(total), modulus)
+        # Once a radius is above 1 every squaring squares it: nothing would be left but its digits.
+        if max(total.rad) >> 4 * bits:
+            raise Unresolved
     return total
 
 

@@ -36,6 +36,14 @@ _MOST_ITERATIONS = 100
 #: Asymmetric start angle: symmetric starting points would stay on the real axis for ever (Aberth 1973).
 _START_ANGLE = 0.7
 
+#: Approximations nearer than this, or a correction larger than its inverse, are left to integers: the square of
+#: neither leaves a double's range.
+_FLOAT_APART = 1e-100
+
+#: Bits of a factor that comes from floating point.
+_FLOAT_BITS = 60
+_FLOAT_UNIT = float(1 << _FLOAT_BITS)
+
 Disc = tuple[int, int, int]
 
 
@@ -124,9 +132,11 @@ class _Factor:
         self.bits = _FIRST_BITS
         self.z = _starting_points(logs, self.exponent, self.bits)
         self.radii = [0] * len(self.z)
+        self.settled = False
         self._solve()
         while not self._settled():
             self._double()
+        self.settled = True
 
     @property
     def _noise(self) -> int:
@@ -193,7 +203,8 @@ class _Factor:
     def _double(self) -> None:
         if self.bits >= _MOST_BITS:
             raise ArithmeticError("the roots of a polynomial could not be separated")
-        clusters = self._clusters()
+        # Once every disc is alone only refinement is left: an index stays with its root.
+        clusters = [] if self.settled else self._clusters()
         self.z = [(re << self.bits, im << self.bits) for re, im in self.z]
         self.bits *= 2
         for cluster in clusters:
@@ -253,12 +264,26 @@ class _Factor:
                 # Nothing but rounding is left to follow; repelled by its neighbours it would only stray.
                 continue
             newton = _divide(value, _nonzero(slope), bits)
-            pull = self._repulsion(i)
-            factor = _multiply(newton, pull, bits)
-            step = _divide(newton, _nonzero(((1 << bits) - factor[0], -factor[1])), bits)
+            step = self._corrected(i, newton)
             self.z[i] = (z[0] - step[0], z[1] - step[1])
             largest = max(largest, abs(step[0]), abs(step[1]))
         return largest
+
+    def _corrected(self, i: int, newton: tuple[int, int]) -> tuple[int, int]:
+        """Newton's step less the pull of the other roots: ``newton/(1 - newton sum_j 1/(z_i - z_j))``.
+
+        The sum needs few digits: in floating point where no two approximations are too near for it.
+        """
+        bits, one = self.bits, 1 << self.bits
+        x, y = self.z[i]
+        apart = [complex((x - u) / one, (y - v) / one) for j, (u, v) in enumerate(self.z) if j != i]
+        if all(abs(d) > _FLOAT_APART for d in apart):
+            factor = complex(newton[0] / one, newton[1] / one) * sum(1 / d for d in apart)
+            if abs(1 - factor) > _FLOAT_APART:
+                scale = 1 / (1 - factor)
+                return _multiply(newton, (int(scale.real * _FLOAT_UNIT), int(scale.imag * _FLOAT_UNIT)), _FLOAT_BITS)
+        pull = _multiply(newton, self._repulsion(i), bits)
+        return _divide(newton, _nonzero((one - pull[0], -pull[1])), bits)
 
     def _repulsion(self, i: int) -> tuple[int, int]:
         """``sum_j 1/(z_i - z_j)``."""

@@ -71,12 +71,15 @@ def discretize(
             "as many poles as zeros, or more",
             "add a roll-off pole first",
         )
-    conversion = METHODS[method](transfer, period_s, exact_at_rad_s)
     try:
+        conversion = METHODS[method](transfer, period_s, exact_at_rad_s)
         pulse = pulse_transfer_function(conversion, period_s)
     except Unresolved:
         raise Refused(
-            "method", "its gain at z = 1 cannot be told from zero", "", "choose another method or sample rate"
+            "method",
+            "a number of it cannot be told from zero at any permitted precision",
+            "frequencies and rates within some hundred orders of magnitude",
+            "choose another method, frequency or sample rate",
         ) from None
     return Discretization(method, pulse, conversion)
 

@@ -30,8 +30,9 @@ _CARRIED_RELATIVE_BITS = 160
 #: Values below the least subnormal of float64 count as 0: nothing downstream can hold them.
 _NEGLIGIBLE_BITS = 1100
 
-#: A numerator whose last coefficients are below this fraction of the largest has zeros at z = 0 instead: to a
-#: recursion in float64 they are the same by a hundred orders of magnitude.
+#: Last coefficients of a numerator below this fraction of what it is at z = 1 (its zeros there divided out) are
+#: left out: its zeros move to z = 0, and its value anywhere in the band by a hundred orders of magnitude less than
+#: any format holds.
 _AT_ORIGIN_BITS = 400
 
 #: ``exp(709)`` is the largest power of e that float64 can hold, to within a factor of 2.
@@ -168,14 +169,15 @@ def _carried_with_shift(conversion: Conversion) -> tuple[poly.Rationals, poly.Ra
 
 
 def _with_zeros_at_origin(p: poly.Rationals, zeros_at_one: int) -> poly.Rationals:
-    """Put zeros that no format can tell from z = 0 there, exactly; ``p`` is in powers of ``z - 1``.
+    """Drop the last coefficients that count nowhere near the band; ``p`` is in powers of ``z - 1``.
 
-    They come from poles that decay within a fraction of a period, and crowd together seen from z = 1.
+    They come from poles that decay within a fraction of a period, and their zeros crowd together seen from z = 1.
     """
     if not p:
         return p
-    free = poly.shift(p[: len(p) - zeros_at_one], Fraction(-1))
-    least = max(abs(c) for c in free) / (1 << _AT_ORIGIN_BITS)
+    near_one = p[: len(p) - zeros_at_one]
+    free = poly.shift(near_one, Fraction(-1))
+    least = abs(next(c for c in reversed(near_one) if c)) / (1 << _AT_ORIGIN_BITS)
     last = max(i for i, c in enumerate(free) if abs(c) > least)
     moved = free[: last + 1] + (Fraction(0),) * (len(free) - 1 - last)
     return poly.shift(moved, Fraction(1)) + p[len(p) - zeros_at_one :]
@@ -237,11 +239,13 @@ def _value_of(enclosure: Callable[[int], Disc], root: Root, period_s: Fraction) 
     bits = 128
     while True:
         re, im, rad = enclosure(bits)
-        if max(abs(re), abs(im)) >= rad << 60:
+        size = max(abs(re), abs(im))
+        aliased = bits > limit and size + rad < 1 << (bits - limit)
+        if size >= rad << 60 and not aliased:
             value = complex(re / (1 << bits), im / (1 << bits))
             # A pair stays a pair even where its imaginary part is too small for a double.
             return complex(value.real, max(value.imag, 5e-324)) if root.is_pair else complex(value.real)
-        if bits > limit:
+        if aliased or bits > MOST_BITS:
             raise Refused(
                 "method",
                 f"the root at s = {root.value:.5g} rad/s falls on z = 1 although it is not 0",

@@ -16,7 +16,7 @@ from realize.algebra.elementary import tangent
 from realize.algebra.enclosure import Enclosure, integers, reciprocal
 from realize.algebra.irrational import pi
 from realize.algebra.roots import Disc, Root, rational
-from realize.errors import Refused
+from realize.errors import RealizeError, Refused
 from realize.methods.conversion import Conversion, mapped, normalised_ratio
 from realize.transfer import TransferFunction
 
@@ -49,7 +49,13 @@ def blended_difference(transfer: TransferFunction, period_s: Fraction, exact_at_
 
 def bilinear_prewarped(transfer: TransferFunction, period_s: Fraction, exact_at_rad_s: Fraction | None) -> Conversion:
     """``s = (w/tan(w T/2))(z - 1)/(z + 1)``: bilinear, exact at w with ``0 < w T < pi``."""
-    assert exact_at_rad_s is not None
+    if exact_at_rad_s is None or exact_at_rad_s <= 0:
+        raise RealizeError(
+            "exact_at",
+            "no frequency" if exact_at_rad_s is None else f"{float(exact_at_rad_s):.5g} rad/s",
+            "a frequency above 0",
+            "give the frequency at which bilinear-prewarped is to be exact",
+        )
     angle = exact_at_rad_s * period_s
     if angle >= pi():
         raise Refused(
