@@ -5,6 +5,7 @@ Roots are rational on purpose: the tests then know every pole and zero without h
 
 from __future__ import annotations
 
+from dataclasses import dataclass
 from fractions import Fraction
 from typing import NamedTuple
 
@@ -14,7 +15,8 @@ from realize.algebra import polynomial as poly
 from realize.transfer import TransferFunction
 
 
-class ExactRoot(NamedTuple):
+@dataclass(frozen=True)
+class ExactRoot:
     """A real root (``im == 0``) or a conjugate pair (``im > 0``), in rad/s, with its multiplicity."""
 
     re: Fraction
@@ -48,9 +50,7 @@ class Factored(NamedTuple):
         return self.order - sum(root.count for root in self.zeros)
 
     def transfer(self) -> TransferFunction:
-        return TransferFunction.from_polynomials(
-            poly.scale(expanded(self.zeros), self.gain), expanded(self.poles)
-        )
+        return TransferFunction.from_polynomials(poly.scale(expanded(self.zeros), self.gain), expanded(self.poles))
 
 
 def expanded(roots: tuple[ExactRoot, ...]) -> poly.Rationals:
@@ -100,9 +100,7 @@ def roots(draw: st.DrawFn, rate_hz: Fraction, kinds: tuple[str, ...] = KINDS) ->
 
 
 @st.composite
-def root_sets(
-    draw: st.DrawFn, rate_hz: Fraction, most: int, kinds: tuple[str, ...] = KINDS
-) -> tuple[ExactRoot, ...]:
+def root_sets(draw: st.DrawFn, rate_hz: Fraction, most: int, kinds: tuple[str, ...] = KINDS) -> tuple[ExactRoot, ...]:
     """Distinct roots, at most ``most`` of them, conjugates and repetitions counted."""
     chosen: list[ExactRoot] = []
     for root in draw(st.lists(roots(rate_hz, kinds), max_size=most)):

@@ -3,6 +3,7 @@
 import json
 import subprocess
 import sys
+from itertools import pairwise
 from pathlib import Path
 from typing import Any
 
@@ -259,3 +260,129 @@ def test_no_color_is_respected(tmp_path: Path) -> None:
         check=True,
     )
     assert b"\x1b" not in process.stdout
+
+
+# -- how a mistake is told ----------------------------------------------------------------------------------
+
+
+@pytest.fixture(autouse=True)
+def _a_terminal_of_100_columns(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Whatever runs the tests: errors are wrapped at what the terminal says."""
+    monkeypatch.setenv("COLUMNS", "100")
+
+
+MISTAKES = [
+    (["assess"], "DESIGN: nothing", "a design file", 'try: realize assess "4.2'),
+    (
+        ["emit", "1/(s+1)"],
+        "--out: nothing",
+        "directory for the files",
+        "try: realize emit roller_gap.toml --out firmware",
+    ),
+    (["words", "1/s"], 'realize: the unknown command "words"', "assess, compare", "try: realize --help"),
+    (["asess", "1/s"], 'realize: the unknown command "asess"', "assess, compare", "try: did you mean assess?"),
+    (["--frob"], 'realize: the unknown option "--frob"', "--version", "try: realize --help"),
+    (["assess", "1/s", "--metod", "x"], 'the unknown option "--metod"', "--method", "try: did you mean --method?"),
+    (["rates", "1/(s+1)", "--rate", "1 kHz"], 'the unknown option "--rate"', "--from, --to", "realize rates --help"),
+    (["rates", "1/(s+1)", "--period", "1 s"], 'the unknown option "--period"', "--from, --to", "--help"),
+    (["rates", "1/(s+1)", "--points", "x"], '--points: "x"', "a whole number", "try: --points 60"),
+    (["rates", "1/(s+1)", "--points", "6.5"], '--points: "6.5"', "a whole number", "try: --points 60"),
+    (["assess", "1/s", "--rate"], "--rate: nothing", 'sample rate, such as "2 kHz"', "try: write --rate QUANTITY"),
+    (["assess", "--json=5", "1/s"], "--json: a value", "stands alone", "try: write --json"),
+    (["assess", "--help=5", "1/s"], "--help: a value", "stands alone", "try: write --help"),
+    (["assess", "1/s", "+", "2"], "extra arguments (+ 2)", "realize assess [OPTIONS] DESIGN", "blanks in quotes"),
+    (["emit", "1/(s+1)", "--out", ""], "--out: an empty name", "a directory", "try: --out firmware"),
+    (["emit", "1/(s+1)", "--out", " "], "--out: an empty name", "a directory", "try: --out firmware"),
+]
+
+
+NAMELESS = (["new"], "NAME: nothing", "the name of the design", "try: realize new roller_gap")
+
+
+@pytest.mark.parametrize(
+    ("arguments", "found", "allowed", "advice"), [*MISTAKES, NAMELESS], ids=lambda value: str(value)[:30]
+)
+def test_a_mistake_in_the_command_line_is_told_in_three_lines_like_every_other(
+    run: Any, arguments: list[str], found: str, allowed: str, advice: str
+) -> None:
+    answer = run(*arguments)
+    assert (answer.status, answer.out) == (2, "")
+    first, second, third = answer.err.splitlines()
+    assert first.startswith("error: ")
+    assert found in first
+    assert second.startswith("  allowed: ")
+    assert allowed in second
+    assert third.startswith("  try: ")
+    assert advice in third
+
+
+@pytest.mark.parametrize(("arguments", "found", "allowed", "advice"), MISTAKES, ids=lambda value: str(value)[:30])
+def test_a_mistake_in_the_command_line_is_as_whole_in_json(
+    run: Any, arguments: list[str], found: str, allowed: str, advice: str
+) -> None:
+    # An option that lacks its value must stay the last.
+    with_json = (
+        [arguments[0], "--json", *arguments[1:]] if arguments[0] in commands.commands else [*arguments, "--json"]
+    )
+    error = run(*with_json).document["error"]
+    assert found in f"{error['where']}: {error['found']}"
+    assert allowed in error["allowed"]
+    assert advice in f"try: {error['try']}"
+
+
+def test_an_empty_directory_name_writes_nothing(run: Any, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.chdir(tmp_path)
+    assert run("emit", ROLLER_GAP, "--out", "").status == 2
+    assert list(tmp_path.iterdir()) == []
+
+
+def test_rates_has_no_option_for_one_rate_and_the_others_have(run: Any) -> None:
+    for command in ("assess", "compare", "emit"):
+        assert "--rate QUANTITY" in run(command, "--help").out
+    assert "--rate" not in run("rates", "--help").out
+    assert "--period" not in run("rates", "--help").out
+
+
+def test_the_list_of_commands_is_not_cut(run: Any) -> None:
+    listed = run("--help").out.partition("\nCommands:\n")[2].splitlines()
+    assert [line.split()[0] for line in listed] == sorted(commands.commands)
+    assert all(line.endswith(".") and not line.endswith("...") for line in listed)
+
+
+def test_no_command_at_all_is_answered_with_the_help(run: Any) -> None:
+    answer = run()
+    assert "Start with a file of your own:" in answer.err + answer.out
+
+
+@pytest.mark.parametrize("columns", [100, 60, 20, 300])
+def test_errors_are_wrapped_with_hanging_indents(run: Any, columns: int, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setenv("COLUMNS", str(columns))
+    rows = run("compare", "1/(s+1)", "--rate", "1 kHz", "--method", "bilinaer").err.splitlines()
+    width = max(40, min(100, columns))
+    assert max(map(len, rows)) <= width
+    starts = [i for i, row in enumerate(rows) if row.startswith(("error: ", "  allowed: ", "  try: "))]
+    assert starts[0] == 0
+    assert len(starts) == 3
+    indents = {row[: len(row) - len(row.lstrip())] for row in rows[starts[1] + 1 : starts[2]]}
+    assert indents == {" " * len("  allowed: ")}
+    # No word is lost or moved over the line of its neighbour.
+    assert " ".join(" ".join(rows).split()).endswith('plant-input-mapped try: did you mean "bilinear"?')
+    assert all(len(row) + 1 + len(after.split()[0]) > width for row, after in pairwise(rows[starts[1] : starts[2]]))
+
+
+def test_an_excerpt_and_its_caret_stay_as_they_are(run: Any, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setenv("COLUMNS", "40")
+    expression = "5/(0.001*s + 1)  /  (0.002*s + 1)  + 2s"
+    rows = run("assess", expression).err.splitlines()
+    place = rows.index(f"  {expression}")
+    assert rows[place + 1] == " " * (2 + expression.index("2s") + 1) + "^"
+
+
+def test_lines_to_paste_are_not_wrapped(run: Any, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    answers = []
+    for columns in ("40", "100"):
+        monkeypatch.setenv("COLUMNS", columns)
+        answers.append(run("emit", IMPROPER, "--out", str(tmp_path / "never")).err)
+    narrow, wide = (answer[answer.index("\n\n[rolloff]") :] for answer in answers)
+    assert narrow == wide
+    assert max(map(len, wide.splitlines())) > 20

@@ -32,9 +32,7 @@ def test_each_answer_is_what_the_checks_say_there_and_one_rate_below(found) -> N
 def test_the_outcomes_are_those_of_a_comparison_at_that_rate(found) -> None:  # type: ignore[no-untyped-def]
     rate = found.rates_hz[3]
     one = compare(design_from_text(LAG + f'period = "1/{rate} s"\n', "test.toml"))
-    assert {m.method: m.acceptable for m in one.methods} == {
-        m.method: m.outcomes[3].acceptable for m in found.methods
-    }
+    assert {m.method: m.acceptable for m in one.methods} == {m.method: m.outcomes[3].acceptable for m in found.methods}
 
 
 def test_the_default_range_is_4_to_200_times_the_band(found) -> None:  # type: ignore[no-untyped-def]

@@ -12,7 +12,8 @@ from realize.cli import main
 ROOT = Path(__file__).parent.parent
 README = (ROOT / "README.md").read_text(encoding="utf-8")
 EXAMPLES = [
-    block.split("\n", 1) for block in re.findall(r"^```console\n\$ realize (.*?)^```$", README, re.DOTALL | re.MULTILINE)
+    block.split("\n", 1)
+    for block in re.findall(r"^```console\n\$ realize (.*?)^```$", README, re.DOTALL | re.MULTILINE)
 ]
 
 

@@ -23,15 +23,18 @@ def value(p: tuple[int, ...] | list[Fraction], x: Fraction) -> Fraction:
     return poly.evaluate(tuple(Fraction(c) for c in p), x)
 
 
+def hides_growth(n: list[Fraction], d: list[Fraction]) -> bool:
+    """Whether a common factor has a root in the right half plane."""
+    common = poly.greatest_common_divisor(*poly.integer_form(poly.trimmed(n), poly.trimmed(d)))
+    return any(root.value.real > 0 for root in isolate(common))
+
+
 @given(polynomials, polynomials, st.integers(2, 99))
 def test_reduction_keeps_the_ratio_and_leaves_integers_in_lowest_terms(
     n: list[Fraction], d: list[Fraction], x: int
 ) -> None:
-    try:
-        transfer = TransferFunction.from_polynomials(n, d)
-    except Refused as refusal:
-        assert "growing mode" in refusal.found
-        assume(False)
+    assume(not hides_growth(n, d))
+    transfer = TransferFunction.from_polynomials(n, d)
     point = Fraction(x)
     assume(value(d, point) != 0)
     assert value(transfer.numerator, point) / value(transfer.denominator, point) == value(n, point) / value(d, point)
@@ -41,23 +44,27 @@ def test_reduction_keeps_the_ratio_and_leaves_integers_in_lowest_terms(
 
 
 @given(polynomials, polynomials, calm)
-def test_a_common_factor_is_divided_out_and_reported(n: list[Fraction], d: list[Fraction], common: poly.Integers) -> None:
+def test_a_common_factor_is_divided_out_and_reported(
+    n: list[Fraction], d: list[Fraction], common: poly.Integers
+) -> None:
     assume(poly.greatest_common_divisor(*poly.integer_form(poly.trimmed(n), poly.trimmed(d))) == (1,))
     plain = TransferFunction.from_polynomials(n, d)
     factor = tuple(Fraction(c) for c in common)
-    scaled = TransferFunction.from_polynomials(
-        poly.multiply(tuple(n), factor), poly.multiply(tuple(d), factor)
-    )
+    scaled = TransferFunction.from_polynomials(poly.multiply(tuple(n), factor), poly.multiply(tuple(d), factor))
     assert (scaled.numerator, scaled.denominator) == (plain.numerator, plain.denominator)
     assert (plain.cancelled, scaled.cancelled) == ((1,), common)
 
 
 @pytest.mark.parametrize(
-    "common", [(1, -1), (1, -2, 5), (1, -1, 0), (1, Fraction(-1, 10**30))], ids=["s=1", "s=1+2j", "s=0 and 1", "s=1e-30"]
+    "common",
+    [(1, -1), (1, -2, 5), (1, -1, 0), (1, Fraction(-1, 10**30))],
+    ids=["s=1", "s=1+2j", "s=0 and 1", "s=1e-30"],
 )
 def test_cancelling_a_growing_mode_is_refused_with_its_place(common: tuple[Fraction | int, ...]) -> None:
     factor = tuple(Fraction(c) for c in common)
-    with pytest.raises(Refused, match="common factor of numerator and denominator hides a growing mode at s =") as refusal:
+    with pytest.raises(
+        Refused, match="common factor of numerator and denominator hides a growing mode at s ="
+    ) as refusal:
         TransferFunction.from_polynomials(factor, poly.multiply(factor, (Fraction(1), Fraction(3))))
     assert refusal.value.where == "transfer"
 
@@ -103,7 +110,8 @@ def test_low_frequency_gain_is_the_limit_over_the_roots_away_from_the_origin(
 def test_an_improper_function_has_negative_relative_degree_and_no_feed_through() -> None:
     pid = TransferFunction.from_polynomials((Fraction(9, 100), Fraction(42, 10), 18), (1, 0))
     assert (pid.numerator, pid.denominator) == ((9, 420, 1800), (100, 0))
-    assert (pid.relative_degree, pid.order, pid.feed_through) == (-1, 1, 0)
+    assert (pid.relative_degree, pid.order) == (-1, 1)
+    assert pid.feed_through == 0
     assert pid.low_frequency_gain == 18
     assert pid.zeros_minus_poles_at_origin == -1
 
@@ -119,11 +127,13 @@ def test_low_frequency_gain_of_a_pulse_transfer_function_counts_steps_of_z_as_pe
     integrating = pulse((0, Fraction(3, 2), Fraction(3, 2)), (1, -2, 1))
     assert integrating.zeros_minus_poles_at_one == -2
     assert integrating.low_frequency_gain == 48
-    assert (integrating.gain, integrating.feed_through) == (Fraction(3, 2), 0)
+    assert integrating.gain == Fraction(3, 2)
+    assert integrating.feed_through == 0
     # (z - 1)/(z - 1/2) behaves like 2 (z - 1) = 2 T (z - 1)/T.
     washout = pulse((1, -1), (1, Fraction(-1, 2)))
     assert washout.zeros_minus_poles_at_one == 1
     assert washout.low_frequency_gain == Fraction(1, 2)
     assert washout.feed_through == 1
     plain = pulse((0, 1), (1, Fraction(-1, 2)))
-    assert (plain.zeros_minus_poles_at_one, plain.low_frequency_gain) == (0, 2)
+    assert plain.zeros_minus_poles_at_one == 0
+    assert plain.low_frequency_gain == 2

@@ -12,6 +12,8 @@ from dataclasses import dataclass
 from fractions import Fraction
 from typing import NamedTuple
 
+import numpy as np
+
 from realize.algebra import polynomial as poly
 from realize.algebra.enclosure import Enclosure, integers
 from realize.algebra.roots import Root, isolate, origin
@@ -21,6 +23,10 @@ from realize.transfer import PulseTransferFunction
 
 #: A leading coefficient of the rest this far below the others is zero: polynomials are carried to 1024 bits.
 _VANISHING = Fraction(1, 1 << 900)
+
+#: A coefficient this far below the sum of the sizes of its terms is their cancellation: numerators whose zeros are not
+#: mapped are carried to some thousand bits, and are known to no more.
+_CANCELLED = 2.0**-800
 
 #: Roots in ``z - 1`` that rounding must not move: z = 1 and z = -1.
 _ON_POINTS = {0: (1, -1), -2: (1, 1)}
@@ -333,9 +339,20 @@ def _parted(group: _Group) -> list[_Group]:
 def _rounded_section(group: _Group, gain: Fraction, target: FloatFormat) -> Section:
     """Round each coefficient of ``gain * prod(1 - zero/z)/prod(1 - pole/z)``, delayed, once."""
     order = group.order
-    b = correctly_rounded(lambda bits: _monic(group.zeros, bits).scaled(gain), target)
-    a = correctly_rounded(lambda bits: _monic(group.poles, bits), target)[1:]
+    b = _rounded_product(group.zeros, gain, target)
+    a = _rounded_product(group.poles, Fraction(1), target)[1:]
     return Section(_padded((0.0,) * group.delays + b, order + 1), _padded(a, order))
+
+
+def _rounded_product(factors: tuple[_Factor, ...], gain: Fraction, target: FloatFormat) -> tuple[float, ...]:
+    """Coefficients of ``gain * prod(1 - root/z)``; what cancels down to the carried precision is 0."""
+    rounded = correctly_rounded(lambda bits: _monic(factors, bits).scaled(gain), target)
+    sizes = [abs(float(gain))]
+    for factor in factors:
+        z = 1 + factor.root.value
+        own = [1.0, 2 * abs(z.real), abs(z) ** 2] if factor.root.is_pair else [1.0, abs(z.real)]
+        sizes = [float(c) for c in np.convolve(sizes, own)]
+    return tuple(c if abs(c) >= size * _CANCELLED else 0.0 for c, size in zip(rounded, sizes, strict=True))
 
 
 def _padded(values: tuple[float, ...], length: int) -> tuple[float, ...]:

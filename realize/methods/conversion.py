@@ -242,7 +242,7 @@ def _value_of(enclosure: Callable[[int], Disc], root: Root, period_s: Fraction) 
         size = max(abs(re), abs(im))
         aliased = bits > limit and size + rad < 1 << (bits - limit)
         if size >= rad << 60 and not aliased:
-            value = complex(re / (1 << bits), im / (1 << bits))
+            value = _as_complex(re, im, bits, root)
             # A pair stays a pair even where its imaginary part is too small for a double.
             return complex(value.real, max(value.imag, 5e-324)) if root.is_pair else complex(value.real)
         if aliased or bits > MOST_BITS:
@@ -253,6 +253,18 @@ def _value_of(enclosure: Callable[[int], Disc], root: Root, period_s: Fraction) 
                 "choose another sample rate, or a method that does not alias",
             )
         bits *= 2
+
+
+def _as_complex(re: int, im: int, bits: int, root: Root) -> complex:
+    try:
+        return complex(re / (1 << bits), im / (1 << bits))
+    except OverflowError:
+        raise Refused(
+            "method",
+            f"the image of the root at s = {root.value:.5g} rad/s is beyond every floating-point number",
+            "images below 1e308",
+            "choose another sample rate or method",
+        ) from None
 
 
 def _times(disc: Disc, factor: Fraction) -> Disc:

@@ -26,6 +26,9 @@ _BLEND = Fraction(7, 8)
 #: A leading coefficient this far below its terms is zero: numbers from pi are right to 1329 bits only.
 _VANISHING_BITS = 600
 
+#: Bits to which roots are compared with a rational place: far more than a search needs to part two of them.
+_NEAREST_BITS = 4096
+
 
 def forward_difference(transfer: TransferFunction, period_s: Fraction, exact_at_rad_s: Fraction | None) -> Conversion:
     """``s = (z - 1)/T`` (Euler): explicit; stable poles may leave the unit circle."""
@@ -84,7 +87,7 @@ def _theta_method(transfer: TransferFunction, period_s: Fraction, theta: Fractio
     if bottom[0] == 0:
         _refuse_pole_at_infinity(1 / (theta * period_s))
     delta = partial(_theta_image, theta)
-    finite = tuple(zero for zero in transfer.zeros if not _sent_to_infinity(zero.value, theta, period_s, top[0]))
+    finite = transfer.zeros if top[0] or not theta else _without_nearest(transfer.zeros, 1 / (theta * period_s))
     extra = _extra_zeros(-1 / theta, transfer.relative_degree) if theta else ()
     return Conversion(
         _ratio(top, bottom[0]),
@@ -108,9 +111,19 @@ def _substituted(p: poly.Integers, factor: int, over: tuple[int, int], order: in
     return (0,) * (order + 1 - len(total)) + total
 
 
-def _sent_to_infinity(zero: complex, theta: Fraction, period_s: Fraction, lead: int) -> bool:
-    """Whether a zero lies exactly at ``s = 1/(theta T)``, which the substitution sends to infinity."""
-    return lead == 0 and theta != 0 and zero == complex(1 / (theta * period_s))
+def _without_nearest(zeros: tuple[Root, ...], place: Fraction) -> tuple[Root, ...]:
+    """Leave out the zero that lies at a rational place, which the substitution sends to infinity.
+
+    Only the lead of the numerator decides whether one does; here it is known, and the others lie at least as far
+    apart as the search for the roots has separated them.
+    """
+
+    def distance(zero: Root) -> int:
+        re, im, _ = zero.enclosure(_NEAREST_BITS)
+        return abs(re - place.numerator * (1 << _NEAREST_BITS) // place.denominator) + abs(im)
+
+    gone = min(zeros, key=distance)
+    return tuple(zero for zero in zeros if zero is not gone)
 
 
 def _extra_zeros(delta: Fraction, count: int) -> tuple[Root, ...]:
@@ -173,7 +186,7 @@ def _prewarped_parts(
     inverse = reciprocal(*_shifted(mid, rad, size), bits)
     scaled = [v.times(*inverse).scaled(Fraction(2) ** -size) for v in (top, bottom)]
     shared = [_shared_factors(p, order) for p in (numerator, denominator)]
-    return scaled[0].convolve_integers(shared[0]), scaled[1].convolve_integers(shared[1])
+    return scaled[0].convolve_integers(shared[0]), scaled[1].with_first(Fraction(1)).convolve_integers(shared[1])
 
 
 def _shifted(mid: int, rad: int, places: int) -> tuple[int, int]:

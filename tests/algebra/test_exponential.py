@@ -69,7 +69,9 @@ def test_sampled_responses_hold_the_sum_of_the_partial_fractions(
 ) -> None:
     design, period_s = drawn
     count = design.order + 2
-    enclosure = sampled_response(monic_numerator(design, period_s), denominator(design), integrations, period_s, count, bits)
+    enclosure = sampled_response(
+        monic_numerator(design, period_s), denominator(design), integrations, period_s, count, bits
+    )
     with mp.workdps(DIGITS):
         assert not misses(enclosure, reference.responses(design, integrations, period_s, count))
 

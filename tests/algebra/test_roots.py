@@ -110,19 +110,18 @@ def newton(p: list[int], start: complex, multiplicity: int) -> Any:
         pytest.param(tuple(real(-k) for k in range(1, 33)), id="degree 32"),
         pytest.param(tuple(pair(-k, 33 - k) for k in range(1, 17)), id="degree 32 in pairs"),
         pytest.param((real(-1), real(Fraction(-1) - Fraction(1, 10**12)), real(-3)), id="two 1e-12 apart"),
-        pytest.param(
-            tuple(real(Fraction(-1) - Fraction(k, 10**12)) for k in range(5)), id="five 1e-12 apart each"
-        ),
+        pytest.param(tuple(real(Fraction(-1) - Fraction(k, 10**12)) for k in range(5)), id="five 1e-12 apart each"),
         pytest.param(
             (pair(-1, 2), pair(Fraction(-1) - Fraction(1, 10**12), 2), pair(-1, 2 + Fraction(1, 10**12))),
             id="pairs 1e-12 apart",
         ),
         pytest.param((pair(-1, Fraction(1, 10**30)), real(-2)), id="a pair that is nearly two equal real roots"),
-        pytest.param(tuple(real(-Fraction(10) ** k) for k in range(-5, 9)), id="from 1e-5 to 1e8"),
+        pytest.param(tuple(real(-(Fraction(10) ** k)) for k in range(-5, 9)), id="from 1e-5 to 1e8"),
         pytest.param((real("-1e-60"), real("-3e-60"), real(-1), real("-1e50")), id="farther apart than a double"),
         pytest.param((pair(0, 3), pair(0, 5, 2), real(0, 3)), id="all on the imaginary axis"),
         pytest.param(
-            (pair(0, 2), pair(-1, 2), pair(1, 2), real(-2), real(2), real(-7, 3)), id="an undamped pair hidden among others"
+            (pair(0, 2), pair(-1, 2), pair(1, 2), real(-2), real(2), real(-7, 3)),
+            id="an undamped pair hidden among others",
         ),
         pytest.param((pair(0, 2), pair("1e-30", 2), pair("-1e-30", 2)), id="damping of 1e-30 on both sides of none"),
         pytest.param((pair("-1e-30", 1), real(-1)), id="damping of 1e-30"),

@@ -229,7 +229,16 @@ def test_what_no_permitted_precision_settles_is_an_error_and_not_a_guess(
 def test_a_vector_beyond_the_format_is_refused_however_it_is_enclosed() -> None:
     for offset, growth_bits in ((0, 0), (1, 100), (-3, 1500)):
         with pytest.raises(Refused, match="beyond the largest float32"):
-            correctly_rounded(Recorder([Fraction(1), -Fraction(2) ** 129], offset, growth_bits), FLOAT32)
+            correctly_rounded(Recorder([Fraction(1), -(Fraction(2) ** 129)], offset, growth_bits), FLOAT32)
+
+
+@pytest.mark.parametrize("sign", [1, -1])
+def test_an_entry_that_cannot_fit_is_refused_at_once(sign: int) -> None:
+    # Both ends of the first enclosure are beyond the format: more bits would change nothing.
+    recorder = Recorder([Fraction(1, 3), sign * Fraction(10) ** 40], 1)
+    with pytest.raises(Refused, match="beyond the largest float32"):
+        correctly_rounded(recorder, FLOAT32)
+    assert len(recorder.asked) == 1
 
 
 def test_an_exact_vector_is_rounded_from_its_rationals() -> None:

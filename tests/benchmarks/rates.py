@@ -9,6 +9,7 @@ import sys
 import time
 from collections.abc import Callable
 from fractions import Fraction
+from functools import partial
 from statistics import median
 
 from scipy import signal
@@ -43,13 +44,14 @@ SCIPY = {
 RATES_HZ = [Fraction(200 + 37 * i) for i in range(60)]
 
 
+def converted(transfer: TransferFunction, rate_hz: Fraction, method: str) -> None:
+    """One exact conversion, every coefficient correctly rounded."""
+    discretize(transfer, 1 / rate_hz, method).rounded(FLOAT64)
+
+
 def exact_s(transfer: TransferFunction, methods: tuple[str, ...]) -> float:
     """Median time of one conversion with its coefficients correctly rounded, in seconds."""
-    return median(
-        seconds(lambda rate=rate, method=method: discretize(transfer, 1 / rate, method).rounded(FLOAT64))
-        for rate in RATES_HZ
-        for method in methods
-    )
+    return median(seconds(partial(converted, transfer, rate, method)) for rate in RATES_HZ for method in methods)
 
 
 def scipy_s(transfer: TransferFunction, methods: tuple[str, ...]) -> float:
@@ -57,7 +59,7 @@ def scipy_s(transfer: TransferFunction, methods: tuple[str, ...]) -> float:
     system = ([float(c) for c in transfer.numerator], [float(c) for c in transfer.denominator])
     # The impulse method of scipy does not take a direct feed-through, which this controller does not have.
     return median(
-        seconds(lambda rate=rate, method=method: signal.cont2discrete(system, 1 / float(rate), SCIPY[method]))
+        seconds(partial(signal.cont2discrete, system, 1 / float(rate), SCIPY[method]))
         for rate in RATES_HZ
         for method in methods
     )

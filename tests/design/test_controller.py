@@ -80,7 +80,9 @@ def test_coefficients_nobody_could_read_are_told_to_17_digits() -> None:
 
 
 def test_values_keep_their_order_and_may_refer_forward() -> None:
-    design = read('transfer = "a/s"\n[design.values]\na = "2*b"\nw = "2*pi*f"\nb = "f/5"\nf = 50\nr = "sqrt(2)"')
+    design = read(
+        'transfer = "(a + w + r)/s"\n[design.values]\na = "2*b"\nw = "2*pi*f"\nb = "f/5"\nf = 50\nr = "sqrt(2)"'
+    )
     assert design.values == (
         ("a", F(20)),
         ("w", 100 * pi()),
@@ -207,13 +209,14 @@ def test_a_cycle_is_shown_in_the_direction_it_refers() -> None:
 @pytest.mark.parametrize(
     ("text", "values", "where", "found", "advice"),
     [
-        ('transfer = "kp/s"', {"kp": "1", "kq": "2"}, "--value kq", "that nothing uses", "did you mean kp?"),
+        ('transfer = "kp/s"', {"kp": "1", "kq": "2"}, "--value kq", "that nothing uses", "remove it"),
+        ('transfer = "gain/s"', {"gain": "1", "gian": "2"}, "--value gian", "that nothing uses", "did you mean gain?"),
         ('transfer = "1/s"', {"zeta": "2"}, "--value zeta", "that nothing uses", "remove it"),
         ('transfer = "kp/s"', {"kp": "2s"}, "--value kp, column 2", "right after", "write 2*s"),
         ('transfer = "kp/s"', {"kp": "inf"}, "--value kp, column 1", "no finite number", "write a number"),
         ('transfer = "s"', {"s": "1"}, "--value s", "a meaning of its own", "s_value"),
         ('transfer = "s"', {"exp": "1"}, "--value exp", "a meaning of its own", "exp_value"),
-        ('transfer = "kp/s"', {"kp": "1", "k2": "k3", "k3": "1"}, "--value k2", "that nothing uses", "kp?"),
+        ('transfer = "kp/s"', {"kp": "1", "k2": "k3", "k3": "1"}, "--value k2", "that nothing uses", "remove it"),
     ],
 )
 def test_a_mistake_on_the_command_line_names_the_option(
@@ -268,3 +271,46 @@ def test_zeros_and_poles_give_what_their_factors_give(
 )
 def test_corners_and_gains_far_beyond_any_machine_are_still_read(text: str) -> None:
     read(f'transfer = "{text}"')
+
+
+@pytest.mark.parametrize(
+    ("values", "name", "advice"),
+    [
+        ("kp = 1\nkd = 2", "kd", "remove it"),
+        ("kp = 1\nfilter = 2", "filter", "remove it"),
+        ('kp = "2*gain"\ngain = 1\ngian = 1', "gian", "did you mean gain?"),
+        ('kp = 1\na = "2*b"\nb = 3', "a", "remove it"),
+        ('kp = 1\nb = 3\na = "2*b"', "b", "remove it"),
+    ],
+)
+def test_a_value_of_the_file_that_nothing_uses_is_refused_by_its_name(values: str, name: str, advice: str) -> None:
+    """What only a value that is itself in no use refers to is in no use either."""
+    with pytest.raises(RealizeError) as caught:
+        read(f'transfer = "kp/s"\n[design.values]\n{values}')
+    assert caught.value.where == f"servo.toml, [design.values] {name}"
+    assert caught.value.found == "a value that nothing uses"
+    assert caught.value.advice == advice
+
+
+def test_a_value_of_the_file_stays_in_use_when_the_command_line_replaces_what_uses_it() -> None:
+    text = 'transfer = "kp/s"\n[design.values]\nkp = "2*k"\nk = 3'
+    assert read(text, kp="5").values == (("kp", F(5)), ("k", F(3)))
+
+
+def test_a_value_of_the_file_may_be_used_by_one_of_the_command_line_alone() -> None:
+    text = 'transfer = "kp/s"\n[design.values]\nkp = 1\nk = 3'
+    assert read(text, kp="2*k").values == (("kp", F(6)), ("k", F(3)))
+
+
+def test_a_mistyped_reference_is_told_before_the_value_it_leaves_in_no_use() -> None:
+    with pytest.raises(RealizeError) as caught:
+        read('transfer = "gian/s"\n[design.values]\ngain = 1')
+    assert caught.value.found == 'the unknown name "gian"'
+    assert caught.value.advice.startswith("did you mean gain?")
+
+
+def test_an_unknown_name_of_two_letters_is_like_no_other() -> None:
+    with pytest.raises(RealizeError) as caught:
+        read('transfer = "kp + ki/s"\n[design.values]\nkp = 1')
+    assert caught.value.found == 'the unknown name "ki"'
+    assert "did you mean" not in caught.value.advice

@@ -22,6 +22,7 @@ from realize.transfer import TransferFunction
 F = Fraction
 DESIGN = '[design]\ntransfer = "kp + 2/s"\n[design.values]\nkp = 1\n'
 UNITY = TransferFunction((1,), (1,))
+TWICE = 'dead time stands twice: "1 ms" here, and 50 ms in transfer'
 RESPONSE = "frequency_hz,magnitude_db,phase_deg\n1,0,-10\n10,-3,-40\n100,-20,-120\n"
 
 ROLLER = """[plant]
@@ -115,7 +116,8 @@ def test_the_sensor_and_the_dead_time_may_differ_from_case_to_case() -> None:
         ('transfer = "1/s"\ndead_time = "0 s"', F(0)),
         ('transfer = "1/s"\ndead_time = "0.4 ms"', F(4, 10000)),
         ('transfer = "exp(-0.002*s)/s"', F(2, 1000)),
-        ('transfer = "exp(-0.002*s)*exp(-s/3)/s"\ndead_time = "1 ms"', F(3, 1000) + F(1, 3)),
+        ('transfer = "exp(-0.002*s)*exp(-s/3)/s"', F(2, 1000) + F(1, 3)),
+        ('transfer = "exp(-0.002*s)/s"\nsensor = "exp(-s/3)"', F(2, 1000) + F(1, 3)),
         ('transfer = "1/s"\nsensor = "exp(-0.5*s)/(s + 1)"\ndead_time = "1 s"', F(3, 2)),
         ('transfer = "exp(-s)^2/s"\nsensor = "exp(-s)"', F(3)),
         ('transfer = "exp(-2*pi*s)/s"', 2 * pi()),
@@ -328,7 +330,11 @@ J = '[plant]\ntransfer = "1/(J*s)"\n[plant.values]\nJ = 2\n'
         (J + 2 * CASE.format("a", "J = 1"), "[[plant.case]] number 2, name", "a second case", "rename"),
         (J + '[[plant.case]]\nname = "a"', "[[plant.case]] number 1, values", "no values", "add values ="),
         (J + CASE.format("a", "K = 1"), "[[plant.case]] number 1, values, K", "nothing uses", "remove it"),
-        (J + CASE.format("a", "JJ = 1"), "[[plant.case]] number 1, values, JJ", "nothing uses", "did you mean J?"),
+        (J + CASE.format("a", "JJ = 1"), "[[plant.case]] number 1, values, JJ", "nothing uses", "remove it"),
+        (J + "K = 1", "[plant.values] K", "a value that nothing uses", "remove it"),
+        (J + 'K = "2*M"\nM = 1', "[plant.values] K", "a value that nothing uses", "remove it"),
+        ('[plant]\ntransfer = "exp(-0.05*s)/s"\ndead_time = "1 ms"', "[plant] dead_time", TWICE, "one of the two"),
+        ('[plant]\ntransfer = "exp(-0.05*s)/s"\ndead_time = "0 s"', "[plant] dead_time", "stands twice", "their sum"),
         (J + CASE.format("a", '"K-1" = 1'), "[[plant.case]] number 1, values, K-1", '"K-1"', "rename"),
         (J + CASE.format("a", 'J = "2s"'), "[[plant.case]] number 1, values, J, column 2", "right after", "2*s"),
         (J + CASE.format("a", 'J = "M"'), "[[plant.case]] number 1, values, J, column 1", '"M"', "[plant.values]"),
@@ -385,3 +391,13 @@ def test_what_no_plant_can_be_is_refused(text: str, where: str, found: str, advi
     assert error.where == f"servo.toml, {where}"
     assert found in error.found
     assert advice in error.advice
+
+
+def test_a_value_of_the_plant_that_only_a_case_uses_is_in_use() -> None:
+    text = '[plant]\ntransfer = "1/(J*s)"\n[plant.values]\nJ = 1\nm = 4\n[[plant.case]]\nname = "b"\n'
+    assert [case.values[0] for case in plant_of(text + 'values = { J = "2*m" }').cases] == [("J", F(1)), ("J", F(8))]
+
+
+def test_a_value_that_both_tables_have_must_be_used_in_both() -> None:
+    error = refusal('[plant]\ntransfer = "1/s"\n[plant.values]\nkp = 2')
+    assert (error.where, error.found) == ("servo.toml, [plant.values] kp", "a value that nothing uses")

@@ -87,8 +87,8 @@ def test_name_and_method_of_the_command_line_win() -> None:
 
 @pytest.mark.parametrize("name", ["auto", *METHODS, *LOOP_METHODS])
 def test_every_method_can_be_named(name: str) -> None:
-    design = read(f'[method]\nname = "{name}"\nexact_at = "40 rad/s"\ncompensate_delay = false')
-    assert (design.method, design.exact_at_rad_s, design.compensate_delay) == (name, F(40), False)
+    design = read(f'[method]\nname = "{name}"\ncompensate_delay = false')
+    assert (design.method, design.exact_at_rad_s, design.compensate_delay) == (name, None, False)
     assert read("", method=name) == read(f'[method]\nname = "{name}"')
 
 
@@ -309,7 +309,7 @@ LONG = "x" * 201
         ),
         ('[target]\ntracking_time = "1 s"', "[target] tracking_time", "with anti_windup", "back-calculation"),
         ('[tolerance]\npole_shft = "1 %"', "[tolerance]", 'the unknown key "pole_shft"', "pole_shift?"),
-        ('[tolerance]\nloop_sensitivity_most = "1 %"', "[tolerance] loop_sensitivity_most, column 3", '"%"', ""),
+        ('[tolerance]\nloop_sensitivity_most = "1 %"', "[tolerance] loop_sensitivity_most", '"1 %"', "a plain number"),
         ("[tolerance]\nloop_sensitivity_most = -1", "[tolerance] loop_sensitivity_most", "number -1", "the sign"),
         ('[tolerance]\nloop_overshoot_rise = "1 deg"', "[tolerance] loop_overshoot_rise", "an angle", "percentage"),
         (ACCEPT.format("loop sensitivity", ""), "[[accept]] number 1, limit", "nothing", "limit = 2.5"),
@@ -430,3 +430,38 @@ def test_what_is_planned_is_answered_and_never_ignored(text: str, where: str) ->
     assert error.where == f"servo.toml, {where}"
     assert "not supported yet" in error.found
     assert error.advice == "remove it for now"
+
+
+@pytest.mark.parametrize("text", ["", 'name = "auto"\n', 'name = "bilinear-prewarped"\n'])
+def test_exact_at_is_for_the_method_that_is_exact_at_a_frequency(text: str) -> None:
+    assert read(f'[method]\n{text}exact_at = "40 rad/s"').exact_at_rad_s == F(40)
+
+
+@pytest.mark.parametrize("name", [name for name in (*METHODS, *LOOP_METHODS) if name != "bilinear-prewarped"])
+def test_exact_at_that_the_named_method_would_ignore_is_refused(name: str) -> None:
+    in_file = refusal(f'[method]\nname = "{name}"\nexact_at = "40 rad/s"')
+    on_command_line = refusal('[method]\nexact_at = "40 rad/s"', method=name)
+    assert str(in_file) == str(on_command_line)
+    assert in_file.where == "servo.toml, [method] exact_at"
+    assert in_file.found == f"a frequency, with the method {name}"
+    assert in_file.allowed == "a frequency with the method bilinear-prewarped or auto only"
+    assert in_file.advice == 'remove it, or write name = "bilinear-prewarped"'
+
+
+SENSITIVITY = '[[accept]]\ncheck = "loop sensitivity"\nbecause = "b"\nby = "x"\nlimit = '
+
+
+@pytest.mark.parametrize("written", ["2 dB", "2dB", " 2e0 dB", "20 %", "-2 dB"])
+def test_a_ratio_with_a_unit_is_asked_for_as_a_plain_number(written: str) -> None:
+    error = refusal(f'{SENSITIVITY}"{written}"')
+    assert error.where == "servo.toml, [[accept]] number 1, limit"
+    assert error.found == f'"{written}"'
+    assert error.allowed.startswith("a plain number")
+    assert error.advice == "write a plain number, such as limit = 2.5"
+
+
+@pytest.mark.parametrize(
+    ("written", "expected"), [("2e-1", F(1, 5)), ("25E-1", F(5, 2)), ("5/2", F(5, 2)), ("sqrt(4)", F(2))]
+)
+def test_a_ratio_may_be_an_expression(written: str, expected: Fraction) -> None:
+    assert read(f'{SENSITIVITY}"{written}"').accept[0].limit == expected

@@ -85,15 +85,30 @@ _HEAD = "frequency_hz,magnitude_db,phase_deg\n"
     ("text", "message"),
     [
         pytest.param("", "the file is empty", id="empty"),
-        pytest.param("frequency_hz,magnitude_db\n1,2\n", "the column phase_deg is missing", id="missing column"),
+        pytest.param(
+            "frequency_hz,magnitude_db\n1,2\n",
+            ', line 1: the column phase_deg is missing in "frequency_hz,magnitude_db"',
+            id="missing column",
+        ),
+        pytest.param(
+            _HEAD.replace(",", ";") + "1;0;0\n", "name the columns in the first line, with commas", id="semicolons"
+        ),
         pytest.param(_HEAD.replace("\n", ",phase_deg\n"), "the column phase_deg is there more than once", id="twice"),
         pytest.param(_HEAD + "1,0,0\n2,-6,-10\n", "it has 2 points", id="too few"),
-        pytest.param(_HEAD + "1,0,0\n2,-6\n3,0,0\n", "point 2: it has 2 columns", id="short line"),
-        pytest.param(_HEAD + "1,0,0\n2,loud,0\n3,0,0\n", "point 2: magnitude_db is 'loud'", id="no number"),
-        pytest.param(_HEAD + "1,0,0\n2,nan,0\n3,0,0\n", "point 2: magnitude_db is 'nan'", id="not finite"),
-        pytest.param(_HEAD + "0,0,0\n2,0,0\n3,0,0\n", "the first frequency is 0 Hz", id="at zero"),
-        pytest.param(_HEAD + "1,0,0\n3,0,0\n2,0,0\n", "point 3 is at 2 Hz, after 3 Hz", id="not ascending"),
-        pytest.param(_HEAD + "1,0,0\n2,0,170\n3,0,0\n", "the phase changes by 170 deg between 1 and 2 Hz", id="coarse"),
+        pytest.param(_HEAD + "1,0,0\n2,-6\n3,0,0\n", ', line 3: only 2 columns in "2,-6"', id="short line"),
+        pytest.param(
+            _HEAD + "\n1,0,0\n\n2;-6;3\n", ', line 5: only 1 column in "2;-6;3"', id="line counted with blanks"
+        ),
+        pytest.param(_HEAD + "1;0;0\n", "try: separate the numbers with commas", id="commas wanted"),
+        pytest.param(_HEAD + "x" * 900 + "\n", f'only 1 column in "{"x" * 57}..."\n', id="long line, quoted in part"),
+        pytest.param(_HEAD + "1,5,0,2,0,1\n", ', line 2: 6 columns in "1,5,0,2,0,1"', id="decimal commas"),
+        pytest.param(_HEAD + "1,0,0\n2,loud,0\n3,0,0\n", ', line 3: magnitude_db is "loud"', id="no number"),
+        pytest.param(_HEAD + "1,0,0\n2,nan,0\n3,0,0\n", ', line 3: magnitude_db is "nan"', id="not finite"),
+        pytest.param(_HEAD + "0,0,0\n2,0,0\n3,0,0\n", ", line 2: the first frequency is 0 Hz", id="at zero"),
+        pytest.param(_HEAD + "1,0,0\n3,0,0\n2,0,0\n", ", line 4: 2 Hz after 3 Hz", id="not ascending"),
+        pytest.param(
+            _HEAD + "1,0,0\n2,0,170\n3,0,0\n", ", line 3: the phase changes by 170 deg between 1 and 2 Hz", id="coarse"
+        ),
     ],
 )
 def test_what_is_no_measurement_is_refused(text: str, message: str) -> None:
@@ -109,3 +124,9 @@ def test_what_is_no_measurement_is_refused(text: str, message: str) -> None:
 def test_line_ends_and_marks_of_other_systems_are_read(end: Callable[[str], str]) -> None:
     text = _csv(count=20)
     assert read_response(end(text)).at(np.array([1.0])) == read_response(text).at(np.array([1.0]))
+
+
+def test_columns_without_a_number_behind_the_last_name_are_no_columns() -> None:
+    text = _csv(count=20)
+    trailing = text.replace("\n", ",,\n") + ", "
+    assert read_response(trailing).at(np.array([1.0])) == read_response(text).at(np.array([1.0]))

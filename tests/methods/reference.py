@@ -70,7 +70,8 @@ def number(x: Fraction) -> Any:
 def exactly(x: Any) -> Fraction:
     """The rational a binary number of mpmath is."""
     sign, mantissa, exponent, _ = mp.mpf(x)._mpf_
-    return (-1) ** sign * int(mantissa) * Fraction(2) ** exponent
+    size: Fraction = int(mantissa) * Fraction(2) ** exponent
+    return -size if sign else size
 
 
 def image(root: ExactRoot, period_s: Fraction, method: str, angle: Fraction | None) -> Any:

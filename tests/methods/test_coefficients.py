@@ -77,7 +77,9 @@ def test_the_reference_covers_every_method() -> None:
             id="stiff at 1e-5 Hz",
         ),
         pytest.param(
-            Factored(Fraction(2), (real(-5), ExactRoot(Fraction(-1), Fraction(7), 2)), (real(3), real(-3, 3), real(0, 2))),
+            Factored(
+                Fraction(2), (real(-5), ExactRoot(Fraction(-1), Fraction(7), 2)), (real(3), real(-3, 3), real(0, 2))
+            ),
             Fraction(1, 10),
             id="growing, repeated and integrating",
         ),
@@ -90,9 +92,7 @@ def test_the_reference_covers_every_method() -> None:
             id="poles 1e-12 apart",
         ),
         pytest.param(Factored(Fraction(-7, 3), (), ()), Fraction(1, 10), id="static gain"),
-        pytest.param(
-            Factored(Fraction(5), (real(-2),), (real(-1),)), Fraction(1, 10), id="direct feed-through"
-        ),
+        pytest.param(Factored(Fraction(5), (real(-2),), (real(-1),)), Fraction(1, 10), id="direct feed-through"),
     ],
 )
 def test_hard_designs_are_correctly_rounded_too(design: Factored, period_s: Fraction, method: str) -> None:
@@ -133,8 +133,8 @@ def test_poles_at_the_origin_alone_are_exact_by_every_method_that_needs_no_tange
         "pole-zero-mapped": (t**2 / 4, t**2 / 2, t**2 / 4),
     }[method]
     pulse = discretized((1,), (1, 0, 0), t, method).pulse
-    assert pulse.numerator == expected
-    assert pulse.denominator == (1, -2, 1)
+    assert list(pulse.numerator) == list(expected)
+    assert list(pulse.denominator) == [1, -2, 1]
 
 
 def test_float32_coefficients_do_not_pass_through_float64() -> None:

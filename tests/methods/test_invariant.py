@@ -79,7 +79,9 @@ DESIGNS: list[tuple[str, tuple[Any, ...], tuple[Any, ...], int, Response, Respon
         0,
         lambda t: mp.mpf(25) / 4 * mp.exp(-3 * t) * mp.sin(4 * t),
         lambda t: 1 - mp.exp(-3 * t) * (mp.cos(4 * t) + mp.mpf(3) / 4 * mp.sin(4 * t)),
-        lambda t: t - mp.mpf(6) / 25 + mp.exp(-3 * t) * (mp.mpf(6) / 25 * mp.cos(4 * t) - mp.mpf(7) / 100 * mp.sin(4 * t)),
+        lambda t: (
+            t - mp.mpf(6) / 25 + mp.exp(-3 * t) * (mp.mpf(6) / 25 * mp.cos(4 * t) - mp.mpf(7) / 100 * mp.sin(4 * t))
+        ),
     ),
     (
         "undamped s/(s^2 + 9)",
@@ -168,7 +170,9 @@ def test_the_closed_forms_are_integrals_of_one_another(design: tuple[Any, ...]) 
         assert abs(integral(step)(t) - ramp(t)) < mp.mpf(10) ** -20
 
 
-@given(sampled_designs(8, ("slow", "ordinary", "damped", "light", "undamped", "origin", "growing"), ("ordinary", "damped")))
+@given(
+    sampled_designs(8, ("slow", "ordinary", "damped", "light", "undamped", "origin", "growing"), ("ordinary", "damped"))
+)
 @settings(max_examples=30)
 def test_the_step_response_of_any_design_is_kept_far_beyond_the_samples_it_was_made_from(
     drawn: tuple[Factored, Fraction],

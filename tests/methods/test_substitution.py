@@ -94,7 +94,7 @@ def test_zeros_at_infinity_go_where_the_method_puts_them(method: str) -> None:
 
 def test_the_forward_difference_delays_by_the_relative_degree() -> None:
     pulse = converted((1,), (1, 3, 2), Fraction(1, 5), "forward-difference")
-    assert pulse.numerator == (0, 0, Fraction(1, 25))
+    assert list(pulse.numerator) == [0, 0, Fraction(1, 25)]
     assert pulse.zeros == ()
     assert pulse.feed_through == 0
 
@@ -153,5 +153,5 @@ def test_images_under_the_difference_family_are_one_formula_at_four_weights() ->
     }
     for method, z in expected.items():
         pulse = converted((1,), (1, 5), Fraction(1, 10), method)
-        assert pulse.denominator == (1, -z)
+        assert list(pulse.denominator) == [1, -z]
         assert pulse.poles[0].value == float(z - 1)

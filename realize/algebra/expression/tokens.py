@@ -27,8 +27,9 @@ _WINDOW = 40
 #: three leaves 2/3, and two in four would be a word of its own.
 _LEAST_LIKENESS = 0.65
 
-#: Letters of the shortest word that is like another: of two, one is always another name, ki and kp.
-_SHORTEST_LIKE = 3
+#: Letters of the shortest word that is like another (names of two, such as ki and kp, are meant to differ by one), and
+#: of the shortest that is like a longer one because it is a part of it.
+_SHORTEST_LIKE, _SHORTEST_PART = 3, 4
 
 #: Most names listed in one message: two lines of them.
 _MOST_LISTED = 16
@@ -162,7 +163,8 @@ def nearest(word: str, known: Iterable[str]) -> str | None:
     # Only in the path of an error, and then it costs as much as the rest of the reading.
     from difflib import get_close_matches
 
-    return next(iter(get_close_matches(word, candidates, n=1, cutoff=_LEAST_LIKENESS)), None)
+    parts = [candidate for candidate in candidates if len(word) >= _SHORTEST_PART and word in candidate]
+    return next(iter(get_close_matches(word, candidates, n=1, cutoff=_LEAST_LIKENESS) or parts), None)
 
 
 def listed(words: Iterable[str]) -> str:
