@@ -92,9 +92,9 @@ def correctly_rounded(enclose: Callable[[int], Enclosure], target: FloatFormat) 
     bits = FIRST_BITS
     while True:
         try:
-            return tuple(_rounded(interval, target) for interval in enclose(bits).intervals())
-        except (Unresolved, Refused):
-            # An end beyond the format may be the enclosure's width alone.
+            intervals = list(enclose(bits).intervals())
+            return tuple(_rounded(interval, target) for interval in intervals)
+        except Unresolved:
             if bits >= MOST_BITS:
                 raise
         bits *= 2
@@ -103,7 +103,12 @@ def correctly_rounded(enclose: Callable[[int], Enclosure], target: FloatFormat) 
 def _rounded(interval: tuple[int, int, int], target: FloatFormat) -> float:
     """The value that both ends of ``[low, high] / unit`` round to, or the even one at a tie."""
     low, high, unit = interval
-    ends = target.round_ratio(low, unit), target.round_ratio(high, unit)
+    # What is beyond the format at its end nearest 0 is so for certain; an end farther out may be width alone.
+    target.round_ratio(max(low, 0) or min(high, 0), unit)
+    try:
+        ends = target.round_ratio(low, unit), target.round_ratio(high, unit)
+    except Refused:
+        raise Unresolved from None
     if ends[0] == ends[1]:
         return ends[0]
     if (high - low) << _TIE_BITS > max(abs(low), abs(high)):

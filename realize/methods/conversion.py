@@ -118,7 +118,7 @@ def pulse_transfer_function(conversion: Conversion, period_s: Fraction) -> Pulse
         numerator = _carried(conversion.numerator, conversion.structural).midpoints()
         numerator = _with_structure(numerator, conversion.structural)
         return PulseTransferFunction(numerator, denominator, period_s, conversion.poles, conversion.zeros)
-    numerator, shifted = _carried_with_shift(conversion)
+    numerator, shifted = _carried_with_shift(conversion, len(denominator) - 1)
     zeros = isolate(poly.primitive(shifted)) if any(shifted) else ()
     return PulseTransferFunction(numerator, denominator, period_s, conversion.poles, zeros)
 
@@ -151,13 +151,12 @@ def _with_structure(numerator: poly.Rationals, structural: Mapping[int, Fraction
     return tuple(structural.get(i, value) for i, value in enumerate(numerator))
 
 
-def _carried_with_shift(conversion: Conversion) -> tuple[poly.Rationals, poly.Rationals]:
-    """The numerator in z and in ``z - 1``, structural zeros exact in both."""
+def _carried_with_shift(conversion: Conversion, n: int) -> tuple[poly.Rationals, poly.Rationals]:
+    """The numerator of degree n in z and in ``z - 1``, structural zeros exact in both."""
 
     def shifted(bits: int) -> Enclosure:
         return _shifted_by_one(conversion.numerator(bits))
 
-    n = len(conversion.numerator(CARRIED_BITS)) - 1
     known = {n - i: Fraction(0) for i in range(conversion.zeros_at_one)}
     lead_zeros = _leading_zeros(conversion.structural)
     known |= {i: Fraction(0) for i in range(lead_zeros)}

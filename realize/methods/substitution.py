@@ -68,6 +68,8 @@ def bilinear_prewarped(transfer: TransferFunction, period_s: Fraction, exact_at_
             "a frequency below half the sample rate",
             "lower exact_at, or raise the sample rate",
         )
+    if transfer.order == 0:
+        return _theta_method(transfer, period_s, Fraction(1, 2))
     numerator, denominator = normalised_ratio(transfer, period_s)
     parts = partial(_prewarped_parts, numerator, denominator, angle)
     delta = partial(_prewarped_image, angle)

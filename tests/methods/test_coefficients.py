@@ -153,7 +153,9 @@ def test_a_static_gain_is_itself_and_has_no_roots(method: str) -> None:
     result = discretized((3,), (7,), Fraction(1, 100), method, exact_at)
     assert result.rounded(FLOAT64) == ((3 / 7,), (1.0,))
     assert (result.pulse.poles, result.pulse.zeros) == ((), ())
-    assert result.pulse.low_frequency_gain == Fraction(3, 7)
+    assert abs(result.pulse.low_frequency_gain - Fraction(3, 7)) <= (
+        Fraction(1, 2**1000) if method == "bilinear-prewarped" else 0
+    )
 
 
 @pytest.mark.parametrize("method", ["bilinear-prewarped", *EXPONENTIAL])
