@@ -101,7 +101,9 @@ def compare_document(comparison: Comparison) -> Document:
         "band_rests_on": comparison.band_rests_on,
         "rolloff": proposal_document(causal.proposal) if causal.proposal else None,
         "rolloff_assumed": causal.assumed,
-        "methods": [method_document(result) for result in comparison.methods],
+        "methods": [
+            ({"loop": []} if comparison.design.plant else {}) | method_document(result) for result in comparison.methods
+        ],
         "recommended": comparison.recommended,
         "because": comparison.because,
     }

@@ -1,6 +1,6 @@
 """Worked examples of the Jury test.
 
-Source: lecture notes of the National Programme on Technology Enhanced Learning, course 108103008, module 3
+Source: texts of the National Programme on Technology Enhanced Learning, course 108103008, module 3
 (polynomials and verdicts read there, partly elided; rebuilt from their stated roots); the last from memory.
 """
 
