@@ -14,6 +14,7 @@ from typing import NamedTuple
 import numpy as np
 import numpy.typing as npt
 
+from realize.algebra.arrays import distinct
 from realize.band import frequency_text
 from realize.checks.chain import Complex, Real
 from realize.checks.check import Asked, Check
@@ -77,7 +78,7 @@ class FrequencyResponse:
         self._points = self._searched(lowest, details)
         self._values = self._evaluated(self._points)
         grid = np.append(_geometric(lowest, edge_rad_s, _RATIO), details[details <= edge_rad_s])
-        self.ranges = self.ranges_at(np.unique(grid))
+        self.ranges = self.ranges_at(distinct(grid))
 
     def ranges_at(self, frequencies: Real) -> Ranges:
         """Least and greatest magnitude and phase within 2 % of some frequencies."""
@@ -114,7 +115,7 @@ class FrequencyResponse:
 
     def _searched(self, lowest: float, details: Real) -> Real:
         """Frequencies that windows are searched on: none lies on a root."""
-        points = np.unique(np.append(_geometric(lowest, self.edge_rad_s * (1 + WINDOW), _SEARCH_RATIO), details))
+        points = distinct(np.append(_geometric(lowest, self.edge_rad_s * (1 + WINDOW), _SEARCH_RATIO), details))
         return points[~np.isin(points, [w for axis in self._axis for w in axis])]
 
 
@@ -154,7 +155,7 @@ def bends(roots: Iterable[complex], edge_rad_s: float) -> Real:
     """Frequencies around lightly damped roots, up to where a window at the band edge reaches."""
     narrow = [(abs(r), abs(damping(r))) for r in roots if r.imag > 0 and abs(damping(r)) < _NARROW]
     found = np.array([w * (1 + offset * d) for w, d in narrow for offset in _OFFSETS])
-    return np.unique(found[(found > 0) & (found <= edge_rad_s * (1 + WINDOW))])
+    return distinct(found[(found > 0) & (found <= edge_rad_s * (1 + WINDOW))])
 
 
 def factored(gain: float, zeros: Sequence[complex], poles: Sequence[complex], at: Complex) -> Complex:

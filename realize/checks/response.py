@@ -17,6 +17,7 @@ from typing import NamedTuple
 
 import numpy as np
 
+from realize.algebra.arrays import distinct
 from realize.checks.chain import Chain, Motion, Real, Whole, read
 
 #: Time constants of the slowest decaying pole that are followed: exp(-7) is a thousandth, a tenth of the tolerance.
@@ -178,7 +179,7 @@ class StepResponse:
             return np.arange(0)
         cycle = self._live_cycle(at)
         times = at + np.append(np.arange(-1, 3), cycle * (np.arange(33) / 32 - 0.5) if cycle < inf else [])
-        return np.unique(np.maximum(np.floor(times), 0).astype(np.int64))
+        return distinct(np.maximum(np.floor(times), 0).astype(np.int64))
 
     def rate(self, times: Real) -> Real:
         """Rate of the fastest live mode, in radians per sample."""
@@ -193,7 +194,7 @@ class StepResponse:
 
     def _known(self, *parts: Whole) -> Whole:
         """Samples of the horizon among some, ascending."""
-        samples = np.unique(np.concatenate(parts))
+        samples = distinct(np.concatenate(parts))
         return samples[(samples >= 0) & (samples <= self.last)]
 
     def _cycle_samples(self) -> list[Whole]:
@@ -305,13 +306,13 @@ def _times(response: StepResponse, samples: Whole) -> Real:
         finest //= 2
     divisions = np.minimum(needed, finest)
     times = [samples.astype(float), samples + 1.0]
-    for parts in np.unique(divisions[divisions > 1]):
+    for parts in distinct(divisions[divisions > 1]):
         chosen = samples[divisions == parts].astype(float)
         times.append((chosen[:, None] + np.arange(1, parts) / parts).ravel())
     if samples[0] == 0 and wanted[0] > finest:
         halvings = 0.5 ** np.arange(1, ceil(log2(wanted[0])) + 2)
         times += [halvings, 0.75 * halvings]
-    return np.unique(np.concatenate(times))
+    return distinct(np.concatenate(times))
 
 
 def _cubic_extreme(left: Real, right: Real, left_slope: Real, right_slope: Real, step: Real) -> tuple[Real, Real]:

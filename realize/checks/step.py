@@ -12,6 +12,7 @@ from math import floor, inf
 
 import numpy as np
 
+from realize.algebra.arrays import distinct
 from realize.checks.chain import Chain, Motion, Real, Whole, read
 from realize.checks.check import Asked, Check
 from realize.checks.counterpart import Counterpart
@@ -160,7 +161,7 @@ def _greatest(samples: Whole, figures: Real, measure: Callable[[Whole], Real]) -
     best, figure = int(samples[i]), float(figures[i])
     first, last = int(samples[max(0, i - 1)]), int(samples[min(len(samples) - 1, i + 1)])
     while last - first > 2:
-        between = np.unique(np.linspace(first, last, _PARTS + 1).astype(np.int64))
+        between = distinct(np.linspace(first, last, _PARTS + 1).astype(np.int64))
         measured = measure(between)
         i = int(np.argmax(measured))
         if measured[i] > figure:

@@ -9,6 +9,7 @@ import numpy as np
 import numpy.typing as npt
 
 from realize.algebra import polynomial as poly
+from realize.algebra.arrays import distinct
 from realize.rolloff.case import Case
 from realize.transfer import TransferFunction
 
@@ -53,7 +54,7 @@ def highest_gain(transfer: TransferFunction, case: Case, pole: Fraction) -> floa
 def _supremum(transfer: TransferFunction, edge: float, peaks: list[float]) -> float:
     """Supremum of ``|C(jw)|``, w from ``edge`` up: a search on a fine grid that holds the likely peaks."""
     top = _BEYOND_ROOTS * max(edge, _root_bound(transfer.numerator), _root_bound(transfer.denominator))
-    w = np.unique(np.append(np.geomspace(edge, top, 2 + int(_GAINS_PER_FOLD * log(top / edge))), peaks))
+    w = distinct(np.append(np.geomspace(edge, top, 2 + int(_GAINS_PER_FOLD * log(top / edge))), peaks))
     gains = _gains(transfer, w)
     highest = max(abs(float(transfer.feed_through)), float(gains.max()))
     for _ in range(_REFINEMENTS):
