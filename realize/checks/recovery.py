@@ -29,6 +29,7 @@ from typing import NamedTuple
 import numpy as np
 
 from realize.algebra import polynomial as poly
+from realize.algebra.arrays import middle
 from realize.checks.chain import Real, Whole
 from realize.checks.check import Asked, Check
 from realize.checks.step import SampledResponse
@@ -201,7 +202,7 @@ def _integral_response(gains: Sequence[float], samples: Whole) -> Real:
 def _extremes(laws: _Laws, signals: Signals) -> list[tuple[float, float]]:
     """Greatest and least errors: moderate ones as far as the input range holds them, and those of the range."""
     sizes = np.abs(laws.unit)
-    typical = max(float(np.median(sizes)), float(sizes.max()) * _BEYOND / _FAR_BEYOND)
+    typical = max(middle(sizes), float(sizes.max()) * _BEYOND / _FAR_BEYOND)
     error = _BEYOND * max(abs(laws.low), abs(laws.high)) / typical if typical else 0.0
     if signals.input_range is None:
         return [(error, -error)]
