@@ -92,6 +92,8 @@ class MethodResult:
         What the user should know.
     loop : LoopResult or None
         The loops around it, where the design has a plant.
+    judged_unrounded : bool
+        Whether the unrounded numbers were checked too.
     """
 
     method: str
@@ -103,6 +105,7 @@ class MethodResult:
     accepted: tuple[tuple[Check, Accept], ...] = ()
     notes: tuple[str, ...] = ()
     loop: LoopResult | None = None
+    judged_unrounded: bool = False
 
     @property
     def acceptable(self) -> bool:
@@ -331,7 +334,7 @@ def choose(design: Design) -> Comparison:
         As :func:`compare`, and :class:`Refused` when the design is improper and has no ``[rolloff]``.
     """
     names = methods_for(design) if design.method == "auto" else (design.method,)
-    return _comparison(design, make_causal(design, assume=False), names)
+    return _comparison(design, make_causal(design, assume=False), names, unrounded_too=len(names) == 1)
 
 
 def methods_for(design: Design) -> tuple[str, ...]:
@@ -340,14 +343,21 @@ def methods_for(design: Design) -> tuple[str, ...]:
     return tuple(METHODS) + (LOOP_METHODS if design.plant is not None else (named,) if named else ())
 
 
-def _comparison(design: Design, causal: Causal, names: Sequence[str]) -> Comparison:
+def _comparison(design: Design, causal: Causal, names: Sequence[str], *, unrounded_too: bool = True) -> Comparison:
+    """Run methods and checks; the unrounded numbers of all of them, or only of those that would be recommended."""
     period_s = require_period(design)
     band_rad_s, rests_on = _band(design, causal.transfer)
     reference = ContinuousReference(causal.transfer, period_s, band_rad_s)
     setting = _setting(design, causal.transfer, period_s)
-    results = tuple(_result(design, reference, setting, name) for name in names)
-    recommended, because = _recommendation(results)
-    return Comparison(design, causal, period_s, band_rad_s, rests_on, results, recommended, because)
+    results = [_result(design, reference, setting, name) for name in names]
+    if unrounded_too:
+        results = [_with_unrounded(design, reference, result) for result in results]
+    while True:
+        recommended, because = _recommendation(results)
+        place = next((i for i, result in enumerate(results) if result.method == recommended), None)
+        if unrounded_too or place is None or results[place].judged_unrounded:
+            return Comparison(design, causal, period_s, band_rad_s, rests_on, tuple(results), recommended, because)
+        results[place] = _with_unrounded(design, reference, results[place])
 
 
 def _band(design: Design, controller: TransferFunction) -> tuple[Fraction, str]:
@@ -380,7 +390,7 @@ def _result(design: Design, reference: ContinuousReference, setting: LoopSetting
     except Unresolved:
         return MethodResult(name, "a coefficient cannot be told from a neighbour at any permitted precision")
     as_stored = stored_pulse(stored)
-    checks = _with_added_growth(_checks(design, reference, made, stored, as_stored), reference.transfer, as_stored)
+    checks = _with_added_growth(_checks(design, reference, stored, as_stored), reference.transfer, as_stored)
     loop = setting.result(made.pulse, as_stored) if setting else None
     checks += loop.checks if loop else ()
     blocking, accepted = gate(checks, design.accept)
@@ -433,19 +443,26 @@ def _exact_at(design: Design, reference: ContinuousReference, name: str) -> tupl
 def _checks(
     design: Design,
     reference: ContinuousReference,
-    made: Discretization,
     stored: Realization,
     as_stored: PulseTransferFunction,
 ) -> tuple[Check, ...]:
-    """Checks of the stored numbers, followed by those of the exact ones that differ in their figure."""
+    """Checks of the stored numbers."""
     signals, tolerances = _signals(design), Tolerances.of(design.tolerance)
     simulate = _simulate(design, stored) if signals.output_range else None
-    of_stored = run_checks(reference, as_stored, "stored", tolerances, signals, simulate=simulate)
-    of_exact = run_checks(
-        reference, made.pulse, "exact", tolerances, signals, known_stability=_image_stability(reference, made)
-    )
-    by_name = {check.check: check for check in of_stored}
-    return of_stored + tuple(check for check in of_exact if _differs(check, by_name[check.check]))
+    return run_checks(reference, as_stored, "stored", tolerances, signals, simulate=simulate)
+
+
+def _with_unrounded(design: Design, reference: ContinuousReference, result: MethodResult) -> MethodResult:
+    """Add the checks of the exact numbers that differ in their figure from those of the stored ones."""
+    made = result.discretization
+    if made is None:
+        return result
+    tolerances, known = Tolerances.of(design.tolerance), _image_stability(reference, made)
+    of_exact = run_checks(reference, made.pulse, "exact", tolerances, _signals(design), known_stability=known)
+    by_name = {check.check: check for check in result.checks}
+    checks = result.checks + tuple(check for check in of_exact if _differs(check, by_name[check.check]))
+    blocking, accepted = gate(checks, design.accept)
+    return replace(result, checks=checks, blocking=blocking, accepted=accepted, judged_unrounded=True)
 
 
 def _simulate(design: Design, stored: Realization) -> Callable[[Sequence[float]], list[float]]:
