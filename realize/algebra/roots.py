@@ -54,12 +54,13 @@ class Root:
     Attributes
     ----------
     value : complex
-        Right to about one unit in the last place of a double; exactly 0 in a coordinate that is exactly 0.
+        Exactly 0 in a coordinate that is exactly 0. Of a root found here each part is right to about one unit in
+        the last place of a double; of the image of a root, to that share of its magnitude.
     multiplicity : int
         Exact.
     enclosure : callable
         ``enclosure(bits)`` is a disc ``(re, im, rad)`` of integers in units of ``2**-bits`` that holds the
-        root; the radius is at most 2, and coordinates that are exactly 0 are 0.
+        root; the radius is at most 3, and coordinates that are exactly 0 are 0.
     """
 
     value: complex
