@@ -24,13 +24,7 @@ _COLUMNS, _LEAST_COLUMNS = 100, 40
 #: Net allocations between two collections of cycles.
 _COLLECT_EVERY = 200_000
 
-_DESIGN_OPTIONS = (
-    click.argument("design", metavar="DESIGN"),
-    click.option("--name", metavar="IDENTIFIER", help="Name of the emitted functions and files."),
-    click.option("--method", metavar="METHOD", help='Name of a method, or "auto" for the recommended one.'),
-    click.option("--value", "values", multiple=True, metavar="NAME=NUMBER", help="Replace a value; may be repeated."),
-    click.option("--json", "as_json", is_flag=True, help="Print one JSON document and nothing else."),
-)
+_METHOD_HELP = 'Name of a method, or "auto" for the recommended one.'
 
 _RATE_OPTIONS = (
     click.option("--rate", metavar="QUANTITY", help='Sample rate, such as "2 kHz".'),
@@ -44,11 +38,25 @@ _ARGUMENTS = {
 }
 
 
-def _takes_design(command: Command) -> Command:
+def _takes_design(command: Command, method_help: str = _METHOD_HELP) -> Command:
     """Add the argument and the options that every command on a design shares."""
-    for option in reversed(_DESIGN_OPTIONS):
+    options = (
+        click.argument("design", metavar="DESIGN"),
+        click.option("--name", metavar="IDENTIFIER", help="Name of the emitted functions and files."),
+        click.option("--method", metavar="METHOD", help=method_help),
+        click.option(
+            "--value", "values", multiple=True, metavar="NAME=NUMBER", help="Replace a value; may be repeated."
+        ),
+        click.option("--json", "as_json", is_flag=True, help="Print one JSON document and nothing else."),
+    )
+    for option in reversed(options):
         command = option(command)
     return command
+
+
+def _takes_design_and_one_method(command: Command) -> Command:
+    """As :func:`_takes_design`, for a command that looks at every method unless one is asked for."""
+    return _takes_design(command, 'Look at this method alone; by default, and with "auto", at every method.')
 
 
 def _takes_rate(command: Command) -> Command:
@@ -116,7 +124,7 @@ def compare(design: str, as_json: bool, **options: Any) -> None:
 
 
 @commands.command(short_help="Find the lowest rate each method can live with.")
-@_takes_design
+@_takes_design_and_one_method
 @click.option("--from", "low", metavar="QUANTITY", help="Lowest rate; by default 4 times the crossover or band.")
 @click.option("--to", "high", metavar="QUANTITY", help="Highest rate; by default 200 times the crossover or band.")
 @click.option("--points", default="60", show_default=True, metavar="N", help="Rates on the logarithmic grid.")
@@ -124,10 +132,12 @@ def rates(design: str, as_json: bool, low: str | None, high: str | None, points:
     """Find the lowest rate that each method can live with, over a range of rates.
 
     A method's rate is the lowest from which all higher ones in the range pass every check. The
-    design's own rate is not needed. Progress goes to standard error.
+    design's own rate is not needed, and a method that the design file names does not hide the
+    others: --method does. Progress goes to standard error.
 
     \b
     Example: realize rates roller_gap.toml --from "200 Hz" --to "20 kHz"
+             realize rates roller_gap.toml --method bilinear
     """
     from realize.quantity import parse_quantity
     from realize.rates import rates as over_rates
@@ -136,7 +146,8 @@ def rates(design: str, as_json: bool, low: str | None, high: str | None, points:
     ends = [parse_quantity(end, "rate", key) if end else None for end, key in ((low, "--from"), (high, "--to"))]
     count = _count(points, "--points")
     loaded = _load(design, options)
-    found = over_rates(loaded, low_hz=ends[0], high_hz=ends[1], points=count, follow=_with_progress(count))
+    only = options["method"] if options["method"] != "auto" else None
+    found = over_rates(loaded, low_hz=ends[0], high_hz=ends[1], points=count, only=only, follow=_with_progress(count))
     _print(rates_document(found) if as_json else rates_text(found))
 
 

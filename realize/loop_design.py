@@ -72,15 +72,40 @@ class LoopResult(NamedTuple):
     notes: tuple[str, ...]
 
 
-def plants_of(design: Design) -> tuple[Plant, ...]:
+def plants_of(design: Design) -> tuple[Plant | MeasuredPlant, ...]:
+    """The plant of every case, or the measured one; empty without a plant."""
+    measured = measured_plant(design)
+    return transfer_plants(design) if measured is None else (measured,)
+
+
+def transfer_plants(design: Design) -> tuple[Plant, ...]:
     """The plant of every case; empty without a plant, or with a measured one."""
     if design.plant is None or design.plant.response_text is not None:
         return ()
     return tuple(Plant(c.transfer, c.dead_time_s, c.sensor, c.name) for c in design.plant.cases)
 
 
+def measured_plant(design: Design) -> MeasuredPlant | None:
+    """The measured plant, where the design has one.
+
+    Raises
+    ------
+    RealizeError
+        When the file of the measurement cannot be understood.
+    """
+    table = design.plant
+    if table is None or table.response_text is None:
+        return None
+    case = table.cases[0]
+    response = read_response(table.response_text, f"[plant] response {table.response}")
+    return MeasuredPlant(response, float(case.dead_time_s), case.sensor)
+
+
 def loop_band(design: Design, controller: TransferFunction) -> tuple[Fraction, str] | None:
-    """The crossover of ``C P H`` as band edge, the highest over the cases; None without one."""
+    """The crossover of ``C P H`` as band edge, the highest over the cases; None without one.
+
+    Of a measured plant it must lie within the measured band: see :func:`unmeasured_crossover`.
+    """
     crossover = highest_crossover_rad_s(controller, plants_of(design))
     if crossover is None:
         return None
@@ -93,6 +118,21 @@ def crossover_sentence(edge_rad_s: Fraction) -> str:
     return f"band edge {frequency_text(edge_rad_s)}: the crossover of controller, plant and sensor"
 
 
+def unmeasured_crossover(design: Design, controller: TransferFunction) -> str:
+    """Why the crossover around a measured plant is not the band edge; empty where it is, or where none is needed."""
+    plant = measured_plant(design) if design.band_rad_s is None else None
+    return "" if plant is None else _beyond_measurement(controller, plant)
+
+
+def _beyond_measurement(controller: TransferFunction, plant: MeasuredPlant) -> str:
+    loop = MeasuredLoop(controller, plant)
+    if loop.highest_crossover_rad_s is not None:
+        return ""
+    first, last = (frequency_text(float(plant.response.w_rad_s[end])) for end in (0, -1))
+    where = f"still above 1 at {last}, the last frequency" if loop.ends_above_one else f"below 1 from {first} to {last}"
+    return f"the measurement holds no crossover: the gain of controller, plant and sensor is {where}"
+
+
 def phase_margins_deg(design: Design, rolled_off: Sequence[TransferFunction]) -> tuple[tuple[float, float | None], ...]:
     """Phase margin of the continuous loop before and after each roll-off, worst case; empty without a crossover."""
     plants = plants_of(design)
@@ -102,19 +142,29 @@ def phase_margins_deg(design: Design, rolled_off: Sequence[TransferFunction]) ->
     return tuple((min(before), _least_margin_deg(controller, plants)) for controller in rolled_off)
 
 
-def _least_margin_deg(controller: TransferFunction, plants: Sequence[Plant]) -> float | None:
-    margins = (ContinuousLoop(controller, plant).margins.phase_margin_deg for plant in plants)
+def _least_margin_deg(controller: TransferFunction, plants: Sequence[Plant | MeasuredPlant]) -> float | None:
+    margins = (_continuous_loop(controller, plant).margins.phase_margin_deg for plant in plants)
     return min((margin for margin in margins if margin is not None), default=None)
 
 
-def _margin_at_crossover_deg(controller: TransferFunction, plant: Plant) -> float | None:
+def _continuous_loop(controller: TransferFunction, plant: Plant | MeasuredPlant) -> ContinuousLoop | MeasuredLoop:
+    return MeasuredLoop(controller, plant) if isinstance(plant, MeasuredPlant) else ContinuousLoop(controller, plant)
+
+
+def _margin_at_crossover_deg(controller: TransferFunction, plant: Plant | MeasuredPlant) -> float | None:
     """Angle left to -180 deg at the highest crossover, of an improper controller too."""
     crossover = highest_crossover_rad_s(controller, [plant])
     if crossover is None:
         return None
+    return degrees(remainder(_open_loop_phase(controller, plant, crossover) + pi, 2 * pi))
+
+
+def _open_loop_phase(controller: TransferFunction, plant: Plant | MeasuredPlant, w_rad_s: float) -> float:
+    """Phase of ``C P H`` with the dead time, in rad."""
+    if isinstance(plant, MeasuredPlant):
+        return float(MeasuredLoop(controller, plant).response(np.array([w_rad_s]))[1][0])
     parts = (controller, plant.transfer, plant.sensor)
-    phase = sum(phase_at(Continuous(part), crossover) for part in parts) - crossover * float(plant.dead_time_s)
-    return degrees(remainder(phase + pi, 2 * pi))
+    return sum(phase_at(Continuous(part), w_rad_s) for part in parts) - w_rad_s * float(plant.dead_time_s)
 
 
 def compute_delay_s(design: Design, period_s: Fraction) -> Fraction:
@@ -146,17 +196,14 @@ class LoopSetting:
     def references(self) -> tuple[LoopReference, ...]:
         """The continuous loops, one a case."""
         delay = compute_delay_s(self.design, self.period_s)
-        return tuple(LoopReference(self.controller, plant, self.period_s, delay) for plant in plants_of(self.design))
+        return tuple(
+            LoopReference(self.controller, plant, self.period_s, delay) for plant in transfer_plants(self.design)
+        )
 
     @cached_property
     def measured(self) -> MeasuredPlant | None:
         """The measured plant, where the design has one."""
-        table = self.design.plant
-        if table is None or table.response_text is None:
-            return None
-        case = table.cases[0]
-        response = read_response(table.response_text, f"[plant] response {table.response}")
-        return MeasuredPlant(response, float(case.dead_time_s), case.sensor)
+        return measured_plant(self.design)
 
     def result(self, exact: PulseTransferFunction, stored: PulseTransferFunction) -> LoopResult:
         """Put one method's controller in every loop.
@@ -212,7 +259,9 @@ class LoopSetting:
         entry = {"case": "", "continuous": continuous.document(), "discrete": sampled.document()}
         checks = measured_loop_checks(delayed, sampled, "", "stored", self._given)
         note = f"the plant was measured from {plant.response.band_text}: nothing outside that band is known"
-        return LoopResult((entry,), checks, None, None, (note,))
+        assumed = _beyond_measurement(self.controller, plant) if self.design.band_rad_s is None else ""
+        notes = (note, f"the band edge is assumed: {assumed}") if assumed else (note,)
+        return LoopResult((entry,), checks, None, None, notes)
 
 
 def loop_method(name: str, setting: LoopSetting | None, band: Band, design: Design) -> Discretization:

@@ -17,7 +17,7 @@ from realize.band import band_edge
 from realize.design import Design, design_from_resolved
 from realize.errors import RealizeError
 from realize.quantity import format_engineering, round_significant
-from realize.workflow import MethodResult, compare, methods_for
+from realize.workflow import MethodResult, choose, compare, methods_for
 
 #: Grid of the default range: sixty rates over a factor of 50 are 6.9 % apart.
 POINTS = 60
@@ -30,6 +30,9 @@ LOWEST_MULTIPLE, HIGHEST_MULTIPLE = 4, 200
 MOST_POINTS = 1000
 
 _DIGITS = 3
+
+#: Begins what binds where a method does not apply.
+REFUSED = "refused: "
 
 #: Stands for all methods where a rate cannot be used by any.
 _EVERY_METHOD = "every method"
@@ -104,10 +107,11 @@ def rates(
     low_hz: Fraction | None = None,
     high_hz: Fraction | None = None,
     points: int = POINTS,
+    only: str | None = None,
     workers: int = 2,
     follow: Callable[[Iterator[dict[str, Outcome]]], Iterator[dict[str, Outcome]]] = iter,
 ) -> Rates:
-    """Run every method at every rate of a range.
+    """Run every method, or a named one, at every rate of a range.
 
     Parameters
     ----------
@@ -117,6 +121,8 @@ def rates(
         Ends of the range; by default from 4 to 200 times the crossover or band edge.
     points : int
         Rates on the logarithmic grid.
+    only : str, optional
+        The one method to look at; by default every method, whichever the design names.
     workers : int
         Processes.
     follow : callable
@@ -130,19 +136,23 @@ def rates(
     edge, sentence = _edge(design)
     base_hz = Fraction(edge) / Fraction(2 * pi)
     grid = _grid(low_hz or LOWEST_MULTIPLE * base_hz, high_hz or HIGHEST_MULTIPLE * base_hz, points)
-    with ProcessPoolExecutor(workers, initializer=_load, initargs=(design.resolved(),)) as pool:
+    with ProcessPoolExecutor(workers, initializer=_load, initargs=(design.resolved(), only)) as pool:
         try:
             found = list(follow(pool.map(_outcomes, grid)))
         except BaseException:
             pool.shutdown(cancel_futures=True)
             raise
-    methods = tuple(_summary(name, grid, [_of(name, outcomes) for outcomes in found]) for name in methods_for(design))
+    names = methods_for(design) if only is None else (only,)
+    methods = tuple(_summary(name, grid, [_of(name, outcomes) for outcomes in found]) for name in names)
     return Rates(design, grid, methods, sentence, _rules(design, float(base_hz)))
 
 
 def answer(found: Rates) -> str:
     """The answer in one line: the lowest rate of every method that has one, and what binds the first."""
     able = sorted((m for m in found.methods if m.lowest_hz is not None), key=lambda m: m.lowest_hz or 0)
+    if not able and len(found.methods) == 1:
+        (only,) = found.methods
+        return f"{only.method} is not acceptable at {_hz(found.rates_hz[-1])}, the highest rate: {only.binding}"
     if not able:
         return "no method is acceptable up to the highest rate of the range"
     names = "; ".join(f"{m.method} from {_hz(m.lowest_hz)}" for m in able)
@@ -164,7 +174,18 @@ def _edge(design: Design) -> tuple[Fraction, str]:
         found = loop_band(design, design.transfer)
         if found is not None:
             return found
-    return band_edge(design.transfer, None, design.band_rad_s)
+    edge, sentence = band_edge(design.transfer, None, design.band_rad_s)
+    return edge, sentence + _why_assumed(design)
+
+
+def _why_assumed(design: Design) -> str:
+    """For the sentence on the band: why it is not the crossover of a measured plant."""
+    if design.plant is None:
+        return ""
+    from realize.loop_design import unmeasured_crossover
+
+    reason = unmeasured_crossover(design, design.transfer)
+    return f"; {reason}" if reason else ""
 
 
 def _grid(low_hz: Fraction, high_hz: Fraction, points: int) -> tuple[Fraction, ...]:
@@ -184,21 +205,28 @@ def _grid(low_hz: Fraction, high_hz: Fraction, points: int) -> tuple[Fraction, .
 
 
 _design: Design | None = None
+_only: str | None = None
 
 
-def _load(resolved: dict[str, Any]) -> None:
+def _load(resolved: dict[str, Any], only: str | None) -> None:
     """Give a worker process its design: roots found so far do not travel between processes."""
-    global _design
-    _design = design_from_resolved(resolved)
+    global _design, _only
+    _design, _only = design_from_resolved(resolved), only
 
 
 def _outcomes(rate_hz: Fraction) -> dict[str, Outcome]:
     assert _design is not None
     try:
-        results = compare(replace(_design, method="auto", period_s=1 / rate_hz)).methods
+        results = _results(replace(_design, method=_only or "auto", period_s=1 / rate_hz))
     except RealizeError as error:
         return {_EVERY_METHOD: Outcome(False, (), f"{error.where}: {error.found}")}
     return {result.method: _outcome(result) for result in results}
+
+
+def _results(design: Design) -> tuple[MethodResult, ...]:
+    """The named method alone, or every method; an assumed roll-off comes with every method only."""
+    assumed = design.transfer.relative_degree < 0 and design.rolloff is None
+    return (compare if design.method == "auto" or assumed else choose)(design).methods
 
 
 def _of(name: str, outcomes: dict[str, Outcome]) -> Outcome:
@@ -219,7 +247,7 @@ def _summary(name: str, grid: Sequence[Fraction], outcomes: Sequence[Outcome]) -
 
 
 def _what_failed(outcome: Outcome) -> str:
-    return f"refused: {outcome.refused}" if outcome.refused else outcome.out[0]
+    return f"{REFUSED}{outcome.refused}" if outcome.refused else outcome.out[0]
 
 
 def _rules(design: Design, base_hz: float) -> tuple[str, ...]:
@@ -239,8 +267,8 @@ def _rise_time_s(design: Design) -> float | None:
     if design.plant is None or design.transfer.relative_degree < 0:
         return None
     from realize.loop import ContinuousLoop, continuous_step
-    from realize.loop_design import plants_of
+    from realize.loop_design import transfer_plants
 
-    plants = plants_of(design)
+    plants = transfer_plants(design)
     step = continuous_step(ContinuousLoop(design.transfer, plants[0])) if plants else None
     return step.rise_time_s if step else None

@@ -10,6 +10,7 @@ from typing import Any
 import pytest
 
 from realize.cli import commands, main
+from realize.methods import METHODS
 
 FIXTURES = Path(__file__).parent.parent / "fixtures"
 ROLLER_GAP = str(FIXTURES / "roller_gap.toml")
@@ -342,6 +343,15 @@ def test_rates_has_no_option_for_one_rate_and_the_others_have(run: Any) -> None:
         assert "--rate QUANTITY" in run(command, "--help").out
     assert "--rate" not in run("rates", "--help").out
     assert "--period" not in run("rates", "--help").out
+
+
+def test_rates_looks_at_the_named_method_alone_and_its_help_says_so(run: Any) -> None:
+    assert "Look at this method alone" in " ".join(run("rates", "--help").out.split())
+    design = ("rates", "1/(0.01*s + 1)", "--points", "2", "--json")
+    alone, every = (json.loads(run(*design, "--method", name).out)["methods"] for name in ("bilinear", "auto"))
+    assert [method["method"] for method in alone] == ["bilinear"]
+    assert len(every) == len(METHODS)
+    assert alone[0] in every
 
 
 def test_the_list_of_commands_is_not_cut(run: Any) -> None:

@@ -40,6 +40,37 @@ def test_the_default_range_is_4_to_200_times_the_band(found) -> None:  # type: i
     assert found.rates_hz[-1] == 3200
 
 
+def test_a_named_method_alone_is_looked_at_with_the_outcomes_it_has_among_all(found) -> None:  # type: ignore[no-untyped-def]
+    alone = rates(design_from_text(LAG, "test.toml"), points=8, only="bilinear")
+    (method,) = alone.methods
+    assert method == next(m for m in found.methods if m.method == "bilinear")
+    assert answer(alone).startswith("bilinear from ")
+    assert "step-invariant" not in rates_text(alone)
+
+
+def test_a_named_method_of_an_improper_design_gets_the_roll_off_that_a_comparison_assumes() -> None:
+    text = LAG.replace("1/(0.01*s + 1)", "1 + 0.01*s")
+    alone = rates(design_from_text(text, "test.toml"), points=3, only="bilinear")
+    (method,) = alone.methods
+    for rate, outcome in zip(alone.rates_hz, method.outcomes, strict=True):
+        one = compare(design_from_text(text + f'period = "1/{rate} s"\n', "test.toml"))
+        assert outcome.acceptable == next(m.acceptable for m in one.methods if m.method == "bilinear")
+
+
+def test_a_method_that_the_design_names_does_not_hide_the_others() -> None:
+    named = rates(design_from_text(LAG + '[method]\nname = "bilinear"\n', "test.toml"), points=2)
+    assert len(named.methods) > 1
+
+
+def test_a_named_method_that_is_never_acceptable_is_answered_by_name_with_the_reason_once_in_full() -> None:
+    alone = rates(design_from_text(LAG, "test.toml"), points=2, only="plant-input-mapped")
+    text = rates_text(alone)
+    assert text.startswith("no: lag: plant-input-mapped is not acceptable at 3.2 kHz, the highest rate: refused: ")
+    assert "refused at the highest rate: see below" in text
+    assert "Refused\n  - plant-input-mapped: " in text
+    assert max(len(line) for line in text.splitlines()) <= 100
+
+
 def test_screen_and_document_agree(found) -> None:  # type: ignore[no-untyped-def]
     document, text = rates_document(found), rates_text(found)
     assert document["answer"] == answer(found)

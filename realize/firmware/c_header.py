@@ -7,6 +7,8 @@ from fractions import Fraction
 from typing import TYPE_CHECKING, Any
 
 from realize.arithmetic.sample import BACK_CALCULATION, HOLD_INTEGRAL, Sample, variables
+from realize.checks.agreement import agreed_text
+from realize.checks.check import Check
 from realize.firmware.c_text import (
     LONGEST_EXACT,
     WIDTH,
@@ -86,7 +88,7 @@ def _preamble(emission: Emission, sample: Sample) -> list[str]:
         *_paragraph("Feed-through", _feed_through(emission)),
         *_paragraph("Arithmetic", _arithmetic()),
         *_loop(emission.loop),
-        *_listed("Accepted deviations", [_accepted(entry) for entry in emission.accepted]),
+        *_listed("Accepted deviations", [_accepted(entry, emission.checks) for entry in emission.accepted]),
         *_listed("Not protected", _unprotected(emission, sample)),
         *_listed("Method notes", emission.notes),
         *_paragraph("Caution", CAUTION)[:-1],
@@ -225,12 +227,16 @@ def _arithmetic() -> str:
     )
 
 
-def _accepted(entry: Mapping[str, Any]) -> str:
+def _accepted(entry: Mapping[str, Any], checks: Sequence[Mapping[str, Any]]) -> str:
+    """What was agreed to, with the figure that is left where the check is there."""
     limit, unit = entry.get("limit"), entry.get("unit") or ""
+    key = [entry["check"], entry.get("difference"), "out"]
+    check = next((c for c in checks if [c.get(k) for k in ("check", "difference", "verdict")] == key), None)
     figure = number_text(limit) if isinstance(limit, Fraction) else str(limit)
     up_to = "" if limit is None else f", up to {figure} {unit}".rstrip()
+    said = f"{entry['check']}{up_to}" if check is None else agreed_text(Check(**check), limit)
     by = f" ({entry['by']})" if entry.get("by") else ""
-    return f"{entry['check']}{up_to}: {entry.get('because', '')}{by}"
+    return f"{said}: {entry.get('because', '')}{by}"
 
 
 def _unprotected(emission: Emission, sample: Sample) -> list[str]:

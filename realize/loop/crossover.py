@@ -7,6 +7,7 @@ from fractions import Fraction
 from typing import NamedTuple
 
 from realize.loop.continuous import gain_crossovers_rad_s
+from realize.loop.measured import MeasuredLoop, MeasuredPlant
 from realize.loop.plant import Plant, series
 from realize.transfer import TransferFunction
 
@@ -36,23 +37,30 @@ class Settled(NamedTuple):
     poles_rad_s: tuple[Fraction, ...]
 
 
-def highest_crossover_rad_s(controller: TransferFunction, plants: Sequence[Plant]) -> float | None:
-    """Highest gain crossover of ``C P H`` over the cases; None where no case has one.
+def highest_crossover_rad_s(controller: TransferFunction, plants: Sequence[Plant | MeasuredPlant]) -> float | None:
+    """Highest gain crossover of ``C P H`` over the cases; None where no case has one, or none that was measured.
 
     Parameters
     ----------
     controller : TransferFunction
         Improper or not.
     """
-    found = (gain_crossovers_rad_s(series(controller, plant.transfer, plant.sensor)) for plant in plants)
-    return max((crossovers[-1][0] for crossovers in found if crossovers), default=None)
+    found = (_highest_of_case_rad_s(controller, plant) for plant in plants)
+    return max((crossover for crossover in found if crossover is not None), default=None)
+
+
+def _highest_of_case_rad_s(controller: TransferFunction, plant: Plant | MeasuredPlant) -> float | None:
+    if isinstance(plant, MeasuredPlant):
+        return MeasuredLoop(controller, plant).highest_crossover_rad_s
+    crossovers = gain_crossovers_rad_s(series(controller, plant.transfer, plant.sensor))
+    return crossovers[-1][0] if crossovers else None
 
 
 def settled_pole(
     first_crossover_rad_s: float,
     pole_for: Callable[[float], Fraction],
     controller_with: Callable[[Fraction], TransferFunction],
-    plants: Sequence[Plant],
+    plants: Sequence[Plant | MeasuredPlant],
 ) -> Settled:
     """Follow crossover to pole to crossover until neither moves.
 

@@ -241,6 +241,21 @@ class MeasuredLoop:
         """All gain crossovers within the band, ascending."""
         return self._scan.gain_crossovers()
 
+    @property
+    def highest_crossover_rad_s(self) -> float | None:
+        """Highest gain crossover; None without one, or where the gain is above 1 at the last measured frequency.
+
+        Whatever lies within the band, the highest crossover then lies beyond it.
+        """
+        if not self.crossovers or self.ends_above_one:
+            return None
+        return self.crossovers[-1].w_rad_s
+
+    @property
+    def ends_above_one(self) -> bool:
+        """Whether the gain is above 1 at the last frequency."""
+        return bool(self._scan.log[-1] > 0)
+
     @cached_property
     def margins(self) -> Margins:
         """Margins as far as the band shows them; stability is not known."""

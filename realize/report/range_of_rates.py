@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from realize.quantity import format_engineering
-from realize.rates import MethodRates, Rates, answer
+from realize.rates import REFUSED, MethodRates, Rates, answer
 from realize.report.documents import Document
 from realize.report.documents import heading as document_heading
 from realize.report.terminal import bullets, heading, table, wrapped
@@ -19,6 +19,8 @@ def rates_text(found: Rates) -> str:
     rows = [[m.method, _lowest(m), _binding(m)] for m in found.methods]
     setting += _own_rate(found)
     blocks = [first, "".join(wrapped(line, indent="  ") for line in setting), table([head, *rows])]
+    refused = [f"{m.method}: {(m.binding or '').removeprefix(REFUSED)}" for m in found.methods if _is_refused(m)]
+    blocks += [heading("Refused") + bullets(refused)] if refused else []
     return "\n".join([*blocks, heading("Rules of thumb, for comparison") + bullets(found.rules)])
 
 
@@ -39,8 +41,16 @@ def _lowest(method: MethodRates) -> str:
 
 def _binding(method: MethodRates) -> str:
     if method.lowest_hz is not None:
-        return method.binding or "nothing: it passes over the whole range"
+        below = "refused: see below" if _is_refused(method) else method.binding
+        return below or "nothing: it passes over the whole range"
+    if _is_refused(method):
+        return "refused at the highest rate: see below"
     return f"{method.binding}, still out at the highest rate"
+
+
+def _is_refused(method: MethodRates) -> bool:
+    """Whether it is a refusal that binds: a sentence, too long for a table."""
+    return method.binding is not None and method.binding.startswith(REFUSED)
 
 
 def rates_document(found: Rates) -> Document:

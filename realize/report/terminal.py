@@ -7,7 +7,7 @@ digits.
 from __future__ import annotations
 
 import re
-from collections.abc import Iterable, Mapping, Sequence, Set
+from collections.abc import Callable, Iterable, Mapping, Sequence, Set
 from math import log, pi
 from textwrap import fill
 from typing import TYPE_CHECKING, Any
@@ -15,6 +15,7 @@ from typing import TYPE_CHECKING, Any
 from realize.algebra.expression.printing import format_transfer
 from realize.algebra.roots import Root
 from realize.checks import Check
+from realize.checks.agreement import agreed_text
 from realize.design import Design
 from realize.quantity import format_engineering
 from realize.realizability import Assessment
@@ -53,10 +54,20 @@ _UNSHOWN = (
     "stability",
     "saturation recovery",
     "loop stability",
-    "loop phase margin",
-    "loop sensitivity",
-    "loop overshoot",
 )
+
+#: The words that head the table of the loops.
+_LOOP_COLUMNS = (
+    ("", "stable", ""),
+    ("phase", "margin", "deg"),
+    ("margin", "lost", "deg"),
+    ("maximum", "sensitivity", ""),
+    ("step", "overshoot", "%"),
+    ("overshoot", "gained", "points"),
+)
+
+#: What stands behind a figure that is out, and behind one that is out but agreed to.
+_OUT, _AGREED = "!", "*"
 
 #: Unit of the values of a check, where it is not that of the difference.
 _VALUE_UNITS = {
@@ -76,6 +87,9 @@ _IN_POINTS = ("step overshoot", "loop overshoot")
 #: Differences above this are lost causes, by whatever factor.
 _MOST_SHOWN = 1e6
 
+#: Figures below this are shown with decimals: five digits in all at the most.
+_MOST_WITH_DECIMALS = 1000
+
 _MULTIPLE = {1: "", 2: "double", 3: "triple"}
 
 CAUTION = (
@@ -92,8 +106,9 @@ def assess_text(design: Design, assessment: Assessment) -> str:
     if assessment.terms:
         blocks.append(heading("What makes it improper") + bullets(term.text for term in assessment.terms))
         blocks.append(_proposals_block(assessment.proposals) + _margins_list(assessment))
-    if assessment.notes:
-        blocks.append(heading("Notes") + bullets(assessment.notes))
+    notes = [*assessment.notes, *(_unmeasured(design) if assessment.terms else ())]
+    if notes:
+        blocks.append(heading("Notes") + bullets(notes))
     if assessment.proposals and design.rolloff is None:
         blocks.append(
             heading("To take the first proposal, add to the design file") + rolloff_toml(assessment.proposals[0])
@@ -101,9 +116,20 @@ def assess_text(design: Design, assessment: Assessment) -> str:
     return "\n".join(blocks)
 
 
+def _unmeasured(design: Design) -> tuple[str, ...]:
+    """Why the band edge is not the crossover around a measured plant."""
+    if design.plant is None:
+        return ()
+    from realize.loop_design import unmeasured_crossover
+
+    reason = unmeasured_crossover(design, design.transfer)
+    return (f"the band edge is assumed: {reason}",) if reason else ()
+
+
 def compare_text(comparison: Comparison) -> str:
     """The screen of `realize compare`."""
     blocks = [_comparison_verdict(comparison), _setting(comparison), _methods_table(comparison.methods)]
+    blocks += [_loops_table(comparison)] if comparison.design.plant else []
     refused = [m for m in comparison.methods if m.refused]
     if refused:
         blocks.append(heading("Refused") + bullets(f"{m.method}: {m.refused}" for m in refused))
@@ -265,7 +291,8 @@ def _setting(comparison: Comparison) -> str:
         )
         lines += [causal.note] if causal.note else []
         if not p.within_window:
-            lines.append(f"the roll-off pole lies outside its window, {_window(p.window_rad_s)} rad/s: " + p.reasons[0])
+            outside = f"lies outside its window, {_window(p.window_rad_s)} rad/s" if p.window_rad_s else "has no window"
+            lines.append(f"the roll-off pole {outside}: {p.reasons[0]}")
     return "".join(wrapped(line, indent="  ") for line in lines)
 
 
@@ -273,12 +300,114 @@ def _methods_table(methods: Sequence[MethodResult]) -> str:
     head = [["", "method", *(words[i] for _, words in _COLUMNS)] for i in range(3)]
     head[1][:2] = head[2][:2] = ["", ""]
     rows = [[_good(m), m.method, *(_cell(m, name) for name, _ in _COLUMNS)] for m in methods]
+    lines = figures_table(head, [_tolerance_row(methods), *rows], first=2)
     key = (
         "Each figure is the difference between the stored numbers and the design; ! is out of tolerance, "
         "* out but accepted, - undefined (which does not block)."
     )
-    out = _out_without_column(methods)
-    return table([*head, _tolerance_row(methods), *rows]) + wrapped(key) + bullets(out)
+    return lines + wrapped(key) + bullets(_out_without_column(methods))
+
+
+def _loops_table(comparison: Comparison) -> str:
+    """What is left in the loop of every method, each figure that of the worst case of the plant."""
+    loops = [m.loop for m in comparison.methods if m.loop]
+    if not loops:
+        return heading("In the loop") + "  no method has one\n"
+    head = [["", "", *(words[i] for words in _LOOP_COLUMNS)] for i in range(3)]
+    head[0][1] = "method"
+    least, most = _loop_limits(comparison.design)
+    limits = [
+        "",
+        "(tolerance)",
+        "yes",
+        f">={least:.3g}",
+        f"<={most[0]:.3g}",
+        f"<={most[1]:.3g}",
+        "-",
+        f"<={most[2]:.3g}",
+    ]
+    before = ["", "(continuous)", *_loop_figures(loops[0], "continuous", "-", "-")]
+    rows = [[_good(m), m.method, *_loop_cells(m, least)] for m in comparison.methods]
+    cases = len(loops[0].entries)
+    title = f"In the loop, each figure the worst over the plant's {cases} cases" if cases > 1 else "In the loop"
+    key = (
+        "(continuous) is the loop without hold and compute delay, those of the methods are sampled with everything "
+        "in them; lost and gained are against the continuous loop with hold and compute delay."
+    )
+    return heading(title) + figures_table(head, [limits, before, *rows], first=2) + wrapped(key)
+
+
+def _loop_limits(design: Design) -> tuple[float, tuple[float, float, float]]:
+    """Least phase margin; most that it may lose, sensitivity, and most that the overshoot may gain."""
+    from realize.loop import LOOP_DEFAULTS
+
+    given = dict(design.tolerance)
+    keys = ("loop_phase_margin_least", "loop_phase_margin_loss", "loop_sensitivity_most", "loop_overshoot_rise")
+    least, *most = (float(given.get(key, LOOP_DEFAULTS[key].tolerance)) for key in keys)
+    return least, (most[0], most[1], most[2])
+
+
+def _loop_figures(loop: LoopResult, kind: str, lost: str, gained: str) -> list[str]:
+    """The worst over the cases, of the continuous or the discrete loops; margins of a loop that is lost say nothing."""
+    stable, margin, sensitivity, overshoot = (
+        [entry[kind][key] for entry in loop.entries]
+        for key in ("stable", "phase_margin_deg", "maximum_sensitivity", "step_overshoot_percent")
+    )
+    if False in stable:
+        return ["no", *["-"] * (len(_LOOP_COLUMNS) - 1)]
+    return [
+        "-" if None in stable else "yes",
+        _decimals(_worst_of(margin, min), 1),
+        lost,
+        _decimals(_worst_of(sensitivity, max), 2),
+        _decimals(_worst_of(overshoot, max), 1),
+        gained,
+    ]
+
+
+def _worst_of(figures: Sequence[float | None], worst: Callable[[list[float]], float]) -> float | None:
+    known = [figure for figure in figures if figure is not None]
+    return worst(known) if known else None
+
+
+def _decimals(value: float | None, count: int) -> str:
+    """So many decimals, which stand below each other in a column; few digits where it is large."""
+    if value is None or abs(value) >= _MOST_WITH_DECIMALS:
+        return _figure(value)
+    # Adding 0 turns a rounded -0 into 0.
+    return f"{round(value, count) + 0.0:.{count}f}"
+
+
+def _loop_cells(method: MethodResult, least_deg: float) -> list[str]:
+    """The figures of one method; a mark stands behind the one that is out."""
+    if method.loop is None:
+        return ["-"] * len(_LOOP_COLUMNS)
+    checks = {check.check: check for check in method.loop.checks}
+    marks = {name: _mark(method, check) for name, check in checks.items()}
+    margin, overshoot = checks["loop phase margin"], checks["loop overshoot"]
+    if marks["loop stability"]:
+        return [f"no{marks['loop stability']}", *["-"] * (len(_LOOP_COLUMNS) - 1)]
+    cells = _loop_figures(method.loop, "discrete", _decimals(_lost(margin), 2), _decimals(overshoot.difference, 2))
+    margins = [entry["discrete"]["phase_margin_deg"] for entry in method.loop.entries]
+    low = _lost(margin) is None or any(value is not None and value < least_deg for value in margins)
+    at_margin = marks["loop phase margin"]
+    behind = (
+        "",
+        at_margin if low else "",
+        "" if low else at_margin,
+        marks["loop sensitivity"],
+        "",
+        marks["loop overshoot"],
+    )
+    return [cell + mark for cell, mark in zip(cells, behind, strict=True)]
+
+
+def _lost(margin: Check) -> float | None:
+    """Phase margin lost against the continuous loop with hold and delay; None where one of them has none."""
+    if not isinstance(margin.reference, float) or not isinstance(margin.obtained, float) or margin.difference is None:
+        return None
+    # Where that loop is below the floor itself, the difference is what lies below the floor.
+    return margin.difference if margin.tolerance else max(margin.reference - margin.obtained, 0.0)
 
 
 def _out_without_column(methods: Sequence[MethodResult]) -> list[str]:
@@ -304,9 +433,12 @@ def _cell(method: MethodResult, name: str) -> str:
     check = next((c for c in method.stored_checks if c.check == name), None)
     if check is None or check.difference is None:
         return "-"
+    return _figure(check.difference, 2) + _mark(method, check)
+
+
+def _mark(method: MethodResult, check: Check) -> str:
     accepted = any(c is check for c, _ in method.accepted)
-    mark = "*" if accepted else "!" if check.verdict == "out" else ""
-    return _figure(check.difference, 2) + mark
+    return _AGREED if accepted else _OUT if check.verdict == "out" else ""
 
 
 def _checks_block(result: MethodResult) -> str:
@@ -320,7 +452,7 @@ def _checks_block(result: MethodResult) -> str:
     rows = [_check_row(check, exact.get(check.check, check), agreed) for check in result.stored_checks]
     reasons = [f"{c.check}: {c.reason}" for c in result.stored_checks if c.reason and _wants_words(c)]
     block = heading(f"Checks of {result.method}") + table([*head, *rows]) + bullets(reasons)
-    accepted = [f"{c.check}, {_value_text(c.obtained)} obtained: {a.because} ({a.by})" for c, a in result.accepted]
+    accepted = [f"{agreed_text(c, a.limit)}: {a.because} ({a.by})" for c, a in result.accepted]
     block += ("\n" + heading("Accepted deviations") + bullets(accepted)) if accepted else ""
     block += _loop_block(result.loop) if result.loop else ""
     return block + (heading("Notes") + bullets(result.notes) if result.notes else "")
@@ -447,9 +579,30 @@ def wrapped(text: str, indent: str = "", rest: str | None = None) -> str:
     return lines.replace("\0", " ") + "\n"
 
 
-def table(rows: Sequence[Sequence[str]]) -> str:
-    """Columns flush left, each as wide as its widest cell, two spaces apart, or one where room is short."""
+def table(rows: Sequence[Sequence[str]], *, right_from: int | None = None) -> str:
+    """Columns flush left, each as wide as its widest cell, two spaces apart, or one where room is short.
+
+    Parameters
+    ----------
+    rows : sequence of sequence of str
+        All of one length.
+    right_from : int, optional
+        First of the columns that are flush right.
+    """
     widths = [max(len(row[i]) for row in rows) for i in range(len(rows[0]))]
     gap = 2 if sum(widths) + 2 * len(widths) <= WIDTH else 1
-    lines = ((" " * gap).join(cell.ljust(w) for cell, w in zip(row, widths, strict=True)) for row in rows)
+    left = len(widths) if right_from is None else right_from
+    padded = ([f"{cell:{'<' if i < left else '>'}{widths[i]}}" for i, cell in enumerate(row)] for row in rows)
+    lines = map((" " * gap).join, padded)
     return "".join(f"  {line.rstrip()}\n" for line in lines)
+
+
+def figures_table(head: Sequence[Sequence[str]], rows: Sequence[Sequence[str]], *, first: int) -> str:
+    """A table whose columns from ``first`` on are figures: flush right, a mark standing behind its figure."""
+    marked = [any(row[i].endswith((_OUT, _AGREED)) for row in rows) for i in range(len(rows[0]))]
+    beside = [[_beside_marks(*pair) for pair in zip(row, marked, strict=True)] for row in rows]
+    return table([*head, *beside], right_from=first)
+
+
+def _beside_marks(cell: str, marked: bool) -> str:
+    return cell if not marked or cell.endswith((_OUT, _AGREED)) else f"{cell} "

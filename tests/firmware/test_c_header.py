@@ -260,3 +260,15 @@ def test_the_table_names_every_multiplied_coefficient() -> None:
     fields = re.findall(r"    float (\w+);", table.partition("}")[0])
     assert fields == ["section1_b0", "section1_b1", "section1_minus_a1", "section1_gain", "integral1_gain"]
     assert "(\n    roller_gap_state *state,\n    const roller_gap_coefficients *coefficients,\n    float input" in text
+
+
+def test_an_accepted_deviation_of_a_loop_says_the_margin_that_is_left() -> None:
+    check = {
+        **{"check": "loop phase margin", "of": "stored", "reference": 49.1, "obtained": 43.0, "difference": 6.1},
+        **{"tolerance": 5.0, "unit": "deg", "verdict": "out", "reason": ""},
+    }
+    entry = {"check": "loop phase margin", "difference": 6.1, "limit": Fraction(7), "unit": "deg"}
+    assert (
+        "Accepted deviations: - loop phase margin 43 deg, 6.1 deg less than the 49.1 deg of the continuous loop with "
+        "hold and delay, agreed up to 7 deg: short moves (ab)"
+    ) in said(servo(checks=(check,), accepted=(entry | {"because": "short moves", "by": "ab"},)))
