@@ -1,0 +1,532 @@
+"""Structures, before anything is rounded: which sums a sample is made of, with real coefficients.
+
+A layout says what each structure computes, in counts; how many bits its variables and coefficients get is decided in
+:mod:`realize.arithmetic.integer.quantize`. Each structure is one function from a parted pulse transfer function to a
+layout; adding a structure touches this module alone.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from fractions import Fraction
+from typing import NamedTuple
+
+from realize.algebra import polynomial as poly
+from realize.algebra.rounding import FLOAT64
+from realize.arithmetic.grouping import Factor, Group, Rest, degree, group, monic
+from realize.arithmetic.integer.program import INPUT
+from realize.arithmetic.realization import cascaded
+from realize.errors import Refused
+
+#: Bits to which roots are known here: a stored coefficient has 31, and slow poles crowd within 2**-60 of z = 1.
+_BITS = 256
+
+#: What a variable is kept in: a factor of products, or a sum twice as wide.
+SINGLE, DOUBLE = 1, 2
+
+#: A section's stored numbers in ascending powers of 1/z, ``a`` without its leading 1.
+Ratio = tuple[tuple[Fraction, ...], tuple[Fraction, ...]]
+
+
+class Addend(NamedTuple):
+    """``unit * multiple * variable``; without a name, ``unit`` is a power of two and nothing is multiplied.
+
+    ``unit`` is what is rounded, so that a ratio of small integers between two coefficients survives it.
+    """
+
+    name: str | None
+    unit: Fraction
+    variable: str
+    multiple: int = 1
+
+    @property
+    def value(self) -> Fraction:
+        """The coefficient."""
+        return self.unit * self.multiple
+
+
+class Equation(NamedTuple):
+    """``target = base + sum of addends``.
+
+    Attributes
+    ----------
+    target : str
+        Variable.
+    addends : tuple of Addend
+        Of the sum that is rounded.
+    words : int
+        :data:`SINGLE` or :data:`DOUBLE`.
+    base : str or None
+        Added unrounded.
+    top_of : str or None
+        The double word whose upper half the target is; then there are no addends.
+    shaped : bool
+        Whether what rounding discards is given back in the next sample.
+    """
+
+    target: str
+    addends: tuple[Addend, ...]
+    words: int = SINGLE
+    base: str | None = None
+    top_of: str | None = None
+    shaped: bool = False
+
+
+class Part(NamedTuple):
+    """One section.
+
+    Attributes
+    ----------
+    ratio : Ratio
+        What it is to be.
+    stored : callable
+        From the stored values of its coefficients by name to what it then is.
+    """
+
+    ratio: Ratio
+    stored: Callable[[Mapping[str, Fraction]], Ratio]
+
+
+class Layout(NamedTuple):
+    """The sums of a sample.
+
+    Attributes
+    ----------
+    structure : str
+        Name of the structure.
+    outputs : tuple of Equation
+        In order; what the command needs.
+    command : tuple of Addend
+        What the command is the sum of, but for the integral.
+    updates : tuple of Equation
+        In order.
+    moves : tuple of (str, str)
+        Target and source.
+    parts : tuple of Part
+        Sections, in the order of their numbers.
+    parallel : bool
+        Whether the sections stand beside each other; else one after the other.
+    """
+
+    structure: str
+    outputs: tuple[Equation, ...]
+    command: tuple[Addend, ...]
+    updates: tuple[Equation, ...]
+    moves: tuple[tuple[str, str], ...]
+    parts: tuple[Part, ...]
+    parallel: bool = False
+
+
+class Form(NamedTuple):
+    """One section's share: sums for its output, and for its states; ``kept`` where its output has a history."""
+
+    tops: tuple[Equation, ...]
+    output: tuple[Addend, ...]
+    kept: bool
+    shaped: bool
+    updates: tuple[Equation, ...]
+    moves: tuple[tuple[str, str], ...]
+    part: Part
+
+
+class Coefficients(NamedTuple):
+    """A section as real numbers: a gain, the monic numerator (delayed), and ``a``."""
+
+    gain: Fraction
+    numerator: tuple[Fraction, ...]
+    a: tuple[Fraction, ...]
+    fixed: bool
+    pair: tuple[Fraction, Fraction] | None
+
+    @property
+    def order(self) -> int:
+        """Of the section."""
+        return len(self.a)
+
+    @property
+    def b(self) -> tuple[Fraction, ...]:
+        """Numerator with its gain."""
+        return tuple(self.gain * c for c in self.numerator)
+
+
+def layouts(rest: Rest, structure: str, scales: Sequence[Fraction] | None = None) -> Layout:
+    """Lay out the rest of a pulse transfer function.
+
+    Parameters
+    ----------
+    rest : Rest
+        In counts of output per count of input.
+    structure : str
+        Key of :data:`STRUCTURES`.
+    scales : sequence of Fraction, optional
+        A factor for the numerator of each section, where numerators are chosen anew.
+
+    Raises
+    ------
+    Refused
+        When the structure does not suit the poles.
+    """
+    return STRUCTURES[structure](rest, scales)
+
+
+# ---------------------------------------------------------------- structures
+
+
+def cascade(rest: Rest, scales: Sequence[Fraction] | None) -> Layout:
+    """Sections in direct form I, one after the other."""
+    return _in_series("cascade", _sections(rest, scales), lambda k, s, source: _direct_form(k, s, source, shaped=False))
+
+
+def direct(rest: Rest, scales: Sequence[Fraction] | None) -> Layout:
+    """The whole rest as one section in direct form I."""
+    order = degree(rest.poles)
+    if order > 2:
+        raise Refused(
+            "[target] structure",
+            f"direct, although what is left beside the integral states has order {order}",
+            "direct up to order 2",
+            'structure = "cascade", or "auto"',
+        )
+    sections = [_coefficients(group(rest.poles, rest.zeros), rest.gain)] if rest.gain else []
+    scaled = _scaled(sections, scales)
+    return _in_series("direct", scaled, lambda k, s, source: _direct_form(k, s, source, shaped=False))
+
+
+def error_feedback(rest: Rest, scales: Sequence[Fraction] | None) -> Layout:
+    """As cascade, but what a section's rounding discards is added back in the next sample."""
+    sections = _sections(rest, scales)
+    return _in_series("error-feedback", sections, lambda k, s, source: _direct_form(k, s, source, shaped=True))
+
+
+def delta(rest: Rest, scales: Sequence[Fraction] | None) -> Layout:
+    """Sections in the operator ``z - 1``: states twice as wide, which take up increments."""
+    return _in_series("delta", _sections(rest, scales), _delta_form)
+
+
+def normal(rest: Rest, scales: Sequence[Fraction] | None) -> Layout:
+    """Pairs of poles in normal (coupled) form, sections without one in direct form I."""
+    sections = _sections(rest, scales)
+    if not any(section.pair for section in sections):
+        raise Refused(
+            "[target] structure", "normal, without a pair of complex poles", "pairs", 'structure = "cascade", or "auto"'
+        )
+
+    def form(k: int, section: Coefficients, source: str) -> Form:
+        return _normal_form(k, section, source) if section.pair else _direct_form(k, section, source, shaped=False)
+
+    return _in_series("normal", sections, form)
+
+
+def parallel(rest: Rest, scales: Sequence[Fraction] | None) -> Layout:
+    """Partial fractions: sections in direct form I beside each other, and a direct gain."""
+    direct_gain, sections = _partial_fractions(rest)
+    forms = [_direct_form(k, section, INPUT, shaped=False) for k, section in enumerate(_scaled(sections, scales), 1)]
+    through = (Addend("direct_gain", direct_gain, INPUT),) if direct_gain else ()
+    outputs = tuple(equation for k, form in enumerate(forms, 1) for equation in _output(k, form))
+    return Layout(
+        "parallel",
+        outputs,
+        (*through, *(Addend(None, Fraction(1), f"section{k}_output") for k in range(1, len(forms) + 1))),
+        (),
+        _histories([(INPUT, max((s.order for s in sections), default=0)), *_own_histories(sections)]),
+        tuple(form.part for form in forms),
+        parallel=True,
+    )
+
+
+STRUCTURES: dict[str, Callable[[Rest, Sequence[Fraction] | None], Layout]] = {
+    "direct": direct,
+    "cascade": cascade,
+    "error-feedback": error_feedback,
+    "delta": delta,
+    "normal": normal,
+    "parallel": parallel,
+}
+
+
+def _in_series(name: str, sections: Sequence[Coefficients], form: Callable[[int, Coefficients, str], Form]) -> Layout:
+    outputs: list[Equation] = []
+    updates: list[Equation] = []
+    moves: list[tuple[str, str]] = []
+    parts: list[Part] = []
+    source = INPUT
+    command: tuple[Addend, ...] = ()
+    for k, section in enumerate(sections, 1):
+        made = form(k, section, source)
+        last = k == len(sections) and not made.kept
+        outputs += made.tops if last else _output(k, made)
+        command = made.output if last else (Addend(None, Fraction(1), f"section{k}_output"),)
+        updates += made.updates
+        moves += made.moves
+        parts.append(made.part)
+        source = f"section{k}_output"
+    return Layout(name, tuple(outputs), command, tuple(updates), _deepest(moves), tuple(parts))
+
+
+def _output(k: int, form: Form) -> tuple[Equation, ...]:
+    return (*form.tops, Equation(f"section{k}_output", form.output, shaped=form.shaped))
+
+
+# ---------------------------------------------------------------- forms of a section
+
+
+def _direct_form(k: int, section: Coefficients, source: str, *, shaped: bool) -> Form:
+    """``y = sum b x - sum a y``; the input's history is that of the section before."""
+    output = f"section{k}_output"
+    forward = [_forward(f"section{k}_b{i}", section, i, _past(source, i)) for i in range(section.order + 1)]
+    back = [_addend(f"section{k}_a{i}", -a, _past(output, i)) for i, a in enumerate(section.a, 1)]
+
+    def stored(values: Mapping[str, Fraction]) -> Ratio:
+        b = tuple(values.get(f"section{k}_b{i}", c) for i, c in enumerate(section.b))
+        return b, tuple(-values.get(f"section{k}_a{i}", -a) for i, a in enumerate(section.a, 1))
+
+    return Form(
+        (),
+        _nonzero((*forward, *back)),
+        kept=section.order > 0,
+        shaped=shaped and section.order > 0,
+        updates=(),
+        moves=_histories([(source, section.order), (output, section.order)]),
+        part=Part((section.b, section.a), stored),
+    )
+
+
+def _forward(name: str, section: Coefficients, i: int, variable: str) -> Addend:
+    """Where all zeros lie on z = 1 or -1, the gain alone is rounded, and they stay."""
+    c = section.numerator[i]
+    if section.fixed and c and _is_multiplied(section.gain):
+        return Addend(name, section.gain, variable, int(c))
+    return _addend(name, section.b[i], variable)
+
+
+def _delta_form(k: int, section: Coefficients, source: str) -> Form:
+    """``w1 += x - a1 w1 - a2 w2; w2 += w1; y = d x + c1 w1 + c2 w2``, the factors being upper halves of the states.
+
+    Notes
+    -----
+    With ``A(z) = delta^2 + a1 delta + a2`` in ``delta = z - 1`` (Middleton & Goodwin 1990, from memory).
+    """
+    if section.order == 0:
+        return _direct_form(k, section, source, shaped=False)
+    a = _in_delta((Fraction(1), *section.a))[1:]
+    b = _in_delta(section.b)
+    c = tuple(b[i] - b[0] * a[i - 1] for i in range(1, len(b)))
+    states = [f"state.section{k}_{i}" for i in range(1, section.order + 1)]
+    tops = [f"section{k}_top{i}" for i in range(1, section.order + 1)]
+    output = (
+        _addend(f"section{k}_d", b[0], source),
+        *(_addend(f"section{k}_c{i}", c[i - 1], top) for i, top in enumerate(tops, 1)),
+    )
+    back = _nonzero([_addend(f"section{k}_a{i}", -a[i - 1], top) for i, top in enumerate(tops, 1)])
+    chain = [
+        Equation(states[i], (Addend(None, Fraction(1), states[i - 1]),), DOUBLE, base=states[i])
+        for i in range(section.order - 1, 0, -1)
+    ]
+    first = Equation(states[0], (Addend(None, Fraction(1), source), *back), DOUBLE, base=states[0])
+
+    def stored(values: Mapping[str, Fraction]) -> Ratio:
+        d = values.get(f"section{k}_d", b[0])
+        ai = tuple(-values.get(f"section{k}_a{i}", -x) for i, x in enumerate(a, 1))
+        ci = tuple(values.get(f"section{k}_c{i}", x) for i, x in enumerate(c, 1))
+        below = (Fraction(1), *ai)
+        above = (d, *(d * x + y for x, y in zip(ai, ci, strict=True)))
+        return _from_delta(above), _from_delta(below)[1:]
+
+    return Form(
+        tuple(Equation(top, (), top_of=state) for top, state in zip(tops, states, strict=True)),
+        _nonzero(output),
+        kept=False,
+        shaped=False,
+        updates=(*chain, first),
+        moves=(),
+        part=Part((section.b, section.a), stored),
+    )
+
+
+def _normal_form(k: int, section: Coefficients, source: str) -> Form:
+    """``x1' = s x1 + w x2; x2' = -w x1 + s x2 + u; y = d u + c1 x1 + c2 x2`` for the poles ``s +- jw``.
+
+    Notes
+    -----
+    With ``B = (0, 1)'``: ``adj(zI - A) B = (w, z - s)'``, so ``c1 = (n0 + n1 s)/w``, ``c2 = n1`` give ``n1 z + n0``.
+    """
+    assert section.pair is not None
+    s, w = section.pair
+    d = section.b[0]
+    n1, n0 = (b - d * a for b, a in zip(section.b[1:], section.a, strict=True))
+    one, two = f"state.section{k}_1", f"state.section{k}_2"
+    following = f"section{k}_next1"
+    c1 = (n0 + n1 * s) / w
+    output = (
+        _addend(f"section{k}_d", d, source),
+        _addend(f"section{k}_c1", c1, one),
+        _addend(f"section{k}_c2", n1, two),
+    )
+    turned = _nonzero([_addend(f"section{k}_s", s, one), _addend(f"section{k}_w", w, two)])
+    driven = _nonzero([_addend(f"section{k}_w", w, one, -1), _addend(f"section{k}_s", s, two)])
+
+    def stored(values: Mapping[str, Fraction]) -> Ratio:
+        d_, c1_, c2_, s_, w_ = (
+            values.get(f"section{k}_{name}", given)
+            for name, given in (("d", d), ("c1", c1), ("c2", n1), ("s", s), ("w", w))
+        )
+        a = (-2 * s_, s_ * s_ + w_ * w_)
+        return (d_, d_ * a[0] + c2_, d_ * a[1] + c1_ * w_ - c2_ * s_), a
+
+    return Form(
+        (),
+        _nonzero(output),
+        kept=False,
+        shaped=False,
+        updates=(Equation(following, turned), Equation(two, (*driven, Addend(None, Fraction(1), source)))),
+        moves=((one, following),),
+        part=Part((section.b, section.a), stored),
+    )
+
+
+def _addend(name: str, value: Fraction, variable: str, multiple: int = 1) -> Addend:
+    """A coefficient times a variable; a power of two is not multiplied."""
+    if value and not _is_multiplied(value):
+        return Addend(None, abs(value), variable, multiple if value > 0 else -multiple)
+    return Addend(name, value, variable, multiple)
+
+
+def _is_multiplied(value: Fraction) -> bool:
+    """Whether it is not a power of two, nor minus one."""
+    return any(n & (n - 1) for n in (abs(value.numerator), value.denominator))
+
+
+def _nonzero(addends: Sequence[Addend]) -> tuple[Addend, ...]:
+    return tuple(addend for addend in addends if addend.value)
+
+
+def _past(signal: str, i: int) -> str:
+    return f"state.{signal}_{i}" if i else signal
+
+
+def _histories(depths: Sequence[tuple[str, int]]) -> tuple[tuple[str, str], ...]:
+    """Copies that move histories on, the oldest first."""
+    return tuple((f"state.{signal}_{i}", _past(signal, i - 1)) for signal, depth in depths for i in range(depth, 0, -1))
+
+
+def _own_histories(sections: Sequence[Coefficients]) -> list[tuple[str, int]]:
+    return [(f"section{k}_output", section.order) for k, section in enumerate(sections, 1)]
+
+
+def _deepest(moves: Sequence[tuple[str, str]]) -> tuple[tuple[str, str], ...]:
+    """Every move once; where sections share a history, the older values first."""
+    ordered = sorted(dict.fromkeys(moves), key=lambda move: _age(move[0]), reverse=True)
+    return tuple(ordered)
+
+
+def _age(name: str) -> int:
+    return int(name.rsplit("_", 1)[1])
+
+
+def _in_delta(p: Sequence[Fraction]) -> tuple[Fraction, ...]:
+    """Coefficients of a polynomial in descending powers of z, in those of ``z - 1``, equally many."""
+    return _padded(poly.shift(tuple(p), Fraction(1)), len(p))
+
+
+def _from_delta(p: Sequence[Fraction]) -> tuple[Fraction, ...]:
+    return _padded(poly.shift(tuple(p), Fraction(-1)), len(p))
+
+
+def _padded(p: Sequence[Fraction], length: int) -> tuple[Fraction, ...]:
+    return (*(Fraction(0),) * (length - len(p)), *p)
+
+
+# ---------------------------------------------------------------- real coefficients
+
+
+def _sections(rest: Rest, scales: Sequence[Fraction] | None) -> list[Coefficients]:
+    sections = [_coefficients(each, gain) for each, gain in cascaded(rest, FLOAT64)]
+    return _scaled(sections, scales)
+
+
+def _scaled(sections: list[Coefficients], scales: Sequence[Fraction] | None) -> list[Coefficients]:
+    factors = scales or [Fraction(1)] * len(sections)
+    return [s._replace(gain=s.gain * factor) for s, factor in zip(sections, factors, strict=True)]
+
+
+def _coefficients(each: Group, gain: Fraction) -> Coefficients:
+    order = each.order
+    numerator = (*(Fraction(0),) * each.delays, *_rational(each.zeros))
+    a = _rational(each.poles)[1:]
+    return Coefficients(
+        gain,
+        numerator + (Fraction(0),) * (order + 1 - len(numerator)),
+        a + (Fraction(0),) * (order - len(a)),
+        all(zero.is_fixed for zero in each.zeros),
+        _pair(each.poles) if order == 2 else None,
+    )
+
+
+def _pair(poles: tuple[Factor, ...]) -> tuple[Fraction, Fraction] | None:
+    return _place(poles[0]) if len(poles) == 1 and poles[0].degree == 2 else None
+
+
+def _place(pole: Factor) -> tuple[Fraction, Fraction]:
+    """Real and imaginary part of a pole in z."""
+    re, im, _ = pole.root.enclosure(_BITS)
+    return 1 + Fraction(re, 1 << _BITS), Fraction(im, 1 << _BITS)
+
+
+def _rational(factors: tuple[Factor, ...]) -> tuple[Fraction, ...]:
+    """Their product in ascending powers of 1/z, to :data:`_BITS` bits."""
+    return tuple(monic(factors, _BITS).midpoints())
+
+
+def _partial_fractions(rest: Rest) -> tuple[Fraction, list[Coefficients]]:
+    """``rest = direct + sum of (n1 z + n0)/(z^2 + a1 z + a2)`` and first-order parts.
+
+    Raises
+    ------
+    Refused
+        When a pole is repeated.
+    """
+    if any(pole.root.multiplicity > 1 for pole in rest.poles):
+        raise Refused(
+            "[target] structure", "parallel, with a repeated pole", "simple poles", 'structure = "cascade", or "auto"'
+        )
+    whole = poly.scale(_rational(rest.zeros), rest.gain)
+    below = [_rational((pole,)) for pole in rest.poles]
+    direct_gain = whole[0] if len(whole) == sum(len(p) - 1 for p in below) + 1 else Fraction(0)
+    sections = []
+    for i, pole in enumerate(rest.poles):
+        others: poly.Rationals = (Fraction(1),)
+        for j, p in enumerate(below):
+            others = poly.multiply(others, p) if j != i else others
+        numerator = _residue(whole, others, below[i], pole)
+        a = below[i][1:]
+        sections.append(Coefficients(Fraction(1), (Fraction(0), *_padded(numerator, len(a))), a, False, None))
+    return direct_gain, sections
+
+
+def _residue(
+    whole: Sequence[Fraction], others: Sequence[Fraction], own: Sequence[Fraction], pole: Factor
+) -> tuple[Fraction, ...]:
+    """Numerator over ``own`` that agrees with ``whole/others`` at its roots: of degree below that of ``own``."""
+    re, im = _place(pole)
+    value = _divided(_at(whole, re, im), _at(others, re, im))
+    if pole.degree == 1:
+        return (value[0],)
+    slope = value[1] / im
+    return slope, value[0] - slope * re
+
+
+def _at(p: Sequence[Fraction], re: Fraction, im: Fraction) -> tuple[Fraction, Fraction]:
+    x = y = Fraction(0)
+    for c in p:
+        x, y = _cut(x * re - y * im + c), _cut(x * im + y * re)
+    return x, y
+
+
+def _divided(a: tuple[Fraction, Fraction], b: tuple[Fraction, Fraction]) -> tuple[Fraction, Fraction]:
+    size = b[0] * b[0] + b[1] * b[1]
+    return (a[0] * b[0] + a[1] * b[1]) / size, (a[1] * b[0] - a[0] * b[1]) / size
+
+
+def _cut(value: Fraction) -> Fraction:
+    """To twice the bits the roots are known to."""
+    return Fraction(value.numerator << 2 * _BITS, value.denominator).__floor__() * Fraction(1, 1 << 2 * _BITS)
