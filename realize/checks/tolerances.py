@@ -54,6 +54,13 @@ DEFAULTS: Mapping[str, Default] = MappingProxyType(
         "converter_step": Default(
             "converter step", "%", Fraction(5), "twenty counts of noise would take the output across its whole range"
         ),
+        "round_off": Default(
+            "round-off",
+            "%",
+            Fraction(1),
+            "as much of the range as the step may deviate by; integer arithmetic only, and more where half a count of "
+            "input alone can do more",
+        ),
     }
 )
 

@@ -30,6 +30,13 @@ METHODS = (
 #: Methods that know about the loop, in the order of their table in the README.
 LOOP_METHODS = ("frequency-fit", "plant-input-mapped")
 
+#: Structures in floating point, and in integers.
+FLOAT_STRUCTURES = ("direct", "cascade")
+INTEGER_STRUCTURES = ("direct", "cascade", "error-feedback", "delta", "normal", "parallel")
+
+#: C types of counts, at the interface of integer arithmetic.
+COUNT_TYPES = ("int8", "uint8", "int16", "uint16", "int32", "uint32")
+
 #: Every check by name, with the unit its deviation is measured in; ``None`` where it has no figure.
 CHECK_UNITS: Mapping[str, str | None] = MappingProxyType(
     {
@@ -43,6 +50,7 @@ CHECK_UNITS: Mapping[str, str | None] = MappingProxyType(
         "step overshoot": "%",
         "converter step": "%",
         "saturation recovery": "%",
+        "round-off": "%",
         "loop stability": None,
         "loop phase margin": "deg",
         "loop sensitivity": "",
@@ -61,6 +69,7 @@ TOLERANCE_KEYS: Mapping[str, str] = MappingProxyType(
         "step_deviation": "%",
         "step_overshoot": "%",
         "converter_step": "%",
+        "round_off": "%",
         "loop_phase_margin_loss": "deg",
         "loop_phase_margin_least": "deg",
         "loop_sensitivity_most": "",

@@ -21,7 +21,10 @@ from realize.design.gate import (
 )
 from realize.design.model import (
     CHECK_UNITS,
+    COUNT_TYPES,
     DEFAULT_TARGET,
+    FLOAT_STRUCTURES,
+    INTEGER_STRUCTURES,
     LOOP_METHODS,
     METHODS,
     TOLERANCE_KEYS,
@@ -206,11 +209,9 @@ def read_target(table: Table) -> Target:
     default = DEFAULT_TARGET
     table.only(_TARGET_KEYS)
     arithmetic = table.choice("arithmetic", ("float32", "float64", *_INTEGER_TYPES), default.arithmetic)
-    if arithmetic in _INTEGER_TYPES:
-        raise not_yet(table.where("arithmetic"), f"{arithmetic} arithmetic", "float32, float64")
     target = Target(
         arithmetic=arithmetic,
-        structure=table.choice("structure", ("auto", "direct", "cascade"), default.structure),
+        structure=table.choice("structure", _structures(arithmetic), default.structure),
         coefficients=table.choice("coefficients", ("inline", "table"), default.coefficients),
         recursion_sign=table.choice("recursion_sign", ("subtract", "add"), default.recursion_sign),
         anti_windup=table.choice("anti_windup", ("hold-integral", "back-calculation", "none"), default.anti_windup),
@@ -219,6 +220,10 @@ def read_target(table: Table) -> Target:
     )
     _check_tracking_time(table, target)
     return target
+
+
+def _structures(arithmetic: str) -> tuple[str, ...]:
+    return ("auto", *(INTEGER_STRUCTURES if arithmetic in _INTEGER_TYPES else FLOAT_STRUCTURES))
 
 
 def read_signals(table: Table, target: Target) -> tuple[Signal, Signal]:
@@ -375,13 +380,20 @@ def _range_end(value: object, where: str) -> Fraction:
 
 
 def _signal_type(table: Table, target: Target) -> str | None:
-    """The C type at the interface, which in floating point is that of the arithmetic."""
+    """The C type at the interface: of counts in integer arithmetic, else that of the arithmetic."""
     if "type" not in table:
         return None
-    name = table.choice("type", (*_FLOAT_TYPES, *_INTEGER_TYPES), target.arithmetic)
-    if name in _INTEGER_TYPES:
-        raise not_yet(table.where("type"), f"the type {name}", f"the type of the arithmetic, {target.arithmetic}")
-    if _FLOAT_TYPES[name] != target.arithmetic:
+    name = table.choice("type", (*_FLOAT_TYPES, *COUNT_TYPES), target.arithmetic)
+    if target.arithmetic in _INTEGER_TYPES and name in COUNT_TYPES:
+        return name
+    if target.arithmetic in _INTEGER_TYPES:
+        raise table.error(
+            "type",
+            f"{name}, with {target.arithmetic} arithmetic",
+            "a type of counts: " + ", ".join(COUNT_TYPES),
+            "name the type of the converter, or change arithmetic under [target]",
+        )
+    if _FLOAT_TYPES.get(name) != target.arithmetic:
         raise table.error(
             "type",
             f"{name}, with {target.arithmetic} arithmetic",

@@ -9,10 +9,12 @@ from fractions import Fraction
 from typing import TYPE_CHECKING, Any
 
 from realize.algebra.expression import decimal_text
+from realize.arithmetic.realization import Realization
 from realize.band import frequency_text
 from realize.checks import Check
 from realize.design import Accept, Design, Signal
 from realize.design.record import exact_entries, exact_entry
+from realize.errors import Refused
 from realize.firmware.c_text import number_text
 from realize.firmware.emission import Emission
 from realize.firmware.record import FIGURE_DIGITS
@@ -71,7 +73,8 @@ def emit(design: Design) -> Emitted:
 
 def _emission(comparison: Comparison, chosen: MethodResult) -> Emission:
     design, target = comparison.design, comparison.design.target
-    assert chosen.realization is not None
+    if not isinstance(chosen.realization, Realization):
+        raise Refused("[target] arithmetic", "integers, whose C is not written yet", "float32, float64", "use float32")
     return Emission(
         name=design.name,
         realization=chosen.realization,

@@ -151,8 +151,8 @@ def _coefficients(result: MethodResult) -> Document:
     return {
         "numerator": list(numerator),
         "denominator": list(denominator),
-        "integral": list(result.realization.integral),
-        "sections": [{"b": list(s.b), "a": list(s.a)} for s in result.realization.sections],
+        "integral": [float(gain) for gain in result.realization.integral],
+        "sections": [{"b": [float(b) for b in s.b], "a": [float(a) for a in s.a]} for s in result.realization.sections],
         "structure": result.realization.structure,
     }
 

@@ -47,6 +47,7 @@ _COLUMNS = (
     ("step deviation", ("step", "deviates", "%")),
     ("step overshoot", ("step", "overshoot", "points")),
     ("converter step", ("converter", "step", "%")),
+    ("round-off", ("round-", "off", "%")),
 )
 
 #: Checks without a column, named in words where they are out.
@@ -148,7 +149,8 @@ def emit_text(comparison: Comparison, chosen: MethodResult, paths: Sequence[str]
     """The screen of `realize emit`."""
     design = comparison.design
     assert chosen.realization is not None
-    reason = comparison.because if design.method == "auto" else "named in the design, every check passed"
+    kept = "but for what is agreed" if chosen.accepted else "every check passed"
+    reason = comparison.because if design.method == "auto" else f"named in the design, {kept}"
     first = f"yes: {design.name} is emitted by {chosen.method}: {reason}"
     what = (
         f"{chosen.realization.structure} structure in {design.target.arithmetic}, "
@@ -297,15 +299,22 @@ def _setting(comparison: Comparison) -> str:
 
 
 def _methods_table(methods: Sequence[MethodResult]) -> str:
-    head = [["", "method", *(words[i] for _, words in _COLUMNS)] for i in range(3)]
+    columns = _columns(methods)
+    head = [["", "method", *(words[i] for _, words in columns)] for i in range(3)]
     head[1][:2] = head[2][:2] = ["", ""]
-    rows = [[_good(m), m.method, *(_cell(m, name) for name, _ in _COLUMNS)] for m in methods]
+    rows = [[_good(m), m.method, *(_cell(m, name) for name, _ in columns)] for m in methods]
     lines = figures_table(head, [_tolerance_row(methods), *rows], first=2)
     key = (
         "Each figure is the difference between the stored numbers and the design; ! is out of tolerance, "
         "* out but accepted, - undefined (which does not block)."
     )
     return lines + wrapped(key) + bullets(_out_without_column(methods))
+
+
+def _columns(methods: Sequence[MethodResult]) -> tuple[tuple[str, tuple[str, str, str]], ...]:
+    """Checks with a column: those of integer arithmetic where there is any."""
+    made = {check.check for method in methods for check in method.checks}
+    return tuple(column for column in _COLUMNS if column[0] in made or column[0] != "round-off")
 
 
 def _loops_table(comparison: Comparison) -> str:
@@ -426,7 +435,7 @@ def _good(method: MethodResult) -> str:
 
 def _tolerance_row(methods: Sequence[MethodResult]) -> list[str]:
     tolerances = {c.check: c.tolerance for m in methods for c in m.stored_checks if c.tolerance is not None}
-    return ["", "(tolerance)", *(_figure(tolerances.get(name)) for name, _ in _COLUMNS)]
+    return ["", "(tolerance)", *(_figure(tolerances.get(name)) for name, _ in _columns(methods))]
 
 
 def _cell(method: MethodResult, name: str) -> str:

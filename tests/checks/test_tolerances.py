@@ -16,6 +16,7 @@ STATED = {
     "step_deviation": ("%", "1"),
     "step_overshoot": ("%", "1"),
     "converter_step": ("%", "5"),
+    "round_off": ("%", "1"),
 }
 
 

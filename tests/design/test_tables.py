@@ -21,6 +21,7 @@ from realize.design import (
     design_from_text,
     require_period,
 )
+from realize.design.model import INTEGER_STRUCTURES
 from realize.errors import RealizeError
 
 F = Fraction
@@ -416,20 +417,34 @@ def test_what_c_or_a_file_system_would_trip_over_is_no_name(name: str) -> None:
     assert "C identifier" in caught.value.allowed
 
 
-@pytest.mark.parametrize(
-    ("text", "where"),
-    [
-        ('[target]\narithmetic = "int16"', "[target] arithmetic"),
-        ('[target]\narithmetic = "int32"', "[target] arithmetic"),
-        ('[signals.input]\ntype = "int16"', "[signals.input] type"),
-        ("[schedule]", "[schedule]"),
-    ],
-)
-def test_what_is_planned_is_answered_and_never_ignored(text: str, where: str) -> None:
-    error = refusal(text)
-    assert error.where == f"servo.toml, {where}"
+def test_what_is_planned_is_answered_and_never_ignored() -> None:
+    error = refusal("[schedule]")
+    assert error.where == "servo.toml, [schedule]"
     assert "not supported yet" in error.found
     assert error.advice == "remove it for now"
+
+
+@pytest.mark.parametrize("arithmetic", ["int16", "int32"])
+@pytest.mark.parametrize("structure", INTEGER_STRUCTURES)
+def test_every_structure_of_integers_can_be_named_with_the_type_of_a_converter(arithmetic: str, structure: str) -> None:
+    design = read(f'[target]\narithmetic = "{arithmetic}"\nstructure = "{structure}"\n[signals.input]\ntype = "uint16"')
+    assert (design.target.arithmetic, design.target.structure) == (arithmetic, structure)
+    assert (design.input.type, design.output.type) == ("uint16", None)
+
+
+@pytest.mark.parametrize(
+    ("text", "key", "found"),
+    [
+        ('[target]\narithmetic = "float32"\nstructure = "delta"', "structure", "delta"),
+        ('[target]\narithmetic = "int16"\nstructure = "lattice"', "structure", "lattice"),
+        ('[signals.input]\ntype = "int16"', "type", "int16, with float32 arithmetic"),
+        ('[target]\narithmetic = "int16"\n[signals.output]\ntype = "float"', "type", "float, with int16 arithmetic"),
+    ],
+)
+def test_a_structure_or_type_of_another_arithmetic_is_refused(text: str, key: str, found: str) -> None:
+    error = refusal(text)
+    assert error.where.endswith(key)
+    assert found in error.found
 
 
 @pytest.mark.parametrize("text", ["", 'name = "auto"\n', 'name = "bilinear-prewarped"\n'])

@@ -4,6 +4,7 @@ The way of the data: ``interface`` (counts) and ``layout`` (structures, unrounde
 ``program`` (the steps of a sample); ``proof`` bounds it, ``model`` runs it bit for bit, ``realization`` is the whole.
 """
 
+from realize.arithmetic.integer.choice import StructureChoice, choices
 from realize.arithmetic.integer.interface import Interface, Port, interface_of
 from realize.arithmetic.integer.layout import STRUCTURES
 from realize.arithmetic.integer.model import IntegerRecursion
@@ -22,7 +23,9 @@ __all__ = [
     "IntegerRecursion",
     "Interface",
     "Port",
+    "StructureChoice",
     "Widths",
+    "choices",
     "integer_realization",
     "interface_of",
     "stored_integer_pulse",

@@ -32,6 +32,13 @@ class Widths(NamedTuple):
     accumulator_bits: int
 
 
+class StoredSection(NamedTuple):
+    """A section as stored, exactly: ascending powers of 1/z, ``a`` without its leading 1."""
+
+    b: tuple[Fraction, ...]
+    a: tuple[Fraction, ...]
+
+
 @dataclass(frozen=True)
 class IntegerRealization:
     """What the firmware stores, with its proofs.
@@ -63,8 +70,8 @@ class IntegerRealization:
     period_s: Fraction
 
     @property
-    def sections(self) -> tuple[Ratio, ...]:
-        """``(b, a)`` of each section as stored, in counts: ascending powers of 1/z, ``a`` without its leading 1."""
+    def sections(self) -> tuple[StoredSection, ...]:
+        """Each section as stored, in counts."""
         return _stored_sections(self.layout, self.program)
 
     @property
@@ -256,9 +263,9 @@ def _gain_error(wanted: Layout, layout: Layout, program: Program) -> Fraction:
     return worst
 
 
-def _stored_sections(layout: Layout, program: Program) -> tuple[Ratio, ...]:
+def _stored_sections(layout: Layout, program: Program) -> tuple[StoredSection, ...]:
     values = {name: term.value for name, term in program.coefficients.items()}
-    return tuple(part.stored(values) for part in layout.parts)
+    return tuple(StoredSection(*part.stored(values)) for part in layout.parts)
 
 
 def _direct_gain(layout: Layout, program: Program) -> Fraction:

@@ -1,0 +1,237 @@
+"""The numbers that a target stores, with their checks.
+
+Floats have one way of being stored that suits a design. Integers have several, which differ in cost and in what
+rounding does: they are tried from the cheapest on.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import replace
+from fractions import Fraction
+from typing import TYPE_CHECKING, NamedTuple
+
+from realize.arithmetic.formats import FORMATS
+from realize.arithmetic.peak_gain import peak_gain
+from realize.arithmetic.realization import Realization, realization, stored_pulse
+from realize.arithmetic.recursion import Recursion
+from realize.arithmetic.sample import HOLD_INTEGRAL
+from realize.checks import Check, ContinuousReference, Tolerances, run_checks
+from realize.checks.round_off import check_round_off
+from realize.design import Design
+from realize.errors import Refused
+from realize.transfer import PulseTransferFunction, TransferFunction
+from realize.workflow.causal import signals_of
+from realize.workflow.gate import gate
+
+if TYPE_CHECKING:
+    from realize.arithmetic.integer import IntegerRealization, Interface, StructureChoice
+
+#: Relative width of a peak gain that a tolerance is compared with.
+_GAIN_WIDTH = Fraction(1, 1 << 10)
+
+Simulation = Callable[[Sequence[float]], list[float]]
+
+
+class Stored(NamedTuple):
+    """What a target stores.
+
+    Attributes
+    ----------
+    realization : Realization or IntegerRealization
+        The numbers.
+    pulse : PulseTransferFunction
+        What they are, exactly, in physical units.
+    checks : tuple of Check
+        Of them, those of the loop apart.
+    note : str
+        Why this structure; empty where there is no choice.
+    """
+
+    realization: Realization | IntegerRealization
+    pulse: PulseTransferFunction
+    checks: tuple[Check, ...]
+    note: str = ""
+
+
+def stored_numbers(design: Design, reference: ContinuousReference, pulse: PulseTransferFunction) -> Stored:
+    """Round a pulse transfer function to the design's target, and check what is stored.
+
+    Parameters
+    ----------
+    design : Design
+        With its target, signals, tolerances and agreed deviations.
+    reference : ContinuousReference
+        What the checks compare with.
+    pulse : PulseTransferFunction
+        ``Gd(z)``, unrounded.
+
+    Raises
+    ------
+    Refused
+        When the target cannot hold it.
+    RealizeError
+        When an integer target lacks the ranges or sizes of its signals.
+    """
+    if design.target.arithmetic not in FORMATS:
+        return _integers(design, reference, pulse)
+    stored = realization(pulse, FORMATS[design.target.arithmetic], design.target.structure)
+    as_stored = stored_pulse(stored)
+    return Stored(stored, as_stored, _checks(design, reference, as_stored, lambda: _float_simulation(design, stored)))
+
+
+def _integers(design: Design, reference: ContinuousReference, pulse: PulseTransferFunction) -> Stored:
+    """The cheapest structure that is within every tolerance; without one, the first that is least out."""
+    # Here, because a design in floating point does not need it, and its start is short.
+    from realize.arithmetic.integer import choices, interface_of
+
+    interface = interface_of(design.input, design.output, design.target.arithmetic)
+    tried: list[tuple[str, Stored, tuple[Check, ...]]] = []
+    refusals: dict[str, Refused] = {}
+    for choice in choices(pulse, interface, design.target.arithmetic, design.target.structure, refusals):
+        try:
+            stored = integer_numbers(design, reference, pulse, interface, choice)
+        except Refused as refusal:
+            refusals.setdefault(choice.structure, refusal)
+            continue
+        blocking, _ = gate(stored.checks, design.accept)
+        if not blocking:
+            return stored._replace(note=_because(design, choice, tried, refusals))
+        tried.append((choice.structure, stored, blocking))
+    if not tried:
+        raise _none_does(design, refusals)
+    return min(tried, key=lambda entry: _out(entry[2]))[1]
+
+
+def integer_numbers(
+    design: Design,
+    reference: ContinuousReference,
+    pulse: PulseTransferFunction,
+    interface: Interface,
+    choice: StructureChoice,
+) -> Stored:
+    """One way of storing integers, with its checks.
+
+    Raises
+    ------
+    Refused
+        When its words cannot hold the design.
+    """
+    from realize.arithmetic.integer import integer_realization, stored_integer_pulse
+
+    target = design.target
+    tracking = pulse.period_s / target.tracking_time_s if target.tracking_time_s else Fraction(0)
+    hold = target.anti_windup == HOLD_INTEGRAL
+    stored = integer_realization(pulse, interface, choice.widths, choice.structure, hold=hold, tracking=tracking)
+    as_stored = stored_integer_pulse(stored)
+    checks = _checks(design, reference, as_stored, lambda: _integer_simulation(stored))
+    return Stored(stored, as_stored, (*checks, _round_off(design, stored)))
+
+
+def _round_off(design: Design, stored: IntegerRealization) -> Check:
+    """The proven bound beside what half a count of input can do by itself."""
+    port, proof = stored.program.interface.output, stored.proof
+    gain = peak_gain(proof.transfer, _GAIN_WIDTH).high
+    assert gain is not None
+    return check_round_off(
+        Tolerances.of(design.tolerance), proof.output_error, gain / 2, Fraction(port.high - port.low)
+    )
+
+
+def _because(
+    design: Design,
+    choice: StructureChoice,
+    tried: Sequence[tuple[str, Stored, tuple[Check, ...]]],
+    refusals: Mapping[str, Refused],
+) -> str:
+    """Why a structure was taken."""
+    cost = f"{choice.multiplications} multiplications and {choice.state_bytes} bytes of state beside the integral"
+    chosen = f"structure {choice.structure}: {cost}"
+    if design.target.structure != "auto":
+        return chosen
+    cheaper = [f"{name} ({', '.join(dict.fromkeys(c.check for c in out))} out)" for name, _, out in tried]
+    left = dict.fromkeys([*cheaper, *(f"{name} (refused)" for name in refusals)])
+    others = f"; not {', '.join(left)}" if left else ""
+    return f"{chosen}, the cheapest that is within every tolerance{others}"
+
+
+def _none_does(design: Design, refusals: Mapping[str, Refused]) -> Refused:
+    """One refusal from those of all structures, the reasons that differ in full."""
+    reasons = list(dict.fromkeys(refusal.found for refusal in refusals.values()))
+    first = next(iter(refusals.values()))
+    if len(reasons) == 1:
+        return first
+    return Refused(
+        "[target] arithmetic",
+        f"{design.target.arithmetic} does not hold this design in any structure: {'; '.join(reasons)}",
+        "words that hold signals and coefficients",
+        "use int32 or float32, a lower sample rate, or a coarser per_count",
+    )
+
+
+def _out(blocking: Sequence[Check]) -> tuple[int, float]:
+    """How far out: failures without a figure first, then the worst ratio."""
+    ratios = [c.difference / c.tolerance for c in blocking if c.difference is not None and c.tolerance]
+    return len(blocking) - len(ratios), max(ratios, default=0.0)
+
+
+# ---------------------------------------------------------------- checks
+
+
+def _checks(
+    design: Design,
+    reference: ContinuousReference,
+    as_stored: PulseTransferFunction,
+    simulation: Callable[[], Simulation],
+) -> tuple[Check, ...]:
+    """Checks of the stored numbers."""
+    signals, tolerances = signals_of(design), Tolerances.of(design.tolerance)
+    simulate = simulation() if signals.output_range else None
+    checks = run_checks(reference, as_stored, "stored", tolerances, signals, simulate=simulate)
+    return _with_added_growth(checks, reference.transfer, as_stored)
+
+
+def _with_added_growth(
+    checks: tuple[Check, ...], transfer: TransferFunction, stored: PulseTransferFunction
+) -> tuple[Check, ...]:
+    """Mark the stability check where the stored numbers have more growing poles than the design."""
+    own = sum(root.count for root in transfer.poles if root.value.real > 0)
+    # |z|^2 - 1 from z - 1, which keeps its digits next to the circle.
+    growing = [r for r in stored.poles if 2 * r.value.real + abs(r.value) ** 2 > 0]
+    if sum(root.count for root in growing) <= own:
+        return checks
+    farthest = max(growing, key=lambda root: abs(1 + root.value))
+    at = 1 + farthest.value
+    reason = f"the stored numbers have a growing pole that the design does not have; the farthest is z = {at:.5g}"
+    return tuple(
+        replace(c, difference=2.0, reason=reason, verdict="out") if c.check == "stability" and c.of == "stored" else c
+        for c in checks
+    )
+
+
+def _float_simulation(design: Design, stored: Realization) -> Simulation:
+    """The emitted recursion, cleared before each run."""
+    target = design.target
+    model = Recursion(stored, design.output.range, target.anti_windup, target.tracking_time_s, target.guard_nonfinite)
+
+    def run(inputs: Sequence[float]) -> list[float]:
+        model.clear()
+        return model.run(inputs)
+
+    return run
+
+
+def _integer_simulation(stored: IntegerRealization) -> Simulation:
+    """The emitted recursion between converters: physical values in and out, cleared before each run."""
+    from realize.arithmetic.integer import IntegerRecursion
+
+    model = IntegerRecursion(stored.program)
+    incoming, outgoing = stored.program.interface
+    size_in, size_out = float(incoming.per_count), float(outgoing.per_count)
+
+    def run(inputs: Sequence[float]) -> list[float]:
+        model.clear()
+        counts = [min(max(round(value / size_in), incoming.low), incoming.high) + incoming.offset for value in inputs]
+        return [(count - outgoing.offset) * size_out for count in model.run(counts)]
+
+    return run
