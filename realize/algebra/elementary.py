@@ -11,10 +11,6 @@ from math import isqrt
 from realize.algebra.enclosure import reciprocal
 from realize.algebra.roots import Disc
 
-#: The argument of the series is brought below ``2**-_SERIES_BITS``: balances terms against squarings at the few
-#: hundred bits in common use.
-_SERIES_BITS = 8
-
 
 def exponential(z: Disc, bits: int) -> Disc:
     """Disc that holds ``exp`` of every point of a disc of radius below 1/2.
@@ -25,25 +21,40 @@ def exponential(z: Disc, bits: int) -> Disc:
     term, since ``|z / 2**j| < 1/2``. Then ``|exp(z + d) - exp(z)| <= 2 |exp z| |d|`` for ``|d| <= 1``.
     """
     re, im, rad = z
-    halvings = max(0, max(abs(re), abs(im)).bit_length() - bits + _SERIES_BITS + 1)
+    # As many bits a term as there are terms, and about as many squarings.
+    halvings = max(0, max(abs(re), abs(im)).bit_length() - bits + isqrt(bits) + 1)
     # Each squaring doubles the absolute error, and where the result grows the error grows with it.
     guard = 2 * halvings + 16
     work = bits + guard
     x, y = re << guard >> halvings, im << guard >> halvings
-    term, total, k = (1 << work, 0), (1 << work, 0), 0
-    while term[0] or term[1]:
-        k += 1
-        a, b = term[0] * x - term[1] * y >> work, term[0] * y + term[1] * x >> work
-        term = _toward_zero(a, k), _toward_zero(b, k)
-        total = total[0] + term[0], total[1] + term[1]
-    error = 4 * k + 4
+    (a, b), terms = _series(x, y, work) if y else _real_series(x, work)
+    error = 4 * terms + 4
     for _ in range(halvings):
-        size = _size(total) + error
-        a, b = total
-        total, error = (a * a - b * b >> work, 2 * a * b >> work), (2 * size * error >> work) + 4
-    spread = 2 * (_size(total) + error) * rad >> bits
-    radius = (error + spread >> guard) + 3
-    return total[0] >> guard, total[1] >> guard, radius
+        error = (2 * (abs(a) + abs(b) + error) * error >> work) + 4
+        a, b = a * a - b * b >> work, 2 * a * b >> work
+    spread = 2 * (isqrt(a * a + b * b) + 1 + error) * rad >> bits
+    return a >> guard, b >> guard, (error + spread >> guard) + 3
+
+
+def _series(x: int, y: int, bits: int) -> tuple[tuple[int, int], int]:
+    """Sum of the series of ``exp(x + i y)``, and the number of its terms."""
+    a, b = total_re, total_im = 1 << bits, 0
+    k = 0
+    while a or b:
+        k += 1
+        a, b = _toward_zero(a * x - b * y >> bits, k), _toward_zero(a * y + b * x >> bits, k)
+        total_re, total_im = total_re + a, total_im + b
+    return (total_re, total_im), k
+
+
+def _real_series(x: int, bits: int) -> tuple[tuple[int, int], int]:
+    a = total = 1 << bits
+    k = 0
+    while a:
+        k += 1
+        a = _toward_zero(a * x >> bits, k)
+        total += a
+    return (total, 0), k
 
 
 def tangent(angle: int, bits: int) -> tuple[int, int]:
@@ -57,10 +68,6 @@ def tangent(angle: int, bits: int) -> tuple[int, int]:
     cosine, sine, rad = exponential((0, angle, 1), bits)
     inverse, spread = reciprocal(cosine, rad, bits)
     return sine * inverse >> bits, (abs(sine) * spread + rad * (abs(inverse) + spread) >> bits) + 2
-
-
-def _size(z: tuple[int, int]) -> int:
-    return isqrt(z[0] * z[0] + z[1] * z[1]) + 1
 
 
 def _toward_zero(n: int, k: int) -> int:

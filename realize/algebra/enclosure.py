@@ -7,7 +7,7 @@ true value stays inside. An exact vector is one whose radii are 0.
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Container, Iterator, Sequence
 from fractions import Fraction
 from math import lcm
 from typing import Any
@@ -49,8 +49,10 @@ class Enclosure:
     def __len__(self) -> int:
         return len(self.mid)
 
-    def __getitem__(self, index: slice) -> Enclosure:
-        return Enclosure(self.mid[index], self.rad[index], self.bits, self.factor)
+    def without(self, left_out: Container[int]) -> Enclosure:
+        """The same vector without the entries at some indices."""
+        kept = [i for i in range(len(self)) if i not in left_out]
+        return Enclosure(self.mid[kept], self.rad[kept], self.bits, self.factor)
 
     def intervals(self) -> Iterator[tuple[int, int, int]]:
         """Both ends of each entry and the positive unit they are divided by."""
@@ -79,10 +81,6 @@ class Enclosure:
         self._like(other)
         return Enclosure(self.mid + other.mid, self.rad + other.rad, self.bits, self.factor)
 
-    def __sub__(self, other: Enclosure) -> Enclosure:
-        self._like(other)
-        return Enclosure(self.mid - other.mid, self.rad + other.rad, self.bits, self.factor)
-
     def convolve(self, other: Enclosure) -> Enclosure:
         """Product of two polynomials of the same ``bits``."""
         mid = np.convolve(self.mid, other.mid)
@@ -99,24 +97,6 @@ class Enclosure:
         product = self.mid * mid
         radius = abs(self.mid) * rad + self.rad * (abs(mid) + rad)
         return Enclosure(*_dropped(product, radius, self.bits), self.bits, self.factor)
-
-    def dot(self, other: Enclosure) -> tuple[int, int]:
-        """Midpoint and radius of the inner product, in units of ``2**-bits``, without the factors."""
-        mid = self.mid @ other.mid
-        rad = abs(self.mid) @ other.rad + self.rad @ (abs(other.mid) + other.rad)
-        return int(mid >> self.bits), int(rad >> self.bits) + 2
-
-    def divided(self, n: int) -> Enclosure:
-        """Quotient by a positive integer."""
-        return Enclosure(self.mid // n, self.rad // n + 2, self.bits, self.factor)
-
-    def halved(self, times: int) -> Enclosure:
-        """Quotient by ``2**times``."""
-        return Enclosure(*_dropped(self.mid, self.rad, times), self.bits, self.factor)
-
-    def widened(self, units: int) -> Enclosure:
-        """Add to every radius."""
-        return Enclosure(self.mid, self.rad + units, self.bits, self.factor)
 
     def entry(self, i: int) -> tuple[int, int]:
         """Midpoint and radius of one entry, without the factor."""

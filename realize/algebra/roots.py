@@ -27,6 +27,9 @@ _FIRST_BITS = 128
 #: spare; it is there so that an error in the code above it ends.
 _MOST_BITS = 1 << 17
 
+#: Bits beyond those asked for when a root is refined, so that a request for a few more is met at once.
+_SPARE_BITS = 64
+
 #: A double carries 53 bits; three more keep its last bit right to within one unit.
 _VALUE_BITS = 56
 
@@ -136,7 +139,7 @@ class _Factor:
         self.settled = False
         self._solve()
         while not self._settled():
-            self._double()
+            self._extend(2 * self.bits)
         self.settled = True
 
     @property
@@ -149,20 +152,22 @@ class _Factor:
         return [i for i in range(len(self.z)) if self._is_real(i) or self.z[i][1] > 0]
 
     def root(self, i: int, multiplicity: int) -> Root:
-        """The i-th root; it keeps this search alive to be refined later."""
-        return Root(self._value(i), multiplicity, partial(self.disc, i))
+        """The i-th root; it keeps this search alive to be refined later. On which axis it lies is settled for good."""
+        on_axis = self._on_axis(i)
+        return Root(self._value(i, on_axis), multiplicity, partial(self.disc, i, on_axis))
 
-    def _value(self, i: int) -> complex:
-        re, im = (0 if exact else c for c, exact in zip(self.z[i], self._on_axis(i), strict=True))
+    def _value(self, i: int, on_axis: tuple[bool, bool]) -> complex:
+        re, im = (0 if exact else c for c, exact in zip(self.z[i], on_axis, strict=True))
         return complex(_scaled_float(re, self.exponent - self.bits), _scaled_float(im, self.exponent - self.bits))
 
-    def disc(self, i: int, bits: int) -> Disc:
+    def disc(self, i: int, on_axis: tuple[bool, bool], bits: int) -> Disc:
         """Centre and radius in units of ``2**-bits``."""
-        while self.bits < bits + self.exponent + 4 or self.radii[i] > 1 << (self.bits - self.exponent - bits):
-            self._double()
+        least = bits + self.exponent + 4
+        while self.bits < least or self.radii[i] > 1 << (self.bits - self.exponent - bits):
+            self._extend(min(2 * self.bits, least + _SPARE_BITS) if self.bits < least else 2 * self.bits)
         drop = self.bits - self.exponent - bits
         half = 1 << (drop - 1)
-        on_imaginary, on_real = self._on_axis(i)
+        on_imaginary, on_real = on_axis
         re, im = self.z[i]
         radius = -(-self.radii[i] >> drop) + 1
         return (0 if on_imaginary else (re + half) >> drop, 0 if on_real else (im + half) >> drop, radius)
@@ -201,13 +206,15 @@ class _Factor:
             for c, on_axis in zip(self.z[i], self._on_axis(i), strict=True)
         )
 
-    def _double(self) -> None:
+    def _extend(self, bits: int) -> None:
+        """Go on with more bits, at most twice as many: one or two steps make up for them."""
         if self.bits >= _MOST_BITS:
             raise ArithmeticError("the roots of a polynomial could not be separated")
         # Once every disc is alone only refinement is left: an index stays with its root.
         clusters = [] if self.settled else self._clusters()
-        self.z = [(re << self.bits, im << self.bits) for re, im in self.z]
-        self.bits *= 2
+        more = bits - self.bits
+        self.z = [(re << more, im << more) for re, im in self.z]
+        self.bits = bits
         for cluster in clusters:
             self._spread(cluster)
         self._solve()

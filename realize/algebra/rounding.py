@@ -10,15 +10,15 @@ from math import ldexp
 from realize.algebra.enclosure import Enclosure, Unresolved
 from realize.errors import Refused
 
-#: Bits of the first enclosure: enough for float64 with 139 bits of cancellation to spare.
-FIRST_BITS = 192
+#: Bits of the first enclosure: enough for float64 with 75 bits of cancellation to spare.
+FIRST_BITS = 128
 
 #: An enclosure narrower than this fraction of its value that still holds one rounding boundary is taken to be that
 #: boundary: the numbers the methods produce from designs of a few hundred digits do not come so near one otherwise.
 _TIE_BITS = 4000
 
-#: Working bits after which a result is given up: stiff designs of high order lose some thousands of bits to repeated
-#: squaring, and none of the permitted degree loses so many.
+#: Working bits after which a result is given up: no design of the permitted degree and range needs more than some
+#: thousands.
 MOST_BITS = 1 << 16
 
 

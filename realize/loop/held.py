@@ -4,8 +4,8 @@ With a total delay ``(d - m) T``, d whole and 0 <= m < 1, the response to one he
 
     Gd(z) = z^-d (1 - 1/z) sum_j s((j + m) T) z^-j,   s the step response of plant and sensor
 
-the modified z-transform (Jury 1958; Astrom & Wittenmark, Computer-Controlled Systems). The samples are enclosures, the
-denominator is ``prod(z - exp(pT))``; a value at a jump is the one after it.
+the modified z-transform (Jury 1958; Astrom & Wittenmark, Computer-Controlled Systems). The coefficients are enclosures,
+the denominator is ``prod(z - exp(pT))``; a value at a jump is the one after it.
 """
 
 from __future__ import annotations
@@ -16,12 +16,11 @@ from math import ceil, pi
 from typing import NamedTuple
 
 from realize.algebra import polynomial as poly
-from realize.algebra.enclosure import Enclosure
-from realize.algebra.exponential import image_polynomial, normalised, sampled_response
+from realize.algebra.exponential import Hold
 from realize.checks.modes import every, in_words
 from realize.loop.plant import Plant, checked_plant, lost_modes, series
-from realize.methods.conversion import Conversion, pulse_transfer_function, refuse_growth
-from realize.methods.invariant import exponential_denominator, mapped_exponentially
+from realize.methods.conversion import Conversion, pulse_transfer_function
+from realize.methods.invariant import exponential_conversion
 from realize.transfer import PulseTransferFunction, TransferFunction
 
 #: Two poles alias onto each other when they differ by a multiple of the sampling frequency to within this share of it:
@@ -95,27 +94,11 @@ def held_plant(plant: Plant, period_s: Fraction, compute_delay_s: Fraction) -> H
 
 def _conversion(chain: TransferFunction, period_s: Fraction, offset: Fraction) -> Conversion:
     """Numerator and denominator of ``z^d Gd(z)``."""
-    refuse_growth(chain.poles, period_s)
-    lead = chain.gain * period_s**chain.relative_degree
-    scaled = tuple(lead * c for c in normalised(chain.numerator, period_s))
-    at_origin = poly.trailing_zeros(chain.denominator)
-    decaying = chain.denominator[: len(chain.denominator) - at_origin]
-    ones = poly.power((1, -1), at_origin + 1)
-
-    def numerator(bits: int) -> Enclosure:
-        count = chain.order + 1
-        response = sampled_response(scaled, chain.denominator, 1, period_s, count, bits, offset)
-        product = response.convolve_integers(ones)
-        if len(decaying) > 1:
-            product = product.convolve(image_polynomial(decaying, period_s, bits))
-        return product[:count]
-
-    zeros = poly.trailing_zeros(chain.numerator)
-    return Conversion(
-        lru_cache(maxsize=8)(numerator),
-        lambda bits: exponential_denominator(chain, period_s, bits),
-        mapped_exponentially(chain.poles, period_s),
-        None,
+    zeros, at_origin = poly.trailing_zeros(chain.numerator), poly.trailing_zeros(chain.denominator)
+    return exponential_conversion(
+        chain,
+        period_s,
+        Hold(1, offset),
         # One zero at z = 1 is the plant's; more only where they meet poles at the origin in the other part.
         zeros_at_one=min(zeros, at_origin) + min(1, max(zeros - at_origin, 0)),
         structural={0: chain.feed_through} if offset == 0 else {},

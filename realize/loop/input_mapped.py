@@ -166,8 +166,8 @@ class _Mapping:
         return Conversion(
             lambda bits: _enclosure(parts(bits)[0], bits),
             lambda bits: _enclosure(parts(bits)[1], bits),
-            self._poles(parts(CARRIED_BITS)[1]),
-            self._zeros(),
+            lambda: self._poles(parts(CARRIED_BITS)[1]),
+            self._zeros,
             notes=self._notes(),
         )
 

@@ -43,20 +43,20 @@ MOST_GROWTH = 709
 _ALIAS_BITS = 1024
 
 Enclose = Callable[[int], Enclosure]
+Roots = Callable[[], tuple[Root, ...]]
 
 
 class Conversion(NamedTuple):
-    """``Gd(z)`` as a method describes it.
+    """``Gd(z)`` as a method describes it: cheap to make, nothing of it computed before it is asked for.
 
     Attributes
     ----------
     numerator, denominator : callable
         ``bits -> Enclosure``: coefficients in descending powers of z, equally many, the denominator monic.
-    poles : tuple of Root
-        Images of the poles, in ``z - 1``.
-    zeros : tuple of Root or None
-        Images of the zeros in ``z - 1``; None where the method does not map zeros, so that they are the roots
-        of the numerator.
+    poles : callable
+        ``() -> tuple of Root``: images of the poles, in ``z - 1``; refuses those that no float can hold or tell from 0.
+    zeros : callable or None
+        The same of the zeros; None where the method does not map zeros, so that they are the roots of the numerator.
     zeros_at_one : int
         Zeros at z = 1 that the numerator has by structure (used when ``zeros`` is None).
     structural : mapping
@@ -67,11 +67,27 @@ class Conversion(NamedTuple):
 
     numerator: Enclose
     denominator: Enclose
-    poles: tuple[Root, ...]
-    zeros: tuple[Root, ...] | None
+    poles: Roots
+    zeros: Roots | None
     zeros_at_one: int = 0
     structural: Mapping[int, Fraction] = {}
     notes: tuple[str, ...] = ()
+
+    def rounded(self, target: FloatFormat) -> tuple[tuple[float, ...], tuple[float, ...]]:
+        """Correctly rounded numerator and denominator, descending powers of z.
+
+        Raises
+        ------
+        Refused
+            When a coefficient is beyond the largest value of the format.
+        Unresolved
+            When no permitted number of bits tells two values of the format apart.
+        """
+        # What is known exactly is left out: no enclosure tells a zero from its neighbours.
+        others = iter(correctly_rounded(lambda bits: self.numerator(bits).without(self.structural), target))
+        known = {i: target.round(value) for i, value in self.structural.items()}
+        denominator = correctly_rounded(self.denominator, target)
+        return tuple(known[i] if i in known else next(others) for i in range(len(denominator))), denominator
 
 
 @dataclass(frozen=True)
@@ -98,29 +114,21 @@ class Discretization:
         return not any(self.conversion.denominator(CARRIED_BITS).rad)
 
     def rounded(self, target: FloatFormat) -> tuple[tuple[float, ...], tuple[float, ...]]:
-        """Correctly rounded numerator and denominator, descending powers of z.
-
-        Raises
-        ------
-        Refused
-            When a coefficient is beyond the largest value of the format.
-        """
-        numerator = list(correctly_rounded(self.conversion.numerator, target))
-        for i, value in self.conversion.structural.items():
-            numerator[i] = target.round(value)
-        return tuple(numerator), correctly_rounded(self.conversion.denominator, target)
+        """Correctly rounded coefficients, as :meth:`Conversion.rounded` gives them."""
+        return self.conversion.rounded(target)
 
 
 def pulse_transfer_function(conversion: Conversion, period_s: Fraction) -> PulseTransferFunction:
     """Carry a conversion's polynomials and find the zeros it does not map."""
+    poles = conversion.poles()
     denominator = _carried(conversion.denominator, {}).midpoints()
     if conversion.zeros is not None:
         numerator = _carried(conversion.numerator, conversion.structural).midpoints()
         numerator = _with_structure(numerator, conversion.structural)
-        return PulseTransferFunction(numerator, denominator, period_s, conversion.poles, conversion.zeros)
+        return PulseTransferFunction(numerator, denominator, period_s, poles, conversion.zeros())
     numerator, shifted = _carried_with_shift(conversion, len(denominator) - 1)
     zeros = isolate(poly.primitive(shifted)) if any(shifted) else ()
-    return PulseTransferFunction(numerator, denominator, period_s, conversion.poles, zeros)
+    return PulseTransferFunction(numerator, denominator, period_s, poles, zeros)
 
 
 def _carried(enclose: Enclose, structural: Mapping[int, Fraction]) -> Enclosure:
@@ -226,7 +234,7 @@ def _image(root: Root, period_s: Fraction, apply: Callable[[Disc, int], Disc]) -
             re, im, rad = apply(_times(root.enclosure(work), period_s), work)
             if rad <= 1 << extra:
                 sign = -1 if root.is_pair and im < 0 else 1
-                return re >> extra, sign * im >> extra, (rad >> extra) + 2
+                return re >> extra, sign * im >> extra, 2 - (-rad >> extra)
             extra *= 2
 
     return Root(_value_of(enclosure, root, period_s), root.multiplicity, enclosure)

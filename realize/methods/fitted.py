@@ -475,7 +475,7 @@ def _best_of_nine(frame: _Frame, band: Array, band_rad_s: Fraction) -> tuple[str
         raise Refused("method", f"{METHOD} starts from another method, and none applies", "", "raise the sample rate")
     square, name, conversion = min(found, key=lambda entry: entry[0])
     free: poly.Rationals = (Fraction(1),)
-    for root, image in zip(frame.transfer.poles, conversion.poles, strict=True):
+    for root, image in zip(frame.transfer.poles, conversion.poles(), strict=True):
         if not frame.is_kept_pole(root):
             free = poly.multiply(free, poly.power(frame.factor(image), root.multiplicity))
     return name, square, frame.monic_at_one(free)
@@ -483,7 +483,7 @@ def _best_of_nine(frame: _Frame, band: Array, band_rad_s: Fraction) -> tuple[str
 
 def _keeps_decay(transfer: TransferFunction, conversion: Conversion) -> bool:
     """Whether decaying poles decay and undamped ones do not grow (forward-difference grows by ``|z - 1|^2``)."""
-    for root, image in zip(transfer.poles, conversion.poles, strict=True):
+    for root, image in zip(transfer.poles, conversion.poles(), strict=True):
         re, im = image.value.real, image.value.imag
         growth = re * (2 + re) + im * im
         if (root.value.real < 0 and growth >= 0) or (root.value.real == 0 and growth > (re * re + im * im) / 2):
@@ -724,8 +724,8 @@ def _conversion(frame: _Frame, fit: _Fit, notes: tuple[str, ...]) -> Conversion:
     return Conversion(
         lambda bits: above,
         lambda bits: below,
-        isolate(poly.primitive(bottom)),
-        isolate(poly.primitive(top)),
+        lambda: isolate(poly.primitive(bottom)),
+        lambda: isolate(poly.primitive(top)),
         notes=notes,
     )
 

@@ -25,8 +25,8 @@ def pole_zero_mapped(transfer: TransferFunction, period_s: Fraction, exact_at_ra
     return Conversion(
         lru_cache(maxsize=8)(lambda bits: _numerator(transfer, period_s, bits)),
         lambda bits: exponential_denominator(transfer, period_s, bits),
-        mapped_exponentially(transfer.poles, period_s),
-        mapped_exponentially(transfer.zeros, period_s) + at_infinity,
+        lambda: mapped_exponentially(transfer.poles, period_s),
+        lambda: mapped_exponentially(transfer.zeros, period_s) + at_infinity,
     )
 
 

@@ -76,8 +76,8 @@ def bilinear_prewarped(transfer: TransferFunction, period_s: Fraction, exact_at_
     return Conversion(
         lambda bits: parts(bits)[0],
         lambda bits: parts(bits)[1],
-        mapped(transfer.poles, period_s, delta),
-        mapped(transfer.zeros, period_s, delta) + _extra_zeros(Fraction(-2), transfer.relative_degree),
+        lambda: mapped(transfer.poles, period_s, delta),
+        lambda: mapped(transfer.zeros, period_s, delta) + _extra_zeros(Fraction(-2), transfer.relative_degree),
     )
 
 
@@ -89,13 +89,17 @@ def _theta_method(transfer: TransferFunction, period_s: Fraction, theta: Fractio
     if bottom[0] == 0:
         _refuse_pole_at_infinity(1 / (theta * period_s))
     delta = partial(_theta_image, theta)
-    finite = transfer.zeros if top[0] or not theta else _without_nearest(transfer.zeros, 1 / (theta * period_s))
-    extra = _extra_zeros(-1 / theta, transfer.relative_degree) if theta else ()
+
+    def zeros() -> tuple[Root, ...]:
+        finite = transfer.zeros if top[0] or not theta else _without_nearest(transfer.zeros, 1 / (theta * period_s))
+        extra = _extra_zeros(-1 / theta, transfer.relative_degree) if theta else ()
+        return mapped(finite, period_s, delta) + extra
+
     return Conversion(
         _ratio(top, bottom[0]),
         _ratio(bottom, bottom[0]),
-        mapped(transfer.poles, period_s, delta),
-        mapped(finite, period_s, delta) + extra,
+        lambda: mapped(transfer.poles, period_s, delta),
+        zeros,
     )
 
 

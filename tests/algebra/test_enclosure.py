@@ -67,12 +67,10 @@ def test_rounding_a_vector_costs_one_unit_at_most_and_nothing_where_it_fits(trut
 
 
 @given(enclosed(), st.data())
-def test_sums_and_differences_hold_the_truth(pair: tuple[list[Fraction], Enclosure], data: st.DataObject) -> None:
+def test_sums_hold_the_truth(pair: tuple[list[Fraction], Enclosure], data: st.DataObject) -> None:
     a, first = pair
     b, second = data.draw(enclosed(st.lists(numbers, min_size=len(a), max_size=len(a))))
     check(first + second, [x + y for x, y in zip(a, b, strict=True)])
-    check(first - second, [x - y for x, y in zip(a, b, strict=True)])
-    assert inside(*first.dot(second), sum((x * y for x, y in zip(a, b, strict=True)), Fraction(0)))
 
 
 @given(enclosed(), enclosed(), factors)
@@ -103,19 +101,6 @@ def test_products_with_a_number_hold_the_truth(
     check(p[1].times(*number[1].entry(0)), [x * number[0][0] for x in p[0]])
 
 
-@given(enclosed(), st.integers(1, 50), st.integers(0, 60))
-def test_quotients_hold_the_truth(p: tuple[list[Fraction], Enclosure], n: int, times: int) -> None:
-    check(p[1].divided(n), [x / n for x in p[0]])
-    check(p[1].halved(times), [x / 2**times for x in p[0]])
-
-
-@given(enclosed(), st.integers(0, 9))
-def test_widening_keeps_the_truth_and_adds_what_it_says(p: tuple[list[Fraction], Enclosure], units: int) -> None:
-    wide = p[1].widened(units)
-    check(wide, p[0])
-    assert [r - s for r, s in zip(wide.rad, p[1].rad, strict=True)] == [units] * len(p[0])
-
-
 @given(enclosed())
 def test_total_holds_the_sum(p: tuple[list[Fraction], Enclosure]) -> None:
     assert inside(*p[1].total(), sum(p[0], Fraction(0)))
@@ -129,10 +114,10 @@ def test_the_first_entry_can_be_replaced_under_any_factor(
     assert Enclosure.exact(p[0]).with_first(value).midpoints() == (value, *p[0][1:])
 
 
-@given(enclosed())
-def test_a_slice_holds_the_slice(p: tuple[list[Fraction], Enclosure]) -> None:
-    check(p[1][1:], p[0][1:])
-    check(p[1].scaled(Fraction(-1, 3))[:2], [-x / 3 for x in p[0][:2]])
+@given(enclosed(), st.sets(st.integers(0, 5)))
+def test_entries_can_be_left_out(p: tuple[list[Fraction], Enclosure], left_out: set[int]) -> None:
+    truth = [-x / 3 for i, x in enumerate(p[0]) if i not in left_out]
+    check(p[1].scaled(Fraction(-1, 3)).without(left_out), truth)
 
 
 @given(enclosed(st.lists(factors, min_size=1, max_size=1)))

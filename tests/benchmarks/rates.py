@@ -1,5 +1,9 @@
 """What a range of rates costs: the whole command, and the exact conversions against scipy.signal in float64.
 
+A conversion is timed to the same end on both sides, its coefficients: described and rounded here, each coefficient
+correctly, as ``realize.methods.coefficients`` does it. What ``realize.methods.discretize`` carries beyond them for the
+checks (a thousand bits, zeros, images of roots) is in the time of the whole command.
+
 Run it from the root of the project: python tests/benchmarks/rates.py [POINTS]
 """
 
@@ -16,7 +20,7 @@ from scipy import signal
 
 from realize.algebra.rounding import FLOAT64
 from realize.design import design_from_text
-from realize.methods import discretize
+from realize.methods import coefficients
 from realize.rates import rates
 from realize.transfer import TransferFunction
 
@@ -46,7 +50,7 @@ RATES_HZ = [Fraction(200 + 37 * i) for i in range(60)]
 
 def converted(transfer: TransferFunction, rate_hz: Fraction, method: str) -> None:
     """One exact conversion, every coefficient correctly rounded."""
-    discretize(transfer, 1 / rate_hz, method).rounded(FLOAT64)
+    coefficients(transfer, 1 / rate_hz, method, FLOAT64)
 
 
 def exact_s(transfer: TransferFunction, methods: tuple[str, ...]) -> float:

@@ -99,8 +99,13 @@ def normalised(roots: Sequence[ExactRoot], period_s: Fraction) -> list[tuple[Any
     return found
 
 
-def responses(design: Factored, integrations: int, period_s: Fraction, count: int) -> Polynomial:
-    """Samples of the inverse transform of ``G(x/T)/x^integrations``, its direct feed-through left out."""
+def responses(
+    design: Factored, integrations: int, period_s: Fraction, count: int, offset: Fraction = Fraction(0)
+) -> Polynomial:
+    """Samples of the inverse transform of ``G(x/T)/x^integrations``, its direct feed-through left out.
+
+    Each is taken later by ``offset``, a part of a period.
+    """
     poles = normalised(design.poles, period_s)
     at_origin = sum(m for p, m in poles if p == 0)
     poles = [(p, m) for p, m in poles if p != 0]
@@ -115,7 +120,8 @@ def responses(design: Factored, integrations: int, period_s: Fraction, count: in
     ]
     samples = []
     for k in range(count):
-        values = [c * (mp.mpf(k) ** j if j else 1) * mp.exp(p * k) for p, j, c in terms]
+        time = k + number(offset)
+        values = [c * (time**j if j else 1) * mp.exp(p * time) for p, j, c in terms]
         samples.append((mp.fsum(v.real for v in values), mp.fsum(abs(v) for v in values)))
     return samples
 

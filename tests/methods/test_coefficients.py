@@ -12,7 +12,7 @@ from hypothesis import strategies as st
 from realize.algebra.irrational import pi
 from realize.algebra.rounding import FLOAT32, FLOAT64, FloatFormat
 from realize.errors import Refused
-from realize.methods import METHODS, Discretization, discretize
+from realize.methods import METHODS, Discretization, coefficients, discretize
 from realize.transfer import TransferFunction
 from tests.methods import reference
 from tests.strategies import ExactRoot, Factored, decimals, sampled_designs
@@ -43,6 +43,18 @@ def check(design: Factored, period_s: Fraction, method: str, exact_at_rad_s: Fra
             obtained = result.rounded(target)
             assert_correctly_rounded(obtained[0], numerator, target)
             assert_correctly_rounded(obtained[1], denominator, target)
+
+
+@given(sampled_designs(8), st.sampled_from(EXPONENTIAL), st.sampled_from((FLOAT64, FLOAT32)))
+def test_coefficients_alone_are_the_correctly_rounded_ones(
+    drawn: tuple[Factored, Fraction], method: str, target: FloatFormat
+) -> None:
+    design, period_s = drawn
+    numerator, denominator = reference.coefficients(design, period_s, method)
+    assume(all(abs(c) < Fraction(2) ** (target.most_exponent - 1) for c in numerator + denominator))
+    obtained = coefficients(design.transfer(), period_s, method, target)
+    assert_correctly_rounded(obtained[0], numerator, target)
+    assert_correctly_rounded(obtained[1], denominator, target)
 
 
 @pytest.mark.parametrize("method", reference.METHODS)

@@ -8,9 +8,9 @@ import pytest
 from realize.algebra import exponential
 from realize.algebra import polynomial as poly
 from realize.algebra.irrational import pi
-from realize.algebra.rounding import FLOAT64
+from realize.algebra.rounding import FLOAT32, FLOAT64
 from realize.errors import RealizeError, Refused
-from realize.methods import METHODS, discretize, invariant, mapped
+from realize.methods import METHODS, coefficients, conversion, discretize, invariant, mapped
 from realize.transfer import TransferFunction
 
 EXPONENTIAL = ("step-invariant", "ramp-invariant", "impulse-invariant", "pole-zero-mapped")
@@ -46,6 +46,8 @@ def test_an_unknown_method_is_named_beside_the_known_ones() -> None:
     assert error.value.where == "method"
     assert "'trapezoid'" in error.value.found
     assert all(name in error.value.allowed for name in METHODS)
+    with pytest.raises(RealizeError, match="unknown name 'trapezoid'"):
+        coefficients(transfer((1,), (1, 1)), Fraction(1), "trapezoid", FLOAT64)
 
 
 @pytest.mark.parametrize("method", METHODS)
@@ -55,6 +57,8 @@ def test_an_improper_function_is_refused_by_every_method(method: str) -> None:
     assert refusal.value.where == "transfer"
     assert refusal.value.found.startswith("it is improper")
     assert "roll-off" in refusal.value.advice
+    with pytest.raises(Refused, match="it is improper"):
+        coefficients(transfer((9, 420, 1800), (100, 0)), Fraction(1, 100), method, FLOAT64)
 
 
 @pytest.mark.parametrize("method", METHODS)
@@ -75,7 +79,7 @@ def test_growth_beyond_a_double_is_refused_before_anything_is_computed(
         raise AssertionError("the exponential was taken")
 
     for module in (exponential, invariant, mapped):
-        for name in ("image_polynomial", "sampled_response", "exponential"):
+        for name in ("image_polynomial", "pulse_numerator", "exponential"):
             if hasattr(module, name):
                 monkeypatch.setattr(module, name, never)
     g = transfer((1,), poly.multiply((1, -1), poly.power((1, 1), 7)))
@@ -84,6 +88,8 @@ def test_growth_beyond_a_double_is_refused_before_anything_is_computed(
     assert refusal.value.where == "method"
     assert "grows by exp(1e+05) in one period" in refusal.value.found
     assert refusal.value.allowed == "growth of at most exp(709) per period"
+    with pytest.raises(Refused, match="grows by exp"):
+        coefficients(g, Fraction(10**5), method, FLOAT64)
 
 
 def test_growth_of_a_zero_is_refused_where_zeros_are_mapped_only() -> None:
@@ -110,6 +116,33 @@ def test_a_pole_that_falls_on_z_1_without_being_0_is_refused_with_its_place(meth
     assert refusal.value.where == "method"
     assert "falls on z = 1 although it is not 0" in refusal.value.found
     assert f"{float(w):.5g}j" in refusal.value.found
+
+
+@pytest.mark.parametrize("method", EXPONENTIAL[:3])
+def test_coefficients_alone_do_not_need_the_roots_that_make_the_whole_refused(method: str) -> None:
+    g = transfer((1,), (1, 0, (2 * pi() * 200) ** 2))
+    _, denominator = coefficients(g, Fraction(1, 200), method, FLOAT64)
+    assert denominator == (1.0, -2.0, 1.0)
+
+
+@pytest.mark.parametrize("method", METHODS)
+def test_coefficients_alone_are_found_without_carrying_anything(method: str, monkeypatch: pytest.MonkeyPatch) -> None:
+    g = transfer((2, 5), (1, 3, 7, 0))
+    whole = discretize(g, Fraction(1, 20), method, exact_at(method, Fraction(2)))
+
+    def never(*arguments: object) -> None:
+        raise AssertionError("more than the coefficients was computed")
+
+    for name in ("_carried", "_image", "isolate"):
+        monkeypatch.setattr(conversion, name, never)
+    alone = coefficients(g, Fraction(1, 20), method, FLOAT64, exact_at(method, Fraction(2)))
+    assert alone == whole.rounded(FLOAT64)
+
+
+def test_a_coefficient_beyond_the_format_is_refused_also_alone() -> None:
+    g = transfer((10**40,), (1, 1))
+    with pytest.raises(Refused, match="beyond the largest float32"):
+        coefficients(g, Fraction(1, 2), "step-invariant", FLOAT32)
 
 
 def test_a_zero_that_falls_on_z_1_without_being_0_is_refused_by_the_mapping() -> None:
