@@ -35,6 +35,7 @@ _RATE_OPTIONS = (
 _ARGUMENTS = {
     "design": "a design file (ends in .toml), - for one on standard input, or an expression in s",
     "name": "the name of the design to start, such as roller_gap",
+    "record": "a record that realize emit wrote (ends in .record.json)",
 }
 
 
@@ -78,7 +79,9 @@ def commands() -> None:
     Is it realizable at all?          realize assess roller_gap.toml
     What does each method make of it? realize compare roller_gap.toml
     Which rate does it really need?   realize rates roller_gap.toml
+    Which integers would do?          realize words roller_gap.toml
     Write the firmware files:         realize emit roller_gap.toml --out firmware
+    Run them on the processor:        realize trial firmware/roller_gap.record.json --on all
     """
 
 
@@ -171,6 +174,27 @@ def _with_progress(length: int) -> Callable[[Iterator[Any]], Iterator[Any]]:
     return follow
 
 
+@commands.command(short_help="Put structures and word lengths of integers side by side.")
+@_takes_rate
+@_takes_design
+def words(design: str, as_json: bool, **options: Any) -> None:
+    """Put structures and word lengths side by side: what integers of 16 and 32 bits do to DESIGN.
+
+    Needs range and per_count of both signals; the arithmetic that the design names does not matter.
+    Exit status 0 when there is a structure that is within every tolerance, else 1.
+
+    \b
+    Example: realize words roller_gap.toml
+    """
+    from realize.report.word_lengths import words_document, words_text
+    from realize.words import words as over_words
+
+    found = over_words(_load(design, options))
+    _print(words_document(found) if as_json else words_text(found))
+    if found.recommended is None:
+        sys.exit(1)
+
+
 @commands.command(short_help="Write the C files, the vectors and the record.")
 @_takes_rate
 @_takes_design
@@ -197,6 +221,36 @@ def emit(design: str, as_json: bool, out: str, **options: Any) -> None:
         _print(emit_document(emitted, paths))
     else:
         _print(emit_text(emitted.comparison, emitted.chosen, paths))
+
+
+@commands.command(short_help="Compile the emitted code and run it against its vectors.")
+@click.argument("record", metavar="RECORD")
+@click.option("--on", default="host", show_default=True, metavar="CPU", help='Name of a processor, or "all".')
+@click.option("--compiler", metavar="COMMAND", help='Own compiler, such as "gcc -O2 {sources} -o {output}".')
+@click.option("--clock", metavar="QUANTITY", help='Clock of the processor, such as "48 MHz".')
+@click.option("--json", "as_json", is_flag=True, help="Print one JSON document and nothing else.")
+def trial(record: str, on: str, compiler: str | None, clock: str | None, as_json: bool) -> None:
+    """Compile the emitted code, run it on CPU against its vectors, and compare bit for bit.
+
+    CPU is host, cortex-m0, cortex-m3, cortex-m4f, cortex-m7f, rv32imac, or all of them. Says what
+    the code takes there: bytes, stack, and instructions per sample. Exit status 1 at a difference.
+    The compiler and the emulator come with: pip install "realize[target]"
+
+    \b
+    Example: realize trial firmware/roller_gap.record.json --on cortex-m0 --clock "48 MHz"
+             realize trial firmware/roller_gap.record.json --compiler "gcc -O2 {sources} -o {output}"
+    """
+    from realize.quantity import parse_quantity
+    from realize.report.on_target import trial_document, trial_text
+    from realize.trial.run import trial as try_out
+
+    clock_hz = None if clock is None else parse_quantity(clock, "rate", "--clock")
+    if clock_hz is not None and clock_hz <= 0:
+        raise RealizeError("--clock", clock or "", "a rate above zero", '--clock "48 MHz"')
+    found = try_out(record, on, compiler)
+    _print(trial_document(found, clock_hz) if as_json else trial_text(found, clock_hz))
+    if not found.equal:
+        sys.exit(1)
 
 
 @commands.command(short_help="Write NAME.toml, a commented starter design.")

@@ -54,7 +54,7 @@ def test_help_has_a_worked_example(run: Any, command: str) -> None:
 
 
 def test_only_the_commands_that_are_built_exist() -> None:
-    assert sorted(commands.commands) == ["assess", "compare", "emit", "new", "rates"]
+    assert sorted(commands.commands) == ["assess", "compare", "emit", "new", "rates", "trial", "words"]
 
 
 def test_version(run: Any) -> None:
@@ -215,7 +215,7 @@ NOT_UNDERSTOOD = [
     (["assess", "__import__('os')"], "column 12"),
     (["emit", "1/(s+1)"], "--out"),
     (["assess"], "DESIGN"),
-    (["words", "1/s"], "words"),
+    (["speak", "1/s"], "speak"),
 ]
 
 
@@ -281,7 +281,7 @@ MISTAKES = [
         "directory for the files",
         "try: realize emit roller_gap.toml --out firmware",
     ),
-    (["words", "1/s"], 'realize: the unknown command "words"', "assess, compare", "try: realize --help"),
+    (["speak", "1/s"], 'realize: the unknown command "speak"', "assess, compare", "try: realize --help"),
     (["asess", "1/s"], 'realize: the unknown command "asess"', "assess, compare", "try: did you mean assess?"),
     (["--frob"], 'realize: the unknown option "--frob"', "--version", "try: realize --help"),
     (["assess", "1/s", "--metod", "x"], 'the unknown option "--metod"', "--method", "try: did you mean --method?"),

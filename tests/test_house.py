@@ -23,7 +23,8 @@ LAYERS = (
     ("arithmetic",),
     ("loop_design",),
     ("workflow",),
-    ("firmware", "rates"),
+    ("firmware", "rates", "words"),
+    ("trial",),
     ("report",),
     ("cli", "__main__", "__init__"),
 )

@@ -42,12 +42,26 @@ class Factor(NamedTuple):
             lead, last = ON_POINTS[int(self.root.value.real)]
             return Enclosure(integers([lead << bits, last << bits]), integers([0, 0]), bits)
         re, im, rad = self.root.enclosure(bits)
-        re += 1 << bits
+        return self._monic(re + (1 << bits), im, rad, bits)
+
+    def polynomial_in_delta(self, bits: int) -> Enclosure:
+        """Monic, descending powers of ``delta = z - 1``, in which the root is known: nothing cancels."""
+        if self.is_fixed:
+            last = -int(self.root.value.real)
+            return Enclosure(integers([1 << bits, last << bits]), integers([0, 0]), bits)
+        return self._monic(*self.root.enclosure(bits), bits)
+
+    def _monic(self, re: int, im: int, rad: int, bits: int) -> Enclosure:
+        """With a root, or a pair, in a disc."""
         if not self.root.is_pair:
             return Enclosure(integers([1 << bits, -re]), integers([0, rad]), bits)
         reach = 2 * (abs(re) + abs(im)) * rad + 2 * rad * rad
         square = (re * re + im * im) >> bits
         return Enclosure(integers([1 << bits, -2 * re, square]), integers([0, 2 * rad, (reach >> bits) + 2]), bits)
+
+
+#: z = 0, which as a root in ``z - 1`` is an integer too.
+AT_ZERO = Factor(Root(complex(-1), 1, lambda bits: (-1 << bits, 0, 0)))
 
 
 class Group(NamedTuple):
@@ -168,9 +182,18 @@ def _parted(group: Group) -> list[Group]:
 
 def monic(factors: tuple[Factor, ...], bits: int) -> Enclosure:
     """Product of the factors, descending powers of z."""
+    return _product((factor.polynomial(bits) for factor in factors), bits)
+
+
+def monic_in_delta(factors: tuple[Factor, ...], bits: int) -> Enclosure:
+    """Product of the factors, descending powers of ``delta = z - 1``."""
+    return _product((factor.polynomial_in_delta(bits) for factor in factors), bits)
+
+
+def _product(polynomials: Iterable[Enclosure], bits: int) -> Enclosure:
     product = Enclosure(integers([1 << bits]), integers([0]), bits)
-    for factor in factors:
-        product = product.convolve(factor.polynomial(bits))
+    for p in polynomials:
+        product = product.convolve(p)
     return product
 
 

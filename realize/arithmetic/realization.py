@@ -2,22 +2,38 @@
 
 ``Gd = rest(z) + sum_i R_i/(z - 1)^i``. The rest becomes first- and second-order sections whose every coefficient
 is one real number, rounded once. Section coefficients are in ascending powers of 1/z, ``a`` without its leading
-1: ``y[k] = sum b x - sum a y``.
+1: ``y[k] = sum b x - sum a y``. Those of the structure ``delta`` are in ascending powers of 1/delta, ``delta = z - 1``
+(Middleton & Goodwin 1990, from memory): beside poles that crowd z = 1 the coefficients of z are 1 and 2 but for a
+little that rounding takes away, those of delta are that little.
 """
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
+from math import prod
 from typing import NamedTuple
 
 import numpy as np
 
 from realize.algebra import polynomial as poly
+from realize.algebra.enclosure import Enclosure
 from realize.algebra.roots import Root, isolate, origin
 from realize.algebra.rounding import FloatFormat, correctly_rounded
-from realize.arithmetic.grouping import ON_POINTS, Factor, Group, Rest, degree, group, grouped, monic, split_integral
+from realize.arithmetic.grouping import (
+    AT_ZERO,
+    ON_POINTS,
+    Factor,
+    Group,
+    Rest,
+    degree,
+    group,
+    grouped,
+    monic,
+    monic_in_delta,
+    split_integral,
+)
 from realize.errors import Refused
 from realize.transfer import PulseTransferFunction
 
@@ -35,6 +51,28 @@ class Section(NamedTuple):
     b: tuple[float, ...]
     a: tuple[float, ...]
 
+    def in_z(self) -> tuple[poly.Rationals, poly.Rationals]:
+        """``b`` and ``a`` in ascending powers of 1/z, exactly."""
+        return _exactly(self.b), _exactly(self.a)
+
+
+class DeltaSection(NamedTuple):
+    """One section in the operator ``delta = z - 1``, as stored.
+
+    ``b`` and ``a`` are in ascending powers of 1/delta, ``a`` without its leading 1; ``len(b) == len(a) + 1``.
+    """
+
+    b: tuple[float, ...]
+    a: tuple[float, ...]
+
+    def in_z(self) -> tuple[poly.Rationals, poly.Rationals]:
+        """``b`` and ``a`` in ascending powers of 1/z, exactly."""
+        b, a = (poly.shift(_exactly(p), Fraction(-1)) for p in (self.b, (1.0, *self.a)))
+        return b, a[1:]
+
+
+AnySection = Section | DeltaSection
+
 
 @dataclass(frozen=True)
 class Realization:
@@ -45,10 +83,10 @@ class Realization:
     format : FloatFormat
         Of every coefficient and state.
     structure : str
-        ``direct`` (one section) or ``cascade``.
+        ``direct`` (one section), ``cascade``, or ``delta`` (a cascade, every section in delta).
     integral : tuple of float
         ``R_1, R_2, ...``: the integral states' gains, in units of the output.
-    sections : tuple of Section
+    sections : tuple of Section or DeltaSection
         In the order in which a sample passes them; empty when the rest is zero.
     period_s : Fraction
         Sample period.
@@ -57,7 +95,7 @@ class Realization:
     format: FloatFormat
     structure: str
     integral: tuple[float, ...]
-    sections: tuple[Section, ...]
+    sections: tuple[AnySection, ...]
     period_s: Fraction
 
 
@@ -71,7 +109,7 @@ def realization(pulse: PulseTransferFunction, target: FloatFormat, structure: st
     target : FloatFormat
         Format of the stored numbers.
     structure : str
-        ``direct``, ``cascade`` or ``auto``: direct where the cascade has a single section anyway.
+        ``direct``, ``cascade``, ``delta`` or ``auto``: a cascade, called direct where it has a single section anyway.
 
     Raises
     ------
@@ -81,8 +119,8 @@ def realization(pulse: PulseTransferFunction, target: FloatFormat, structure: st
     """
     integral, rest = split_integral(pulse)
     stored_integral = tuple(target.round(r) for r in integral)
-    sections = _direct(rest, target) if structure == "direct" else _cascade(rest, target)
-    name = "direct" if structure == "direct" or (structure == "auto" and len(sections) < 2) else "cascade"
+    sections = _SECTIONS[structure](rest, target)
+    name = ("direct" if len(sections) < 2 else "cascade") if structure == "auto" else structure
     return Realization(target, name, stored_integral, sections, pulse.period_s)
 
 
@@ -131,10 +169,14 @@ def _shifted_roots(p: poly.Rationals) -> tuple[Root, ...]:
     return isolate(poly.primitive(poly.shift(p, Fraction(1)))) if len(p) > 1 else ()
 
 
-def _section_polynomials(section: Section) -> tuple[poly.Rationals, poly.Rationals]:
+def _exactly(values: Sequence[float]) -> poly.Rationals:
+    return tuple(map(Fraction, values))
+
+
+def _section_polynomials(section: AnySection) -> tuple[poly.Rationals, poly.Rationals]:
     """Numerator and denominator in descending powers of z, exactly."""
-    b = poly.trimmed(Fraction(c) for c in section.b)
-    return b, (Fraction(1), *(Fraction(c) for c in section.a))
+    b, a = section.in_z()
+    return poly.trimmed(b), (Fraction(1), *a)
 
 
 def _product(polynomials: Sequence[poly.Rationals]) -> poly.Rationals:
@@ -180,6 +222,21 @@ def _cascade(rest: Rest, target: FloatFormat) -> tuple[Section, ...]:
     return tuple(_rounded_section(group, gain, target) for group, gain in cascaded(rest, target))
 
 
+def _delta(rest: Rest, target: FloatFormat) -> tuple[DeltaSection, ...]:
+    """The cascade in delta. Rounding keeps a zero at z = -1 there too: see :func:`_takes_any_gain`."""
+    scaled = _scaled(rest, lambda group: _rounded_delta_section(group, Fraction(1), target), _takes_any_gain)
+    return tuple(_rounded_delta_section(group, gain, target) for group, gain in scaled)
+
+
+#: How each structure makes sections.
+_SECTIONS: Mapping[str, Callable[[Rest, FloatFormat], tuple[AnySection, ...]]] = {
+    "direct": _direct,
+    "cascade": _cascade,
+    "auto": _cascade,
+    "delta": _delta,
+}
+
+
 def cascaded(rest: Rest, target: FloatFormat) -> list[tuple[Group, Fraction]]:
     """Groups in the order in which a sample passes them, each with the gain of its monic numerator.
 
@@ -195,17 +252,24 @@ def cascaded(rest: Rest, target: FloatFormat) -> list[tuple[Group, Fraction]]:
     Ascending peak gain (ties: ascending pole); every gain a power of two that brings the peak near 1, but for the
     first, which takes the gain that is left, exactly.
     """
+    return _scaled(rest, lambda group: _rounded_section(group, Fraction(1), target), lambda _: True)
+
+
+def _scaled(
+    rest: Rest, rounded: Callable[[Group], AnySection], takes_gain: Callable[[Group], bool]
+) -> list[tuple[Group, Fraction]]:
+    """As :func:`cascaded`, for sections as they are rounded; the first that takes any gain gets what is left."""
     if rest.gain == 0:
         return []
     groups = grouped(rest.poles, rest.zeros) or [group((), ())]
-    exponents = [_peak_exponent(_rounded_section(each, Fraction(1), target)) for each in groups]
+    exponents = [_peak_exponent(rounded(each)) for each in groups]
     order = sorted(range(len(groups)), key=lambda i: exponents[i])
     scales = [Fraction(2) ** -exponents[i] for i in order]
-    gain = rest.gain
-    for scale in scales[1:]:
-        gain /= scale
+    carrier = next(position for position, i in enumerate(order) if takes_gain(groups[i]))
+    gain = rest.gain / prod(scale for position, scale in enumerate(scales) if position != carrier)
     return [
-        (groups[i], scale if position else gain) for position, (i, scale) in enumerate(zip(order, scales, strict=True))
+        (groups[i], gain if position == carrier else scale)
+        for position, (i, scale) in enumerate(zip(order, scales, strict=True))
     ]
 
 
@@ -217,12 +281,47 @@ def _rounded_section(group: Group, gain: Fraction, target: FloatFormat) -> Secti
     return Section(_padded((0.0,) * group.delays + b, order + 1), _padded(a, order))
 
 
+def _rounded_delta_section(group: Group, gain: Fraction, target: FloatFormat) -> DeltaSection:
+    """The same with polynomials in delta, to which a delay and a root at z = 0 are no mere shift."""
+    poles = group.poles + (AT_ZERO,) * (group.order - degree(group.poles))
+    zeros = group.zeros + (AT_ZERO,) * _zeros_at_zero(group)
+    b = _rounded_polynomial(zeros, gain, target, monic_in_delta, 0)
+    a = _rounded_polynomial(poles, Fraction(1), target, monic_in_delta, 0)[1:]
+    return DeltaSection((0.0,) * group.delays + b, a)
+
+
+def _zeros_at_zero(group: Group) -> int:
+    """How many zeros at z = 0 it takes to delay the numerator by no more than it is."""
+    return group.order - group.delays - degree(group.zeros)
+
+
+def _takes_any_gain(group: Group) -> bool:
+    """Whether rounding keeps the fixed zeros of a section in delta whatever its gain.
+
+    Their own products have the coefficients 1, 2 and 4, which times a gain round alike; beside a zero at z = 0 there is
+    ``(delta + 2)(delta + 1) = delta^2 + 3 delta + 2``, and 3 times a gain rounds alike where that is a power of two.
+    The free zero parted from it has a section that takes any gain.
+    """
+    return not (_zeros_at_zero(group) and any(f.is_fixed for f in group.zeros))
+
+
 def _rounded_product(factors: tuple[Factor, ...], gain: Fraction, target: FloatFormat) -> tuple[float, ...]:
-    """Coefficients of ``gain * prod(1 - root/z)``; what cancels down to the carried precision is 0."""
-    rounded = correctly_rounded(lambda bits: monic(factors, bits).scaled(gain), target)
+    """Coefficients of ``gain * prod(1 - root/z)``."""
+    return _rounded_polynomial(factors, gain, target, monic, 1)
+
+
+def _rounded_polynomial(
+    factors: tuple[Factor, ...],
+    gain: Fraction,
+    target: FloatFormat,
+    enclosed: Callable[[tuple[Factor, ...], int], Enclosure],
+    centre: int,
+) -> tuple[float, ...]:
+    """``gain`` times a product of factors whose roots are at ``centre + root``; what is their cancellation is 0."""
+    rounded = correctly_rounded(lambda bits: enclosed(factors, bits).scaled(gain), target)
     sizes = [abs(float(gain))]
     for factor in factors:
-        z = 1 + factor.root.value
+        z = centre + factor.root.value
         own = [1.0, 2 * abs(z.real), abs(z) ** 2] if factor.root.is_pair else [1.0, abs(z.real)]
         sizes = [float(c) for c in np.convolve(sizes, own)]
     return tuple(c if abs(c) >= size * _CANCELLED else 0.0 for c, size in zip(rounded, sizes, strict=True))
@@ -232,10 +331,11 @@ def _padded(values: tuple[float, ...], length: int) -> tuple[float, ...]:
     return values + (0.0,) * (length - len(values))
 
 
-def _peak_exponent(section: Section) -> int:
+def _peak_exponent(section: AnySection) -> int:
     """Exponent of the power of two nearest the peak gain: the largest gain at z = 1, z = -1 and the resonance."""
-    b = [Fraction(c) for c in section.b] + [Fraction(0)] * (3 - len(section.b))
-    a = [Fraction(1), *(Fraction(c) for c in section.a)] + [Fraction(0)] * (2 - len(section.a))
+    forward, back = section.in_z()
+    b = [*forward] + [Fraction(0)] * (3 - len(forward))
+    a = [Fraction(1), *back] + [Fraction(0)] * (2 - len(back))
     cosines = [Fraction(1), Fraction(-1)]
     if a[2] > 0:
         cosines.append(max(Fraction(-1), min(Fraction(1), -a[1] * (1 + a[2]) / (4 * a[2]))))

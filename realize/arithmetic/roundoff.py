@@ -13,7 +13,8 @@ from math import sqrt
 
 from realize.algebra import polynomial as poly
 from realize.algebra.roots import isolate
-from realize.arithmetic.peak_gain import DEFAULT_WIDTH, lattice_of, peak_gain
+from realize.arithmetic.lattice import lattice_of
+from realize.arithmetic.peak_gain import DEFAULT_WIDTH, peak_gain
 from realize.arithmetic.state_space import Matrix, PulseRatio, StateSpace, in_parallel, state_paths
 from realize.checks.schur import STABLE, stability
 

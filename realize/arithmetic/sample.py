@@ -4,7 +4,8 @@ The firmware text and the Python model are two printings of the same steps, so o
 drift apart. Every operation rounds once, to the format of the realization.
 
 Conventions: a section is in transposed direct form II, ``b`` and ``a`` in ascending powers of 1/z, ``a`` without
-its leading 1 and subtracted. Integral states are in units of the output. ``state.x`` is kept between samples, any
+its leading 1 and subtracted. In delta the same form holds with ascending powers of 1/delta, ``delta = z - 1``: a state
+adds up what in z it would become. Integral states are in units of the output. ``state.x`` is kept between samples, any
 other name lives within one; a limit is a value of the format. The history never sees the clamped output.
 """
 
@@ -17,14 +18,16 @@ from typing import TYPE_CHECKING, NamedTuple
 
 import numpy as np
 
+from realize.arithmetic.realization import DeltaSection
 from realize.errors import RealizeError
 
 if TYPE_CHECKING:
     from realize.arithmetic.formats import FloatFormat
-    from realize.arithmetic.realization import Realization, Section
+    from realize.arithmetic.realization import AnySection, Realization
 
 #: Formats whose integral states carry a second word with what the addition lost. In float32 an increment of 2.5e-8
-#: (1 % error, 40 s, 10 kHz) beside a state of 1 is below half a unit in the last place; float64 has 29 bits more.
+#: (1 % error, 40 s, 10 kHz) beside a state of 1 is below half a unit in the last place; float64 has 29 bits more. So do
+#: the states of sections in delta: beside a pole of 2 Hz at 500 kHz (2.5e-5 from z = 1) they would stop 0.1 % short.
 INTEGRAL_COMPENSATED = {"float32": True, "float64": False}
 
 HOLD_INTEGRAL = "hold-integral"
@@ -227,18 +230,18 @@ def copied(target: str, source: str) -> Sum:
     return Sum(target, (plain(source),))
 
 
-def section_output(k: int, section: Section, source: str, place: str) -> Sum:
+def section_output(k: int, section: AnySection, source: str, place: str) -> Sum:
     """``y = b_0 u + s_1``, the state found at ``place`` (``state.`` or nothing)."""
     now = product(1, f"section{k}_b0", section.b[0], source)
     return Sum(f"section{k}_output", (*now, plain(f"{place}section{k}_1")) if section.a else now)
 
 
-def section_state(k: int, section: Section, i: int, place: str, source: str, answer: str) -> Sum:
-    """``s_i = s_{i+1} + b_i u - a_i y``."""
+def section_following(k: int, section: AnySection, i: int, place: str, source: str, answer: str) -> tuple[Term, ...]:
+    """``s_{i+1} + b_i u - a_i y``: what state i becomes, or in delta what is added to it."""
     following = (plain(f"{place}section{k}_{i + 1}"),) if i < len(section.a) else ()
     forward = product(1, f"section{k}_b{i}", section.b[i], source)
     back = product(-1, f"section{k}_a{i}", section.a[i - 1], answer)
-    return Sum(f"{place}section{k}_{i}", (*following, *forward, *back))
+    return (*following, *forward, *back)
 
 
 # ---------------------------------------------------------------- the steps
@@ -274,9 +277,20 @@ def _section_states(realization: Realization) -> list[Step]:
     last = "input"
     for k, section in enumerate(realization.sections, 1):
         answer = f"section{k}_output"
-        steps += [section_state(k, section, i, "state.", last, answer) for i in range(1, len(section.a) + 1)]
+        for i in range(1, len(section.a) + 1):
+            state, following = f"state.section{k}_{i}", section_following(k, section, i, "state.", last, answer)
+            if isinstance(section, DeltaSection):
+                increment = f"section{k}_{i}_increment"
+                steps += [Sum(increment, following), Integrate(state, increment, _rest(realization, state), None)]
+            else:
+                steps.append(Sum(state, following))
         last = answer
     return steps
+
+
+def _rest(realization: Realization, state: str) -> str | None:
+    """The word that carries what an addition to a state lost, where the format needs one."""
+    return f"{state}_rest" if INTEGRAL_COMPENSATED[realization.format.name] else None
 
 
 def _integral_states(realization: Realization, anti_windup: str, tracking_gain: float, applied: str) -> list[Step]:
@@ -286,14 +300,13 @@ def _integral_states(realization: Realization, anti_windup: str, tracking_gain: 
     if realization.integral and anti_windup == BACK_CALCULATION and tracking_gain:
         steps.append(Sum("shortfall", (plain(applied), plain("unclamped", -1))))
         back = product(1, "tracking_gain", tracking_gain, "shortfall")
-    compensated = INTEGRAL_COMPENSATED[realization.format.name]
     held = applied if anti_windup == HOLD_INTEGRAL else None
     for i, gain in enumerate(realization.integral, 1):
         state, increment = f"state.integral{i}", f"integral{i}_increment"
         forward = product(1, f"integral{i}_gain", gain, "input")
         above = (plain(f"state.integral{i + 1}"),) if i < len(realization.integral) else ()
         steps.append(Sum(increment, (*forward, *above, *(back if i == 1 else ()))))
-        steps.append(Integrate(state, increment, f"{state}_rest" if compensated else None, held))
+        steps.append(Integrate(state, increment, _rest(realization, state), held))
     return steps
 
 
@@ -321,10 +334,13 @@ def _kept(output: Sequence[Step], following: Sequence[Step]) -> tuple[str, ...]:
 
 
 def _state_fields(realization: Realization) -> tuple[str, ...]:
-    sections = [
-        f"section{k}_{i}" for k, section in enumerate(realization.sections, 1) for i in range(1, len(section.a) + 1)
-    ]
     words = ("", "_rest") if INTEGRAL_COMPENSATED[realization.format.name] else ("",)
+    sections = [
+        f"section{k}_{i}{word}"
+        for k, section in enumerate(realization.sections, 1)
+        for i in range(1, len(section.a) + 1)
+        for word in (words if isinstance(section, DeltaSection) else ("",))
+    ]
     integrals = [f"integral{i}{word}" for i in range(1, len(realization.integral) + 1) for word in words]
     return (*sections, *integrals)
 

@@ -31,7 +31,7 @@ METHODS = (
 LOOP_METHODS = ("frequency-fit", "plant-input-mapped")
 
 #: Structures in floating point, and in integers.
-FLOAT_STRUCTURES = ("direct", "cascade")
+FLOAT_STRUCTURES = ("direct", "cascade", "delta")
 INTEGER_STRUCTURES = ("direct", "cascade", "error-feedback", "delta", "normal", "parallel")
 
 #: C types of counts, at the interface of integer arithmetic.

@@ -2,16 +2,27 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from fractions import Fraction
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 from realize.arithmetic.sample import BACK_CALCULATION, HOLD_INTEGRAL, Sample, variables
-from realize.checks.agreement import agreed_text
-from realize.checks.check import Check
+from realize.firmware.c_preamble import (
+    CAUTION,
+    accepted_text,
+    calls,
+    counted,
+    labelled,
+    listed,
+    loop_lines,
+    paragraph,
+    period_macros,
+    period_text,
+    range_text,
+    signatures,
+)
 from realize.firmware.c_text import (
     LONGEST_EXACT,
-    WIDTH,
     Dialect,
     comment,
     dialect,
@@ -21,20 +32,9 @@ from realize.firmware.c_text import (
     wrapped,
 )
 from realize.firmware.emission import Emission
-from realize.firmware.loop_text import loop_entries, loop_sentence
 
 if TYPE_CHECKING:
-    from realize.arithmetic.realization import Section
-
-#: Width of the label column in the header's first comment.
-LABEL = 15
-
-CAUTION = (
-    "Controllers move machines. Check on the bench, with the actuator limited, before closing the loop. This code and "
-    "the tool that wrote it do not replace a functional-safety process (IEC 61508 and its sector standards), local "
-    "codes, or the judgement of a licensed engineer where one is required. Code-generating tools earn credit only "
-    "through verification of their output."
-)
+    from realize.arithmetic.realization import AnySection
 
 
 def header_text(emission: Emission, sample: Sample, stored: Mapping[str, float]) -> str:
@@ -55,7 +55,7 @@ def header_text(emission: Emission, sample: Sample, stored: Mapping[str, float])
         f"#ifndef {c.name}_H",
         f"#define {c.name}_H",
         "",
-        *_period(c, emission.realization.period_s),
+        *period_macros(c.name, emission.realization.period_s),
         *_limits(c, sample),
         "#ifdef __cplusplus",
         'extern "C" {',
@@ -84,28 +84,28 @@ def _preamble(emission: Emission, sample: Sample) -> list[str]:
         *([*wrapped(emission.about), ""] if emission.about else []),
         *_provenance(emission, sample),
         "",
-        *_paragraph("Calls", _calls(emission)),
-        *_paragraph("Feed-through", _feed_through(emission)),
-        *_paragraph("Arithmetic", _arithmetic()),
-        *_loop(emission.loop),
-        *_listed("Accepted deviations", [_accepted(entry, emission.checks) for entry in emission.accepted]),
-        *_listed("Not protected", _unprotected(emission, sample)),
-        *_listed("Method notes", emission.notes),
-        *_paragraph("Caution", CAUTION)[:-1],
+        *paragraph("Calls", calls(name)),
+        *paragraph("Feed-through", _feed_through(emission)),
+        *paragraph("Arithmetic", _arithmetic()),
+        *loop_lines(emission.loop),
+        *listed("Accepted deviations", [accepted_text(entry, emission.checks) for entry in emission.accepted]),
+        *listed("Not protected", _unprotected(emission, sample)),
+        *listed("Method notes", emission.notes),
+        *paragraph("Caution", CAUTION)[:-1],
     ]
 
 
 def _provenance(emission: Emission, sample: Sample) -> list[str]:
     realization = emission.realization
     rate = number_text(1 / realization.period_s)
-    labelled = [
+    entries = [
         ("revision", emission.revision),
         ("requirement", emission.requirement),
         ("author", emission.author),
         ("transfer", f"G(s) = {emission.transfer_text}"),
         *emission.particulars,
         ("method", emission.method),
-        ("sample period", f"{_period_text(realization.period_s)} s (rate {rate} Hz)"),
+        ("sample period", f"{period_text(realization.period_s)} s (rate {rate} Hz)"),
         ("structure", _structure(emission)),
         ("arithmetic", f"{realization.format.name}, every operation rounded once, to nearest"),
         ("input", f"the input (for a controller the error, reference minus measurement){_input_text(emission)}"),
@@ -115,39 +115,24 @@ def _provenance(emission: Emission, sample: Sample) -> list[str]:
         ("anti-windup", _anti_windup(emission, sample)),
         ("input guard", _guard(emission)),
     ]
-    return [
-        line
-        for label, text in labelled
-        if text
-        for line in wrapped(text, f"{wrapped(label)[0]:<{LABEL}} ", " " * (LABEL + 1))
-    ]
-
-
-def _period_text(period_s: Fraction) -> str:
-    exact = str(period_s)
-    return exact if len(exact) <= len("1/1000000000000") else number_text(period_s)
+    return labelled(entries)
 
 
 def _structure(emission: Emission) -> str:
     realization = emission.realization
-    sections = _counted(len(realization.sections), "section")
-    integrals = _counted(len(realization.integral), "integral state")
+    sections = counted(len(realization.sections), "section")
+    integrals = counted(len(realization.integral), "integral state")
     units = " in units of the output" if realization.integral else ""
-    return f"{realization.structure}: {sections} in transposed direct form II; {integrals}{units}"
-
-
-def _counted(count: int, what: str) -> str:
-    return f"{count or 'no'} {what}{'' if count == 1 else 's'}"
-
-
-def _range_text(limits: tuple[Fraction, Fraction], unit: str) -> str:
-    return f"{number_text(limits[0])} to {number_text(limits[1])} {unit}".rstrip()
+    form = "transposed direct form II"
+    if realization.structure == "delta":
+        form += " of the operator delta = z - 1, so that each state adds up increments"
+    return f"{realization.structure}: {sections} in {form}; {integrals}{units}"
 
 
 def _input_text(emission: Emission) -> str:
     if emission.input_range is None:
         return f", in {emission.input_unit}" if emission.input_unit else ""
-    return f"; range {_range_text(emission.input_range, emission.input_unit)}, declared but not enforced"
+    return f"; range {range_text(emission.input_range, emission.input_unit)}, declared but not enforced"
 
 
 def _output_text(emission: Emission, sample: Sample) -> str:
@@ -155,7 +140,7 @@ def _output_text(emission: Emission, sample: Sample) -> str:
     if emission.output_range is None:
         return f"{unit}; no range was given: nothing limits it"
     inside = "" if _is_stored_exactly(emission.output_range, sample) else ", rounded inward to the format"
-    return f"; clamped to {_range_text(emission.output_range, emission.output_unit)}{inside}"
+    return f"; clamped to {range_text(emission.output_range, emission.output_unit)}{inside}"
 
 
 def _count_text(count: tuple[Fraction, int] | None, unit: str) -> str | None:
@@ -195,16 +180,6 @@ def _guard(emission: Emission) -> str:
     return "none: an input that is NaN or infinite spoils the state until it is cleared"
 
 
-def _calls(emission: Emission) -> str:
-    name = emission.name
-    return (
-        f"{name}_clear or {name}_preset once; then, every sample period, either {name}_update alone, or "
-        f"{name}_output with the input, the actuator, and {name}_advance with the same input and what the actuator "
-        f"was really given. {name}_update is the two with the command applied. One {name}_state per instance; no "
-        "function touches anything else, and none may work on one state while another does."
-    )
-
-
 def _feed_through(emission: Emission) -> str:
     sections = emission.realization.sections
     if sections and all(section.b[0] != 0 for section in sections):
@@ -227,18 +202,6 @@ def _arithmetic() -> str:
     )
 
 
-def _accepted(entry: Mapping[str, Any], checks: Sequence[Mapping[str, Any]]) -> str:
-    """What was agreed to, with the figure that is left where the check is there."""
-    limit, unit = entry.get("limit"), entry.get("unit") or ""
-    key = [entry["check"], entry.get("difference"), "out"]
-    check = next((c for c in checks if [c.get(k) for k in ("check", "difference", "verdict")] == key), None)
-    figure = number_text(limit) if isinstance(limit, Fraction) else str(limit)
-    up_to = "" if limit is None else f", up to {figure} {unit}".rstrip()
-    said = f"{entry['check']}{up_to}" if check is None else agreed_text(Check(**check), limit)
-    by = f" ({entry['by']})" if entry.get("by") else ""
-    return f"{said}: {entry.get('because', '')}{by}"
-
-
 def _unprotected(emission: Emission, sample: Sample) -> list[str]:
     sections = emission.realization.sections
     lively = [str(k) for k, section in enumerate(sections, 1) if not _decays(section)]
@@ -256,45 +219,13 @@ def _unprotected(emission: Emission, sample: Sample) -> list[str]:
     ]
 
 
-def _decays(section: Section) -> bool:
+def _decays(section: AnySection) -> bool:
     """Whether all poles lie inside the unit circle (Jury's conditions, exact on stored numbers)."""
-    a1, a2 = (*map(Fraction, section.a), Fraction(0), Fraction(0))[:2]
+    a1, a2 = (*section.in_z()[1], Fraction(0), Fraction(0))[:2]
     return abs(a2) < 1 and abs(a1) < 1 + a2
 
 
-def _loop(loop: Mapping[str, Any] | None) -> list[str]:
-    if loop is None:
-        return []
-    entries = [line for entry in loop_entries(loop) for line in wrapped(entry, "- ", "  ")]
-    return [*wrapped(f"Loop: {loop_sentence(loop)}"), *entries, ""]
-
-
-def _paragraph(label: str, text: str) -> list[str]:
-    return [*wrapped(f"{label}: {text}"), ""]
-
-
-def _listed(label: str, entries: Sequence[str]) -> list[str]:
-    if not entries:
-        return []
-    return [f"{label}:", *(line for entry in entries for line in wrapped(entry, "- ", "  ")), ""]
-
-
 # ---------------------------------------------------------------- macros and types
-
-
-def _period(c: Dialect, period_s: Fraction) -> list[str]:
-    numerator, denominator = (integer_constant(n) for n in (period_s.numerator, period_s.denominator))
-    if numerator is None or denominator is None:
-        numerator, denominator = f"{float(period_s):.16e}", "1"
-        says = "Sample period in seconds, to 17 digits: the exact fraction has no room in an integer constant."
-    else:
-        says = "Sample period in seconds, exactly."
-    return [
-        *comment([says]),
-        f"#define {c.name}_PERIOD_NUMERATOR {numerator}",
-        f"#define {c.name}_PERIOD_DENOMINATOR {denominator}",
-        "",
-    ]
 
 
 def _limits(c: Dialect, sample: Sample) -> list[str]:
@@ -333,8 +264,10 @@ def _meaning(field: str) -> str:
         return known[field]
     part, _, role = field.partition("_")
     kind, number = part.rstrip("0123456789"), part.lstrip("abcdefghijklmnopqrstuvwxyz")
+    if role.endswith("rest"):
+        return "what the last addition to it lost"
     if kind == "integral":
-        return "what the last addition to it lost" if role else f"integral state {number}"
+        return f"integral state {number}"
     if role == "output":
         return f"what section {number} hands on, from output to advance"
     return f"section {number}, state {role}"
@@ -361,7 +294,8 @@ def _table(c: Dialect, stored: Mapping[str, float]) -> list[str]:
 
 
 def _prototypes(c: Dialect, emission: Emission, sample: Sample) -> list[str]:
-    clear, update, output, advance, preset = (signature + ";" for signature in signatures(c))
+    declared = signatures(c.name, c.real, c.real, table=c.table)
+    clear, update, output, advance, preset = (signature + ";" for signature in declared)
     return [
         "/* All state zero. */",
         clear,
@@ -379,25 +313,6 @@ def _prototypes(c: Dialect, emission: Emission, sample: Sample) -> list[str]:
         preset,
         "",
     ]
-
-
-def signatures(c: Dialect) -> tuple[str, str, str, str, str]:
-    """Clear, update, output, advance and preset, as declared and defined."""
-    state, value = f"{c.name}_state *state", f"{c.real} input"
-    both = [state, *([f"const {c.name}_coefficients *coefficients"] if c.table else [])]
-    return (
-        f"void {c.name}_clear({state})",
-        _signature(f"{c.real} {c.name}_update", [*both, value]),
-        _signature(f"{c.real} {c.name}_output", [*both, value]),
-        _signature(f"void {c.name}_advance", [*both, value, f"{c.real} applied"]),
-        _signature(f"int {c.name}_preset", [*both, value, f"{c.real} output"]),
-    )
-
-
-def _signature(function: str, parameters: Sequence[str]) -> str:
-    """On one line, or a line for each parameter."""
-    line = f"{function}({', '.join(parameters)})"
-    return line if len(line) < WIDTH else f"{function}(\n    " + ",\n    ".join(parameters) + ")"
 
 
 def _output_says(sample: Sample) -> str:

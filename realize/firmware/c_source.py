@@ -10,8 +10,18 @@ from collections.abc import Mapping, Sequence
 
 from realize.arithmetic.sample import Guard, Integrate, Limit, Sample, Step, Sum
 from realize.arithmetic.settling import Settling
-from realize.firmware.c_header import signatures
-from realize.firmware.c_text import WIDTH, Dialect, comment, dialect, hexadecimal, statement, variable, wrapped
+from realize.firmware.c_preamble import signatures
+from realize.firmware.c_text import (
+    WIDTH,
+    Dialect,
+    comment,
+    definition,
+    dialect,
+    hexadecimal,
+    statement,
+    variable,
+    wrapped,
+)
 from realize.firmware.emission import Emission
 
 #: Comes after every numbered part.
@@ -243,30 +253,16 @@ def _integrate(c: Dialect) -> list[str]:
 
 
 def _functions(c: Dialect, sample: Sample, settling: Settling) -> list[str]:
-    clear, update, output, advance, preset = signatures(c)
+    clear, update, output, advance, preset = signatures(c.name, c.real, c.real, table=c.table)
     answer = [f"    return {sample.result};"]
     zero = [f"    state->{field} = {c.literal(0.0)};" for field in sample.fields or ("unused",)]
     return [
-        *_function(clear, zero),
-        *_function(update, [*_statements(c, sample.update), *answer]),
-        *_function(output, [*_statements(c, sample.output), *answer]),
-        *_function(advance, _statements(c, sample.advance)),
-        *_function(preset, _preset(c, settling)),
+        *definition(clear, zero),
+        *definition(update, [*_statements(c, sample.update), *answer]),
+        *definition(output, [*_statements(c, sample.output), *answer]),
+        *definition(advance, _statements(c, sample.advance)),
+        *definition(preset, _preset(c, settling)),
     ]
-
-
-def _function(signature: str, body: Sequence[str]) -> list[str]:
-    """A definition; parameters the body does not read are named as such."""
-    names = [part.replace("*", " ").split()[-1] for part in signature.partition("(")[2].rstrip(")").split(",")]
-    text = "\n".join(body)
-    unread = [f"    (void){name};" for name in names if not _reads(text, name)]
-    return [signature, "{", *unread, *body, "}", ""]
-
-
-def _reads(text: str, name: str) -> bool:
-    """Whether a name stands in the text as a word of its own."""
-    words = "".join(c if c.isalnum() or c == "_" else " " for c in text).split()
-    return name in words
 
 
 def _statements(c: Dialect, steps: Sequence[Step]) -> list[str]:

@@ -178,3 +178,17 @@ def comment(lines: Sequence[str]) -> list[str]:
     if len(lines) == 1:
         return [f"/* {lines[0]} */"]
     return [f"/* {lines[0]}", *(f" * {line}".rstrip() for line in lines[1:]), " */"]
+
+
+def definition(signature: str, body: Sequence[str]) -> list[str]:
+    """A definition; parameters the body does not read are named as such."""
+    names = [part.replace("*", " ").split()[-1] for part in signature.partition("(")[2].rstrip(")").split(",")]
+    text = "\n".join(body)
+    unread = [f"    (void){name};" for name in names if not reads(text, name)]
+    return [signature, "{", *unread, *body, "}", ""]
+
+
+def reads(text: str, name: str) -> bool:
+    """Whether a name stands in the text as a word of its own."""
+    words = "".join(c if c.isalnum() or c == "_" else " " for c in text).split()
+    return name in words

@@ -14,7 +14,6 @@ from realize.band import frequency_text
 from realize.checks import Check
 from realize.design import Accept, Design, Signal
 from realize.design.record import exact_entries, exact_entry
-from realize.errors import Refused
 from realize.firmware.c_text import number_text
 from realize.firmware.emission import Emission
 from realize.firmware.record import FIGURE_DIGITS
@@ -68,41 +67,57 @@ def emit(design: Design) -> Emitted:
     """
     comparison = choose(design)
     chosen = refuse_unacceptable(comparison)
-    return Emitted(comparison, chosen, render_firmware(_emission(comparison, chosen)))
+    return Emitted(comparison, chosen, _rendered(comparison, chosen))
 
 
-def _emission(comparison: Comparison, chosen: MethodResult) -> Emission:
+def _rendered(comparison: Comparison, chosen: MethodResult) -> dict[str, str]:
     design, target = comparison.design, comparison.design.target
-    if not isinstance(chosen.realization, Realization):
-        raise Refused("[target] arithmetic", "integers, whose C is not written yet", "float32, float64", "use float32")
-    return Emission(
-        name=design.name,
-        realization=chosen.realization,
-        method=chosen.method,
-        transfer_text=design.transfer_text,
-        about=design.about,
-        revision=design.revision,
-        requirement=design.requirement,
-        author=design.author,
-        particulars=_particulars(comparison),
-        input_range=design.input.range,
-        output_range=design.output.range,
-        input_unit=design.input.unit,
-        output_unit=design.output.unit,
-        input_count=_count(design.input),
-        output_count=_count(design.output),
-        coefficients=target.coefficients,
-        recursion_sign=target.recursion_sign,
-        anti_windup=target.anti_windup,
-        tracking_time_s=target.tracking_time_s,
-        guard_nonfinite=target.guard_nonfinite,
-        notes=[note for note in chosen.notes if chosen.loop is None or note not in chosen.loop.notes],
-        design=design.resolved(),
-        causal=_causal(comparison),
-        loop=None if chosen.loop is None else loop_document(comparison, chosen.loop),
-        checks=[vars(check) for check in chosen.checks],
-        accepted=[_accepted(check, agreement) for check, agreement in chosen.accepted],
-    )
+    common = _common(comparison, chosen)
+    if isinstance(chosen.realization, Realization):
+        return render_firmware(
+            Emission(
+                **common,
+                realization=chosen.realization,
+                input_count=_count(design.input),
+                output_count=_count(design.output),
+                guard_nonfinite=target.guard_nonfinite,
+            )
+        )
+    # Here, because a design in floating point does not need it, and its start is short.
+    from realize.firmware.integer.emission import IntegerEmission
+    from realize.firmware.integer.render import render_integer_firmware
+
+    assert chosen.realization is not None
+    return render_integer_firmware(IntegerEmission(**common, realization=chosen.realization))
+
+
+def _common(comparison: Comparison, chosen: MethodResult) -> dict[str, Any]:
+    """What an emission says, whatever its numbers are."""
+    design, target = comparison.design, comparison.design.target
+    return {
+        "name": design.name,
+        "method": chosen.method,
+        "transfer_text": design.transfer_text,
+        "about": design.about,
+        "revision": design.revision,
+        "requirement": design.requirement,
+        "author": design.author,
+        "particulars": _particulars(comparison),
+        "input_range": design.input.range,
+        "output_range": design.output.range,
+        "input_unit": design.input.unit,
+        "output_unit": design.output.unit,
+        "coefficients": target.coefficients,
+        "recursion_sign": target.recursion_sign,
+        "anti_windup": target.anti_windup,
+        "tracking_time_s": target.tracking_time_s,
+        "notes": [note for note in chosen.notes if chosen.loop is None or note not in chosen.loop.notes],
+        "design": design.resolved(),
+        "causal": _causal(comparison),
+        "loop": None if chosen.loop is None else loop_document(comparison, chosen.loop),
+        "checks": [vars(check) for check in chosen.checks],
+        "accepted": [_accepted(check, agreement) for check, agreement in chosen.accepted],
+    }
 
 
 def _particulars(comparison: Comparison) -> list[tuple[str, str]]:

@@ -10,11 +10,14 @@ from math import isfinite
 from typing import TYPE_CHECKING, Any
 
 from realize.algebra.expression import exact_text
+from realize.arithmetic.realization import DeltaSection
 from realize.firmware.c_text import hexadecimal
 from realize.version import VERSION
 
 if TYPE_CHECKING:
+    from realize.arithmetic.realization import AnySection
     from realize.firmware.emission import Emission
+    from realize.firmware.integer.emission import IntegerEmission
 
 SCHEMA = "realize/1"
 
@@ -36,21 +39,30 @@ def record(emission: Emission, files: Mapping[str, str]) -> dict[str, Any]:
     -------
     dict
         Coefficients in ascending powers of 1/z, ``a`` without its 1 and for subtraction, whatever sign the C text
-        stores. Figures of the checks and of the loop are rounded to five digits; what is not finite is null.
+        stores. Sections in delta have these too, but do not store them: theirs, in ascending powers of 1/delta, are
+        under ``coefficients``. Figures of the checks and of the loop are rounded to five digits; what is not finite is
+        null.
     """
     realization = emission.realization
+    stored = {
+        "structure": realization.structure,
+        "arithmetic": realization.format.name,
+        "integral": [_coefficient(gain) for gain in realization.integral],
+        "sections": [_section(section) for section in realization.sections],
+    }
+    return assembled(emission, stored, files)
+
+
+def assembled(
+    emission: Emission | IntegerEmission, stored: Mapping[str, Any], files: Mapping[str, str]
+) -> dict[str, Any]:
+    """A record with what is stored in any arithmetic between the design and the checks."""
     return {
         "schema": SCHEMA,
         "design": dict(emission.design),
         "causal": dict(emission.causal),
         "method": emission.method,
-        "structure": realization.structure,
-        "arithmetic": realization.format.name,
-        "integral": [_coefficient(gain) for gain in realization.integral],
-        "sections": [
-            {"b": [_coefficient(b) for b in section.b], "a": [_coefficient(a) for a in section.a]}
-            for section in realization.sections
-        ],
+        **stored,
         "checks": [_figures(check) for check in emission.checks],
         "accepted": [_figures(entry) for entry in emission.accepted],
         "loop": _figures(emission.loop),
@@ -61,11 +73,29 @@ def record(emission: Emission, files: Mapping[str, str]) -> dict[str, Any]:
 
 def record_text(emission: Emission, files: Mapping[str, str]) -> str:
     """The record as JSON text."""
-    return json.dumps(record(emission, files), indent=2, allow_nan=False) + "\n"
+    return document_text(record(emission, files))
+
+
+def document_text(document: Mapping[str, Any]) -> str:
+    """A record as text."""
+    return json.dumps(document, indent=2, allow_nan=False) + "\n"
+
+
+def _section(section: AnySection) -> dict[str, Any]:
+    stored = {"b": [_coefficient(b) for b in section.b], "a": [_coefficient(a) for a in section.a]}
+    if not isinstance(section, DeltaSection):
+        return stored
+    b, a = section.in_z()
+    return {"b": [_unstored(c) for c in b], "a": [_unstored(c) for c in a], "operator": "delta", "coefficients": stored}
 
 
 def _coefficient(value: float) -> dict[str, Any]:
     return {"value": str(Fraction(value)), "stored": hexadecimal(value), "fraction_bits": None}
+
+
+def _unstored(value: Fraction) -> dict[str, Any]:
+    """A coefficient that follows from what is stored."""
+    return {"value": str(value), "stored": None, "fraction_bits": None}
 
 
 def _figures(value: Any) -> Any:

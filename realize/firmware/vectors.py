@@ -15,21 +15,19 @@ import numpy as np
 from realize.arithmetic.recursion import Recursion
 from realize.arithmetic.sample import Sample, largest
 from realize.firmware.c_text import hexadecimal
+from realize.firmware.patterns import IMPULSE, SWEEP, UNIT, impulse, noise, sweep
 
 if TYPE_CHECKING:
     from realize.arithmetic.formats import FloatFormat
     from realize.firmware.emission import Emission
 
-#: Samples of each segment: an impulse; noise within the limits, to compare every rounding where no clamp hides it; a
-#: step long enough to see the answer; a sweep up to half the rate; noise at full scale; each level of the two
-#: saturating passes; inputs that are not finite. 1,248 in all, 1,216 where inputs are not guarded.
-IMPULSE, QUIET, STEP, SWEEP, NOISE, HELD, NONFINITE = 64, 192, 128, 256, 192, 24, 32
+#: Samples of each segment beside the impulse and the sweep: noise within the limits, to compare every rounding where no
+#: clamp hides it; a step long enough to see the answer; noise at full scale; each level of the two saturating passes;
+#: inputs that are not finite. 1,248 in all, 1,216 where inputs are not guarded.
+QUIET, STEP, NOISE, HELD, NONFINITE = 192, 128, 192, 24, 32
 
 #: Where the saturating passes begin.
 SATURATING = IMPULSE + QUIET + STEP + SWEEP + NOISE
-
-#: One part of full scale.
-UNIT = 1 << 15
 
 #: The drive makes this many times what saturates the command.
 OVERDRIVE = 4.0
@@ -77,7 +75,7 @@ def vectors(emission: Emission) -> tuple[list[float], list[float]]:
 
 def _inputs(emission: Emission, quiet: float, drives: tuple[float, float], low: float, high: float) -> list[float]:
     """All segments."""
-    inputs = [_scaled(m, low, high) for m in (*_impulse(), *_noise(QUIET), *[UNIT] * STEP, *_sweep(), *_noise(NOISE))]
+    inputs = [_scaled(m, low, high) for m in (*impulse(), *noise(QUIET), *[UNIT] * STEP, *sweep(), *noise(NOISE))]
     inputs[IMPULSE : IMPULSE + QUIET] = [x * quiet for x in inputs[IMPULSE : IMPULSE + QUIET]]
     for drive in (drives[0], -drives[1]):
         for share, part in LEVELS:
@@ -93,8 +91,8 @@ def _quiet(emission: Emission, sample: Sample, low: float, high: float) -> float
     """The largest power of two, at most 1, by which noise is scaled to keep the command within half its limits."""
     if sample.low is None or sample.high is None:
         return 1.0
-    noise = [_scaled(m, low, high) for m in _noise(QUIET)]
-    peak = max(map(abs, Recursion(emission.realization, None, "none").run(noise)))
+    loud = [_scaled(m, low, high) for m in noise(QUIET)]
+    peak = max(map(abs, Recursion(emission.realization, None, "none").run(loud)))
     within, quiet = max(abs(sample.low), abs(sample.high)) / 2, 1.0
     while isfinite(peak) and peak * quiet > within > 0:
         quiet /= 2
@@ -133,31 +131,6 @@ def _full_scale(emission: Emission) -> tuple[float, float]:
 def _scaled(m: int, low: float, high: float) -> float:
     """``m/2^15`` of full scale, towards the high end where m is positive; one rounding at most."""
     return m / UNIT * high if m >= 0 else -m / UNIT * low
-
-
-def _impulse() -> list[int]:
-    return [UNIT, *[0] * (IMPULSE - 1)]
-
-
-def _sweep() -> list[int]:
-    """A triangle wave of rising rate, from an integer phase that makes one turn in 2^16."""
-    parts = []
-    phase = 0
-    for k in range(SWEEP):
-        folded = abs((phase + UNIT // 2) % (2 * UNIT) - UNIT)
-        parts.append(2 * (UNIT // 2 - folded))
-        phase += UNIT * k // SWEEP
-    return parts
-
-
-def _noise(count: int) -> list[int]:
-    """High halves of ``s <- 1664525 s + 1013904223 mod 2^32`` from 1 (Knuth and Lewis; constants from memory)."""
-    parts = []
-    state = 1
-    for _ in range(count):
-        state = (1664525 * state + 1013904223) % (1 << 32)
-        parts.append((state >> 16) - UNIT)
-    return parts
 
 
 def _nonfinite(low: float, high: float) -> list[float]:

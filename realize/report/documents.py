@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING, Any
 from realize.algebra.expression import exact_text
 from realize.algebra.roots import Root
 from realize.algebra.rounding import FLOAT64
+from realize.arithmetic.realization import Realization
 from realize.checks import Check
 from realize.design import Design
 from realize.errors import RealizeError
@@ -19,6 +20,7 @@ from realize.rolloff import Proposal
 from realize.workflow import Comparison, MethodResult
 
 if TYPE_CHECKING:
+    from realize.arithmetic.integer import IntegerRealization
     from realize.loop_design import LoopResult
 
 SCHEMA = "realize/1"
@@ -152,9 +154,17 @@ def _coefficients(result: MethodResult) -> Document:
         "numerator": list(numerator),
         "denominator": list(denominator),
         "integral": [float(gain) for gain in result.realization.integral],
-        "sections": [{"b": [float(b) for b in s.b], "a": [float(a) for a in s.a]} for s in result.realization.sections],
+        "sections": _sections(result.realization),
         "structure": result.realization.structure,
     }
+
+
+def _sections(realization: Realization | IntegerRealization) -> list[Document]:
+    """In ascending powers of 1/z; those in delta as the nearest doubles."""
+    if realization.structure == "delta" and isinstance(realization, Realization):
+        in_z = [section.in_z() for section in realization.sections]
+        return [{"b": [float(c) for c in b], "a": [float(c) for c in a], "operator": "delta"} for b, a in in_z]
+    return [{"b": [float(b) for b in s.b], "a": [float(a) for a in s.a]} for s in realization.sections]
 
 
 def emit_document(emitted: Emitted, paths: Sequence[str]) -> Document:

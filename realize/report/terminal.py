@@ -45,7 +45,7 @@ _COLUMNS = (
     ("phase in band", ("phase", "in band", "deg")),
     ("low-frequency gain", ("gain", "at 0 Hz", "%")),
     ("step deviation", ("step", "deviates", "%")),
-    ("step overshoot", ("step", "overshoot", "points")),
+    ("step overshoot", ("over-", "shoot", "points")),
     ("converter step", ("converter", "step", "%")),
     ("round-off", ("round-", "off", "%")),
 )
@@ -551,7 +551,8 @@ def _value_text(value: float | complex | str | None) -> str:
 def _complex_text(z: complex) -> str:
     if z.imag == 0:
         return f"{z.real:.5g}"
-    return f"{z.real:.4g}+-{abs(z.imag):.5g}j" if z.real else f"+-{abs(z.imag):.5g}j"
+    # A real part below the last of five digits of the whole is not shown.
+    return f"{z.real:.4g}+-{abs(z.imag):.5g}j" if abs(z.real) > 5e-6 * abs(z) else f"+-{abs(z.imag):.5g}j"
 
 
 def _optional(value: float | None, unit: str) -> str:

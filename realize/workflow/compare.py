@@ -57,7 +57,7 @@ def _comparison(design: Design, causal: Causal, names: Sequence[str], *, unround
     period_s = require_period(design)
     band_rad_s, rests_on = band_of(design, causal.transfer)
     reference = ContinuousReference(causal.transfer, period_s, band_rad_s)
-    setting = _setting(design, causal.transfer, period_s)
+    setting = loop_setting_of(design, causal.transfer, period_s)
     results = [_result(design, reference, setting, name) for name in names]
     if unrounded_too:
         results = [_with_unrounded(design, reference, result) for result in results]
@@ -69,7 +69,7 @@ def _comparison(design: Design, causal: Causal, names: Sequence[str], *, unround
         results[place] = _with_unrounded(design, reference, results[place])
 
 
-def _setting(design: Design, controller: TransferFunction, period_s: Fraction) -> LoopSetting | None:
+def loop_setting_of(design: Design, controller: TransferFunction, period_s: Fraction) -> LoopSetting | None:
     """The loops; what analyses them is loaded only where there is a plant, which keeps the start short."""
     if design.plant is None:
         return None

@@ -13,7 +13,8 @@ from hypothesis import assume, given
 from hypothesis import strategies as st
 
 from realize.algebra import polynomial as poly
-from realize.arithmetic.peak_gain import DEFAULT_WIDTH, PeakGain, attaining_input, lattice_of, peak_gain
+from realize.arithmetic.lattice import lattice_of
+from realize.arithmetic.peak_gain import DEFAULT_WIDTH, PeakGain, attaining_input, peak_gain
 from realize.arithmetic.state_space import (
     PulseRatio,
     in_parallel,

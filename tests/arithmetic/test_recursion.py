@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from fractions import Fraction
 from math import comb
 from random import Random
@@ -13,13 +14,32 @@ from hypothesis import example, given
 from hypothesis import strategies as st
 
 from realize.arithmetic.formats import FLOAT32, FLOAT64, FORMATS, FloatFormat
-from realize.arithmetic.realization import Realization
+from realize.arithmetic.realization import DeltaSection, Realization, realization, stored_pulse
 from realize.arithmetic.recursion import Recursion
 from realize.firmware import Emission
-from tests.firmware.designs import PERIOD_S, UNIT_RANGE, grid, random_emission, rounded, section
+from realize.methods import discretize
+from realize.transfer import PulseTransferFunction, TransferFunction
+from tests.firmware.designs import (
+    PERIOD_S,
+    UNIT_RANGE,
+    delta_section,
+    grid,
+    in_delta,
+    random_emission,
+    rounded,
+    section,
+)
 
+PI = Fraction("3.14159265358979323846264338327950288")
 NAN, INF = float("nan"), float("inf")
 SEEDS = st.integers(0, 1 << 32)
+
+
+def low_pass(order: int, corner_hz: int, period_s: Fraction) -> PulseTransferFunction:
+    """Bilinear, of gain 1 at rest; of order 2 with a damping ratio of 0.7071."""
+    w = 2 * PI * corner_hz
+    denominator = {1: (1, w), 2: (1, 2 * Fraction(7071, 10000) * w, w * w)}[order]
+    return discretize(TransferFunction.from_polynomials([w**order], denominator), period_s, "bilinear").pulse
 
 
 class Plain:
@@ -29,6 +49,7 @@ class Plain:
         self.emission = emission
         self.realization = emission.realization
         self.states = [[Fraction(0)] * 2 for _ in self.realization.sections]
+        self.lost = [[Fraction(0)] * 2 for _ in self.realization.sections]
         self.integrals = [Fraction(0) for _ in self.realization.integral]
         self.rests = [Fraction(0) for _ in self.realization.integral]
 
@@ -38,12 +59,20 @@ class Plain:
     def update(self, x: float) -> float:
         u, unclamped = Fraction(x), Fraction(0)
         first = u
-        for states, (b, a) in zip(self.states, self.realization.sections, strict=True):
+        for states, lost, stored in zip(self.states, self.lost, self.realization.sections, strict=True):
+            b, a = stored
             b0, b1, b2 = (*map(Fraction, b), Fraction(0), Fraction(0))[:3]
             a1, a2 = (*map(Fraction, a), Fraction(0), Fraction(0))[:2]
             y = self.r(self.r(b0 * u) + states[0])
-            states[0] = self.r(self.r(states[1] + self.r(b1 * u)) - self.r(a1 * y))
-            states[1] = self.r(self.r(b2 * u) - self.r(a2 * y))
+            following = [
+                self.r(self.r(states[1] + self.r(b1 * u)) - self.r(a1 * y)),
+                self.r(self.r(b2 * u) - self.r(a2 * y)),
+            ]
+            if isinstance(stored, DeltaSection):
+                for i, step in enumerate(following):
+                    self.add(states, lost, i, step)
+            else:
+                states[:] = following
             u = unclamped = y
         if self.integrals:
             unclamped = self.r(unclamped + self.integrals[0])
@@ -78,16 +107,16 @@ class Plain:
                 step = self.r(step + self.r(rate * self.r(command - unclamped)))
             if self.emission.anti_windup == "hold-integral" and excess * step > 0:
                 continue
-            self.add(i, step)
+            self.add(self.integrals, self.rests, i, step)
 
-    def add(self, i: int, step: Fraction) -> None:
+    def add(self, sums: list[Fraction], rests: list[Fraction], i: int, step: Fraction) -> None:
         if self.realization.format is FLOAT64:
-            self.integrals[i] = self.r(self.integrals[i] + step)
+            sums[i] = self.r(sums[i] + step)
             return
-        addend = self.r(step + self.rests[i])
-        total = self.r(self.integrals[i] + addend)
-        self.rests[i] = self.r(addend - self.r(total - self.integrals[i]))
-        self.integrals[i] = total
+        addend = self.r(step + rests[i])
+        total = self.r(sums[i] + addend)
+        rests[i] = self.r(addend - self.r(total - sums[i]))
+        sums[i] = total
 
 
 def inputs_for(target: FloatFormat, seed: int, count: int) -> list[float]:
@@ -96,9 +125,11 @@ def inputs_for(target: FloatFormat, seed: int, count: int) -> list[float]:
     return [target.round(Fraction(draw.choice((0.0, 1.0, -1.0, draw.gauss(0, 3))))) for _ in range(count)]
 
 
-@given(SEEDS)
-def test_every_operation_rounds_once_and_in_the_stated_order(seed: int) -> None:
+@pytest.mark.parametrize("operator", ["z", "delta"])
+@given(seed=SEEDS)
+def test_every_operation_rounds_once_and_in_the_stated_order(operator: str, seed: int) -> None:
     emission = random_emission("any", seed)
+    emission = in_delta(emission) if operator == "delta" else emission
     inputs = inputs_for(emission.realization.format, seed, 40)
     plain = Plain(emission)
     assert emission.recursion().run(inputs) == [plain.update(x) for x in inputs]
@@ -131,6 +162,108 @@ def test_the_model_realizes_the_sum_of_rest_and_integrals(seed: int) -> None:
     assert all(
         abs(Fraction(y) - g) <= scale * 480 * Fraction(1, 2**53) * 10**5 for y, g in zip(said, exact, strict=True)
     )
+
+
+def exact_answer(top: Sequence[Fraction], bottom: Sequence[Fraction], inputs: Sequence[float]) -> list[Fraction]:
+    """Of ``top(z)/bottom(z)``, descending and equally long, bottom monic, as a direct recursion."""
+    answer: list[Fraction] = []
+    for k in range(len(inputs)):
+        forward = sum((c * Fraction(inputs[k - i]) for i, c in enumerate(top) if i <= k), Fraction(0))
+        answer.append(forward - sum((c * answer[k - i] for i, c in enumerate(bottom) if 0 < i <= k), Fraction(0)))
+    return answer
+
+
+@st.composite
+def delta_filters(draw: st.DrawFn) -> Realization:
+    """One section in delta with poles from the middle of the unit disc to where they crowd z = 1."""
+    target = draw(st.sampled_from(list(FORMATS.values())))
+    w, damping = 10.0 ** draw(st.floats(-5, -0.3)), draw(st.floats(0.1, 2))
+    order = draw(st.sampled_from((1, 2)))
+    gains = draw(st.lists(st.floats(-4, 4), min_size=3, max_size=3))
+    a = ((Fraction(w),), (Fraction(2 * damping * w), Fraction(w * w)))[order - 1]
+    b = [Fraction(g) * scale for g, scale in zip(gains, (1, *a), strict=False)]
+    return Realization(target, "delta", (), (delta_section(target, tuple(b), a),), PERIOD_S)
+
+
+@given(delta_filters(), SEEDS)
+def test_a_section_in_delta_follows_the_exact_stored_pulse_transfer_function(stored: Realization, seed: int) -> None:
+    inputs = inputs_for(stored.format, seed, 50)
+    pulse = stored_pulse(stored)
+    exact = exact_answer(pulse.numerator, pulse.denominator, inputs)
+    model, shown = Recursion(stored), []
+    states = []
+    for x in inputs:
+        shown.append(model.update(x))
+        states.append([float(getattr(model._state, f"section1_{i}")) for i in range(1, len(stored.sections[0].a) + 1)])
+    bounds = rounding_bounds(stored, inputs, shown, states)
+    assert all(abs(Fraction(y) - e) <= Fraction(bound) for y, e, bound in zip(shown, exact, bounds, strict=True))
+
+
+def rounding_bounds(
+    stored: Realization, inputs: Sequence[float], answers: Sequence[float], states: Sequence[list[float]]
+) -> list[float]:
+    """How far the answers may be from the exact ones, from the magnitudes that were rounded.
+
+    With errors e of the shown states: ``e_i' = e_i + e_{i+1} - a_i (e_1 + o) + n_i`` and ``e_1 + o`` at the output.
+    The output adds a product and a sum: ``|o| <= u (2 |b_0 x| + |y|)``. An increment rounds two products and two sums
+    of three terms, at most three times each: ``3 u`` of their magnitudes. What is shown of a compensated state differs
+    from what is meant by ``u`` of it before and after, and its own roundings are those of an increment again; a plain
+    sum rounds once. ``|n_i| <= 2 u (3 t_i + |s_i| + |s_i'|)`` covers both. All of it doubled for second-order terms.
+    """
+    b, a = (np.array(p) for p in stored.sections[0])
+    n, u = len(a), 2.0**-stored.format.precision
+    tiny = 2.0 ** (stored.format.least_exponent + 4)
+    matrix = np.eye(n) + np.eye(n, k=1)
+    matrix[:, 0] -= a
+    reach = [np.eye(n)[0]]
+    for _ in inputs:
+        reach.append(reach[-1] @ matrix)
+    from_state = np.abs(reach[:-1])
+    from_output = np.abs([row @ a for row in reach[:-1]])
+    noise, before = [], [0.0] * n
+    for x, y, after in zip(inputs, answers, states, strict=True):
+        output = u * (2 * abs(b[0] * x) + abs(y)) + tiny
+        terms = [abs(b[i + 1] * x) + abs(a[i] * y) + (abs(before[i + 1]) if i + 1 < n else 0) for i in range(n)]
+        own = [2 * u * (3 * t + abs(s) + abs(r)) + tiny for t, s, r in zip(terms, before, after, strict=True)]
+        noise.append((output, np.array(own)))
+        before = after
+    return [
+        2
+        * (
+            noise[k][0]
+            + sum(from_state[k - 1 - j] @ own + from_output[k - 1 - j] * o for j, (o, own) in enumerate(noise[:k]))
+        )
+        for k in range(len(inputs))
+    ]
+
+
+# ---------------------------------------------------------------- poles that crowd z = 1
+
+
+@pytest.mark.parametrize("order", [1, 2])
+def test_a_low_pass_of_20_hz_at_48_khz_comes_to_its_rest_in_float32(order: int) -> None:
+    model = Recursion(realization(low_pass(order, 20, Fraction(1, 48000)), FLOAT32, "delta"))
+    # 40 and more time constants of at most 1.42/(40 pi) s: the rest of the step is below 1e-14
+    rest = model.run([1.0] * 22000)[-1]
+    # b_n x and a_n y are equal to a rounding each, and so are coefficients; the sum that is shown rounds once more
+    assert abs(rest - 1) <= 8 * 2.0**-24
+
+
+def test_a_step_of_a_half_thousandth_moves_a_low_pass_of_2_hz_at_500_khz_in_float32() -> None:
+    stored = realization(low_pass(1, 2, Fraction(1, 500000)), FLOAT32, "delta")
+    (a,) = stored.sections[0].a
+    up = FLOAT32.round(Fraction(10005, 10000))
+    assert np.float32(1) + np.float32(a * (up - 1)) == np.float32(1)  # a plain sum would stand still
+    model = Recursion(stored)
+    assert model.preset(1.0, 1.0)
+    count = 20000
+    shown = model.run([up] * count)[-1]
+    # w' = w + (b1 - a b0) x - a w, b1 = a within a rounding: the closed form of a first-order step
+    share = 1 - (1 - Fraction(a)) ** (count - 1) * (1 - Fraction(stored.sections[0].b[0]))
+    exact = 1 + Fraction(up - 1) * share
+    # b1 x and a y round, each by at most u, and so relative to a moves the rest by 2 u; the sum shown rounds once
+    assert abs(Fraction(shown) - exact) <= 5 * Fraction(1, 2**24)
+    assert exact - 1 > Fraction(1, 6000)
 
 
 @given(SEEDS)

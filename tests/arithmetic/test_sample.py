@@ -7,8 +7,8 @@ from fractions import Fraction
 import pytest
 
 from realize.arithmetic.formats import FLOAT32, FLOAT64, FORMATS, FloatFormat
-from realize.arithmetic.realization import Realization, Section
-from realize.arithmetic.sample import Sample, Sum, coefficients, describe, largest, least_normal, variables
+from realize.arithmetic.realization import DeltaSection, Realization, Section
+from realize.arithmetic.sample import Guard, Sample, Sum, coefficients, describe, largest, least_normal, variables
 from realize.errors import RealizeError
 from tests.firmware.designs import PERIOD_S, UNIT_RANGE, section
 
@@ -32,6 +32,30 @@ def test_coefficients_of_0_1_and_minus_1_are_not_multiplied() -> None:
     assert found["section1_output"] == ["+1 1 state.section1_1"]
     assert found["state.section1_1"] == ["+1 1 state.section1_2", "+1 1 input", "+1 1 section1_output"]
     assert found["state.section1_2"] == ["-1 1 input", "-1 section1_a2 section1_output"]
+
+
+def in_delta(target: FloatFormat) -> Sample:
+    section = DeltaSection((0.5, 0.25, 2.0), (1.5, 0.75))
+    return describe(Realization(target, "delta", (), (section,), PERIOD_S))
+
+
+@pytest.mark.parametrize("target", FORMATS.values(), ids=FORMATS)
+def test_in_delta_an_increment_is_summed_first_and_then_added_to_its_state(target: FloatFormat) -> None:
+    sample = in_delta(target)
+    assert sums(sample)["section1_1_increment"] == [
+        "+1 1 state.section1_2",
+        "+1 section1_b1 input",
+        "-1 section1_a1 section1_output",
+    ]
+    assert sums(sample)["section1_2_increment"] == ["+1 section1_b2 input", "-1 section1_a2 section1_output"]
+    added = [step.target for step in sample.update if not isinstance(step, Guard)]
+    assert added[1:5] == ["section1_1_increment", "state.section1_1", "section1_2_increment", "state.section1_2"]
+
+
+def test_in_float32_states_in_delta_carry_what_their_additions_lost() -> None:
+    behind = ("accepted", "section1_output")
+    assert in_delta(FLOAT64).fields == ("section1_1", "section1_2", *behind)
+    assert in_delta(FLOAT32).fields == ("section1_1", "section1_1_rest", "section1_2", "section1_2_rest", *behind)
 
 
 def test_other_coefficients_are_multiplied_in_the_order_state_forward_back() -> None:

@@ -10,41 +10,70 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from realize.arithmetic.formats import FLOAT32, FLOAT64, FORMATS, FloatFormat
-from realize.arithmetic.realization import Realization, Section
+from realize.arithmetic.realization import AnySection, DeltaSection, Realization, Section
 from realize.arithmetic.recursion import Recursion
 from realize.arithmetic.sample import describe
 from realize.arithmetic.settling import settle
 from realize.errors import RealizeError
-from tests.firmware.designs import PERIOD_S, UNIT_RANGE, parts, random_emission, rounded, section
+from tests.firmware.designs import (
+    PERIOD_S,
+    UNIT_RANGE,
+    delta_parts,
+    in_delta,
+    parts,
+    random_emission,
+    rounded,
+    section,
+)
 
 NAN, INF = float("nan"), float("inf")
-RESTS = [(target, sections) for target in FORMATS.values() for name, sections in parts(target).items() if sections]
+
+
+def rests_of(target: FloatFormat) -> dict[str, tuple[AnySection, ...]]:
+    """Kinds of rest, in z and in delta."""
+    kinds: dict[str, tuple[AnySection, ...]] = {**parts(target)}
+    for name, sections in delta_parts(target).items():
+        kinds[f"delta, {name}"] = sections
+    return kinds
+
+
+OPERATORS = ("z", "delta")
+RESTS: list[tuple[FloatFormat, tuple[AnySection, ...]]] = [
+    (target, sections) for target in FORMATS.values() for sections in rests_of(target).values() if sections
+]
 
 
 def gain_at_rest(realization: Realization) -> Fraction:
-    """``Gd(1)`` of the stored sections."""
-    return prod(
-        (sum(map(Fraction, b), Fraction(0)) / (1 + sum(map(Fraction, a))) for b, a in realization.sections),
-        start=Fraction(1),
-    )
+    """``Gd(1)`` of the stored sections: delta = 0 leaves the last coefficients."""
+    gains = []
+    for stored in realization.sections:
+        b, a = (tuple(map(Fraction, p)) for p in stored)
+        if isinstance(stored, DeltaSection):
+            gains.append(b[-1] / (a[-1] if a else 1))
+        else:
+            gains.append(sum(b, Fraction(0)) / (1 + sum(a)))
+    return prod(gains, start=Fraction(1))
 
 
-def without_integral(seed: int) -> Realization:
-    drawn = random_emission("any", seed).realization
+def without_integral(seed: int, operator: str) -> Realization:
+    emission = random_emission("any", seed)
+    drawn = (in_delta(emission) if operator == "delta" else emission).realization
     sections = drawn.sections or (section(drawn.format, ("0.3", "0.1"), ("-0.875",)),)
-    return Realization(drawn.format, "cascade", (), sections, PERIOD_S)
+    return Realization(drawn.format, drawn.structure, (), sections, PERIOD_S)
 
 
-@given(st.integers(0, 1 << 32), st.floats(-1e6, 1e6, width=32))
-def test_the_gain_at_rest_times_the_input_is_always_possible(seed: int, x: float) -> None:
-    realization = without_integral(seed)
+@pytest.mark.parametrize("operator", OPERATORS)
+@given(seed=st.integers(0, 1 << 32), x=st.floats(-1e6, 1e6, width=32))
+def test_the_gain_at_rest_times_the_input_is_always_possible(operator: str, seed: int, x: float) -> None:
+    realization = without_integral(seed, operator)
     output = realization.format.round(gain_at_rest(realization) * Fraction(x))
     assert Recursion(realization).preset(x, output)
 
 
-@given(st.integers(0, 1 << 32), st.floats(2**-10, 1e6, width=32))
-def test_the_next_output_is_within_the_bound_that_the_verdict_uses(seed: int, x: float) -> None:
-    realization = without_integral(seed)
+@pytest.mark.parametrize("operator", OPERATORS)
+@given(seed=st.integers(0, 1 << 32), x=st.floats(2**-10, 1e6, width=32))
+def test_the_next_output_is_within_the_bound_that_the_verdict_uses(operator: str, seed: int, x: float) -> None:
+    realization = without_integral(seed, operator)
     model = Recursion(realization)
     settling = settle(realization, model.sample)
     exact = gain_at_rest(realization) * Fraction(x)
@@ -54,7 +83,7 @@ def test_the_next_output_is_within_the_bound_that_the_verdict_uses(seed: int, x:
 
 @pytest.mark.parametrize(("target", "sections"), RESTS)
 def test_another_output_is_not_possible_and_leaves_the_rest_of_the_input(
-    target: FloatFormat, sections: tuple[Section, ...]
+    target: FloatFormat, sections: tuple[AnySection, ...]
 ) -> None:
     realization = Realization(target, "cascade", (), sections, PERIOD_S)
     output = target.round(gain_at_rest(realization) * Fraction(3, 2))
@@ -65,7 +94,7 @@ def test_another_output_is_not_possible_and_leaves_the_rest_of_the_input(
 
 
 @pytest.mark.parametrize(("target", "sections"), RESTS)
-def test_at_rest_the_output_stays_where_it_is(target: FloatFormat, sections: tuple[Section, ...]) -> None:
+def test_at_rest_the_output_stays_where_it_is(target: FloatFormat, sections: tuple[AnySection, ...]) -> None:
     realization = Realization(target, "cascade", (), sections, PERIOD_S)
     model = Recursion(realization)
     model.preset(1.5, 0.0)
@@ -76,10 +105,10 @@ def test_at_rest_the_output_stays_where_it_is(target: FloatFormat, sections: tup
 
 
 @pytest.mark.parametrize("target", FORMATS.values(), ids=FORMATS)
-@pytest.mark.parametrize("kind", parts(FLOAT32))
+@pytest.mark.parametrize("kind", rests_of(FLOAT32))
 def test_with_an_integral_any_output_is_at_rest_at_input_zero(target: FloatFormat, kind: str) -> None:
     chain = rounded(target, "0.009", "-0.001")
-    model = Recursion(Realization(target, "cascade", chain, parts(target)[kind], PERIOD_S), UNIT_RANGE)
+    model = Recursion(Realization(target, "cascade", chain, rests_of(target)[kind], PERIOD_S), UNIT_RANGE)
     model.run([0.3, -4.0, 0.2])
     output = target.round(Fraction(-7, 10))
     assert model.preset(0.0, output)
@@ -129,6 +158,23 @@ def test_a_section_that_rounding_moved_onto_z_1_has_no_rest() -> None:
     realization = Realization(FLOAT32, "direct", (), (Section((0.5, 0.0), (-1.0,)),), PERIOD_S)
     with pytest.raises(RealizeError, match="rounding moved a pole of section 1 to z = 1"):
         settle(realization, describe(realization))
+
+
+def test_in_delta_that_takes_a_last_coefficient_of_zero() -> None:
+    realization = Realization(FLOAT32, "delta", (), (DeltaSection((0.5, 0.25), (0.0,)),), PERIOD_S)
+    with pytest.raises(RealizeError, match="rounding moved a pole of section 1 to z = 1"):
+        settle(realization, describe(realization))
+
+
+@pytest.mark.parametrize("target", FORMATS.values(), ids=FORMATS)
+def test_the_rest_of_states_in_delta_is_what_stops_their_increments(target: FloatFormat) -> None:
+    # gain 3/2: y = 3, and by hand s_1 = y - b_0 x = 1, s_2 = a_1 y - b_1 x = 2.5
+    rest = (DeltaSection((1.0, 0.25, 0.375), (1.0, 0.25)),)
+    model = Recursion(Realization(target, "delta", (), rest, PERIOD_S))
+    model.run([0.3, -7.0, 1e-9])
+    assert model.preset(2.0, 3.0)
+    assert (model._state.section1_1, model._state.section1_2) == (1.0, 2.5)
+    assert model.run([2.0] * 20) == [3.0] * 20
 
 
 def test_a_gain_of_one_at_rest_is_not_multiplied() -> None:

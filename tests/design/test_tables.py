@@ -21,7 +21,7 @@ from realize.design import (
     design_from_text,
     require_period,
 )
-from realize.design.model import INTEGER_STRUCTURES
+from realize.design.model import FLOAT_STRUCTURES, INTEGER_STRUCTURES
 from realize.errors import RealizeError
 
 F = Fraction
@@ -432,10 +432,17 @@ def test_every_structure_of_integers_can_be_named_with_the_type_of_a_converter(a
     assert (design.input.type, design.output.type) == ("uint16", None)
 
 
+@pytest.mark.parametrize("arithmetic", ["float32", "float64"])
+@pytest.mark.parametrize("structure", FLOAT_STRUCTURES)
+def test_every_structure_of_floats_can_be_named(arithmetic: str, structure: str) -> None:
+    design = read(f'[target]\narithmetic = "{arithmetic}"\nstructure = "{structure}"')
+    assert (design.target.arithmetic, design.target.structure) == (arithmetic, structure)
+
+
 @pytest.mark.parametrize(
     ("text", "key", "found"),
     [
-        ('[target]\narithmetic = "float32"\nstructure = "delta"', "structure", "delta"),
+        ('[target]\narithmetic = "float32"\nstructure = "normal"', "structure", "normal"),
         ('[target]\narithmetic = "int16"\nstructure = "lattice"', "structure", "lattice"),
         ('[signals.input]\ntype = "int16"', "type", "int16, with float32 arithmetic"),
         ('[target]\narithmetic = "int16"\n[signals.output]\ntype = "float"', "type", "float, with int16 arithmetic"),

@@ -10,7 +10,7 @@ from random import Random
 from typing import Any
 
 from realize.arithmetic.formats import FORMATS, FloatFormat
-from realize.arithmetic.realization import Realization, Section
+from realize.arithmetic.realization import DeltaSection, Realization, Section
 from realize.firmware import Emission
 
 Number = float | str | Fraction
@@ -53,6 +53,31 @@ def parts(target: FloatFormat) -> dict[str, tuple[Section, ...]]:
     }
 
 
+def delta_section(target: FloatFormat, b: tuple[Number, ...], a: tuple[Number, ...] = ()) -> DeltaSection:
+    return DeltaSection(rounded(target, *b), rounded(target, *a))
+
+
+def delta_parts(target: FloatFormat) -> dict[str, tuple[DeltaSection, ...]]:
+    """Kinds of rest in delta, by what is special about them."""
+    slow = delta_section(target, ("1.6e-10", "6.3e-10", "6.3e-10"), ("3.6e-5", "6.3e-10"))
+    return {
+        "gain": (delta_section(target, ("4.2",)),),
+        "first order": (delta_section(target, ("4.2", "1.1"), ("0.62",)),),
+        "slow pair": (slow,),
+        "zeros and ones": (
+            delta_section(target, ("0", "1", "-1"), ("0.6", "0.15")),
+            delta_section(target, ("1", "0", "1"), ("1", "0.25")),
+            delta_section(target, ("0", "0.5"), ("1",)),
+        ),
+        "undamped": (slow, delta_section(target, ("0.125", "0.25", "0"), ("0.1", "0.1"))),
+        "gain inside": (
+            delta_section(target, ("1", "1.5"), ("0.5",)),
+            delta_section(target, ("0.75",)),
+            delta_section(target, ("1.3", "0.5", "0.1"), ("0.6", "0.15")),
+        ),
+    }
+
+
 def chains(target: FloatFormat) -> tuple[tuple[float, ...], ...]:
     """Integral chains of 0, 1, 2 and 3 states, one with a gain of exactly 1 and one with a gain of 0."""
     gains = ((), ("0.009",), ("-1",), ("0.02", "0.0004"), ("0", "0.001"), ("0.1", "-0.01", "0.003"))
@@ -72,6 +97,19 @@ def grid() -> Iterator[Emission]:
             yield emission(
                 f"g{count}",
                 Realization(target, "direct" if len(sections) < 2 else "cascade", chain, sections, PERIOD_S),
+                output_range=RANGES[count % 5 % len(RANGES)],
+                anti_windup=anti_windup,
+                guard_nonfinite=guard,
+                coefficients=coefficients,
+                recursion_sign=sign,
+            )
+            count += 1
+    for target in FORMATS.values():
+        for in_series, chain in product(delta_parts(target).values(), chains(target)[:4]):
+            anti_windup, guard, coefficients, sign = options[count * STRIDE % len(options)]
+            yield emission(
+                f"d{count}",
+                Realization(target, "delta", chain, in_series, PERIOD_S),
                 output_range=RANGES[count % 5 % len(RANGES)],
                 anti_windup=anti_windup,
                 guard_nonfinite=guard,
@@ -125,6 +163,28 @@ def random_emission(name: str, seed: int) -> Emission:
         coefficients=draw.choice(("inline", "table")),
         recursion_sign=draw.choice(("subtract", "add")),
     )
+
+
+def in_delta(emission: Emission) -> Emission:
+    """The same with sections in delta, their coefficients converted and then rounded."""
+    stored = emission.realization
+    sections = tuple(
+        delta_section(stored.format, _converted(section.b), _converted((1.0, *section.a))[1:])
+        for section in stored.sections
+    )
+    return emission._replace(
+        realization=Realization(stored.format, "delta", stored.integral, sections, stored.period_s)
+    )
+
+
+def _converted(p: tuple[float, ...]) -> tuple[Fraction, ...]:
+    """``p(z)`` up to degree 2, descending, as a polynomial in ``z - 1``."""
+    first, *others = map(Fraction, p)
+    if not others:
+        return (first,)
+    if len(others) == 1:
+        return first, first + others[0]
+    return first, 2 * first + others[0], first + others[0] + others[1]
 
 
 def _random_section(draw: Random, target: FloatFormat) -> Section:

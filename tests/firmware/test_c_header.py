@@ -13,7 +13,7 @@ from realize.arithmetic.realization import Realization, Section
 from realize.firmware import Emission, render_firmware
 from realize.firmware.c_text import WIDTH
 from tests.firmware.bench import ZIG, Bench
-from tests.firmware.designs import UNIT_RANGE, grid, section
+from tests.firmware.designs import UNIT_RANGE, delta_section, grid, section
 
 
 def servo(target: FloatFormat = FLOAT32, period_s: Fraction = Fraction(1, 2000), **options: Any) -> Emission:
@@ -211,6 +211,16 @@ def test_macros_are_usable_by_the_preprocessor(bench: Bench) -> None:
         "typedef int needed[roller_gap_OUTPUT_HIGH];\n"
     )
     bench.compile((*ZIG, "cc", "-std=c99", "-pedantic", "-Wall", "-Werror", "-c", "uses.c", "-o", "uses.o"), where)
+
+
+@pytest.mark.parametrize(
+    ("a", "protected"),
+    [(("0.1", "0.09"), True), (("0.1", "0.1"), False), (("0.1", "0.11"), False), (("4", "4"), False), (("2",), False)],
+)
+def test_decay_in_delta_is_judged_by_the_poles_in_z(a: tuple[str, ...], protected: bool) -> None:
+    # |z|^2 = 1 - a1 + a2 of a pair; delta = -2 is z = -1; the dyadic 0.1s of float64 are rounded as one number
+    rest = Realization(FLOAT64, "delta", (), (delta_section(FLOAT64, ("1",) * (len(a) + 1), a),), Fraction(1, 2000))
+    assert ("section 1 has poles that do not decay" not in said(servo()._replace(realization=rest))) == protected
 
 
 def test_a_limit_that_is_no_integer_is_a_literal_inside_the_range() -> None:

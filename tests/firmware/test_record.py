@@ -36,11 +36,33 @@ def test_every_coefficient_is_recorded_twice_exactly_and_for_subtraction(emissio
     assert said["structure"] == realization.structure
     groups = [(said["integral"], realization.integral)]
     for section, stored in zip(said["sections"], realization.sections, strict=True):
+        assert section.get("operator") == ("delta" if said["structure"] == "delta" else None)
+        section = section.get("coefficients", section)
         groups += [(section["b"], stored.b), (section["a"], stored.a)]
     for entries, values in groups:
         assert [Fraction(entry["value"]) for entry in entries] == list(map(Fraction, values))
         assert [float.fromhex(entry["stored"]) for entry in entries] == list(values)
         assert all(entry["fraction_bits"] is None for entry in entries)
+
+
+@pytest.mark.parametrize("emission", [e for e in DESIGNS if e.realization.structure == "delta"], ids=lambda e: e.name)
+def test_a_section_in_delta_is_recorded_in_z_too_where_it_is_exact_but_not_stored(emission: Emission) -> None:
+    sections = recorded(emission)["sections"]
+    assert len(sections) == len(emission.realization.sections)
+    for said, stored in zip(sections, emission.realization.sections, strict=True):
+        assert list(said) == ["b", "a", "operator", "coefficients"]
+        assert all((c["stored"], c["fraction_bits"]) == (None, None) for c in (*said["b"], *said["a"]))
+        values = {"b": [Fraction(c["value"]) for c in said["b"]], "a": [Fraction(c["value"]) for c in said["a"]]}
+        # both are the same ratio, at three points more than fit by chance
+        for z in (Fraction(2), Fraction(-3), Fraction(7, 2), Fraction(11)):
+            in_z = ratio(values["b"], values["a"], z)
+            assert in_z == ratio([Fraction(c) for c in stored.b], [Fraction(c) for c in stored.a], z - 1)
+
+
+def ratio(b: list[Fraction], a: list[Fraction], x: Fraction) -> Fraction:
+    """``sum b_i x^-i / (1 + sum a_i x^-i)``."""
+    above = sum((c / x**i for i, c in enumerate(b)), Fraction(0))
+    return above / (1 + sum((c / x**i for i, c in enumerate(a, 1)), Fraction(0)))
 
 
 def test_the_hashes_are_those_of_the_files() -> None:

@@ -14,7 +14,8 @@ from hypothesis import strategies as st
 from realize.arithmetic.formats import FLOAT32, FORMATS, FloatFormat
 from realize.arithmetic.realization import Realization
 from realize.firmware import Emission
-from realize.firmware.vectors import HELD, IMPULSE, LEVELS, NOISE, QUIET, SATURATING, STEP, SWEEP, vectors, vectors_text
+from realize.firmware.patterns import IMPULSE, SWEEP
+from realize.firmware.vectors import HELD, LEVELS, NOISE, QUIET, SATURATING, STEP, vectors, vectors_text
 from tests.firmware.designs import PERIOD_S, UNIT_RANGE, emission, grid, random_emission, section
 
 LIMITED = [e for e in grid() if e.output_range]

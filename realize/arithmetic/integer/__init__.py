@@ -13,6 +13,7 @@ from realize.arithmetic.integer.realization import (
     IntegerRealization,
     Widths,
     integer_realization,
+    rounded_pulse,
     stored_integer_pulse,
 )
 
@@ -28,5 +29,6 @@ __all__ = [
     "choices",
     "integer_realization",
     "interface_of",
+    "rounded_pulse",
     "stored_integer_pulse",
 ]

@@ -6,6 +6,7 @@ is ``input.per_count/output.per_count`` in counts.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from fractions import Fraction
 from math import ceil, floor
 from typing import NamedTuple
@@ -85,7 +86,11 @@ def interface_of(incoming: Signal, outgoing: Signal, arithmetic: str) -> Interfa
         When a range or a size of a count is missing, a range holds a single count or not zero, or the type cannot
         hold it; the message gives the lines to add.
     """
-    return Interface(_port("input", incoming, arithmetic), _port("output", outgoing, arithmetic))
+    ends = ("[signals.input]", incoming), ("[signals.output]", outgoing)
+    missing = [(table, signal) for table, signal in ends if signal.range is None or signal.per_count is None]
+    if missing:
+        raise _missing(missing, arithmetic)
+    return Interface(*(_port(table, signal, arithmetic) for table, signal in ends))
 
 
 def type_range(name: str) -> tuple[int, int]:
@@ -94,10 +99,9 @@ def type_range(name: str) -> tuple[int, int]:
     return (-(1 << bits - 1), (1 << bits - 1) - 1) if signed else (0, (1 << bits) - 1)
 
 
-def _port(which: str, signal: Signal, arithmetic: str) -> Port:
-    table = f"[signals.{which}]"
-    if signal.range is None or signal.per_count is None:
-        raise _missing(table, signal, arithmetic)
+def _port(table: str, signal: Signal, arithmetic: str) -> Port:
+    assert signal.range is not None
+    assert signal.per_count is not None
     kind = signal.type or arithmetic
     low, high = ceil(signal.range[0] / signal.per_count), floor(signal.range[1] / signal.per_count)
     if low >= high:
@@ -119,18 +123,22 @@ def _port(which: str, signal: Signal, arithmetic: str) -> Port:
     return Port(low, high, signal.offset, kind, signal.per_count)
 
 
-def _missing(table: str, signal: Signal, arithmetic: str) -> RealizeError:
-    lines = [table]
-    lines += ["range = [-1.0, 1.0]      # physical"] if signal.range is None else []
-    lines += ['per_count = "1/1000"     # physical size of one count'] if signal.per_count is None else []
-    names = " and ".join(
-        name for name, value in (("range", signal.range), ("per_count", signal.per_count)) if value is None
-    )
+def _missing(ends: Sequence[tuple[str, Signal]], arithmetic: str) -> RealizeError:
+    lines: list[str] = []
+    names: dict[str, None] = {}
+    for table, signal in ends:
+        lines.append(f"\n{table}")
+        if signal.range is None:
+            lines.append("range = [-1.0, 1.0]      # physical")
+            names["range"] = None
+        if signal.per_count is None:
+            lines.append('per_count = "1/1000"     # physical size of one count')
+            names["per_count"] = None
     return RealizeError(
-        table,
-        f"no {names}, which {arithmetic} arithmetic works in",
+        " and ".join(table for table, _ in ends),
+        f"no {' and '.join(names)}, which {arithmetic} arithmetic works in",
         "range and per_count of input and output",
-        "add these lines, with your converter's figures:\n\n" + "\n".join(lines),
+        "add these lines, with your converter's figures:\n" + "\n".join(lines),
     )
 
 

@@ -21,6 +21,11 @@ from realize.errors import Refused
 #: Bits to which roots are known here: a stored coefficient has 31, and slow poles crowd within 2**-60 of z = 1.
 _BITS = 256
 
+#: A coefficient below this is 0: products of up to 16 such factors add up to fewer than ``2**32`` of their errors.
+_NOISE = Fraction(1, 1 << _BITS - 32)
+
+_ONE = Fraction(1)
+
 #: What a variable is kept in: a factor of products, or a sum twice as wide.
 SINGLE, DOUBLE = 1, 2
 
@@ -228,7 +233,7 @@ def parallel(rest: Rest, scales: Sequence[Fraction] | None) -> Layout:
         outputs,
         (*through, *(Addend(None, Fraction(1), f"section{k}_output") for k in range(1, len(forms) + 1))),
         (),
-        _histories([(INPUT, max((s.order for s in sections), default=0)), *_own_histories(sections)]),
+        _deepest([move for form in forms for move in form.moves]),
         tuple(form.part for form in forms),
         parallel=True,
     )
@@ -283,10 +288,10 @@ def _direct_form(k: int, section: Coefficients, source: str, *, shaped: bool) ->
     return Form(
         (),
         _nonzero((*forward, *back)),
-        kept=section.order > 0,
-        shaped=shaped and section.order > 0,
+        kept=any(section.a),
+        shaped=shaped and any(section.a),
         updates=(),
-        moves=_histories([(source, section.order), (output, section.order)]),
+        moves=_histories([(source, _depth(section.b)), (output, _depth((_ONE, *section.a)))]),
         part=Part((section.b, section.a), stored),
     )
 
@@ -306,7 +311,7 @@ def _delta_form(k: int, section: Coefficients, source: str) -> Form:
     -----
     With ``A(z) = delta^2 + a1 delta + a2`` in ``delta = z - 1`` (Middleton & Goodwin 1990, from memory).
     """
-    if section.order == 0:
+    if not any(section.a):
         return _direct_form(k, section, source, shaped=False)
     a = _in_delta((Fraction(1), *section.a))[1:]
     b = _in_delta(section.b)
@@ -409,8 +414,9 @@ def _histories(depths: Sequence[tuple[str, int]]) -> tuple[tuple[str, str], ...]
     return tuple((f"state.{signal}_{i}", _past(signal, i - 1)) for signal, depth in depths for i in range(depth, 0, -1))
 
 
-def _own_histories(sections: Sequence[Coefficients]) -> list[tuple[str, int]]:
-    return [(f"section{k}_output", section.order) for k, section in enumerate(sections, 1)]
+def _depth(p: Sequence[Fraction]) -> int:
+    """How far back the last coefficient other than 0 reaches."""
+    return max((i for i, c in enumerate(p) if c), default=0)
 
 
 def _deepest(moves: Sequence[tuple[str, str]]) -> tuple[tuple[str, str], ...]:
@@ -473,8 +479,8 @@ def _place(pole: Factor) -> tuple[Fraction, Fraction]:
 
 
 def _rational(factors: tuple[Factor, ...]) -> tuple[Fraction, ...]:
-    """Their product in ascending powers of 1/z, to :data:`_BITS` bits."""
-    return tuple(monic(factors, _BITS).midpoints())
+    """Their product in ascending powers of 1/z, to :data:`_BITS` bits; what lies below them is 0."""
+    return tuple(c if abs(c) >= _NOISE else Fraction(0) for c in monic(factors, _BITS).midpoints())
 
 
 def _partial_fractions(rest: Rest) -> tuple[Fraction, list[Coefficients]]:

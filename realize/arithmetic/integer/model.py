@@ -12,6 +12,7 @@ from typing import Any
 
 from realize.arithmetic.integer.interface import type_range
 from realize.arithmetic.integer.program import COMMAND, INPUT, Program, Sum
+from realize.arithmetic.integer.settling import Gain, Settled, settle
 
 
 class IntegerRecursion:
@@ -31,6 +32,7 @@ class IntegerRecursion:
 
     def __init__(self, program: Program, *, checked: bool = False) -> None:
         self.program = program
+        self._checked = checked
         self._functions = _compiled(program, checked)
         self.clear()
 
@@ -53,6 +55,19 @@ class IntegerRecursion:
     def update(self, value: int) -> int:
         """One sample: output, then advance with it."""
         return int(self._functions["update"](self.state, _of_type(value, self.program.interface.input.type)))
+
+    def preset(self, value: int, output: int) -> bool:
+        """At rest at an input, with ``output`` as the next output; whether that is possible.
+
+        Both count as the limit where they lie beyond it. With an integral only the input that stands for zero is at
+        rest; at any other the next output is still the one asked for. Where it is not possible without one, the
+        state is the one at rest for the input.
+        """
+        port = self.program.interface
+        if "preset" not in self._functions:
+            self._functions |= _executed(_preset(self.program, self._checked))
+        value, output = _of_type(value, port.input.type), _of_type(output, port.output.type)
+        return bool(self._functions["preset"](self.state, value, output)) and self.output(value) == output
 
     def run(self, values: Sequence[int]) -> list[int]:
         """``update`` for many inputs."""
@@ -85,7 +100,12 @@ def _of_type(value: int, kind: str) -> int:
 
 def _compiled(program: Program, checked: bool) -> dict[str, Any]:
     output = [*_input(program), *_sums(program, program.outputs, checked), *_command(program, checked)]
-    advance = [*_sums(program, program.updates, checked), *_moves(program), *_integrals(program, checked)]
+    advance = [
+        *_sums(program, program.updates, checked),
+        *_moves(program),
+        *(f"{each.remainder} = {_local(each.remainder)}" for each in program.outputs if each.remainder),
+        *_integrals(program, checked),
+    ]
     port = program.interface.output
     given = [f"command = applied - {port.offset}", *_limited("command", "command", port.low, port.high)]
     text = [
@@ -93,6 +113,10 @@ def _compiled(program: Program, checked: bool) -> dict[str, Any]:
         *_function("advance", "state, raw, applied", [*output, *given, *advance], "None"),
         *_function("update", "state, raw", [*output, *advance], f"command + {port.offset}"),
     ]
+    return _executed(text)
+
+
+def _executed(text: Sequence[str]) -> dict[str, Any]:
     names: dict[str, Any] = {"held": held}
     exec("\n".join(text), names)
     return names
@@ -130,9 +154,14 @@ def _sum(program: Program, each: Sum, checked: bool) -> list[str]:
     base = f" + {each.base}" if each.base else ""
     lines.append(f"rounded = {rounded}")
     if each.remainder:
-        lines.append(f"{each.remainder} = total - (rounded << {each.shift})")
+        lines.append(f"{_local(each.remainder)} = total - (rounded << {each.shift})")
     bits = program.words[each.target].bits
     return [*lines, f"{each.target} = {_checked(f'rounded{base}', bits, each.target, checked)}"]
+
+
+def _local(state: str) -> str:
+    """Name of what goes into a state at the end of a sample."""
+    return state.removeprefix("state.")
 
 
 def _product(stored: int, shift: int, variable: str) -> str:
@@ -155,10 +184,12 @@ def _integrals(program: Program, checked: bool) -> list[str]:
         return []
     lines = []
     for i, (gain, limits) in enumerate(zip(integral.stored, integral.limits, strict=True), 1):
-        above = f" + state.integral{i + 1}" if i < len(integral.stored) else ""
-        tracked = f" + {integral.tracking} * (command - {COMMAND})" if i == 1 and integral.tracking else ""
-        lines.append(f"increment = {gain} * {INPUT}{above}{tracked}")
-        following = _checked(f"state.integral{i} + increment", integral.word.bits, f"state.integral{i}", checked)
+        what, bits = f"state.integral{i}", integral.word.bits
+        lines.append(f"increment = {_checked(f'{gain} * {INPUT}', bits, what, checked)}")
+        added = [f"state.integral{i + 1}"] if i < len(integral.stored) else []
+        added += [f"{integral.tracking} * (command - {COMMAND})"] if i == 1 and integral.tracking else []
+        lines += [f"increment = {_checked(f'increment + {part}', bits, what, checked)}" for part in added]
+        following = _checked(f"{what} + increment", bits, what, checked)
         moved = [f"state.integral{i} = {following}"]
         if limits:
             moved += _limited(f"state.integral{i}", f"state.integral{i}", *limits)
@@ -168,3 +199,44 @@ def _integrals(program: Program, checked: bool) -> list[str]:
         else:
             lines += moved
     return lines
+
+
+# ---------------------------------------------------------------- coming to rest
+
+
+def _preset(program: Program, checked: bool) -> list[str]:
+    """A function that brings a state to rest and tells whether the input lets it."""
+    settling, port = settle(program), program.interface.output
+    lines = [
+        *_input(program),
+        f"wanted = raw_output - {port.offset}",
+        *_limited("wanted", "wanted", port.low, port.high),
+    ]
+    lines += [f"{name} = {INPUT}" for name in settling.inputs]
+    lines += [line for section in settling.sections for line in _settled(program, section, checked)]
+    if program.integral:
+        terms = [_product(term.stored, term.shift, term.variable) for term in settling.rest]
+        lines.append(f"missing = (wanted << {program.command.shift}) - ({' + '.join(terms) or '0'})")
+        half = 1 << settling.shift - 1 if settling.shift else 0
+        bits = program.integral.word.bits
+        lines.append(f"state.integral1 = {_checked(f'missing + {half} >> {settling.shift}', bits, 'preset', checked)}")
+        for i, gain in enumerate(program.integral.stored[:-1], 1):
+            limits = program.integral.limits[i]
+            lines.append(f"state.integral{i + 1} = {-gain} * {INPUT}")
+            lines += _limited(f"state.integral{i + 1}", f"state.integral{i + 1}", *limits) if limits else []
+    return _function("preset", "state, raw, raw_output", lines, f"{INPUT} == 0" if settling.integrating else "True")
+
+
+def _settled(program: Program, section: Settled, checked: bool) -> list[str]:
+    return [
+        *(_gain(gain) for gain in section.gains),
+        *(f"{state} = {local or 0}" for state, local in section.stored),
+        *_sums(program, section.sums, checked),
+        *(f"{state} = {source}" for state, source in section.histories),
+    ]
+
+
+def _gain(gain: Gain) -> str:
+    if gain.shift <= 0:
+        return f"{gain.target} = {gain.mantissa << -gain.shift} * {gain.variable}"
+    return f"{gain.target} = {gain.mantissa} * {gain.variable} + {1 << gain.shift - 1} >> {gain.shift}"

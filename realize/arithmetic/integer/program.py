@@ -191,24 +191,40 @@ def states_of(sums: Iterable[Sum], moves: Sequence[tuple[str, str]]) -> tuple[st
     return tuple(name for name in names if name.startswith("state.") and not name.startswith("state.integral"))
 
 
-def linear(program: Program) -> tuple[StateSpace, tuple[str, ...], tuple[str, ...]]:
+def linear(
+    program: Program, sources: tuple[str, ...] | None = None
+) -> tuple[StateSpace, tuple[str, ...], tuple[str, ...]]:
     """The program without its integral, nothing rounded or limited, each variable in its own units.
+
+    Parameters
+    ----------
+    program : Program
+        What a sample does.
+    sources : tuple of str, optional
+        Targets of the sums in which an error may enter; by default of those that round.
 
     Returns
     -------
     system : StateSpace
-        Inputs: the input, then the error of every sum that rounds, in units of its target. Outputs: the target of every
-        sum, in their order.
+        Inputs: the input, then the error of every source, in units of its target. Outputs: the target of every sum, in
+        their order.
     sources : tuple of str
-        Targets of the sums that round.
+        As given.
     targets : tuple of str
         Targets of all sums.
     """
     states = program.states
-    sources = tuple(each.target for each in program.sums if each.shift)
+    sources = tuple(each.target for each in program.sums if each.shift) if sources is None else sources
     step = _linear_step(program, states, sources)
     targets = tuple(each.target for each in program.sums)
     return probed(step, len(states), 1 + len(sources)), sources, targets
+
+
+def stepped(program: Program, state: Mapping[str, Fraction], value: Fraction) -> dict[str, Fraction]:
+    """States after one linear sample from some that are not zero."""
+    names = program.states
+    following, _ = _linear_step(program, names, ())(tuple(state.get(name, _ZERO) for name in names), (value,))
+    return dict(zip(names, following, strict=True))
 
 
 def _linear_step(

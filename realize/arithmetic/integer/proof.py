@@ -4,19 +4,18 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from fractions import Fraction
-from math import floor
+from math import ceil, floor
 from typing import NamedTuple
 
 from realize.arithmetic.integer.program import COMMAND, INPUT, Program, Sum, linear
-from realize.arithmetic.integer.quantize import Integration, integral_reaches
+from realize.arithmetic.integer.quantize import Integration, Room, integral_reaches, sums_of_integral
+from realize.arithmetic.integer.resting import resting_errors, with_resting
 from realize.arithmetic.peak_gain import peak_gain
 from realize.arithmetic.roundoff import expected_rms
 from realize.arithmetic.state_space import PulseRatio, paths
 
 #: Relative width of the peak gains of a proof, whose upper ends are used.
 _WIDTH = Fraction(1, 1 << 10)
-
-_HALF = Fraction(1, 2)
 
 
 class Bound(NamedTuple):
@@ -29,7 +28,7 @@ class Bound(NamedTuple):
     bits : int
         It has, its sign included.
     largest : int
-        No larger magnitude occurs, in its own units.
+        It lies from ``-largest - 1`` to ``largest``, in its own units.
     """
 
     variable: str
@@ -50,17 +49,21 @@ class Proof(NamedTuple):
     bounds : tuple of Bound
         Of every variable and every sum.
     output_error : Fraction
-        Rounding moves the output by no more, in counts; that of the command itself included. Proven.
-    rms_error : float
+        Rounding moves the output by no more, in counts; that of the command itself included. Proven, as long as no
+        limit acts, or where none acts on a state: an integral that is held passes on what it missed.
+    rms_error : float or None
         To expect, in counts: errors independent and uniform over a step. An estimate.
     transfer : PulseRatio
         From the input to the command, in counts, without the integral: what the stored integers are.
+    room : Room
+        Signal and rounding errors of every variable apart, proven.
     """
 
     bounds: tuple[Bound, ...]
     output_error: Fraction
     rms_error: float | None
     transfer: PulseRatio
+    room: Room
 
     @property
     def overflowing(self) -> tuple[Bound, ...]:
@@ -68,7 +71,7 @@ class Proof(NamedTuple):
         return tuple(bound for bound in self.bounds if bound.spare_bits < 0)
 
 
-def prove(program: Program, integration: Integration) -> Proof | None:
+def prove(program: Program) -> Proof | None:
     """Bound every variable and sum of a program, and the error of its output.
 
     Returns
@@ -79,46 +82,73 @@ def prove(program: Program, integration: Integration) -> Proof | None:
     Notes
     -----
     A variable is at most its peak gain from the input times the input's reach, plus for every rounding the peak gain
-    from there times half a unit. A partial sum is at most the sum of its terms' bounds, and at most the whole sum's
-    bound plus those of the terms still missing.
+    from there times half a unit, plus what the rounding of a state set at rest adds. A partial sum is at most the sum
+    of its terms' bounds, and at most the whole sum's bound plus those of the terms still missing; no product exceeds
+    its own bound.
     """
     system, _, targets = linear(program)
     table = dict(zip(targets, paths(system), strict=True))
-    reach = {INPUT: Fraction(program.interface.input.reach)}
+    largest = program.interface.input.reach
+    resting = resting_errors(program)
+    signal, errors = {INPUT: Fraction(largest)}, {INPUT: Fraction(0)}
     for target, row in table.items():
-        gains = [peak_gain(path, _WIDTH).high for path in row]
-        if any(gain is None for gain in gains):
+        gains = [gain for gain in (peak_gain(path, _WIDTH).high for path in row) if gain is not None]
+        if len(gains) < len(row):
             return None
-        known = [gain for gain in gains if gain is not None]
-        reach[target] = known[0] * program.interface.input.reach + sum(known[1:], Fraction(0)) * _HALF
-    rest = reach[COMMAND]
+        signal[target], errors[target] = gains[0] * largest, sum(gains[1:], Fraction(0)) / 2
     for target, source in reversed(program.moves):
-        reach[target] = reach[source]
-    bounds = [*_integral_bounds(program, integration, rest, reach), *_word_bounds(program, reach)]
+        signal[target], errors[target] = signal[source], errors[source]
+    half = errors[COMMAND]
+    errors = with_resting(errors, resting)
+    for target, source in reversed(program.moves):
+        errors[target] = errors[source]
+    reach = {name: signal[name] + errors[name] for name in signal}
+    bounds = [*_integral_bounds(program, reach), *_word_bounds(program, reach)]
     bounds += [_sum_bound(program, each, reach) for each in program.sums]
-    errors = table[COMMAND][1:]
-    half = sum((peak_gain(path, _WIDTH).high or Fraction(0) for path in errors), Fraction(0)) * _HALF
-    return Proof(tuple(bounds), half, expected_rms((path, Fraction(1)) for path in errors), table[COMMAND][0])
+    rms = expected_rms((path, Fraction(1)) for path in table[COMMAND][1:])
+    return Proof(tuple(bounds), half, rms, table[COMMAND][0], _room(program, signal, errors))
+
+
+def _room(program: Program, signal: Mapping[str, Fraction], errors: Mapping[str, Fraction]) -> Room:
+    counts = {name: value / Fraction(2) ** program.words[name].fraction_bits for name, value in signal.items()}
+    return Room(counts, {name: max(1, ceil(value)) for name, value in errors.items()})
 
 
 def _word_bounds(program: Program, reach: Mapping[str, Fraction]) -> list[Bound]:
+    inputs = {INPUT}
+    for target, source in reversed(program.moves):
+        inputs |= {target} if source in inputs else set()
+    port = program.interface.input
     kept = [name for name in program.words if name in reach and name != COMMAND]
-    return [Bound(name, program.words[name].bits, floor(reach[name])) for name in kept]
+    return [
+        Bound(
+            name,
+            program.words[name].bits,
+            max(port.high, -port.low - 1) if name in inputs else floor(reach[name]),
+        )
+        for name in kept
+    ]
 
 
-def _integral_bounds(
-    program: Program, integration: Integration, rest: Fraction, reach: dict[str, Fraction]
-) -> list[Bound]:
-    """Of the states, the increment still in them; enters them into ``reach``."""
+def _integral_bounds(program: Program, reach: dict[str, Fraction]) -> list[Bound]:
+    """Of the states, and of their sums on the way; enters the states into ``reach``, in their units."""
     if program.integral is None:
         return []
-    word = program.integral.word
-    unit = Fraction(2) ** word.fraction_bits
-    stored = integration._replace(gains=tuple(gain / unit for gain in map(Fraction, program.integral.stored)))
+    stored = program.integral
+    unit = Fraction(2) ** stored.word.fraction_bits
+    integration = Integration(tuple(gain / unit for gain in stored.stored), program.hold, stored.tracking / unit)
+    held = integral_reaches(integration, program.interface, reach[COMMAND])
+    reaches = tuple(
+        Fraction(max(-limits[0], limits[1])) / unit if limits else by_itself
+        for limits, by_itself in zip(stored.limits, held, strict=True)
+    )
+    sums = sums_of_integral(integration, program.interface, reach[COMMAND], reaches)
     bounds = []
-    for i, largest in enumerate(integral_reaches(stored, program.interface, rest), 1):
-        reach[f"state.integral{i}"] = largest * unit
-        bounds.append(Bound(f"state.integral{i}", word.bits, floor(2 * largest * unit)))
+    for i, (state, total) in enumerate(zip(reaches, sums, strict=True), 1):
+        name = f"state.integral{i}"
+        reach[name] = state * unit
+        bounds += [Bound(name, stored.word.bits, floor(state * unit))]
+        bounds += [Bound(f"{name} (sum)", stored.word.bits, floor(total * unit))]
     return bounds
 
 
@@ -129,7 +159,7 @@ def _sum_bound(program: Program, each: Sum, reach: Mapping[str, Fraction]) -> Bo
     whole = sum(sizes, kept)
     if each.base is None and each.target != COMMAND:
         whole = min(whole, (reach[each.target] + 1) * 2**each.shift)
-    largest, before, after = whole + half, kept, sum(sizes, Fraction(0))
+    largest, before, after = max([whole + half, *sizes]), kept, sum(sizes, Fraction(0))
     for size in sizes:
         before, after = before + size, after - size
         largest = max(largest, min(before, whole + after))

@@ -12,17 +12,15 @@ from realize.arithmetic.grouping import Rest, split_integral
 from realize.arithmetic.integer.interface import Interface
 from realize.arithmetic.integer.layout import Layout, Ratio, layouts
 from realize.arithmetic.integer.program import INPUT, Program
-from realize.arithmetic.integer.proof import Bound, Proof, prove
-from realize.arithmetic.integer.quantize import Choice, Integration, quantized
+from realize.arithmetic.integer.proof import Proof
+from realize.arithmetic.integer.proving import proven
+from realize.arithmetic.integer.quantize import WIDEST, Choice, Integration, Needs, Room, ideal_room, quantized
 from realize.arithmetic.realization import exact_pulse
 from realize.errors import Refused
 from realize.transfer import PulseTransferFunction
 
 #: Word and accumulators of an arithmetic, the narrow ones first: 32-bit processors multiply 16 by 16 bits at once.
 WIDTHS: Mapping[str, tuple[int, tuple[int, ...]]] = {"int16": (16, (32, 64)), "int32": (32, (64,))}
-
-#: Times that a variable is given more room for its rounding errors: one bit holds them, where they are not the signal.
-_MOST_LOWERED = 4
 
 
 class Widths(NamedTuple):
@@ -77,10 +75,7 @@ class IntegerRealization:
     @property
     def integral(self) -> tuple[Fraction, ...]:
         """``R_1, R_2, ...`` as stored, in counts of output per count of input."""
-        integral = self.program.integral
-        if integral is None:
-            return ()
-        return tuple(gain / Fraction(2) ** integral.word.fraction_bits for gain in integral.stored)
+        return _stored_integral(self.program)
 
     @property
     def direct_gain(self) -> Fraction:
@@ -118,131 +113,100 @@ def integer_realization(
         When the structure does not suit the poles, no bound exists, or the words do not suffice; the message says
         which, and what would do.
     """
-    integral, rest = split_integral(pulse)
-    rest = rest._replace(gain=rest.gain * interface.scale)
-    integration = Integration(tuple(gain * interface.scale for gain in integral), hold, tracking)
+    rest, integration = _in_counts(pulse, interface, hold, tracking)
     _refuse_one_sided(interface, integration)
     _refuse_zero(rest, integration)
-    layout = layouts(rest, structure)
-    program, proof = _proven(layout, interface, widths, integration)
-    scales = _rescaled(layout, program)
-    anew = False
-    if scales is not None:
-        other = layouts(rest, structure, scales)
-        try:
-            program_anew, proof_anew = _proven(other, interface, widths, integration)
-        except Refused:
-            program_anew = None
-        if program_anew is not None and _gain_error(layout, other, program_anew) < _gain_error(layout, layout, program):
-            layout, program, proof, anew = other, program_anew, proof_anew, True
+    layout, ideal, anew = _rounded_well(rest, structure, interface, widths, integration)
+    program, proof = proven(layout, interface, Choice(*widths), integration, ideal)
     return IntegerRealization(structure, widths, program, proof, layout, anew, pulse.period_s)
 
 
-def stored_integer_pulse(stored: IntegerRealization) -> PulseTransferFunction:
-    """The pulse transfer function that the stored integers have, exactly, in physical units."""
-    scale = stored.program.interface.scale
-    tops, bottoms = [], []
-    for b, a in stored.sections:
-        tops.append(poly.trimmed(b))
-        bottoms.append((Fraction(1), *a))
-    if stored.layout.parallel:
-        numerator = _parallel(stored.direct_gain, stored.sections)
-    else:
-        numerator = _product(tops) if tops else ()
-    return exact_pulse(
-        poly.scale(numerator, 1 / scale), bottoms, tuple(gain / scale for gain in stored.integral), stored.period_s
-    )
+def rounded_pulse(
+    pulse: PulseTransferFunction, interface: Interface, bits: int, structure: str
+) -> PulseTransferFunction:
+    """What rounding the coefficients to so many bits makes of a pulse transfer function; nothing is proven.
 
-
-# ---------------------------------------------------------------- proving
-
-
-def _proven(layout: Layout, interface: Interface, widths: Widths, integration: Integration) -> tuple[Program, Proof]:
-    """Quantize; give room to what rounding errors make overflow, and try again.
+    Parameters
+    ----------
+    pulse : PulseTransferFunction
+        ``Gd(z)`` in physical units.
+    interface : Interface
+        Counts at both ends.
+    bits : int
+        Of a coefficient.
+    structure : str
+        Key of :data:`realize.arithmetic.integer.layout.STRUCTURES`.
 
     Raises
     ------
     Refused
-        When the words do not suffice.
+        When the structure does not suit the poles.
     """
-    lowered: dict[str, int] = {}
-    overflowing: tuple[Bound, ...] = ()
-    for _ in range(_MOST_LOWERED):
-        program = quantized(layout, interface, Choice(*widths, lowered), integration)
-        proof = prove(program, integration)
-        if proof is None:
-            raise _lost_pole(layout, program, widths)
-        overflowing = proof.overflowing
-        if not overflowing:
-            return program, proof
-        for name in {_room_giver(bound, program) for bound in overflowing}:
-            lowered[name] = lowered.get(name, 0) + 1
-    raise Refused(
-        "[target] arithmetic",
-        f"{layout.structure} in {widths.bits} bits has no room for what rounding adds up to in "
-        f"{overflowing[0].variable.removeprefix('state.')}",
-        "words that hold signal and rounding errors",
-        "use int32, structure error-feedback or delta, or a lower sample rate",
-    )
+    rest, integration = _in_counts(pulse, interface, True, Fraction(0))
+    widths = Widths(bits, WIDEST)
+    layout, ideal, _ = _rounded_well(rest, structure, interface, widths, integration)
+    program = quantized(layout, interface, Choice(*widths), integration, Needs(ideal, ideal))
+    return _pulse(layout, program, pulse.period_s)
 
 
-def _room_giver(bound: Bound, program: Program) -> str:
-    """The variable whose binary point decides whether a bound holds."""
-    name = bound.variable.removesuffix(" (sum)")
-    moves = dict(program.moves)
-    while name in moves:
-        name = moves[name]
-    tops = {
-        each.target: each.terms[0].variable for each in program.outputs if each.target.rpartition("_")[2][:3] == "top"
-    }
-    return tops.get(name, name)
+def _in_counts(
+    pulse: PulseTransferFunction, interface: Interface, hold: bool, tracking: Fraction
+) -> tuple[Rest, Integration]:
+    """The rest and the integral, in counts of output per count of input."""
+    integral, rest = split_integral(pulse)
+    scaled = tuple(gain * interface.scale for gain in integral)
+    return rest._replace(gain=rest.gain * interface.scale), Integration(scaled, hold, tracking)
 
 
-def _lost_pole(layout: Layout, program: Program, widths: Widths) -> Refused:
-    """Name the section whose stored denominator does not decay, and the bits that would keep it."""
-    values = {name: term.value for name, term in program.coefficients.items()}
-    for k, part in enumerate(layout.parts, 1):
-        a = part.stored(values)[1]
-        if not decays(a):
-            margin = _margin(part.ratio[1])
-            needed = _fraction_bits_for(margin)
-            return Refused(
-                "[target] arithmetic",
-                f"section {k}: rounded to {widths.bits} bits its coefficients a have a pole that does not decay; what "
-                f"they leave to z = 1 or -1 is {float(margin):.3g}, which takes {needed} fraction bits",
-                "coefficients that keep the pole inside the unit circle",
-                'structure = "delta", int32, or a lower sample rate',
-            )
-    return Refused("[target] arithmetic", "a stored pole does not decay", "poles that decay", "use int32, or float32")
+def _rounded_well(
+    rest: Rest, structure: str, interface: Interface, widths: Widths, integration: Integration
+) -> tuple[Layout, Room, bool]:
+    """The layout whose gains rounding keeps better: as it is, or with numerators scaled to the rounded denominators.
+
+    Binary points are chosen for the first in any case: the factors are 1 to within what rounding does.
+    """
+    layout = layouts(rest, structure)
+    ideal = ideal_room(layout, interface)
+    needs = Needs(ideal, ideal)
+    program = quantized(layout, interface, Choice(*widths), integration, needs)
+    scales = _rescaled(layout, program)
+    if scales is None:
+        return layout, ideal, False
+    anew = layouts(rest, structure, scales)
+    try:
+        other = quantized(anew, interface, Choice(*widths), integration, needs)
+    except Refused:
+        return layout, ideal, False
+    better = _gain_error(layout, anew, other) < _gain_error(layout, layout, program)
+    return (anew, ideal, True) if better else (layout, ideal, False)
 
 
-def decays(a: Sequence[Fraction]) -> bool:
-    """Whether the poles of a section lie inside the unit circle (Jury's conditions, exact)."""
-    a1, a2 = (*a, Fraction(0), Fraction(0))[:2]
-    return abs(a2) < 1 and abs(a1) < 1 + a2
+def stored_integer_pulse(stored: IntegerRealization) -> PulseTransferFunction:
+    """The pulse transfer function that the stored integers have, exactly, in physical units."""
+    return _pulse(stored.layout, stored.program, stored.period_s)
 
 
-def _margin(a: Sequence[Fraction]) -> Fraction:
-    """Least distance of the coefficients from where a pole leaves the unit circle."""
-    a1, a2 = (*a, Fraction(0), Fraction(0))[:2]
-    return min(1 - abs(a2), 1 + a2 - abs(a1)) if len(a) > 1 else 1 - abs(a1)
-
-
-def _fraction_bits_for(margin: Fraction) -> int:
-    """With which a hundredth of it is still resolved: poles shift by about as much as their distance is off."""
-    return max(0, (100 / margin).__ceil__().bit_length())
+def _pulse(layout: Layout, program: Program, period_s: Fraction) -> PulseTransferFunction:
+    scale, sections = program.interface.scale, _stored_sections(layout, program)
+    if layout.parallel:
+        numerator = _parallel(_direct_gain(layout, program), sections)
+    else:
+        numerator = _product([poly.trimmed(section.b) for section in sections]) if sections else ()
+    integral = tuple(gain / scale for gain in _stored_integral(program))
+    bottoms = [(Fraction(1), *section.a) for section in sections]
+    return exact_pulse(poly.scale(numerator, 1 / scale), bottoms, integral, period_s)
 
 
 # ---------------------------------------------------------------- gains
 
 
 def _rescaled(layout: Layout, program: Program) -> tuple[Fraction, ...] | None:
-    """For each section the factor that brings back its gain at z = 1; None where none differs."""
+    """For each section with a gain at z = 1 the factor that brings it back; None where none differs."""
     values = {name: term.value for name, term in program.coefficients.items()}
     factors = []
     for part in layout.parts:
         wanted, found = (_gain(1, part.ratio[1]), _gain(1, part.stored(values)[1]))
-        factors.append(wanted / found if found else Fraction(1))
+        factors.append(wanted / found if found and sum(part.ratio[0]) else Fraction(1))
     return tuple(factors) if any(factor != 1 for factor in factors) else None
 
 
@@ -266,6 +230,13 @@ def _gain_error(wanted: Layout, layout: Layout, program: Program) -> Fraction:
 def _stored_sections(layout: Layout, program: Program) -> tuple[StoredSection, ...]:
     values = {name: term.value for name, term in program.coefficients.items()}
     return tuple(StoredSection(*part.stored(values)) for part in layout.parts)
+
+
+def _stored_integral(program: Program) -> tuple[Fraction, ...]:
+    integral = program.integral
+    if integral is None:
+        return ()
+    return tuple(gain / Fraction(2) ** integral.word.fraction_bits for gain in integral.stored)
 
 
 def _direct_gain(layout: Layout, program: Program) -> Fraction:

@@ -1,0 +1,345 @@
+"""``NAME.h`` in integers: provenance, calls, what is proven and what is not protected from, and the types."""
+
+from __future__ import annotations
+
+from realize.arithmetic.integer.interface import Port
+from realize.arithmetic.integer.program import COMMAND, INPUT
+from realize.arithmetic.sample import BACK_CALCULATION, HOLD_INTEGRAL
+from realize.firmware.c_preamble import (
+    CAUTION,
+    accepted_text,
+    calls,
+    counted,
+    labelled,
+    listed,
+    loop_lines,
+    paragraph,
+    period_macros,
+    period_text,
+    range_text,
+    signatures,
+)
+from realize.firmware.c_text import comment, integer_constant, number_text, wrapped
+from realize.firmware.integer.c_source import UNUSED, kept, state_bits
+from realize.firmware.integer.emission import IntegerEmission
+from realize.firmware.integer.record import ceiling_text
+from realize.firmware.integer.spelling import Spelling, ctype, port_type
+
+#: What a section is in each structure.
+FORMS = {
+    "direct": "in direct form I",
+    "cascade": "in direct form I, one after the other",
+    "error-feedback": "in direct form I, one after the other; what rounding discards is added back in the next sample",
+    "delta": "in the operator z - 1, one after the other",
+    "normal": "one after the other, pairs of poles in normal (coupled) form",
+    "parallel": "in direct form I, beside each other",
+}
+
+
+def header_text(emission: IntegerEmission, c: Spelling) -> str:
+    """The whole header."""
+    lines = [
+        *comment(_preamble(emission, c)),
+        f"#ifndef {c.name}_H",
+        f"#define {c.name}_H",
+        "",
+        "#include <stdint.h>",
+        "",
+        *period_macros(c.name, emission.realization.period_s),
+        *_limits(c),
+        "#ifdef __cplusplus",
+        'extern "C" {',
+        "#endif",
+        "",
+        *_state(c),
+        *(_table(c) if c.table else []),
+        *_prototypes(c),
+        "#ifdef __cplusplus",
+        "}",
+        "#endif",
+        "",
+        f"#endif /* {c.name}_H */",
+    ]
+    return "\n".join(lines) + "\n"
+
+
+# ---------------------------------------------------------------- the first comment
+
+
+def _preamble(emission: IntegerEmission, c: Spelling) -> list[str]:
+    name = emission.name
+    return [
+        *wrapped(
+            f"{name}.h - a difference equation in integers, emitted by realize; its account is {name}.record.json"
+        ),
+        "",
+        *([*wrapped(emission.about), ""] if emission.about else []),
+        *_provenance(emission),
+        "",
+        *paragraph("Calls", calls(name)),
+        *paragraph("Feed-through", _feed_through(c)),
+        *paragraph("Arithmetic", _arithmetic(c)),
+        *listed("Proven", _proven(emission, c)),
+        *loop_lines(emission.loop),
+        *listed("Accepted deviations", [accepted_text(entry, emission.checks) for entry in emission.accepted]),
+        *listed("Not protected", _unprotected(c)),
+        *listed("Method notes", emission.notes),
+        *paragraph("Caution", CAUTION)[:-1],
+    ]
+
+
+def _provenance(emission: IntegerEmission) -> list[str]:
+    realization = emission.realization
+    interface = realization.program.interface
+    entries = [
+        ("revision", emission.revision),
+        ("requirement", emission.requirement),
+        ("author", emission.author),
+        ("transfer", f"G(s) = {emission.transfer_text}"),
+        *emission.particulars,
+        ("method", emission.method),
+        ("sample period", f"{period_text(realization.period_s)} s (rate {number_text(1 / realization.period_s)} Hz)"),
+        ("structure", _structure(emission)),
+        ("arithmetic", _widths(emission)),
+        ("input", f"the input (for a controller the error, reference minus measurement){_input_text(emission)}"),
+        ("input count", _count_text(interface.input, emission.input_unit)),
+        ("output", f"the output (for a controller the command; so called below){_output_text(emission)}"),
+        ("output count", _count_text(interface.output, emission.output_unit)),
+        ("anti-windup", _anti_windup(emission)),
+    ]
+    return labelled(entries)
+
+
+def _structure(emission: IntegerEmission) -> str:
+    realization = emission.realization
+    sections = realization.sections
+    integral = realization.program.integral
+    states = counted(len(integral.stored) if integral else 0, "integral state")
+    bits = f" of {integral.word.bits} bits with {integral.word.fraction_bits} fraction bits" if integral else ""
+    form = f" {FORMS[realization.structure]}" if sections else ""
+    anew = "; numerators chosen anew for the rounded denominators" if realization.numerators_anew else ""
+    return f"{realization.structure}: {counted(len(sections), 'section')}{form}; {states}{bits}{anew}"
+
+
+def _widths(emission: IntegerEmission) -> str:
+    program = emission.realization.program
+    widest = max(each.bits for each in program.sums)
+    return (
+        f"int{program.bits}: factors of {program.bits} bits, sums of up to {widest}; every sum rounded once, to "
+        "nearest, ties upward"
+    )
+
+
+def _input_text(emission: IntegerEmission) -> str:
+    port = emission.realization.program.interface.input
+    physical = f"; range {range_text(emission.input_range, emission.input_unit)}" if emission.input_range else ""
+    ends = f"counts {port.low + port.offset} to {port.high + port.offset}"
+    return f"{physical}; {f'saturated on entry to {ends}' if any(port.limits_type) else f'{ends}, all its type holds'}"
+
+
+def _output_text(emission: IntegerEmission) -> str:
+    port = emission.realization.program.interface.output
+    physical = f" {range_text(emission.output_range, emission.output_unit)}:" if emission.output_range else ""
+    return f"; clamped to{physical} counts {port.low + port.offset} to {port.high + port.offset}"
+
+
+def _count_text(port: Port, unit: str) -> str:
+    zero = f"; count {port.offset} stands for 0" if port.offset else ""
+    return f"{port_type(port)}; 1 count = {number_text(port.per_count)} {unit}".rstrip() + zero
+
+
+def _anti_windup(emission: IntegerEmission) -> str | None:
+    if emission.realization.program.integral is None:
+        return None
+    if emission.anti_windup == HOLD_INTEGRAL:
+        return (
+            "hold-integral: an integral state is not updated while the unclamped command exceeds what was applied "
+            "and its increment pushes further out"
+        )
+    if emission.anti_windup == BACK_CALCULATION and emission.tracking_time_s is not None:
+        tracking = number_text(emission.tracking_time_s)
+        return f"back-calculation: the integral follows what was applied, tracking time {tracking} s"
+    return "none: the integral goes on while the command is limited, as far as limits of its own"
+
+
+def _feed_through(c: Spelling) -> str:
+    outputs = (*c.program.outputs, c.program.command)
+    reached = {INPUT}
+    for each in outputs:
+        reached |= {each.target} if reached & {term.variable for term in each.terms} else set()
+    if COMMAND in reached:
+        return (
+            "direct: the command depends on the input of the same sample, so it must be computed between sampling "
+            "and the actuator, and every delay there adds to the loop's."
+        )
+    return (
+        "none: the command of a sample does not depend on the input of that sample; it can be computed before sampling."
+    )
+
+
+def _arithmetic(c: Spelling) -> str:
+    return (
+        "results are the same, bit for bit, on every processor, and no operation is one that the C or C++ standard "
+        "leaves undefined or to the implementation, whatever the input. A variable is an integer in units of a power "
+        "of two of a count; its fraction bits stand beside it."
+    )
+
+
+def _proven(emission: IntegerEmission, c: Spelling) -> list[str]:
+    proof = emission.realization.proof
+    sums = [bound for bound in proof.bounds if bound.variable.endswith("(sum)")]
+    least = min(sums, key=lambda bound: bound.spare_bits)
+    where = least.variable.removesuffix(" (sum)").removeprefix("state.")
+    table = " These proofs hold for the coefficients of the design, not for other ones." if c.table else ""
+    bits = f"{least.spare_bits} bit{'' if least.spare_bits == 1 else 's'}"
+    noise = proof.rms_error
+    rms = [] if noise is None else [f"expected, not proven: rounding noise of {noise:.2g} counts r.m.s."]
+    return [
+        "from a cleared state, and from one set by preset, no state and no sum overflows, whatever the input; the "
+        f"least room is {bits}, in the sum for {where}.{table}",
+        f"while no limit acts, rounding moves the output by at most {ceiling_text(proof.output_error)} counts, its own "
+        "rounding included",
+        *rms,
+    ]
+
+
+def _unprotected(c: Spelling) -> list[str]:
+    other = "coefficients other than those of the design: a sum may then overflow, which is undefined"
+    return [
+        *([other] if c.table else []),
+        "a null pointer, a state that was never cleared, two calls on one state at the same time",
+    ]
+
+
+# ---------------------------------------------------------------- macros and types
+
+
+def _limits(c: Spelling) -> list[str]:
+    interface = c.program.interface
+    says = "Limits in counts, offsets included. An input beyond them is saturated on entry; the command stays within."
+    return [
+        *comment(wrapped(says)),
+        *_limit_macros(c.name, "INPUT", interface.input),
+        *_limit_macros(c.name, "OUTPUT", interface.output),
+        "",
+    ]
+
+
+def _limit_macros(name: str, which: str, port: Port) -> list[str]:
+    ends = (("LOW", port.low + port.offset), ("HIGH", port.high + port.offset))
+    return [f"#define {name}_{which}_{end} {integer_constant(value)}" for end, value in ends]
+
+
+def _state(c: Spelling) -> list[str]:
+    fields = [f"    {ctype(bits)} {name}; /* {_meaning(c, name)} */" for name, bits in state_bits(c).items()]
+    return ["typedef struct {", *fields, f"}} {c.name}_state;", ""]
+
+
+def _meaning(c: Spelling, field: str) -> str:
+    """What a state field holds, and its fraction bits."""
+    if field == UNUSED:
+        return "nothing to remember"
+    if field == COMMAND:
+        return "command before the clamp, from output to advance"
+    waiting = {each.name for each in kept(c)}
+    part, _, role = field.partition("_")
+    number = part.lstrip("abcdefghijklmnopqrstuvwxyz")
+    if part.startswith("integral"):
+        assert c.program.integral is not None
+        return f"integral state {number}; {c.program.integral.word.fraction_bits} fraction bits"
+    if field in waiting:
+        what = "discards" if role.endswith("discarded") else "hands on"
+        return f"what section {number} {what}, from output to advance"
+    point = f"; {c.program.words[f'state.{field}'].fraction_bits} fraction bits"
+    if part == INPUT:
+        return f"input {counted(int(role), 'sample')} ago{point}"
+    if role.startswith("output_"):
+        age = role.removeprefix("output_")
+        if age == "remainder":
+            return f"what rounding in section {number} discarded, to be added back"
+        return f"what section {number} handed on {counted(int(age), 'sample')} ago{point}"
+    return f"section {number}, state {role}{point}"
+
+
+def _table(c: Spelling) -> list[str]:
+    fields = [
+        f"    {ctype(one.bits)} {field}; /* {one.fraction_bits} fraction bits */" for field, one in c.fields.items()
+    ]
+    says = wrapped(
+        "Every multiplied coefficient, as value times 2 to the power of its fraction bits. Those that are exactly 0 or "
+        "a power of two are part of the code and not in the table. The gain of a section serves the preset and follows "
+        "from the others. Another table is swapped in as a whole, between two samples."
+    )
+    return [
+        *comment(says),
+        "typedef struct {",
+        *(fields or [f"    int8_t {UNUSED}; /* nothing is multiplied */"]),
+        f"}} {c.name}_coefficients;",
+        "",
+        f"extern const {c.name}_coefficients {c.name}_nominal; /* the design's own */",
+        "",
+    ]
+
+
+# ---------------------------------------------------------------- functions
+
+
+def _prototypes(c: Spelling) -> list[str]:
+    interface = c.program.interface
+    declared = signatures(c.name, port_type(interface.input), port_type(interface.output), table=c.table)
+    clear, update, output, advance, preset = (signature + ";" for signature in declared)
+    return [
+        "/* All state zero: at rest at the input that stands for zero. */",
+        clear,
+        "",
+        *comment(wrapped("One sample: the command for the input, then the state moved on with it.")),
+        update,
+        "",
+        *comment(wrapped(_OUTPUT_SAYS)),
+        output,
+        "",
+        *comment(wrapped(_advance_says(c))),
+        advance,
+        "",
+        *comment(wrapped(_preset_says(c))),
+        preset,
+        "",
+    ]
+
+
+def _uses_applied(c: Spelling) -> bool:
+    integral = c.program.integral
+    return integral is not None and (c.program.hold or integral.tracking != 0)
+
+
+_OUTPUT_SAYS = (
+    "The clamped command for the input, with the least work before the actuator; the state does not move on yet."
+)
+
+
+def _advance_says(c: Spelling) -> str:
+    text = (
+        "The rest of the sample, after output with the same input: applied is what the actuator was really given, "
+        "in counts as the command is."
+    )
+    if not _uses_applied(c):
+        return f"{text} This design does not use it."
+    limited = any(c.program.interface.output.limits_type)
+    return text + (" Beyond the clamp it counts as the nearer limit." if limited else "")
+
+
+def _preset_says(c: Spelling) -> str:
+    text = "Bumpless start: at rest at the input, with output as the next output. Returns 1 when that is possible; "
+    if c.program.integral:
+        zero = c.program.interface.input.offset
+        text += (
+            f"else 0. With an integral no steady state exists but at input {zero}: at any other the next output is "
+            "still the one asked for, and the integral moves on from there."
+        )
+    else:
+        text += (
+            "else the state at rest for the input, and 0. Possible is only the output that this state gives, to the "
+            "count."
+        )
+    beyond = any(c.program.interface.output.limits_type)
+    return text + (" An output beyond the clamp counts as the nearer limit, and gives 0." if beyond else "")

@@ -1,0 +1,232 @@
+"""The emitted files as they lie beside their record: what is compiled, and the vectors it is held against."""
+
+from __future__ import annotations
+
+import json
+import re
+from collections.abc import Mapping, Sequence
+from fractions import Fraction
+from hashlib import sha256
+from pathlib import Path
+from typing import Any, NamedTuple
+
+from realize.algebra.expression.tokens import printable, shown
+from realize.errors import RealizeError
+from realize.firmware.record import SCHEMA
+from realize.trial.c_types import LETTERS, Value, read
+
+#: What every emission has besides update, which is the one that runs.
+FUNCTIONS = ("clear", "update", "output", "advance", "preset")
+
+_ENDING = ".record.json"
+
+
+class Code(NamedTuple):
+    """C that a trial can run: a state, ``NAME_clear`` and ``NAME_update``.
+
+    Attributes
+    ----------
+    name : str
+        Prefix of every name.
+    files : mapping
+        Name and content of the files it is compiled from; those that end in ``.c`` are the sources.
+    header : str
+        The file that declares it.
+    input_type, output_type : str
+        Of ``NAME_update``; keys of :data:`realize.trial.c_types.LETTERS`.
+    table : bool
+        Whether ``NAME_update`` takes a pointer to coefficients; it is given ``NAME_nominal``.
+    functions : tuple of str
+        Those that are kept in the program, without the prefix.
+    """
+
+    name: str
+    files: Mapping[str, bytes]
+    header: str
+    input_type: str
+    output_type: str
+    table: bool = False
+    functions: tuple[str, ...] = FUNCTIONS
+
+
+class Vectors(NamedTuple):
+    """Inputs, and the answers from a cleared state."""
+
+    inputs: Sequence[Value]
+    outputs: Sequence[Value]
+
+
+class Emitted(NamedTuple):
+    """What lies beside a record.
+
+    Attributes
+    ----------
+    code : Code
+    vectors : Vectors
+    transfer_text : str
+        ``G(s)`` as the user wrote it.
+    period_s : Fraction
+    changed : tuple of str
+        Files that are not, byte for byte, those the record describes.
+    """
+
+    code: Code
+    vectors: Vectors
+    transfer_text: str
+    period_s: Fraction
+    changed: tuple[str, ...]
+
+
+def read_emitted(path: str) -> Emitted:
+    """Read a record and the files beside it.
+
+    Raises
+    ------
+    RealizeError
+        When the record or one of the files is missing, or cannot be understood.
+    """
+    record = _record(path)
+    name = _name(path, record)
+    header, source, table = f"{name}.h", f"{name}.c", f"{name}_vectors.csv"
+    files = {file: _content(Path(path).with_name(file), f"{path} describes it") for file in (header, source, table)}
+    code = code_of(name, {file: files[file] for file in (header, source)})
+    return Emitted(
+        code,
+        read_vectors(table, files[table], code),
+        str(_entry(path, record, "design", "transfer", kind=str)),
+        _period_s(path, record),
+        _changed(record, files),
+    )
+
+
+def _record(path: str) -> dict[str, Any]:
+    if not path.endswith(_ENDING):
+        raise RealizeError(
+            shown(path), "not the name of a record", f"a file that ends in {_ENDING}", "the one that realize emit wrote"
+        )
+    content = _content(Path(path), "a record that realize emit wrote")
+    try:
+        record = json.loads(content)
+    except (ValueError, RecursionError):
+        raise RealizeError(path, "not JSON", "a record that realize emit wrote", "emit the design again") from None
+    schema = record.get("schema") if isinstance(record, dict) else None
+    if schema != SCHEMA:
+        raise _other_schema(path, schema)
+    return dict(record)
+
+
+def _other_schema(path: str, schema: object) -> RealizeError:
+    kind, _, number = str(schema).partition("/")
+    ours = int(SCHEMA.partition("/")[2])
+    if kind == SCHEMA.partition("/")[0] and number.isdecimal() and int(number) > ours:
+        return RealizeError(
+            path, f"a record of the newer schema {shown(str(schema))}", SCHEMA, "use the realize that wrote it"
+        )
+    found = "a file without a schema" if schema is None else f"the unknown schema {shown(str(schema))}"
+    return RealizeError(path, found, SCHEMA, "name a record that realize emit wrote")
+
+
+def _entry(path: str, record: Mapping[str, Any], *keys: str, kind: type) -> Any:
+    value: Any = record
+    for key in keys:
+        value = value.get(key) if isinstance(value, dict) else None
+    if not isinstance(value, kind):
+        raise RealizeError(path, f"no {'.'.join(keys)}", "a record as realize emit wrote it", "emit the design again")
+    return value
+
+
+def _name(path: str, record: Mapping[str, Any]) -> str:
+    name = str(_entry(path, record, "design", "name", kind=str))
+    if not (name.isascii() and name.isidentifier()):
+        raise RealizeError(f"{path} design.name", shown(name), "a C identifier", "emit the design again")
+    return name
+
+
+def _period_s(path: str, record: Mapping[str, Any]) -> Fraction:
+    text = str(_entry(path, record, "design", "sampling", "period_s", kind=str))
+    try:
+        period_s = Fraction(text)
+    except (ValueError, ZeroDivisionError):
+        period_s = Fraction(0)
+    if period_s <= 0:
+        raise RealizeError(f"{path} sampling.period_s", shown(text), "a time above zero", "emit the design again")
+    return period_s
+
+
+def _content(path: Path, what: str) -> bytes:
+    try:
+        return path.read_bytes()
+    except FileNotFoundError:
+        raise RealizeError(
+            str(path), "there is no such file", what, "emit the design again, or move the files back together"
+        ) from None
+    except (OSError, ValueError) as error:
+        reason = getattr(error, "strerror", None) or str(error)
+        raise RealizeError(printable(str(path)), f"cannot be read: {reason}", what, "look at its rights") from error
+
+
+def code_of(name: str, files: Mapping[str, bytes]) -> Code:
+    """What a trial needs to know of the emitted C, from the declaration that the compiler will see.
+
+    Parameters
+    ----------
+    name : str
+        Prefix of every name; ``NAME.h`` is among the files.
+    files : mapping
+        Name and content of header and source.
+
+    Raises
+    ------
+    RealizeError
+        When ``NAME_update`` is not declared as emission declares it.
+    """
+    header = f"{name}.h"
+    pattern = (
+        rf"(?P<output>\w+)\s+{name}_update\(\s*{name}_state\s*\*\s*state,"
+        rf"(?P<table>\s*const\s+{name}_coefficients\s*\*\s*\w+,)?\s*(?P<input>\w+)\s+input\s*\);"
+    )
+    found = re.search(pattern, files[header].decode(errors="replace"))
+    if found is None or not {found["input"], found["output"]} <= set(LETTERS):
+        raise RealizeError(
+            header,
+            f"no declaration of {name}_update that a trial can call",
+            f"TYPE {name}_update({name}_state *state, TYPE input); of {', '.join(LETTERS)}",
+            "emit the design again",
+        )
+    return Code(name, files, header, found["input"], found["output"], found["table"] is not None)
+
+
+def read_vectors(file: str, content: bytes, code: Code) -> Vectors:
+    """Read ``NAME_vectors.csv``.
+
+    Raises
+    ------
+    RealizeError
+        When a line is not an input and an output of the types of the code.
+    """
+    lines = content.decode("ascii", errors="replace").splitlines()
+    if not lines or lines[0] != "input,output" or len(lines) == 1:
+        raise RealizeError(
+            file, "no vectors", "the heading input,output and a line for each sample", "emit the design again"
+        )
+    rows = [_row(file, number, line, code) for number, line in enumerate(lines[1:], 2)]
+    return Vectors([x for x, _ in rows], [y for _, y in rows])
+
+
+def _row(file: str, number: int, line: str, code: Code) -> tuple[Value, Value]:
+    try:
+        x, y = line.split(",")
+        return read(code.input_type, x), read(code.output_type, y)
+    except (ValueError, OverflowError):
+        raise RealizeError(
+            f"{file} line {number}",
+            shown(line),
+            f"an input that is a {code.input_type} and an output that is a {code.output_type}",
+            "emit the design again",
+        ) from None
+
+
+def _changed(record: Mapping[str, Any], files: Mapping[str, bytes]) -> tuple[str, ...]:
+    described = record.get("files")
+    hashes = described if isinstance(described, dict) else {}
+    return tuple(name for name, content in files.items() if hashes.get(name) != sha256(content).hexdigest())

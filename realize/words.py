@@ -1,0 +1,294 @@
+"""Which words a design needs: structures and word lengths side by side, judged by the same checks.
+
+The method is the one the design names, or the one recommended for unrounded numbers: word lengths do not choose it.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import replace
+from typing import TYPE_CHECKING, NamedTuple
+
+from realize.arithmetic.deadband import smallest_float_answered
+from realize.arithmetic.formats import FORMATS
+from realize.arithmetic.integer import (
+    STRUCTURES,
+    WIDTHS,
+    IntegerRealization,
+    Interface,
+    StructureChoice,
+    Widths,
+    choices,
+    interface_of,
+    rounded_pulse,
+)
+from realize.arithmetic.integer.quiet import Quiet, quiet
+from realize.arithmetic.realization import Realization
+from realize.checks import Check, ContinuousReference, Tolerances, run_checks
+from realize.design import Design
+from realize.errors import Refused
+from realize.transfer import PulseTransferFunction
+from realize.workflow import Comparison, choose, refuse_unacceptable
+from realize.workflow.causal import signals_of
+from realize.workflow.compare import loop_setting_of
+from realize.workflow.gate import gate
+from realize.workflow.stored import integer_numbers, stored_numbers
+
+if TYPE_CHECKING:
+    from realize.loop_design import LoopSetting
+
+#: Shortest and longest word that is tried: below 6 bits a coefficient of a section has no room for sign and integer
+#: part and three fraction bits; above 32 there is no target.
+SHORTEST_BITS, LONGEST_BITS = 6, 32
+
+#: Samples for which the smallest answered input is looked for, and states of a section of which every cycle is: a table
+#: of a dozen rows then takes a second more.
+SAMPLES, MOST_STATES = 1 << 12, 1 << 16
+
+#: Sums while word lengths are searched, so that they are not what fails.
+WIDEST = 64
+
+#: Checks of the coefficients, not of what the arithmetic does with them.
+_OF_COEFFICIENTS = (
+    "stability",
+    "pole shift",
+    "zero shift",
+    "magnitude in band",
+    "phase in band",
+    "low-frequency gain",
+    "step deviation",
+    "step overshoot",
+    "converter step",
+)
+
+
+class Row(NamedTuple):
+    """A structure in words of one length.
+
+    Attributes
+    ----------
+    structure : str
+        Its name.
+    widths : Widths
+        Bits of words and sums.
+    refused : str or None
+        Why it cannot be; then nothing below is known.
+    realization : IntegerRealization or None
+        What would be stored.
+    checks : tuple of Check
+        Of it.
+    out : tuple of str
+        Checks that are in the way.
+    quiet : Quiet or None
+        Deadband and limit cycles, where they were looked for.
+    """
+
+    structure: str
+    widths: Widths
+    refused: str | None
+    realization: IntegerRealization | None = None
+    checks: tuple[Check, ...] = ()
+    out: tuple[str, ...] = ()
+    quiet: Quiet | None = None
+
+    @property
+    def acceptable(self) -> bool:
+        """Whether it may be emitted."""
+        return self.refused is None and not self.out
+
+    def difference(self, name: str) -> float | None:
+        """Figure of a check of the stored numbers."""
+        return next((c.difference for c in self.checks if c.check == name and c.of == "stored"), None)
+
+
+class StructureWords(NamedTuple):
+    """What one structure needs.
+
+    Attributes
+    ----------
+    structure : str
+        Its name.
+    coefficient_bits : int or None
+        Shortest coefficients with which every check of coefficients is within; None where none up to 32 bits is.
+    smallest_bits : int or None
+        Shortest word with which everything is; None where 32 bits do not suffice.
+    """
+
+    structure: str
+    coefficient_bits: int | None
+    smallest_bits: int | None
+
+
+class FloatWords(NamedTuple):
+    """A floating-point target beside the integers.
+
+    Attributes
+    ----------
+    arithmetic : str
+        ``float32`` or ``float64``.
+    refused : str or None
+        Why it cannot be.
+    structure : str
+        What it would take.
+    out : tuple of str
+        Checks that are in the way.
+    smallest_answered : int or None
+        Smallest count of input that is ever answered, its integral at the far end of the output range; None where no
+        count is.
+    """
+
+    arithmetic: str
+    refused: str | None
+    structure: str = ""
+    out: tuple[str, ...] = ()
+    smallest_answered: int | None = None
+
+
+class Words(NamedTuple):
+    """Structures and word lengths side by side.
+
+    Attributes
+    ----------
+    comparison : Comparison
+        From which the method comes.
+    method : str
+        The method.
+    interface : Interface
+        Counts at both ends.
+    rows : tuple of Row
+        Every structure at the word length of every integer target.
+    structures : tuple of StructureWords
+        What each needs.
+    floats : tuple of FloatWords
+        The floating-point targets.
+    recommended : Row or None
+        The cheapest that is within every tolerance.
+    """
+
+    comparison: Comparison
+    method: str
+    interface: Interface
+    rows: tuple[Row, ...]
+    structures: tuple[StructureWords, ...]
+    floats: tuple[FloatWords, ...]
+    recommended: Row | None
+
+
+class _Bench(NamedTuple):
+    """What every structure is tried on."""
+
+    design: Design
+    reference: ContinuousReference
+    setting: LoopSetting | None
+    unrounded: PulseTransferFunction
+    interface: Interface
+
+
+def words(design: Design) -> Words:
+    """Try every structure in every word length.
+
+    Parameters
+    ----------
+    design : Design
+        Its own arithmetic does not matter; its signals do.
+
+    Raises
+    ------
+    RealizeError
+        When a range or the size of a count is missing.
+    Refused
+        When no method is within tolerance even unrounded.
+    """
+    interface = interface_of(design.input, design.output, "int32")
+    comparison = choose(replace(design, target=design.target._replace(arithmetic="float64", structure="auto")))
+    chosen = refuse_unacceptable(comparison)
+    assert chosen.discretization is not None
+    reference = ContinuousReference(comparison.causal.transfer, comparison.period_s, comparison.band_rad_s)
+    setting = loop_setting_of(design, comparison.causal.transfer, comparison.period_s)
+    bench = _Bench(design, reference, setting, chosen.discretization.pulse, interface)
+    found = _structures(bench)
+    rows = [_with_quiet(_best(bench, name, bits, sums)) for bits, sums in WIDTHS.values() for name in found]
+    needs = tuple(_needs(bench, name, [row for row in rows if row.structure == name]) for name in found)
+    floats = tuple(_floats(bench, arithmetic) for arithmetic in FORMATS)
+    return Words(comparison, chosen.method, interface, tuple(rows), needs, floats, _recommended(rows))
+
+
+def _structures(bench: _Bench) -> list[str]:
+    """Names of the structures that suit the poles; those that come to the same sums once."""
+    found = choices(bench.unrounded, bench.interface, "int32", bench.design.target.structure, {})
+    names = {choice.structure for choice in found}
+    return [name for name in STRUCTURES if name in names]
+
+
+def _best(bench: _Bench, structure: str, bits: int, sums: Sequence[int]) -> Row:
+    """In the narrowest sums that are within every tolerance, else in the narrowest that can be had at all."""
+    rows = [_row(bench, structure, Widths(bits, wide)) for wide in sums]
+    possible = [row for row in rows if row.refused is None]
+    return next((row for row in possible if row.acceptable), (possible or rows)[0])
+
+
+def _row(bench: _Bench, structure: str, widths: Widths) -> Row:
+    try:
+        stored = integer_numbers(
+            bench.design, bench.reference, bench.unrounded, bench.interface, StructureChoice(structure, widths, 0, 0)
+        )
+    except Refused as refusal:
+        return Row(structure, widths, refusal.found)
+    loop = bench.setting.result(bench.unrounded, stored.pulse) if bench.setting else None
+    checks = stored.checks + (loop.checks if loop else ())
+    blocking, _ = gate(checks, bench.design.accept)
+    assert isinstance(stored.realization, IntegerRealization)
+    return Row(structure, widths, None, stored.realization, checks, tuple(dict.fromkeys(c.check for c in blocking)))
+
+
+def _with_quiet(row: Row) -> Row:
+    return row if row.realization is None else row._replace(quiet=quiet(row.realization, SAMPLES, MOST_STATES))
+
+
+def _floats(bench: _Bench, arithmetic: str) -> FloatWords:
+    target = bench.design.target._replace(arithmetic=arithmetic, structure="auto")
+    try:
+        stored = stored_numbers(replace(bench.design, target=target), bench.reference, bench.unrounded)
+    except Refused as refusal:
+        return FloatWords(arithmetic, refusal.found)
+    assert isinstance(stored.realization, Realization)
+    loop = bench.setting.result(bench.unrounded, stored.pulse) if bench.setting else None
+    blocking, _ = gate(stored.checks + (loop.checks if loop else ()), bench.design.accept)
+    port = bench.interface.input
+    level = float(max(bench.design.output.range or (0, 0)))
+    answered = smallest_float_answered(stored.realization, port.per_count, range(1, port.high + 1), level)
+    names = tuple(dict.fromkeys(c.check for c in blocking))
+    return FloatWords(arithmetic, None, stored.realization.structure, names, answered)
+
+
+def _recommended(rows: Sequence[Row]) -> Row | None:
+    """The cheapest, as `emit` would take it: short words, narrow sums, few multiplications, few bytes."""
+    able = [row for row in rows if row.acceptable]
+    return min(able, key=_cost, default=None)
+
+
+def _cost(row: Row) -> tuple[int, int, int, int]:
+    assert row.realization is not None
+    program = row.realization.program
+    return *row.widths, program.multiplications, program.state_bytes
+
+
+def _needs(bench: _Bench, structure: str, rows: Sequence[Row]) -> StructureWords:
+    enough = [b for b in range(SHORTEST_BITS, LONGEST_BITS + 1) if _coefficients_suffice(bench, structure, b)]
+    known = {row.widths.bits: row.acceptable for row in rows}
+    if not known.get(LONGEST_BITS):
+        return StructureWords(structure, enough[0] if enough else None, None)
+    sufficing = (b for b in enough if known.get(b) or _row(bench, structure, Widths(b, WIDEST)).acceptable)
+    return StructureWords(structure, enough[0] if enough else None, next(sufficing, None))
+
+
+def _coefficients_suffice(bench: _Bench, structure: str, bits: int) -> bool:
+    """Whether rounding the coefficients alone keeps every check of them within its tolerance."""
+    try:
+        pulse = rounded_pulse(bench.unrounded, bench.interface, bits, structure)
+    except Refused:
+        return False
+    signals, tolerances = signals_of(bench.design), Tolerances.of(bench.design.tolerance)
+    checks = run_checks(bench.reference, pulse, "stored", tolerances, signals)
+    blocking, _ = gate([c for c in checks if c.check in _OF_COEFFICIENTS], bench.design.accept)
+    return not blocking

@@ -1,0 +1,143 @@
+"""The record in integers: every stored number, its binary point, and what is proven."""
+
+from __future__ import annotations
+
+import json
+from fractions import Fraction
+from hashlib import sha256
+from typing import Any
+
+import pytest
+
+from realize.arithmetic.integer import STRUCTURES, stored_integer_pulse
+from realize.errors import Refused
+from realize.firmware.integer import IntegerEmission, render_integer_firmware
+from realize.firmware.integer.c_header import FORMS
+from realize.firmware.integer.record import ceiling_text
+from tests.firmware.integer.designs import TRANSFERS, WIDTHS, emission
+
+Entry = dict[str, Any]
+
+
+def document(one: IntegerEmission) -> Entry:
+    return dict(json.loads(render_integer_firmware(one)[f"{one.name}.record.json"]))
+
+
+def designs() -> list[tuple[str, IntegerEmission]]:
+    found = []
+    for transfer in TRANSFERS:
+        for structure in STRUCTURES:
+            for widths in WIDTHS[::2]:
+                try:
+                    one = emission("x", transfer, structure, widths, options=("hold-integral", "table", "add"))
+                except Refused:
+                    continue
+                found.append((f"{transfer} {structure} {widths.bits}", one))
+    return found
+
+
+DESIGNS = dict(designs())
+
+
+def value(entry: Entry) -> Fraction:
+    return Fraction(entry["value"])
+
+
+def numbers(node: Any) -> list[Entry]:
+    """Every entry with a stored number, anywhere."""
+    if isinstance(node, list):
+        return [entry for each in node for entry in numbers(each)]
+    if not isinstance(node, dict):
+        return []
+    if "stored" in node:
+        return [node]
+    return [entry for each in node.values() for entry in numbers(each)]
+
+
+@pytest.mark.parametrize("name", DESIGNS)
+def test_value_is_the_stored_integer_at_its_binary_point(name: str) -> None:
+    record = document(DESIGNS[name])
+    entries = [entry for key in ("integral", "sections", "direct_gain") for entry in numbers(record[key])]
+    assert entries
+    for entry in entries:
+        if entry["stored"] is None:
+            assert entry["fraction_bits"] is None
+        else:
+            assert value(entry) == entry["stored"] / Fraction(2) ** entry["fraction_bits"]
+
+
+@pytest.mark.parametrize("name", DESIGNS)
+def test_sections_and_integral_are_the_stored_pulse_transfer_function(name: str) -> None:
+    """At a point of the z-plane, with the sections taken for subtraction although the C text adds."""
+    one = DESIGNS[name]
+    record, z = document(one), Fraction(7, 3)
+    pulse = stored_integer_pulse(one.realization)
+    parts = [
+        sum(value(b) / z**i for i, b in enumerate(section["b"]))
+        / (1 + sum(value(a) / z**i for i, a in enumerate(section["a"], 1)))
+        for section in record["sections"]
+    ]
+    if one.realization.structure == "parallel":
+        rest = sum(parts, value(record["direct_gain"]) if record["direct_gain"] else Fraction(0))
+    else:
+        rest = Fraction(1) if parts else Fraction(0)
+        for part in parts:
+            rest *= part
+    total = rest + sum(value(gain) / (z - 1) ** i for i, gain in enumerate(record["integral"], 1))
+    expected = evaluated(pulse.numerator, z) / evaluated(pulse.denominator, z)
+    assert total == expected * one.realization.program.interface.scale
+
+
+def evaluated(p: tuple[Fraction, ...], z: Fraction) -> Fraction:
+    total = Fraction(0)
+    for c in p:
+        total = total * z + c
+    return total
+
+
+def test_delta_record_gives_the_stored_numbers_under_their_names() -> None:
+    section = document(DESIGNS["notch delta 16"])["sections"][0]
+    assert set(section["coefficients"]) == {"d", "c1", "c2", "a1", "a2"}
+    stored = {name: value(entry) for name, entry in section["coefficients"].items()}
+    # z^2 + a1 z + a2 = (z - 1)^2 + A1 (z - 1) + A2
+    assert [value(a) for a in section["a"]] == [stored["a1"] - 2, 1 - stored["a1"] + stored["a2"]]
+    assert {entry["stored"] for entry in (*section["a"], *section["b"])} == {None}
+
+
+def test_normal_record_gives_the_stored_numbers_under_their_names() -> None:
+    section = document(DESIGNS["notch normal 32"])["sections"][0]
+    stored = {name: value(entry) for name, entry in section["coefficients"].items()}
+    assert set(stored) == {"s", "w", "c1", "c2", "d"}
+    assert [value(a) for a in section["a"]] == [-2 * stored["s"], stored["s"] ** 2 + stored["w"] ** 2]
+
+
+def test_signals_are_the_words_and_sums_with_room_to_spare() -> None:
+    signals = document(DESIGNS["pid error-feedback 16"])["signals"]
+    words = {entry["name"]: entry for entry in signals["words"]}
+    sums = {entry["name"]: entry for entry in signals["accumulators"]}
+    assert {"input", "integral1", "section1_output"} <= set(words)
+    assert {"unclamped", "section1_output"} <= set(sums)
+    for entry in (*words.values(), *sums.values()):
+        largest = max(entry["proven_most"], -entry["proven_least"] - 1)
+        assert entry["spare_bits"] == entry["bits"] - 1 - largest.bit_length() >= 0
+
+
+def test_files_are_those_of_the_emission_and_the_tool_is_named() -> None:
+    one = DESIGNS["pi cascade 16"]
+    files = render_integer_firmware(one)
+    record = document(one)
+    own = {name: sha256(text.encode()).hexdigest() for name, text in files.items() if not name.endswith(".json")}
+    assert record["files"] == own
+    assert [record[key] for key in ("schema", "structure", "arithmetic")] == ["realize/1", "cascade", "int16"]
+
+
+@pytest.mark.parametrize(
+    ("bound", "text"),
+    [("1/2", "0.5"), ("1/3", "0.33334"), ("123456", "123460"), ("2", "2"), ("100001/100000", "1.0001")],
+)
+def test_a_bound_is_rounded_so_that_it_stays_one(bound: str, text: str) -> None:
+    assert ceiling_text(Fraction(bound)) == text
+
+
+def test_every_structure_has_words_in_the_header() -> None:
+    assert set(FORMS) == set(STRUCTURES)
