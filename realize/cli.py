@@ -7,7 +7,7 @@ import json
 import os
 import re
 import sys
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 from pathlib import Path
 from typing import Any, TypeVar
 
@@ -36,6 +36,8 @@ _ARGUMENTS = {
     "design": "a design file (ends in .toml), - for one on standard input, or an expression in s",
     "name": "the name of the design to start, such as roller_gap",
     "record": "a record that realize emit wrote (ends in .record.json)",
+    "old": "the record from before (ends in .record.json)",
+    "new": "the record that is to take its place (ends in .record.json)",
 }
 
 
@@ -82,6 +84,8 @@ def commands() -> None:
     Which integers would do?          realize words roller_gap.toml
     Write the firmware files:         realize emit roller_gap.toml --out firmware
     Run them on the processor:        realize trial firmware/roller_gap.record.json --on all
+    Are they still what they should?  realize audit firmware/roller_gap.record.json
+    What changed between two records? realize differ old.record.json new.record.json
     """
 
 
@@ -199,10 +203,12 @@ def words(design: str, as_json: bool, **options: Any) -> None:
 @_takes_rate
 @_takes_design
 @click.option("--out", required=True, metavar="DIR", help="Directory for the files; made if missing.")
-def emit(design: str, as_json: bool, out: str, **options: Any) -> None:
+@click.option("--dependencies", metavar="FILE", help="Write the rule that make and ninja read into FILE.")
+def emit(design: str, as_json: bool, out: str, dependencies: str | None, **options: Any) -> None:
     """Do the whole job and write the C files, the vectors and the record: all or none.
 
-    Refused with exit status 1 when the design is improper, unstable or out of tolerance.
+    Refused with exit status 1 when the design is improper, unstable or out of tolerance. A file
+    whose content would stay the same is left alone, so that a build does not compile it again.
 
     \b
     Example: realize emit roller_gap.toml --out firmware
@@ -215,12 +221,28 @@ def emit(design: str, as_json: bool, out: str, **options: Any) -> None:
 
     if not out.strip():
         raise RealizeError("--out", "an empty name", "a directory for the files", "--out firmware, or --out . for here")
-    emitted = emit_design(_load(design, options))
-    paths = [str(path) for path in write_all(Path(out), emitted.files)]
+    loaded = _load(design, options)
+    rule = _rule(design, loaded, Path(out), dependencies)
+    emitted = emit_design(loaded)
+    paths = [str(path) for path in write_all(Path(out), emitted.files, rule(emitted.files))]
     if as_json:
         _print(emit_document(emitted, paths))
     else:
         _print(emit_text(emitted.comparison, emitted.chosen, paths))
+
+
+def _rule(
+    argument: str, design: Any, folder: Path, dependencies: str | None
+) -> Callable[[Iterable[str]], dict[Path, str]]:
+    """From the names of emitted files to the rule that makes them, if one is asked for; refused before any work."""
+    if dependencies is None:
+        return lambda _: {}
+    from realize.firmware.dependencies import prerequisites, rule_text
+
+    if not dependencies.strip():
+        raise RealizeError("--dependencies", "an empty name", "a file for the rule", "--dependencies firmware.d")
+    sources = prerequisites(argument, design)
+    return lambda names: {Path(dependencies): rule_text([str(folder / name) for name in names], sources)}
 
 
 @commands.command(short_help="Compile the emitted code and run it against its vectors.")
@@ -250,6 +272,50 @@ def trial(record: str, on: str, compiler: str | None, clock: str | None, as_json
     found = try_out(record, on, compiler)
     _print(trial_document(found, clock_hz) if as_json else trial_text(found, clock_hz))
     if not found.equal:
+        sys.exit(1)
+
+
+@commands.command(short_help="Say whether what was emitted is still what the design calls for.")
+@click.argument("record", metavar="RECORD")
+@click.option("--design", metavar="FILE", help="Design file to hold against the design in the record.")
+@click.option("--json", "as_json", is_flag=True, help="Print one JSON document and nothing else.")
+def audit(record: str, design: str | None, as_json: bool) -> None:
+    """Compute everything in RECORD anew and compare: files, coefficients, checks, and what scipy says.
+
+    One line and exit status 0 when nothing differs; else every difference in words, and 1. What the
+    command line overrode at emission counts as a difference from the design file. The second
+    opinion needs scipy: pip install "realize[audit]"
+
+    \b
+    Example: realize audit firmware/roller_gap.record.json --design roller_gap.toml
+    """
+    from realize.firmware.audit import audit as audit_record
+    from realize.report.auditing import audit_document, audit_text
+
+    found = audit_record(record, design)
+    _print(audit_document(found) if as_json else audit_text(found))
+    if found.findings:
+        sys.exit(1)
+
+
+@commands.command(short_help="Say what changed between two records.")
+@click.argument("old", metavar="OLD")
+@click.argument("new", metavar="NEW")
+@click.option("--json", "as_json", is_flag=True, help="Print one JSON document and nothing else.")
+def differ(old: str, new: str, as_json: bool) -> None:
+    """Say what changed between two records, in engineering terms: for a review.
+
+    Gains, poles, margins, words, checks, files and all else. Exit status 0 when nothing differs, else 1.
+
+    \b
+    Example: realize differ released/roller_gap.record.json firmware/roller_gap.record.json
+    """
+    from realize.firmware.differ import differ as differ_records
+    from realize.report.differing import differ_document, differ_text
+
+    found = differ_records(old, new)
+    _print(differ_document(found, old, new) if as_json else differ_text(found))
+    if found.rows:
         sys.exit(1)
 
 

@@ -5,7 +5,7 @@ The method is the one the design names, or the one recommended for unrounded num
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 from typing import TYPE_CHECKING, NamedTuple
 
@@ -22,7 +22,7 @@ from realize.arithmetic.integer import (
     interface_of,
     rounded_pulse,
 )
-from realize.arithmetic.integer.quiet import Quiet, quiet
+from realize.arithmetic.integer.quiet import FEW_SAMPLES, FEW_STATES, Quiet, quiet
 from realize.arithmetic.realization import Realization
 from realize.checks import Check, ContinuousReference, Tolerances, run_checks
 from realize.design import Design
@@ -40,10 +40,6 @@ if TYPE_CHECKING:
 #: Shortest and longest word that is tried: below 6 bits a coefficient of a section has no room for sign and integer
 #: part and three fraction bits; above 32 there is no target.
 SHORTEST_BITS, LONGEST_BITS = 6, 32
-
-#: Samples for which the smallest answered input is looked for, and states of a section of which every cycle is: a table
-#: of a dozen rows then takes a second more.
-SAMPLES, MOST_STATES = 1 << 12, 1 << 16
 
 #: Sums while word lengths are searched, so that they are not what fails.
 WIDEST = 64
@@ -161,8 +157,10 @@ class Words(NamedTuple):
         What each needs.
     floats : tuple of FloatWords
         The floating-point targets.
+    refused : mapping
+        Why structures do not suit the poles, by name.
     recommended : Row or None
-        The cheapest that is within every tolerance.
+        The cheapest that is within every tolerance: what `emit` takes by that method.
     """
 
     comparison: Comparison
@@ -171,6 +169,7 @@ class Words(NamedTuple):
     rows: tuple[Row, ...]
     structures: tuple[StructureWords, ...]
     floats: tuple[FloatWords, ...]
+    refused: Mapping[str, str]
     recommended: Row | None
 
 
@@ -206,18 +205,24 @@ def words(design: Design) -> Words:
     reference = ContinuousReference(comparison.causal.transfer, comparison.period_s, comparison.band_rad_s)
     setting = loop_setting_of(design, comparison.causal.transfer, comparison.period_s)
     bench = _Bench(design, reference, setting, chosen.discretization.pulse, interface)
-    found = _structures(bench)
+    order, refusals = _order(bench)
+    found = [name for name in STRUCTURES if name in {choice.structure for choice in order}]
     rows = [_with_quiet(_best(bench, name, bits, sums)) for bits, sums in WIDTHS.values() for name in found]
     needs = tuple(_needs(bench, name, [row for row in rows if row.structure == name]) for name in found)
     floats = tuple(_floats(bench, arithmetic) for arithmetic in FORMATS)
-    return Words(comparison, chosen.method, interface, tuple(rows), needs, floats, _recommended(rows))
+    recommended = _recommended(rows, order)
+    return Words(comparison, chosen.method, interface, tuple(rows), needs, floats, refusals, recommended)
 
 
-def _structures(bench: _Bench) -> list[str]:
-    """Names of the structures that suit the poles; those that come to the same sums once."""
-    found = choices(bench.unrounded, bench.interface, "int32", bench.design.target.structure, {})
-    names = {choice.structure for choice in found}
-    return [name for name in STRUCTURES if name in names]
+def _order(bench: _Bench) -> tuple[list[StructureChoice], dict[str, str]]:
+    """Structures that suit the poles, in the order in which `emit` tries them, and why the others do not."""
+    refusals: dict[str, Refused] = {}
+    order = [
+        choice
+        for arithmetic in WIDTHS
+        for choice in choices(bench.unrounded, bench.interface, arithmetic, bench.design.target.structure, refusals)
+    ]
+    return order, {name: refusal.found for name, refusal in refusals.items()}
 
 
 def _best(bench: _Bench, structure: str, bits: int, sums: Sequence[int]) -> Row:
@@ -242,7 +247,7 @@ def _row(bench: _Bench, structure: str, widths: Widths) -> Row:
 
 
 def _with_quiet(row: Row) -> Row:
-    return row if row.realization is None else row._replace(quiet=quiet(row.realization, SAMPLES, MOST_STATES))
+    return row if row.realization is None else row._replace(quiet=quiet(row.realization, FEW_SAMPLES, FEW_STATES))
 
 
 def _floats(bench: _Bench, arithmetic: str) -> FloatWords:
@@ -261,25 +266,20 @@ def _floats(bench: _Bench, arithmetic: str) -> FloatWords:
     return FloatWords(arithmetic, None, stored.realization.structure, names, answered)
 
 
-def _recommended(rows: Sequence[Row]) -> Row | None:
-    """The cheapest, as `emit` would take it: short words, narrow sums, few multiplications, few bytes."""
-    able = [row for row in rows if row.acceptable]
-    return min(able, key=_cost, default=None)
-
-
-def _cost(row: Row) -> tuple[int, int, int, int]:
-    assert row.realization is not None
-    program = row.realization.program
-    return *row.widths, program.multiplications, program.state_bytes
+def _recommended(rows: Sequence[Row], order: Sequence[StructureChoice]) -> Row | None:
+    """The first that is within every tolerance, in the order in which `emit` tries them."""
+    able = {(row.structure, row.widths): row for row in rows if row.acceptable}
+    return next((able[c.structure, c.widths] for c in order if (c.structure, c.widths) in able), None)
 
 
 def _needs(bench: _Bench, structure: str, rows: Sequence[Row]) -> StructureWords:
     enough = [b for b in range(SHORTEST_BITS, LONGEST_BITS + 1) if _coefficients_suffice(bench, structure, b)]
     known = {row.widths.bits: row.acceptable for row in rows}
+    tried = sorted({*enough, *(bits for bits, able in known.items() if able)})
     if not known.get(LONGEST_BITS):
         return StructureWords(structure, enough[0] if enough else None, None)
-    sufficing = (b for b in enough if known.get(b) or _row(bench, structure, Widths(b, WIDEST)).acceptable)
-    return StructureWords(structure, enough[0] if enough else None, next(sufficing, None))
+    words = next(b for b in tried if known.get(b) or _row(bench, structure, Widths(b, WIDEST)).acceptable)
+    return StructureWords(structure, min([words, *enough]), words)
 
 
 def _coefficients_suffice(bench: _Bench, structure: str, bits: int) -> bool:

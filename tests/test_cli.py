@@ -54,7 +54,9 @@ def test_help_has_a_worked_example(run: Any, command: str) -> None:
 
 
 def test_only_the_commands_that_are_built_exist() -> None:
-    assert sorted(commands.commands) == ["assess", "compare", "emit", "new", "rates", "trial", "words"]
+    assert sorted(commands.commands) == [
+        *("assess", "audit", "compare", "differ", "emit", "new", "rates", "trial", "words"),
+    ]
 
 
 def test_version(run: Any) -> None:
@@ -281,8 +283,8 @@ MISTAKES = [
         "directory for the files",
         "try: realize emit roller_gap.toml --out firmware",
     ),
-    (["speak", "1/s"], 'realize: the unknown command "speak"', "assess, compare", "try: realize --help"),
-    (["asess", "1/s"], 'realize: the unknown command "asess"', "assess, compare", "try: did you mean assess?"),
+    (["speak", "1/s"], 'realize: the unknown command "speak"', "assess, audit, compare", "try: realize --help"),
+    (["asess", "1/s"], 'realize: the unknown command "asess"', "assess, audit, compare", "try: did you mean assess?"),
     (["--frob"], 'realize: the unknown option "--frob"', "--version", "try: realize --help"),
     (["assess", "1/s", "--metod", "x"], 'the unknown option "--metod"', "--method", "try: did you mean --method?"),
     (["rates", "1/(s+1)", "--rate", "1 kHz"], 'the unknown option "--rate"', "--from, --to", "realize rates --help"),

@@ -57,3 +57,10 @@ def test_nothing_lower_knows_anything_higher(path: Path) -> None:
 def test_the_core_imports_numpy_and_the_standard_library_only(path: Path) -> None:
     outside = {name.split(".")[0] for name in _imports(path)} - set(sys.stdlib_module_names)
     assert outside <= {"numpy", "realize"}
+
+
+def test_scipy_is_loaded_for_the_second_opinion_alone() -> None:
+    using = [str(path) for path in MODULES if any(name.split(".")[0] == "scipy" for name in _imports(path))]
+    assert using == ["firmware/audit/scipy_roads.py"]
+    name = "realize.firmware.audit.scipy_roads"
+    assert [str(path) for path in MODULES if name in _imports(path)] == ["firmware/audit/second_opinion.py"]

@@ -83,6 +83,8 @@ def test_a_shortest_word_suffices_and_coefficients_alone_need_no_more(four: Word
         assert each.coefficient_bits is not None
         assert each.smallest_bits is not None
         assert each.coefficient_bits <= each.smallest_bits
+        able = [row.widths.bits for row in four.rows if row.structure == each.structure and row.acceptable]
+        assert each.smallest_bits <= min(able)
 
 
 def test_every_structure_stands_there_once_for_each_target(four: Words) -> None:
@@ -112,7 +114,7 @@ def test_the_document_holds_what_the_screen_shows(four: Words) -> None:
     assert len(document["rows"]) == len(four.rows)
     for row, entry in zip(four.rows, document["rows"], strict=True):
         assert row.realization is not None
-        assert Fraction(entry["output_error_counts"]) == Fraction(float(row.realization.proof.output_error))
+        assert Fraction(entry["proven_error_counts"]) == Fraction(float(row.realization.proof.output_error))
         assert {"positive", "negative"} == set(entry["smallest_answered_counts"])
     assert document["recommended"]["structure"] in document["because"]
 

@@ -1,7 +1,8 @@
 """Writing a set of files: all of them or none.
 
 Every text is first written beside its place; only when all are there do they take their names. When anything fails,
-what stood there before stands there again.
+what stood there before stands there again. A file that holds its text already is left alone, time of change included,
+so that a build does not compile it again.
 """
 
 from __future__ import annotations
@@ -16,7 +17,7 @@ from realize.errors import RealizeError
 FRESH, FORMER = ".{}.fresh", ".{}.former"
 
 
-def write_all(directory: Path | str, texts: Mapping[str, str]) -> list[Path]:
+def write_all(directory: Path | str, texts: Mapping[str, str], beside: Mapping[Path, str] | None = None) -> list[Path]:
     """Write every text into a directory, or leave everything as it was.
 
     Parameters
@@ -25,11 +26,13 @@ def write_all(directory: Path | str, texts: Mapping[str, str]) -> list[Path]:
         Made if missing, with its parents.
     texts : mapping
         Plain file name and text; lines end in a newline everywhere.
+    beside : mapping, optional
+        Path and text of files elsewhere that are of the same set; their directories are made too.
 
     Returns
     -------
     list of Path
-        What was written, in the order given.
+        What the directory now holds, in the order given, whether it had to be written or not.
 
     Raises
     ------
@@ -37,10 +40,12 @@ def write_all(directory: Path | str, texts: Mapping[str, str]) -> list[Path]:
         When the directory or a file cannot be written; nothing has changed then.
     """
     folder = Path(directory)
+    wanted = {folder / name: text for name, text in texts.items()} | dict(beside or {})
     made: list[Path] = []
     try:
-        made = _make(folder)
-        _place(folder, texts)
+        for place in dict.fromkeys((folder, *(path.parent for path in wanted))):
+            made += _make(place)
+        _place({path: text for path, text in wanted.items() if not _holds(path, text)})
     except OSError as error:
         _remove_empty(made)
         raise RealizeError(
@@ -95,15 +100,23 @@ def _remove_empty(made: list[Path]) -> None:
         path.rmdir()
 
 
-def _place(folder: Path, texts: Mapping[str, str]) -> None:
-    """Write all beside their places, then rename all."""
-    fresh = {name: folder / FRESH.format(name) for name in texts}
+def _holds(path: Path, text: str) -> bool:
+    """Whether a file is there with these very bytes."""
     try:
-        for name, text in texts.items():
-            if (folder / name).is_dir():
-                raise IsADirectoryError(21, "a directory has the name of a file", str(folder / name))
-            _write(fresh[name], text)
-        _exchange(folder, fresh)
+        return path.read_bytes() == text.encode()
+    except OSError:
+        return False
+
+
+def _place(texts: Mapping[Path, str]) -> None:
+    """Write all beside their places, then rename all."""
+    fresh = {path: path.with_name(FRESH.format(path.name)) for path in texts}
+    try:
+        for path, text in texts.items():
+            if path.is_dir():
+                raise IsADirectoryError(21, "a directory has the name of a file", str(path))
+            _write(fresh[path], text)
+        _exchange(fresh)
     finally:
         for path in fresh.values():
             path.unlink(missing_ok=True)
@@ -116,29 +129,32 @@ def _write(path: Path, text: str) -> None:
         file.write(text)
 
 
-def _exchange(folder: Path, fresh: Mapping[str, Path]) -> None:
+def _former(path: Path) -> Path:
+    return path.with_name(FORMER.format(path.name))
+
+
+def _exchange(fresh: Mapping[Path, Path]) -> None:
     """Give every fresh file its name; on failure put back what was there."""
-    done: list[str] = []
+    done: list[Path] = []
     try:
-        for name, path in fresh.items():
-            done.append(name)
-            if (folder / name).exists():
-                os.replace(folder / name, folder / FORMER.format(name))
-            os.replace(path, folder / name)
+        for path, written in fresh.items():
+            done.append(path)
+            if path.exists():
+                os.replace(path, _former(path))
+            os.replace(written, path)
     except OSError:
-        _restore(folder, done, fresh)
+        _restore(done, fresh)
         raise
-    for name in done:
-        (folder / FORMER.format(name)).unlink(missing_ok=True)
+    for path in done:
+        _former(path).unlink(missing_ok=True)
 
 
-def _restore(folder: Path, done: list[str], fresh: Mapping[str, Path]) -> None:
-    for name in reversed(done):
-        former = folder / FORMER.format(name)
-        if former.exists():
-            os.replace(former, folder / name)
-        elif not fresh[name].exists():
-            (folder / name).unlink(missing_ok=True)
+def _restore(done: list[Path], fresh: Mapping[Path, Path]) -> None:
+    for path in reversed(done):
+        if _former(path).exists():
+            os.replace(_former(path), path)
+        elif not fresh[path].exists():
+            path.unlink(missing_ok=True)
 
 
 def _culprit(folder: Path, error: OSError) -> str:

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+from math import pi
+
+from realize.algebra.expression import exact_text
 from realize.arithmetic.integer import IntegerRealization
 from realize.arithmetic.integer.quiet import Quiet, SectionCycles
 from realize.quantity import format_engineering
@@ -34,8 +37,9 @@ def words_text(found: Words) -> str:
     design, comparison = found.comparison.design, found.comparison
     rate = format_engineering(float(1 / comparison.period_s), "Hz")
     counts = found.interface
+    why = "as the design names it" if design.method != "auto" else "recommended for unrounded numbers"
     setting = (
-        f"{found.method} at {rate}; input from {counts.input.low} to {counts.input.high} counts, output from "
+        f"{found.method} ({why}) at {rate}; input from {counts.input.low} to {counts.input.high} counts, output from "
         f"{counts.output.low} to {counts.output.high}"
     )
     head = [["", *(words[i] for words in _HEAD)] for i in range(3)]
@@ -47,9 +51,17 @@ def words_text(found: Words) -> str:
         heading("Shortest words") + bullets(_needs(each) for each in found.structures),
     ]
     reasons = [f"{row.structure} in {row.widths.bits} bits: {_reason(row)}" for row in found.rows if not row.acceptable]
+    reasons += [f"{name}: {reason}" for name, reason in found.refused.items()]
     blocks += [heading("Why not") + bullets(reasons)] if reasons else []
     blocks.append(heading("In floating point") + bullets(_float_words(each) for each in found.floats))
+    blocks += [heading("To take it, in the design file") + _lines_to_add(found)] if found.recommended else []
     return "\n".join(blocks)
+
+
+def _lines_to_add(found: Words) -> str:
+    assert found.recommended is not None
+    bits, structure = found.recommended.widths.bits, found.recommended.structure
+    return f'[target]\narithmetic = "int{bits}"\nstructure = "{structure}"\n\n[method]\nname = "{found.method}"\n'
 
 
 def _float_words(each: FloatWords) -> str:
@@ -66,7 +78,7 @@ def _float_words(each: FloatWords) -> str:
 _KEY = (
     "Figures of pole, overshoot and gain are differences between stored numbers and design. The error is that of the "
     "output through rounding: proven, and to be expected. The deadband is in counts of the input (the largest that is "
-    "never answered), everything else in counts of the output; < where less may be true, - where there is no figure."
+    "never answered), everything else in counts of the output; <= where less may be true, - where there is no figure."
 )
 
 
@@ -79,7 +91,7 @@ def _answer(found: Words) -> str:
     return (
         f'arithmetic = "int{row.widths.bits}" with structure = "{row.structure}" is the cheapest that is within every '
         f"tolerance: {_count(program.multiplications, 'multiplication')} and {program.state_bytes} bytes of state a "
-        f"sample, sums in {row.widths.accumulator_bits} bits"
+        f"sample, sums of sections in {row.widths.accumulator_bits} bits"
     )
 
 
@@ -112,18 +124,18 @@ def _quiet(row: Row) -> list[str]:
 
 
 def deadband_text(found: Quiet) -> str:
-    """Counts of input that are not answered; ``<`` where fewer may be."""
+    """Counts of input that are not answered; ``<=`` where fewer may be."""
     sides = [side for side in (found.positive, found.negative) if side.counts is not None]
     if not sides:
         return "-"
     worst = max(sides, key=lambda side: side.counts or 0)
     assert worst.counts is not None
-    return f"{'' if worst.exact else '<'}{worst.counts - 1}"
+    return f"{'' if worst.exact or worst.counts == 1 else '<='}{worst.counts - 1}"
 
 
 def cycle_text(found: Quiet) -> str:
     """Largest cycle at the output without input, in counts; ``<=`` where it is only bounded."""
-    if found.largest_output == 0 or all(each.cycles.searched and not each.cycles.amplitude for each in found.sections):
+    if found.rests_at_zero:
         return "0"
     if len(found.sections) == 1 and found.sections[0].cycles.amplitude is not None:
         return str(min(found.largest_output, round(_largest_cycle(found.sections[0]))))
@@ -156,8 +168,14 @@ def _reason(row: Row) -> str:
 def words_document(found: Words) -> Document:
     """The answer of `realize words`."""
     row = found.recommended
+    incoming, outgoing = found.interface
     return document_heading("words", found.comparison.design) | {
+        "period_s": exact_text(found.comparison.period_s),
+        "band_hz": float(found.comparison.band_rad_s) / (2 * pi),
+        "input_counts": [incoming.low, incoming.high],
+        "output_counts": [outgoing.low, outgoing.high],
         "method": found.method,
+        "unsuited": dict(found.refused),
         "rows": [_row_document(each) for each in found.rows],
         "structures": [each._asdict() for each in found.structures],
         "floats": [each._asdict() | {"out": list(each.out)} for each in found.floats],
@@ -191,10 +209,9 @@ def _cycles(each: SectionCycles) -> Document:
     bound = each.cycles.bound
     return {
         "section": each.section,
-        "fraction_bits": each.fraction_bits,
-        "bound_units": None if bound is None else float(bound),
+        "proven_bound_counts": None if bound is None else float(bound) * 2.0**-each.fraction_bits,
         "searched": each.cycles.searched,
-        "amplitude_units": each.cycles.amplitude,
+        "amplitude_counts": None if each.cycles.amplitude is None else each.cycles.amplitude * 2.0**-each.fraction_bits,
         "period_samples": each.cycles.period,
     }
 
@@ -207,8 +224,8 @@ def _realized(stored: IntegerRealization, found: Quiet) -> Document:
         },
         "integration": None if found.integration is None else found.integration._asdict(),
         "limit_cycles": [_cycles(each) for each in found.sections],
-        "output_error_counts": float(stored.proof.output_error),
-        "rms_error_counts": stored.proof.rms_error,
+        "proven_error_counts": float(stored.proof.output_error),
+        "expected_rms_counts": stored.proof.rms_error,
         "multiplications": stored.program.multiplications,
         "state_bytes": stored.program.state_bytes,
     }

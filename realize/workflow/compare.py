@@ -16,7 +16,7 @@ from realize.methods import METHODS, Discretization, discretize
 from realize.transfer import TransferFunction
 from realize.workflow.causal import Causal, band_of, make_causal, signals_of
 from realize.workflow.gate import gate, recommendation
-from realize.workflow.results import Comparison, MethodResult
+from realize.workflow.results import Comparison, MethodResult, closest_of
 from realize.workflow.stored import stored_numbers
 
 if TYPE_CHECKING:
@@ -63,7 +63,9 @@ def _comparison(design: Design, causal: Causal, names: Sequence[str], *, unround
         results = [_with_unrounded(design, reference, result) for result in results]
     while True:
         recommended, because = recommendation(results)
-        place = next((i for i, result in enumerate(results) if result.method == recommended), None)
+        # Where none is acceptable, whether method or rounding is at fault shows in the closest.
+        judged = next((r for r in results if r.method == recommended), None) or closest_of(results)
+        place = None if judged is None else results.index(judged)
         if unrounded_too or place is None or results[place].judged_unrounded:
             return Comparison(design, causal, period_s, band_rad_s, rests_on, tuple(results), recommended, because)
         results[place] = _with_unrounded(design, reference, results[place])
@@ -84,7 +86,7 @@ def _result(design: Design, reference: ContinuousReference, setting: LoopSetting
         made = _discretized(design, reference, setting, name, exact_at)
         stored = stored_numbers(design, reference, made.pulse)
     except Refused as refusal:
-        return MethodResult(name, f"{refusal.where}: {refusal.found}")
+        return MethodResult(name, f"{refusal.where}: {refusal.found}", advice=refusal.advice)
     except Unresolved:
         return MethodResult(name, "a coefficient cannot be told from a neighbour at any permitted precision")
     loop = setting.result(made.pulse, stored.pulse) if setting else None

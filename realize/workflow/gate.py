@@ -9,7 +9,7 @@ from realize.checks import Check
 from realize.design import Accept
 from realize.design.model import LOOP_METHODS
 from realize.methods import METHODS
-from realize.workflow.results import MethodResult
+from realize.workflow.results import MethodResult, closest_of
 
 #: Near-ties are recommended in this order: the methods people know best first, then the table's order.
 TIE_ORDER = (
@@ -82,16 +82,20 @@ def _ratio(result: MethodResult) -> float:
 
 
 def _nothing_acceptable(results: Sequence[MethodResult]) -> str:
-    tried = [r for r in results if r.refused is None]
-    if not tried:
+    closest = closest_of(results)
+    if closest is None:
         return f"no method applies: {results[0].refused}"
-    closest = min(tried, key=lambda r: r.distance)
     return f"no method is within tolerance; {closest.method} comes closest: {failures(closest)}"
 
 
 def failures(result: MethodResult) -> str:
-    """What is out, in words."""
-    return "; ".join(dict.fromkeys(_failure(check) for check in result.blocking))
+    """What is out, in words; a figure once, as stored where that is out too."""
+    said: dict[str, str] = {}
+    for check in result.blocking:
+        text = _failure(check)
+        by_name = check.difference is not None and check.tolerance and not check.check.startswith("loop")
+        said.setdefault(check.check if by_name else text, text)
+    return "; ".join(said.values())
 
 
 def _failure(check: Check) -> str:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import cached_property
@@ -46,6 +47,8 @@ class MethodResult:
         The loops around it, where the design has a plant.
     judged_unrounded : bool
         Whether the unrounded numbers were checked too.
+    advice : str
+        What to try where it does not apply; may be empty.
     """
 
     method: str
@@ -58,6 +61,7 @@ class MethodResult:
     notes: tuple[str, ...] = ()
     loop: LoopResult | None = None
     judged_unrounded: bool = False
+    advice: str = ""
 
     @property
     def acceptable(self) -> bool:
@@ -86,10 +90,15 @@ class MethodResult:
         return max(ratios, key=lambda pair: pair[0], default=None)
 
     @property
-    def distance(self) -> tuple[int, float]:
-        """How far from acceptable: lost stability and failures without a figure count before any ratio."""
+    def distance(self) -> tuple[int, float, int]:
+        """How far from acceptable: failures without a figure (lost stability), then the worst ratio, then how many."""
         without_figure = sum(1 for c in self.blocking if not c.tolerance or c.difference is None)
-        return without_figure, self.worst[0] if self.worst else 0.0
+        return without_figure, self.worst[0] if self.worst else 0.0, len(self.blocking)
+
+
+def closest_of(results: Sequence[MethodResult]) -> MethodResult | None:
+    """The one that came closest to being acceptable; None where every method was refused."""
+    return min((r for r in results if r.refused is None), key=lambda r: r.distance, default=None)
 
 
 @dataclass(frozen=True)
@@ -132,8 +141,7 @@ class Comparison:
     @property
     def closest(self) -> MethodResult | None:
         """The chosen method, else the one that came closest to being acceptable."""
-        tried = [m for m in self.methods if m.refused is None]
-        return self.chosen or min(tried, key=lambda m: m.distance, default=None)
+        return self.chosen or closest_of(self.methods)
 
     @property
     def acceptable(self) -> bool:

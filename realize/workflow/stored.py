@@ -204,9 +204,25 @@ def integer_numbers(
     tracking = pulse.period_s / target.tracking_time_s if target.tracking_time_s else Fraction(0)
     hold = target.anti_windup == HOLD_INTEGRAL
     stored = integer_realization(pulse, interface, choice.widths, choice.structure, hold=hold, tracking=tracking)
+    _refuse_silent(stored)
     as_stored = stored_integer_pulse(stored)
     checks = _checks(design, reference, as_stored, lambda: _integer_simulation(stored))
     return Stored(stored, as_stored, (*checks, _round_off(design, stored)))
+
+
+def _refuse_silent(stored: IntegerRealization) -> None:
+    """Refuse an output that is always zero: less than half a count, whatever the input, and no integral."""
+    port, gain = stored.program.interface.output, peak_gain(stored.proof.transfer, _GAIN_WIDTH).high
+    assert gain is not None
+    largest = gain * stored.program.interface.input.reach
+    if stored.program.integral is not None or largest >= Fraction(1, 2):
+        return
+    raise Refused(
+        "[signals.output] per_count",
+        f"the whole input range moves the output by at most {float(largest):.3g} counts, so that it would stay at zero",
+        "a gain with which the output moves by half a count at least",
+        f"check the gain, or write a per_count of less than {float(2 * largest * port.per_count):.3g}",
+    )
 
 
 def _round_off(design: Design, stored: IntegerRealization) -> Check:
@@ -226,7 +242,10 @@ def _because(
     refusals: Mapping[str, Refused],
 ) -> str:
     """Why a structure was taken."""
-    cost = f"{choice.multiplications} multiplications and {choice.state_bytes} bytes of state beside the integral"
+    plural = "" if choice.multiplications == 1 else "s"
+    cost = (
+        f"{choice.multiplications} multiplication{plural} and {choice.state_bytes} bytes of state beside the integral"
+    )
     chosen = f"structure {choice.structure}: {cost}"
     if design.target.structure != "auto":
         return chosen
@@ -237,17 +256,28 @@ def _because(
 
 
 def _none_does(design: Design, refusals: Mapping[str, Refused]) -> Refused:
-    """One refusal from those of all structures, the reasons that differ in full."""
-    reasons = list(dict.fromkeys(refusal.found for refusal in refusals.values()))
-    first = next(iter(refusals.values()))
+    """One refusal from those of all structures, the reasons that differ in full.
+
+    A structure that does not suit the poles explains nothing beside one that fails for another reason, and no
+    structure makes up for signals that do not fit.
+    """
+    failed = [each for each in refusals.values() if each.where != "[target] structure"] or list(refusals.values())
+    of_signals = [each for each in failed if each.where.startswith("[signals")]
+    if of_signals:
+        return of_signals[0]
+    reasons = list(dict.fromkeys(refusal.found for refusal in failed))
     if len(reasons) == 1:
-        return first
+        return failed[0]
     return Refused(
         "[target] arithmetic",
         f"{design.target.arithmetic} does not hold this design in any structure: {'; '.join(reasons)}",
         "words that hold signals and coefficients",
-        "use int32 or float32, a lower sample rate, or a coarser per_count",
+        ", ".join([*_wider(design), "a lower sample rate, or a coarser per_count"]),
     )
+
+
+def _wider(design: Design) -> list[str]:
+    return ['arithmetic = "int32"'] if design.target.arithmetic == "int16" else ['arithmetic = "float32"']
 
 
 def _out(blocking: Sequence[Check]) -> tuple[int, float]:

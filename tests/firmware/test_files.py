@@ -1,4 +1,4 @@
-"""Writing: all files or none, and nothing else left behind."""
+"""Writing: all files or none, nothing else left behind, and nothing touched that stays as it is."""
 
 from __future__ import annotations
 
@@ -98,3 +98,45 @@ def test_a_new_file_is_written_once_and_never_over_another(tmp_path: Path) -> No
 def test_a_new_file_where_none_can_be_is_refused(tmp_path: Path) -> None:
     with pytest.raises(RealizeError, match="cannot be written: No such file or directory"):
         write_new(tmp_path / "missing" / "design.toml", "text\n")
+
+
+def aged(path: Path) -> int:
+    """Make a file an hour older; its time of change in ns."""
+    os.utime(path, ns=(path.stat().st_atime_ns, path.stat().st_mtime_ns - 3600 * 10**9))
+    return path.stat().st_mtime_ns
+
+
+def test_a_file_whose_bytes_stay_the_same_keeps_its_time_of_change(tmp_path: Path) -> None:
+    before = {path.name: aged(path) for path in write_all(tmp_path, TEXTS)}
+    assert write_all(tmp_path, TEXTS | {"a.c": "other\n"}) == [tmp_path / name for name in TEXTS]
+    after = {name: (tmp_path / name).stat().st_mtime_ns for name in TEXTS}
+    assert {name for name in TEXTS if after[name] != before[name]} == {"a.c"}
+    assert content(tmp_path) == TEXTS | {"a.c": "other\n"}
+
+
+def test_line_ends_count_as_bytes(tmp_path: Path) -> None:
+    write_all(tmp_path, TEXTS)
+    (tmp_path / "a.h").write_bytes(b"header\r\n")
+    write_all(tmp_path, TEXTS)
+    assert (tmp_path / "a.h").read_bytes() == b"header\n"
+
+
+def test_a_file_beside_is_of_the_same_set(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    rule, replace, done = tmp_path / "build" / "a.d", os.replace, []
+
+    def fail_at_the_last(source: Path, target: Path) -> None:
+        done.append(source)
+        if len(done) == len(TEXTS) + 1:
+            raise OSError(28, "No space left on device", str(target))
+        replace(source, target)
+
+    with monkeypatch.context() as patched:
+        patched.setattr(os, "replace", fail_at_the_last)
+        with pytest.raises(RealizeError, match=r"No space left on device \(.*a\.d\)"):
+            write_all(tmp_path / "out", TEXTS, {rule: "rule\n"})
+    assert content(tmp_path) == {}
+    assert write_all(tmp_path / "out", TEXTS, {rule: "rule\n"}) == [tmp_path / "out" / name for name in TEXTS]
+    assert rule.read_text() == "rule\n"
+    before = aged(rule)
+    write_all(tmp_path / "out", TEXTS, {rule: "rule\n"})
+    assert rule.stat().st_mtime_ns == before

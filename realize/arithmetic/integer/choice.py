@@ -8,6 +8,7 @@ from typing import NamedTuple
 from realize.arithmetic.grouping import split_integral
 from realize.arithmetic.integer.interface import Interface
 from realize.arithmetic.integer.layout import SINGLE, STRUCTURES, Layout, layouts
+from realize.arithmetic.integer.program import kept_bytes
 from realize.arithmetic.integer.realization import WIDTHS, Widths
 from realize.errors import Refused
 from realize.transfer import PulseTransferFunction
@@ -73,16 +74,18 @@ def choices(
             refusals[name] = refusal
             continue
         for accumulator_bits in accumulators:
-            made = StructureChoice(name, Widths(bits, accumulator_bits), *_cost(layout, bits))
+            widths = Widths(bits, accumulator_bits)
+            made = StructureChoice(name, widths, *_cost(layout, widths))
             found.setdefault((layout.outputs, layout.command, layout.updates, accumulator_bits), made)
     return sorted(found.values(), key=lambda c: (c.widths.accumulator_bits, c.multiplications, c.state_bytes))
 
 
-def _cost(layout: Layout, bits: int) -> tuple[int, int]:
+def _cost(layout: Layout, widths: Widths) -> tuple[int, int]:
     """Multiplications and bytes of state."""
     addends = [a for each in (*layout.outputs, *layout.updates) for a in each.addends]
     multiplied = sum(1 for a in (*addends, *layout.command) if a.name and a.value)
     kept = {each.target: each.words for each in layout.updates if each.target.startswith("state.")}
     kept |= {target: SINGLE for target, _ in layout.moves if target not in kept}
     remainders = sum(1 for each in layout.outputs if each.shaped)
-    return multiplied, (sum(kept.values()) + remainders) * bits // 8
+    state_bytes = sum(kept_bytes(words * widths.bits) for words in kept.values())
+    return multiplied, state_bytes + remainders * kept_bytes(widths.accumulator_bits)

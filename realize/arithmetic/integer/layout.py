@@ -276,7 +276,12 @@ def _output(k: int, form: Form) -> tuple[Equation, ...]:
 
 
 def _direct_form(k: int, section: Coefficients, source: str, *, shaped: bool) -> Form:
-    """``y = sum b x - sum a y``; the input's history is that of the section before."""
+    """``y = sum b x - sum a y``; the input's history is that of the section before.
+
+    Notes
+    -----
+    What is past comes first, the newest value last: it is known last, and that order needs the fewest registers.
+    """
     output = f"section{k}_output"
     forward = [_forward(f"section{k}_b{i}", section, i, _past(source, i)) for i in range(section.order + 1)]
     back = [_addend(f"section{k}_a{i}", -a, _past(output, i)) for i, a in enumerate(section.a, 1)]
@@ -287,7 +292,7 @@ def _direct_form(k: int, section: Coefficients, source: str, *, shaped: bool) ->
 
     return Form(
         (),
-        _nonzero((*forward, *back)),
+        _nonzero((*forward[1:], *back, forward[0])),
         kept=any(section.a),
         shaped=shaped and any(section.a),
         updates=(),

@@ -32,11 +32,15 @@ def least_margin(a: Sequence[Fraction]) -> tuple[str, Fraction]:
     str, Fraction
         The expression, positive where all poles decay, and its value.
     """
+    return min(margins(a).items(), key=lambda entry: entry[1])
+
+
+def margins(a: Sequence[Fraction]) -> dict[str, Fraction]:
+    """What the coefficients of a section leave to each place where a pole may leave the unit circle, by expression."""
     a1, a2 = (*a, Fraction(0), Fraction(0))[:2]
-    if not a2:
-        return min(("1 + a1", 1 + a1), ("1 - a1", 1 - a1), key=lambda entry: entry[1])
-    places = ("1 + a1 + a2", 1 + a1 + a2), ("1 - a1 + a2", 1 - a1 + a2), ("1 - a2", 1 - a2)
-    return min(places, key=lambda entry: entry[1])
+    if len(a) < 2:
+        return {"1 + a1": 1 + a1, "1 - a1": 1 - a1}
+    return {"1 + a1 + a2": 1 + a1 + a2, "1 - a1 + a2": 1 - a1 + a2, "1 - a2": 1 - a2}
 
 
 def refuse_growing(layout: Layout) -> None:
@@ -51,7 +55,7 @@ def refuse_growing(layout: Layout) -> None:
         if least_margin(part.ratio[1])[1] < _ON_CIRCLE:
             raise Refused(
                 "[target] arithmetic",
-                f"section {k} has a pole that does not decay; integers need a bound to be safe from overflow",
+                f"section {k} has a pole that does not decay: no bound, and no word is sure to hold its state",
                 "poles that decay, beside those of the integral at z = 1",
-                "damp the pair of poles, or use float32",
+                'arithmetic = "float32", or a transfer function whose poles decay: give a pair that rings some damping',
             )

@@ -171,13 +171,18 @@ class Program(NamedTuple):
     @property
     def state_bytes(self) -> int:
         """Of everything kept between samples."""
-        own = sum(stored_bytes(self.words[state].bits) for state in self.states)
-        return own + (len(self.integral.stored) * stored_bytes(self.integral.word.bits) if self.integral else 0)
+        own = sum(kept_bytes(self.words[state].bits) for state in self.states)
+        return own + (len(self.integral.stored) * kept_bytes(self.integral.word.bits) if self.integral else 0)
 
 
 def stored_bytes(bits: int) -> int:
     """Of the narrowest C type that holds a word."""
     return next(size for size in (1, 2, 4, 8) if bits <= 8 * size)
+
+
+def kept_bytes(bits: int) -> int:
+    """Of what is kept between samples: 4, or 8; processors load several of these at once, and narrower ones singly."""
+    return max(4, stored_bytes(bits))
 
 
 def states_of(sums: Iterable[Sum], moves: Sequence[tuple[str, str]]) -> tuple[str, ...]:

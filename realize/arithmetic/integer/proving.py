@@ -8,7 +8,7 @@ from typing import NamedTuple
 
 from realize.arithmetic.integer.interface import Interface
 from realize.arithmetic.integer.layout import Layout
-from realize.arithmetic.integer.poles import decays, least_margin
+from realize.arithmetic.integer.poles import decays, least_margin, margins
 from realize.arithmetic.integer.program import COMMAND, Program
 from realize.arithmetic.integer.proof import Bound, Proof, prove
 from realize.arithmetic.integer.quantize import (
@@ -29,7 +29,7 @@ _MOST_ATTEMPTS = 6
 
 #: Fraction bits beyond those with which a value does not become 0, for 1 %: half a unit of 2**-6 is 1/128.
 _BITS_FOR_A_PERCENT = 6
-
+_A_PERCENT = Fraction(1, 100)
 
 _ZERO = Fraction(0)
 
@@ -110,7 +110,7 @@ def _without_bound() -> Refused:
         "[target] arithmetic",
         "a stored pole lies within 1e-18 of the unit circle: no bound is computed",
         "poles that decay",
-        "use a lower sample rate, or float32",
+        'a lower sample rate, or arithmetic = "float32"',
     )
 
 
@@ -184,6 +184,29 @@ def _lost(layout: Layout, program: Program, k: int) -> str:
         for name, bits in sorted(gone.items(), key=lambda entry: not entry[0].startswith(_denominators(k)))
         if name.startswith(f"section{k}_")
     )
+
+
+def worst_rounded(layout: Layout, program: Program) -> str:
+    """What the coefficients ``a`` of a section leave to the unit circle, where rounding changed that by over 1 %.
+
+    Returns
+    -------
+    str
+        That of the section changed most, with the fraction bits it has and needs; empty for none.
+    """
+    values = _values(program)
+    found: list[tuple[Fraction, str]] = []
+    for k, part in enumerate(layout.parts, 1):
+        bits = [t.fraction_bits for name, t in program.coefficients.items() if name.startswith(f"section{k}_a")]
+        wanted, stored = (margins(ratio[1]) for ratio in (part.ratio, part.stored(values)))
+        for place, value in wanted.items() if bits else ():
+            changed = abs(stored[place] / value - 1)
+            needed = bits_to_keep(value) + _BITS_FOR_A_PERCENT
+            text = (
+                f"{place} = {float(value):.3g} of section {k} is stored as {float(stored[place]):.3g} with {min(bits)} "
+            )
+            found += [(changed, f"{text}fraction bits, and needs {needed} for 1 %")] if changed > _A_PERCENT else []
+    return max(found, default=(_ZERO, ""))[1]
 
 
 def _needed(value: Fraction) -> str:

@@ -18,6 +18,7 @@ from realize.arithmetic.integer.layout import Addend, Equation, Layout
 from realize.arithmetic.integer.poles import refuse_growing
 from realize.arithmetic.integer.program import COMMAND, INPUT, Integral, Program, Sum, Term, Word
 from realize.arithmetic.peak_gain import peak_gain
+from realize.arithmetic.sample import is_recursive
 from realize.arithmetic.state_space import StateSpace, Vector, paths, probed
 from realize.errors import Refused
 
@@ -26,6 +27,10 @@ _WIDTH = Fraction(1, 64)
 
 #: Significant bits of the coefficients that choose binary points: more than any word has.
 _SIGNIFICANT = 48
+
+#: Significant bits that the largest coefficient of a signal keeps where it gives up some to share a binary point: 16
+#: times finer than what float32 stores. What is given up is seen by every check, since they judge stored numbers.
+_KEPT = 28
 
 #: Bits of the widest integer of the C standard's minimum: no state or sum has more.
 WIDEST = 64
@@ -275,7 +280,7 @@ def _point(name: str, room: Room, bits: int, ways: str) -> int:
 def way_out(structure: str, bits: int) -> str:
     """What to try where words of so many bits do not suffice."""
     structures = ['structure = "delta"'] if structure != "delta" else []
-    wider = ["int32"] if bits < WIDEST // 2 else []
+    wider = ['arithmetic = "int32"'] if bits < WIDEST // 2 else []
     return ", ".join([*structures, *wider, "or a lower sample rate"])
 
 
@@ -351,7 +356,7 @@ def _no_room(target: str, most: int, choice: Choice) -> Refused:
         f"the sum for {target.removeprefix('state.')} reaches {most.bit_length() + 1} bits, and its accumulator has "
         f"{choice.accumulator_bits}",
         "gains and ranges that leave room",
-        "use int32, another structure, or a coarser per_count of the output",
+        'arithmetic = "int32", another structure, or a coarser per_count of the output',
     )
 
 
@@ -388,6 +393,7 @@ def _aligned(
             shared[key] = min(
                 shared.get(key, limit - point), _most_bits(a.unit, a.multiple, bits), caps.get(a.name, limit - point)
             )
+    _share_point(shared, addends, bits)
     at = max([least, *(point + own for (_, point), own in shared.items())])
     terms = []
     for a in addends:
@@ -399,6 +405,22 @@ def _aligned(
             stored = round(a.unit * Fraction(2) ** own) * a.multiple
             terms.append(Term(a.name, stored, at - point - own, a.variable, own))
     return tuple(terms), at
+
+
+def _share_point(shared: dict[tuple[str, int], int], addends: Sequence[Addend], bits: int) -> None:
+    """Take products of long words to the binary point of the coarsest, where the coefficients have bits to spare.
+
+    A product at another point is shifted in every sample, in twice its words. What feeds a pole back keeps its bits.
+    """
+    if bits <= _KEPT:
+        return
+    fed_back = {_signal(a.variable) for a in addends if a.name and is_recursive(a.name)}
+    coarsest = min((point + own for (_, point), own in shared.items()), default=0)
+    for signal, point in shared:
+        largest = max(abs(a.unit * a.multiple) for a in addends if a.name and _signal(a.variable) == signal)
+        enough = largest * Fraction(2) ** (coarsest - point) >= 1 << _KEPT - 1
+        if signal not in fed_back and enough:
+            shared[signal, point] = coarsest - point
 
 
 def _signal(variable: str) -> str:
@@ -498,7 +520,7 @@ def _refuse_vanished(integration: Integration, stored: Sequence[int], tracking: 
                 f"{what}, {float(value):.3g}, becomes 0: its word of {word.bits} bits has {word.fraction_bits} right "
                 f"of the binary point, and it needs {bits_to_keep(value)}",
                 "an integral that still integrates",
-                "a coarser per_count of the output, a lower sample rate, or float32",
+                "a lower sample rate, a coarser per_count of the input, a narrower range of the output, or float32",
             )
 
 
@@ -532,9 +554,12 @@ def _command(
 def _wide_input(interface: Interface, bits: int) -> Refused:
     port = interface.input
     needed = max(port.high, -port.low - 1).bit_length() + 1
+    centred = port.high - port.low < 1 << bits
+    moved = ["physical zero (offset) in the middle of the range"] if centred else []
+    wider = ['arithmetic = "int32"'] if bits < WIDEST // 2 else []
     return Refused(
         "[signals.input] range",
         f"counts from {port.low} to {port.high} from physical zero, which takes {needed} bits",
         f"the words of {bits} bits, from {-greatest(bits) - 1} to {greatest(bits)}",
-        "use int32, move offset to the middle of the range, or a coarser per_count",
+        ", ".join([*wider, *moved, "or a coarser per_count"]),
     )

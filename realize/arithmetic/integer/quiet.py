@@ -30,6 +30,10 @@ if TYPE_CHECKING:
 #: Samples of the model that the search for the smallest answered input may take for each sign: a tenth of a second.
 SEARCHED_SAMPLES = 1 << 14
 
+#: The same, and states of a section of which every cycle is searched, where many programs are looked at or one in
+#: passing: a dozen of them then take a second.
+FEW_SAMPLES, FEW_STATES = 1 << 12, 1 << 16
+
 
 class Answered(NamedTuple):
     """Smallest size of a constant input of one sign that the output ever answers, from rest.
@@ -104,6 +108,16 @@ class Quiet(NamedTuple):
     integration: Integration | None
     sections: tuple[SectionCycles, ...]
     largest_output: int
+
+    @property
+    def dies_out(self) -> bool:
+        """Whether no section is left with a cycle: proven by the search."""
+        return all(each.cycles.searched and not each.cycles.amplitude for each in self.sections)
+
+    @property
+    def rests_at_zero(self) -> bool:
+        """Whether without input, and without an integral, the output comes to rest at zero: proven."""
+        return self.largest_output == 0 or self.dies_out
 
 
 def quiet(stored: IntegerRealization, samples: int = SEARCHED_SAMPLES, most_states: int = MOST_STATES) -> Quiet:

@@ -272,7 +272,7 @@ def _refuse_one_sided(interface: Interface, integration: Integration) -> None:
         side = "negative" if port.low == 0 else "positive"
         raise Refused(
             "[signals.input] range",
-            f"no {side} value, so that the integral could only ever move one way",
+            f"no {side} value, so that the integral could only ever move one way and would end at a limit",
             "a range with both signs, as the error of a loop has",
             "write range = [-8.0, 8.0], with your own ends",
         )

@@ -1,8 +1,8 @@
 """What a state that was set at rest can be off by: the bumpless start, on which the proofs hold too.
 
 A state at rest is rounded. It is the state that a constant past would have left, had every sum of a section been off
-by a constant error then: ``(I - A) e`` for an offset ``e`` of the section's state. So a bound of what happens after is a
-bound of what constant errors of the past do, beside what a proof counts anyway.
+by a constant error then: ``(I - A) e`` for an offset ``e`` of the section's state. So a bound of what happens after is
+a bound of what constant errors of the past do, beside what a proof counts anyway.
 """
 
 from __future__ import annotations
@@ -74,8 +74,8 @@ def _constant_errors(program: Program, section: Settled, gain: Gain) -> dict[str
 def _off(program: Program, gain: Gain, constant: Mapping[str, Fraction]) -> Fraction:
     """Largest distance of a state from its exact value at rest.
 
-    Half a unit; half a unit of the mantissa, which is the nearest; and, from a section whose history is at rest too, what
-    it hands on may differ from its history by the error that would keep it there and another rounding.
+    Half a unit; half a unit of the mantissa, which is the nearest; and, from a section whose history is at rest too,
+    what it hands on may differ from its history by the error that would keep it there and another rounding.
     """
     if gain.variable == INPUT:
         return _HALF + _HALF * program.interface.input.reach / Fraction(2) ** gain.shift

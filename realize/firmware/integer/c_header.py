@@ -2,8 +2,11 @@
 
 from __future__ import annotations
 
+from fractions import Fraction
+
 from realize.arithmetic.integer.interface import Port
 from realize.arithmetic.integer.program import COMMAND, INPUT
+from realize.arithmetic.integer.quiet import Answered, Integration, Quiet
 from realize.arithmetic.sample import BACK_CALCULATION, HOLD_INTEGRAL
 from realize.firmware.c_preamble import (
     CAUTION,
@@ -36,10 +39,10 @@ FORMS = {
 }
 
 
-def header_text(emission: IntegerEmission, c: Spelling) -> str:
+def header_text(emission: IntegerEmission, c: Spelling, silence: Quiet) -> str:
     """The whole header."""
     lines = [
-        *comment(_preamble(emission, c)),
+        *comment(_preamble(emission, c, silence)),
         f"#ifndef {c.name}_H",
         f"#define {c.name}_H",
         "",
@@ -66,7 +69,7 @@ def header_text(emission: IntegerEmission, c: Spelling) -> str:
 # ---------------------------------------------------------------- the first comment
 
 
-def _preamble(emission: IntegerEmission, c: Spelling) -> list[str]:
+def _preamble(emission: IntegerEmission, c: Spelling, silence: Quiet) -> list[str]:
     name = emission.name
     return [
         *wrapped(
@@ -79,7 +82,8 @@ def _preamble(emission: IntegerEmission, c: Spelling) -> list[str]:
         *paragraph("Calls", calls(name)),
         *paragraph("Feed-through", _feed_through(c)),
         *paragraph("Arithmetic", _arithmetic(c)),
-        *listed("Proven", _proven(emission, c)),
+        *listed("Proven", [*_proven(emission, c), *_quiet(emission, silence)]),
+        *listed("Expected, not proven", _expected(emission)),
         *loop_lines(emission.loop),
         *listed("Accepted deviations", [accepted_text(entry, emission.checks) for entry in emission.accepted]),
         *listed("Not protected", _unprotected(c)),
@@ -152,9 +156,11 @@ def _anti_windup(emission: IntegerEmission) -> str | None:
     if emission.realization.program.integral is None:
         return None
     if emission.anti_windup == HOLD_INTEGRAL:
+        further = len(emission.realization.program.integral.stored) > 1
         return (
             "hold-integral: an integral state is not updated while the unclamped command exceeds what was applied "
             "and its increment pushes further out"
+            + ("; those above the first stay within limits of their own" if further else "")
         )
     if emission.anti_windup == BACK_CALCULATION and emission.tracking_time_s is not None:
         tracking = number_text(emission.tracking_time_s)
@@ -192,15 +198,61 @@ def _proven(emission: IntegerEmission, c: Spelling) -> list[str]:
     where = least.variable.removesuffix(" (sum)").removeprefix("state.")
     table = " These proofs hold for the coefficients of the design, not for other ones." if c.table else ""
     bits = f"{least.spare_bits} bit{'' if least.spare_bits == 1 else 's'}"
-    noise = proof.rms_error
-    rms = [] if noise is None else [f"expected, not proven: rounding noise of {noise:.2g} counts r.m.s."]
     return [
         "from a cleared state, and from one set by preset, no state and no sum overflows, whatever the input; the "
         f"least room is {bits}, in the sum for {where}.{table}",
         f"while no limit acts, rounding moves the output by at most {ceiling_text(proof.output_error)} counts, its own "
         "rounding included",
-        *rms,
     ]
+
+
+def _expected(emission: IntegerEmission) -> list[str]:
+    noise = emission.realization.proof.rms_error
+    return [] if noise is None else [f"rounding noise of {noise:.2g} counts r.m.s."]
+
+
+def _quiet(emission: IntegerEmission, silence: Quiet) -> list[str]:
+    """What is not answered, and what does not come to rest."""
+    at_rest = _at_rest(silence, emission.realization.proof.output_error)
+    return [_deadband(silence), *_integration(silence.integration), at_rest]
+
+
+def _deadband(silence: Quiet) -> str:
+    positive, negative = _side("positive", silence.positive), _side("negative", silence.negative)
+    both = silence.positive == silence.negative
+    return f"from rest, {_side('', silence.positive) if both else f'{positive}; {negative}'}"
+
+
+def _side(sign: str, answer: Answered) -> str:
+    constant = f"constant {sign} input".replace("  ", " ")
+    if answer.counts is None:
+        return f"no {constant} within the range is answered" if answer.exact else f"no {constant} is sure of an answer"
+    if answer.exact:
+        return f"the smallest {constant} that the output ever answers is {counted(answer.counts, 'count')}"
+    return f"every {constant} from {counted(answer.counts, 'count')} on is answered, a smaller one perhaps"
+
+
+def _integration(found: Integration | None) -> list[str]:
+    if found is None:
+        return []
+    return [
+        "no increment of the integral is lost: one count of input, held, moves it by one count of output within "
+        f"{counted(found.samples_per_count, 'sample')}, and by the whole output range within {found.samples_to_limit}"
+    ]
+
+
+def _at_rest(silence: Quiet, error: Fraction) -> str:
+    if silence.integration:
+        if silence.dies_out:
+            return "without input, the output comes to rest: there is no limit cycle"
+        return (
+            f"without input, the output settles within {ceiling_text(error)} counts of what the integral holds, its "
+            "own rounding and limit cycles included"
+        )
+    if silence.rests_at_zero:
+        return "without input, the output comes to rest at zero: there is no limit cycle"
+    most = counted(silence.largest_output, "count")
+    return f"without input, the output settles within {most} of zero, limit cycles included"
 
 
 def _unprotected(c: Spelling) -> list[str]:

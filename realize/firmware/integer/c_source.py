@@ -115,17 +115,78 @@ def _constants(c: Spelling) -> list[str]:
         return [f"const {c.name}_coefficients {c.name}_nominal = {{", *(values or ["    0"]), "};", ""]
     lines: list[str] = []
     for field, one in c.fields.items():
-        value, says = f"static const {ctype(one.bits)} {c.name}_{field} = {alone(one.stored)};", stored_text(one)
-        line = f"{value} /* {says} */"
-        lines += [line] if len(line) <= WIDTH else [f"/* {says} */", value]
-    return [*lines, ""] if lines else []
+        if field not in c.looked_up:
+            lines += _constant(c, field, one)
+    return [*_looked_up(c), *lines, ""] if c.fields else []
+
+
+def _constant(c: Spelling, field: str, one: Stored) -> list[str]:
+    value, says = f"static const {ctype(one.bits)} {c.name}_{field} = {alone(one.stored)};", stored_text(one)
+    line = f"{value} /* {says} */"
+    return [line] if len(line) <= WIDTH else [f"/* {says} */", value]
+
+
+#: Why there are two ways to add up products.
+_COLUMNS = (
+    "Processors that multiply to 32 bits only, where each product of 64 bits would be a call: there products are made "
+    "of halves, added up in three columns, and the coefficients are known to the compiler."
+)
+
+
+def _columns_macro(c: Spelling) -> str:
+    return f"{c.name}_SHORT_PRODUCTS"
+
+
+#: Why long coefficients are loaded through a pointer.
+_LOOKED_UP = (
+    "Coefficients in a table. Processors load a long constant faster than they put it together from halves, but "
+    "compilers that know a constant do put it together: reading the pointer to the table, which is volatile, hides it."
+)
+
+
+def _looked_up(c: Spelling) -> list[str]:
+    """The table of coefficients, and a pointer to it that compilers do not see through."""
+    stored = {field: one for field, one in c.fields.items() if field in c.looked_up}
+    if not stored:
+        return []
+    return [
+        *comment(wrapped(_COLUMNS)),
+        "#if defined(__ARM_ARCH_6M__) || defined(__ARM_ARCH_8M_BASE__)",
+        f"#define {_columns_macro(c)}",
+        "#endif",
+        "",
+        *comment(wrapped(_LOOKED_UP)),
+        "typedef struct {",
+        *(f"    {ctype(one.bits)} {field};" for field, one in stored.items()),
+        f"}} {c.name}_table;",
+        "",
+        f"static const {c.name}_table {c.name}_stored = {{",
+        *(_entry_of_table(c, field, one) for field, one in stored.items()),
+        "};",
+        "",
+        f"#ifdef {_columns_macro(c)}",
+        f"static const {c.name}_table *const {c.name}_lookup = &{c.name}_stored;",
+        "#else",
+        f"static const {c.name}_table *const volatile {c.name}_lookup = &{c.name}_stored;",
+        "#endif",
+        "",
+    ]
+
+
+def _entry_of_table(c: Spelling, field: str, one: Stored) -> str:
+    """With ``recursion_sign`` subtract the text stores ``a``, which the compiler negates."""
+    if not (c.negates and "_minus_a" in field):
+        return f"    {alone(one.stored)}, /* {field}: {stored_text(one)} */"
+    subtracted = one._replace(stored=-one.stored)
+    return f"    -{constant(-one.stored)}, /* {field.replace('_minus_a', '_a')}: {stored_text(subtracted)} */"
 
 
 def _helpers(c: Spelling, body: str) -> list[str]:
     """The functions the steps call, as far as there are such steps."""
     interface, integral = c.program.interface, c.program.integral
-    rounding = [(_rounding_name(c, *key), _rounding(c, *key)) for key in sorted(_roundings(c))]
+    rounding = [(_rounding_name(c, key), _rounding(c, key)) for key in sorted(_roundings(c))]
     found = [(_ALWAYS, comment(wrapped(_ROUNDING))), *rounding] if rounding else []
+    found.append((f"{c.name}_columns", _columns(c)))
     found.append((f"{c.name}_{INPUT_COUNT}", _entry(c, "INPUT", INPUT_COUNT, interface.input)))
     found.append((f"{c.name}_{APPLIED_COUNT}", _entry(c, "OUTPUT", APPLIED_COUNT, interface.output)))
     found.append((f"{c.name}_limited", _limited(c)))
@@ -136,15 +197,33 @@ def _helpers(c: Spelling, body: str) -> list[str]:
     return [line for name, lines in found if name == _ALWAYS or reads(body, name) for line in lines]
 
 
-def _roundings(c: Spelling) -> set[tuple[int, int]]:
-    """Bits and shift of everything that is rounded."""
-    keys = {(accumulator(each), each.shift) for each in c.program.sums if each.shift}
-    keys |= {(PRODUCT_BITS, gain.shift) for section in c.settling.sections for gain in section.gains if gain.shift > 0}
-    return keys | ({(accumulator(c.program.command), c.settling.shift)} if c.settling.shift else set())
+class _Division(NamedTuple):
+    """Of a sum by a power of two: downward, to nearest where a half is added first."""
+
+    bits: int
+    shift: int
+    half: bool
 
 
-def _rounding_name(c: Spelling, bits: int, shift: int) -> str:
-    return f"{c.name}_rounded{bits}_{shift}"
+def _roundings(c: Spelling) -> set[_Division]:
+    """Everything that is rounded."""
+    keys = {_division(c, each) for each in (*c.program.sums, *_settled_sums(c)) if each.shift}
+    gains = (gain for section in c.settling.sections for gain in section.gains)
+    keys |= {_Division(PRODUCT_BITS, gain.shift, True) for gain in gains if gain.shift > 0}
+    settled = _Division(accumulator(c.program.command), c.settling.shift, True)
+    return keys | ({settled} if c.settling.shift else set())
+
+
+def _settled_sums(c: Spelling) -> list[Sum]:
+    return [each for section in c.settling.sections for each in section.sums]
+
+
+def _division(c: Spelling, each: Sum) -> _Division:
+    return _Division(accumulator(each), each.shift, not c.keeps_half(each))
+
+
+def _rounding_name(c: Spelling, division: _Division) -> str:
+    return f"{c.name}_{'rounded' if division.half else 'floor'}{division.bits}_{division.shift}"
 
 
 #: In place of the name of a function: lines that stand in any case.
@@ -152,22 +231,73 @@ _ALWAYS = ""
 
 #: Why the functions that round are written as they are.
 _ROUNDING = (
-    "Sums over powers of two, to nearest, ties upward. The C standard defines every step for every sum: it leaves open "
-    "the right shift of a negative number, so the unsigned image is shifted and its sign put back. Compilers make one "
-    "addition and one arithmetic shift of it."
+    "Sums over powers of two: rounded to nearest, ties upward, or to the floor where a half is in the sum already. "
+    "The C standard defines every step for every sum: it leaves open the right shift of a negative number, so the "
+    "unsigned image is shifted and its sign put back. Compilers make one addition and one arithmetic shift of it."
 )
 
 
-def _rounding(c: Spelling, bits: int, shift: int) -> list[str]:
+def _rounding(c: Spelling, division: _Division) -> list[str]:
+    bits, shift, half = division
     suffix = "u" if bits == NARROW else "ull"
     kind, sign = ctype(bits), 1 << bits - 1 - shift
+    image = f"((u{kind})sum + {1 << shift - 1}{suffix})" if half else f"(u{kind})sum"
     return [
-        f"static inline {kind} {_rounding_name(c, bits, shift)}({kind} sum)",
+        f"static inline {kind} {_rounding_name(c, division)}({kind} sum)",
         "{",
-        f"    const u{kind} image = ((u{kind})sum + {1 << shift - 1}{suffix}) >> {shift};",
+        f"    const u{kind} image = {image} >> {shift};",
         f"    return ({kind})(image ^ {sign}{suffix}) - {constant(sign)};",
         "}",
         "",
+    ]
+
+
+def _columns(c: Spelling) -> list[str]:
+    """Sums of products modulo ``2**64``: a value is ``high * 2**16 + low``, with its sign in ``high``."""
+    name = c.name
+    return [
+        f"#ifdef {_columns_macro(c)}",
+        *comment(wrapped("A sum is low + middle * 2^16 + high * 2^32, modulo 2^64.")),
+        "typedef struct {",
+        "    uint64_t low;",
+        "    uint64_t middle;",
+        "    uint32_t high;",
+        f"}} {name}_columns;",
+        "",
+        *comment(wrapped("Adds a product as four products of halves, none of which exceeds 32 bits.")),
+        f"static inline void {name}_add({name}_columns *sum, int32_t coefficient, int32_t value)",
+        "{",
+        "    const uint32_t image = (uint32_t)value;",
+        "    const uint32_t low = image & 65535u;",
+        "    const int32_t high = (int32_t)((image ^ 2147483648u) >> 16) - 32768;",
+        "    const uint32_t size = coefficient < 0 ? 0u - (uint32_t)coefficient : (uint32_t)coefficient;",
+        "    const uint32_t size_low = size & 65535u;",
+        "    const uint32_t size_high = size >> 16;",
+        "    if (coefficient < 0) {",
+        *_four_products("-"),
+        "    } else {",
+        *_four_products("+"),
+        "    }",
+        "}",
+        "",
+        *comment(wrapped("The sum, which is proven to have room; compilers make the three columns one number.")),
+        f"static inline int64_t {name}_total(const {name}_columns *sum)",
+        "{",
+        "    const uint64_t upper = sum->middle + (uint64_t)sum->high * 65536u;",
+        "    const uint64_t image = sum->low + upper * 65536u;",
+        "    return image <= 9223372036854775807ull ? (int64_t)image : -(int64_t)~image - 1;",
+        "}",
+        "#endif",
+        "",
+    ]
+
+
+def _four_products(sign: str) -> list[str]:
+    return [
+        f"        sum->low {sign}= low * size_low;",
+        f"        sum->middle {sign}= low * size_high;",
+        f"        sum->middle {sign}= (uint64_t)(int64_t)(high * (int32_t)size_low);",
+        f"        sum->high {sign}= (uint32_t)high * size_high;",
     ]
 
 
@@ -200,17 +330,46 @@ def _less_offset(port: Port, kind: str) -> str:
 
 
 def _limited(c: Spelling) -> list[str]:
-    port = c.program.interface.output
-    kind, given = ctype(c.command_bits), ctype(c.local_bits(COMMAND))
+    """The command within its range; what is proven not to leave it is not compared."""
+    port, largest, power = c.program.interface.output, c.command_largest, 1 << c.late_shift
+    kind, given = ctype(c.command_bits), ctype(c.limited_bits)
+    # What is proven of the command holds for the coefficients of the record, not for any table.
+    low, high = c.table or -largest - 1 < port.low, c.table or largest > port.high
+    if not low and not high:
+        says = f"The command is proven to lie from {-largest - 1} to {largest}, within its range."
+        lines = [f"    return {cast('unclamped', given, kind)};"]
+    elif power > 1:
+        says = f"The command, {power} times what is given, held to its range."
+        lines = _compared_late(port, power)
+    else:
+        says = "The command held to its range."
+        lines = _compared(c, port, low, high)
     return [
-        "/* The command held to its range. */",
+        *comment(wrapped(says)),
         f"static inline {kind} {c.name}_limited({given} unclamped)",
         "{",
-        *_limit(f"unclamped < {alone(port.low)}", port.low),
-        *_limit(f"unclamped > {alone(port.high)}", port.high),
-        f"    return {cast('unclamped', given, kind)};",
+        *lines,
         "}",
         "",
+    ]
+
+
+def _compared(c: Spelling, port: Port, low: bool, high: bool) -> list[str]:
+    return [
+        *(_limit(f"unclamped < {alone(port.low)}", port.low) if low else []),
+        *(_limit(f"unclamped > {alone(port.high)}", port.high) if high else []),
+        f"    return {cast('unclamped', ctype(c.local_bits(COMMAND)), ctype(c.command_bits))};",
+    ]
+
+
+def _compared_late(port: Port, power: int) -> list[str]:
+    """Compared before the multiplication by a power of two, which then has room; zero is within every range."""
+    low, high = -(-port.low // power), port.high // power
+    return [
+        f"    if (unclamped >= {alone(low)} && unclamped <= {alone(high)}) {{",
+        f"        return unclamped{times(power)};",
+        "    }",
+        f"    return unclamped < 0 ? {alone(port.low)} : {alone(port.high)};",
     ]
 
 
@@ -250,12 +409,23 @@ def _functions(c: Spelling) -> list[str]:
     begin, answer = [*_start(c), *_outputs(c)], Block(None, [f"    return {_answer(c)};"])
     following = [*_updates(c), *_moves(c), *_given_back(c), *_integrals(c)]
     return [
-        *definition(clear, [f"    state->{name} = 0;" for name in state_bits(c)]),
+        *definition(clear, [_clearing(c, name) for name in state_bits(c)]),
         *definition(update, _needed([*begin, *following, answer])),
         *definition(output, _needed([*begin, *_keeping(c), answer])),
         *definition(advance, _needed([*_resumed(c), *following])),
         *definition(preset, _preset(c)),
     ]
+
+
+def _clearing(c: Spelling, field: str) -> str:
+    value = _cleared(c, field)
+    return f"    state->{field} = {value};{' /* the half that rounds */' if value != '0' else ''}"
+
+
+def _cleared(c: Spelling, field: str) -> str:
+    """A remainder at rest is nothing but the half, where it keeps one."""
+    halves = {each.remainder: 1 << each.shift - 1 for each in c.program.sums if each.remainder and c.keeps_half(each)}
+    return alone(halves.get(f"state.{field}", 0))
 
 
 def _needed(blocks: Sequence[Block]) -> list[str]:
@@ -285,12 +455,18 @@ def _set(start: str, pieces: Sequence[str]) -> list[str]:
 
 
 def _start(c: Spelling) -> list[Block]:
-    return [_local(INPUT_COUNT, NARROW, f"{c.name}_{INPUT_COUNT}(input)")]
+    lookup = f"    const {c.name}_table *const coefficients = {c.name}_lookup;"
+    return [
+        *([Block("coefficients", [lookup])] if c.looked_up else []),
+        _local(INPUT_COUNT, NARROW, f"{c.name}_{INPUT_COUNT}(input)"),
+    ]
 
 
 def _outputs(c: Spelling) -> list[Block]:
-    blocks = [block for each in (*c.program.outputs, c.program.command) for block in _sum(c, each)]
-    return [*blocks, _local("command", c.command_bits, f"{c.name}_limited({COMMAND})")]
+    last = () if c.late_shift else (c.program.command,)
+    blocks = [block for each in (*c.program.outputs, *last) for block in _sum(c, each)]
+    limited = c.variable(c.program.command.terms[0].variable) if c.late_shift else COMMAND
+    return [*blocks, _local("command", c.command_bits, f"{c.name}_limited({limited})")]
 
 
 def _answer(c: Spelling) -> str:
@@ -362,8 +538,11 @@ def _sum(c: Spelling, each: Sum) -> list[Block]:
         name = pieces[0]
     else:
         lines = _set(f"const {ctype(bits)} {name} = ", pieces)
-        blocks.append(Block(name, [*_proven(c, f"{each.target} (sum)"), *lines]))
-    rounded = _rounded(c, name, bits, each.shift)
+        if c.by_columns(each.terms, bits):
+            lines = [f"#ifdef {_columns_macro(c)}", *_by_columns(c, each, name), "#else", *lines, "#endif"]
+        half = [f"    /* {c.variable(str(each.remainder))} has the half that rounds */"] if c.keeps_half(each) else []
+        blocks.append(Block(name, [*half, *_proven(c, f"{each.target} (sum)"), *lines]))
+    rounded = f"{_rounding_name(c, _division(c, each))}({name})" if each.shift else name
     if each.remainder:
         rounded_name = f"{each.target}_rounded"
         blocks.append(_local(rounded_name, bits, rounded))
@@ -380,13 +559,24 @@ def _sum(c: Spelling, each: Sum) -> list[Block]:
     return blocks
 
 
+def _by_columns(c: Spelling, each: Sum, name: str) -> list[str]:
+    """The same sum where long products are made of halves."""
+    columns = f"{name.removesuffix('_sum')}_columns"
+    first = f"(uint64_t){c.cast(each.remainder, WIDE)}" if each.remainder else "0u"
+    lines = statement(f"{c.name}_columns {columns} = ", [f"{{{first},", "0u,", "0u}"])
+    for term in each.terms:
+        if c.in_columns(term):
+            coefficient, variable = c.column(term)
+            lines += statement(f"{c.name}_add(&{columns}, ", [f"{coefficient},", f"{variable})"])
+        else:
+            minus, text = c.piece(term, WIDE)
+            lines += _set(f"{columns}.low {'-' if minus else '+'}= ", [f"(uint64_t)({text})"])
+    return [*lines, f"    const int64_t {name} = {c.name}_total(&{columns});"]
+
+
 def _bare(text: str, bits: int, wanted: int) -> str:
     """Without the parentheses that only a cast needs."""
     return text[1:-1] if bits == wanted and text.startswith("(") and text.endswith(")") else text
-
-
-def _rounded(c: Spelling, total: str, bits: int, shift: int) -> str:
-    return f"{_rounding_name(c, bits, shift)}({total})" if shift else total
 
 
 def _proven(c: Spelling, variable: str) -> list[str]:
@@ -453,7 +643,7 @@ def _settled(c: Spelling, section: Settled) -> list[Block]:
     blocks = [_gained(c, gain) for gain in section.gains]
     for state, local in section.stored:
         bits = PRODUCT_BITS if local else c.field_bits(state)
-        blocks.append(_assigned(c, state, local or "0", bits))
+        blocks.append(_assigned(c, state, local or _cleared(c, state.removeprefix("state.")), bits))
     blocks += [block for each in section.sums for block in _sum(c, each)]
     return [*blocks, *(_assigned(c, state, source, c.local_bits(source)) for state, source in section.histories)]
 
@@ -461,7 +651,7 @@ def _settled(c: Spelling, section: Settled) -> list[Block]:
 def _gained(c: Spelling, gain: Gain) -> Block:
     product = f"({ctype(PRODUCT_BITS)}){c.coefficient(gain.name)} * {c.variable(gain.variable)}"
     if gain.shift > 0:
-        product = _rounded(c, product, PRODUCT_BITS, gain.shift)
+        product = f"{_rounding_name(c, _Division(PRODUCT_BITS, gain.shift, True))}({product})"
     return _local(gain.target, PRODUCT_BITS, product + times(1 << max(0, -gain.shift)))
 
 
@@ -477,7 +667,9 @@ def _settled_integral(c: Spelling) -> list[Block]:
         blocks.append(Block("rest", _set(f"const {ctype(bits)} rest = ", pieces)))
     missing = f"{wanted[1:-1]} - rest" if pieces else wanted[1:-1]
     blocks.append(_local("missing", bits, missing))
-    blocks.append(_assigned(c, "state.integral1", _rounded(c, "missing", bits, settling.shift), bits))
+    division = _Division(bits, settling.shift, True)
+    found = f"{_rounding_name(c, division)}(missing)" if settling.shift else "missing"
+    blocks.append(_assigned(c, "state.integral1", found, bits))
     for i, gain in enumerate(integral.stored[:-1], 1):
         back = f"-({ctype(integral.word.bits)}){c.coefficient(f'integral{i}_gain')} * {INPUT_COUNT}" if gain else "0"
         limited = f"{c.name}_held{i + 1}({back})" if integral.limits[i] else back

@@ -9,6 +9,7 @@ from typing import Any
 
 from realize.arithmetic.integer.program import Program, Term
 from realize.arithmetic.integer.proof import Bound
+from realize.arithmetic.integer.quiet import Quiet, SectionCycles
 from realize.arithmetic.integer.realization import IntegerRealization
 from realize.arithmetic.sample import is_recursive
 from realize.firmware.integer.emission import IntegerEmission
@@ -20,7 +21,7 @@ _DIRECT_FORMS = ("direct", "cascade", "error-feedback", "parallel")
 Entry = dict[str, Any]
 
 
-def record_text(emission: IntegerEmission, files: Mapping[str, str]) -> str:
+def record_text(emission: IntegerEmission, files: Mapping[str, str], silence: Quiet) -> str:
     """The record as JSON text.
 
     Parameters
@@ -29,6 +30,8 @@ def record_text(emission: IntegerEmission, files: Mapping[str, str]) -> str:
         What was emitted.
     files : mapping
         Name and text of the files it describes.
+    silence : Quiet
+        Deadband and limit cycles.
 
     Notes
     -----
@@ -49,6 +52,7 @@ def record_text(emission: IntegerEmission, files: Mapping[str, str]) -> str:
             "proven_most": float(ceiling_text(realization.proof.output_error)),
             "expected_rms": _figure(realization.proof.rms_error),
         },
+        "quiet": _quiet(silence, realization.proof.output_error),
     }
     return document_text(assembled(emission, stored, files))
 
@@ -144,6 +148,36 @@ def _signals(emission: IntegerEmission) -> Entry:
             for name, bound in bounds.items()
             if name not in points
         ],
+    }
+
+
+def _quiet(silence: Quiet, error: Fraction) -> Entry:
+    """Deadband in counts of the input, cycles in units of ``2**-fraction_bits`` counts; bounds are proven."""
+    sides = ("positive", silence.positive), ("negative", silence.negative)
+    return {
+        "smallest_answered_counts": {side: {"counts": answer.counts, "exact": answer.exact} for side, answer in sides},
+        "integration": None if silence.integration is None else silence.integration._asdict(),
+        "limit_cycles": [_cycles(each) for each in silence.sections],
+        "settles_within_counts": _settles_within(silence, error),
+    }
+
+
+def _settles_within(silence: Quiet, error: Fraction) -> float:
+    """Of zero, or of what the integral holds, without input."""
+    if silence.integration and not silence.dies_out:
+        return float(ceiling_text(error))
+    return 0 if silence.rests_at_zero else silence.largest_output
+
+
+def _cycles(each: SectionCycles) -> Entry:
+    bound = each.cycles.bound
+    return {
+        "section": each.section,
+        "fraction_bits": each.fraction_bits,
+        "proven_most_units": None if bound is None else float(ceiling_text(bound)),
+        "searched": each.cycles.searched,
+        "amplitude_units": each.cycles.amplitude,
+        "period_samples": each.cycles.period,
     }
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from realize.arithmetic.integer.quiet import FEW_SAMPLES, FEW_STATES, quiet
 from realize.arithmetic.integer.settling import settle
 from realize.firmware.integer.c_header import header_text
 from realize.firmware.integer.c_source import source_text
@@ -32,9 +33,10 @@ def render_integer_firmware(emission: IntegerEmission) -> dict[str, str]:
     """
     name = emission.name
     spelling = Spelling(emission, settle(emission.realization.program))
+    silence = quiet(emission.realization, FEW_SAMPLES, FEW_STATES)
     files = {
-        f"{name}.h": header_text(emission, spelling),
+        f"{name}.h": header_text(emission, spelling, silence),
         f"{name}.c": source_text(spelling),
         f"{name}_vectors.csv": vectors_text(emission),
     }
-    return files | {f"{name}.record.json": record_text(emission, files)}
+    return files | {f"{name}.record.json": record_text(emission, files, silence)}

@@ -1,8 +1,7 @@
 """Spelling the integers of a program in C: types, constants, products and sums.
 
 No operation is left open by the standards: factors are widened before they are multiplied, a power of two is
-multiplied instead of shifted, a right shift works on an unsigned image. A state is kept in the narrowest type that
-holds its word; a local is 32 bits wide, or 64.
+multiplied instead of shifted, a right shift works on an unsigned image. States and locals are 32 bits wide, or 64.
 """
 
 from __future__ import annotations
@@ -13,7 +12,7 @@ from itertools import groupby
 from typing import NamedTuple
 
 from realize.arithmetic.integer.interface import TYPES, Port
-from realize.arithmetic.integer.program import COMMAND, INPUT, Program, Sum, Term, stored_bytes
+from realize.arithmetic.integer.program import COMMAND, INPUT, Program, Sum, Term, kept_bytes, stored_bytes
 from realize.arithmetic.integer.proof import Bound
 from realize.arithmetic.integer.settling import PRODUCT_BITS, Settling
 from realize.arithmetic.sample import is_recursive
@@ -23,6 +22,9 @@ from realize.firmware.integer.emission import IntegerEmission
 
 #: Bits of a local, the narrow ones first.
 NARROW, WIDE = 32, 64
+
+#: Bits of a constant that processors hold in an instruction; they put longer ones together, or load them.
+SHORT = 16
 
 #: Local of the input, less its offset and within its limits; the parameter has the shorter name.
 INPUT_COUNT = "input_count"
@@ -58,6 +60,11 @@ class Spelling:
     ----------
     fields : dict
         Name and number of every coefficient the C text stores, in the order of the text.
+    looked_up : frozenset of str
+        Fields that functions load from a constant table of this file.
+    negates : bool
+        Whether that table negates what the recursion is to subtract: processors have no instruction that multiplies
+        long words and subtracts.
     """
 
     def __init__(self, emission: IntegerEmission, settling: Settling) -> None:
@@ -67,13 +74,15 @@ class Spelling:
         self.name = name
         self.program: Program = emission.realization.program
         self.table = emission.coefficients == "table"
-        self.adds = emission.recursion_sign == "add"
+        self.negates = self.program.bits > SHORT and not self.table and emission.recursion_sign != "add"
+        self.adds = self.negates or emission.recursion_sign == "add"
         self.bounds: Mapping[str, Bound] = {bound.variable: bound for bound in emission.realization.proof.bounds}
         self.settling = settling
         fields: dict[str, Stored] = {}
         for term in self._multiplied():
             field, stored, _ = self._found(fields, term)
             fields[field] = Stored(stored, term.fraction_bits, max(self.program.bits, _bits_of(stored)))
+        self.looked_up = frozenset(fields) if self.program.bits > SHORT and not self.table else frozenset()
         gains = (gain for section in settling.sections for gain in section.gains)
         for gain in gains:
             fields[gain.name] = Stored(gain.mantissa, gain.shift, _bits_of(gain.mantissa))
@@ -89,8 +98,8 @@ class Spelling:
         return self.word_bits(state)
 
     def word_bits(self, variable: str) -> int:
-        """Of the narrowest type that holds a variable's word."""
-        return 8 * stored_bytes(self.program.words[variable].bits)
+        """Of the type that keeps a variable's word between samples."""
+        return 8 * kept_bytes(self.program.words[variable].bits)
 
     def local_bits(self, variable: str) -> int:
         """Of a local's type; what is proven of the command may make it narrower than its sum."""
@@ -115,11 +124,33 @@ class Spelling:
         """Of the local of the command within its limits."""
         return count_bits(self.program.interface.output)
 
+    def keeps_half(self, each: Sum) -> bool:
+        """Whether a remainder is kept with the half that rounds to nearest added: then only its type must hold both."""
+        return each.remainder is not None and each.shift < self.word_bits(each.remainder)
+
+    @property
+    def late_shift(self) -> int:
+        """Of a variable that is the command but for a power of two: it is limited first, as it has room as it is.
+
+        0 where the command is a sum, or has room itself, or is needed unlimited.
+        """
+        program, command = self.program, self.program.command
+        if program.integral or command.shift or len(command.terms) != 1 or self.local_bits(COMMAND) == NARROW:
+            return 0
+        (term,) = command.terms
+        narrow = self.local_bits(term.variable) == self.command_bits == NARROW
+        return term.shift if narrow and term.name is None and term.stored == 1 else 0
+
+    @property
+    def limited_bits(self) -> int:
+        """Of what is held to the command's limits."""
+        return NARROW if self.late_shift else self.local_bits(COMMAND)
+
     # ------------------------------------------------------------ products and sums
 
     def coefficient(self, field: str) -> str:
         """How a function refers to a stored number."""
-        return f"coefficients->{field}" if self.table else f"{self.name}_{field}"
+        return f"coefficients->{field}" if self.table or field in self.looked_up else f"{self.name}_{field}"
 
     def variable(self, name: str) -> str:
         """A variable of the program."""
@@ -132,6 +163,20 @@ class Spelling:
             signed += self._run(tuple(run), bits)
         return joined(signed) or ["0"]
 
+    def by_columns(self, terms: Sequence[Term], bits: int) -> bool:
+        """Whether a sum can be added up by columns of halves: where its products are long and their factors known."""
+        return bits == WIDE and any(self.in_columns(term) for term in terms)
+
+    def in_columns(self, term: Term) -> bool:
+        """Whether a term is a product of two long words with nothing to shift."""
+        short = self.variable_bits(term.variable) == NARROW
+        return term.name is not None and term.shift == 0 and short and bool(self.looked_up)
+
+    def column(self, term: Term) -> tuple[str, str]:
+        """Coefficient, its sign included, and variable of a term in columns."""
+        field, _, minus = self._found(self.fields, term)
+        return f"{'-' if minus else ''}{self.coefficient(field)}", self.variable(term.variable)
+
     def _shared_shift(self, term: Term, bits: int) -> int:
         """The shift that a product leaves to those beside it; 0 for one that has it in its constant."""
         named = term.name is not None and (bits == WIDE or self.table)
@@ -142,8 +187,8 @@ class Spelling:
         power = 1 << self._shared_shift(terms[0], bits)
         largest = sum(self._factor(term) * self._size(term.variable) * power for term in terms if term.name)
         if power == 1 or len(terms) == 1 or largest >> bits - 1:
-            return [self._term(term, bits) for term in terms]
-        (minus, first), *others = (self._term(term._replace(shift=0), bits) for term in terms)
+            return [self.piece(term, bits) for term in terms]
+        (minus, first), *others = (self.piece(term._replace(shift=0), bits) for term in terms)
         others[-1] = (others[-1][0], f"{others[-1][1]}){times(power)}")
         return [(False, f"({'-' if minus else ''}{first}"), *others]
 
@@ -152,8 +197,8 @@ class Spelling:
         own = self.variable_bits(variable)
         return f"{f'({ctype(bits)})' if own < bits else ''}{self.variable(variable)}"
 
-    def _term(self, term: Term, bits: int) -> tuple[bool, str]:
-        """Whether it is subtracted, and what."""
+    def piece(self, term: Term, bits: int) -> tuple[bool, str]:
+        """Whether a term is subtracted, and what."""
         power = 1 << term.shift
         if term.name is None:
             return term.stored < 0, self.cast(term.variable, bits) + times(power)
@@ -166,7 +211,8 @@ class Spelling:
 
     def _product(self, field: str, factor: int, power: int, variable: str, bits: int) -> str:
         """A product as narrow as it fits, and then widened; the power of two in the constant where that has room."""
-        size, early = factor * self._size(variable), not self.table and factor * power <= LARGEST_LONG
+        constant_here = not self.table and field not in self.looked_up
+        size, early = factor * self._size(variable), constant_here and factor * power <= LARGEST_LONG
         narrow = size <= LARGEST_LONG
         start = f"({ctype(NARROW if narrow else bits)}){self.coefficient(field)}"
         named, power_text = self.variable(variable), times(power)

@@ -132,7 +132,7 @@ REFUSALS = {
     "input wider than a word": (
         INTEGRAL,
         Interface(port(-32768, 32768), port(-100, 100)),
-        ("counts from -32768 to 32768", "takes 17 bits", "use int32, move offset"),
+        ("counts from -32768 to 32768", "takes 17 bits", 'arithmetic = "int32", or a coarser per_count'),
     ),
 }
 

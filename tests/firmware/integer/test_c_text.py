@@ -54,9 +54,13 @@ def test_text_is_integers_within_the_width_and_needs_stdint_alone(one: IntegerEm
 @pytest.mark.parametrize("one", GRID, ids=[one.name for one in GRID])
 def test_right_shifts_stand_on_unsigned_images_alone(one: IntegerEmission) -> None:
     shifts = [line for line in code(texts(one)[1]).splitlines() if ">>" in line]
-    assert all(
-        re.fullmatch(r"    const (uint(?:32|64)_t) image = \(\(\1\)sum \+ \d+u(ll)?\) >> \d+;", s) for s in shifts
+    allowed = (
+        r"    const (uint(?:32|64)_t) image = \(\(\1\)sum \+ \d+u(ll)?\) >> \d+;",
+        r"    const (uint(?:32|64)_t) image = \(\1\)sum >> \d+;",
+        r"    const int32_t high = \(int32_t\)\(\(image \^ 2147483648u\) >> 16\) - 32768;",
+        r"    const uint32_t size_high = size >> 16;",
     )
+    assert all(any(re.fullmatch(pattern, s) for pattern in allowed) for s in shifts)
 
 
 @pytest.mark.parametrize("one", GRID, ids=[one.name for one in GRID])
@@ -94,6 +98,46 @@ def test_recursion_sign_is_that_of_the_stored_text(sign: str) -> None:
     else:
         assert f"x_section1_minus_a1 = {added};" in source
         assert "+ (int32_t)x_section1_minus_a1 * " in source
+
+
+@pytest.mark.parametrize("sign", ["subtract", "add"])
+@pytest.mark.parametrize("structure", ["cascade", "error-feedback", "normal", "parallel"])
+def test_long_coefficients_stand_in_a_constant_table_as_they_are_added(structure: str, sign: str) -> None:
+    one = emission("x", "three", structure, WIDTHS[2], options=("none", "inline", sign))
+    source = code(texts(one)[1])
+    fields = re.findall(r"int32_t (\w+);", source.partition("typedef struct {")[2].partition("} x_table;")[0])
+    values = source.partition("x_stored = {")[2].partition("};")[0]
+    stored = dict(zip(fields, map(int, re.sub(r"-\(-(\d+)\)", r"\1", values).split(",")[:-1]), strict=True))
+    wanted = {
+        name.replace("_a", "_minus_a"): term.stored for name, term in one.realization.program.coefficients.items()
+    }
+    assert stored == wanted
+    added = [stored for name, stored in wanted.items() if "_minus_a" in name]
+    assert [f"-(-{value})" in values for value in added] == [sign == "subtract" and value > 0 for value in added]
+    assert source.count("*const volatile x_lookup = &x_stored;") == 1
+
+
+def test_short_coefficients_stand_in_the_code() -> None:
+    source = texts(emission("x", "three", "cascade", WIDTHS[0]))[1]
+    assert "x_lookup" not in source
+    assert "SHORT_PRODUCTS" not in source
+
+
+@pytest.mark.parametrize("one", GRID, ids=[one.name for one in GRID])
+def test_states_have_the_width_of_registers_or_twice_that(one: IntegerEmission) -> None:
+    state = texts(one)[0].partition("typedef struct {\n")[2].partition("\n}")[0]
+    assert {line.split()[0] for line in state.splitlines()} <= {"int32_t", "int64_t"} or "unused" in state
+
+
+def test_command_that_is_proven_within_its_range_is_not_compared_but_for_any_table() -> None:
+    ends = INPUTS["int16"], OUTPUTS["int32"]
+
+    def limited(coefficients: str) -> str:
+        source = texts(emission("x", "gain", "direct", WIDTHS[0], ends, ("none", coefficients, "subtract")))[1]
+        return source.partition("x_limited(int32_t unclamped)\n{\n")[2].partition("}\n\n")[0]
+
+    assert limited("inline") == "    return unclamped;\n"
+    assert limited("table").count("if (unclamped") == 2
 
 
 def test_table_has_a_field_for_every_multiplied_number() -> None:

@@ -6,6 +6,7 @@ import re
 import subprocess
 import sys
 from collections.abc import Sequence
+from itertools import product
 from random import Random
 
 import pytest
@@ -14,12 +15,13 @@ from hypothesis import strategies as st
 
 from realize.arithmetic.integer import IntegerRecursion, Widths
 from realize.arithmetic.integer.interface import type_range
+from realize.design import Signal
 from realize.firmware import write_all
 from realize.firmware.integer import IntegerEmission, render_integer_firmware
 from realize.firmware.integer.vectors import vectors
 from tests.firmware.bench import ZIG, Program, Toolchain, bits
 from tests.firmware.integer.bench import ZIG_TRAPS, IntegerBench, toolchains
-from tests.firmware.integer.designs import INPUTS, OUTPUTS, WIDE_INPUTS, WIDTHS, emission, grid, some_count
+from tests.firmware.integer.designs import INPUTS, OUTPUTS, WIDE_INPUTS, WIDTHS, emission, grid, signal, some_count
 
 TOOLCHAINS = toolchains()
 GRID = list(grid())
@@ -196,6 +198,29 @@ def test_coefficients_are_swapped_whole_between_samples(integer_bench: IntegerBe
     assert built.run(commands) == expected
 
 
+def output_of_int32(low: int, high: int) -> Signal:
+    """Counts of the size of those of the input."""
+    scale = 200_000_000
+    return signal(f"{low}/{scale}", f"{high}/{scale}", f"1/{scale}", 0, "int32")
+
+
+#: Limits of a command that is a power of two times what 32 bits hold: at the ends of the type, odd, on one side.
+LIMITS = [(-(2**31), 2**31 - 1), (-1_000_000_001, 1_500_000_003), (0, 2**31 - 1), (-2_000_000_001, 0), (-5, 3)]
+
+
+def test_limits_beyond_what_a_variable_holds_are_those_of_the_model(integer_bench: IntegerBench) -> None:
+    ends = [(WIDE_INPUTS["all of int32"], output_of_int32(*limits)) for limits in LIMITS]
+    forms = ("direct", "cascade", "error-feedback")
+    works = [
+        exercise(k, emission(f"late{k}", "notch", form, WIDTHS[2], pair))
+        for k, (form, pair) in enumerate(product(forms, ends))
+    ]
+    sources = [render_integer_firmware(work.emission)[f"{work.emission.name}.c"] for work in works]
+    assert all(re.search(r"The command, \d+ times what is given, held", source) for source in sources)
+    program = integer_bench.build_integers([work.emission for work in works], TOOLCHAINS[0])
+    assert mismatches(program.run([command for work in works for command in work.commands]), works) == []
+
+
 #: Designs with a 32-bit sum that the input enters directly and with which every remainder can be made; its shift.
 MUTANTS = [
     ("pid", "cascade", 15),
@@ -210,9 +235,10 @@ def test_vectors_notice_a_rounding_constant_or_a_limit_that_is_off_by_one(intege
     emissions: list[IntegerEmission] = []
     for transfer, structure, shift in MUTANTS:
         half = 1 << shift - 1
+        before, after = ("remainder = ", ";") if structure == "error-feedback" else (" + ", "u")
         for old, new in (
-            (f" + {half}u", f" + {half - 1}u"),
-            (f" + {half}u", f" + {half + 1}u"),
+            (f"{before}{half}{after}", f"{before}{half - 1}{after}"),
+            (f"{before}{half}{after}", f"{before}{half + 1}{after}"),
             ("return -4200", "return -4199"),
             ("return 4200", "return 4201"),
         ):

@@ -5,11 +5,13 @@ from __future__ import annotations
 import json
 from fractions import Fraction
 from hashlib import sha256
+from random import Random
 from typing import Any
 
 import pytest
 
 from realize.arithmetic.integer import STRUCTURES, stored_integer_pulse
+from realize.arithmetic.integer.quiet import FEW_SAMPLES, FEW_STATES, quiet
 from realize.errors import Refused
 from realize.firmware.integer import IntegerEmission, render_integer_firmware
 from realize.firmware.integer.c_header import FORMS
@@ -17,6 +19,9 @@ from realize.firmware.integer.record import ceiling_text
 from tests.firmware.integer.designs import TRANSFERS, WIDTHS, emission
 
 Entry = dict[str, Any]
+
+#: Samples after which every pole of the designs has decayed to nothing of its first size, 1e-9 and less.
+SETTLING = 3000
 
 
 def document(one: IntegerEmission) -> Entry:
@@ -141,3 +146,40 @@ def test_a_bound_is_rounded_so_that_it_stays_one(bound: str, text: str) -> None:
 
 def test_every_structure_has_words_in_the_header() -> None:
     assert set(FORMS) == set(STRUCTURES)
+
+
+@pytest.mark.parametrize("name", DESIGNS)
+def test_deadband_and_cycles_are_those_of_the_realization(name: str) -> None:
+    one = DESIGNS[name]
+    found, expected = document(one)["quiet"], quiet(one.realization, FEW_SAMPLES, FEW_STATES)
+    for side, answer in (("positive", expected.positive), ("negative", expected.negative)):
+        assert found["smallest_answered_counts"][side] == answer._asdict()
+    if expected.dies_out:
+        assert found["settles_within_counts"] == 0
+    elif expected.integration:
+        assert found["settles_within_counts"] >= one.realization.proof.output_error
+    else:
+        assert found["settles_within_counts"] == expected.largest_output
+    assert [each["section"] for each in found["limit_cycles"]] == [each.section for each in expected.sections]
+    for each, cycles in zip(found["limit_cycles"], (each.cycles for each in expected.sections), strict=True):
+        assert each["proven_most_units"] >= cycles.bound
+        assert each["searched"] == (each["amplitude_units"] is not None)
+
+
+@pytest.mark.parametrize("name", DESIGNS)
+def test_without_input_the_model_settles_as_the_record_says(name: str) -> None:
+    """From what noise at full scale left behind; with an integral, of where its state stands."""
+    one = DESIGNS[name]
+    most, model = document(one)["quiet"]["settles_within_counts"], one.recursion()
+    port, integral = one.realization.program.interface, one.realization.program.integral
+    draw = Random(7)
+    model.run([draw.randint(port.input.low, port.input.high) + port.input.offset for _ in range(200)])
+    model.run([port.input.offset] * SETTLING)
+    if integral and len(integral.stored) > 1:
+        return  # the second state moves the first on for ever
+    held = model.state.integral1 / Fraction(2) ** integral.word.fraction_bits if integral else 0
+    low, high = port.output.low - Fraction(1, 2), port.output.high + Fraction(1, 2)
+    aimed = min(max(held, low), high)
+    rounding = Fraction(1, 2) if integral and most == 0 else 0
+    for output in model.run([port.input.offset] * 200):
+        assert abs(output - port.output.offset - aimed) <= most + rounding
