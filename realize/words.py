@@ -129,8 +129,8 @@ class FloatWords(NamedTuple):
     out : tuple of str
         Checks that are in the way.
     smallest_answered : int or None
-        Smallest count of input that is ever answered, its integral at the far end of the output range; None where no
-        count is.
+        Smallest size of input in counts that is ever answered, its integral at the far end of the output range, for the
+        sign that answers less; None where no input of a sign is.
     """
 
     arithmetic: str
@@ -260,8 +260,13 @@ def _floats(bench: _Bench, arithmetic: str) -> FloatWords:
     loop = bench.setting.result(bench.unrounded, stored.pulse) if bench.setting else None
     blocking, _ = gate(stored.checks + (loop.checks if loop else ()), bench.design.accept)
     port = bench.interface.input
-    level = float(max(bench.design.output.range or (0, 0)))
-    answered = smallest_float_answered(stored.realization, port.per_count, range(1, port.high + 1), level)
+    level = float(max(bench.design.output.range or (0, 0), key=abs))
+    sides = [
+        smallest_float_answered(stored.realization, port.per_count, inputs, level)
+        for inputs in (range(1, port.high + 1), range(-1, port.low - 1, -1))
+        if inputs
+    ]
+    answered = None if None in sides else max(abs(side) for side in sides if side is not None)
     names = tuple(dict.fromkeys(c.check for c in blocking))
     return FloatWords(arithmetic, None, stored.realization.structure, names, answered)
 

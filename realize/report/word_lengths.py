@@ -137,14 +137,7 @@ def cycle_text(found: Quiet) -> str:
     """Largest cycle at the output without input, in counts; ``<=`` where it is only bounded."""
     if found.rests_at_zero:
         return "0"
-    if len(found.sections) == 1 and found.sections[0].cycles.amplitude is not None:
-        return str(min(found.largest_output, round(_largest_cycle(found.sections[0]))))
-    return f"<={found.largest_output}"
-
-
-def _largest_cycle(each: SectionCycles) -> float:
-    """Of a section that was searched, in counts at its output."""
-    return (each.cycles.amplitude or 0) * 2.0**-each.fraction_bits
+    return f"<={found.largest_output}" if found.searched_output is None else str(found.searched_output)
 
 
 def _figure(value: float | None) -> str:

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, NamedTuple
 
 from realize.algebra import polynomial as poly
 from realize.arithmetic.integer.model import IntegerRecursion
-from realize.arithmetic.integer.program import COMMAND, Program, Sum, Term, linear
+from realize.arithmetic.integer.program import COMMAND, INPUT, Program, Sum, Term, linear
 from realize.arithmetic.limit_cycles import (
     MOST_STATES,
     TIES_UP,
@@ -86,6 +86,11 @@ class SectionCycles(NamedTuple):
     fraction_bits: int
     cycles: LimitCycles
 
+    @property
+    def rests(self) -> bool:
+        """Whether it comes to rest at zero wholly: what was searched is all it remembers, and none of it is left."""
+        return self.variable.endswith("_output") and self.cycles.searched and not self.cycles.amplitude
+
 
 class Quiet(NamedTuple):
     """Deadband and limit cycles.
@@ -101,6 +106,9 @@ class Quiet(NamedTuple):
     largest_output : int
         Without input, and without an integral, the output stays within this of zero once it has settled, in counts:
         proven.
+    searched_output : int or None
+        The largest that remains at the output, in counts, where every state was searched and the output is nothing but
+        what was searched, rounded; else None.
     """
 
     positive: Answered
@@ -108,11 +116,12 @@ class Quiet(NamedTuple):
     integration: Integration | None
     sections: tuple[SectionCycles, ...]
     largest_output: int
+    searched_output: int | None
 
     @property
     def dies_out(self) -> bool:
         """Whether no section is left with a cycle: proven by the search."""
-        return all(each.cycles.searched and not each.cycles.amplitude for each in self.sections)
+        return all(each.rests for each in self.sections)
 
     @property
     def rests_at_zero(self) -> bool:
@@ -138,7 +147,8 @@ def quiet(stored: IntegerRealization, samples: int = SEARCHED_SAMPLES, most_stat
         sides = [_seen(program, _slope(program) * sign, Answered(1, True), sign) for sign in (1, -1)]
     else:
         sides = [_answered(stored, sign, samples) for sign in (1, -1)]
-    return Quiet(sides[0], sides[1], _integration(program), _sections(program, most_states), floor(proof.output_error))
+    sections, largest = _sections(program, most_states), floor(proof.output_error)
+    return Quiet(sides[0], sides[1], _integration(program), sections, largest, _searched_output(program, sections))
 
 
 # ---------------------------------------------------------------- deadband
@@ -201,11 +211,24 @@ def _slope(program: Program) -> int:
 
 
 def _seen(program: Program, direction: Fraction | int, answer: Answered, sign: int) -> Answered:
-    """The answer, unless the input has no such side or a limit at zero hides that of the output."""
+    """The answer, unless the input has no such side or a limit at zero hides where the output goes in the end.
+
+    It may have gone the other way before, unless nothing but a gain of the same sign stands beside the integral.
+    """
     incoming, outgoing = program.interface
     room = outgoing.high if direction > 0 else -outgoing.low
-    given = incoming.high if sign > 0 else -incoming.low
-    return answer if room and given else Answered(None, True)
+    if not (incoming.high if sign > 0 else -incoming.low):
+        return Answered(None, True)
+    return answer if room else Answered(None, _goes_one_way(program, direction * sign))
+
+
+def _goes_one_way(program: Program, direction: Fraction | int) -> bool:
+    """Whether a positive input never moves the output against a direction, for it passes gains of one sign alone."""
+    if program.states or program.outputs:
+        return False
+    factors = [_factor(term) for term in program.command.terms if term.variable == INPUT]
+    gains = [*factors, *(program.integral.stored if program.integral else ())]
+    return all(gain * direction >= 0 for gain in gains)
 
 
 def _integration(program: Program) -> Integration | None:
@@ -246,6 +269,18 @@ def _sections(program: Program, most_states: int) -> tuple[SectionCycles, ...]:
         own = tuple(each for each in program.sums if _number(each.target) == number)
         found += [_cycles(program, number, own, most_states)] if _feeds_back(program, own) else []
     return tuple(found)
+
+
+def _searched_output(program: Program, sections: Sequence[SectionCycles]) -> int | None:
+    """What the command makes of the largest cycle of the only section, where that is all it is made of."""
+    if all(each.rests for each in sections):
+        return 0
+    alone = len(sections) == 1 and {term.variable for term in program.command.terms} - {"state.integral1"}
+    if alone != {sections[0].variable} or sections[0].cycles.amplitude is None:
+        return None
+    term = next(term for term in program.command.terms if term.variable == sections[0].variable)
+    sum_of_it = abs(_factor(term)) * sections[0].cycles.amplitude
+    return int(TIES_UP.apply(sum_of_it, 1 << program.command.shift))
 
 
 def _number(name: str) -> int:

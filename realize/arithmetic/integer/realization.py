@@ -143,6 +143,8 @@ def rounded_pulse(
         When the structure does not suit the poles.
     """
     rest, integration = _in_counts(pulse, interface, True, Fraction(0))
+    # A range that fits any word: coefficients do not depend on it, and the input's own bits are another question.
+    interface = interface._replace(input=interface.input._replace(low=-1, high=1))
     widths = Widths(bits, WIDEST)
     layout, ideal, _ = _rounded_well(rest, structure, interface, widths, integration)
     program = quantized(layout, interface, Choice(*widths), integration, Needs(ideal, ideal))

@@ -75,13 +75,22 @@ def _off(program: Program, gain: Gain, constant: Mapping[str, Fraction]) -> Frac
     """Largest distance of a state from its exact value at rest.
 
     Half a unit; half a unit of the mantissa, which is the nearest; and, from a section whose history is at rest too,
-    what it hands on may differ from its history by the error that would keep it there and another rounding.
+    what it hands on may differ from its history by the error that would keep it there, another rounding, and those of
+    the words it is added up from.
     """
     if gain.variable == INPUT:
         return _HALF + _HALF * program.interface.input.reach / Fraction(2) ** gain.shift
     largest = 1 << program.words[gain.variable].bits - 1
-    handed = _HALF + constant.get(gain.variable, Fraction(0))
+    handed = _HALF + constant.get(gain.variable, Fraction(0)) + _at_once(program, gain.variable)
     return _HALF + (_HALF * largest + abs(gain.mantissa) * handed) / Fraction(2) ** gain.shift
+
+
+def _at_once(program: Program, target: str) -> Fraction:
+    """What the roundings of the words that a sum adds up do to it in the same sample, in its units."""
+    rounded = {each.target for each in program.outputs if each.shift and each.base is None}
+    own = next(each for each in program.outputs if each.target == target)
+    factors = (abs(term.stored) << term.shift for term in own.terms if term.variable in rounded - {target})
+    return _HALF * sum(factors, 0) / (1 << own.shift)
 
 
 def with_resting(errors: Mapping[str, Fraction], resting: Mapping[str, Fraction]) -> dict[str, Fraction]:

@@ -239,3 +239,33 @@ def test_an_input_without_a_side_is_not_answered_there() -> None:
 def test_nothing_within_the_range_may_be_enough() -> None:
     stored = integer_realization(pulse_of((Fraction(1, 10_000),), [(1,)]), twelve_bits(), WIDE, "direct")
     assert quiet(stored)[:2] == (Answered(None, True), Answered(None, True))
+
+
+def test_a_limit_hides_where_the_output_goes_in_the_end_and_not_what_it_does_before() -> None:
+    # P = 3 and I = -1/50 with an output from 0 on: an input of +1 answers 3, 2, 2, 1, 1, 0 and stays there.
+    ends = Interface(port(-2048, 2047), port(0, 3000))
+    stored = integer_realization(pulse_of([3], [(1,)], [Fraction(-1, 50)]), ends, Widths(16, 64), "cascade")
+    assert IntegerRecursion(stored.program).update(1) == 3
+    assert quiet(stored).positive == Answered(None, False)
+    same_sign = integer_realization(pulse_of([3], [(1,)], [Fraction(1, 50)]), ends, Widths(16, 64), "cascade")
+    assert quiet(same_sign).negative == Answered(None, True)
+
+
+def test_what_remains_at_the_output_is_not_what_remains_in_a_state() -> None:
+    # Coupled form, its states small and its output 60 times as large: the model cycles at 120 counts.
+    ends = Interface(port(-2047, 2047), port(-(10**6), 10**6))
+    pulse = pulse_of([10, Fraction(-70, 11)], [(1, Fraction(873, 481), Fraction(172, 187))])
+    stored = integer_realization(pulse, ends, Widths(16, 32), "normal")
+    found = quiet(stored)
+    assert found.searched_output is None
+    assert not found.dies_out
+    assert found.largest_output >= 120
+
+
+def test_half_a_count_that_remains_is_a_count_at_the_output() -> None:
+    ends = Interface(port(-30000, 30000), port(-(10**6), 10**6))
+    pulse = pulse_of([Fraction(1, 10)], [(1, Fraction(19, 42), Fraction(246, 419))])
+    stored = integer_realization(pulse, ends, Widths(16, 32), "parallel")
+    (section,) = quiet(stored).sections
+    assert (section.cycles.amplitude, section.fraction_bits) == (1, 1)
+    assert quiet(stored).searched_output == 1
