@@ -64,9 +64,9 @@ def test_back_calculation_counts_in_the_sum_of_the_integral() -> None:
 
 
 def test_section_after_a_section_at_rest_takes_up_what_is_handed_on() -> None:
-    # Both y = round(0.9 y + b u), their outputs in one unit. The first is off by half a unit, which (1 - 0.9)/2 in every
-    # sample of the past would have left; it hands on what may differ by that and another half, and the second, whose gain
-    # at rest is g, is off by half a unit and g times that. Both are summed up by 1/(1 - 0.9).
+    # Both y = round(0.9 y + b u), their outputs in one unit. The first is off by half a unit, which (1 - 0.9)/2 in
+    # every sample of the past would have left; it hands on what may differ by that and another half, and the second,
+    # whose gain at rest is g, is off by half a unit and g times that. Both are summed up by 1/(1 - 0.9).
     stored = integer_realization(
         pulse_of((1, 0, 0), [(1, Fraction(-9, 10)), (1, Fraction(-9, 10))]), twelve_bits(), Widths(16, 64), "cascade"
     )
