@@ -36,16 +36,35 @@ name = "auto"                     # the recommended one; pin it by writing the n
 range = [-8.0, 8.0]               # physical
 unit = "mm"
 per_count = "1/2000"              # physical size of one count of the converter
+# offset = 0                      # count at physical zero, such as 2048 of a 12-bit converter
+# integers: type = "int16"        # C type of the count, int8 to uint32
 
 [signals.output]
 range = [-1.0, 1.0]               # the code clamps the command to it
 unit = "of full scale"
 per_count = "1/4200"
+# offset = 4200                   # such as a timer that counts from 0 to 8400 around standstill
+# integers: type = "int16"        # or "uint16", with the offset above
 
 [target]
 arithmetic = "float32"            # or "float64"
+# integers: arithmetic = "int16"  # or "int32", in place of the line above
+# structure = "auto"              # or "direct", "cascade", "delta"
 anti_windup = "hold-integral"     # or "back-calculation" with tracking_time = "0.2 s", or "none"
 guard_nonfinite = true            # a NaN or infinite input counts as the previous input
+
+# What the controller drives: then the loop is checked, too.
+# [plant]
+# transfer = "22/(s*(0.05*s + 1))"  # from the command to what is measured; invented
+# dead_time = "0.4 ms"
+
+# [loop]
+# compute_delay = "1 sample"        # from sampling the input to the actuator
+
+# For a transfer that is improper, such as kp + ki/s + kd*s, whose kd*s has no pole yet:
+# improper: [rolloff]
+# improper: placement = "derivative"  # or "whole"
+# improper: pole = "auto"             # or "170 Hz"
 
 # What the conversion may change; the values here are the defaults.
 # [tolerance]

@@ -272,7 +272,7 @@ NOT_UNDERSTOOD = {
     ),
     "unsigned type without an offset": (
         design("1/(s + 1)", outgoing=input_of("-8", "8", "0.0005", "uint16")),
-        ("[signals.output] type: uint16", "counts from 0 to 65535", "or check offset and per_count"),
+        ("[signals.output] type: uint16", "counts from 0 to 65535", "offset = 16000 makes the lowest count 0"),
     ),
     "no type wide enough": (
         design("1/(s + 1)", incoming=input_of("-8", "8", "1/100000000000", "int32")),

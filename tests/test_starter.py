@@ -46,6 +46,22 @@ def test_every_line_that_is_commented_out_is_right_when_it_is_not() -> None:
     assert design.author == "your initials"
     assert dict(design.tolerance) == {"pole_shift": F(2), "phase_in_band": F(5)}
     assert design.accept[0].check == "step deviation"
+    assert design.plant is not None
+    assert design.loop.compute_delay_samples == 1
+    assert (design.input.offset, design.output.offset, design.target.structure) == (0, 4200, "auto")
+
+
+def test_the_lines_for_integers_are_right_when_they_take_the_place_of_floats() -> None:
+    text = starter_text("x").replace('arithmetic = "float32"', "# float32")
+    design = design_from_text(text.replace("# integers: ", ""), "x.toml")
+    assert (design.target.arithmetic, design.input.type, design.output.type) == ("int16", "int16", "int16")
+
+
+def test_the_lines_for_an_improper_transfer_are_right_when_it_has_no_pole() -> None:
+    text = starter_text("x").replace("kd*s/(tau*s + 1)", "kd*s").replace("tau = ", "# tau = ")
+    design = design_from_text(text.replace("# improper: ", ""), "x.toml")
+    assert design.rolloff is not None
+    assert design.rolloff.placement == "derivative"
 
 
 def test_the_lines_fit_a_terminal_and_the_data_is_called_invented() -> None:

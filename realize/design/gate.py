@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
 from fractions import Fraction
+from math import ceil, floor
 from typing import TypeGuard
 
 from realize.algebra.expression import evaluate_constant, read_exact
@@ -151,7 +152,7 @@ class Table:
         value = self.entries[key]
         allowed = f"an integer from {low} to {high}"
         if not isinstance(value, int) or isinstance(value, bool) or not low <= value <= high:
-            raise self.error(key, described(value), allowed, f"write {key} = {max(low, min(high, 1))}")
+            raise self.error(key, described(value), allowed, f"write {key} = {_integers_near(value, low, high)}")
         return value
 
     def number(self, key: str, values: Mapping[str, Fraction] | None = None) -> Fraction | None:
@@ -266,6 +267,16 @@ def described(value: object) -> str:
 def not_yet(where: str, subject: str, instead: str) -> RealizeError:
     """Compose the answer to what is understood and planned, but not there yet."""
     return RealizeError(where, f"{subject}, which is not supported yet", instead, "remove it for now")
+
+
+def _integers_near(value: object, low: int, high: int) -> str:
+    """The allowed integers next to a number; any allowed one for what is none."""
+    try:
+        number = checked_number(value, {}, "")
+    except RealizeError:
+        return str(max(low, min(high, 1)))
+    near = {max(low, min(high, n)) for n in (floor(number), ceil(number))}
+    return " or ".join(map(str, sorted(near)))
 
 
 def _written(value: WrittenNumber) -> Fraction:

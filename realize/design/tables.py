@@ -77,6 +77,16 @@ _PREWARPED = "bilinear-prewarped"
 #: A number with a unit behind it, where no unit is wanted; 2e-3 and 2*pi are none.
 _WITH_UNIT = re.compile(r"\s*[-+]?[0-9.]++(?:[eE][-+]?[0-9]++)?+\s*[A-Za-z%].*", re.DOTALL)
 
+#: A number, or a quotient of two, with the unit of a signal behind it; ``2 pi`` and ``2 sqrt(3)`` are products.
+_NUMBER_AND_UNIT = re.compile(
+    r"\s*(?P<number>[-+]?\s*[0-9.]++(?:[eE][-+]?[0-9]++)?+(?:\s*/\s*[0-9.]++(?:[eE][-+]?[0-9]++)?+)?+)"
+    r"\s*+(?!pi\b|sqrt\b)(?:[^\W\d_]|[%\xb0]).*",
+    re.DOTALL,
+)
+
+#: A number that needs no quotes.
+_UNQUOTED = re.compile(r"[-+]?(?:0|[1-9][0-9]*)(?:\.[0-9]+)?(?:[eE][-+]?[0-9]+)?")
+
 #: Checks that may be accepted without a figure: what went wrong is a matter of yes or no.
 _LIMIT_OPTIONAL = ("saturation recovery",)
 
@@ -303,7 +313,7 @@ def _rolloff_order(table: Table, transfer: TransferFunction) -> int | None:
     if order is not None and not lowest <= order <= MAX_DEGREE - transfer.order:
         raise table.error(
             "order",
-            f"{order} roll-off poles",
+            f"{order} roll-off pole{'' if order == 1 else 's'}",
             f"from {lowest}, which make it proper, to {MAX_DEGREE - transfer.order}, for degree {MAX_DEGREE}",
             f"write order = {lowest}, or remove the key",
         )
@@ -325,7 +335,7 @@ def _check_damping(table: Table, asked: Rolloff, lowest_order: int) -> None:
     if (asked.order or lowest_order) != 2:
         raise table.error(
             "damping",
-            f"a damping ratio for {asked.order or lowest_order} roll-off poles",
+            f"a damping ratio for a roll-off of order {asked.order or lowest_order}",
             "a damping ratio for a pair only",
             "write order = 2, or remove the damping",
         )
@@ -358,24 +368,51 @@ def _signal(table: Table, target: Target) -> Signal:
     return Signal(
         range=_range(table),
         unit=table.text("unit", MAX_UNIT) or "",
-        per_count=table.positive_number("per_count"),
+        per_count=_per_count(table),
         offset=table.integer("offset", -MAX_OFFSET, MAX_OFFSET) or 0,
         type=_signal_type(table, target),
     )
+
+
+def _per_count(table: Table) -> Fraction | None:
+    written = table.entries.get("per_count")
+    _refuse_unit(written, table.where("per_count"), "per_count = {}")
+    if table.number("per_count") == 0:
+        advice = 'a count cannot be 0; write its physical size, such as per_count = "1/1000"'
+        raise table.error("per_count", described(written), "a number above zero", advice)
+    return table.positive_number("per_count")
+
+
+def _refuse_unit(written: object, where: str, line: str) -> None:
+    """Refuse a number with a unit, which has a key of its own."""
+    match = _NUMBER_AND_UNIT.fullmatch(written) if isinstance(written, str) else None
+    if match is not None:
+        advice = f"units stand under unit; write the number alone: {line.format(_shortest(match['number']))}"
+        raise RealizeError(where, described(written), "a number without a unit", advice)
+
+
+def _shortest(number: object) -> str:
+    """A number as a file holds it, without quotes where it needs none."""
+    text = "".join(str(number).split())
+    return text if _UNQUOTED.fullmatch(text) else f'"{text}"'
 
 
 def _range(table: Table) -> tuple[Fraction, Fraction] | None:
     if "range" not in table:
         return None
     where = table.where("range")
-    ends = [_range_end(end, f"{where}, entry {i}") for i, end in enumerate(table.numbers("range"), 1)]
+    written = table.numbers("range")
+    ends = [_range_end(end, f"{where}, entry {i}") for i, end in enumerate(written, 1)]
     if len(ends) != 2 or ends[0] >= ends[1]:
         found = f"a list of {len(ends)}" if len(ends) != 2 else "a low end that is not below the high one"
-        raise table.error("range", found, "[low, high] with low below high", "write range = [-1.0, 1.0]")
+        turned = len(ends) == 2 and ends[0] > ends[1]
+        advice = ", ".join(_shortest(end) for end in reversed(written)) if turned else "-1.0, 1.0"
+        raise table.error("range", found, "[low, high] with low below high", f"write range = [{advice}]")
     return ends[0], ends[1]
 
 
 def _range_end(value: object, where: str) -> Fraction:
+    _refuse_unit(value, where, "{}")
     return within_range(checked_number(value, {}, where), where)
 
 

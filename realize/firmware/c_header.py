@@ -19,7 +19,9 @@ from realize.firmware.c_preamble import (
     period_macros,
     period_text,
     range_text,
+    selftest_prototype,
     signatures,
+    unprotected,
 )
 from realize.firmware.c_text import (
     LONGEST_EXACT,
@@ -213,6 +215,11 @@ def _unprotected(emission: Emission, sample: Sample) -> list[str]:
     return [
         *limits,
         *(undamped if lively else []),
+        *unprotected(
+            emission,
+            "any finite input is taken as it is",
+            follows_applied="applied" in variables(sample.advance),
+        ),
         "finite inputs so large that a product overflows: the state stays infinite or NaN until it is cleared"
         + ("; the command stays within its limits (NaN counts as the low one)" if sample.low is not None else ""),
         "a null pointer, a state that was never cleared, two calls on one state at the same time",
@@ -312,6 +319,7 @@ def _prototypes(c: Dialect, emission: Emission, sample: Sample) -> list[str]:
         *comment(wrapped(_preset_says(emission))),
         preset,
         "",
+        *selftest_prototype(c.name),
     ]
 
 

@@ -4,12 +4,17 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
 from fractions import Fraction
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
+from realize.arithmetic.sample import BACK_CALCULATION
 from realize.checks.agreement import agreed_text
 from realize.checks.check import Check
 from realize.firmware.c_text import WIDTH, comment, integer_constant, number_text, wrapped
 from realize.firmware.loop_text import loop_entries, loop_sentence
+
+if TYPE_CHECKING:
+    from realize.firmware.emission import Emission
+    from realize.firmware.integer.emission import IntegerEmission
 
 #: Width of the label column in the header's first comment.
 LABEL = 15
@@ -78,6 +83,35 @@ def loop_lines(loop: Mapping[str, Any] | None) -> list[str]:
     return [*wrapped(f"Loop: {loop_sentence(loop)}"), *entries, ""]
 
 
+def unprotected(emission: Emission | IntegerEmission, sensor: str, *, follows_applied: bool) -> list[str]:
+    """What no code of this kind is safe from.
+
+    Parameters
+    ----------
+    emission : Emission or IntegerEmission
+        What is emitted.
+    sensor : str
+        What becomes of a wrong input.
+    follows_applied : bool
+        Whether the integral follows what the actuator was really given.
+    """
+    period = period_text(emission.realization.period_s)
+    measured = emission.loop and emission.loop["jitter_margin_s"] is not None
+    jitter = "jitter beyond the margin of the loop" if measured else "jitter, whose margin was not judged"
+    actuator = "an actuator that limits further than the output range when only update is called: the integral winds up"
+    kick = (
+        "back-calculation with a tracking time shorter than the derivative time: the derivative kick winds the "
+        "integral the wrong way"
+    )
+    return [
+        f"a converter that wraps around, a sensor that fails: {sensor}",
+        f"a sample period other than {period} s; {jitter}",
+        *([actuator] if follows_applied else []),
+        *([kick] if follows_applied and emission.anti_windup == BACK_CALCULATION else []),
+        "a preset that returns 0 and is ignored: the controller does not start at rest",
+    ]
+
+
 def paragraph(label: str, text: str) -> list[str]:
     """Labelled prose, and a blank line."""
     return [*wrapped(f"{label}: {text}"), ""]
@@ -117,6 +151,12 @@ def signatures(name: str, given: str, made: str, *, table: bool) -> tuple[str, s
         _signature(f"void {name}_advance", [*both, value, f"{made} applied"]),
         _signature(f"int {name}_preset", [*both, value, f"{made} output"]),
     )
+
+
+def selftest_prototype(name: str) -> list[str]:
+    """The self-test, which stands in a file of its own."""
+    says = f"In {name}_selftest.c, linked only where it is wanted: 0, or the number of the first sample that differs."
+    return [*comment(wrapped(says)), f"int {name}_selftest(void);", ""]
 
 
 def _signature(function: str, parameters: Sequence[str]) -> str:

@@ -1,4 +1,4 @@
-"""From an emission to the text of its four files."""
+"""From an emission to the text of its five files."""
 
 from __future__ import annotations
 
@@ -7,11 +7,12 @@ from realize.firmware.c_header import header_text
 from realize.firmware.c_source import source_text, stored_coefficients
 from realize.firmware.emission import Emission
 from realize.firmware.record import record_text
+from realize.firmware.selftest import selftest_text
 from realize.firmware.vectors import vectors_text
 
 
 def render_firmware(emission: Emission) -> dict[str, str]:
-    """The four files of an emission.
+    """The five files of an emission.
 
     Parameters
     ----------
@@ -21,7 +22,7 @@ def render_firmware(emission: Emission) -> dict[str, str]:
     Returns
     -------
     dict
-        File name and text of header, source, vectors and record, in this order. The same emission gives the same
+        File name and text of header, source, self-test, vectors and record, in this order. The same emission gives the same
         bytes everywhere.
 
     Raises
@@ -37,6 +38,7 @@ def render_firmware(emission: Emission) -> dict[str, str]:
     files = {
         f"{name}.h": header_text(emission, sample, stored),
         f"{name}.c": source_text(emission, sample, settling, stored),
+        f"{name}_selftest.c": selftest_text(emission),
         f"{name}_vectors.csv": vectors_text(emission),
     }
     return files | {f"{name}.record.json": record_text(emission, files)}

@@ -60,12 +60,12 @@ def vectors(emission: Emission) -> tuple[list[float], list[float]]:
     """
     model = emission.recursion()
     target, limits = emission.realization.format, {model.sample.low, model.sample.high}
-    low, high = _full_scale(emission)
+    low, high = full_scale(emission)
     first, second = _drives(emission, model.sample, max(abs(low), abs(high)))
     quiet = _quiet(emission, model.sample, low, high)
     harder = [second * HARDER**k for k in range(TRIES) if second * HARDER**k < largest(target) * HEADROOM]
     for drive in harder or [second]:
-        inputs = _in_format(_inputs(emission, quiet, (first, drive), low, high), target)
+        inputs = in_format(_inputs(emission, quiet, (first, drive), low, high), target)
         model.clear()
         outputs = model.run(inputs)
         if limits <= {None, *outputs[SATURATING:]}:
@@ -83,7 +83,8 @@ def _inputs(emission: Emission, quiet: float, drives: tuple[float, float], low: 
     return inputs + (_nonfinite(low, high) if emission.guard_nonfinite else [])
 
 
-def _in_format(inputs: list[float], target: FloatFormat) -> list[float]:
+def in_format(inputs: list[float], target: FloatFormat) -> list[float]:
+    """Each rounded to the format."""
     return inputs if target.name == "float64" else [float(x) for x in np.array(inputs, np.float32)]
 
 
@@ -120,7 +121,8 @@ def _drive(limit: float, responses: list[float], full: float, room: float) -> fl
     return drive
 
 
-def _full_scale(emission: Emission) -> tuple[float, float]:
+def full_scale(emission: Emission) -> tuple[float, float]:
+    """Ends of the input range, in the format."""
     target = emission.realization.format
     low, high = emission.input_range or (Fraction(-1), Fraction(1))
     most = Fraction(largest(target))

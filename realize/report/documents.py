@@ -4,10 +4,11 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from fractions import Fraction
-from math import isfinite, pi
+from math import isfinite
 from typing import TYPE_CHECKING, Any
 
 from realize.algebra.expression import exact_text
+from realize.algebra.irrational import pi
 from realize.algebra.roots import Root
 from realize.algebra.rounding import FLOAT64
 from realize.arithmetic.realization import Realization
@@ -99,7 +100,7 @@ def compare_document(comparison: Comparison) -> Document:
     causal = comparison.causal
     return heading("compare", comparison.design) | {
         "period_s": exact_text(comparison.period_s),
-        "band_hz": float(comparison.band_rad_s) / (2 * pi),
+        "band_hz": float(comparison.band_rad_s / (2 * pi())),
         "band_rests_on": comparison.band_rests_on,
         "rolloff": proposal_document(causal.proposal) if causal.proposal else None,
         "rolloff_assumed": causal.assumed,

@@ -31,6 +31,9 @@ WIDTH = 100
 #: The space between a number and its unit.
 _UNIT_AFTER_NUMBER = re.compile(r"([0-9]) (?=(?:%|Hz|kHz|MHz|rad/s|deg|dB|s|ms|us)(?![A-Za-z]))")
 
+#: An exponent of ten, as Python pads it.
+_EXPONENT = re.compile(r"e\+?(-?)0*")
+
 #: Longest transfer function printed in lowest terms: beyond it the user's own text says more.
 _LONGEST_TRANSFER = 400
 
@@ -70,6 +73,15 @@ _LOOP_COLUMNS = (
 #: What stands behind a figure that is out, and behind one that is out but agreed to.
 _OUT, _AGREED = "!", "*"
 
+#: Checks of the arithmetic alone: nothing stands against them by method.
+_OF_ARITHMETIC = ("round-off",)
+
+#: Longest unit made of those of the signals that the table of checks has room for: two more than ``rad/s``.
+_LONGEST_UNIT = 7
+
+#: Digits of the values in the table of checks, fewer where it is too wide for the screen.
+_DIGITS = (5, 4, 3, 2)
+
 #: Unit of the values of a check, where it is not that of the difference.
 _VALUE_UNITS = {
     "pole shift": "rad/s",
@@ -81,6 +93,9 @@ _VALUE_UNITS = {
     "loop phase margin": "deg",
     "loop overshoot": "%",
 }
+
+#: Below it a value of the table is written as a whole number rather than with an exponent, which is no shorter.
+_WHOLE = 1e5
 
 #: Checks whose difference is one of percentages: points.
 _IN_POINTS = ("step overshoot", "loop overshoot")
@@ -135,7 +150,7 @@ def compare_text(comparison: Comparison) -> str:
     if refused:
         blocks.append(heading("Refused") + bullets(f"{m.method}: {m.refused}" for m in refused))
     if comparison.closest and comparison.closest.refused is None:
-        blocks.append(_checks_block(comparison.closest))
+        blocks.append(_checks_block(comparison.closest, comparison.design))
     if comparison.design.method == "auto" and comparison.recommended:
         blocks.append(_pin(comparison.recommended))
     return "\n".join(blocks)
@@ -157,7 +172,7 @@ def emit_text(comparison: Comparison, chosen: MethodResult, paths: Sequence[str]
         f"{_count(len(chosen.realization.integral), 'integral state')}, "
         f"{_count(len(chosen.realization.sections), 'section')}"
     )
-    blocks = [wrapped(first + _accepted_words(chosen)), _setting(comparison), _checks_block(chosen)]
+    blocks = [wrapped(first + _accepted_words(chosen)), _setting(comparison), _checks_block(chosen, design)]
     blocks.append(heading(f"Written ({what})") + "".join(f"  {path}\n" for path in paths))
     blocks += [_pin(chosen.method)] if design.method == "auto" else []
     return "\n".join([*blocks, wrapped(CAUTION)])
@@ -450,7 +465,7 @@ def _mark(method: MethodResult, check: Check) -> str:
     return _AGREED if accepted else _OUT if check.verdict == "out" else ""
 
 
-def _checks_block(result: MethodResult) -> str:
+def _checks_block(result: MethodResult, design: Design) -> str:
     """One row a check: what the method did, and what rounding the stored numbers made of it."""
     head = [
         ["check", "in", "design", "stored", "difference", "", "tolerance", "verdict"],
@@ -458,9 +473,13 @@ def _checks_block(result: MethodResult) -> str:
     ]
     exact = {check.check: check for check in result.checks if check.of == "exact"}
     agreed = {check.check for check, _ in result.accepted}
-    rows = [_check_row(check, exact.get(check.check, check), agreed) for check in result.stored_checks]
+    shown = [(check, exact.get(check.check, check)) for check in result.stored_checks]
+    for digits in _DIGITS:
+        rows = table([*head, *(_check_row(*pair, agreed, design, digits) for pair in shown)])
+        if max(map(len, rows.splitlines())) <= WIDTH:
+            break
     reasons = [f"{c.check}: {c.reason}" for c in result.stored_checks if c.reason and _wants_words(c)]
-    block = heading(f"Checks of {result.method}") + table([*head, *rows]) + bullets(reasons)
+    block = heading(f"Checks of {result.method}") + rows + bullets(reasons)
     accepted = [f"{agreed_text(c, a.limit)}: {a.because} ({a.by})" for c, a in result.accepted]
     block += ("\n" + heading("Accepted deviations") + bullets(accepted)) if accepted else ""
     block += _loop_block(result.loop) if result.loop else ""
@@ -520,19 +539,52 @@ def _wants_words(check: Check) -> bool:
     return check.verdict != "within" or (check.difference == 0 and differ)
 
 
-def _check_row(stored: Check, exact: Check, agreed: Set[str]) -> list[str]:
-    unit = "points" if stored.check in _IN_POINTS else stored.unit
+def _check_row(stored: Check, exact: Check, agreed: Set[str], design: Design, digits: int) -> list[str]:
     verdict = "accepted" if stored.verdict == "out" and stored.check in agreed else stored.verdict
     return [
         stored.check,
-        _VALUE_UNITS.get(stored.check, ""),
-        _value_text(stored.reference),
-        _value_text(stored.obtained),
-        _figure(exact.difference),
+        _value_unit(stored, design),
+        _value_text(stored.reference, digits),
+        _value_text(stored.obtained, digits),
+        "-" if stored.check in _OF_ARITHMETIC else _figure(exact.difference),
         _figure(stored.difference),
-        f"{_figure(stored.tolerance)} {unit}".strip(),
+        _tolerance_text(stored, design),
         verdict,
     ]
+
+
+def _value_unit(check: Check, design: Design) -> str:
+    """Unit of the values of a check, from those of the signals where these are known and short."""
+    unit = _VALUE_UNITS.get(check.check, "")
+    incoming, outgoing = design.input.unit, design.output.unit
+    if check.check == "saturation recovery":
+        unit = outgoing
+    elif check.check == "low-frequency gain" and incoming and outgoing:
+        unit = _gain_unit(outgoing, incoming, design.transfer.zeros_minus_poles_at_origin)
+    is_told = check.reference is not None or check.obtained is not None
+    return unit if is_told and len(unit) <= _LONGEST_UNIT else ""
+
+
+def _gain_unit(outgoing: str, incoming: str, k: int) -> str:
+    """Unit of the limit of ``s^-k G``, which is that of G without integral; one integral adds ``/s``."""
+    if k not in (0, -1):
+        return ""
+    ratio = "1" if outgoing == incoming else f"{outgoing}/{incoming}"
+    return f"{ratio}/s" if k else "" if ratio == "1" else ratio
+
+
+def _tolerance_text(check: Check, design: Design) -> str:
+    """How far off the value may be; where a limit of its own rules, that one."""
+    if check.tolerance is None:
+        return "-"
+    if check.check == "loop sensitivity":
+        return f"at most {_loop_limits(design)[1][1]:.3g}"
+    if check.check == "loop phase margin" and check.tolerance < _loop_limits(design)[1][0]:
+        return f"at least {_loop_limits(design)[0]:.3g} deg"
+    tolerance = _figure(check.tolerance)
+    if check.check in _IN_POINTS:
+        return f"{tolerance} point{'' if tolerance == '1' else 's'}"
+    return f"{tolerance} {check.unit}".strip()
 
 
 def _figure(value: float | None, digits: int = 3) -> str:
@@ -542,17 +594,26 @@ def _figure(value: float | None, digits: int = 3) -> str:
     return "-" if value is None else f"{value:.{digits}g}"
 
 
-def _value_text(value: float | complex | str | None) -> str:
+def _value_text(value: float | complex | str | None, digits: int = 5) -> str:
     if isinstance(value, complex):
-        return _complex_text(value)
+        return _complex_text(value, digits)
     return value if isinstance(value, str) else _optional(value, "")
 
 
-def _complex_text(z: complex) -> str:
+def _complex_text(z: complex, digits: int = 5) -> str:
     if z.imag == 0:
         return f"{z.real:.5g}"
     # A real part below the last of five digits of the whole is not shown.
-    return f"{z.real:.4g}+-{abs(z.imag):.5g}j" if abs(z.real) > 5e-6 * abs(z) else f"+-{abs(z.imag):.5g}j"
+    imaginary = _short(abs(z.imag), digits)
+    return f"{_short(z.real, digits - 1)}+-{imaginary}j" if abs(z.real) > 5e-6 * abs(z) else f"+-{imaginary}j"
+
+
+def _short(value: float, digits: int) -> str:
+    """So many digits, and no more characters than they take."""
+    text = f"{value:.{digits}g}"
+    if "e" in text and 1 <= abs(value) < _WHOLE:
+        return f"{value:.0f}"
+    return _EXPONENT.sub(r"e\1", text)
 
 
 def _optional(value: float | None, unit: str) -> str:

@@ -2,9 +2,8 @@
 
 from __future__ import annotations
 
-from math import pi
-
 from realize.algebra.expression import exact_text
+from realize.algebra.irrational import pi
 from realize.arithmetic.integer import IntegerRealization
 from realize.arithmetic.integer.quiet import Quiet, SectionCycles
 from realize.quantity import format_engineering
@@ -164,7 +163,7 @@ def words_document(found: Words) -> Document:
     incoming, outgoing = found.interface
     return document_heading("words", found.comparison.design) | {
         "period_s": exact_text(found.comparison.period_s),
-        "band_hz": float(found.comparison.band_rad_s) / (2 * pi),
+        "band_hz": float(found.comparison.band_rad_s / (2 * pi())),
         "input_counts": [incoming.low, incoming.high],
         "output_counts": [outgoing.low, outgoing.high],
         "method": found.method,

@@ -6,8 +6,11 @@ Needs the extra ``target``.
 ``kernels.c`` and ``kernels.h`` beside this file are the yardstick: difference equations written by hand, of several
 formulations the one with the fewest instructions on each processor. They may use what emitted code may not: intrinsics,
 inline assembly, right shifts of negative numbers. Like is put beside like: the same coefficients, no clamp, no guard
-against what is not finite, where the kernel has none. The two controllers keep the clamped output in their history,
-which emitted code must not do; theirs serve as a measure of cost only.
+against what is not finite, where the kernel has none. The kernels of 32 bits keep the limited output in their history,
+where emitted code keeps the unlimited one in a word that holds it, here half as fine or a quarter: it multiplies by two
+or four after it has compared. Beside them stand the same equations with an output whose counts are so coarse that no
+limit can be reached: there emitted code compares nothing, as is proven, and the kernels still do. The two controllers
+keep the clamped output in their history, which emitted code must not do; theirs serve as a measure of cost only.
 
 Compiled alike, with ``-O2`` and nothing contracted; fed with the same inputs, saturating ones among them.
 """
@@ -83,15 +86,16 @@ def floats(
     return render_firmware(Emission("ours", realization, "", "", output_range=limits, guard_nonfinite=False))
 
 
-def integers(sections: Sections, structure: str, bits: int, sum_bits: int) -> dict[str, str]:
-    """The files of an emission in integers whose input and output fill the word."""
+def integers(sections: Sections, structure: str, bits: int, sum_bits: int, per_count: int = 1) -> dict[str, str]:
+    """The files of an emission in integers whose input and output fill the word; an output count is so many inputs."""
     numerator: tuple[Fraction, ...] = (Fraction(1),)
     for b, _ in sections:
         numerator = poly.multiply(numerator, tuple(map(Fraction, b)))
     bottoms = [(Fraction(1), *map(Fraction, a)) for _, a in sections]
     end = Port(-(1 << bits - 1), (1 << bits - 1) - 1, 0, f"int{bits}", Fraction(1))
     pulse = exact_pulse(numerator, bottoms, (), PERIOD_S)
-    realization = integer_realization(pulse, Interface(end, end), Widths(bits, sum_bits), structure)
+    ends = Interface(end, end._replace(per_count=Fraction(per_count)))
+    realization = integer_realization(pulse, ends, Widths(bits, sum_bits), structure)
     return render_integer_firmware(IntegerEmission("ours", realization, "", ""))
 
 
@@ -126,6 +130,14 @@ def pairs() -> list[Pair]:
             "int32 error feedback", "int32_error_feedback", words, integers(one, "error-feedback", 32, 64), beyond=NAMES
         ),
         Pair("int32 cascade of two", "int32_two_sections", words, integers(two, "cascade", 32, 64), beyond=NAMES),
+        *(
+            Pair(f"{says}, proven in range", kernel, words, integers(form, name, 32, 64, per_count), beyond=NAMES)
+            for says, kernel, form, name, per_count in (
+                ("int32 direct", "int32_direct_one", one, "direct", 4),
+                ("int32 error feedback", "int32_error_feedback", one, "error-feedback", 4),
+                ("int32 cascade of two", "int32_two_sections", two, "cascade", 16),
+            )
+        ),
         Pair("int16 direct", "int16_direct_one", shorts, direct_16, beyond=NAMES),
         Pair("int16 direct, by hand packed", "int16_packed", shorts, direct_16, beyond=NAMES),
     ]

@@ -8,6 +8,7 @@ from pathlib import Path
 import pytest
 
 from realize.design import design_from_text
+from realize.report.documents import compare_document
 from realize.report.terminal import WIDTH, compare_text, figures_table
 from realize.workflow import Comparison, compare
 
@@ -108,3 +109,61 @@ def test_the_screen_says_the_figure_that_is_left_and_up_to_what_it_was_agreed() 
         f"loop phase margin {check.obtained:.3g} deg, {check.reference - check.obtained:.3g} deg less than the "
         f"{check.reference:.3g} deg of the continuous loop with hold and delay, agreed up to 7 deg: short moves (MB)"
     ) in shown
+
+
+def checks_of(comparison: Comparison) -> list[str]:
+    """Lines of the table of checks."""
+    return compare_text(comparison).partition("Checks of ")[2].partition("\n  - ")[0].splitlines()[1:]
+
+
+#: Poles and zeros of seven digits, in units that are written out, at a rate that their band fits.
+FAST = """
+[design]
+transfer = "(s^2 + 246912*s + 1234567^2)/(s^2 + 469134*s + 2345678^2)"
+[sampling]
+rate = "10 MHz"
+[signals.input]
+range = [-1, 1]
+unit = "mm"
+per_count = "1/2000"
+[signals.output]
+range = [-1, 1]
+unit = "V"
+"""
+
+
+def test_pairs_of_long_poles_and_zeros_leave_the_table_of_checks_within_the_screen() -> None:
+    lines = checks_of(compared(FAST))
+    assert max(map(len, lines)) <= WIDTH
+    # -234567+-2333920j and -123456+-1228379j: sqrt(|p|^2 - (Re p)^2)
+    assert any(line.split()[3] == "-2.3e5+-2.33e6j" for line in lines if "pole shift" in line)
+    assert any(line.split()[3] == "-1.2e5+-1.23e6j" for line in lines if "zero shift" in line)
+
+
+def test_values_have_the_unit_of_the_signals_and_one_is_no_plural() -> None:
+    lines = checks_of(compared(FAST))
+    assert any(line.startswith("  low-frequency gain  V/mm ") for line in lines)
+    assert any(line.startswith("  saturation recovery V ") for line in lines)
+    integrating = FAST.replace('transfer = "', 'transfer = "1 + 4/s" #').replace("10 MHz", "1 kHz")
+    lines = checks_of(compared(integrating))
+    assert any(line.startswith("  low-frequency gain   V/mm/s  4 ") for line in lines)
+    assert any(line.split()[-3:] == ["1", "point", "undefined"] for line in lines)
+
+
+def test_limits_of_the_loop_are_told_as_limits() -> None:
+    lines = checks_of(compared(ROLLER_GAP))
+    assert any(line.startswith("  loop sensitivity ") and "  at most 2 " in line for line in lines)
+    near = ROLLER_GAP + '\n[tolerance]\nloop_phase_margin_least = "60 deg"\n'
+    lines = checks_of(compared(near))
+    assert any(line.startswith("  loop phase margin ") and "  at least 60 deg " in line for line in lines)
+
+
+def test_round_off_has_no_figure_by_method() -> None:
+    integers = (Path(__file__).parents[2] / "fixtures" / "roller_gap_int16.toml").read_text(encoding="utf-8")
+    (line,) = (line for line in checks_of(compared(integers)) if line.startswith("  round-off "))
+    assert line.split()[3] == "-"
+
+
+def test_a_band_in_hertz_is_as_the_design_gives_it() -> None:
+    text = FAST.replace("10 MHz", '1 kHz"\nband = "30 Hz')
+    assert compare_document(compared(text))["band_hz"] == 30

@@ -119,7 +119,7 @@ def _port(table: str, signal: Signal, arithmetic: str) -> Port:
             "a range that holds physical zero, where the state starts and rests",
             "measure the signal from a zero inside the range: change range, and offset by as many counts",
         )
-    _refuse_narrow_type(table, kind, low + signal.offset, high + signal.offset)
+    _refuse_narrow_type(table, kind, signal, low, high)
     return Port(low, high, signal.offset, kind, signal.per_count)
 
 
@@ -142,16 +142,41 @@ def _missing(ends: Sequence[tuple[str, Signal]], arithmetic: str) -> RealizeErro
     )
 
 
-def _refuse_narrow_type(table: str, kind: str, low: int, high: int) -> None:
+def _refuse_narrow_type(table: str, kind: str, signal: Signal, low: int, high: int) -> None:
+    """Refuse a type that cannot hold the counts; ``low`` and ``high`` without the offset."""
     least, most = type_range(kind)
-    if least <= low and high <= most:
+    if least <= low + signal.offset and high + signal.offset <= most:
         return
-    fitting = [name for name in TYPES if type_range(name)[0] <= low and high <= type_range(name)[1]]
     raise RealizeError(
         f"{table} type",
-        f"{kind}, although the range reaches from count {low} to {high}",
+        f"{kind}, although the range reaches from count {low + signal.offset} to {high + signal.offset}",
         f"counts from {least} to {most}",
-        f'write type = "{fitting[0]}", or check offset and per_count'
-        if fitting
-        else "a coarser per_count or a narrower range",
+        _nearest_fit(kind, signal, low, high),
     )
+
+
+def _nearest_fit(kind: str, signal: Signal, low: int, high: int) -> str:
+    """What makes the type hold the counts: an offset, one count less at the top, or another type."""
+    least, most = type_range(kind)
+    offset, advice = signal.offset, []
+    if least == 0 and low + offset < 0 and high - low <= most + 1:
+        offset = -low
+        advice.append(f"offset = {offset} makes the lowest count 0")
+    if low + offset >= least and high + offset == most + 1:
+        then = "then " if advice else ""
+        advice.append(f"the top end is {then}one count too high: range = {_one_count_less(signal)}")
+    if advice:
+        return "; ".join(advice)
+    ends = low + offset, high + offset
+    fitting = [name for name in TYPES if type_range(name)[0] <= ends[0] and ends[1] <= type_range(name)[1]]
+    if fitting:
+        return f'write type = "{fitting[0]}", or check offset and per_count'
+    return "a coarser per_count or a narrower range"
+
+
+def _one_count_less(signal: Signal) -> str:
+    """The range as a line of the file, its top end lower by a count."""
+    assert signal.range is not None
+    low, high = signal.range
+    below = str(low) if low.denominator == 1 else f'"{low}"'
+    return f'[{below}, "{high} - {signal.per_count}"]'

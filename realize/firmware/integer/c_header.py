@@ -20,7 +20,9 @@ from realize.firmware.c_preamble import (
     period_macros,
     period_text,
     range_text,
+    selftest_prototype,
     signatures,
+    unprotected,
 )
 from realize.firmware.c_text import comment, integer_constant, number_text, wrapped
 from realize.firmware.integer.c_source import UNUSED, kept, state_bits
@@ -86,7 +88,7 @@ def _preamble(emission: IntegerEmission, c: Spelling, silence: Quiet) -> list[st
         *listed("Expected, not proven", _expected(emission)),
         *loop_lines(emission.loop),
         *listed("Accepted deviations", [accepted_text(entry, emission.checks) for entry in emission.accepted]),
-        *listed("Not protected", _unprotected(c)),
+        *listed("Not protected", _unprotected(emission, c)),
         *listed("Method notes", emission.notes),
         *paragraph("Caution", CAUTION)[:-1],
     ]
@@ -109,6 +111,7 @@ def _provenance(emission: IntegerEmission) -> list[str]:
         ("input count", _count_text(interface.input, emission.input_unit)),
         ("output", f"the output (for a controller the command; so called below){_output_text(emission)}"),
         ("output count", _count_text(interface.output, emission.output_unit)),
+        ("gain", _gain(emission)),
         ("anti-windup", _anti_windup(emission)),
     ]
     return labelled(entries)
@@ -150,6 +153,13 @@ def _output_text(emission: IntegerEmission) -> str:
 def _count_text(port: Port, unit: str) -> str:
     zero = f"; count {port.offset} stands for 0" if port.offset else ""
     return f"{port_type(port)}; 1 count = {number_text(port.per_count)} {unit}".rstrip() + zero
+
+
+def _gain(emission: IntegerEmission) -> str:
+    """What a physical gain comes to in counts, for those who compare a coefficient with the design."""
+    per = f"{emission.output_unit} per {emission.input_unit}" if emission.input_unit else emission.output_unit
+    scale = number_text(emission.realization.program.interface.scale)
+    return f"a gain of {f'1 {per}'.rstrip()} is {scale} counts per count; coefficients are in counts"
 
 
 def _anti_windup(emission: IntegerEmission) -> str | None:
@@ -214,7 +224,7 @@ def _expected(emission: IntegerEmission) -> list[str]:
 def _quiet(emission: IntegerEmission, silence: Quiet) -> list[str]:
     """What is not answered, and what does not come to rest."""
     at_rest = _at_rest(silence, emission.realization.proof.output_error)
-    return [_deadband(silence), *_integration(silence.integration), at_rest]
+    return [_deadband(silence), *_integration(silence.integration, emission), at_rest]
 
 
 def _deadband(silence: Quiet) -> str:
@@ -232,33 +242,74 @@ def _side(sign: str, answer: Answered) -> str:
     return f"every {constant} from {counted(answer.counts, 'count')} on is answered, a smaller one perhaps"
 
 
-def _integration(found: Integration | None) -> list[str]:
+def _integration(found: Integration | None, emission: IntegerEmission) -> list[str]:
     if found is None:
         return []
+    integral = emission.realization.program.integral
+    several = integral is not None and len(integral.stored) > 1
     return [
-        "no increment of the integral is lost: one count of input, held, moves it by one count of output within "
-        f"{counted(found.samples_per_count, 'sample')}, and by the whole output range within {found.samples_to_limit}"
+        f"no increment of {'integral 1' if several else 'the integral'} is lost: one count of input, held, moves it by "
+        f"one count of output within {counted(found.samples_per_count, 'sample')}, and by the whole output range "
+        f"within {found.samples_to_limit}",
+        *(f"integral {i} stays within {most}" for i, most in _held_integrals(emission)),
     ]
 
 
+def _held_integrals(emission: IntegerEmission) -> list[tuple[int, str]]:
+    """Numbers of the integral states above the first, with the size each is held to."""
+    integral = emission.realization.program.integral
+    if integral is None:
+        return []
+    unit = Fraction(2) ** integral.word.fraction_bits
+    held = [(i, limits[1] / unit) for i, limits in enumerate(integral.limits, 1) if limits and i > 1]
+    return [(i, f"{number_text(most)} counts per sample{f'^{i - 1}' if i > 2 else ''}") for i, most in held]
+
+
 def _at_rest(silence: Quiet, error: Fraction) -> str:
+    found = _searched(silence)
     if silence.integration:
         if silence.dies_out:
             return "without input, the output comes to rest: there is no limit cycle"
         return (
             f"without input, the output settles within {ceiling_text(error)} counts of what the integral holds, its "
-            "own rounding and limit cycles included"
+            f"own rounding and limit cycles included{found}"
         )
     if silence.rests_at_zero:
         return "without input, the output comes to rest at zero: there is no limit cycle"
     most = counted(silence.largest_output, "count")
-    return f"without input, the output settles within {most} of zero, limit cycles included"
+    if silence.searched_output is not None:
+        cycle = counted(silence.searched_output, "count")
+        return (
+            f"without input, the output settles within {cycle} of zero, the largest limit cycle: found by searching "
+            f"every state; without the search, at most {most}"
+        )
+    return f"without input, the output settles within {most} of zero, limit cycles included{found}"
 
 
-def _unprotected(c: Spelling) -> list[str]:
+def _searched(silence: Quiet) -> str:
+    """Largest cycle of every section whose states were all searched, for behind a bound on all of them."""
+    sizes = [
+        (each.section, each.cycles.amplitude / Fraction(2) ** each.fraction_bits)
+        for each in silence.sections
+        if each.cycles.amplitude
+    ]
+    return "".join(
+        f"; the largest cycle of section {number} by itself, found by searching every state, is "
+        f"{ceiling_text(size)} count{'' if size == 1 else 's'}"
+        for number, size in sizes
+    )
+
+
+def _unprotected(emission: IntegerEmission, c: Spelling) -> list[str]:
     other = "coefficients other than those of the design: a sum may then overflow, which is undefined"
     return [
         *([other] if c.table else []),
+        *(f"an integral {i} that has to go beyond {most}: the rest is lost" for i, most in _held_integrals(emission)),
+        *unprotected(
+            emission,
+            "the limits of the input hide it, and any count between them is taken as it is",
+            follows_applied=_uses_applied(c),
+        ),
         "a null pointer, a state that was never cleared, two calls on one state at the same time",
     ]
 
@@ -356,6 +407,7 @@ def _prototypes(c: Spelling) -> list[str]:
         *comment(wrapped(_preset_says(c))),
         preset,
         "",
+        *selftest_prototype(c.name),
     ]
 
 

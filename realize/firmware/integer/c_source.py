@@ -22,7 +22,6 @@ from realize.firmware.integer.spelling import (
     WIDE,
     Spelling,
     Stored,
-    accumulator,
     alone,
     cast,
     constant,
@@ -31,6 +30,7 @@ from realize.firmware.integer.spelling import (
     is_wide,
     port_type,
     times,
+    width,
 )
 
 
@@ -89,7 +89,7 @@ def kept(c: Spelling) -> tuple[Kept, ...]:
         if not _is_top(each) and reads(rest, each.target)
     ]
     found += [
-        Kept(_discarded(each), c.field_bits(each.remainder), accumulator(each))
+        Kept(_discarded(each), c.field_bits(each.remainder), c.accumulator(each))
         for each in c.program.outputs
         if each.remainder
     ]
@@ -210,7 +210,7 @@ def _roundings(c: Spelling) -> set[_Division]:
     keys = {_division(c, each) for each in (*c.program.sums, *_settled_sums(c)) if each.shift}
     gains = (gain for section in c.settling.sections for gain in section.gains)
     keys |= {_Division(PRODUCT_BITS, gain.shift, True) for gain in gains if gain.shift > 0}
-    settled = _Division(accumulator(c.program.command), c.settling.shift, True)
+    settled = _Division(width(c.program.command.bits), c.settling.shift, True)
     return keys | ({settled} if c.settling.shift else set())
 
 
@@ -219,7 +219,7 @@ def _settled_sums(c: Spelling) -> list[Sum]:
 
 
 def _division(c: Spelling, each: Sum) -> _Division:
-    return _Division(accumulator(each), each.shift, not c.keeps_half(each))
+    return _Division(c.accumulator(each), each.shift, not c.keeps_half(each))
 
 
 def _rounding_name(c: Spelling, division: _Division) -> str:
@@ -505,7 +505,7 @@ def _moves(c: Spelling) -> list[Block]:
 
 def _given_back(c: Spelling) -> list[Block]:
     return [
-        _assigned(c, each.remainder, _discarded(each), accumulator(each))
+        _assigned(c, each.remainder, _discarded(each), c.accumulator(each))
         for each in c.program.outputs
         if each.remainder
     ]
@@ -531,7 +531,7 @@ def _discarded(each: Sum) -> str:
 
 def _sum(c: Spelling, each: Sum) -> list[Block]:
     """A sum with its proven bound, rounded, and what it is for."""
-    bits, name = accumulator(each), f"{each.target.removeprefix('state.')}_sum"
+    bits, name = c.accumulator(each), f"{each.target.removeprefix('state.')}_sum"
     pieces = c.pieces(each.terms, bits, each.remainder)
     blocks = []
     if len(each.terms) == 1 and each.terms[0].name is None and not each.remainder:
@@ -541,7 +541,7 @@ def _sum(c: Spelling, each: Sum) -> list[Block]:
         if c.by_columns(each.terms, bits):
             lines = [f"#ifdef {_columns_macro(c)}", *_by_columns(c, each, name), "#else", *lines, "#endif"]
         half = [f"    /* {c.variable(str(each.remainder))} has the half that rounds */"] if c.keeps_half(each) else []
-        blocks.append(Block(name, [*half, *_proven(c, f"{each.target} (sum)"), *lines]))
+        blocks.append(Block(name, [*half, *_proven(c, f"{each.target} (sum)", bits), *lines]))
     rounded = f"{_rounding_name(c, _division(c, each))}({name})" if each.shift else name
     if each.remainder:
         rounded_name = f"{each.target}_rounded"
@@ -579,12 +579,13 @@ def _bare(text: str, bits: int, wanted: int) -> str:
     return text[1:-1] if bits == wanted and text.startswith("(") and text.endswith(")") else text
 
 
-def _proven(c: Spelling, variable: str) -> list[str]:
-    """The bound of a sum as a comment."""
+def _proven(c: Spelling, variable: str, bits: int) -> list[str]:
+    """The bound of a sum as a comment, and how far it is from filling its type."""
     if variable not in c.bounds:
         return []
     bound = c.bounds[variable]
-    spare = f"{bound.spare_bits} bit{'' if bound.spare_bits == 1 else 's'} to spare of {bound.bits}"
+    room = bits - 1 - bound.largest.bit_length()
+    spare = f"{room} bit{'' if room == 1 else 's'} to spare of {bits}"
     return [f"    /* proven: {-bound.largest - 1} <= sum <= {bound.largest}, {spare} */"]
 
 
@@ -616,7 +617,7 @@ def _integral(c: Spelling, integral: Integral, i: int) -> list[Block]:
     if c.program.hold:
         held = f"    if (!{c.name}_pushes({increment}, {COMMAND}, command)) {{"
         moved = [held, *(f"    {line}" for line in moved), "    }"]
-    return [Block(increment, lines), Block(None, [*_proven(c, f"state.integral{i} (sum)"), *moved])]
+    return [Block(increment, lines), Block(None, [*_proven(c, f"state.integral{i} (sum)", bits), *moved])]
 
 
 # ---------------------------------------------------------------- coming to rest
@@ -659,7 +660,7 @@ def _settled_integral(c: Spelling) -> list[Block]:
     """What the command lacks goes into the first state; those above keep it still, as far as their limits let them."""
     integral, settling, command = c.program.integral, c.settling, c.program.command
     assert integral is not None
-    bits = accumulator(command)
+    bits = width(command.bits)
     wanted = f"({cast('wanted', ctype(c.command_bits), ctype(bits))}{times(1 << command.shift)})"
     pieces = [] if not settling.rest else c.pieces(settling.rest, bits)
     blocks = [_local("wanted", c.command_bits, f"{c.name}_{APPLIED_COUNT}(output)")]

@@ -1,4 +1,4 @@
-"""From an emission in integers to the text of its four files."""
+"""From an emission in integers to the text of its five files."""
 
 from __future__ import annotations
 
@@ -8,12 +8,13 @@ from realize.firmware.integer.c_header import header_text
 from realize.firmware.integer.c_source import source_text
 from realize.firmware.integer.emission import IntegerEmission
 from realize.firmware.integer.record import record_text
+from realize.firmware.integer.selftest import selftest_text
 from realize.firmware.integer.spelling import Spelling
 from realize.firmware.integer.vectors import vectors_text
 
 
 def render_integer_firmware(emission: IntegerEmission) -> dict[str, str]:
-    """The four files of an emission.
+    """The five files of an emission.
 
     Parameters
     ----------
@@ -23,7 +24,7 @@ def render_integer_firmware(emission: IntegerEmission) -> dict[str, str]:
     Returns
     -------
     dict
-        File name and text of header, source, vectors and record, in this order. The same emission gives the same
+        File name and text of header, source, self-test, vectors and record, in this order. The same emission gives the same
         bytes everywhere.
 
     Raises
@@ -37,6 +38,7 @@ def render_integer_firmware(emission: IntegerEmission) -> dict[str, str]:
     files = {
         f"{name}.h": header_text(emission, spelling, silence),
         f"{name}.c": source_text(spelling),
+        f"{name}_selftest.c": selftest_text(emission),
         f"{name}_vectors.csv": vectors_text(emission),
     }
     return files | {f"{name}.record.json": record_text(emission, files, silence)}

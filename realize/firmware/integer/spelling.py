@@ -113,6 +113,14 @@ class Spelling:
         """Of a variable's type."""
         return self.field_bits(variable) if variable.startswith("state.") else self.local_bits(variable)
 
+    def accumulator(self, each: Sum) -> int:
+        """Of a sum's type: narrower than what is there for it where the proof lets it, which no table may change."""
+        variables = [*(term.variable for term in each.terms), *([each.remainder] if each.remainder else [])]
+        bound = self.bounds.get(f"{each.target} (sum)")
+        if self.table or bound is None or any(self.variable_bits(name) == WIDE for name in variables):
+            return width(each.bits)
+        return min(width(each.bits), width(bound.largest.bit_length() + 1))
+
     @property
     def command_largest(self) -> int:
         """No larger magnitude is rounded from the command's sum."""
@@ -266,11 +274,6 @@ def joined(signed: Sequence[tuple[bool, str]]) -> list[str]:
         f"{'- ' if minus else '+ '}{text}" if k else f"{'-' if minus else ''}{text}"
         for k, (minus, text) in enumerate(signed)
     ]
-
-
-def accumulator(each: Sum) -> int:
-    """Bits of a sum's type."""
-    return width(each.bits)
 
 
 def width(bits: int) -> int:

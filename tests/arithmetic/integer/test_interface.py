@@ -100,7 +100,17 @@ ERRORS: dict[str, tuple[Signal, Signal, tuple[str, ...]]] = {
     "unsigned without an offset": (
         signal("-10", "10", "1/200", 0, "uint16"),
         GOOD,
-        ("uint16, although", "counts from 0 to 65535", "check offset and per_count"),
+        ("uint16, although", "counts from 0 to 65535", "offset = 2000 makes the lowest count 0"),
+    ),
+    "only the last count is too much": (
+        signal("-10", "10", "10/32768", 0, "int16"),
+        GOOD,
+        ("to 32768", 'the top end is one count too high: range = [-10, "10 - 5/16384"]'),
+    ),
+    "unsigned, and the last count is too much": (
+        signal("-10", "10", "10/32768", 0, "uint16"),
+        GOOD,
+        ("offset = 32768 makes the lowest count 0; the top end is then one", 'range = [-10, "10 - 5/16384"]'),
     ),
     "no type is wide enough": (
         signal("-10", "10", "1/1000000000"),

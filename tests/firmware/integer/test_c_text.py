@@ -87,6 +87,22 @@ def test_every_sum_of_several_terms_has_its_proven_bound_beside_it() -> None:
     assert re.search(says, source)
 
 
+def test_no_sum_of_32_bit_variables_is_wider_than_is_proven_that_it_needs() -> None:
+    """A long product counts by its size, as the sum it stands in does."""
+    wide, narrow = 0, 0
+    for one in GRID:
+        header, source = texts(one)
+        long = re.findall(r"int64_t (\w+);", header.partition("} ")[0])
+        for largest, kind, terms in re.findall(
+            r"proven: -\d+ <= sum <= (\d+), .*?const (int\d+_t) \w+_sum = (.*?);", source, re.DOTALL
+        ):
+            if one.coefficients == "inline" and not any(f"state->{name}" in terms for name in long):
+                assert (kind == "int64_t") == (int(largest) >= 1 << 31)
+                wide, narrow = wide + (kind == "int64_t"), narrow + (kind == "int32_t")
+    assert wide
+    assert narrow
+
+
 @pytest.mark.parametrize("sign", ["subtract", "add"])
 def test_recursion_sign_is_that_of_the_stored_text(sign: str) -> None:
     one = emission("x", "lead", "cascade", WIDTHS[0], options=("none", "inline", sign))
