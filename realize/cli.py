@@ -212,7 +212,8 @@ def emit(design: str, as_json: bool, out: str, dependencies: str | None, **optio
 
     \b
     Example: realize emit roller_gap.toml --out firmware
-    Writes firmware/roller_gap.h, .c, _vectors.csv and .record.json.
+    Writes firmware/roller_gap.h, .c, _selftest.c, _vectors.csv and
+    .record.json.
     """
     from realize.firmware.files import write_all
     from realize.firmware.job import emit as emit_design

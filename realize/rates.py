@@ -13,6 +13,7 @@ from fractions import Fraction
 from math import pi
 from typing import Any, NamedTuple
 
+from realize.arithmetic.formats import FORMATS
 from realize.band import band_edge
 from realize.design import Design, design_from_resolved
 from realize.errors import RealizeError
@@ -131,8 +132,9 @@ def rates(
     Raises
     ------
     RealizeError
-        When the range is empty or the grid too fine.
+        When the range is empty or the grid too fine, or the signals do not suit integer arithmetic.
     """
+    _check_signals(design)
     edge, sentence = _edge(design)
     base_hz = Fraction(edge) / Fraction(2 * pi)
     grid = _grid(low_hz or LOWEST_MULTIPLE * base_hz, high_hz or HIGHEST_MULTIPLE * base_hz, points)
@@ -206,6 +208,14 @@ def _grid(low_hz: Fraction, high_hz: Fraction, points: int) -> tuple[Fraction, .
 
 _design: Design | None = None
 _only: str | None = None
+
+
+def _check_signals(design: Design) -> None:
+    """Find once what no rate can mend, instead of every method refusing it at every rate."""
+    if design.target.arithmetic not in FORMATS:
+        from realize.arithmetic.integer import interface_of
+
+        interface_of(design.input, design.output, design.target.arithmetic)
 
 
 def _load(resolved: dict[str, Any], only: str | None) -> None:

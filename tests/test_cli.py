@@ -132,19 +132,21 @@ def test_compare_of_an_improper_design_says_which_roll_off_it_assumed(run: Any) 
     assert "assumed, since the design has no [rolloff]" in " ".join(run("compare", IMPROPER).out.split())
 
 
-def test_emit_writes_four_files_and_the_same_bytes_again(run: Any, tmp_path: Path) -> None:
+def test_emit_writes_five_files_and_the_same_bytes_again(run: Any, tmp_path: Path) -> None:
     first, second = tmp_path / "first", tmp_path / "second"
     assert run("emit", ROLLER_GAP, "--out", str(first)).status == 0
     assert run("emit", ROLLER_GAP, "--out", str(second)).status == 0
     names = sorted(path.name for path in first.iterdir())
-    assert names == ["roller_gap.c", "roller_gap.h", "roller_gap.record.json", "roller_gap_vectors.csv"]
+    assert names == [
+        *("roller_gap.c", "roller_gap.h", "roller_gap.record.json", "roller_gap_selftest.c", "roller_gap_vectors.csv")
+    ]
     assert all((first / name).read_bytes() == (second / name).read_bytes() for name in names)
 
 
 def test_emit_document_holds_the_record(run: Any, tmp_path: Path) -> None:
     document = run("emit", ROLLER_GAP, "--out", str(tmp_path), "--json").document
     assert [Path(path).name for path in document["written"]] == [
-        *("roller_gap.h", "roller_gap.c", "roller_gap_vectors.csv", "roller_gap.record.json")
+        *("roller_gap.h", "roller_gap.c", "roller_gap_selftest.c", "roller_gap_vectors.csv", "roller_gap.record.json")
     ]
     assert document["record"] == json.loads((tmp_path / "roller_gap.record.json").read_text())
 

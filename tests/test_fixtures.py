@@ -16,6 +16,9 @@ REFUSED = {
     "levitation": "stability",
 }
 
+#: Of the names of what is emitted.
+ENDS = (".h", ".c", "_selftest.c", "_vectors.csv", ".record.json")
+
 EMITTED = sorted(path.stem for path in FIXTURES.glob("*.toml") if path.stem not in REFUSED)
 
 
@@ -26,7 +29,7 @@ def test_there_are_at_least_seven_designs_that_emit() -> None:
 @pytest.mark.parametrize("name", EMITTED)
 def test_emits(name: str) -> None:
     emitted = emit(load_design(str(FIXTURES / f"{name}.toml")))
-    assert sorted(emitted.files) == sorted(f"{name}{end}" for end in (".h", ".c", "_vectors.csv", ".record.json"))
+    assert sorted(emitted.files) == sorted(f"{name}{end}" for end in ENDS)
     assert emitted.chosen.acceptable
 
 

@@ -86,3 +86,13 @@ def test_screen_and_document_agree(found) -> None:  # type: ignore[no-untyped-de
 def test_an_empty_range_is_refused(low: Fraction | None, high: Fraction | None, points: int, named: str) -> None:
     with pytest.raises(RealizeError, match=named):
         rates(design_from_text(LAG, "test.toml"), low_hz=low, high_hz=high, points=points)
+
+
+def test_signals_that_no_rate_can_mend_are_refused_once_and_not_by_every_method() -> None:
+    design = design_from_text(
+        '[design]\ntransfer = "1/(s + 10)"\n[target]\narithmetic = "int16"\n[signals.input]\nrange = [-1, 1]\n',
+        "one.toml",
+    )
+    with pytest.raises(RealizeError) as caught:
+        rates(design, points=2)
+    assert "per_count" in caught.value.found

@@ -18,6 +18,7 @@ from realize.firmware.c_text import (
     definition,
     dialect,
     hexadecimal,
+    reads,
     statement,
     variable,
     wrapped,
@@ -266,7 +267,12 @@ def _functions(c: Dialect, sample: Sample, settling: Settling) -> list[str]:
 
 
 def _statements(c: Dialect, steps: Sequence[Step]) -> list[str]:
-    return [line for step in steps for line in _statement(c, step)]
+    """Steps from the last to the first, but for a guard of what nothing after it reads."""
+    lines: list[str] = []
+    for step in reversed(steps):
+        if not isinstance(step, Guard) or reads("\n".join(lines), step.target):
+            lines = [*_statement(c, step), *lines]
+    return lines
 
 
 def _statement(c: Dialect, step: Step) -> list[str]:
@@ -323,7 +329,9 @@ def _return_unless_finite(c: Dialect, names: Sequence[str]) -> list[str]:
 def _possible(c: Dialect, settling: Settling) -> list[str]:
     zero = c.literal(0.0)
     if settling.integrating:
-        return [f"    return input >= {zero} && input <= {zero} && wanted >= output && wanted <= output;"]
+        reached = [step for step in settling.steps if isinstance(step, Limit) and step.target == "wanted"]
+        within = " && wanted >= output && wanted <= output" if reached else ""
+        return [f"    return input >= {zero} && input <= {zero}{within};"]
     bound, floor = c.coefficient("settled_bound"), c.coefficient("settled_floor")
     return [
         f"    const {c.real} difference = command - output;",

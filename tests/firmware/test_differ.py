@@ -56,7 +56,7 @@ def test_a_changed_gain_is_told_as_value_behaviour_coefficients_and_files(tmp_pa
     assert list(rows(found, "Design")) == [("values.k", "5", "6")]
     assert list(rows(found, "Behaviour")) == [("answer at once", "49.444", "59.333"), ("gain at rest", "5", "6")]
     assert [what for what, _, _ in rows(found, "Coefficients")] == ["section 1 b0", "section 1 b1"]
-    assert [what for what, _, _ in rows(found, "Files")] == ["lead.h", "lead.c", "lead_vectors.csv"]
+    assert [what for what, _, _ in rows(found, "Files")] == ["lead.h", "lead.c", "lead_selftest.c", "lead_vectors.csv"]
     # The same in every unit that the gain does not scale.
     assert {row.group for row in found.rows} <= {"Design", "Behaviour", "Checks", "Coefficients", "Files"}
 

@@ -119,7 +119,8 @@ def test_the_design_is_recorded_as_it_was_given() -> None:
 def test_rendering_twice_gives_the_same_bytes_in_the_same_order() -> None:
     for emission in DESIGNS[:12]:
         first, second = render_firmware(emission), render_firmware(emission._replace(output_range=UNIT_RANGE))
-        assert list(first) == [f"{emission.name}{end}" for end in (".h", ".c", "_vectors.csv", ".record.json")]
+        ends = (".h", ".c", "_selftest.c", "_vectors.csv", ".record.json")
+        assert list(first) == [f"{emission.name}{end}" for end in ends]
         assert list(render_firmware(emission).items()) == list(first.items())
         assert first.keys() == second.keys()
         assert all(text.isascii() and text.endswith("\n") and "\r" not in text for text in first.values())

@@ -24,8 +24,8 @@ def render_integer_firmware(emission: IntegerEmission) -> dict[str, str]:
     Returns
     -------
     dict
-        File name and text of header, source, self-test, vectors and record, in this order. The same emission gives the same
-        bytes everywhere.
+        File name and text of header, source, self-test, vectors and record, in this order. The same emission gives the
+        same bytes everywhere.
 
     Raises
     ------

@@ -1,0 +1,134 @@
+"""Static analysis finds nothing in any emitted file: every structure, format, storage and anti-windup.
+
+What is switched off is listed with its reason; everything else of the families named is on.
+"""
+
+from __future__ import annotations
+
+import subprocess
+import sys
+from concurrent.futures import ThreadPoolExecutor
+from pathlib import Path
+
+import pytest
+
+from realize.arithmetic.integer import STRUCTURES
+from realize.firmware import render_firmware, write_all
+from realize.firmware.integer import IntegerEmission, render_integer_firmware
+from tests.firmware.designs import grid
+from tests.firmware.integer.designs import WIDTHS
+from tests.firmware.integer.designs import grid as integer_grid
+
+TOOLS = Path(sys.executable).parent
+
+#: Families of clang-tidy that are on.
+FAMILIES = ("bugprone", "cert", "clang-analyzer", "misc", "performance", "portability", "readability")
+
+#: Checks of them that are off, and why.
+OFF = {
+    "bugprone-easily-swappable-parameters": "an input and an output of one type are what a controller has",
+    "bugprone-implicit-widening-of-multiplication-result": "two 16-bit halves are multiplied in 32 bits, which fits",
+    "bugprone-misplaced-widening-cast": "a product proven to fit 32 bits is made in 32 bits and widened on purpose",
+    "bugprone-signed-bitwise": "what is shifted is unsigned; only the count, a literal, is an int",
+    "misc-include-cleaner": "<stdint.h> comes through the header of the same name, on purpose",
+    "misc-redundant-expression": "infinity less itself is how a self-test makes what is not a number",
+    "readability-magic-numbers": "limits and binary points are the design's, named in the comments beside them",
+    "readability-redundant-parentheses": "a sum or a test of one part keeps the parentheses of one of many",
+    "readability-redundant-casting": "one spelling for factors of every width: a few casts are to the type they have",
+    "readability-uppercase-literal-suffix": "the suffixes f, u and ull are the common spelling; l alone is not used",
+    "readability-math-missing-parentheses": "a * b + c is read as in mathematics; warnings of compilers stay on",
+    "readability-use-concise-preprocessor-directives": "#if !defined is what stands beside the other conditions",
+}
+
+#: What cppcheck would say that does not apply, and why.
+SUPPRESSED = {
+    "missingIncludeSystem": "it needs no system header, and says so",
+    "unusedFunction": "the caller is the user's code",
+    "staticFunction": "likewise",
+    "constParameterPointer": "a function has one signature in every design, whether or not it moves the state",
+    "unmatchedSuppression": "not every set of files has all that is listed here",
+    "checkersReport": "a summary of its own run",
+}
+
+#: What <float.h> of every processor that is asked for says; cppcheck reads no system header.
+FLOAT_H = (
+    *("-DFLT_EVAL_METHOD=0", "-DFLT_RADIX=2", "-DFLT_MANT_DIG=24", "-DFLT_MIN_EXP=-125", "-DFLT_MAX_EXP=128"),
+    *("-DDBL_MANT_DIG=53", "-DDBL_MIN_EXP=-1021", "-DDBL_MAX_EXP=1024"),
+)
+
+
+@pytest.fixture(scope="module")
+def files(tmp_path_factory: pytest.TempPathFactory) -> list[Path]:
+    """C of a set that has every structure in every format, and every option."""
+    where = tmp_path_factory.mktemp("analysed")
+    chosen = list(grid())[::9]
+    kinds = {
+        (e.realization.format.name, e.realization.structure, e.anti_windup, e.coefficients): e for e in reversed(chosen)
+    }
+    for each in kinds.values():
+        write_all(where, render_firmware(each))
+    found: dict[tuple[object, ...], IntegerEmission] = {}
+    for one in integer_grid():
+        found.setdefault((one.realization.structure, one.realization.widths), one)
+        found.setdefault((one.anti_windup, one.coefficients, one.realization.widths.bits), one)
+    assert {(structure, widths) for structure in STRUCTURES for widths in WIDTHS} - {*found} == set()
+    for one in {one.name: one._replace(name=f"i{one.name}") for one in found.values()}.values():
+        write_all(where, render_integer_firmware(one))
+    return sorted(where.glob("*.c"))
+
+
+def complaints(tool: str, options: tuple[str, ...], after: tuple[str, ...], files: list[Path]) -> str:
+    """What a tool says of files, in two processes."""
+
+    def run(some: list[Path]) -> str:
+        command = [str(part) for part in (TOOLS / tool, *options, *some, *after)]
+        done = subprocess.run(command, capture_output=True, text=True, check=False)
+        assert done.returncode in (0, 1), done.stderr
+        return "\n".join(
+            line for line in (done.stdout + done.stderr).splitlines() if ": " in line and line.endswith("]")
+        )
+
+    with ThreadPoolExecutor(2) as pool:
+        return "".join(pool.map(run, (files[::2], files[1::2])))
+
+
+def tidy(off: dict[str, str]) -> tuple[str, ...]:
+    checks = ",".join(("-*", *(f"{family}-*" for family in FAMILIES), *(f"-{check}" for check in off)))
+    return "--quiet", f"--checks={checks}"
+
+
+CPPCHECK = (
+    *("--enable=all", "--check-level=exhaustive", "--inconclusive", "--std=c99", "--quiet", *FLOAT_H),
+    *(f"--suppress={name}" for name in SUPPRESSED),
+)
+
+
+def test_clang_tidy_finds_nothing(files: list[Path]) -> None:
+    assert complaints("clang-tidy", tidy(OFF), ("--", "-std=c99"), files) == ""
+
+
+def test_clang_tidy_finds_nothing_in_the_code_for_short_products(files: list[Path]) -> None:
+    integers = [path for path in files if path.name.startswith("i") and "selftest" not in path.name]
+    after = ("--", "-std=c99", "-D__ARM_ARCH_6M__")
+    assert complaints("clang-tidy", tidy(OFF), after, integers) == ""
+
+
+def test_cppcheck_finds_nothing(files: list[Path]) -> None:
+    assert complaints("cppcheck", CPPCHECK, (), files) == ""
+
+
+FAULTS = {
+    "static int f(int x) { int unset; if (x) unset = 1; return unset; } int g(int x); int g(int x) { return f(x); }": (
+        "clang-tidy",
+        "clang-analyzer-core.uninitialized",
+    ),
+    "int g(int x); int g(int x) { int a[2] = {0, 0}; a[2] = x; return a[0]; }": ("cppcheck", "arrayIndexOutOfBounds"),
+}
+
+
+@pytest.mark.parametrize(("source", "found"), FAULTS.items())
+def test_a_fault_is_found(tmp_path: Path, source: str, found: tuple[str, str]) -> None:
+    (tmp_path / "fault.c").write_text(source)
+    tool, name = found
+    options, after = (tidy(OFF), ("--", "-std=c99")) if tool == "clang-tidy" else (CPPCHECK, ())
+    assert name in complaints(tool, options, after, [tmp_path / "fault.c"])
