@@ -28,8 +28,9 @@ def test_every_compiler_passes_without_a_warning_or_a_trap(bench: Bench, number:
 
 def test_it_reaches_every_branch_but_those_of_the_preset_that_nothing_finite_takes(bench: Bench) -> None:
     """It refuses each number of its state that is not finite, and hardly a design can make every one so."""
-    names = [emission.name for emission in GRID]
-    found = missed(bench, bench.emitted(GRID), names)
+    some = GRID[::3]
+    names = [emission.name for emission in some]
+    found = missed(bench, bench.emitted(some), names)
     assert {function for function in found if not function.endswith("_preset")} == set()
 
 
