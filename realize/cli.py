@@ -140,7 +140,9 @@ def rates(design: str, as_json: bool, low: str | None, high: str | None, points:
 
     A method's rate is the lowest from which all higher ones in the range pass every check. The
     design's own rate is not needed, and a method that the design file names does not hide the
-    others: --method does. Progress goes to standard error.
+    others: --method does. Progress goes to standard error: a bar on a terminal, else a line for
+    each tenth. Exit status 0 whether or not a method has such a rate; 2 when the design has an error
+    that no rate mends.
 
     \b
     Example: realize rates roller_gap.toml --from "200 Hz" --to "20 kHz"
@@ -168,14 +170,19 @@ def _count(text: str, where: str) -> int:
 
 
 def _with_progress(length: int) -> Callable[[Iterator[Any]], Iterator[Any]]:
-    """Pass results on one by one, with a bar on standard error where that is a terminal."""
+    """Pass results on one by one; on standard error a bar, or a line for each tenth where that is no terminal."""
 
-    def follow(results: Iterator[Any]) -> Iterator[Any]:
-        hidden = not sys.stderr.isatty()
-        with click.progressbar(results, length=length, label="rates", file=sys.stderr, hidden=hidden) as bar:
-            yield from bar
+    def bar(results: Iterator[Any]) -> Iterator[Any]:
+        with click.progressbar(results, length=length, label="rates", file=sys.stderr) as shown:
+            yield from shown
 
-    return follow
+    def lines(results: Iterator[Any]) -> Iterator[Any]:
+        for done, result in enumerate(results, 1):
+            if done * 10 // length > (done - 1) * 10 // length:
+                click.echo(f"rates: {done} of {length}", err=True)
+            yield result
+
+    return bar if sys.stderr.isatty() else lines
 
 
 @commands.command(short_help="Put structures and word lengths of integers side by side.")

@@ -14,7 +14,7 @@ from math import pi
 from typing import Any, NamedTuple
 
 from realize.arithmetic.formats import FORMATS
-from realize.band import band_edge
+from realize.band import SAMPLES_PER_BAND_PERIOD, band_edge
 from realize.design import Design, design_from_resolved
 from realize.errors import RealizeError
 from realize.quantity import format_engineering, round_significant
@@ -157,11 +157,18 @@ def answer(found: Rates) -> str:
         return f"{only.method} is not acceptable at {_hz(found.rates_hz[-1])}, the highest rate: {only.binding}"
     if not able:
         return "no method is acceptable up to the highest rate of the range"
-    names = "; ".join(f"{m.method} from {_hz(m.lowest_hz)}" for m in able)
+    names = "; ".join(f"{m.method} from {lowest_text(m)}" for m in able)
     binding = able[0].binding
     if binding is None:
         return f"{names}; the lowest rate of the range is good enough for {able[0].method}"
     return f"{names}; below {_hz(able[0].lowest_hz)} {binding} binds"
+
+
+def lowest_text(method: MethodRates) -> str:
+    """The lowest rate of a method; where that is the lowest of the range, nothing is known below it."""
+    if method.lowest_hz is None:
+        return "-"
+    return _hz(method.lowest_hz) + (" or lower" if method.binding is None else "")
 
 
 def _hz(rate: Fraction | None) -> str:
@@ -177,7 +184,7 @@ def _edge(design: Design) -> tuple[Fraction, str]:
         if found is not None:
             return found
     edge, sentence = band_edge(design.transfer, None, design.band_rad_s)
-    return edge, sentence + _why_assumed(design)
+    return edge, sentence + _why_assumed(design) + _where_judged(design)
 
 
 def _why_assumed(design: Design) -> str:
@@ -188,6 +195,16 @@ def _why_assumed(design: Design) -> str:
 
     reason = unmeasured_crossover(design, design.transfer)
     return f"; {reason}" if reason else ""
+
+
+def _where_judged(design: Design) -> str:
+    """For the sentence on the band: where none is given, it goes with the rate."""
+    if design.band_rad_s is not None:
+        return ""
+    return (
+        f"; each rate is judged in its own band, at most 1/{SAMPLES_PER_BAND_PERIOD} of it, so that compare at the "
+        "design's rate may assume another; [sampling] band sets one for all"
+    )
 
 
 def _grid(low_hz: Fraction, high_hz: Fraction, points: int) -> tuple[Fraction, ...]:
@@ -263,13 +280,20 @@ def _what_failed(outcome: Outcome) -> str:
 def _rules(design: Design, base_hz: float) -> tuple[str, ...]:
     """Rules of thumb, both from memory: the books were not at hand."""
     rules = [
-        f"20 to 40 times the bandwidth (Franklin, Powell & Workman): {20 * base_hz:.4g} to "
-        f"{40 * base_hz:.4g} Hz, the band edge or crossover standing in for the bandwidth"
+        f"20 to 40 times the bandwidth (Franklin, Powell & Workman): {_span(20 * base_hz, 40 * base_hz)}, "
+        "the band edge or crossover standing in for the bandwidth"
     ]
     rise_s = _rise_time_s(design)
     if rise_s:
-        rules.append(f"4 to 10 samples per rise time (Astrom & Wittenmark): {4 / rise_s:.4g} to {10 / rise_s:.4g} Hz")
+        rules.append(f"4 to 10 samples per rise time (Astrom & Wittenmark): {_span(4 / rise_s, 10 / rise_s)}")
     return tuple(rules)
+
+
+def _span(low_hz: float, high_hz: float) -> str:
+    """Both ends, the unit once where it is the same: ``1.2 to 2.4 kHz``."""
+    low, high = (_hz(round_significant(Fraction(end), _DIGITS)) for end in (low_hz, high_hz))
+    unit = high.rpartition(" ")[1:]
+    return f"{low.removesuffix(''.join(unit))} to {high}"
 
 
 def _rise_time_s(design: Design) -> float | None:

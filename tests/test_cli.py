@@ -401,3 +401,17 @@ def test_lines_to_paste_are_not_wrapped(run: Any, tmp_path: Path, monkeypatch: p
     narrow, wide = (answer[answer.index("\n\n[rolloff]") :] for answer in answers)
     assert narrow == wide
     assert max(map(len, wide.splitlines())) > 20
+
+
+def test_rates_tells_its_progress_in_plain_lines_where_standard_error_is_no_terminal(run: Any) -> None:
+    answer = run("rates", "1/(0.01*s + 1)", "--points", "20", "--method", "bilinear", "--json")
+    assert answer.err.splitlines() == [f"rates: {done} of 20" for done in range(2, 21, 2)]
+    assert json.loads(answer.out)["command"] == "rates"
+
+
+def test_rates_refuses_once_what_no_rate_mends(run: Any, tmp_path: Path) -> None:
+    text = Path(ROLLER_GAP).with_name("roller_gap_int16.toml").read_text().replace("offset = 4200", "offset = 0")
+    (tmp_path / "gap.toml").write_text(text)
+    answer = run("rates", str(tmp_path / "gap.toml"), "--points", "2")
+    assert (answer.status, answer.out) == (2, "")
+    assert "[signals.output] type: uint16, although the range reaches from count -4200 to 4200" in answer.err

@@ -35,6 +35,35 @@ def test_the_outcomes_are_those_of_a_comparison_at_that_rate(found) -> None:  # 
     assert {m.method: m.acceptable for m in one.methods} == {m.method: m.outcomes[3].acceptable for m in found.methods}
 
 
+def test_where_the_lowest_rate_tried_passes_nothing_is_claimed_below_it() -> None:
+    good = rates(design_from_text(LAG + '[method]\nname = "bilinear"\n', "t"), low_hz=Fraction(500), points=2)
+    bilinear = next(m for m in good.methods if m.method == "bilinear")
+    assert (bilinear.lowest_hz, bilinear.binding) == (500, None)
+    assert "bilinear from 500 Hz or lower; " in answer(good)
+    assert "500 Hz or lower  nothing: it passes over the whole range" in rates_text(good)
+
+
+def test_the_own_rate_is_at_least_as_many_times_the_least_where_the_least_is_the_lowest_tried() -> None:
+    text = LAG + 'rate = "1 kHz"\n[method]\nname = "bilinear"\n'
+    good = rates(design_from_text(text, "test.toml"), low_hz=Fraction(500), points=2)
+    assert "the design's own 1 kHz is at least 2 times the least for bilinear" in rates_text(good)
+
+
+@pytest.mark.parametrize(("band", "said"), [("", True), ('[sampling]\nband = "16 Hz"\n', False)])
+def test_an_assumed_band_is_said_to_go_with_the_rate_and_a_given_one_is_not(band: str, said: bool) -> None:
+    text = '[design]\ntransfer = "1/(0.01*s + 1)"\n' + band
+    screen = " ".join(rates_text(rates(design_from_text(text, "test.toml"), points=2)).split())
+    assert ("each rate is judged in its own band, at most 1/30 of it, so that compare" in screen) is said
+
+
+def test_rules_of_thumb_are_in_the_prefix_that_suits_them_the_unit_once_where_it_is_the_same() -> None:
+    # 20 and 40 times 16 Hz, 60 Hz and 30 Hz.
+    spans = {"16": "320 to 640 Hz", "60": "1.2 to 2.4 kHz", "30": "600 Hz to 1.2 kHz"}
+    for band, span in spans.items():
+        (rule,) = rates(design_from_text(LAG.replace("16 Hz", f"{band} Hz"), "test.toml"), points=2).rules
+        assert f": {span}, the band edge" in rule
+
+
 def test_the_default_range_is_4_to_200_times_the_band(found) -> None:  # type: ignore[no-untyped-def]
     assert found.rates_hz[0] == 64
     assert found.rates_hz[-1] == 3200

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
 from fractions import Fraction
+from functools import lru_cache
 from typing import NamedTuple
 
 from realize.algebra import polynomial as poly
@@ -85,8 +86,9 @@ class Rest(NamedTuple):
     zeros: tuple[Factor, ...]
 
 
+@lru_cache(maxsize=8)
 def split_integral(pulse: PulseTransferFunction) -> tuple[tuple[Fraction, ...], Rest]:
-    """``R_1, R_2, ...`` and the rest, by the Taylor series at z = 1."""
+    """``R_1, R_2, ...`` and the rest, by the Taylor series at z = 1; kept, because every structure asks for it."""
     poles = _factors(root for root in pulse.poles if root.value != 0)
     order = sum(root.multiplicity for root in pulse.poles if root.value == 0)
     if order == 0:

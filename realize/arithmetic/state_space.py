@@ -12,6 +12,8 @@ from collections.abc import Callable, Sequence
 from fractions import Fraction
 from functools import reduce
 from itertools import accumulate
+from math import lcm
+from operator import mul
 from typing import NamedTuple
 
 from realize.algebra import polynomial as poly
@@ -19,6 +21,7 @@ from realize.errors import RealizeError
 
 Vector = tuple[Fraction, ...]
 Matrix = tuple[Vector, ...]
+Integers = tuple[tuple[int, ...], ...]
 
 #: ``b`` and ``a`` of a section in ascending powers of 1/z, ``a`` without its leading 1.
 Coefficients = tuple[Sequence[Fraction | int], Sequence[Fraction | int]]
@@ -169,13 +172,23 @@ def paths(system: StateSpace) -> tuple[tuple[PulseRatio, ...], ...]:
 
     Notes
     -----
-    ``adj(zI - A)`` and the characteristic polynomial by the recursion of Faddeev and LeVerrier, exactly.
+    ``adj(zI - A)`` and the characteristic polynomial by the recursion of Faddeev and LeVerrier, exactly: in integers,
+    each matrix in a unit of its own, which a common denominator is.
     """
-    adjugate, bottom = _adjugate(system.A)
-    terms = [_multiply(_multiply(system.C, N), system.B) for N in adjugate]
+    (A, unit), (B, unit_in), (C, unit_out) = (_in_integers(matrix) for matrix in (system.A, system.B, system.C))
+    adjugate, coefficients = _adjugate(A)
+    bottom = tuple(Fraction(c, unit**k) for k, c in enumerate(coefficients))
+    terms = [_multiply(_multiply(C, N), B) for N in adjugate]
+    units = [unit_in * unit_out * unit**k for k in range(len(terms))]
     return tuple(
         tuple(
-            pulse_ratio(poly.add(poly.scale(bottom, d), poly.trimmed(term[i][j] for term in terms)), bottom)
+            pulse_ratio(
+                poly.add(
+                    poly.scale(bottom, d),
+                    poly.trimmed(Fraction(term[i][j], size) for term, size in zip(terms, units, strict=True)),
+                ),
+                bottom,
+            )
             for j, d in enumerate(row)
         )
         for i, row in enumerate(system.D)
@@ -238,29 +251,32 @@ def _sum(first: PulseRatio, second: PulseRatio) -> PulseRatio:
     return pulse_ratio(poly.add(*crossed), poly.multiply(first.denominator, second.denominator))
 
 
-def _adjugate(A: Matrix) -> tuple[list[Matrix], poly.Rationals]:
-    """Coefficients of ``adj(zI - A)`` and of ``det(zI - A)``, descending powers of z."""
+def _in_integers(matrix: Matrix) -> tuple[Integers, int]:
+    """A matrix times the common denominator of its entries, and that."""
+    unit = lcm(*(c.denominator for row in matrix for c in row))
+    return tuple(tuple(c.numerator * (unit // c.denominator) for c in row) for row in matrix), unit
+
+
+def _adjugate(A: Integers) -> tuple[list[Integers], list[int]]:
+    """Coefficients of ``adj(zI - A)`` and of ``det(zI - A)``, descending powers of z: integers as those of A are."""
     n = len(A)
-    adjugate, bottom = [], [Fraction(1)]
-    N = _identity(n)
+    adjugate, bottom = [], [1]
+    N: Integers = tuple(tuple(int(i == j) for j in range(n)) for i in range(n))
     for k in range(1, n + 1):
         adjugate.append(N)
         AN = _multiply(A, N)
-        bottom.append(-sum((AN[i][i] for i in range(n)), Fraction(0)) / k)
+        bottom.append(-sum(AN[i][i] for i in range(n)) // k)
         N = tuple(tuple(c + bottom[-1] * (i == j) for j, c in enumerate(row)) for i, row in enumerate(AN))
-    return adjugate, tuple(bottom)
+    return adjugate, bottom
 
 
 def _identity(n: int) -> Matrix:
     return tuple(tuple(Fraction(i == j) for j in range(n)) for i in range(n))
 
 
-def _multiply(first: Matrix, second: Matrix) -> Matrix:
-    columns = _transposed(second)
-    return tuple(
-        tuple(sum((a * b for a, b in zip(row, column, strict=True) if a and b), Fraction(0)) for column in columns)
-        for row in first
-    )
+def _multiply(first: Integers, second: Integers) -> Integers:
+    columns = list(zip(*second, strict=True))
+    return tuple(tuple(sum(map(mul, row, column)) for column in columns) for row in first)
 
 
 def _transposed(rows: Sequence[Vector]) -> Matrix:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from realize.quantity import format_engineering
-from realize.rates import REFUSED, MethodRates, Rates, answer
+from realize.rates import REFUSED, MethodRates, Rates, answer, lowest_text
 from realize.report.documents import Document
 from realize.report.documents import heading as document_heading
 from realize.report.terminal import bullets, heading, table, wrapped
@@ -16,7 +16,7 @@ def rates_text(found: Rates) -> str:
     low, high = (format_engineering(rate, "Hz") for rate in (found.rates_hz[0], found.rates_hz[-1]))
     setting = [f"{len(found.rates_hz)} rates from {low} to {high}, on a logarithmic grid", found.rests_on]
     head = ["method", "lowest rate", "what binds there"]
-    rows = [[m.method, _lowest(m), _binding(m)] for m in found.methods]
+    rows = [[m.method, lowest_text(m), _binding(m)] for m in found.methods]
     setting += _own_rate(found)
     blocks = [first, "".join(wrapped(line, indent="  ") for line in setting), table([head, *rows])]
     refused = [f"{m.method}: {(m.binding or '').removeprefix(REFUSED)}" for m in found.methods if _is_refused(m)]
@@ -32,11 +32,9 @@ def _own_rate(found: Rates) -> list[str]:
     own_hz = 1 / found.design.period_s
     chosen = next((m for m in able if m.method == found.design.method), min(able, key=lambda m: m.lowest_hz or 0))
     times = float(own_hz / (chosen.lowest_hz or 1))
-    return [f"the design's own {format_engineering(own_hz, 'Hz')} is {times:.3g} times the least for {chosen.method}"]
-
-
-def _lowest(method: MethodRates) -> str:
-    return "-" if method.lowest_hz is None else format_engineering(method.lowest_hz, "Hz")
+    least = "at least " if chosen.binding is None else ""
+    own = format_engineering(own_hz, "Hz")
+    return [f"the design's own {own} is {least}{times:.3g} times the least for {chosen.method}"]
 
 
 def _binding(method: MethodRates) -> str:

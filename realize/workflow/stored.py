@@ -6,7 +6,7 @@ several, which differ in cost and in what rounding does: they are tried from the
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import replace
 from fractions import Fraction
 from math import inf
@@ -26,7 +26,7 @@ from realize.workflow.causal import signals_of
 from realize.workflow.gate import gate
 
 if TYPE_CHECKING:
-    from realize.arithmetic.integer import IntegerRealization, Interface, StructureChoice
+    from realize.arithmetic.integer import IntegerRealization, Interface, Rounded, StructureChoice
 
 #: Relative width of a peak gain that a tolerance is compared with.
 _GAIN_WIDTH = Fraction(1, 1 << 10)
@@ -161,27 +161,90 @@ def float_numbers(
     return Stored(stored, as_stored, _checks(design, reference, as_stored, lambda: _float_simulation(design, stored)))
 
 
+class _Coarse(NamedTuple):
+    """A structure whose coefficients alone are out of tolerance; orders by how far, then by its place."""
+
+    out: tuple[int, float]
+    place: int
+    made: Rounded
+
+
 def _integers(design: Design, reference: ContinuousReference, pulse: PulseTransferFunction) -> Stored:
-    """The cheapest structure that is within every tolerance; without one, the first that is least out."""
+    """The cheapest structure that is within every tolerance; without one, the first that is least out.
+
+    A proof costs far more than the checks of coefficients, so that those which are out by these wait. What a proof
+    adds takes a structure farther out: where it is in doubt which is least out, the nearest are proven first. (Room
+    that a proof finds wanting makes coefficients coarser; all checks judge them again.)
+    """
     # Here, because a design in floating point does not need it, and its start is short.
     from realize.arithmetic.integer import choices, interface_of
 
     interface = interface_of(design.input, design.output, design.target.arithmetic)
-    tried: list[tuple[str, Stored, tuple[Check, ...]]] = []
-    refusals: dict[str, Refused] = {}
-    for choice in choices(pulse, interface, design.target.arithmetic, design.target.structure, refusals):
+    unsuited: dict[str, Refused] = {}
+    order = choices(pulse, interface, design.target.arithmetic, design.target.structure, unsuited)
+    refused = [(-1, name, refusal) for name, refusal in unsuited.items()]
+    failed: list[tuple[str, tuple[Check, ...]]] = []
+    proven: list[tuple[tuple[int, float], int, Stored]] = []
+    coarse: list[_Coarse] = []
+    judge = _CoefficientJudge(design, reference)
+    for place, choice in enumerate(order):
         try:
-            stored = integer_numbers(design, reference, pulse, interface, choice)
+            made = _rounded(design, pulse, interface, choice)
+            blocking = judge(made.pulse)
+            if blocking:
+                coarse.append(_Coarse(_out(blocking), place, made))
+            else:
+                stored = _proven(design, reference, made)
+                blocking, _ = gate(stored.checks, design.accept)
+                proven.append((_out(blocking), place, stored))
         except Refused as refusal:
-            refusals.setdefault(choice.structure, refusal)
+            refused.append((place, choice.structure, refusal))
             continue
-        blocking, _ = gate(stored.checks, design.accept)
         if not blocking:
-            return stored._replace(note=_because(design, choice, tried, refusals))
-        tried.append((choice.structure, stored, blocking))
-    if not tried:
-        raise _none_does(design, refusals)
-    return min(tried, key=lambda entry: _out(entry[2]))[1]
+            return stored._replace(note=_because(design, choice, failed, dict.fromkeys(name for _, name, _ in refused)))
+        failed.append((choice.structure, blocking))
+    return _least_out(design, reference, proven, coarse, refused)
+
+
+class _CoefficientJudge:
+    """What blocks by the coefficients alone; kept, for widths of sums often leave them as they are."""
+
+    def __init__(self, design: Design, reference: ContinuousReference) -> None:
+        self._design, self._reference = design, reference
+        self._known: dict[object, tuple[Check, ...]] = {}
+
+    def __call__(self, pulse: PulseTransferFunction) -> tuple[Check, ...]:
+        key = pulse.numerator, pulse.denominator
+        if key not in self._known:
+            checks = _checks(self._design, self._reference, pulse)
+            self._known[key], _ = gate(checks, self._design.accept)
+        return self._known[key]
+
+
+def _least_out(
+    design: Design,
+    reference: ContinuousReference,
+    proven: Sequence[tuple[tuple[int, float], int, Stored]],
+    coarse: Sequence[_Coarse],
+    refused: Sequence[tuple[int, str, Refused]],
+) -> Stored:
+    """The first that is least out, the rest proven only as far as it takes to know."""
+    found, refusals = list(proven), list(refused)
+    for each in sorted(coarse, key=lambda each: each[:2]):
+        if found and min(entry[:2] for entry in found) < each[:2]:
+            break
+        try:
+            stored = _proven(design, reference, each.made)
+        except Refused as refusal:
+            refusals.append((each.place, each.made.structure, refusal))
+            continue
+        found.append((_out(gate(stored.checks, design.accept)[0]), each.place, stored))
+    if not found:
+        first: dict[str, Refused] = {}
+        for _, name, why in sorted(refusals, key=lambda entry: entry[0]):
+            first.setdefault(name, why)
+        raise _none_does(design, first)
+    return min(found, key=lambda entry: entry[:2])[2]
 
 
 def integer_numbers(
@@ -198,12 +261,22 @@ def integer_numbers(
     Refused
         When its words cannot hold the design.
     """
-    from realize.arithmetic.integer import integer_realization, stored_integer_pulse
+    return _proven(design, reference, _rounded(design, pulse, interface, choice))
+
+
+def _rounded(design: Design, pulse: PulseTransferFunction, interface: Interface, choice: StructureChoice) -> Rounded:
+    from realize.arithmetic.integer import rounded
 
     target = design.target
     tracking = pulse.period_s / target.tracking_time_s if target.tracking_time_s else Fraction(0)
     hold = target.anti_windup == HOLD_INTEGRAL
-    stored = integer_realization(pulse, interface, choice.widths, choice.structure, hold=hold, tracking=tracking)
+    return rounded(pulse, interface, choice.widths, choice.structure, hold=hold, tracking=tracking)
+
+
+def _proven(design: Design, reference: ContinuousReference, made: Rounded) -> Stored:
+    from realize.arithmetic.integer import proven_realization, stored_integer_pulse
+
+    stored = proven_realization(made)
     _refuse_silent(stored)
     as_stored = stored_integer_pulse(stored)
     checks = _checks(design, reference, as_stored, lambda: _integer_simulation(stored))
@@ -238,8 +311,8 @@ def _round_off(design: Design, stored: IntegerRealization) -> Check:
 def _because(
     design: Design,
     choice: StructureChoice,
-    tried: Sequence[tuple[str, Stored, tuple[Check, ...]]],
-    refusals: Mapping[str, Refused],
+    failed: Sequence[tuple[str, tuple[Check, ...]]],
+    refused: Iterable[str],
 ) -> str:
     """Why a structure was taken."""
     plural = "" if choice.multiplications == 1 else "s"
@@ -249,8 +322,8 @@ def _because(
     chosen = f"structure {choice.structure}: {cost}"
     if design.target.structure != "auto":
         return chosen
-    cheaper = [f"{name} ({', '.join(dict.fromkeys(c.check for c in out))} out)" for name, _, out in tried]
-    left = dict.fromkeys([*cheaper, *(f"{name} (refused)" for name in refusals)])
+    cheaper = [f"{name} ({', '.join(dict.fromkeys(c.check for c in out))} out)" for name, out in failed]
+    left = dict.fromkeys([*cheaper, *(f"{name} (refused)" for name in refused)])
     others = f"; not {', '.join(left)}" if left else ""
     return f"{chosen}, the cheapest that is within every tolerance{others}"
 
@@ -293,11 +366,11 @@ def _checks(
     design: Design,
     reference: ContinuousReference,
     as_stored: PulseTransferFunction,
-    simulation: Callable[[], Simulation],
+    simulation: Callable[[], Simulation] | None = None,
 ) -> tuple[Check, ...]:
-    """Checks of the stored numbers."""
+    """Checks of the stored numbers; without a simulation those of their coefficients."""
     signals, tolerances = signals_of(design), Tolerances.of(design.tolerance)
-    simulate = simulation() if signals.output_range else None
+    simulate = simulation() if simulation and signals.output_range else None
     checks = run_checks(reference, as_stored, "stored", tolerances, signals, simulate=simulate)
     return _with_added_growth(checks, reference.transfer, as_stored)
 

@@ -11,8 +11,11 @@ from realize.arithmetic.integer.model import IntegerRecursion
 from realize.arithmetic.integer.realization import (
     WIDTHS,
     IntegerRealization,
+    Rounded,
     Widths,
     integer_realization,
+    proven_realization,
+    rounded,
     rounded_pulse,
     stored_integer_pulse,
 )
@@ -24,11 +27,14 @@ __all__ = [
     "IntegerRecursion",
     "Interface",
     "Port",
+    "Rounded",
     "StructureChoice",
     "Widths",
     "choices",
     "integer_realization",
     "interface_of",
+    "proven_realization",
+    "rounded",
     "rounded_pulse",
     "stored_integer_pulse",
 ]

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
 from fractions import Fraction
+from functools import lru_cache
 from typing import NamedTuple
 
 from realize.algebra import polynomial as poly
@@ -154,8 +155,9 @@ class Coefficients(NamedTuple):
         return tuple(self.gain * c for c in self.numerator)
 
 
-def layouts(rest: Rest, structure: str, scales: Sequence[Fraction] | None = None) -> Layout:
-    """Lay out the rest of a pulse transfer function.
+@lru_cache(maxsize=64)
+def layouts(rest: Rest, structure: str, scales: tuple[Fraction, ...] | None = None) -> Layout:
+    """Lay out the rest of a pulse transfer function; kept, because every width of words and sums asks for it.
 
     Parameters
     ----------
@@ -163,7 +165,7 @@ def layouts(rest: Rest, structure: str, scales: Sequence[Fraction] | None = None
         In counts of output per count of input.
     structure : str
         Key of :data:`STRUCTURES`.
-    scales : sequence of Fraction, optional
+    scales : tuple of Fraction, optional
         A factor for the numerator of each section, where numerators are chosen anew.
 
     Raises

@@ -69,8 +69,7 @@ def proven(
     overflowing: tuple[Bound, ...] = ()
     for _ in range(_MOST_ATTEMPTS):
         program = quantized(layout, interface, choice, integration, needs)
-        _refuse_lost_poles(layout, program)
-        _refuse_lost_gains(layout, program)
+        refuse_lost(layout, program)
         proof = prove(program)
         if proof is None:
             raise _without_bound()
@@ -115,6 +114,18 @@ def _without_bound() -> Refused:
 
 
 # ---------------------------------------------------------------- what rounding must leave
+
+
+def refuse_lost(layout: Layout, program: Program) -> None:
+    """Refuse stored numbers without a proof that have lost what no check could judge.
+
+    Raises
+    ------
+    Refused
+        When a stored pole does not decay, or a section has lost its gain.
+    """
+    _refuse_lost_poles(layout, program)
+    _refuse_lost_gains(layout, program)
 
 
 def _refuse_lost_poles(layout: Layout, program: Program) -> None:

@@ -14,7 +14,7 @@ from math import ceil
 from typing import NamedTuple
 
 from realize.arithmetic.integer.interface import Interface
-from realize.arithmetic.integer.layout import Addend, Equation, Layout
+from realize.arithmetic.integer.layout import SINGLE, Addend, Equation, Layout
 from realize.arithmetic.integer.poles import refuse_growing
 from realize.arithmetic.integer.program import COMMAND, INPUT, Integral, Program, Sum, Term, Word
 from realize.arithmetic.peak_gain import peak_gain
@@ -167,7 +167,10 @@ def ideal_room(layout: Layout, interface: Interface) -> Room:
     """
     refuse_growing(layout)
     largest = interface.input.reach
-    equations = (*layout.outputs, Equation(COMMAND, layout.command), *layout.updates)
+    # As they are without rounding, so that structures that differ in it alone ask once.
+    unrounded = [each._replace(words=SINGLE, shaped=False) for each in (*layout.outputs, *layout.updates)]
+    outputs, updates = unrounded[: len(layout.outputs)], unrounded[len(layout.outputs) :]
+    equations = (*outputs, Equation(COMMAND, layout.command), *updates)
     reach = {INPUT: Fraction(largest)}
     for name, gain in _ideal_gains(equations, layout.moves).items():
         if gain is None:

@@ -13,7 +13,7 @@ from realize.arithmetic.integer.interface import Interface
 from realize.arithmetic.integer.layout import Layout, Ratio, layouts
 from realize.arithmetic.integer.program import INPUT, Program
 from realize.arithmetic.integer.proof import Proof
-from realize.arithmetic.integer.proving import proven
+from realize.arithmetic.integer.proving import proven, refuse_lost
 from realize.arithmetic.integer.quantize import WIDEST, Choice, Integration, Needs, Room, ideal_room, quantized
 from realize.arithmetic.realization import exact_pulse
 from realize.errors import Refused
@@ -83,6 +83,36 @@ class IntegerRealization:
         return _direct_gain(self.layout, self.program)
 
 
+class Rounded(NamedTuple):
+    """Coefficients of a structure as they are rounded first; nothing is proven.
+
+    Attributes
+    ----------
+    structure, widths, layout, numerators_anew, period_s
+        As in :class:`IntegerRealization`.
+    program : Program
+        What a sample does, unless a proof finds that something needs more room.
+    ideal : Room
+        For which its binary points were chosen.
+    integration : Integration
+        What is integrated.
+    """
+
+    structure: str
+    widths: Widths
+    layout: Layout
+    numerators_anew: bool
+    period_s: Fraction
+    program: Program
+    ideal: Room
+    integration: Integration
+
+    @property
+    def pulse(self) -> PulseTransferFunction:
+        """What the coefficients are, exactly, in physical units."""
+        return _pulse(self.layout, self.program, self.period_s)
+
+
 def integer_realization(
     pulse: PulseTransferFunction,
     interface: Interface,
@@ -92,7 +122,26 @@ def integer_realization(
     hold: bool = True,
     tracking: Fraction = Fraction(0),
 ) -> IntegerRealization:
-    """Split, lay out, choose binary points, round, and prove.
+    """Split, lay out, choose binary points, round, and prove: :func:`rounded`, then :func:`proven_realization`.
+
+    Raises
+    ------
+    Refused
+        As these.
+    """
+    return proven_realization(rounded(pulse, interface, widths, structure, hold=hold, tracking=tracking))
+
+
+def rounded(
+    pulse: PulseTransferFunction,
+    interface: Interface,
+    widths: Widths,
+    structure: str,
+    *,
+    hold: bool = True,
+    tracking: Fraction = Fraction(0),
+) -> Rounded:
+    """Split, lay out, choose binary points, and round: cheap beside a proof.
 
     Parameters
     ----------
@@ -110,15 +159,30 @@ def integer_realization(
     Raises
     ------
     Refused
-        When the structure does not suit the poles, no bound exists, or the words do not suffice; the message says
-        which, and what would do.
+        When the structure does not suit the poles, the words do not suffice, or a pole or gain is lost; the message
+        says which, and what would do.
     """
     rest, integration = _in_counts(pulse, interface, hold, tracking)
     _refuse_one_sided(interface, integration)
     _refuse_zero(rest, integration)
-    layout, ideal, anew = _rounded_well(rest, structure, interface, widths, integration)
-    program, proof = proven(layout, interface, Choice(*widths), integration, ideal)
-    return IntegerRealization(structure, widths, program, proof, layout, anew, pulse.period_s)
+    well = _rounded_well(rest, structure, interface, widths, integration)
+    refuse_lost(well.layout, well.program)
+    return Rounded(structure, widths, well.layout, well.anew, pulse.period_s, well.program, well.ideal, integration)
+
+
+def proven_realization(made: Rounded) -> IntegerRealization:
+    """Prove what was rounded; where something may overflow, with binary points that give it more room.
+
+    Raises
+    ------
+    Refused
+        When no bound exists, or the words do not suffice.
+    """
+    choice = Choice(*made.widths)
+    program, proof = proven(made.layout, made.program.interface, choice, made.integration, made.ideal)
+    return IntegerRealization(
+        made.structure, made.widths, program, proof, made.layout, made.numerators_anew, made.period_s
+    )
 
 
 def rounded_pulse(
@@ -146,9 +210,8 @@ def rounded_pulse(
     # A range that fits any word: coefficients do not depend on it, and the input's own bits are another question.
     interface = interface._replace(input=interface.input._replace(low=-1, high=1))
     widths = Widths(bits, WIDEST)
-    layout, ideal, _ = _rounded_well(rest, structure, interface, widths, integration)
-    program = quantized(layout, interface, Choice(*widths), integration, Needs(ideal, ideal))
-    return _pulse(layout, program, pulse.period_s)
+    well = _rounded_well(rest, structure, interface, widths, integration)
+    return _pulse(well.layout, well.program, pulse.period_s)
 
 
 def _in_counts(
@@ -160,9 +223,16 @@ def _in_counts(
     return rest._replace(gain=rest.gain * interface.scale), Integration(scaled, hold, tracking)
 
 
-def _rounded_well(
-    rest: Rest, structure: str, interface: Interface, widths: Widths, integration: Integration
-) -> tuple[Layout, Room, bool]:
+class _Well(NamedTuple):
+    """A layout, its program, the room it was made for, and whether its numerators were scaled."""
+
+    layout: Layout
+    program: Program
+    ideal: Room
+    anew: bool
+
+
+def _rounded_well(rest: Rest, structure: str, interface: Interface, widths: Widths, integration: Integration) -> _Well:
     """The layout whose gains rounding keeps better: as it is, or with numerators scaled to the rounded denominators.
 
     Binary points are chosen for the first in any case: the factors are 1 to within what rounding does.
@@ -170,17 +240,17 @@ def _rounded_well(
     layout = layouts(rest, structure)
     ideal = ideal_room(layout, interface)
     needs = Needs(ideal, ideal)
-    program = quantized(layout, interface, Choice(*widths), integration, needs)
-    scales = _rescaled(layout, program)
+    plain = _Well(layout, quantized(layout, interface, Choice(*widths), integration, needs), ideal, False)
+    scales = _rescaled(layout, plain.program)
     if scales is None:
-        return layout, ideal, False
+        return plain
     anew = layouts(rest, structure, scales)
     try:
-        other = quantized(anew, interface, Choice(*widths), integration, needs)
+        other = _Well(anew, quantized(anew, interface, Choice(*widths), integration, needs), ideal, True)
     except Refused:
-        return layout, ideal, False
-    better = _gain_error(layout, anew, other) < _gain_error(layout, layout, program)
-    return (anew, ideal, True) if better else (layout, ideal, False)
+        return plain
+    better = _gain_error(layout, anew, other.program) < _gain_error(layout, layout, plain.program)
+    return other if better else plain
 
 
 def stored_integer_pulse(stored: IntegerRealization) -> PulseTransferFunction:
