@@ -22,17 +22,19 @@ from realize.arithmetic.integer import (
     interface_of,
     rounded_pulse,
 )
+from realize.arithmetic.integer.quantize import WIDEST
 from realize.arithmetic.integer.quiet import FEW_SAMPLES, FEW_STATES, Quiet, quiet
 from realize.arithmetic.realization import Realization
-from realize.checks import Check, ContinuousReference, Tolerances, run_checks
+from realize.checks import Check, ContinuousReference
 from realize.design import Design
 from realize.errors import Refused
 from realize.transfer import PulseTransferFunction
 from realize.workflow import Comparison, choose, refuse_unacceptable
-from realize.workflow.causal import signals_of
 from realize.workflow.compare import loop_setting_of
 from realize.workflow.gate import gate
-from realize.workflow.stored import integer_numbers, stored_numbers
+from realize.workflow.integers import integer_numbers
+from realize.workflow.stored import checks_of_stored
+from realize.workflow.target import stored_numbers
 
 if TYPE_CHECKING:
     from realize.loop_design import LoopSetting
@@ -40,22 +42,6 @@ if TYPE_CHECKING:
 #: Shortest and longest word that is tried: below 6 bits a coefficient of a section has no room for sign and integer
 #: part and three fraction bits; above 32 there is no target.
 SHORTEST_BITS, LONGEST_BITS = 6, 32
-
-#: Sums while word lengths are searched, so that they are not what fails.
-WIDEST = 64
-
-#: Checks of the coefficients, not of what the arithmetic does with them.
-_OF_COEFFICIENTS = (
-    "stability",
-    "pole shift",
-    "zero shift",
-    "magnitude in band",
-    "phase in band",
-    "low-frequency gain",
-    "step deviation",
-    "step overshoot",
-    "converter step",
-)
 
 
 class Row(NamedTuple):
@@ -283,7 +269,9 @@ def _needs(bench: _Bench, structure: str, rows: Sequence[Row]) -> StructureWords
     tried = sorted({*enough, *(bits for bits, able in known.items() if able)})
     if not known.get(LONGEST_BITS):
         return StructureWords(structure, enough[0] if enough else None, None)
-    words = next(b for b in tried if known.get(b) or _row(bench, structure, Widths(b, WIDEST)).acceptable)
+    words = next(
+        b for b in tried if known.get(b) or _row(bench, structure, Widths(b, WIDEST)).acceptable
+    )  # sums are not what fails
     return StructureWords(structure, min([words, *enough]), words)
 
 
@@ -293,7 +281,5 @@ def _coefficients_suffice(bench: _Bench, structure: str, bits: int) -> bool:
         pulse = rounded_pulse(bench.unrounded, bench.interface, bits, structure)
     except Refused:
         return False
-    signals, tolerances = signals_of(bench.design), Tolerances.of(bench.design.tolerance)
-    checks = run_checks(bench.reference, pulse, "stored", tolerances, signals)
-    blocking, _ = gate([c for c in checks if c.check in _OF_COEFFICIENTS], bench.design.accept)
+    blocking, _ = gate(checks_of_stored(bench.design, bench.reference, pulse), bench.design.accept)
     return not blocking

@@ -6,7 +6,7 @@ from realize.algebra.expression.tokens import printable
 from realize.firmware.audit import Audit, Finding, Opinion
 from realize.firmware.audit.second_opinion import Part
 from realize.report.documents import SCHEMA, Document
-from realize.report.terminal import bullets, heading, wrapped
+from realize.report.paragraphs import bullets, heading, wrapped
 from realize.version import VERSION
 
 #: Kinds of difference, in the order in which they are told, with what heads them.

@@ -7,7 +7,7 @@ from itertools import groupby
 from realize.algebra.expression.tokens import printable
 from realize.firmware.differ import Difference, Row
 from realize.report.documents import SCHEMA, Document
-from realize.report.terminal import WIDTH, bullets, heading, table, wrapped
+from realize.report.paragraphs import WIDTH, bullets, heading, table, wrapped
 
 #: What a table adds to its cells: an indent, and two gaps.
 _FRAME = 6

@@ -8,7 +8,7 @@ from fractions import Fraction
 from realize.algebra.expression import exact_text
 from realize.quantity import format_engineering
 from realize.report.documents import SCHEMA, Document
-from realize.report.terminal import bullets, heading, table, wrapped
+from realize.report.paragraphs import bullets, heading, table, wrapped
 from realize.trial.outcome import Attempt, Difference, Trial, least_median_most
 
 #: What heads the table, two lines a column; and the column that is there with a clock only.

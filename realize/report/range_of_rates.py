@@ -6,7 +6,7 @@ from realize.quantity import format_engineering
 from realize.rates import REFUSED, MethodRates, Rates, answer, lowest_text
 from realize.report.documents import Document
 from realize.report.documents import heading as document_heading
-from realize.report.terminal import bullets, heading, table, wrapped
+from realize.report.paragraphs import bullets, heading, table, wrapped
 
 
 def rates_text(found: Rates) -> str:

@@ -7,9 +7,8 @@ digits.
 from __future__ import annotations
 
 import re
-from collections.abc import Callable, Iterable, Mapping, Sequence, Set
+from collections.abc import Callable, Mapping, Sequence, Set
 from math import log, pi
-from textwrap import fill
 from typing import TYPE_CHECKING, Any
 
 from realize.algebra.expression.printing import format_transfer
@@ -20,16 +19,13 @@ from realize.design import Design
 from realize.quantity import format_engineering
 from realize.realizability import Assessment
 from realize.report.documents import natural_frequency_and_damping
+from realize.report.paragraphs import AGREED, OUT, WIDTH, bullets, figures_table, heading, table, wrapped
 from realize.rolloff import Proposal, rolloff_toml
 from realize.workflow import Comparison, MethodResult
+from realize.workflow.results import OF_ARITHMETIC
 
 if TYPE_CHECKING:
     from realize.loop_design import LoopResult
-
-WIDTH = 100
-
-#: The space between a number and its unit.
-_UNIT_AFTER_NUMBER = re.compile(r"([0-9]) (?=(?:%|Hz|kHz|MHz|rad/s|deg|dB|s|ms|us)(?![A-Za-z]))")
 
 #: An exponent of ten, as Python pads it.
 _EXPONENT = re.compile(r"e\+?(-?)0*")
@@ -69,12 +65,6 @@ _LOOP_COLUMNS = (
     ("step", "overshoot", "%"),
     ("overshoot", "gained", "points"),
 )
-
-#: What stands behind a figure that is out, and behind one that is out but agreed to.
-_OUT, _AGREED = "!", "*"
-
-#: Checks of the arithmetic alone: nothing stands against them by method.
-_OF_ARITHMETIC = ("round-off",)
 
 #: Longest unit made of those of the signals that the table of checks has room for: two more than ``rad/s``.
 _LONGEST_UNIT = 7
@@ -462,7 +452,7 @@ def _cell(method: MethodResult, name: str) -> str:
 
 def _mark(method: MethodResult, check: Check) -> str:
     accepted = any(c is check for c, _ in method.accepted)
-    return _AGREED if accepted else _OUT if check.verdict == "out" else ""
+    return AGREED if accepted else OUT if check.verdict == "out" else ""
 
 
 def _checks_block(result: MethodResult, design: Design) -> str:
@@ -546,7 +536,7 @@ def _check_row(stored: Check, exact: Check, agreed: Set[str], design: Design, di
         _value_unit(stored, design),
         _value_text(stored.reference, digits),
         _value_text(stored.obtained, digits),
-        "-" if stored.check in _OF_ARITHMETIC else _figure(exact.difference),
+        "-" if stored.check in OF_ARITHMETIC else _figure(exact.difference),
         _figure(stored.difference),
         _tolerance_text(stored, design),
         verdict,
@@ -630,50 +620,3 @@ def _in_hz(rad_s: float) -> str:
 
 def _count(n: int, noun: str) -> str:
     return f"{n or 'no'} {noun}{'' if n == 1 else 's'}"
-
-
-def heading(text: str) -> str:
-    """A line above a block."""
-    return f"{text}\n"
-
-
-def bullets(items: Iterable[str]) -> str:
-    """One item a line, wrapped."""
-    return "".join(wrapped(item, indent="  - ", rest="    ") for item in items)
-
-
-def wrapped(text: str, indent: str = "", rest: str | None = None) -> str:
-    """A paragraph within the width; a number stays with its unit."""
-    follow = indent if rest is None else rest
-    whole = _UNIT_AFTER_NUMBER.sub("\\1\0", text)
-    lines = fill(whole, WIDTH, initial_indent=indent, subsequent_indent=follow, break_on_hyphens=False)
-    return lines.replace("\0", " ") + "\n"
-
-
-def table(rows: Sequence[Sequence[str]], *, right_from: int | None = None) -> str:
-    """Columns flush left, each as wide as its widest cell, two spaces apart, or one where room is short.
-
-    Parameters
-    ----------
-    rows : sequence of sequence of str
-        All of one length.
-    right_from : int, optional
-        First of the columns that are flush right.
-    """
-    widths = [max(len(row[i]) for row in rows) for i in range(len(rows[0]))]
-    gap = 2 if sum(widths) + 2 * len(widths) <= WIDTH else 1
-    left = len(widths) if right_from is None else right_from
-    padded = ([f"{cell:{'<' if i < left else '>'}{widths[i]}}" for i, cell in enumerate(row)] for row in rows)
-    lines = map((" " * gap).join, padded)
-    return "".join(f"  {line.rstrip()}\n" for line in lines)
-
-
-def figures_table(head: Sequence[Sequence[str]], rows: Sequence[Sequence[str]], *, first: int) -> str:
-    """A table whose columns from ``first`` on are figures: flush right, a mark standing behind its figure."""
-    marked = [any(row[i].endswith((_OUT, _AGREED)) for row in rows) for i in range(len(rows[0]))]
-    beside = [[_beside_marks(*pair) for pair in zip(row, marked, strict=True)] for row in rows]
-    return table([*head, *beside], right_from=first)
-
-
-def _beside_marks(cell: str, marked: bool) -> str:
-    return cell if not marked or cell.endswith((_OUT, _AGREED)) else f"{cell} "

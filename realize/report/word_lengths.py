@@ -9,7 +9,7 @@ from realize.arithmetic.integer.quiet import Quiet, SectionCycles
 from realize.quantity import format_engineering
 from realize.report.documents import Document, check_document
 from realize.report.documents import heading as document_heading
-from realize.report.terminal import bullets, figures_table, heading, wrapped
+from realize.report.paragraphs import bullets, figures_table, heading, wrapped
 from realize.words import FloatWords, Row, StructureWords, Words
 
 #: What heads the table: three lines a column.

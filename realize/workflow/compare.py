@@ -17,7 +17,7 @@ from realize.transfer import TransferFunction
 from realize.workflow.causal import Causal, band_of, make_causal, signals_of
 from realize.workflow.gate import gate, recommendation
 from realize.workflow.results import Comparison, MethodResult, closest_of
-from realize.workflow.stored import stored_numbers
+from realize.workflow.target import stored_numbers
 
 if TYPE_CHECKING:
     from realize.loop_design import LoopSetting

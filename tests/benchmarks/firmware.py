@@ -30,7 +30,7 @@ from realize.arithmetic.realization import Realization, Section, exact_pulse
 from realize.firmware import Emission, render_firmware
 from realize.firmware.integer.emission import IntegerEmission
 from realize.firmware.integer.render import render_integer_firmware
-from realize.report.terminal import figures_table
+from realize.report.paragraphs import figures_table
 from realize.trial.c_types import Value
 from realize.trial.emitted import Code, Vectors, code_of
 from realize.trial.outcome import least_median_most

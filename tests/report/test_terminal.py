@@ -9,7 +9,8 @@ import pytest
 
 from realize.design import design_from_text
 from realize.report.documents import compare_document
-from realize.report.terminal import WIDTH, compare_text, figures_table
+from realize.report.paragraphs import WIDTH, figures_table
+from realize.report.terminal import compare_text
 from realize.workflow import Comparison, compare
 
 ROLLER_GAP = (Path(__file__).parents[2] / "fixtures" / "roller_gap.toml").read_text(encoding="utf-8")

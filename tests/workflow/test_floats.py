@@ -15,7 +15,9 @@ from realize.firmware.job import emit
 from realize.methods import discretize
 from realize.report.documents import compare_document
 from realize.workflow import MethodResult, compare
-from realize.workflow import stored as workflow
+from realize.workflow import floats as workflow
+from realize.workflow.stored import Stored
+from realize.workflow.target import stored_numbers
 
 
 def low_pass(corner_hz: int, rate: str, more: str = "", method: str = "bilinear") -> Design:
@@ -112,11 +114,11 @@ def test_a_method_that_is_out_by_itself_is_not_tried_twice(attempts: list[str]) 
     assert attempts == ["auto"]
 
 
-def stored(design: Design, method: str) -> workflow.Stored:
+def stored(design: Design, method: str) -> Stored:
     assert design.period_s is not None
     reference = ContinuousReference(design.transfer, design.period_s, Fraction(400))
     pulse = discretize(design.transfer, design.period_s, method, None).pulse
-    return workflow.stored_numbers(design, reference, pulse)
+    return stored_numbers(design, reference, pulse)
 
 
 def test_a_cascade_that_the_format_refuses_gives_way_to_delta_or_keeps_its_refusal(

@@ -12,8 +12,10 @@ from realize.design import Design, design_from_text
 from realize.errors import Refused
 from realize.methods import discretize
 from realize.transfer import PulseTransferFunction
-from realize.workflow import stored as workflow
+from realize.workflow import integers as workflow
 from realize.workflow.gate import gate
+from realize.workflow.stored import Stored
+from realize.workflow.target import stored_numbers
 
 PID = "4*(1 + 1/(0.3*s) + 0.05*s/(0.005*s + 1))"
 NOTCH = "(s^2/300^2 + 0.02*s/300 + 1)/(s^2/300^2 + s/300 + 1)"
@@ -37,7 +39,7 @@ def conversion(of: Design, rate_hz: int, method: str) -> tuple[ContinuousReferen
 
 def all_tried(
     of: Design, reference: ContinuousReference, pulse: PulseTransferFunction
-) -> list[tuple[str, workflow.Stored, tuple[Check, ...]]]:
+) -> list[tuple[str, Stored, tuple[Check, ...]]]:
     """Every structure that can be had, with everything proven, the cheapest first."""
     interface, arithmetic = interface_of(of.input, of.output, of.target.arithmetic), of.target.arithmetic
     found = []
@@ -70,7 +72,7 @@ def test_the_one_taken_is_the_cheapest_within_every_tolerance_and_else_the_first
     tried = all_tried(of, reference, pulse)
     within = [entry for entry in tried if not entry[2]]
     wanted = within[0] if within else min(tried, key=lambda entry: distance(entry[2]))
-    taken = workflow.stored_numbers(of, reference, pulse)
+    taken = stored_numbers(of, reference, pulse)
     assert (taken.realization.structure, taken.realization.widths) == (  # type: ignore[union-attr]
         wanted[0],
         wanted[1].realization.widths,  # type: ignore[union-attr]
@@ -93,12 +95,12 @@ def test_what_is_out_by_its_coefficients_is_not_proven_where_another_is_within(m
     proven: list[str] = []
     through = workflow._proven
 
-    def counted(*arguments: object) -> workflow.Stored:
+    def counted(*arguments: object) -> Stored:
         proven.append("")
         return through(*arguments)  # type: ignore[arg-type]
 
     monkeypatch.setattr(workflow, "_proven", counted)
-    taken = workflow.stored_numbers(of, reference, pulse)
+    taken = stored_numbers(of, reference, pulse)
     assert taken.note
     as_far = next(i for i, entry in enumerate(tried, 1) if not entry[2])
     assert len(proven) < as_far
