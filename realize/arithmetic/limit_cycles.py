@@ -62,19 +62,8 @@ class Rounding(NamedTuple):
         return abs(self.centre) + self.half_range
 
 
-def _away(value: Counts, unit: int) -> Counts:
-    size = (2 * abs(value) + unit) // (2 * unit)
-    return size - 2 * size * (value < 0)
-
-
-#: To the nearest, halves away from zero.
-TIES_AWAY = Rounding(_away, Fraction(0), Fraction(1, 2))
-
 #: To the nearest, halves upward: half a unit is added, then rounded down, as a shift does.
 TIES_UP = Rounding(lambda value, unit: (2 * value + unit) // (2 * unit), Fraction(0), Fraction(1, 2))
-
-#: Down, as a shift alone does.
-DOWN = Rounding(lambda value, unit: value // unit, Fraction(-1, 2), Fraction(1, 2))
 
 
 class Unforced(NamedTuple):
@@ -151,16 +140,6 @@ def rounded_sum(a: Sequence[int], unit: int, rounding: Rounding) -> Unforced:
     return Unforced(step, _recursive(a, unit), 1, rounding, len(a), (), unit + sum(map(abs, a)))
 
 
-def rounded_products(a: Sequence[int], unit: int, rounding: Rounding) -> Unforced:
-    """Direct form I or II with every product ``-a y`` rounded by itself; parameters as in :func:`rounded_sum`."""
-
-    def step(state: tuple[Counts, ...]) -> tuple[Counts, ...]:
-        return sum(rounding.apply(-c * y, unit) for c, y in zip(a, state, strict=True)), *state[:-1]
-
-    inexact = sum(1 for c in a if c % unit)
-    return Unforced(step, _recursive(a, unit), inexact, rounding, len(a), (), unit + sum(map(abs, a)))
-
-
 def error_feedback(a: Sequence[int], unit: int, rounding: Rounding) -> Unforced:
     """Direct form I with what the rounding discards added back in the next sample.
 
@@ -188,11 +167,6 @@ def outputs(recursion: Unforced, start: Sequence[int], count: int) -> list[int]:
         found.append(int(state[0]))
         state = recursion.step(state)
     return found
-
-
-def first_order_bound(a: Fraction, rounding: Rounding) -> Fraction | None:
-    """No cycle of ``y[k] = round(-a y[k-1])`` exceeds ``error/(1 - |a|)`` steps; ``None`` where it is not stable."""
-    return rounding.largest_error / (1 - abs(a)) if abs(a) < 1 else None
 
 
 def limit_cycles(recursion: Unforced, most_states: int = MOST_STATES) -> LimitCycles:

@@ -190,6 +190,14 @@ def _direct(rest: Rest, target: FloatFormat) -> tuple[Section, ...]:
     """The whole rest as one section."""
     if rest.gain == 0:
         return ()
+    refuse_direct(rest)
+    section = _rounded_section(group(rest.poles, rest.zeros), rest.gain, target)
+    _refuse_moved(section, rest)
+    return (section,)
+
+
+def refuse_direct(rest: Rest) -> None:
+    """Refuse one section for the whole rest where its order is above 2."""
     order = degree(rest.poles)
     if order > 2:
         raise Refused(
@@ -198,9 +206,6 @@ def _direct(rest: Rest, target: FloatFormat) -> tuple[Section, ...]:
             "direct up to order 2",
             'structure = "cascade", or "auto"',
         )
-    section = _rounded_section(group(rest.poles, rest.zeros), rest.gain, target)
-    _refuse_moved(section, rest)
-    return (section,)
 
 
 def _refuse_moved(section: Section, rest: Rest) -> None:

@@ -11,7 +11,6 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from fractions import Fraction
 from functools import reduce
-from itertools import accumulate
 from math import lcm
 from operator import mul
 from typing import NamedTuple
@@ -93,42 +92,6 @@ def scaled(ratio: PulseRatio, factor: Fraction) -> PulseRatio:
     return PulseRatio(poly.scale(ratio.numerator, factor), ratio.denominator) if factor else in_parallel()
 
 
-def input_paths(sections: Sequence[Coefficients]) -> tuple[PulseRatio, ...]:
-    """Paths from the input of a chain to the output of each section."""
-    return tuple(accumulate((section_ratio(*section) for section in sections), _product))
-
-
-def rounding_paths(
-    sections: Sequence[Coefficients], shapings: Sequence[Sequence[int]]
-) -> tuple[tuple[PulseRatio, ...], ...]:
-    """Paths from every rounding in a chain of direct form I sections to the output of every section.
-
-    Parameters
-    ----------
-    sections : sequence of Coefficients
-        ``(b, a)`` of each, in the order in which a sample passes them.
-    shapings : sequence of sequence of int
-        For each section, what its recursion makes of the error of its one rounding before ``1/a`` does the rest, in
-        ascending powers of 1/z: ``(1,)`` plain, ``(1, -1)`` when the discarded fraction is added back next sample.
-
-    Returns
-    -------
-    tuple of tuple of PulseRatio
-        Entry ``[i][j]``, j up to i: from the rounding in section j to the output of section i.
-
-    Notes
-    -----
-    ``y[k] = round(sum b x - sum a y)`` makes the rounding error an input of ``1/a``, even where a zero of ``b``
-    cancels a pole.
-    """
-    rows: list[tuple[PulseRatio, ...]] = []
-    for (b, a), shaping in zip(sections, shapings, strict=True):
-        earlier = rows[-1] if rows else ()
-        section = section_ratio(b, a)
-        rows.append((*(_product(path, section) for path in earlier), section_ratio(shaping, a)))
-    return tuple(rows)
-
-
 def probed(
     step: Callable[[Vector, Vector], tuple[Sequence[Fraction], Sequence[Fraction]]], states: int, inputs: int
 ) -> StateSpace:
@@ -193,48 +156,6 @@ def paths(system: StateSpace) -> tuple[tuple[PulseRatio, ...], ...]:
         )
         for i, row in enumerate(system.D)
     )
-
-
-def state_paths(system: StateSpace) -> tuple[tuple[PulseRatio, ...], tuple[PulseRatio, ...]]:
-    """Paths from the first input to every state, and from something added to every state to the first output."""
-    n = len(system.A)
-    none = (Fraction(0),)
-    reached = paths(StateSpace(system.A, tuple(row[:1] for row in system.B), _identity(n), (none,) * n))
-    seen = paths(StateSpace(system.A, _identity(n), system.C[:1], (none * n,)))
-    return tuple(row[0] for row in reached), seen[0]
-
-
-def controllable_form(ratio: PulseRatio) -> StateSpace:
-    """The form whose states are the last values of ``u/a``: ``A`` has minus the denominator in its first row."""
-    n = poly.degree(ratio.denominator)
-    top = (*(Fraction(0),) * (n + 1 - len(ratio.numerator)), *ratio.numerator)
-    lower = _identity(n)[: n - 1]
-    first = tuple(-c for c in ratio.denominator[1:])
-    last = tuple(b - top[0] * a for b, a in zip(top[1:], ratio.denominator[1:], strict=True))
-    return StateSpace((first, *lower)[:n], _transposed(_identity(n)[:1]), (last,), ((top[0],),))
-
-
-def normal_form(ratio: PulseRatio, pole: tuple[Fraction, Fraction]) -> StateSpace:
-    """The coupled form of a second-order path: ``A = [[s, w], [-w, s]]`` for the poles ``s +- jw``.
-
-    Parameters
-    ----------
-    ratio : PulseRatio
-        Its numerator and direct term are kept; its poles are replaced by the given ones.
-    pole : tuple of Fraction
-        ``s`` and ``w``, as stored.
-
-    Notes
-    -----
-    With ``B = (0, 1)'``: ``adj(zI - A) B = (w, z - s)'``, so ``C = ((c0 + c1 s)/w, c1)`` gives ``c1 z + c0``.
-    """
-    s, w = pole
-    bottom = (Fraction(1), -2 * s, s * s + w * w)
-    direct = ratio.numerator[0] if len(ratio.numerator) == len(bottom) else Fraction(0)
-    rest = poly.subtract(ratio.numerator, poly.scale(bottom, direct))
-    c1, c0 = (*(Fraction(0),) * (2 - len(rest)), *rest)
-    one, none = Fraction(1), Fraction(0)
-    return StateSpace(((s, w), (-w, s)), ((none,), (one,)), (((c0 + c1 * s) / w, c1),), ((direct,),))
 
 
 def _product(first: PulseRatio, second: PulseRatio) -> PulseRatio:

@@ -32,7 +32,7 @@ from realize.loop.margins import (
     margins,
 )
 from realize.loop.plant import Plant, Ratio, checked_plant, series
-from realize.loop.response import Continuous, Delay, Hold, Part, Real, combined, log_size, phase_at
+from realize.loop.response import Continuous, Delay, Hold, Part, Real, combined, log_size
 from realize.transfer import TransferFunction
 
 #: The grid reaches this far beyond the lowest and highest frequency at which anything happens: a root has turned to
@@ -306,8 +306,3 @@ def _by_roots(ratio: Ratio) -> Verdict:
     if len(closed) < len(ratio.denominator):
         return Verdict(UNSTABLE, "the loop gain at high frequency is -1: the loop has no solution")
     return Verdict(continuous_stability(isolate(closed)), "exact roots of the closed loop")
-
-
-def phase_of(part: Part, w_rad_s: float) -> float:
-    """Phase in degrees at one frequency."""
-    return float(np.degrees(phase_at(part, w_rad_s)))

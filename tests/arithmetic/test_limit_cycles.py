@@ -12,21 +12,18 @@ from hypothesis import strategies as st
 
 from realize.arithmetic import limit_cycles as module
 from realize.arithmetic.limit_cycles import (
-    DOWN,
-    TIES_AWAY,
     TIES_UP,
     LimitCycles,
     Rounding,
     Unforced,
     error_feedback,
-    first_order_bound,
     limit_cycles,
     outputs,
-    rounded_products,
     rounded_sum,
     smallest_answered,
 )
 from realize.errors import RealizeError, Refused
+from tests.arithmetic.roundings import DOWN, TIES_AWAY, first_order_bound, rounded_products
 
 ROUNDINGS = {"ties away": TIES_AWAY, "ties up": TIES_UP, "down": DOWN}
 KINDS = {"sum": rounded_sum, "products": rounded_products, "error feedback": error_feedback}

@@ -13,17 +13,18 @@ from functools import lru_cache
 from typing import NamedTuple
 
 from realize.algebra import polynomial as poly
-from realize.algebra.rounding import FLOAT64
-from realize.arithmetic.grouping import Factor, Group, Rest, degree, group, monic
+from realize.arithmetic.grouping import Rest, group
+from realize.arithmetic.integer.coefficients import (
+    Coefficients,
+    cascaded_sections,
+    coefficients_of,
+    padded,
+    partial_fractions,
+    scaled,
+)
 from realize.arithmetic.integer.program import INPUT
-from realize.arithmetic.realization import cascaded
+from realize.arithmetic.realization import refuse_direct
 from realize.errors import Refused
-
-#: Bits to which roots are known here: a stored coefficient has 31, and slow poles crowd within 2**-60 of z = 1.
-_BITS = 256
-
-#: A coefficient below this is 0: products of up to 16 such factors add up to fewer than ``2**32`` of their errors.
-_NOISE = Fraction(1, 1 << _BITS - 32)
 
 _ONE = Fraction(1)
 
@@ -135,26 +136,6 @@ class Form(NamedTuple):
     part: Part
 
 
-class Coefficients(NamedTuple):
-    """A section as real numbers: a gain, the monic numerator (delayed), and ``a``."""
-
-    gain: Fraction
-    numerator: tuple[Fraction, ...]
-    a: tuple[Fraction, ...]
-    fixed: bool
-    pair: tuple[Fraction, Fraction] | None
-
-    @property
-    def order(self) -> int:
-        """Of the section."""
-        return len(self.a)
-
-    @property
-    def b(self) -> tuple[Fraction, ...]:
-        """Numerator with its gain."""
-        return tuple(self.gain * c for c in self.numerator)
-
-
 @lru_cache(maxsize=64)
 def layouts(rest: Rest, structure: str, scales: tuple[Fraction, ...] | None = None) -> Layout:
     """Lay out the rest of a pulse transfer function; kept, because every width of words and sums asks for it.
@@ -181,38 +162,32 @@ def layouts(rest: Rest, structure: str, scales: tuple[Fraction, ...] | None = No
 
 def cascade(rest: Rest, scales: Sequence[Fraction] | None) -> Layout:
     """Sections in direct form I, one after the other."""
-    return _in_series("cascade", _sections(rest, scales), lambda k, s, source: _direct_form(k, s, source, shaped=False))
+    return _in_series(
+        "cascade", cascaded_sections(rest, scales), lambda k, s, source: _direct_form(k, s, source, shaped=False)
+    )
 
 
 def direct(rest: Rest, scales: Sequence[Fraction] | None) -> Layout:
     """The whole rest as one section in direct form I."""
-    order = degree(rest.poles)
-    if order > 2:
-        raise Refused(
-            "[target] structure",
-            f"direct, although what is left beside the integral states has order {order}",
-            "direct up to order 2",
-            'structure = "cascade", or "auto"',
-        )
-    sections = [_coefficients(group(rest.poles, rest.zeros), rest.gain)] if rest.gain else []
-    scaled = _scaled(sections, scales)
-    return _in_series("direct", scaled, lambda k, s, source: _direct_form(k, s, source, shaped=False))
+    refuse_direct(rest)
+    sections = [coefficients_of(group(rest.poles, rest.zeros), rest.gain)] if rest.gain else []
+    return _in_series("direct", scaled(sections, scales), lambda k, s, source: _direct_form(k, s, source, shaped=False))
 
 
 def error_feedback(rest: Rest, scales: Sequence[Fraction] | None) -> Layout:
     """As cascade, but what a section's rounding discards is added back in the next sample."""
-    sections = _sections(rest, scales)
+    sections = cascaded_sections(rest, scales)
     return _in_series("error-feedback", sections, lambda k, s, source: _direct_form(k, s, source, shaped=True))
 
 
 def delta(rest: Rest, scales: Sequence[Fraction] | None) -> Layout:
     """Sections in the operator ``z - 1``: states twice as wide, which take up increments."""
-    return _in_series("delta", _sections(rest, scales), _delta_form)
+    return _in_series("delta", cascaded_sections(rest, scales), _delta_form)
 
 
 def normal(rest: Rest, scales: Sequence[Fraction] | None) -> Layout:
     """Pairs of poles in normal (coupled) form, sections without one in direct form I."""
-    sections = _sections(rest, scales)
+    sections = cascaded_sections(rest, scales)
     if not any(section.pair for section in sections):
         raise Refused(
             "[target] structure", "normal, without a pair of complex poles", "pairs", 'structure = "cascade", or "auto"'
@@ -226,8 +201,8 @@ def normal(rest: Rest, scales: Sequence[Fraction] | None) -> Layout:
 
 def parallel(rest: Rest, scales: Sequence[Fraction] | None) -> Layout:
     """Partial fractions: sections in direct form I beside each other, and a direct gain."""
-    direct_gain, sections = _partial_fractions(rest)
-    forms = [_direct_form(k, section, INPUT, shaped=False) for k, section in enumerate(_scaled(sections, scales), 1)]
+    direct_gain, sections = partial_fractions(rest)
+    forms = [_direct_form(k, section, INPUT, shaped=False) for k, section in enumerate(scaled(sections, scales), 1)]
     through = (Addend("direct_gain", direct_gain, INPUT),) if direct_gain else ()
     outputs = tuple(equation for k, form in enumerate(forms, 1) for equation in _output(k, form))
     return Layout(
@@ -438,108 +413,8 @@ def _age(name: str) -> int:
 
 def _in_delta(p: Sequence[Fraction]) -> tuple[Fraction, ...]:
     """Coefficients of a polynomial in descending powers of z, in those of ``z - 1``, equally many."""
-    return _padded(poly.shift(tuple(p), Fraction(1)), len(p))
+    return padded(poly.shift(tuple(p), Fraction(1)), len(p))
 
 
 def _from_delta(p: Sequence[Fraction]) -> tuple[Fraction, ...]:
-    return _padded(poly.shift(tuple(p), Fraction(-1)), len(p))
-
-
-def _padded(p: Sequence[Fraction], length: int) -> tuple[Fraction, ...]:
-    return (*(Fraction(0),) * (length - len(p)), *p)
-
-
-# ---------------------------------------------------------------- real coefficients
-
-
-def _sections(rest: Rest, scales: Sequence[Fraction] | None) -> list[Coefficients]:
-    sections = [_coefficients(each, gain) for each, gain in cascaded(rest, FLOAT64)]
-    return _scaled(sections, scales)
-
-
-def _scaled(sections: list[Coefficients], scales: Sequence[Fraction] | None) -> list[Coefficients]:
-    factors = scales or [Fraction(1)] * len(sections)
-    return [s._replace(gain=s.gain * factor) for s, factor in zip(sections, factors, strict=True)]
-
-
-def _coefficients(each: Group, gain: Fraction) -> Coefficients:
-    order = each.order
-    numerator = (*(Fraction(0),) * each.delays, *_rational(each.zeros))
-    a = _rational(each.poles)[1:]
-    return Coefficients(
-        gain,
-        numerator + (Fraction(0),) * (order + 1 - len(numerator)),
-        a + (Fraction(0),) * (order - len(a)),
-        all(zero.is_fixed for zero in each.zeros),
-        _pair(each.poles) if order == 2 else None,
-    )
-
-
-def _pair(poles: tuple[Factor, ...]) -> tuple[Fraction, Fraction] | None:
-    return _place(poles[0]) if len(poles) == 1 and poles[0].degree == 2 else None
-
-
-def _place(pole: Factor) -> tuple[Fraction, Fraction]:
-    """Real and imaginary part of a pole in z."""
-    re, im, _ = pole.root.enclosure(_BITS)
-    return 1 + Fraction(re, 1 << _BITS), Fraction(im, 1 << _BITS)
-
-
-def _rational(factors: tuple[Factor, ...]) -> tuple[Fraction, ...]:
-    """Their product in ascending powers of 1/z, to :data:`_BITS` bits; what lies below them is 0."""
-    return tuple(c if abs(c) >= _NOISE else Fraction(0) for c in monic(factors, _BITS).midpoints())
-
-
-def _partial_fractions(rest: Rest) -> tuple[Fraction, list[Coefficients]]:
-    """``rest = direct + sum of (n1 z + n0)/(z^2 + a1 z + a2)`` and first-order parts.
-
-    Raises
-    ------
-    Refused
-        When a pole is repeated.
-    """
-    if any(pole.root.multiplicity > 1 for pole in rest.poles):
-        raise Refused(
-            "[target] structure", "parallel, with a repeated pole", "simple poles", 'structure = "cascade", or "auto"'
-        )
-    whole = poly.scale(_rational(rest.zeros), rest.gain)
-    below = [_rational((pole,)) for pole in rest.poles]
-    direct_gain = whole[0] if len(whole) == sum(len(p) - 1 for p in below) + 1 else Fraction(0)
-    sections = []
-    for i, pole in enumerate(rest.poles):
-        others: poly.Rationals = (Fraction(1),)
-        for j, p in enumerate(below):
-            others = poly.multiply(others, p) if j != i else others
-        numerator = _residue(whole, others, below[i], pole)
-        a = below[i][1:]
-        sections.append(Coefficients(Fraction(1), (Fraction(0), *_padded(numerator, len(a))), a, False, None))
-    return direct_gain, sections
-
-
-def _residue(
-    whole: Sequence[Fraction], others: Sequence[Fraction], own: Sequence[Fraction], pole: Factor
-) -> tuple[Fraction, ...]:
-    """Numerator over ``own`` that agrees with ``whole/others`` at its roots: of degree below that of ``own``."""
-    re, im = _place(pole)
-    value = _divided(_at(whole, re, im), _at(others, re, im))
-    if pole.degree == 1:
-        return (value[0],)
-    slope = value[1] / im
-    return slope, value[0] - slope * re
-
-
-def _at(p: Sequence[Fraction], re: Fraction, im: Fraction) -> tuple[Fraction, Fraction]:
-    x = y = Fraction(0)
-    for c in p:
-        x, y = _cut(x * re - y * im + c), _cut(x * im + y * re)
-    return x, y
-
-
-def _divided(a: tuple[Fraction, Fraction], b: tuple[Fraction, Fraction]) -> tuple[Fraction, Fraction]:
-    size = b[0] * b[0] + b[1] * b[1]
-    return (a[0] * b[0] + a[1] * b[1]) / size, (a[1] * b[0] - a[0] * b[1]) / size
-
-
-def _cut(value: Fraction) -> Fraction:
-    """To twice the bits the roots are known to."""
-    return Fraction(value.numerator << 2 * _BITS, value.denominator).__floor__() * Fraction(1, 1 << 2 * _BITS)
+    return padded(poly.shift(tuple(p), Fraction(-1)), len(p))

@@ -7,8 +7,9 @@ from fractions import Fraction
 from math import ceil, floor
 from typing import NamedTuple
 
+from realize.arithmetic.integer.integration import Integration, integral_reaches, sums_of_integral
 from realize.arithmetic.integer.program import COMMAND, INPUT, Program, Sum, linear
-from realize.arithmetic.integer.quantize import Integration, Room, integral_reaches, sums_of_integral
+from realize.arithmetic.integer.quantize import Room
 from realize.arithmetic.integer.resting import resting_errors, with_resting
 from realize.arithmetic.peak_gain import peak_gain
 from realize.arithmetic.roundoff import expected_rms

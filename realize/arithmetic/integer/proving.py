@@ -6,21 +6,13 @@ from collections.abc import Iterable, Mapping
 from fractions import Fraction
 from typing import NamedTuple
 
+from realize.arithmetic.integer.integration import Integration
 from realize.arithmetic.integer.interface import Interface
 from realize.arithmetic.integer.layout import Layout
 from realize.arithmetic.integer.poles import decays, least_margin, margins
 from realize.arithmetic.integer.program import COMMAND, Program
 from realize.arithmetic.integer.proof import Bound, Proof, prove
-from realize.arithmetic.integer.quantize import (
-    Choice,
-    Integration,
-    Needs,
-    Room,
-    bits_to_keep,
-    ideal_room,
-    quantized,
-    way_out,
-)
+from realize.arithmetic.integer.quantize import Choice, Needs, Room, bits_to_keep, ideal_room, quantized, way_out
 from realize.errors import Refused
 
 #: Times that variables are given the room that a proof found them to need: a coarser unit makes what others need

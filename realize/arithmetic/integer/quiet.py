@@ -51,7 +51,7 @@ class Answered(NamedTuple):
     exact: bool
 
 
-class Integration(NamedTuple):
+class IntegrationTimes(NamedTuple):
     """What one count of input does through the integral.
 
     Attributes
@@ -99,7 +99,7 @@ class Quiet(NamedTuple):
     ----------
     positive, negative : Answered
         Smallest constant input of each sign that is answered.
-    integration : Integration or None
+    integration : IntegrationTimes or None
         What the integral makes of one count.
     sections : tuple of SectionCycles
         Of every section that feeds back what it rounded.
@@ -113,7 +113,7 @@ class Quiet(NamedTuple):
 
     positive: Answered
     negative: Answered
-    integration: Integration | None
+    integration: IntegrationTimes | None
     sections: tuple[SectionCycles, ...]
     largest_output: int
     searched_output: int | None
@@ -231,14 +231,14 @@ def _goes_one_way(program: Program, direction: Fraction | int) -> bool:
     return all(gain * direction >= 0 for gain in gains)
 
 
-def _integration(program: Program) -> Integration | None:
+def _integration(program: Program) -> IntegrationTimes | None:
     integral = program.integral
     if integral is None or not any(integral.stored):
         return None
     unit = Fraction(2) ** integral.word.fraction_bits
     port = program.interface.output
     gains = [gain / unit for gain in integral.stored]
-    return Integration(_samples(gains, 1), _samples(gains, port.high - port.low))
+    return IntegrationTimes(_samples(gains, 1), _samples(gains, port.high - port.low))
 
 
 def _samples(gains: Sequence[Fraction], counts: int) -> int:

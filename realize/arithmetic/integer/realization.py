@@ -9,12 +9,13 @@ from typing import NamedTuple
 
 from realize.algebra import polynomial as poly
 from realize.arithmetic.grouping import Rest, split_integral
+from realize.arithmetic.integer.integration import Integration
 from realize.arithmetic.integer.interface import Interface
 from realize.arithmetic.integer.layout import Layout, Ratio, layouts
 from realize.arithmetic.integer.program import INPUT, Program
 from realize.arithmetic.integer.proof import Proof
 from realize.arithmetic.integer.proving import proven, refuse_lost
-from realize.arithmetic.integer.quantize import WIDEST, Choice, Integration, Needs, Room, ideal_room, quantized
+from realize.arithmetic.integer.quantize import WIDEST, Choice, Needs, Room, ideal_room, quantized
 from realize.arithmetic.realization import exact_pulse
 from realize.errors import Refused
 from realize.transfer import PulseTransferFunction

@@ -6,7 +6,7 @@ from fractions import Fraction
 
 from realize.arithmetic.integer.interface import Port
 from realize.arithmetic.integer.program import COMMAND, INPUT
-from realize.arithmetic.integer.quiet import Answered, Integration, Quiet
+from realize.arithmetic.integer.quiet import Answered, IntegrationTimes, Quiet
 from realize.arithmetic.sample import BACK_CALCULATION, HOLD_INTEGRAL
 from realize.firmware.c_preamble import (
     CAUTION,
@@ -242,7 +242,7 @@ def _side(sign: str, answer: Answered) -> str:
     return f"every {constant} from {counted(answer.counts, 'count')} on is answered, a smaller one perhaps"
 
 
-def _integration(found: Integration | None, emission: IntegerEmission) -> list[str]:
+def _integration(found: IntegrationTimes | None, emission: IntegerEmission) -> list[str]:
     if found is None:
         return []
     integral = emission.realization.program.integral

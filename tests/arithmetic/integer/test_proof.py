@@ -12,11 +12,12 @@ from hypothesis import strategies as st
 
 from realize.arithmetic.grouping import split_integral
 from realize.arithmetic.integer import IntegerRecursion, Interface, Widths, integer_realization
+from realize.arithmetic.integer.integration import Integration
 from realize.arithmetic.integer.layout import layouts
 from realize.arithmetic.integer.model import Overflow
 from realize.arithmetic.integer.program import COMMAND, Program, linear
 from realize.arithmetic.integer.proof import Proof
-from realize.arithmetic.integer.quantize import Choice, Integration, Needs, ideal_room, quantized
+from realize.arithmetic.integer.quantize import Choice, Needs, ideal_room, quantized
 from realize.arithmetic.integer.resting import resting_errors
 from realize.arithmetic.peak_gain import attaining_input
 from realize.arithmetic.state_space import PulseRatio, paths

@@ -10,11 +10,12 @@ from hypothesis import strategies as st
 
 from realize.arithmetic.grouping import split_integral
 from realize.arithmetic.integer import STRUCTURES, Interface, Widths, integer_realization
+from realize.arithmetic.integer.integration import Integration
 from realize.arithmetic.integer.interface import Port
 from realize.arithmetic.integer.layout import layouts
 from realize.arithmetic.integer.poles import decays, least_margin
 from realize.arithmetic.integer.proving import proven
-from realize.arithmetic.integer.quantize import Choice, Integration, fraction_bits, greatest
+from realize.arithmetic.integer.quantize import Choice, fraction_bits, greatest
 from realize.errors import Refused
 from realize.methods import discretize
 from realize.transfer import PulseTransferFunction, TransferFunction

@@ -25,7 +25,7 @@ def toolchains() -> list[Toolchain]:
     short = ("-D__ARM_ARCH_6M__",)  # what stands there for processors without long products, run here
     found = [
         Toolchain("clang-c99", (*zig, "-std=c99", "-O2", *ZIG_TRAPS), zig),
-        Toolchain("clang-c99-short-products", (*zig, "-std=c99", "-O2", *ZIG_TRAPS, *short), zig, slice(4, None, 2)),
+        Toolchain("clang-c99-short-products", (*zig, "-std=c99", "-O2", *ZIG_TRAPS, *short), zig, slice(4, None, 3)),
         Toolchain(
             "clang-c++11", (*ZIG, "c++", "-x", "c++", "-std=c++11", "-O1", *ZIG_TRAPS), zig, slice(1, None, SHARE)
         ),
