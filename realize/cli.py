@@ -83,6 +83,7 @@ def commands() -> None:
     Which rate does it really need?   realize rates roller_gap.toml
     Which integers would do?          realize words roller_gap.toml
     Write the firmware files:         realize emit roller_gap.toml --out firmware
+    Put all of it on one page:        realize report roller_gap.toml --out roller_gap.html
     Run them on the processor:        realize trial firmware/roller_gap.record.json --on all
     Are they still what they should?  realize audit firmware/roller_gap.record.json
     What changed between two records? realize differ old.record.json new.record.json
@@ -251,6 +252,48 @@ def _rule(
         raise RealizeError("--dependencies", "an empty name", "a file for the rule", "--dependencies firmware.d")
     sources = prerequisites(argument, design)
     return lambda names: {Path(dependencies): rule_text([str(folder / name) for name in names], sources)}
+
+
+@commands.command(short_help="Write one page about a design: verdict, methods, figures, numbers.")
+@_takes_rate
+@_takes_design
+@click.option("--out", metavar="FILE.html", help="The page.")
+@click.option("--figures", metavar="DIR", help="Write each figure as a file into DIR, too.")
+@click.option("--figure-type", default="svg", show_default=True, metavar="TYPE", help="svg or png.")
+@click.option("--markdown", is_flag=True, help="Print the same as Markdown, for a review comment.")
+def report(
+    design: str, as_json: bool, out: str | None, figures: str | None, figure_type: str, markdown: bool, **options: Any
+) -> None:
+    """Write one self-contained page about DESIGN: verdict, methods, figures with their numbers.
+
+    The page opens from disk, needs nothing else, follows a dark screen, and prints on A4. It is
+    written whether or not the design can be emitted, and says so. Needs the packages that draw:
+    pip install "realize[report]"
+
+    \b
+    Example: realize report roller_gap.toml --out roller_gap.html
+             realize report roller_gap.toml --figures figures --figure-type png
+             realize report roller_gap.toml --markdown > review.md
+    """
+    from realize.firmware.files import write_all
+    from realize.page.answer import report_document, report_text
+    from realize.page.job import Report, page_path
+
+    if not (out or figures or markdown):
+        raise RealizeError("realize report", "nothing to write", "--out, --figures or --markdown", "--out page.html")
+    page = None if out is None else page_path(out)
+    made = Report(_load(design, options))
+    drawn = {} if figures is None else made.figures(figure_type)
+    contents = ({} if page is None else {page: made.html}) | {Path(figures or "", name): c for name, c in drawn.items()}
+    if contents:
+        write_all(next(iter(contents)).parent, {}, contents)
+    paths = [str(path) for path in contents]
+    if as_json:
+        _print(report_document(made.design, made.page, paths) | ({"markdown": made.markdown} if markdown else {}))
+        return
+    _print(made.markdown if markdown else report_text(made.page, paths))
+    if markdown and paths:
+        click.echo(report_text(made.page, paths), nl=False, err=True)
 
 
 @commands.command(short_help="Compile the emitted code and run it against its vectors.")

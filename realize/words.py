@@ -184,20 +184,19 @@ def words(design: Design) -> Words:
     Refused
         When no method is within tolerance even unrounded.
     """
-    interface = interface_of(design.input, design.output, "int32")
-    comparison = choose(replace(design, target=design.target._replace(arithmetic="float64", structure="auto")))
+    interface_of(design.input, design.output, "int32")  # refused before any method is run
+    unrounded = replace(design, target=design.target._replace(arithmetic="float64", structure="auto"))
+    comparison = choose(unrounded)
     chosen = refuse_unacceptable(comparison)
     assert chosen.discretization is not None
-    reference = ContinuousReference(comparison.causal.transfer, comparison.period_s, comparison.band_rad_s)
-    setting = loop_setting_of(design, comparison.causal.transfer, comparison.period_s)
-    bench = _Bench(design, reference, setting, chosen.discretization.pulse, interface)
+    bench = _bench(replace(comparison, design=design), chosen.discretization.pulse)
     order, refusals = _order(bench)
     found = [name for name in STRUCTURES if name in {choice.structure for choice in order}]
     rows = [_with_quiet(_best(bench, name, bits, sums)) for bits, sums in WIDTHS.values() for name in found]
     needs = tuple(_needs(bench, name, [row for row in rows if row.structure == name]) for name in found)
     floats = tuple(_floats(bench, arithmetic) for arithmetic in FORMATS)
     recommended = _recommended(rows, order)
-    return Words(comparison, chosen.method, interface, tuple(rows), needs, floats, refusals, recommended)
+    return Words(comparison, chosen.method, bench.interface, tuple(rows), needs, floats, refusals, recommended)
 
 
 def _order(bench: _Bench) -> tuple[list[StructureChoice], dict[str, str]]:
@@ -209,6 +208,51 @@ def _order(bench: _Bench) -> tuple[list[StructureChoice], dict[str, str]]:
         for choice in choices(bench.unrounded, bench.interface, arithmetic, bench.design.target.structure, refusals)
     ]
     return order, {name: refusal.found for name, refusal in refusals.items()}
+
+
+class Bound(NamedTuple):
+    """Round-off of one structure in words of one length.
+
+    Attributes
+    ----------
+    bits : int
+        Of a word.
+    percent : float or None
+        Proven bound of what rounding does to the output, in % of the output range; None where it cannot be stored.
+    tolerance_percent : float or None
+        Most that it may be.
+    """
+
+    bits: int
+    percent: float | None
+    tolerance_percent: float | None
+
+
+def bounds_by_word(comparison: Comparison, structure: str, bits: Sequence[int]) -> tuple[Bound, ...]:
+    """Bound of round-off against word length, for the method that is chosen, in the widest sums.
+
+    Raises
+    ------
+    RealizeError
+        When a range or the size of a count is missing.
+    """
+    chosen = comparison.chosen
+    assert chosen is not None
+    assert chosen.discretization is not None
+    bench = _bench(comparison, chosen.discretization.pulse)
+    return tuple(_bound(_row(bench, structure, Widths(length, WIDEST)), length) for length in bits)
+
+
+def _bound(row: Row, bits: int) -> Bound:
+    found = next((c for c in row.checks if c.check == "round-off"), None)
+    return Bound(bits, *((None, None) if found is None else (found.difference, found.tolerance)))
+
+
+def _bench(comparison: Comparison, unrounded: PulseTransferFunction) -> _Bench:
+    design, transfer = comparison.design, comparison.causal.transfer
+    reference = ContinuousReference(transfer, comparison.period_s, comparison.band_rad_s)
+    setting = loop_setting_of(design, transfer, comparison.period_s)
+    return _Bench(design, reference, setting, unrounded, interface_of(design.input, design.output, "int32"))
 
 
 def _best(bench: _Bench, structure: str, bits: int, sums: Sequence[int]) -> Row:

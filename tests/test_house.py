@@ -26,6 +26,7 @@ LAYERS = (
     ("firmware", "rates", "words"),
     ("trial",),
     ("report",),
+    ("page",),
     ("cli", "__main__", "__init__"),
 )
 RANK = {name: rank for rank, names in enumerate(LAYERS) for name in names}

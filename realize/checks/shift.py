@@ -71,6 +71,24 @@ def check_shift(
     return asked.measured(finite[worst], images[partner[worst]], 100 * float(shift[worst, partner[worst]]), reason)
 
 
+def counterparts(roots: Sequence[complex], deltas: Sequence[complex], period_s: float) -> list[complex | None]:
+    """For each root in s the root in ``z - 1`` that stands for it; None where there is none left.
+
+    Roots at s = 0 take those at z = 1 first; the others are paired by the least total of their shifts.
+    """
+    left = sorted(deltas, key=abs)
+    at_one = [left.pop(0) for _ in range(min(roots.count(0), deltas.count(0)))]
+    others = [i for i, root in enumerate(roots) if root]
+    found: list[complex | None] = [None] * len(roots)
+    for i, delta in zip((i for i, root in enumerate(roots) if not root), at_one, strict=False):
+        found[i] = delta
+    if others:
+        images = [logarithm(delta) / period_s for delta in left]
+        for i, j in zip(others, _assigned(_shifts([roots[i] for i in others], images)), strict=True):
+            found[i] = left[j] if j < len(left) else None
+    return found
+
+
 def root_notes(discrete: PulseTransferFunction, transfer: TransferFunction) -> tuple[str, ...]:
     """Poles that sampling cannot follow, and poles that alternate."""
     nyquist_rad_s = pi / float(discrete.period_s)

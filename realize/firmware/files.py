@@ -1,6 +1,6 @@
 """Writing a set of files: all of them or none.
 
-Every text is first written beside its place; only when all are there do they take their names. When anything fails,
+Everything is first written beside its place; only when all are there do they take their names. When anything fails,
 what stood there before stands there again. A file that holds its text already is left alone, time of change included,
 so that a build does not compile it again.
 """
@@ -17,17 +17,19 @@ from realize.errors import RealizeError
 FRESH, FORMER = ".{}.fresh", ".{}.former"
 
 
-def write_all(directory: Path | str, texts: Mapping[str, str], beside: Mapping[Path, str] | None = None) -> list[Path]:
-    """Write every text into a directory, or leave everything as it was.
+def write_all(
+    directory: Path | str, contents: Mapping[str, str | bytes], beside: Mapping[Path, str | bytes] | None = None
+) -> list[Path]:
+    """Write every content into a directory, or leave everything as it was.
 
     Parameters
     ----------
     directory : Path or str
         Made if missing, with its parents.
-    texts : mapping
-        Plain file name and text; lines end in a newline everywhere.
+    contents : mapping
+        Plain file name and text, whose lines end in a newline everywhere, or bytes.
     beside : mapping, optional
-        Path and text of files elsewhere that are of the same set; their directories are made too.
+        Path and content of files elsewhere that are of the same set; their directories are made too.
 
     Returns
     -------
@@ -40,12 +42,13 @@ def write_all(directory: Path | str, texts: Mapping[str, str], beside: Mapping[P
         When the directory or a file cannot be written; nothing has changed then.
     """
     folder = Path(directory)
-    wanted = {folder / name: text for name, text in texts.items()} | dict(beside or {})
+    named = {folder / name: content for name, content in contents.items()} | dict(beside or {})
+    wanted = {path: c.encode() if isinstance(c, str) else c for path, c in named.items()}
     made: list[Path] = []
     try:
         for place in dict.fromkeys((folder, *(path.parent for path in wanted))):
             made += _make(place)
-        _place({path: text for path, text in wanted.items() if not _holds(path, text)})
+        _place({path: content for path, content in wanted.items() if not _holds(path, content)})
     except OSError as error:
         _remove_empty(made)
         raise RealizeError(
@@ -54,7 +57,7 @@ def write_all(directory: Path | str, texts: Mapping[str, str], beside: Mapping[P
             "a directory in which files can be made",
             "name another directory with --out; nothing was written",
         ) from error
-    return [folder / name for name in texts]
+    return [folder / name for name in contents]
 
 
 def write_new(path: Path | str, text: str) -> Path:
@@ -100,33 +103,33 @@ def _remove_empty(made: list[Path]) -> None:
         path.rmdir()
 
 
-def _holds(path: Path, text: str) -> bool:
+def _holds(path: Path, content: bytes) -> bool:
     """Whether a file is there with these very bytes."""
     try:
-        return path.read_bytes() == text.encode()
+        return path.read_bytes() == content
     except OSError:
         return False
 
 
-def _place(texts: Mapping[Path, str]) -> None:
+def _place(contents: Mapping[Path, bytes]) -> None:
     """Write all beside their places, then rename all."""
-    fresh = {path: path.with_name(FRESH.format(path.name)) for path in texts}
+    fresh = {path: path.with_name(FRESH.format(path.name)) for path in contents}
     try:
-        for path, text in texts.items():
+        for path, content in contents.items():
             if path.is_dir():
                 raise IsADirectoryError(21, "a directory has the name of a file", str(path))
-            _write(fresh[path], text)
+            _write(fresh[path], content)
         _exchange(fresh)
     finally:
         for path in fresh.values():
             path.unlink(missing_ok=True)
 
 
-def _write(path: Path, text: str) -> None:
+def _write(path: Path, content: bytes) -> None:
     """Into a new file: whatever carries the passing name is left from an interrupted run."""
     path.unlink(missing_ok=True)
-    with path.open("x", encoding="utf-8", newline="\n") as file:
-        file.write(text)
+    with path.open("xb") as file:
+        file.write(content)
 
 
 def _former(path: Path) -> Path:

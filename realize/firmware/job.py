@@ -65,7 +65,17 @@ def emit(design: Design) -> Emitted:
     RealizeError
         When it cannot be understood.
     """
-    comparison = choose(design)
+    return emitted_from(choose(design))
+
+
+def emitted_from(comparison: Comparison) -> Emitted:
+    """What a comparison comes to, where its design asks for no roll-off that it does not name.
+
+    Raises
+    ------
+    Refused
+        When the chosen method is out of tolerance or there is none.
+    """
     chosen = refuse_unacceptable(comparison)
     return Emitted(comparison, chosen, _rendered(comparison, chosen))
 

@@ -12,12 +12,14 @@ from realize.loop.continuous import ContinuousLoop, Verdict
 from realize.loop.figures import StepFigures
 from realize.loop.held import HeldPlant, held_plant
 from realize.loop.inversion import continuous_step
+from realize.loop.inversion import step_curve as continuous_curve
 from realize.loop.jitter import JitterMargin, jitter_margin
 from realize.loop.margins import Margins
 from realize.loop.measured import MeasuredLoop
 from realize.loop.plant import Plant
+from realize.loop.response import Real
 from realize.loop.sampled import SampledLoop
-from realize.loop.simulation import step_figures
+from realize.loop.simulation import step_curve, step_figures
 from realize.transfer import PulseTransferFunction, TransferFunction
 
 #: Ripple between the samples, in % of the final value, from which on it is called hidden: half the band that counts as
@@ -57,6 +59,16 @@ class LoopFigures:
         if isinstance(self.loop, SampledLoop):
             return step_figures(self.loop)
         return continuous_step(self.loop) if isinstance(self.loop, ContinuousLoop) else None
+
+    @cached_property
+    def curve(self) -> tuple[Real, Real] | None:
+        """Times in s and values of the plant's output after a unit step of the reference; None where there is no step.
+
+        Between the samples too; see :func:`realize.loop.simulation.step_curve`.
+        """
+        if isinstance(self.loop, SampledLoop):
+            return step_curve(self.loop)
+        return continuous_curve(self.loop) if isinstance(self.loop, ContinuousLoop) else None
 
     def document(self) -> Figures:
         """The figures of a loop as JSON documents hold them; None where there is none."""

@@ -107,6 +107,12 @@ def _times(rates: list[float]) -> Real:
     return times
 
 
+def times_between(held: HeldPlant, within: WithinPeriod, samples: Whole) -> Real:
+    """Times in s since the step at which the output is looked at: a row for each change of the input."""
+    times_s: Real = float(held.delay_s) + float(held.period_s) * (samples[:, None] + within.times)
+    return times_s
+
+
 def figures_between(
     held: HeldPlant, within: WithinPeriod, samples: Whole, moving: Complex, final: float
 ) -> StepFigures:
@@ -123,7 +129,7 @@ def figures_between(
     """
     period = float(held.period_s)
     value, slope = (product(row @ within.moved, moving).real.T / final for row in within.read)
-    times_s = float(held.delay_s) + period * (samples[:, None] + within.times)
+    times_s = times_between(held, within, samples)
     top, k, part = _highest(within, moving / final, value, slope)
     peak_s = float(held.delay_s) + period * (int(samples[k]) + part)
     shown = product(within.at_sample[None], moving)[0].real / final

@@ -63,15 +63,37 @@ def continuous_step(loop: ContinuousLoop) -> StepFigures | None:
     ----------
     loop : ContinuousLoop
     """
-    final = final_value(loop.controller, loop.plant)
-    if final is None or not loop.verdict.is_stable:
+    followed = _response(loop)
+    if followed is None:
         return None
-    transform = _Transform(loop, final)
-    times, values = _followed(transform)
+    times, values, final = followed
     top, at = _highest(times, values)
     rise, settling = rise_and_settling(times, values)
     beyond = top - 1 > _REST
     return StepFigures(final, 100 * (top - 1) if beyond else 0.0, at if beyond else None, rise, settling)
+
+
+def step_curve(loop: ContinuousLoop) -> tuple[Real, Real] | None:
+    """The plant's output after a unit step of the reference, until it rests; None where there are no figures of it.
+
+    Returns
+    -------
+    times_s, values : array
+        Ascending from 0 on.
+    """
+    followed = _response(loop)
+    if followed is None:
+        return None
+    times, values, final = followed
+    return times, final * values
+
+
+def _response(loop: ContinuousLoop) -> tuple[Real, Real, float] | None:
+    """Times, values in units of the final value, and that value."""
+    final = final_value(loop.controller, loop.plant)
+    if final is None or not loop.verdict.is_stable:
+        return None
+    return *_followed(_Transform(loop, final)), final
 
 
 class _Transform:

@@ -13,10 +13,10 @@ from typing import NamedTuple
 import numpy as np
 
 from realize.checks.modes import every, logarithm
-from realize.loop.between import WithinPeriod, figures_between, within_period
+from realize.loop.between import WithinPeriod, figures_between, times_between, within_period
 from realize.loop.blocks import moved_in_blocks, starting
 from realize.loop.figures import StepFigures, final_value, highest_peaks
-from realize.loop.response import Complex, Whole
+from realize.loop.response import Complex, Real, Whole
 from realize.loop.sampled import SampledLoop
 from realize.loop.states import States, moved, product, sequence, states
 from realize.transfer import PulseTransferFunction
@@ -57,15 +57,44 @@ def step_figures(loop: SampledLoop) -> StepFigures | None:
     ----------
     loop : SampledLoop
     """
+    run = _run_of(loop)
+    return None if run is None else figures_between(loop.held, *run)
+
+
+def step_curve(loop: SampledLoop) -> tuple[Real, Real] | None:
+    """The plant's output after a unit step of the reference, until it rests; None where :func:`step_figures` is.
+
+    Returns
+    -------
+    times_s, values : array
+        Ascending from the first change of the plant's input on; between the samples too, as dense as the plant's poles
+        ask for. Before it the output is 0.
+    """
+    run = _run_of(loop)
+    if run is None:
+        return None
+    values = product(run.within.read[0] @ run.within.moved, run.moving).real.T
+    # The end of a period is the start of the next one that is looked at, or goes on from it.
+    times_s = times_between(loop.held, run.within, run.samples)
+    return times_s.ravel(), values.ravel()
+
+
+class _Run(NamedTuple):
+    """How the plant moves within a period, and from where at each change of its input; the final value."""
+
+    within: WithinPeriod
+    samples: Whole
+    moving: Complex
+    final: float
+
+
+def _run_of(loop: SampledLoop) -> _Run | None:
     final = final_value(loop.controller, loop.held.plant)
     if final is None or not loop.verdict.is_stable:
         return None
     within = within_period(loop.held)
     followed = _run(loop, within, final)
-    if followed is None:
-        return None
-    samples, moving = followed
-    return figures_between(loop.held, within, samples, moving, final)
+    return None if followed is None else _Run(within, *followed, final)
 
 
 def _pulse_states(g: PulseTransferFunction) -> States:

@@ -1,0 +1,1 @@
+"""The numbers behind each figure of the page; nothing here draws."""

@@ -1,0 +1,64 @@
+"""Poles and zeros in the z-plane, with the exact images of those in s."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import NamedTuple
+
+import numpy as np
+
+from realize.checks import ContinuousReference
+from realize.checks.modes import every
+from realize.checks.shift import counterparts
+from realize.transfer import PulseTransferFunction
+
+
+class Mapped(NamedTuple):
+    """A root in s and where it went.
+
+    Attributes
+    ----------
+    s_rad_s : complex or None
+        None for a root that the method brings in.
+    image : complex or None
+        ``exp(sT) - 1``; None also where that is beyond a double.
+    delta : complex or None
+        Of the stored numbers, as ``z - 1``; None where nothing is left of it.
+    """
+
+    s_rad_s: complex | None
+    image: complex | None
+    delta: complex | None
+
+
+class Plane(NamedTuple):
+    """Every pole and every zero by itself, both members of a pair."""
+
+    poles: tuple[Mapped, ...]
+    zeros: tuple[Mapped, ...]
+
+
+def plane(reference: ContinuousReference, stored: PulseTransferFunction) -> Plane:
+    """Pair the roots of the design with those of the stored numbers."""
+    period_s = float(reference.period_s)
+    return Plane(
+        _mapped(reference.poles, every(stored.poles), period_s),
+        _mapped(reference.zeros, every(stored.zeros), period_s),
+    )
+
+
+def _mapped(roots: Sequence[complex], deltas: Sequence[complex], period_s: float) -> tuple[Mapped, ...]:
+    partners = counterparts(list(roots), list(deltas), period_s)
+    pairs = [Mapped(s, _image(s * period_s), d) for s, d in zip(roots, partners, strict=True)]
+    left = list(deltas)
+    for partner in partners:
+        if partner is not None:
+            left.remove(partner)
+    return (*pairs, *(Mapped(None, None, delta) for delta in left))
+
+
+def _image(exponent: complex) -> complex | None:
+    """``exp(sT) - 1``; None where that is beyond a double."""
+    with np.errstate(over="ignore", invalid="ignore"):
+        image = complex(np.expm1(exponent))
+    return image if np.isfinite(image) else None

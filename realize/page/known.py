@@ -1,0 +1,86 @@
+"""Everything the page is made from, computed once."""
+
+from __future__ import annotations
+
+from functools import cached_property
+from typing import TYPE_CHECKING
+
+from realize.arithmetic.realization import Realization, stored_pulse
+from realize.checks import ContinuousReference
+from realize.design import Design
+from realize.errors import Refused
+from realize.firmware.job import Emitted, emitted_from
+from realize.realizability import Assessment
+from realize.transfer import PulseTransferFunction
+from realize.workflow import Comparison, MethodResult, assess_design, compare
+
+if TYPE_CHECKING:
+    from realize.loop import LoopReference
+
+
+class Known:
+    """A design with all that was found out about it.
+
+    Parameters
+    ----------
+    design : Design
+        With a sample rate.
+
+    Attributes
+    ----------
+    assessment : Assessment
+    comparison : Comparison
+    shown : MethodResult or None
+        The method whose figures are drawn: the chosen one, else the closest; None where every method was refused.
+    """
+
+    def __init__(self, design: Design) -> None:
+        self.design = design
+        self.assessment: Assessment = assess_design(design)
+        self.comparison: Comparison = compare(design)
+        closest = self.comparison.closest
+        self.shown: MethodResult | None = closest if closest and closest.realization is not None else None
+
+    @cached_property
+    def emitted(self) -> Emitted | Refused:
+        """The files, or why there are none."""
+        causal = self.comparison.causal
+        if causal.proposal is not None and causal.assumed:
+            return Refused(
+                "transfer",
+                "it is improper, and the design has no [rolloff]; the figures are those with the first proposal",
+                "a [rolloff] in the design file",
+                "add the lines that `realize assess` prints",
+            )
+        try:
+            return emitted_from(self.comparison)
+        except Refused as refusal:
+            return refusal
+
+    @cached_property
+    def reference(self) -> ContinuousReference:
+        """What was discretized."""
+        comparison = self.comparison
+        return ContinuousReference(comparison.causal.transfer, comparison.period_s, comparison.band_rad_s)
+
+    @cached_property
+    def stored(self) -> PulseTransferFunction:
+        """The pulse transfer function of the stored numbers."""
+        assert self.shown is not None
+        assert self.shown.realization is not None
+        realization = self.shown.realization
+        if isinstance(realization, Realization):
+            return stored_pulse(realization)
+        from realize.arithmetic.integer import stored_integer_pulse
+
+        return stored_integer_pulse(realization)
+
+    @cached_property
+    def loops(self) -> tuple[LoopReference, ...]:
+        """The loops, one a case of the plant; empty without a plant, or with a measured one."""
+        if self.design.plant is None:
+            return ()
+        from realize.loop_design import loop_setting
+
+        setting = loop_setting(self.design, self.comparison.causal.transfer, self.comparison.period_s)
+        return () if setting is None else setting.references

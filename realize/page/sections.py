@@ -1,0 +1,207 @@
+"""What the page says, in the order in which a reviewer asks."""
+
+from __future__ import annotations
+
+from fractions import Fraction
+from hashlib import sha256
+from typing import TYPE_CHECKING, Any
+
+from realize.algebra.expression import decimal_text, exact_text
+from realize.design import Design, Signal
+from realize.errors import Refused
+from realize.firmware.job import Emitted
+from realize.page.blocks import Page, Section, Table, pairs
+from realize.page.drawings import drawings, window_drawing
+from realize.page.known import Known
+from realize.quantity import format_engineering
+from realize.realizability import Assessment
+from realize.report.sentences import (
+    CAUTION,
+    accepted_sentences,
+    assessment_verdict,
+    comparison_verdict,
+    emission_verdict,
+    reasons,
+    setting,
+    stored_words,
+    unshown,
+)
+from realize.report.tables import (
+    LOOPS_KEY,
+    METHODS_KEY,
+    Rows,
+    checks_rows,
+    loop_rows,
+    loops_rows,
+    loops_title,
+    methods_rows,
+    proposals_rows,
+    roots_rows,
+)
+from realize.report.values import with_unit
+from realize.rolloff import rolloff_toml
+
+if TYPE_CHECKING:
+    from realize.loop_design import LoopResult
+
+#: Digits of a number of the design.
+_DIGITS = 17
+
+
+def page(known: Known) -> Page:
+    """Everything about one design."""
+    answer, verdict = _verdict(known).split(": ", 1)
+    sections = [_asked(known), _realizability(known), _methods(known)]
+    if known.shown is not None:
+        found = drawings(known)
+        sections.append(Section("figures", f"What {known.shown.method} makes of it", drawings=found))
+        sections.append(Section("numbers", "The numbers behind the figures", tables=tuple(d.table for d in found)))
+    sections += _emission(known)
+    return Page(known.design.name, known.design.about or "", answer, verdict, tuple(sections), CAUTION)
+
+
+def _verdict(known: Known) -> str:
+    if isinstance(known.emitted, Emitted):
+        return emission_verdict(known.emitted.comparison, known.emitted.chosen) + "."
+    causal = known.comparison.causal
+    if causal.proposal is not None and causal.assumed:
+        return f"no: {known.design.name} cannot be emitted as it is: {known.emitted.found}."
+    return comparison_verdict(known.comparison)
+
+
+def _asked(known: Known) -> Section:
+    design = known.design
+    given = [("transfer function", design.transfer_text)]
+    given += [("values", ", ".join(f"{name} = {decimal_text(value, _DIGITS)}" for name, value in design.values))]
+    given += [(name, text or "") for name, text in _provenance(design)]
+    given += [("input", _signal(design.input)), ("output", _signal(design.output)), ("plant", _plant(design))]
+    given += [("target", f"{design.target.arithmetic}, structure {design.target.structure}")]
+    given += [("tolerances of its own", ", ".join(f"{k} {decimal_text(v, 5)}" for k, v in design.tolerance))]
+    rows = pairs("The design", [(name, text) for name, text in given if text])
+    return Section("asked", "What was asked", items=tuple(setting(known.comparison)), tables=(rows,))
+
+
+def _provenance(design: Design) -> tuple[tuple[str, str | None], ...]:
+    return (("revision", design.revision), ("requirement", design.requirement), ("author", design.author))
+
+
+def _signal(signal: Signal) -> str:
+    unit = f" {signal.unit}" if signal.unit else ""
+    ends = "" if signal.range is None else " to ".join(decimal_text(end, _DIGITS) for end in signal.range) + unit
+    step = "" if signal.per_count is None else f"{exact_text(signal.per_count)}{unit} per count"
+    return ", ".join(part for part in (ends, step) if part)
+
+
+def _plant(design: Design) -> str:
+    plant = design.plant
+    if plant is None:
+        return ""
+    parts = [plant.transfer_text or f"measured, {plant.response}"]
+    dead = plant.cases[0].dead_time_s
+    parts += [f"dead time {format_engineering(float(dead), 's')}"] if dead else []
+    parts += [f"sensor {plant.sensor_text}"] if plant.sensor_text else []
+    parts += [f"{len(plant.cases)} cases"] if len(plant.cases) > 1 else []
+    return "; ".join(parts)
+
+
+def _realizability(known: Known) -> Section:
+    design, found = known.design, known.assessment
+    tables = [Table("Poles", roots_rows(found.transfer.poles))] if found.transfer.poles else []
+    tables += [Table("Zeros", roots_rows(found.transfer.zeros))] if found.transfer.zeros else []
+    sentence = assessment_verdict(design, found).split(" Next: ")[0]
+    items = [term.text for term in found.terms[1:]]
+    if not found.proposals:
+        return Section("realizable", "Can it run at all", (sentence,), (*items, *found.notes), tables=tuple(tables))
+    why = [f"first proposal: {reason}" for reason in found.proposals[0].reasons]
+    tables.insert(0, Table("Roll-off proposals, best first", _proposals(found)))
+    return Section(
+        "realizable",
+        "Can it run at all",
+        (sentence,),
+        (*items, *why, *found.notes),
+        (window_drawing(known),),
+        tuple(tables),
+        "" if design.rolloff is not None else rolloff_toml(found.proposals[0]),
+    )
+
+
+def _proposals(found: Assessment) -> Rows:
+    """The proposals, with what each leaves of the phase margin where there is a plant."""
+    rows, margins = proposals_rows(found.proposals), found.phase_margins_deg
+    if not margins:
+        return rows
+    head = (*rows.head, ("phase margin", "before"), ("", "after"))
+    return Rows(
+        head, [[*row, *(with_unit(m, " deg") for m in pair)] for row, pair in zip(rows.cells, margins, strict=True)]
+    )
+
+
+def _loop(loop: LoopResult) -> Rows:
+    """The loops, with the case of the plant in front where there are several."""
+    rows = loop_rows(loop)
+    if len(loop.entries) == 1:
+        return rows
+    cases = [str(entry["case"]) for entry in loop.entries for _ in range(len(rows.cells) // len(loop.entries))]
+    return Rows((("case", ""), *rows.head), [[case, *row] for case, row in zip(cases, rows.cells, strict=True)])
+
+
+def _methods(known: Known) -> Section:
+    comparison, shown = known.comparison, known.shown
+    items = [*unshown(comparison.methods)]
+    items += [f"{m.method}: {m.refused}" for m in comparison.methods if m.refused]
+    tables = [Table("Every method at this rate", methods_rows(comparison.methods), METHODS_KEY)]
+    loops = loops_rows(comparison) if known.design.plant else None
+    tables += [Table(loops_title(comparison), loops, LOOPS_KEY)] if loops else []
+    if shown is not None:
+        words = [*reasons(shown), *(f"accepted: {text}" for text in accepted_sentences(shown)), *shown.notes]
+        tables.append(
+            Table(f"Checks of {shown.method}", checks_rows(shown, known.design), " ".join(map(_stopped, words)))
+        )
+        tables += [Table(f"The loop with {shown.method}", _loop(shown.loop))] if shown.loop else []
+    return Section(
+        "methods", "The methods side by side", (_stopped(comparison.because),), tuple(items), tables=tuple(tables)
+    )
+
+
+def _stopped(text: str) -> str:
+    """A sentence, its first letter as a sentence has it."""
+    return text[:1].upper() + text[1:].rstrip(".") + "."
+
+
+def _emission(known: Known) -> list[Section]:
+    emitted = known.emitted
+    if isinstance(emitted, Refused):
+        advice = f"Try: {emitted.advice}." if emitted.advice else ""
+        return [Section("emitted", "Nothing is emitted", tuple(filter(None, (_stopped(emitted.found), advice))))]
+    text = next(text for name, text in emitted.files.items() if name.endswith(".record.json"))
+    record, hashes = emitted.record, sorted(emitted.record["files"].items())
+    files = pairs("SHA-256 of each file", [(name, digest) for name, digest in hashes])
+    sentence = f"The record, {known.design.name}.record.json, has the SHA-256 {sha256(text.encode()).hexdigest()}."
+    what = stored_words(emitted.chosen, known.design)
+    return [
+        Section("coefficients", "What is emitted", (_stopped(what),), tables=(_coefficients(record),)),
+        Section("record", "The record", (sentence,), tables=(files,)),
+    ]
+
+
+def _coefficients(record: dict[str, Any]) -> Table:
+    head = (("coefficient",), ("as stored",), ("fraction bits",), ("value",))
+    cells = [_row(f"integral R{i}", entry) for i, entry in enumerate(record["integral"], 1)]
+    for i, section in enumerate(record["sections"], 1):
+        cells += [_row(f"section {i}, {name}", entry) for name, entry in _named(section)]
+    note = "Recursion: y[k] = sum b x - sum a y, in ascending powers of 1/z. Values to 17 digits."
+    return Table("Coefficients", Rows(head, cells), note)
+
+
+def _named(section: dict[str, Any]) -> list[tuple[str, dict[str, Any]]]:
+    """What is stored of a section, by name."""
+    if section.get("coefficients"):
+        return list(section["coefficients"].items())
+    kinds = (("b", 0), ("a", 1))
+    return [(f"{kind}{i}", entry) for kind, first in kinds for i, entry in enumerate(section[kind], first)]
+
+
+def _row(name: str, entry: dict[str, Any]) -> list[str]:
+    bits = entry["fraction_bits"]
+    value = decimal_text(Fraction(entry["value"]), _DIGITS)
+    return [name, str(entry["stored"]), "-" if bits is None else str(bits), value]
