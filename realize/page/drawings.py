@@ -84,30 +84,18 @@ def _step(known: Known) -> Drawing | None:
 
 
 def _step_words(curves: StepCurves) -> str:
-    first, last = curves.samples[0], curves.samples[-1]
-    end = format_engineering(float(curves.sample_times_s[-1]), "s")
+    samples, times_s = curves.whole.samples, curves.whole.sample_times_s
     return (
         f"The design's response to a unit step as a line and the stored samples as steps. The samples start at "
-        f"{first:.4g}, reach at most {curves.samples.max():.4g} and at least {curves.samples.min():.4g}, and are at "
-        f"{last:.4g} after {end}."
+        f"{samples[0]:.4g}, reach at most {samples.max():.4g} and at least {samples.min():.4g}, and are at "
+        f"{samples[-1]:.4g} after {format_engineering(float(times_s[-1]), 's')}."
     )
 
 
 def _step_rows(curves: StepCurves) -> Rows:
     head = (("time",), ("design",), ("as stored",))
-    chosen = _spread(len(curves.samples))
-    at = np.searchsorted(curves.times_s, curves.sample_times_s[chosen] * (1 - 1e-12))
-    rows = [
-        [format_engineering(float(curves.sample_times_s[i]), "s"), _g(curves.design[j]), _g(curves.samples[i])]
-        for i, j in zip(chosen, at, strict=True)
-    ]
-    return Rows(head, rows)
-
-
-def _spread(count: int) -> list[int]:
-    """The first few of so many, then further and further apart, and the last."""
-    steps = np.unique(np.round(np.geomspace(1, max(count, 1), _ROWS)).astype(int)) - 1
-    return [int(i) for i in steps]
+    values = zip(curves.listed.times_s, curves.listed.design, curves.listed.samples, strict=True)
+    return Rows(head, [[format_engineering(float(t), "s"), _g(y), _g(yd)] for t, y, yd in values])
 
 
 def _g(value: float) -> str:
@@ -215,7 +203,7 @@ def _plane(known: Known) -> Drawing | None:
 
     return Drawing(
         "plane",
-        "Poles and zeros in the z-plane, and where they should be",
+        "Poles and zeros in the z-plane, stored and exact",
         _plane_words(found),
         Table("Poles and zeros", _plane_rows(found), "Exact: exp(sT). Both given as z - 1."),
         draw,

@@ -5,6 +5,7 @@ from __future__ import annotations
 from importlib.resources import files
 
 from jinja2 import Environment, StrictUndefined
+from markupsafe import Markup
 
 from realize.page.blocks import Drawing, Page, Table
 from realize.page.inline import inlined
@@ -14,6 +15,9 @@ from realize.report.paragraphs import AGREED, OUT
 #: Cells that are read at a glance, by the class that marks them.
 _MARKED = {"yes": "good", "within": "good", "no": "bad", "out": "bad", "accepted": "agreed"}
 
+#: Characters that half a page holds beside each other.
+_HALF_PAGE = 56
+
 #: Characters beyond which a cell may be wrapped within a word.
 _LONG = 40
 
@@ -22,7 +26,7 @@ def html_text(page: Page) -> str:
     """The whole file."""
     environment = Environment(autoescape=True, undefined=StrictUndefined, trim_blocks=True, lstrip_blocks=True)
     template = environment.from_string((files("realize.page") / "page.html.jinja").read_text(encoding="utf-8"))
-    text = template.render(page=page, svg=_svg, head=_head, kind=_kind, is_figure=_is_figure)
+    text = template.render(page=page, svg=_svg, head=_head, cell_class=_cell_class, is_broad=_is_broad)
     return text.rstrip() + "\n"
 
 
@@ -38,13 +42,23 @@ def _head(table: Table) -> list[str]:
     return words if any(words) else []
 
 
-def _kind(cell: str) -> str:
-    """Class of a cell: what it says, that it is marked, or that it is long enough to be wrapped anywhere."""
+def _cell_class(table: Table, cell: str) -> Markup:
+    """The class of a cell, as an attribute: figures are flush right where columns have heads, marks are coloured."""
+    names = ["figure"] if _head(table) and _is_figure(cell) else []
     if cell.endswith((OUT, AGREED)) and len(cell) > 1:
-        return "bad" if cell.endswith(OUT) else "agreed"
-    return _MARKED.get(cell, "long" if len(cell) > _LONG else "")
+        names.append("bad" if cell.endswith(OUT) else "agreed")
+    elif cell in _MARKED:
+        names.append(_MARKED[cell])
+    elif len(cell) > _LONG:
+        names.append("long")
+    return Markup(' class="{}"').format(" ".join(names)) if names else Markup("")
 
 
 def _is_figure(cell: str) -> bool:
-    """Whether a cell is flush right."""
-    return cell[:1].isdigit() or (cell[:1] in "-<>+" and len(cell) < 24)
+    return cell[:1].isdigit() or (cell[:1] in "-<>+" and len(cell) < _LONG)
+
+
+def _is_broad(table: Table) -> bool:
+    """Whether half a page is too narrow for it."""
+    columns = zip(*table.rows.cells, strict=True)
+    return sum(max(map(len, column)) + 2 for column in columns) > _HALF_PAGE

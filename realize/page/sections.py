@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 from realize.algebra.expression import decimal_text, exact_text
 from realize.design import Design, Signal
 from realize.errors import Refused
+from realize.firmware.c_text import number_text
 from realize.firmware.job import Emitted
 from realize.page.blocks import Page, Section, Table, pairs
 from realize.page.drawings import drawings, window_drawing
@@ -72,11 +73,11 @@ def _verdict(known: Known) -> str:
 def _asked(known: Known) -> Section:
     design = known.design
     given = [("transfer function", design.transfer_text)]
-    given += [("values", ", ".join(f"{name} = {decimal_text(value, _DIGITS)}" for name, value in design.values))]
+    given += [("values", ", ".join(f"{name} = {number_text(value)}" for name, value in design.values))]
     given += [(name, text or "") for name, text in _provenance(design)]
     given += [("input", _signal(design.input)), ("output", _signal(design.output)), ("plant", _plant(design))]
     given += [("target", f"{design.target.arithmetic}, structure {design.target.structure}")]
-    given += [("tolerances of its own", ", ".join(f"{k} {decimal_text(v, 5)}" for k, v in design.tolerance))]
+    given += [("tolerances of its own", ", ".join(f"{k} {number_text(v)}" for k, v in design.tolerance))]
     rows = pairs("The design", [(name, text) for name, text in given if text])
     return Section("asked", "What was asked", items=tuple(setting(known.comparison)), tables=(rows,))
 
@@ -87,7 +88,7 @@ def _provenance(design: Design) -> tuple[tuple[str, str | None], ...]:
 
 def _signal(signal: Signal) -> str:
     unit = f" {signal.unit}" if signal.unit else ""
-    ends = "" if signal.range is None else " to ".join(decimal_text(end, _DIGITS) for end in signal.range) + unit
+    ends = "" if signal.range is None else " to ".join(number_text(end) for end in signal.range) + unit
     step = "" if signal.per_count is None else f"{exact_text(signal.per_count)}{unit} per count"
     return ", ".join(part for part in (ends, step) if part)
 

@@ -69,6 +69,8 @@ _VALUE_UNITS = {
 _IN_POINTS = ("step overshoot", "loop overshoot")
 
 
+_LEDGER_HEAD = (("item",), ("phase",))
+
 #: Words under a table of methods.
 METHODS_KEY = (
     "Each figure is the difference between the stored numbers and the design; ! is out of tolerance, "
@@ -286,12 +288,12 @@ def loop_rows(loop: LoopResult) -> Rows:
 def ledger_rows(loop: LoopResult) -> Rows:
     """Where the phase at the crossover went, and what is left; without rows where there is no crossover."""
     if loop.ledger is None:
-        return Rows((("",), ("",)), [])
+        return Rows(_LEDGER_HEAD, [])
     left = loop.entries[0]["discrete"]["phase_margin_deg"]
     items = [*loop.ledger.items, ("in all", loop.ledger.total_deg)]
     items += [("phase margin left", left)] if left is not None else []
     # Adding 0 turns a rounded -0 into 0.
-    return Rows((("",), ("",)), [[name, f"{round(value, 2) + 0.0:.2f} deg"] for name, value in items])
+    return Rows(_LEDGER_HEAD, [[name, f"{round(value, 2) + 0.0:.2f} deg"] for name, value in items])
 
 
 def _loop_row(kind: str, figures: Mapping[str, Any]) -> list[str]:

@@ -18,15 +18,27 @@ from realize.transfer import PulseTransferFunction
 #: Points of a curve: twice what a figure of 600 pixels shows.
 _POINTS = 1200
 
-#: Samples up to which each one is drawn; beyond, a held sample is narrower than half a pixel.
-_MOST_SAMPLES = 1200
+#: Points up to which each one is drawn; beyond, they are closer than half a pixel.
+_MOST_SAMPLES = 2400
+
+#: Samples up to which all are looked at.
+_ALL_SAMPLES = 100_000
+
+#: Multiples of it, less whole numbers, fill an interval evenly and never in step with an oscillation (Weyl 1916).
+_GOLDEN = 0.6180339887498949
+
+#: Samples that are listed.
+LISTED = 13
+
+#: Samples that are shown by themselves where the whole response has too many to be told apart.
+FIRST_SAMPLES = 16
 
 #: What is shown of a loop beyond its settling, so that its rest can be seen.
 _BEYOND_SETTLING = 1.5
 
 
-class StepCurves(NamedTuple):
-    """Response of a controller to a unit step.
+class Stretch(NamedTuple):
+    """A response over some time.
 
     Attributes
     ----------
@@ -34,14 +46,30 @@ class StepCurves(NamedTuple):
         Of ``G(s)``, from 0+ on.
     sample_times_s, samples : array
         Of the stored ``Gd(z)``; each is held until the next.
-    period_s : float
     """
 
     times_s: Real
     design: Real
     sample_times_s: Real
     samples: Real
-    period_s: float
+
+
+class StepCurves(NamedTuple):
+    """Response of a controller to a unit step.
+
+    Attributes
+    ----------
+    whole : Stretch
+        Over the whole horizon; of a long response the least and the greatest of each part too narrow to be seen.
+    first : Stretch
+        The first samples.
+    listed : Stretch
+        Some samples from the first to the last, ever further apart, and the design there.
+    """
+
+    whole: Stretch
+    first: Stretch
+    listed: Stretch
 
 
 def step_curves(reference: ContinuousReference, stored: PulseTransferFunction) -> StepCurves | None:
@@ -49,16 +77,46 @@ def step_curves(reference: ContinuousReference, stored: PulseTransferFunction) -
     response, period_s = reference.step, float(reference.period_s)
     if response.last < 1:
         return None
-    looked_at = _thinned(response.last)
-    sampled = SampledResponse(Counterpart(stored), looked_at)
-    last = float(min(response.last, sampled.last))
-    at = sampled.samples.astype(float)
-    times = distinct(np.append(np.linspace(0.0, last, _POINTS), at))
-    return StepCurves(times * period_s, response.at(times)[0], at * period_s, sampled.values, period_s)
+    sampled = SampledResponse(Counterpart(stored), _looked_at(response.last))
+    last = int(sampled.samples[-1])
+
+    def stretch(samples: Whole, times: Real) -> Stretch:
+        shown = _outline(times, response.at(times)[0])
+        held = _outline(samples.astype(np.float64), sampled.at(samples))
+        return Stretch(shown[0] * period_s, shown[1], held[0] * period_s, held[1])
+
+    first = np.arange(min(FIRST_SAMPLES, last) + 1)
+    listed = distinct(np.round(np.geomspace(1, last + 1, LISTED)).astype(np.int64)) - 1
+    return StepCurves(
+        stretch(sampled.samples, _with_between(sampled.samples)),
+        stretch(first, _with_between(first)),
+        stretch(listed, listed.astype(np.float64)),
+    )
 
 
-def _thinned(last: int) -> Whole:
-    return np.arange(0, last + 1, ceil((last + 1) / _MOST_SAMPLES))
+def _with_between(samples: Whole) -> Real:
+    """Samples, and times between them as dense as can be seen."""
+    return distinct(np.append(np.linspace(0.0, float(samples[-1]), _POINTS), samples.astype(np.float64)))
+
+
+def _looked_at(last: int) -> Whole:
+    """All samples, or of very many some in every stretch that can be seen, at no fixed distance."""
+    if last <= _ALL_SAMPLES:
+        return np.arange(last + 1)
+    within = (np.arange(_ALL_SAMPLES) + np.modf(np.arange(_ALL_SAMPLES) * _GOLDEN)[0]) / _ALL_SAMPLES
+    return distinct(np.floor(within * last).astype(np.int64))
+
+
+def _outline(times: Real, values: Real) -> tuple[Real, Real]:
+    """A curve of many points by the least and the greatest of each stretch, in the order in which they come."""
+    if len(times) <= _MOST_SAMPLES:
+        return times, values
+    stretch = np.floor(times / times[-1] * (_MOST_SAMPLES // 2)).astype(np.int64)
+    order = np.lexsort((values, stretch))
+    ends = np.flatnonzero(np.diff(stretch[order], prepend=-1))
+    lowest, highest = order[ends], order[np.append(ends[1:], len(order)) - 1]
+    chosen = distinct(np.concatenate([lowest, highest, [0, len(times) - 1]]))
+    return times[chosen], values[chosen]
 
 
 class LoopCurves(NamedTuple):

@@ -9,6 +9,12 @@ from realize.loop.response import Real
 from realize.page.curves.frequency import FrequencyCurves
 from realize.page.plots.style import DESIGN, LIMIT, STORED, canvas, mark_frequency, plain_log
 
+#: How far beyond the design's own range the axis of a response goes at the most, as a share of that range.
+_BEYOND = 1.0
+
+#: Error beyond which the axis is cut: nobody reads more than that it is lost, in dB and in deg.
+_MOST_ERROR = {"error in dB": 20.0, "error in deg": 180.0}
+
 
 def frequency_figure(curves: FrequencyCurves) -> Figure:
     """Magnitude and phase, each with its error below it, over one axis of frequency."""
@@ -33,8 +39,14 @@ def _pair(axes: Axes, curves: FrequencyCurves, design: Real, stored: Real, name:
     axes.plot(curves.frequency_hz, design, color=DESIGN, label="design, G(s)")
     axes.plot(curves.frequency_hz, stored, color=STORED, linestyle=(0, (5, 2)), label="as stored, Gd(z)")
     axes.set_ylabel(name)
+    # A zero on the axis would press everything else flat.
+    low, high = float(design.min()), float(design.max())
+    bottom, top = axes.get_ylim()
+    axes.set_ylim(max(bottom, low - _BEYOND * max(high - low, 1.0)), min(top, high + _BEYOND * max(high - low, 1.0)))
 
 
 def _error(axes: Axes, curves: FrequencyCurves, error: Real, name: str) -> None:
     axes.plot(curves.frequency_hz, error, color=LIMIT, linewidth=1.2)
     axes.set_ylabel(name)
+    bottom, top = axes.get_ylim()
+    axes.set_ylim(max(bottom, -_MOST_ERROR[name]), min(top, _MOST_ERROR[name]))

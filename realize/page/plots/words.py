@@ -21,11 +21,11 @@ def words_figure(bounds: Sequence[Bound], chosen_bits: int) -> Figure:
     axes.axvline(chosen_bits, color=MARK, linewidth=1)
     axes.annotate(
         "as emitted",
-        (chosen_bits, 1),
+        (chosen_bits, 0),
         xycoords=("data", "axes fraction"),
-        xytext=(4, -2),
+        xytext=(4, 2),
         textcoords="offset points",
-        va="top",
+        va="bottom",
         fontsize=9,
     )
     axes.set_yscale("log")
@@ -34,5 +34,5 @@ def words_figure(bounds: Sequence[Bound], chosen_bits: int) -> Figure:
     axes.set_xlim(bounds[0].bits - 1, bounds[-1].bits + 1)
     axes.set_xlabel("word length in bits")
     axes.set_ylabel("error of the output\nin % of its range")
-    axes.legend(loc="upper right")
+    axes.legend(loc="best")
     return figure
