@@ -1,0 +1,150 @@
+"""The numbers behind the figures, against scipy.signal and against the figures that the checks give."""
+
+from __future__ import annotations
+
+from fractions import Fraction
+from math import pi
+
+import numpy as np
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+from scipy import signal
+
+from realize.checks import ContinuousReference
+from realize.loop import LoopReference, Plant
+from realize.methods import discretize
+from realize.page.curves.frequency import frequency_curves
+from realize.page.curves.plane import plane
+from realize.page.curves.step import FIRST_SAMPLES, StepCurves, loop_curves, step_curves
+from realize.transfer import PulseTransferFunction, TransferFunction
+
+Pair = tuple[ContinuousReference, PulseTransferFunction]
+
+
+def pair(numerator: list[int], denominator: list[int], rate_hz: int, method: str = "bilinear") -> Pair:
+    transfer = TransferFunction.from_polynomials(numerator, denominator)
+    reference = ContinuousReference(transfer, Fraction(1, rate_hz), Fraction(rate_hz, 5))
+    return reference, discretize(transfer, reference.period_s, method, None).pulse
+
+
+def made(known: Pair) -> StepCurves:
+    curves = step_curves(*known)
+    assert curves is not None
+    return curves
+
+
+@given(st.integers(1, 40), st.integers(50, 400), st.integers(30, 200))
+def test_step_curves_are_those_of_scipy(damping_percent: int, w_rad_s: int, rate_hz: int) -> None:
+    """A second-order section: poles well apart from z = 1, where scipy's own filter keeps ten digits."""
+    known = pair([w_rad_s**2], [1, 2 * damping_percent * w_rad_s // 100 + 1, w_rad_s**2], 10 * rate_hz)
+    curves = made(known).first
+    pulse = known[1]
+    expected = signal.lfilter(
+        [float(c) for c in pulse.numerator], [float(c) for c in pulse.denominator], np.ones(len(curves.samples))
+    )
+    # 16 samples of a recursion in double precision whose gain stays below 1e3: 16 * 1e3 * 2^-53 < 2e-12.
+    assert curves.samples == pytest.approx(expected, abs=1e-9)
+    decay = (2 * damping_percent * w_rad_s // 100 + 1) / 2
+    turn = np.sqrt(w_rad_s**2 - decay**2) * curves.times_s
+    ring = np.cos(turn) + decay / np.sqrt(w_rad_s**2 - decay**2) * np.sin(turn)
+    # The closed form of a second-order step; times are kept to 2^-24 of a sample, in which it moves by at most w T 2^-24.
+    moved = w_rad_s * float(pulse.period_s) * 2.0**-24
+    assert curves.design == pytest.approx(1 - np.exp(-decay * curves.times_s) * ring, abs=moved + 1e-12)
+
+
+def test_a_long_response_keeps_its_extremes() -> None:
+    """An oscillation of 50 Hz that decays over 90,000 samples: every stretch shows how far it swings."""
+    w, decay = 314, 3
+    curves = made(pair([w * w], [1, decay, w * w], 20_000)).whole
+    assert len(curves.samples) <= 2402
+    # exp(-decay t/2) around the final value 1, swing of both signs within a stretch of at least one cycle.
+    early = curves.sample_times_s < 0.2
+    envelope = np.exp(-decay / 2 * curves.sample_times_s[early])
+    assert np.max(np.abs(curves.samples[early] - 1) / envelope) == pytest.approx(1, abs=0.02)
+    for first in np.arange(0.05, 2.0, 0.05):
+        near = (curves.sample_times_s >= first) & (curves.sample_times_s < first + 0.05)
+        size = np.exp(-decay / 2 * first)
+        assert curves.samples[near].max() - 1 > 0.85 * size
+        assert 1 - curves.samples[near].min() > 0.85 * size
+
+
+def test_the_first_samples_and_the_list_are_whole() -> None:
+    curves = made(pair([50, 1], [1, 2], 1000))
+    assert len(curves.first.samples) == FIRST_SAMPLES + 1
+    assert np.diff(curves.first.sample_times_s) == pytest.approx(1e-3)
+    assert curves.listed.sample_times_s[0] == 0
+    assert curves.listed.sample_times_s[-1] == curves.whole.sample_times_s[-1]
+
+
+@pytest.mark.parametrize("method", ["bilinear", "ramp-invariant", "backward-difference"])
+def test_frequency_curves_are_those_of_scipy(method: str) -> None:
+    known = pair([3, 40, 900], [1, 12, 400, 800], 200, method)
+    curves = frequency_curves(*known)
+    transfer, pulse = known[0].transfer, known[1]
+    w = 2 * pi * curves.frequency_hz
+    _, design = signal.freqs([float(c) for c in transfer.numerator], [float(c) for c in transfer.denominator], w)
+    _, stored = signal.freqz(
+        [float(c) for c in pulse.numerator], [float(c) for c in pulse.denominator], w * float(pulse.period_s)
+    )
+    # Polynomials in z lose digits close to z = 1: at a hundredth of the corner some four of fifteen.
+    for shown_db, shown_deg, expected in (
+        (curves.design_db, curves.design_deg, design),
+        (curves.stored_db, curves.stored_deg, stored),
+    ):
+        shown = 10 ** (shown_db / 20) * np.exp(1j * np.radians(shown_deg))
+        assert np.abs(shown / expected - 1).max() < 1e-6
+    assert np.abs(curves.error_deg).max() <= 180
+    assert np.degrees(np.angle(stored / design)) == pytest.approx(curves.error_deg, abs=1e-4)
+    assert curves.error_db == pytest.approx(20 * np.log10(np.abs(stored / design)), abs=1e-5)
+    assert curves.nyquist_hz == 100
+    assert np.abs(np.diff(curves.design_deg)).max() < 20
+
+
+def test_the_plane_shows_where_each_root_went() -> None:
+    reference, stored = pair([1, 30], [1, 6, 25, 0], 50)
+    found = plane(reference, stored)
+    period_s = float(reference.period_s)
+    assert len(found.poles) == 3
+    assert len(found.zeros) == 3
+    for root in found.poles:
+        assert root.s_rad_s is not None
+        assert root.image == pytest.approx(np.exp(root.s_rad_s * period_s) - 1, abs=1e-15)
+        # Tustin's map, root by root.
+        half = root.s_rad_s * period_s / 2
+        assert root.delta == pytest.approx(2 * half / (1 - half), abs=1e-14)
+    brought = [root.delta for root in found.zeros if root.s_rad_s is None]
+    assert brought == [-2, -2]
+
+
+def test_an_image_beyond_a_double_is_left_out() -> None:
+    reference, stored = pair([1, -10_000], [1, 3, 2], 10)
+    zeros = plane(reference, stored).zeros
+    assert [root.image for root in zeros if root.s_rad_s == 10_000] == [None]
+
+
+def test_loop_curves_peak_where_the_figures_say() -> None:
+    controller = TransferFunction.from_polynomials([4, 20], [1, 0])
+    plant = Plant(TransferFunction.from_polynomials([10], [1, 12, 20]), Fraction(1, 200), case="nominal")
+    reference = LoopReference(controller, plant, Fraction(1, 100), Fraction(1, 100))
+    pulse = discretize(controller, reference.period_s, "bilinear", None).pulse
+    curves = loop_curves(reference, pulse)
+    assert curves is not None
+    for (times_s, values), figures in (
+        (curves.continuous, reference.continuous.step),
+        (curves.sampled, reference.sampled(pulse).step),
+    ):
+        assert figures is not None
+        # Points of a curve lie below its peak by what a step of the grid hides.
+        assert values.max() == pytest.approx(1 + figures.overshoot_percent / 100, abs=1e-3)
+        assert times_s[int(np.argmax(values))] == pytest.approx(figures.peak_s, abs=0.01)
+        assert values[-1] == pytest.approx(1, abs=0.02)
+        assert values[0] == 0
+        assert (np.diff(times_s) >= 0).all()
+
+
+def test_a_loop_that_does_not_settle_has_no_curve() -> None:
+    controller = TransferFunction.from_polynomials([400], [1])
+    plant = Plant(TransferFunction.from_polynomials([10], [1, 12, 20, 0]), Fraction(0))
+    reference = LoopReference(controller, plant, Fraction(1, 100), Fraction(1, 100))
+    assert loop_curves(reference, discretize(controller, reference.period_s, "bilinear", None).pulse) is None
