@@ -87,3 +87,8 @@ class Page(NamedTuple):
 def pairs(caption: str, items: list[tuple[str, str]]) -> Table:
     """A table of names and what belongs to them."""
     return Table(caption, Rows((("",), ("",)), [list(item) for item in items]))
+
+
+def one_line(words: tuple[str, ...]) -> str:
+    """What stands above a column, its lines joined; a word that was parted is whole again."""
+    return " ".join(filter(None, words)).replace("- ", "")

@@ -7,7 +7,7 @@ from importlib.resources import files
 from jinja2 import Environment, StrictUndefined
 from markupsafe import Markup
 
-from realize.page.blocks import Drawing, Page, Table
+from realize.page.blocks import Drawing, Page, Table, one_line
 from realize.page.inline import inlined
 from realize.page.plots.style import styled, svg_text
 from realize.report.paragraphs import AGREED, OUT
@@ -36,10 +36,12 @@ def _svg(drawing: Drawing) -> str:
     return inlined(svg_text(figure), drawing.key, drawing.title, drawing.alternative)
 
 
-def _head(table: Table) -> list[str]:
-    """The words above each column in one line; none where there are no words."""
-    words = [" ".join(filter(None, lines)).replace("- ", "") for lines in table.rows.head]
-    return words if any(words) else []
+def _head(table: Table) -> list[tuple[str, bool]]:
+    """The words above each column in one line, and whether it holds figures; empty where there are no words."""
+    words = [one_line(lines) for lines in table.rows.head]
+    columns = zip(*table.rows.cells, strict=True)
+    of_figures = [2 * sum(map(_is_figure, column)) > len(column) for column in columns]
+    return list(zip(words, of_figures, strict=True)) if any(words) else []
 
 
 def _cell_class(table: Table, cell: str) -> Markup:

@@ -81,7 +81,7 @@ class Report:
         from realize.page.plots.style import png_bytes, styled, svg_text
 
         def content(figure: Figure) -> bytes:
-            return svg_text(figure).encode() if kind == "svg" else png_bytes(figure)
+            return svg_text(figure, "white").encode() if kind == "svg" else png_bytes(figure)
 
         with styled():
             drawn = {d.key: d.draw() for d in self.page.drawings}

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from realize.page.blocks import Page, Section, Table
+from realize.page.blocks import Page, Section, Table, one_line
 
 #: Characters that Markdown would take for its own.
 _SPECIAL = str.maketrans({c: f"\\{c}" for c in "\\`*_[]<>|#~"})
@@ -32,7 +32,7 @@ def _section(section: Section) -> list[str]:
 
 def _table(table: Table) -> list[str]:
     """Caption, then the table; Markdown has no table without a head, so an empty one stands where there is none."""
-    head = [_plain(" ".join(filter(None, words)).replace("- ", "")) for words in table.rows.head]
+    head = [_plain(one_line(words)) for words in table.rows.head]
     rows = [head, ["---"] * len(head), *([_plain(cell) for cell in row] for row in table.rows.cells)]
     lines = "\n".join(f"| {' | '.join(row)} |" for row in rows)
     return [f"**{_plain(table.caption)}**", lines, *([_plain(table.note)] if table.note else [])]

@@ -48,7 +48,7 @@ def test_step_curves_are_those_of_scipy(damping_percent: int, w_rad_s: int, rate
     decay = (2 * damping_percent * w_rad_s // 100 + 1) / 2
     turn = np.sqrt(w_rad_s**2 - decay**2) * curves.times_s
     ring = np.cos(turn) + decay / np.sqrt(w_rad_s**2 - decay**2) * np.sin(turn)
-    # The closed form of a second-order step; times are kept to 2^-24 of a sample, in which it moves by at most w T 2^-24.
+    # The closed form of a second-order step; times are kept to 2^-24 of a sample: it moves by at most w T 2^-24.
     moved = w_rad_s * float(pulse.period_s) * 2.0**-24
     assert curves.design == pytest.approx(1 - np.exp(-decay * curves.times_s) * ring, abs=moved + 1e-12)
 

@@ -188,3 +188,15 @@ def test_figures_are_files_of_their_own(kind: str, start: bytes) -> None:
     files = made.figures(kind)
     assert list(files) == [f"sieve_resonance_{drawing.key}.{kind}" for drawing in made.page.drawings]
     assert all(content.startswith(start) for content in files.values())
+
+
+@pytest.mark.parametrize("path", sorted((FIXTURES / "page").glob("*.svg")), ids=lambda path: path.stem)
+def test_figures_kept_for_the_readme_say_what_is_drawn_today(path: Path) -> None:
+    """Letter by letter; where each line runs depends on the version of the drawing library."""
+    drawn = report(FIXTURES / "roller_gap.toml").figures("svg")[path.name]
+    assert _words(path.read_bytes()) == _words(drawn)
+    assert f"fixtures/page/{path.name}" in (FIXTURES.parent / "README.md").read_text(encoding="utf-8")
+
+
+def _words(svg: bytes) -> list[str]:
+    return ["".join(e.itertext()) for e in ElementTree.fromstring(svg).iter() if str(e.tag).endswith("}text")]

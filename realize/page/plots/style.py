@@ -99,12 +99,12 @@ def plain_log(axis: Axis) -> None:
     axis.set_major_formatter(lambda value, _: f"{value:g}")
 
 
-def svg_text(figure: Figure) -> str:
+def svg_text(figure: Figure, background: str = "none") -> str:
     """The figure as SVG with real text; no date and no maker in it."""
     with styled():
         text = StringIO()
         nothing = {"Date": None, "Creator": None, "Format": None, "Type": None}
-        figure.savefig(text, format="svg", metadata=nothing)
+        figure.savefig(text, format="svg", facecolor=background, metadata=nothing)
     return text.getvalue()
 
 
