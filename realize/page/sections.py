@@ -195,11 +195,12 @@ def _coefficients(record: dict[str, Any]) -> Table:
 
 
 def _named(section: dict[str, Any]) -> list[tuple[str, dict[str, Any]]]:
-    """What is stored of a section, by name."""
-    if section.get("coefficients"):
-        return list(section["coefficients"].items())
+    """What is stored of a section, by name: its coefficients in z, or those of its own form."""
+    stored = section.get("coefficients", section)
+    if "b" not in stored:
+        return list(stored.items())
     kinds = (("b", 0), ("a", 1))
-    return [(f"{kind}{i}", entry) for kind, first in kinds for i, entry in enumerate(section[kind], first)]
+    return [(f"{kind}{i}", entry) for kind, first in kinds for i, entry in enumerate(stored[kind], first)]
 
 
 def _row(name: str, entry: dict[str, Any]) -> list[str]:

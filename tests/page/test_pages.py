@@ -13,6 +13,7 @@ import html5lib
 import pytest
 
 from realize.design import Overrides, load_design
+from realize.page.blocks import Section
 from realize.page.job import Report
 
 FIXTURES = Path(__file__).parents[2] / "fixtures"
@@ -200,3 +201,20 @@ def test_figures_kept_for_the_readme_say_what_is_drawn_today(path: Path) -> None
 
 def _words(svg: bytes) -> list[str]:
     return ["".join(e.itertext()) for e in ElementTree.fromstring(svg).iter() if str(e.tag).endswith("}text")]
+
+
+@pytest.mark.parametrize(
+    "transfer",
+    ["5", "1/s", "1/s^2", "s^2", "1/(s - 2)", "1/(s + 1)^8", "(s + 1e6)/(s + 1e-6)", "1/(s^2 + 0.0001*s + 1)"],
+)
+def test_any_transfer_function_has_a_page(transfer: str) -> None:
+    """Gains, integrals, growing modes, high orders, and poles that ask for sections in delta."""
+    made = Report(load_design(transfer, Overrides(rate="100 Hz")))
+    parsed(made.html)
+    stored = [row[1] for section in made.page.sections if section.key == "coefficients" for row in _cells(section)]
+    assert "None" not in stored
+    assert bool(stored) == (made.page.answer == "yes")
+
+
+def _cells(section: Section) -> list[list[str]]:
+    return [row for table in section.tables for row in table.rows.cells]
