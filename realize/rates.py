@@ -18,7 +18,7 @@ from realize.band import SAMPLES_PER_BAND_PERIOD, band_edge
 from realize.design import Design, design_from_resolved
 from realize.errors import RealizeError
 from realize.quantity import format_engineering, round_significant
-from realize.workflow import MethodResult, choose, compare, methods_for
+from realize.workflow import MethodResult, choose, compare, make_causal, methods_for
 
 #: Grid of the default range: sixty rates over a factor of 50 are 6.9 % apart.
 POINTS = 60
@@ -93,6 +93,8 @@ class Rates(NamedTuple):
         What the range was taken from.
     rules : tuple of str
         Rules of thumb beside the computed answer.
+    hindrance : str
+        What no rate mends, where no method has one; may be empty.
     """
 
     design: Design
@@ -100,6 +102,7 @@ class Rates(NamedTuple):
     methods: tuple[MethodRates, ...]
     rests_on: str
     rules: tuple[str, ...]
+    hindrance: str = ""
 
 
 def rates(
@@ -146,7 +149,9 @@ def rates(
             raise
     names = methods_for(design) if only is None else (only,)
     methods = tuple(_summary(name, grid, [_of(name, outcomes) for outcomes in found]) for name in names)
-    return Rates(design, grid, methods, sentence, _rules(design, float(base_hz)))
+    able = any(method.lowest_hz is not None for method in methods)
+    hindrance = "" if able else _hindrance(design, grid[-1])
+    return Rates(design, grid, methods, sentence, _rules(design, float(base_hz)), hindrance)
 
 
 def answer(found: Rates) -> str:
@@ -154,9 +159,10 @@ def answer(found: Rates) -> str:
     able = sorted((m for m in found.methods if m.lowest_hz is not None), key=lambda m: m.lowest_hz or 0)
     if not able and len(found.methods) == 1:
         (only,) = found.methods
-        return f"{only.method} is not acceptable at {_hz(found.rates_hz[-1])}, the highest rate: {only.binding}"
+        reason = f"{only.method} is not acceptable at {_hz(found.rates_hz[-1])}, the highest rate: {only.binding}"
+        return reason + found.hindrance
     if not able:
-        return "no method is acceptable up to the highest rate of the range"
+        return "no method is acceptable up to the highest rate of the range" + found.hindrance
     names = "; ".join(f"{m.method} from {lowest_text(m)}" for m in able)
     binding = able[0].binding
     if binding is None:
@@ -173,6 +179,25 @@ def lowest_text(method: MethodRates) -> str:
 
 def _hz(rate: Fraction | None) -> str:
     return format_engineering(rate or Fraction(0), "Hz")
+
+
+def _hindrance(design: Design, rate_hz: Fraction) -> str:
+    """Whether the loop lacks phase margin before it is sampled at all."""
+    if design.plant is None:
+        return ""
+    from realize.loop import LOOP_DEFAULTS
+    from realize.loop_design import phase_margins_deg
+
+    key = "loop_phase_margin_least"
+    least_deg = float(dict(design.tolerance).get(key, LOOP_DEFAULTS[key].tolerance))
+    controller = make_causal(replace(design, period_s=1 / rate_hz), assume=True).transfer
+    margins = [after for _, after in phase_margins_deg(design, [controller]) if after is not None]
+    if not margins or margins[0] >= least_deg:
+        return ""
+    return (
+        f"; the continuous loop itself has a phase margin of {margins[0]:.3g} deg, below the least of {least_deg:.3g} "
+        "deg, which no rate mends: change the controller, or [tolerance] loop_phase_margin_least"
+    )
 
 
 def _edge(design: Design) -> tuple[Fraction, str]:

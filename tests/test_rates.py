@@ -2,6 +2,7 @@
 
 from fractions import Fraction
 
+import numpy as np
 import pytest
 
 from realize.design import design_from_text
@@ -125,3 +126,21 @@ def test_signals_that_no_rate_can_mend_are_refused_once_and_not_by_every_method(
     with pytest.raises(RealizeError) as caught:
         rates(design, points=2)
     assert "per_count" in caught.value.found
+
+
+def test_a_loop_that_lacks_margin_before_it_is_sampled_is_named() -> None:
+    """``400 (s + 1)/(s^2 (s + 10))``: its margin found by numpy from the polynomial of ``|L|^2 = 1``."""
+    squares = np.polysub(np.polymul([1, 0, 0, 0], [1, 0, 100, 0]), 160_000 * np.array([1, 0, 1]))
+    crossover = max(root.real for root in np.roots(squares) if abs(root.imag) < 1e-9 * abs(root))
+    s = 1j * crossover
+    margin_deg = 180 + np.degrees(np.angle(s + 1) - np.angle(s + 10)) - 180
+    text = (
+        '[design]\nname = "thin"\ntransfer = "40*(s + 1)/s"\n[sampling]\nrate = "1 kHz"\n'
+        '[plant]\ntransfer = "10/(s*(s + 10))"\n'
+    )
+    said = answer(rates(design_from_text(text, "thin.toml"), points=2))
+    assert f"has a phase margin of {margin_deg:.3g} deg, below the least of 30 deg" in said
+    lower = design_from_text(
+        text + "[tolerance]\nloop_phase_margin_least = \"20 deg\"\nloop_sensitivity_most = 1.2\n", "thin.toml"
+    )
+    assert "which no rate mends" not in answer(rates(lower, points=2))

@@ -145,7 +145,7 @@ def _figure(value: float | None) -> str:
 
 def _needs(each: StructureWords) -> str:
     if each.smallest_bits is None:
-        words = "no word up to 32 bits is within every tolerance"
+        words = "32 bits are not within every tolerance"
     else:
         words = f"words from {each.smallest_bits} bits"
     if each.coefficient_bits is None:
