@@ -141,6 +141,6 @@ def test_a_loop_that_lacks_margin_before_it_is_sampled_is_named() -> None:
     said = answer(rates(design_from_text(text, "thin.toml"), points=2))
     assert f"has a phase margin of {margin_deg:.3g} deg, below the least of 30 deg" in said
     lower = design_from_text(
-        text + "[tolerance]\nloop_phase_margin_least = \"20 deg\"\nloop_sensitivity_most = 1.2\n", "thin.toml"
+        text + '[tolerance]\nloop_phase_margin_least = "20 deg"\nloop_sensitivity_most = 1.2\n', "thin.toml"
     )
     assert "which no rate mends" not in answer(rates(lower, points=2))
