@@ -14,9 +14,10 @@ from realize.page.curves.plane import Mapped, Plane, plane
 from realize.page.curves.step import LoopCurves, StepCurves, loop_curves, step_curves
 from realize.page.known import Known
 from realize.quantity import format_engineering
-from realize.report.sentences import window_text
-from realize.report.tables import Rows, ledger_rows
-from realize.report.values import complex_text, figure, in_hz
+from realize.realizability import Assessment
+from realize.report.sentences import shape_words, window_text
+from realize.report.tables import Rows, ledger_rows, proposals_rows
+from realize.report.values import complex_text, figure, in_hz, with_unit
 
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
@@ -42,24 +43,32 @@ def window_drawing(known: Known) -> Drawing:
     proposals, around = known.assessment.proposals, known.assessment.around
     band = float(around.band_rad_s)
     nyquist = None if around.period_s is None else pi / float(around.period_s)
-    rows = [
-        [f"{p.placement}, order {p.order}", window_text(p.window_rad_s), f"{float(p.pole_rad_s):.5g}"]
-        for p in proposals
-    ]
-    sentences = "; ".join(f"{name}: window {window or 'empty'}, pole at {pole}" for name, window, pole in rows)
+    words = "; ".join(
+        f"{shape_words(p)}: window {window_text(p.window_rad_s)}, pole at {float(p.pole_rad_s):.5g}" for p in proposals
+    )
 
     def draw() -> Figure:
         from realize.page.plots.bars import window_figure
 
         return window_figure(proposals, band, nyquist)
 
-    head = (("proposal",), ("window in rad/s",), ("pole in rad/s",))
     return Drawing(
         "window",
         "Where the roll-off pole may lie",
-        f"One bar a proposal over frequency in rad/s. {sentences}. Band edge {band:.5g} rad/s.",
-        Table("Windows of the roll-off pole", Rows(head, rows)),
+        f"One bar a proposal over frequency in rad/s, {words}. Band edge {band:.5g} rad/s.",
+        Table("Roll-off proposals, best first", _proposals(known.assessment)),
         draw,
+    )
+
+
+def _proposals(found: Assessment) -> Rows:
+    """The proposals, with what each leaves of the phase margin where there is a plant."""
+    rows, margins = proposals_rows(found.proposals), found.phase_margins_deg
+    if not margins:
+        return rows
+    head = (*rows.head, ("phase margin", "before"), ("", "after"))
+    return Rows(
+        head, [[*row, *(with_unit(m, " deg") for m in pair)] for row, pair in zip(rows.cells, margins, strict=True)]
     )
 
 

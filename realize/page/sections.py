@@ -15,7 +15,6 @@ from realize.page.blocks import Page, Section, Table, pairs
 from realize.page.drawings import drawings, window_drawing
 from realize.page.known import Known
 from realize.quantity import format_engineering
-from realize.realizability import Assessment
 from realize.report.sentences import (
     CAUTION,
     accepted_sentences,
@@ -36,10 +35,8 @@ from realize.report.tables import (
     loops_rows,
     loops_title,
     methods_rows,
-    proposals_rows,
     roots_rows,
 )
-from realize.report.values import with_unit
 from realize.rolloff import rolloff_toml
 
 if TYPE_CHECKING:
@@ -114,26 +111,16 @@ def _realizability(known: Known) -> Section:
     if not found.proposals:
         return Section("realizable", "Can it run at all", (sentence,), (*items, *found.notes), tables=tuple(tables))
     why = [f"first proposal: {reason}" for reason in found.proposals[0].reasons]
-    tables.insert(0, Table("Roll-off proposals, best first", _proposals(found)))
+    window = window_drawing(known)
+    tables.insert(0, window.table)
     return Section(
         "realizable",
         "Can it run at all",
         (sentence,),
         (*items, *why, *found.notes),
-        (window_drawing(known),),
+        (window,),
         tuple(tables),
         "" if design.rolloff is not None else rolloff_toml(found.proposals[0]),
-    )
-
-
-def _proposals(found: Assessment) -> Rows:
-    """The proposals, with what each leaves of the phase margin where there is a plant."""
-    rows, margins = proposals_rows(found.proposals), found.phase_margins_deg
-    if not margins:
-        return rows
-    head = (*rows.head, ("phase margin", "before"), ("", "after"))
-    return Rows(
-        head, [[*row, *(with_unit(m, " deg") for m in pair)] for row, pair in zip(rows.cells, margins, strict=True)]
     )
 
 

@@ -125,14 +125,15 @@ def stored_words(chosen: MethodResult, design: Design) -> str:
 def margins_sentences(assessment: Assessment) -> list[str]:
     """What each proposal leaves of the phase margin."""
     return [
-        f"{_shape(p)}: phase margin of the loop {before:.3g} deg before, "
+        f"{shape_words(p)}: phase margin of the loop {before:.3g} deg before, "
         + ("none" if after is None else f"{after:.3g} deg")
         + " after"
         for p, (before, after) in zip(assessment.proposals, assessment.phase_margins_deg, strict=False)
     ]
 
 
-def _shape(p: Proposal) -> str:
+def shape_words(p: Proposal) -> str:
+    """What kind of roll-off a proposal is."""
     damping = "" if p.damping == 1 else f", damping {float(p.damping):.4g}"
     return f"{p.placement}, order {p.order}{damping}"
 

@@ -8,6 +8,7 @@ from matplotlib.figure import Figure
 
 from realize.loop import Ledger
 from realize.page.plots.style import DESIGN, INK, LIMIT, SECOND, STORED, canvas, mark_frequency, plain_log
+from realize.report.sentences import shape_words
 from realize.rolloff import Proposal
 
 #: Height of a bar with its space, and of everything else, in inches.
@@ -51,7 +52,7 @@ def window_figure(proposals: Sequence[Proposal], band_rad_s: float | None, nyqui
             axes.barh(place, right - first, left=first, height=0.5, color=SECOND, alpha=0.55)
         shape = "D" if proposal.within_window else "X"
         axes.plot(float(proposal.pole_rad_s), place, shape, color=LIMIT, markersize=7)
-    axes.set_yticks(places, [_name(p) for p in proposals])
+    axes.set_yticks(places, [shape_words(p) for p in proposals])
     axes.set_xscale("log")
     plain_log(axes.xaxis)
     axes.set_xlim(low, high)
@@ -62,8 +63,3 @@ def window_figure(proposals: Sequence[Proposal], band_rad_s: float | None, nyqui
         if mark:
             mark_frequency(axes, mark, name)
     return figure
-
-
-def _name(p: Proposal) -> str:
-    damping = "" if p.damping == 1 else f", damping {float(p.damping):.3g}"
-    return f"{p.placement}, order {p.order}{damping}"
