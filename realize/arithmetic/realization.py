@@ -32,6 +32,7 @@ from realize.arithmetic.grouping import (
     grouped,
     monic,
     monic_in_delta,
+    one_by_one,
     split_integral,
 )
 from realize.errors import Refused
@@ -225,6 +226,17 @@ def _refuse_moved(section: Section, rest: Rest) -> None:
 
 def _cascade(rest: Rest, target: FloatFormat) -> tuple[Section, ...]:
     return tuple(_rounded_section(group, gain, target) for group, gain in cascaded(rest, target))
+
+
+def series(pulse: PulseTransferFunction, target: FloatFormat) -> tuple[Section, ...]:
+    """The whole of ``Gd`` as sections one after the other, poles at z = 1 among them; no integral is set apart.
+
+    Raises
+    ------
+    Refused
+        When a coefficient is beyond the format.
+    """
+    return _cascade(Rest(pulse.gain, one_by_one(pulse.poles), one_by_one(pulse.zeros)), target)
 
 
 def _delta(rest: Rest, target: FloatFormat) -> tuple[DeltaSection, ...]:
