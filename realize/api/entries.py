@@ -16,6 +16,7 @@ import numpy as np
 import numpy.typing as npt
 
 from realize.algebra.expression import exact_text
+from realize.api.wording import in_keywords
 from realize.design.gate import Table, WrittenNumber, checked_number
 from realize.errors import RealizeError
 
@@ -82,7 +83,8 @@ def exactly(value: object, where: str) -> Fraction:
     RealizeError
         When it is no finite real number.
     """
-    return checked_number(entry(value, where), {}, where)
+    with in_keywords():
+        return checked_number(entry(value, where), {}, where)
 
 
 def text_of(value: object, where: str) -> str:
