@@ -104,7 +104,7 @@ class PulseTransferFunction:
         """Finite zeros in z, each as often as its multiplicity."""
         return 1 + np.array(every(self._made.pulse.zeros), dtype=np.complex128)
 
-    def response(self, frequency_hz: npt.ArrayLike) -> npt.NDArray[np.complex128]:
+    def response(self, frequency_hz: Reals | npt.ArrayLike) -> npt.NDArray[np.complex128]:
         """``Gd(exp(j 2 pi f T))``, from its factors in ``z - 1``, so that nothing is lost near z = 1.
 
         Parameters

@@ -216,7 +216,7 @@ class TransferFunction:
         """Finite zeros in rad/s, as :attr:`poles`."""
         return np.array(every(self._exact.zeros), dtype=np.complex128)
 
-    def response(self, frequency_hz: npt.ArrayLike) -> npt.NDArray[np.complex128]:
+    def response(self, frequency_hz: Reals | npt.ArrayLike) -> npt.NDArray[np.complex128]:
         """``G(j 2 pi f)``, real and imaginary part correctly rounded.
 
         Parameters

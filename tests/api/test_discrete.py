@@ -37,7 +37,7 @@ def made(drawn: tuple[Factored, Fraction], method: str) -> PulseTransferFunction
 @given(sampled_designs(4), methods)
 def test_arrays_text_and_objects_make_the_same(drawn: tuple[Factored, Fraction], method: str) -> None:
     exact, period_s = drawn[0].transfer(), drawn[1]
-    arrays = tuple(np.array([str(c) for c in p]) for p in (exact.numerator, exact.denominator))
+    arrays = np.array([*map(str, exact.numerator)]), np.array([*map(str, exact.denominator)])
     transfer = TransferFunction(*arrays)
     found = [
         discretize(arrays, period_s=period_s, method=method),
@@ -251,7 +251,7 @@ def test_sections_filter_as_scipy_filters_them() -> None:
     # gain below every coefficient is a short binary number, and some samples of a filter are exact in doubles.
     roots = [Fraction(-2, 3), Fraction(-6, 5)]
     pair = 2 * (complex(0.5, 0.5) - 1) / (complex(0.5, 0.5) + 1)
-    quadratic = [1, -2 * Fraction(round(pair.real * 5), 5), Fraction(round(abs(pair) ** 2 * 5), 5)]
+    quadratic = [Fraction(round(c * 5), 5) for c in (1, -2 * pair.real, abs(pair) ** 2)]
     gain = Fraction(8, 3) * Fraction(16, 5) * (4 + 2 * quadratic[1] + quadratic[2]) / (Fraction(32, 9) * 4 * 2)
     shape = TransferFunction.from_roots([Fraction(-14, 9), Fraction(0)], roots, gain) / TransferFunction(quadratic)
     found = discretize(shape, rate="1 Hz")
