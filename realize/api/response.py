@@ -6,6 +6,7 @@ notch at "2*pi*50" is exactly 0 at 50 Hz, and nothing is lost where terms cancel
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from fractions import Fraction
 from math import inf, nan
 
@@ -49,17 +50,28 @@ def nearest(numerator: int, denominator: int) -> float:
 
 
 def _value(transfer: TransferFunction, w: Fraction) -> complex:
-    degree = max(len(transfer.numerator), len(transfer.denominator)) - 1
-    a, b = _at(transfer.numerator, w, degree)
-    c, d = _at(transfer.denominator, w, degree)
-    size = c * c + d * d
-    return complex(nearest(a * c + b * d, size), nearest(b * c - a * d, size)) if size else ON_POLE
+    n, d = transfer.numerator, transfer.denominator
+    degree = max(len(n), len(d)) - 1
+    (a, b), (re, im) = (_at(p, w, degree) for p in (n, d))
+    size = re * re + im * im
+    return complex(nearest(a * re + b * im, size), nearest(b * re - a * im, size)) if size else ON_POLE
 
 
 def _at(p: poly.Integers, w: Fraction, degree: int) -> tuple[int, int]:
     """Real and imaginary part of ``p(jw)``, times the denominator of w to the power ``degree``."""
-    parts = [0, 0]
-    for power, c in enumerate(reversed(p)):
-        sign = -1 if power % 4 in (2, 3) else 1
-        parts[power % 2] += sign * c * w.numerator**power * w.denominator ** (degree - power)
-    return parts[0], parts[1]
+    top, bottom = w.numerator, w.denominator
+    # p(jw) = even(-w^2) + jw odd(-w^2).
+    even, odd = p[::-1][0::2], p[::-1][1::2]
+    real, imaginary = (_homogeneous(part, -top * top, bottom * bottom) for part in (even, odd))
+    return (
+        real * bottom ** (degree + 2 - 2 * len(even)),
+        imaginary * top * bottom ** (degree + 1 - 2 * len(odd)),
+    )
+
+
+def _homogeneous(ascending: Sequence[int], x: int, y: int) -> int:
+    """``sum c_i x^i y^(m - i)``, m the degree of the polynomial, by Horner's rule."""
+    value, power = 0, 1
+    for c in reversed(ascending):
+        value, power = value * x + c * power, power * y
+    return value

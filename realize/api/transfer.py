@@ -322,6 +322,9 @@ class TransferFunction:
     def __hash__(self) -> int:
         return hash((self.numerator, self.denominator))
 
+    def __reduce__(self) -> tuple[type[TransferFunction], tuple[tuple[int, ...], tuple[int, ...]]]:
+        return TransferFunction, (self.numerator, self.denominator)
+
     def __str__(self) -> str:
         text = format_transfer(*self._shown())
         return text if self._is_short() else f"{text} (coefficients rounded)"

@@ -10,7 +10,7 @@ import html5lib
 import mpmath
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy import signal
 
@@ -81,6 +81,7 @@ def test_prewarping_is_exact_where_it_is_asked_to_be() -> None:
 # ---------------------------------------------------------------- the step
 
 
+@settings(max_examples=40)
 @given(sampled_designs(4, FOLLOWED), methods)
 def test_the_step_is_what_scipy_filters_within_what_rounding_can_do(
     drawn: tuple[Factored, Fraction], method: str
@@ -221,6 +222,7 @@ def times(p: list[Fraction], q: list[Fraction]) -> list[Fraction]:
     return product
 
 
+@settings(max_examples=40)
 @given(sampled_designs(6), methods)
 def test_sections_multiply_to_the_whole_within_their_rounding(drawn: tuple[Factored, Fraction], method: str) -> None:
     found = made(drawn, method)

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import copy
+import pickle
 from collections.abc import Callable
 from fractions import Fraction
 from operator import add, mul, sub, truediv
@@ -11,7 +13,7 @@ import html5lib
 import mpmath
 import numpy as np
 import pytest
-from hypothesis import assume, given
+from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 
 from realize import RealizeError, Refused, TransferFunction
@@ -74,6 +76,13 @@ def test_the_representation_reads_back_the_same(a: TransferFunction) -> None:
     assert hash(TransferFunction.parse(str(a))) == hash(a)
 
 
+@given(transfers())
+def test_it_can_be_sent_to_another_process_once_its_roots_are_known(a: TransferFunction) -> None:
+    assert len(a.poles) == a.order
+    assert pickle.loads(pickle.dumps(a)) == copy.deepcopy(a) == a
+
+
+@settings(max_examples=30)
 @given(sampled_designs(6))
 def test_roots_coefficients_and_text_make_the_same(drawn: tuple[Factored, Fraction]) -> None:
     design, _ = drawn
