@@ -54,6 +54,10 @@ def design_of(
     Refused
         When a cancellation in it hides a growing mode, or a plant is improper.
     """
+    if not isinstance(values or {}, Mapping):
+        raise RealizeError("values", repr(values), "a mapping of names to numbers", 'such as values={"kp": 4.2}')
+    if not isinstance(name or "", str):
+        raise RealizeError("name", repr(name), "a C identifier, as text", 'such as name="roller_gap"')
     numbers = {key: text_of(value, f"values, {key}") for key, value in (values or {}).items()}
     overrides = Overrides(rate_of(rate, rate_hz), period_of(period, period_s), name, method, numbers)
     with in_keywords():

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from fractions import Fraction
 from functools import cached_property
+from operator import index
 from typing import Any
 
 import numpy as np
@@ -16,7 +17,7 @@ from realize.api.entries import Arguments, Number, Reals, exactly, text_of
 from realize.api.notebook import fraction, paragraph
 from realize.api.response import ON_POLE
 from realize.api.samples import step_samples
-from realize.api.transfer import TransferFunction
+from realize.api.transfer import TransferFunction, exact_of
 from realize.api.wording import in_keywords
 from realize.arithmetic.realization import series
 from realize.checks.counterpart import Counterpart
@@ -163,7 +164,7 @@ class PulseTransferFunction:
         >>> realize.discretize("1/s", rate="10 Hz").step(4).tolist()
         [0.05, 0.15, 0.25, 0.35]
         """
-        return step_samples(self._made.pulse, samples)
+        return step_samples(self._made.pulse, index(samples))
 
     def to_scipy(self) -> Any:
         """The same as discrete ``scipy.signal.TransferFunction``, with ``dt``.
@@ -268,7 +269,7 @@ def discretize(
     period_given_s = _required_period(rate_of(rate, rate_hz), period_of(period, period_s))
     name = _known_method(method)
     at_rad_s = _exact_at(exact_at, exact_at_hz, name)
-    return PulseTransferFunction(by_method(given._exact, period_given_s, name, at_rad_s))
+    return PulseTransferFunction(by_method(exact_of(given), period_given_s, name, at_rad_s))
 
 
 def transfer_of(transfer: TransferFunction | str | tuple[Reals, Reals]) -> TransferFunction:

@@ -13,7 +13,7 @@ from typing import Any, NamedTuple
 
 from realize.api.discrete import PulseTransferFunction
 from realize.api.notebook import figure, items, paragraph, table
-from realize.api.transfer import TransferFunction
+from realize.api.transfer import TransferFunction, public
 from realize.checks.check import Check
 from realize.design import Design
 from realize.firmware.job import Emitted
@@ -44,6 +44,19 @@ class Proposal(NamedTuple):
         What sets either end of that window, or the ways out.
     toml : str
         The lines to add to a design file.
+
+    Examples
+    --------
+    >>> import realize
+    >>> best = realize.assess("4.2 + 18/s + 0.09*s", rate="2 kHz").proposals[0]
+    >>> print(best.toml)
+    [rolloff]
+    placement = "derivative"
+    order = 1
+    pole = "1070 rad/s"
+    <BLANKLINE>
+    >>> best.transfer.relative_degree
+    0
     """
 
     transfer: TransferFunction
@@ -88,7 +101,7 @@ class Assessment:
 
     def __init__(self, design: Design, found: Found) -> None:
         self._design, self._found = design, found
-        self.transfer = TransferFunction._of(found.transfer)
+        self.transfer = public(found.transfer)
         self.realizable = found.realizable
         self.improper_terms = tuple(term.text for term in found.terms)
         self.proposals = tuple(_proposal(p) for p in found.proposals)
@@ -136,6 +149,18 @@ class MethodResult:
         Checks that are out, and not agreed to.
     notes : tuple of str
         What else is worth knowing.
+
+    Examples
+    --------
+    >>> import realize
+    >>> found = realize.compare("1/(0.05*s + 1)", rate="2 kHz").methods["backward-difference"]
+    >>> found
+    <MethodResult of backward-difference: acceptable>
+    >>> found.discrete.poles.real.round(4).tolist()
+    [0.9901]
+    >>> check = found.checks["pole shift"]
+    >>> check.verdict, check.tolerance, check.unit
+    ('within', 2.0, '%')
     """
 
     def __init__(self, result: Result) -> None:
@@ -187,7 +212,7 @@ class Comparison:
 
     def __init__(self, found: Compared) -> None:
         self._found = found
-        self.transfer = TransferFunction._of(found.causal.transfer)
+        self.transfer = public(found.causal.transfer)
         self.period_s, self.recommended, self.because = found.period_s, found.recommended, found.because
         self.methods: Mapping[str, MethodResult] = MappingProxyType({m.method: MethodResult(m) for m in found.methods})
         self.chosen = self.methods[found.chosen.method] if found.chosen else None
@@ -273,7 +298,7 @@ class Emission:
 
 def _proposal(found: FoundProposal) -> Proposal:
     return Proposal(
-        transfer=TransferFunction._of(found.transfer),
+        transfer=public(found.transfer),
         placement=found.placement,
         order=found.order,
         damping=found.damping,

@@ -90,7 +90,7 @@ class TransferFunction:
         (21*s + 90)/(5*s)
         """
         known = {name: entry(value, f"{_NAME}.parse, {name}") for name, value in values.items()}
-        return cls._of(_read({"transfer": text, "values": known}, f"{_NAME}.parse"))
+        return public(_read({"transfer": text, "values": known}, f"{_NAME}.parse"))
 
     @classmethod
     def from_roots(cls, zeros: Roots = (), poles: Roots = (), gain: Real = 1) -> TransferFunction:
@@ -109,7 +109,7 @@ class TransferFunction:
         """
         source = f"{_NAME}.from_roots"
         given = {key: row(value, f"{source}, {key}") for key, value in (("zeros", zeros), ("poles", poles))}
-        return cls._of(_read({**given, "gain": entry(gain, f"{source}, gain")}, source))
+        return public(_read({**given, "gain": entry(gain, f"{source}, gain")}, source))
 
     @classmethod
     def s(cls) -> TransferFunction:
@@ -147,13 +147,7 @@ class TransferFunction:
         """
         from realize.api.scipy_gate import scipy_objects
 
-        return cls._of(_read(scipy_objects().entries_of(system), f"{_NAME}.from_scipy"))
-
-    @classmethod
-    def _of(cls, exact: ExactTransferFunction) -> TransferFunction:
-        made = object.__new__(cls)
-        made._exact = exact
-        return made
+        return public(_read(scipy_objects().entries_of(system), f"{_NAME}.from_scipy"))
 
     @property
     def numerator(self) -> tuple[int, ...]:
@@ -358,6 +352,18 @@ class TransferFunction:
         return above, below
 
 
+def public(exact: ExactTransferFunction) -> TransferFunction:
+    """The face of an exact transfer function."""
+    made = object.__new__(TransferFunction)
+    made._exact = exact
+    return made
+
+
+def exact_of(transfer: TransferFunction) -> ExactTransferFunction:
+    """What is behind the face."""
+    return transfer._exact
+
+
 def _read(given: dict[str, object], source: str) -> ExactTransferFunction:
     """Read a transfer function in any of the forms of the table ``[design]``."""
     with in_keywords():
@@ -383,4 +389,4 @@ def _bounded(compute: Callable[[], Ratio]) -> TransferFunction:
         found = compute()
     except UnfitError as problem:
         raise RealizeError(_NAME, problem.found, problem.allowed, problem.advice) from None
-    return TransferFunction._of(reduced(poly.rationals(found.numerator), poly.rationals(found.denominator), _NAME))
+    return public(reduced(poly.rationals(found.numerator), poly.rationals(found.denominator), _NAME))

@@ -74,6 +74,8 @@ def test_what_a_call_says_stands_in_place_of_the_design() -> None:
         ("1/(s + q)", {}, "expression, column 8", 'the unknown name "q"'),
         ("1/s", {"values": {"q": 2}}, "values q", "a value that nothing uses"),
         ("1/s", {"method": "bilinera"}, "method", '"bilinera"'),
+        ("1/s", {"values": ["kp"]}, "values", "['kp']"),
+        ("1/s", {"name": 5}, "name", "5"),
         ("1/s", {"name": "2fast"}, "name", 'the name "2fast"'),
         ("1/s", {"rate": "1 Hz", "period": "1 s"}, "rate", "rate= and period= at once"),
         ("1/s", {"period_s": 1, "period": "1 s"}, "period", "period and period_s at once"),
