@@ -8,18 +8,22 @@ from pathlib import Path
 from typing import Any, TypeAlias, TypedDict
 
 from realize.algebra.expression import exact_text, format_transfer
-from realize.api.discrete import period_of, rate_of
-from realize.api.entries import Number, Real, entry, text_of
+from realize.api.discrete import period_of, rate_of, transfer_of
+from realize.api.entries import Number, Real, Reals, entry, text_of
 from realize.api.transfer import TransferFunction
 from realize.api.wording import in_keywords
 from realize.design import Design, Overrides, load_design
 from realize.design.load import STANDARD_INPUT, design_from_document
 from realize.errors import RealizeError
 
-#: What stands for a design: the path of a file, an expression in s, a transfer function, or the tables of a file.
-DesignLike: TypeAlias = "str | os.PathLike[str] | TransferFunction | Mapping[str, Any]"
+#: What stands for a design: the path of a file, an expression in s, a transfer function or the pair of its
+#: coefficients, or the tables of a file.
+DesignLike: TypeAlias = "str | os.PathLike[str] | TransferFunction | tuple[Reals, Reals] | Mapping[str, Any]"
 
-_ALLOWED = "the path of a design file (.toml), an expression in s, a TransferFunction, or a mapping of its tables"
+_ALLOWED = (
+    "the path of a design file (.toml), an expression in s, a TransferFunction, a pair of coefficients, or a mapping "
+    "of the tables of a design file"
+)
 
 
 class Changes(TypedDict, total=False):
@@ -65,8 +69,8 @@ def design_of(
 
 
 def _loaded(design: DesignLike, overrides: Overrides) -> Design:
-    if isinstance(design, TransferFunction):
-        return design_from_document(_tables_of(design), "TransferFunction", overrides)
+    if isinstance(design, (TransferFunction, tuple)):
+        return design_from_document(_tables_of(transfer_of(design)), "TransferFunction", overrides)
     if isinstance(design, Mapping):
         return design_from_document({key: _table(value, key) for key, value in design.items()}, "design", overrides)
     if isinstance(design, os.PathLike):

@@ -33,6 +33,8 @@ from realize.quantity import SHOWN_DIGITS, format_engineering, parse_quantity, r
 
 _PREWARPED = "bilinear-prewarped"
 
+_TRANSFERS = "a TransferFunction, an expression in s, or a pair of coefficients (numerator, denominator)"
+
 
 class PulseTransferFunction:
     """What :func:`discretize` makes: a transfer function in z at one period.
@@ -276,6 +278,9 @@ def transfer_of(transfer: TransferFunction | str | tuple[Reals, Reals]) -> Trans
     """The transfer function that an argument stands for."""
     if isinstance(transfer, TransferFunction):
         return transfer
+    if isinstance(transfer, str) and transfer.lower().endswith(".toml"):
+        found, advice = "the name of a design file", f"realize.compare({transfer!r}).transfer, which is proper"
+        raise RealizeError("transfer", found, _TRANSFERS, advice)
     if isinstance(transfer, str):
         return TransferFunction.parse(transfer)
     if isinstance(transfer, (tuple, list)) and len(transfer) == 2:
@@ -283,7 +288,7 @@ def transfer_of(transfer: TransferFunction | str | tuple[Reals, Reals]) -> Trans
     raise RealizeError(
         "transfer",
         f"an object of type {type(transfer).__name__}",
-        "a TransferFunction, an expression in s, or a pair of coefficients (numerator, denominator)",
+        _TRANSFERS,
         'such as TransferFunction([1], [0.05, 1]), "1/(0.05*s + 1)" or ([1], [0.05, 1])',
     )
 

@@ -75,6 +75,20 @@ def row(value: object, where: str) -> list[object]:
     return found if isinstance(found, list) else [found]
 
 
+def coefficients(value: object, where: str) -> list[object]:
+    """The entries of a sequence or array of real numbers, or of one alone.
+
+    Raises
+    ------
+    RealizeError
+        As :func:`entry`, and for a complex number.
+    """
+    found = row(value, where)
+    for i, each in enumerate(value if isinstance(value, (list, tuple)) else np.atleast_1d(np.asarray(value)), 1):
+        _refuse_complex(each, f"{where}, entry {i}")
+    return found
+
+
 def exactly(value: object, where: str) -> Fraction:
     """The rational number that a number of Python counts as.
 
@@ -83,6 +97,7 @@ def exactly(value: object, where: str) -> Fraction:
     RealizeError
         When it is no finite real number.
     """
+    _refuse_complex(value, where)
     with in_keywords():
         return checked_number(entry(value, where), {}, where)
 
@@ -93,6 +108,12 @@ def text_of(value: object, where: str) -> str:
         return value
     exact, written = exactly(value, where), entry(value, where)
     return str(written) if isinstance(written, WrittenNumber) else exact_text(exact)
+
+
+def _refuse_complex(value: object, where: str) -> None:
+    if isinstance(value, (complex, np.complexfloating)) and value.imag:
+        found = f"the complex number {complex(value):.5g}"
+        raise RealizeError(where, found, "real numbers", "roots may be complex, in pairs: TransferFunction.from_roots")
 
 
 def _number(value: object, where: str) -> object:

@@ -20,9 +20,10 @@ def assess(design: DesignLike, **changes: Unpack[Changes]) -> Assessment:
 
     Parameters
     ----------
-    design : str, path, TransferFunction or mapping
-        The path of a design file (ends in ``.toml``), an expression in s, a transfer function, or the tables of a
-        design file as ``tomllib`` reads them; arrays and transfer functions may stand in a mapping too.
+    design : str, path, TransferFunction, pair or mapping
+        The path of a design file (ends in ``.toml``), an expression in s, a transfer function or the pair of its
+        coefficients, or the tables of a design file as ``tomllib`` reads them; arrays and transfer functions may stand
+        in a mapping too.
     rate, period : str, optional
         In place of the design's, with a unit: ``"2 kHz"``, ``"500 us"``.
     rate_hz, period_s : number, optional

@@ -14,7 +14,7 @@ from realize.algebra import polynomial as poly
 from realize.algebra.expression import format_transfer, ratio
 from realize.algebra.expression.ratio import Ratio, UnfitError
 from realize.algebra.rounding import FLOAT64
-from realize.api.entries import Arguments, Number, Real, Reals, Roots, entry, exactly, row
+from realize.api.entries import Arguments, Number, Real, Reals, Roots, coefficients, entry, exactly, row
 from realize.api.notebook import fraction
 from realize.api.response import exact_response
 from realize.api.wording import in_keywords
@@ -72,7 +72,7 @@ class TransferFunction:
 
     def __init__(self, numerator: Reals, denominator: Reals = 1) -> None:
         given = {"numerator": numerator, "denominator": denominator}
-        self._exact = _read({key: row(value, f"{_NAME}, {key}") for key, value in given.items()}, _NAME)
+        self._exact = _read({key: coefficients(value, f"{_NAME}, {key}") for key, value in given.items()}, _NAME)
 
     @classmethod
     def parse(cls, text: str, /, **values: Real) -> TransferFunction:

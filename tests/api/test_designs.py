@@ -47,6 +47,7 @@ def test_a_transfer_function_stands_for_itself_and_in_tables() -> None:
     lag = TransferFunction([2], [0.05, 1])
     alone, in_tables = design_of(lag, rate="2 kHz"), design_of({"design": {"transfer": lag}}, period_s=0.0005)
     assert alone == in_tables == design_of("40/(s + 20)", rate_hz=2000)
+    assert alone == design_of((np.array([2.0]), [0.05, 1]), rate_hz=2000)
     plant = {"transfer": TransferFunction([1], [1, 0])}
     assert design_of({"design": {"transfer": lag}, "plant": plant}).plant is not None
 

@@ -302,6 +302,7 @@ def test_it_prints_and_shows_to_five_digits() -> None:
         (lambda: discretize("1/s", rate="1 Hz", exact_at_hz=1), "exact_at", "a frequency with bilinear"),
         (lambda: discretize("1/s", rate="1 Hz", method="bilinear-prewarped"), "exact_at", "no frequency"),
         (lambda: discretize(5, rate="1 Hz"), "transfer", "an object of type int"),  # type: ignore[arg-type]
+        (lambda: discretize("gap.toml", rate="1 Hz"), "transfer", "the name of a design file"),
         (lambda: discretize("1/t", rate="1 Hz"), "TransferFunction.parse, column 3", 'the unknown name "t"'),
     ],
 )

@@ -64,7 +64,7 @@ def test_numbers_of_every_kind_are_exact_and_read_back_from_their_text(given: Nu
         (Decimal("Infinity"), "nan, which is no finite number"),
         (True, "true"),
         (np.True_, "true"),
-        (1j, "a list"),
+        (1j, "the complex number 0+1j"),
         (object(), "an object of type object"),
         (None, "an object of type NoneType"),
     ],

@@ -176,6 +176,11 @@ def test_a_loop_around_an_unstable_plant_is_closed_but_division_would_hide_its_m
             'the unknown name "x"',
         ),
         (lambda g: TransferFunction([1], np.eye(2)), "TransferFunction, denominator, entry 1", "a list"),
+        (
+            lambda g: TransferFunction(np.array([1, 2 - 3j])),
+            "TransferFunction, numerator, entry 2",
+            "the complex number 2-3j",
+        ),
         (lambda g: TransferFunction([1] * 40), "TransferFunction, numerator", "a list of 40"),
         (lambda g: TransferFunction.parse("a/s", b=1), "TransferFunction.parse, column 1", 'the unknown name "a"'),
         (lambda g: TransferFunction.parse(cast(str, 5)), "TransferFunction.parse", "the number 5"),
