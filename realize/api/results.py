@@ -20,7 +20,7 @@ from realize.firmware.job import Emitted
 from realize.quantity import format_engineering
 from realize.realizability import Assessment as Found
 from realize.report.documents import assess_document, compare_document, emit_document
-from realize.report.terminal import CAUTION, assess_text, compare_text, emit_text
+from realize.report.terminal import assess_text, compare_text, emit_text
 from realize.rolloff import Proposal as FoundProposal
 from realize.rolloff import rolloff_toml
 from realize.workflow import Comparison as Compared
@@ -289,8 +289,9 @@ class Emission:
         rows = [
             (place, str(len(text.encode()))) for place, text in zip(self._places(), self.files.values(), strict=True)
         ]
-        first, checks = paragraph(_first_paragraph(str(self))), _checks_table(f"Checks of {self.method}", self.checks)
-        return first + checks + table("Files", ("file", "bytes"), rows) + paragraph(CAUTION)
+        first, caution = (paragraph(text) for text in (_first_paragraph(str(self)), _last_paragraph(str(self))))
+        checks = _checks_table(f"Checks of {self.method}", self.checks)
+        return first + checks + table("Files", ("file", "bytes"), rows) + caution
 
     def _places(self) -> list[str]:
         return [str(path) for path in self.paths] or [f"{name} (in memory)" for name in self.files]
@@ -344,3 +345,8 @@ def _judged(check: Check | None) -> str:
 def _first_paragraph(screen: str) -> str:
     """Yes or no, and why: what every screen starts with."""
     return screen.split("\n\n", 1)[0]
+
+
+def _last_paragraph(screen: str) -> str:
+    """The caution that the screen of an emission ends with."""
+    return screen.rstrip().rsplit("\n\n", 1)[1]
