@@ -228,17 +228,6 @@ def _cascade(rest: Rest, target: FloatFormat) -> tuple[Section, ...]:
     return tuple(_rounded_section(group, gain, target) for group, gain in cascaded(rest, target))
 
 
-def series(pulse: PulseTransferFunction, target: FloatFormat) -> tuple[Section, ...]:
-    """The whole of ``Gd`` as sections one after the other, poles at z = 1 among them; no integral is set apart.
-
-    Raises
-    ------
-    Refused
-        When a coefficient is beyond the format.
-    """
-    return _cascade(Rest(pulse.gain, one_by_one(pulse.poles), one_by_one(pulse.zeros)), target)
-
-
 def _delta(rest: Rest, target: FloatFormat) -> tuple[DeltaSection, ...]:
     """The cascade in delta. Rounding keeps a zero at z = -1 there too: see :func:`_takes_any_gain`."""
     scaled = _scaled(rest, lambda group: _rounded_delta_section(group, Fraction(1), target), _takes_any_gain)
@@ -296,6 +285,18 @@ def _rounded_section(group: Group, gain: Fraction, target: FloatFormat) -> Secti
     b = _rounded_product(group.zeros, gain, target)
     a = _rounded_product(group.poles, Fraction(1), target)[1:]
     return Section(_padded((0.0,) * group.delays + b, order + 1), _padded(a, order))
+
+
+def series(pulse: PulseTransferFunction, target: FloatFormat) -> tuple[Section, ...]:
+    """The whole of ``Gd`` as sections one after the other, poles at z = 1 among them; no integral is set apart.
+
+    Raises
+    ------
+    Refused
+        When a coefficient is beyond the format.
+    """
+    whole = Rest(pulse.gain, one_by_one(pulse.poles), one_by_one(pulse.zeros))
+    return tuple(_rounded_section(group, gain, target) for group, gain in cascaded(whole, target))
 
 
 def _rounded_delta_section(group: Group, gain: Fraction, target: FloatFormat) -> DeltaSection:
