@@ -33,6 +33,8 @@ def test_what_is_asked_for_is_loaded_without_scipy_and_click() -> None:
 def test_every_name_is_there_and_documented(name: str) -> None:
     assert (getattr(realize, name).__doc__ or "").strip()
     assert name in dir(realize)
+    # Found without asking again.
+    assert name in vars(realize)
 
 
 def test_a_name_that_is_not_there_is_told_as_python_tells_it() -> None:
