@@ -68,7 +68,6 @@ def test_numbers_of_every_kind_are_exact_and_read_back_from_their_text(given: Nu
         (object(), "an object of type object"),
         (None, "an object of type NoneType"),
     ],
-    ids=repr,
 )
 def test_what_is_no_finite_real_number_is_refused_by_its_place(given: Number, found: str) -> None:
     with pytest.raises(RealizeError) as refusal:
