@@ -209,7 +209,7 @@ class PulseTransferFunction:
         return np.array(rows or [(0.0, 0.0, 0.0, 1.0, 0.0, 0.0)])
 
     def __str__(self) -> str:
-        return f"{format_transfer(*self._shown(), 'z')}, {self._made_by()}"
+        return f"{format_transfer(*self._shown(), 'z')}, {self._made_by()}{self._rounding()}"
 
     def __repr__(self) -> str:
         return f"<PulseTransferFunction {self}>"
@@ -217,10 +217,15 @@ class PulseTransferFunction:
     def _repr_html_(self) -> str:
         """A fraction in MathML, to five digits."""
         formula = fraction("Gd(z)", *self._shown(), "z", format_transfer(*self._shown(), "z"))
-        return formula + paragraph(f"{self._made_by()}; coefficients to {SHOWN_DIGITS} digits")
+        return formula + paragraph(f"{self._made_by()}{self._rounding()}")
 
     def _made_by(self) -> str:
         return f"{self.method} at {format_engineering(self.rate_hz, 'Hz')}"
+
+    def _rounding(self) -> str:
+        """A word of warning where the coefficients have more digits than are shown."""
+        shown = tuple(tuple(map(float, p)) for p in self._shown())
+        return "" if shown == self._coefficients else " (coefficients rounded)"
 
     def _shown(self) -> tuple[tuple[Fraction, ...], tuple[Fraction, ...]]:
         """Coefficients to five digits."""
@@ -265,7 +270,7 @@ def discretize(
     --------
     >>> import realize
     >>> realize.discretize(([1], [0.05, 1]), rate_hz=2000, method="step-invariant")
-    <PulseTransferFunction 0.0099502/(z - 0.99005), step-invariant at 2 kHz>
+    <PulseTransferFunction 0.0099502/(z - 0.99005), step-invariant at 2 kHz (coefficients rounded)>
     """
     given = transfer_of(transfer)
     period_given_s = _required_period(rate_of(rate, rate_hz), period_of(period, period_s))

@@ -276,7 +276,8 @@ def test_an_integral_stays_in_the_sections_and_a_gain_is_one() -> None:
 
 def test_it_prints_and_shows_to_five_digits() -> None:
     found = discretize("1/(0.05*s + 1)", rate="2 kHz")
-    assert str(found) == "(0.0049751*z + 0.0049751)/(z - 0.99005), bilinear at 2 kHz"
+    assert str(found) == "(0.0049751*z + 0.0049751)/(z - 0.99005), bilinear at 2 kHz (coefficients rounded)"
+    assert str(discretize("1/s", rate="10 Hz")) == "(0.05*z + 0.05)/(z - 1), bilinear at 10 Hz"
     assert repr(found) == f"<PulseTransferFunction {found}>"
     root = html5lib.HTMLParser(strict=True).parseFragment(found._repr_html_())
     assert "bilinear at 2 kHz" in "".join(root.itertext())
