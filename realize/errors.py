@@ -21,6 +21,15 @@ class RealizeError(ValueError):
         What to try next.
     excerpt : str
         Lines quoted from the input (an expression with a caret below it); may be empty.
+
+    Examples
+    --------
+    >>> import realize
+    >>> try:
+    ...     realize.TransferFunction.parse("4.2 + 18/t")
+    ... except realize.RealizeError as error:
+    ...     print(error.found)
+    the unknown name "t"
     """
 
     exit_status = 2
@@ -42,6 +51,16 @@ class RealizeError(ValueError):
 
 
 class Refused(RealizeError):
-    """The input is understood, and the answer is no: improper, unstable, out of tolerance."""
+    """The input is understood, and the answer is no: improper, unstable, out of tolerance.
+
+    Examples
+    --------
+    >>> import realize
+    >>> try:
+    ...     realize.emit("4.2 + 18/s + 0.09*s", rate="2 kHz")
+    ... except realize.Refused as refusal:
+    ...     print(refusal.where, "-", refusal.allowed)
+    transfer - as many poles as zeros, or more
+    """
 
     exit_status = 1

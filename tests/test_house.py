@@ -27,6 +27,7 @@ LAYERS = (
     ("trial",),
     ("report",),
     ("page",),
+    ("api",),
     ("cli", "__main__", "__init__"),
 )
 RANK = {name: rank for rank, names in enumerate(LAYERS) for name in names}
@@ -60,8 +61,12 @@ def test_the_core_imports_numpy_and_the_standard_library_only(path: Path) -> Non
     assert outside <= {"numpy", "realize"}
 
 
-def test_scipy_is_loaded_for_the_second_opinion_alone() -> None:
+def test_scipy_is_loaded_for_the_second_opinion_and_to_exchange_objects_with_it() -> None:
     using = [str(path) for path in MODULES if any(name.split(".")[0] == "scipy" for name in _imports(path))]
-    assert using == ["firmware/audit/scipy_roads.py"]
+    assert using == ["api/scipy_objects.py", "firmware/audit/scipy_roads.py"]
     name = "realize.firmware.audit.scipy_roads"
     assert [str(path) for path in MODULES if name in _imports(path)] == ["firmware/audit/second_opinion.py"]
+    # Loaded by name, when it is asked for.
+    assert not [str(path) for path in MODULES if "realize.api.scipy_objects" in _imports(path)]
+    named = [path for path in MODULES if "realize.api.scipy_objects" in (PACKAGE / path).read_text(encoding="utf-8")]
+    assert list(map(str, named)) == ["api/scipy_gate.py"]

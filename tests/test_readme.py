@@ -1,5 +1,6 @@
 """What the README prints is what the commands print."""
 
+import doctest
 import os
 import re
 import shlex
@@ -43,6 +44,17 @@ def _emitted_for(command: str) -> list[str]:
     records = [word for word in command.split() if word.endswith(".record.json")]
     names = {Path(record).name.removesuffix(".record.json") for record in records}
     return [other for other, _ in EXAMPLES if other.startswith("emit ") and Path(other.split()[1]).stem in names]
+
+
+def test_the_examples_in_python_do_what_they_show(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    os.symlink(ROOT / "fixtures", tmp_path / "fixtures")
+    monkeypatch.chdir(tmp_path)
+    blocks = re.findall(r"^```python\n(>>> .*?)^```$", README, re.DOTALL | re.MULTILINE)
+    runner = doctest.DocTestRunner()
+    for block in blocks:
+        runner.run(doctest.DocTestParser().get_doctest(block, {}, "README", "README.md", None))
+    assert runner.tries > 0
+    assert runner.failures == 0
 
 
 @pytest.mark.parametrize("name", ["roller_gap", "roller_gap_int16"])

@@ -89,10 +89,10 @@ class Rest(NamedTuple):
 @lru_cache(maxsize=8)
 def split_integral(pulse: PulseTransferFunction) -> tuple[tuple[Fraction, ...], Rest]:
     """``R_1, R_2, ...`` and the rest, by the Taylor series at z = 1; kept, because every structure asks for it."""
-    poles = _factors(root for root in pulse.poles if root.value != 0)
+    poles = one_by_one(root for root in pulse.poles if root.value != 0)
     order = sum(root.multiplicity for root in pulse.poles if root.value == 0)
     if order == 0:
-        return (), Rest(pulse.gain, poles, _factors(pulse.zeros))
+        return (), Rest(pulse.gain, poles, one_by_one(pulse.zeros))
     numerator = poly.shift(poly.trimmed(pulse.numerator), Fraction(1))
     decaying = poly.shift(pulse.denominator, Fraction(1))[:-order]
     series = _taylor(numerator, decaying, order)
@@ -101,7 +101,7 @@ def split_integral(pulse: PulseTransferFunction) -> tuple[tuple[Fraction, ...], 
     rest = _without_vanishing_lead(left[:-order] if left else ())
     if not rest:
         return tuple(reversed(series)), Rest(Fraction(0), poles, ())
-    return tuple(reversed(series)), Rest(rest[0], poles, _factors(isolate(poly.primitive(rest))))
+    return tuple(reversed(series)), Rest(rest[0], poles, one_by_one(isolate(poly.primitive(rest))))
 
 
 def _taylor(numerator: poly.Rationals, denominator: poly.Rationals, count: int) -> list[Fraction]:
@@ -120,7 +120,8 @@ def _without_vanishing_lead(p: poly.Rationals) -> poly.Rationals:
     return p[first:]
 
 
-def _factors(roots: Iterable[Root]) -> tuple[Factor, ...]:
+def one_by_one(roots: Iterable[Root]) -> tuple[Factor, ...]:
+    """Roots one by one, pairs together."""
     return tuple(Factor(root) for root in roots for _ in range(root.multiplicity))
 
 

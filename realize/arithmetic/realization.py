@@ -32,6 +32,7 @@ from realize.arithmetic.grouping import (
     grouped,
     monic,
     monic_in_delta,
+    one_by_one,
     split_integral,
 )
 from realize.errors import Refused
@@ -284,6 +285,18 @@ def _rounded_section(group: Group, gain: Fraction, target: FloatFormat) -> Secti
     b = _rounded_product(group.zeros, gain, target)
     a = _rounded_product(group.poles, Fraction(1), target)[1:]
     return Section(_padded((0.0,) * group.delays + b, order + 1), _padded(a, order))
+
+
+def series(pulse: PulseTransferFunction, target: FloatFormat) -> tuple[Section, ...]:
+    """The whole of ``Gd`` as sections one after the other, poles at z = 1 among them; no integral is set apart.
+
+    Raises
+    ------
+    Refused
+        When a coefficient is beyond the format.
+    """
+    whole = Rest(pulse.gain, one_by_one(pulse.poles), one_by_one(pulse.zeros))
+    return tuple(_rounded_section(group, gain, target) for group, gain in cascaded(whole, target))
 
 
 def _rounded_delta_section(group: Group, gain: Fraction, target: FloatFormat) -> DeltaSection:
