@@ -1,0 +1,291 @@
+"""A whole schedule: one method, one structure and one layout for every operating point, and all of it checked.
+
+At every point all checks are run on what is stored. Between two points the looked-up coefficients are checked: in the
+middle by every check, against the design whose scheduled values are interpolated there, and on a grid for stability.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+from dataclasses import replace
+from math import inf
+from typing import NamedTuple
+
+from realize.arithmetic.formats import FORMATS
+from realize.arithmetic.realization import Realization
+from realize.checks import Check
+from realize.checks.schur import CLASSES
+from realize.design import Accept, Design, Schedule
+from realize.design.schedule import Place, design_at, number_text, place_text, placed, variable_at
+from realize.errors import RealizeError, Refused
+from realize.schedule.between import MIDDLE, Between, places
+from realize.schedule.layout import layout_of
+from realize.schedule.lookup import breakpoints
+from realize.schedule.points import Judged, Prepared, judge, prepared
+from realize.workflow.compare import choose
+from realize.workflow.gate import failures_text, recommendation
+from realize.workflow.refusal import refuse_unacceptable
+from realize.workflow.results import Comparison, MethodResult
+
+#: Of all that is out of tolerance, as many are named.
+_MOST_NAMED = 3
+
+
+class Worst(NamedTuple):
+    """A check where it is worst, and where that is; no place where every figure is 0 or there is none."""
+
+    check: Check
+    place: Place
+
+
+class Scheduled(NamedTuple):
+    """What a schedule comes to.
+
+    Attributes
+    ----------
+    design : Design
+        With its schedule.
+    comparison : Comparison
+        Of the first point.
+    method, because : str
+        The method, and why this one.
+    points, middles : tuple of Judged
+        Every point, and the middle between it and the next.
+    worst : tuple of Worst
+        Each check of stored numbers, where it is worst.
+    accepted : tuple of (Check, Accept)
+        Of each agreed deviation that is needed the worst.
+    places_between : int
+        How many places were looked at between the points.
+    """
+
+    design: Design
+    comparison: Comparison
+    method: str
+    because: str
+    points: tuple[Judged, ...]
+    middles: tuple[Judged, ...]
+    worst: tuple[Worst, ...]
+    accepted: tuple[tuple[Check, Accept], ...]
+    places_between: int
+
+    @property
+    def schedule(self) -> Schedule:
+        """The operating points."""
+        assert self.design.schedule is not None
+        return self.design.schedule
+
+    @property
+    def stored(self) -> list[Realization]:
+        """Numbers of every point."""
+        return [each.realization for each in self.points]
+
+    @property
+    def chosen(self) -> MethodResult:
+        """The method, its checks the worst over all places."""
+        checks = tuple(at_place(self.schedule, each) for each in self.worst)
+        return MethodResult(
+            self.method, None, None, self.points[0].realization, checks, (), self.accepted, self.points[0].notes
+        )
+
+
+class _Attempt(NamedTuple):
+    """All places by one method and structure."""
+
+    method: str
+    structure: str
+    points: tuple[Judged, ...]
+    middles: tuple[Judged, ...]
+    grid: tuple[Worst, ...]
+
+    @property
+    def blocking(self) -> list[Worst]:
+        """Everything that stands in the way."""
+        by_place = [Worst(check, each.place) for each in (*self.points, *self.middles) for check in each.blocking]
+        return by_place + [each for each in self.grid if each.check.verdict == "out"]
+
+
+def scheduled(design: Design) -> Scheduled:
+    """Do the whole job for a design with a schedule.
+
+    Raises
+    ------
+    Refused
+        When the target is one of integers, the points have no layout in common, or a check is out at a point or
+        between.
+    RealizeError
+        When the design is not understood at a point.
+    """
+    schedule = design.schedule
+    assert schedule is not None
+    if design.target.arithmetic not in FORMATS:
+        raise Refused(
+            "[target] arithmetic",
+            f"{design.target.arithmetic} with a schedule: binary points differ from point to point, and numbers of "
+            "different binary points cannot be interpolated",
+            'arithmetic = "float32" or "float64" where there is a [schedule]',
+            'arithmetic = "float32"; or emit a design of each point, and switch between them at rest',
+        )
+    breakpoints(schedule.points, FORMATS[design.target.arithmetic])
+    comparison = _first_comparison(design)
+    candidates = _candidates(comparison)
+    attempts = list(_until_good(design, candidates))
+    good = attempts[-1]
+    if good is None or good.blocking:
+        raise _refusal(schedule, [each for each in attempts if each is not None], candidates)
+    return _summed_up(design, comparison, good, candidates)
+
+
+def _first_comparison(design: Design) -> Comparison:
+    """The methods at the first point, of which at least one is within every tolerance."""
+    schedule, first = design.schedule, Place(0)
+    assert schedule is not None
+    there = design_at(design, first)
+    try:
+        comparison = choose(there)
+        refuse_unacceptable(comparison)
+    except RealizeError as error:
+        raise placed(error, schedule, first) from None
+    return comparison
+
+
+def _candidates(comparison: Comparison) -> list[str]:
+    """Methods that are acceptable at the first point, in the order of recommendation."""
+    left, names = list(comparison.methods), []
+    while (name := recommendation(left)[0]) is not None:
+        names.append(name)
+        left = [result for result in left if result.method != name]
+    return names
+
+
+def _until_good(design: Design, candidates: Sequence[str]) -> Iterator[_Attempt | None]:
+    """Attempts, the last of which is good if any is; the last refusal is raised where no method came to figures."""
+    structure = design.target.structure
+    structures = ("auto", "delta") if structure == "auto" else (structure,)
+    refusal: Refused | None = None
+    figures = False
+    for name in candidates:
+        try:
+            series = _series(design, name)
+            for each in structures:
+                attempt = _attempt(design, series, name, each)
+                figures = True
+                yield attempt
+                if not attempt.blocking:
+                    return
+        except Refused as error:
+            refusal = refusal or error
+    if refusal is not None and not figures:
+        raise refusal
+    yield None
+
+
+class _Series(NamedTuple):
+    """The design at every point and in every middle, converted by one method."""
+
+    points: list[Prepared]
+    middles: list[Prepared]
+
+
+def _series(design: Design, method: str) -> _Series:
+    assert design.schedule is not None
+    count = len(design.schedule.points)
+    points = [prepared(design, Place(i), method) for i in range(count)]
+    return _Series(points, [prepared(design, Place(i, MIDDLE), method) for i in range(count - 1)])
+
+
+def _attempt(design: Design, series: _Series, method: str, structure: str) -> _Attempt:
+    schedule, target = design.schedule, FORMATS[design.target.arithmetic]
+    assert schedule is not None
+    names = [place_text(schedule, each.place) for each in series.points]
+    layout = layout_of([each.numbers for each in series.points], target, structure, names.__getitem__)
+    stored = [layout.realized(i, target) for i in range(len(series.points))]
+    between = Between(schedule, stored)
+    points = tuple(judge(*each) for each in zip(series.points, stored, strict=True))
+    grid = tuple(
+        Worst(between.stability(place, _worse_class(series.points[i : i + 2])), place)
+        for i in range(len(series.middles))
+        for place in places(schedule, i)
+    )
+    unstable = {each.place.point for each in grid if each.check.verdict == "out"}
+    # Where stability is lost on the grid there is no response to compare.
+    middles = tuple(
+        judge(each, between.realization(each.place)) for each in series.middles if each.place.point not in unstable
+    )
+    return _Attempt(method, stored[0].structure, points, middles, grid)
+
+
+def _worse_class(ends: Sequence[Prepared]) -> str:
+    return max((each.reference.stability for each in ends), key=CLASSES.index)
+
+
+def _summed_up(design: Design, comparison: Comparison, good: _Attempt, candidates: Sequence[str]) -> Scheduled:
+    judged = (*good.points, *good.middles)
+    every = [Worst(check, each.place) for each in judged for check in each.checks if check.of == "stored"]
+    because = comparison.because if good.method == candidates[0] else _passed_over(good.method, candidates)
+    return Scheduled(
+        design,
+        comparison,
+        good.method,
+        because,
+        good.points,
+        good.middles,
+        worst_of(every),
+        _agreed([pair for each in judged for pair in each.accepted]),
+        len(good.grid),
+    )
+
+
+def _passed_over(method: str, candidates: Sequence[str]) -> str:
+    count = candidates.index(method)
+    others = f"{count} methods that are" if count > 1 else f"{candidates[0]}, which is"
+    return f"the next in the order of recommendation: {others} preferred at the first point, but out of tolerance elsewhere"
+
+
+def worst_of(found: Sequence[Worst]) -> tuple[Worst, ...]:
+    """Of each check the one that uses most of its tolerance; the first of equals."""
+    names = dict.fromkeys(each.check.check for each in found)
+    return tuple(max((each for each in found if each.check.check == name), key=severity) for name in names)
+
+
+def severity(each: Worst) -> tuple[bool, bool, float]:
+    """What is out before what is not, what has no figure to be out with first; then by the share of the tolerance."""
+    check = each.check
+    if check.difference is None:
+        return check.verdict == "out", check.verdict == "out", -inf
+    share = check.difference / check.tolerance if check.tolerance else check.difference
+    return check.verdict == "out", False, share
+
+
+def _agreed(accepted: Sequence[tuple[Check, Accept]]) -> tuple[tuple[Check, Accept], ...]:
+    """Of each agreement the deviation that is largest."""
+    worst: dict[str, tuple[Check, Accept]] = {}
+    for check, agreement in accepted:
+        known = worst.get(check.check)
+        if known is None or (check.difference or 0.0) > (known[0].difference or 0.0):
+            worst[check.check] = (check, agreement)
+    return tuple(worst.values())
+
+
+def at_place(schedule: Schedule, each: Worst) -> Check:
+    """A check whose reason says where it is so."""
+    check = each.check
+    at = f"at {schedule.variable} = {number_text(variable_at(schedule, each.place))}"
+    return replace(check, reason=f"{at}: {check.reason}" if check.reason else at)
+
+
+def _refusal(schedule: Schedule, attempts: Sequence[_Attempt], candidates: Sequence[str]) -> Refused:
+    """Of the first attempt the worst few, and how many others there were."""
+    first = attempts[0]
+    blocking = sorted(first.blocking, key=severity, reverse=True)
+    named = [f"at {place_text(schedule, each.place)} {failures_text([each.check])}" for each in blocking[:_MOST_NAMED]]
+    more = f"; and {len(blocking) - _MOST_NAMED} more" if len(blocking) > _MOST_NAMED else ""
+    others = f"; {len(candidates) - 1} other methods are out too" if len(candidates) > 1 else ""
+    between = any(each.place.share for each in blocking)
+    return Refused(
+        "checks",
+        f"{first.method} ({first.structure}) is out of tolerance: {'; '.join(named)}{more}{others}",
+        "every check within its tolerance at every point, and between them on the grid",
+        ("another point where it is out, between the two; or " if between else "")
+        + "another method, a higher sample rate, or [[accept]] with a limit and a reason",
+    )
