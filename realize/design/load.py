@@ -27,12 +27,11 @@ from realize.design.tables import (
 )
 from realize.errors import RealizeError, Refused
 
-#: Largest design file: a schedule of a thousand points with eight values that change, each a dozen characters long,
-#: twice over.
-MAX_FILE_BYTES = 2**18
+#: Largest design file: a schedule of a thousand points with eight values that change, each a dozen characters long.
+MAX_FILE_BYTES = 2**17
 
 #: Longest line of a design file: the longest expression (4000 characters) and its key. The reader of TOML takes
-#: a time that grows with the square of the dots in a key; so bounded, and in a file of this size, under a second.
+#: a time that grows with the square of the dots in a key; so bounded, and in a file of this size, in two seconds.
 MAX_LINE = 4500
 
 #: Longest path worth looking for: what the common file systems allow for a name.

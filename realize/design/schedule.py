@@ -29,7 +29,7 @@ MAX_POINTS = 4096
 DEFAULT_GRID, MAX_GRID = 8, 1000
 
 #: Names that the lookup uses for itself.
-LOOKUP_NAMES = ("coefficients", "lower", "share", "upper")
+LOOKUP_NAMES = ("coefficients", "first", "lower", "second", "share", "upper")
 
 _KEYS = ("variable", "unit", "points", "grid", "values", "plant_values")
 

@@ -22,6 +22,7 @@ from realize.schedule.between import MIDDLE, Between, places
 from realize.schedule.layout import layout_of
 from realize.schedule.lookup import breakpoints
 from realize.schedule.points import Judged, Prepared, judge, prepared
+from realize.schedule.table import Table
 from realize.workflow.compare import choose
 from realize.workflow.gate import failures_text, recommendation
 from realize.workflow.refusal import refuse_unacceptable
@@ -32,7 +33,7 @@ _MOST_NAMED = 3
 
 
 class Worst(NamedTuple):
-    """A check where it is worst, and where that is; no place where every figure is 0 or there is none."""
+    """A check, and where in the schedule it is so."""
 
     check: Check
     place: Place
@@ -87,6 +88,12 @@ class Scheduled(NamedTuple):
         return MethodResult(
             self.method, None, None, self.points[0].realization, checks, (), self.accepted, self.points[0].notes
         )
+
+
+def table_of(found: Scheduled) -> Table:
+    """What the firmware looks up."""
+    schedule = found.schedule
+    return Table(schedule.variable, schedule.unit, schedule.points, schedule.grid, tuple(found.stored))
 
 
 class _Attempt(NamedTuple):
@@ -245,12 +252,13 @@ def _passed_over(method: str, candidates: Sequence[str]) -> str:
 def worst_of(found: Sequence[Worst]) -> tuple[Worst, ...]:
     """Of each check the one that uses most of its tolerance; the first of equals."""
     names = dict.fromkeys(each.check.check for each in found)
-    return tuple(max((each for each in found if each.check.check == name), key=severity) for name in names)
+    return tuple(
+        max((each for each in found if each.check.check == name), key=lambda each: severity(each.check)) for name in names
+    )
 
 
-def severity(each: Worst) -> tuple[bool, bool, float]:
+def severity(check: Check) -> tuple[bool, bool, float]:
     """What is out before what is not, what has no figure to be out with first; then by the share of the tolerance."""
-    check = each.check
     if check.difference is None:
         return check.verdict == "out", check.verdict == "out", -inf
     share = check.difference / check.tolerance if check.tolerance else check.difference
@@ -277,7 +285,7 @@ def at_place(schedule: Schedule, each: Worst) -> Check:
 def _refusal(schedule: Schedule, attempts: Sequence[_Attempt], candidates: Sequence[str]) -> Refused:
     """Of the first attempt the worst few, and how many others there were."""
     first = attempts[0]
-    blocking = sorted(first.blocking, key=severity, reverse=True)
+    blocking = sorted(first.blocking, key=lambda each: severity(each.check), reverse=True)
     named = [f"at {place_text(schedule, each.place)} {failures_text([each.check])}" for each in blocking[:_MOST_NAMED]]
     more = f"; and {len(blocking) - _MOST_NAMED} more" if len(blocking) > _MOST_NAMED else ""
     others = f"; {len(candidates) - 1} other methods are out too" if len(candidates) > 1 else ""
