@@ -216,11 +216,12 @@ def emit(design: str, as_json: bool, out: str, dependencies: str | None, **optio
 
     Refused with exit status 1 when the design is improper, unstable or out of tolerance. A file
     whose content would stay the same is left alone, so that a build does not compile it again.
+    A design with a [schedule] also has a table of coefficients, and NAME_at, which looks them up.
 
     \b
     Example: realize emit roller_gap.toml --out firmware
     Writes firmware/roller_gap.h, .c, _selftest.c, _vectors.csv and
-    .record.json.
+    .record.json; with a schedule, _schedule.h.
     """
     from realize.firmware.files import write_all
     from realize.firmware.job import emit as emit_design
@@ -235,6 +236,10 @@ def emit(design: str, as_json: bool, out: str, dependencies: str | None, **optio
     paths = [str(path) for path in write_all(Path(out), emitted.files, rule(emitted.files))]
     if as_json:
         _print(emit_document(emitted, paths))
+    elif emitted.schedule is not None:
+        from realize.report.scheduled import scheduled_text
+
+        _print(scheduled_text(emitted.schedule, paths))
     else:
         _print(emit_text(emitted.comparison, emitted.chosen, paths))
 

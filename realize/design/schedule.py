@@ -239,6 +239,19 @@ def _replaced(entries: Mapping[str, object], values: Mapping[str, Fraction], sou
     return Table({**entries, "values": changed}, source, f"[{key}]")
 
 
+def nominal_note(design: Design) -> tuple[str, ...]:
+    """One line for what looks at the nominal values alone; nothing without a schedule."""
+    schedule = design.schedule
+    if schedule is None:
+        return ()
+    nominal = dict(design.values)
+    looked_at = ", ".join(f"{name} = {number_text(nominal[name])}" for name, _ in schedule.values)
+    return (
+        f"there is a [schedule] of {len(schedule.points)} points by {schedule.variable}: this is about the nominal values "
+        f"alone, {looked_at}",
+    )
+
+
 def number_text(value: Fraction) -> str:
     """A number of the schedule, for messages: as many digits as anybody sets by hand."""
     return f"{float(value):.10g}"

@@ -16,6 +16,7 @@ from realize.algebra.roots import Root
 from realize.checks import Check
 from realize.checks.agreement import agreed_text
 from realize.design import Design
+from realize.design.schedule import nominal_note
 from realize.quantity import format_engineering
 from realize.realizability import Assessment
 from realize.report.documents import natural_frequency_and_damping
@@ -112,7 +113,7 @@ def assess_text(design: Design, assessment: Assessment) -> str:
     if assessment.terms:
         blocks.append(heading("What makes it improper") + bullets(term.text for term in assessment.terms))
         blocks.append(_proposals_block(assessment.proposals) + _margins_list(assessment))
-    notes = [*assessment.notes, *(_unmeasured(design) if assessment.terms else ())]
+    notes = [*assessment.notes, *(_unmeasured(design) if assessment.terms else ()), *nominal_note(design)]
     if notes:
         blocks.append(heading("Notes") + bullets(notes))
     if assessment.proposals and design.rolloff is None:
@@ -134,7 +135,7 @@ def _unmeasured(design: Design) -> tuple[str, ...]:
 
 def compare_text(comparison: Comparison) -> str:
     """The screen of `realize compare`."""
-    blocks = [_comparison_verdict(comparison), _setting(comparison), _methods_table(comparison.methods)]
+    blocks = [_comparison_verdict(comparison), setting_text(comparison), _methods_table(comparison.methods)]
     blocks += [_loops_table(comparison)] if comparison.design.plant else []
     refused = [m for m in comparison.methods if m.refused]
     if refused:
@@ -142,11 +143,11 @@ def compare_text(comparison: Comparison) -> str:
     if comparison.closest and comparison.closest.refused is None:
         blocks.append(_checks_block(comparison.closest, comparison.design))
     if comparison.design.method == "auto" and comparison.recommended:
-        blocks.append(_pin(comparison.recommended))
+        blocks.append(pin_text(comparison.recommended))
     return "\n".join(blocks)
 
 
-def _pin(method: str) -> str:
+def pin_text(method: str) -> str:
     return heading("To pin the method, under [method]") + f'name = "{method}"\n'
 
 
@@ -159,12 +160,12 @@ def emit_text(comparison: Comparison, chosen: MethodResult, paths: Sequence[str]
     first = f"yes: {design.name} is emitted by {chosen.method}: {reason}"
     what = (
         f"{chosen.realization.structure} structure in {design.target.arithmetic}, "
-        f"{_count(len(chosen.realization.integral), 'integral state')}, "
-        f"{_count(len(chosen.realization.sections), 'section')}"
+        f"{counted(len(chosen.realization.integral), 'integral state')}, "
+        f"{counted(len(chosen.realization.sections), 'section')}"
     )
-    blocks = [wrapped(first + _accepted_words(chosen)), _setting(comparison), _checks_block(chosen, design)]
+    blocks = [wrapped(first + _accepted_words(chosen)), setting_text(comparison), _checks_block(chosen, design)]
     blocks.append(heading(f"Written ({what})") + "".join(f"  {path}\n" for path in paths))
-    blocks += [_pin(chosen.method)] if design.method == "auto" else []
+    blocks += [pin_text(chosen.method)] if design.method == "auto" else []
     return "\n".join([*blocks, wrapped(CAUTION)])
 
 
@@ -173,7 +174,7 @@ def _accepted_words(result: MethodResult) -> str:
     if not result.accepted:
         return ""
     names = dict.fromkeys(check.check for check, _ in result.accepted)
-    return f"; with {_count(len(names), 'accepted deviation')}: {', '.join(names)}"
+    return f"; with {counted(len(names), 'accepted deviation')}: {', '.join(names)}"
 
 
 def _verdict(design: Design, assessment: Assessment) -> str:
@@ -283,11 +284,11 @@ def _comparison_verdict(comparison: Comparison) -> str:
     return wrapped(f"no: {chosen.method}, which the design names, is out of tolerance on {names}.{also}")
 
 
-def _setting(comparison: Comparison) -> str:
+def setting_text(comparison: Comparison) -> str:
     """Rate, band and roll-off: what every figure below rests on."""
     period = float(comparison.period_s)
     lines = [f"rate {format_engineering(1 / period, 'Hz')}, period {format_engineering(period, 's')}"]
-    lines.append(comparison.band_rests_on)
+    lines += [*nominal_note(comparison.design), comparison.band_rests_on]
     causal = comparison.causal
     if causal.proposal is not None:
         origin = "assumed, since the design has no [rolloff]" if causal.assumed else "as the design asks"
@@ -387,7 +388,7 @@ def _worst_of(figures: Sequence[float | None], worst: Callable[[list[float]], fl
 def _decimals(value: float | None, count: int) -> str:
     """So many decimals, which stand below each other in a column; few digits where it is large."""
     if value is None or abs(value) >= _MOST_WITH_DECIMALS:
-        return _figure(value)
+        return figure_text(value)
     # Adding 0 turns a rounded -0 into 0.
     return f"{round(value, count) + 0.0:.{count}f}"
 
@@ -440,14 +441,14 @@ def _good(method: MethodResult) -> str:
 
 def _tolerance_row(methods: Sequence[MethodResult]) -> list[str]:
     tolerances = {c.check: c.tolerance for m in methods for c in m.stored_checks if c.tolerance is not None}
-    return ["", "(tolerance)", *(_figure(tolerances.get(name)) for name, _ in _columns(methods))]
+    return ["", "(tolerance)", *(figure_text(tolerances.get(name)) for name, _ in _columns(methods))]
 
 
 def _cell(method: MethodResult, name: str) -> str:
     check = next((c for c in method.stored_checks if c.check == name), None)
     if check is None or check.difference is None:
         return "-"
-    return _figure(check.difference, 2) + _mark(method, check)
+    return figure_text(check.difference, 2) + _mark(method, check)
 
 
 def _mark(method: MethodResult, check: Check) -> str:
@@ -536,9 +537,9 @@ def _check_row(stored: Check, exact: Check, agreed: Set[str], design: Design, di
         _value_unit(stored, design),
         _value_text(stored.reference, digits),
         _value_text(stored.obtained, digits),
-        "-" if stored.check in OF_ARITHMETIC else _figure(exact.difference),
-        _figure(stored.difference),
-        _tolerance_text(stored, design),
+        "-" if stored.check in OF_ARITHMETIC else figure_text(exact.difference),
+        figure_text(stored.difference),
+        tolerance_text(stored, design),
         verdict,
     ]
 
@@ -563,7 +564,7 @@ def _gain_unit(outgoing: str, incoming: str, k: int) -> str:
     return f"{ratio}/s" if k else "" if ratio == "1" else ratio
 
 
-def _tolerance_text(check: Check, design: Design) -> str:
+def tolerance_text(check: Check, design: Design) -> str:
     """How far off the value may be; where a limit of its own rules, that one."""
     if check.tolerance is None:
         return "-"
@@ -571,13 +572,13 @@ def _tolerance_text(check: Check, design: Design) -> str:
         return f"at most {_loop_limits(design)[1][1]:.3g}"
     if check.check == "loop phase margin" and check.tolerance < _loop_limits(design)[1][0]:
         return f"at least {_loop_limits(design)[0]:.3g} deg"
-    tolerance = _figure(check.tolerance)
+    tolerance = figure_text(check.tolerance)
     if check.check in _IN_POINTS:
         return f"{tolerance} point{'' if tolerance == '1' else 's'}"
     return f"{tolerance} {check.unit}".strip()
 
 
-def _figure(value: float | None, digits: int = 3) -> str:
+def figure_text(value: float | None, digits: int = 3) -> str:
     """A difference or tolerance: two or three digits tell how close it came."""
     if value is not None and value > _MOST_SHOWN:
         return f">{_MOST_SHOWN:g}"
@@ -618,5 +619,5 @@ def _in_hz(rad_s: float) -> str:
     return format_engineering(rad_s / (2 * pi), "Hz")
 
 
-def _count(n: int, noun: str) -> str:
+def counted(n: int, noun: str) -> str:
     return f"{n or 'no'} {noun}{'' if n == 1 else 's'}"
