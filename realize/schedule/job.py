@@ -159,7 +159,7 @@ def _first_comparison(design: Design) -> Comparison:
 def _candidates(comparison: Comparison) -> list[str]:
     """Methods that are acceptable at the first point, in the order of recommendation."""
     left, names = list(comparison.methods), []
-    while (name := recommendation(left)[0]) is not None:
+    while left and (name := recommendation(left)[0]) is not None:
         names.append(name)
         left = [result for result in left if result.method != name]
     return names
@@ -229,7 +229,8 @@ def _worse_class(ends: Sequence[Prepared]) -> str:
 def _summed_up(design: Design, comparison: Comparison, good: _Attempt, candidates: Sequence[str]) -> Scheduled:
     judged = (*good.points, *good.middles)
     every = [Worst(check, each.place) for each in judged for check in each.checks if check.of == "stored"]
-    because = comparison.because if good.method == candidates[0] else _passed_over(good.method, candidates)
+    first = f"at the first point {comparison.because}"
+    because = first if good.method == candidates[0] else _passed_over(good.method, candidates)
     return Scheduled(
         design,
         comparison,
