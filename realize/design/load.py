@@ -151,9 +151,10 @@ def assemble(
     method = read_method(root.table("method"), overrides.method)
     target = read_target(root.table("target"))
     signals = read_signals(root.table("signals"), target)
+    name = read_name(design, overrides.name)
     return Design(
         source=root.source,
-        name=read_name(design, overrides.name),
+        name=name,
         transfer=controller.transfer,
         transfer_text=controller.text,
         about=design.text("about"),
@@ -174,7 +175,7 @@ def assemble(
         target=target,
         tolerance=read_tolerance(root.table("tolerance")),
         accept=read_accept(root.tables("accept")),
-        schedule=read_schedule(root, controller.values, plant, written),
+        schedule=read_schedule(root, name, controller.values, plant, written),
     )
 
 

@@ -220,7 +220,7 @@ class Schedule(NamedTuple):
     values, plant_values : tuple of (str, tuple of Fraction)
         Values of controller and plant that change, each with a number for every point.
     written : mapping
-        The tables ``design`` and ``plant`` as they were written, from which a transfer function at other values is made.
+        The tables ``design`` and ``plant`` as they were written: a transfer function at other values is made from them.
     """
 
     variable: str

@@ -1,7 +1,7 @@
 """The table ``[schedule]``: operating points, the values that change with them, and the design at any of them.
 
-Between two points the scheduled values are interpolated, exactly; everything that depends on them follows. The tables of
-controller and plant are kept as they were written, because a transfer function at other values is made from them anew.
+Between two points the scheduled values are interpolated, exactly; everything that depends on them follows. The tables
+of controller and plant are kept as they were written: a transfer function at other values is made from them anew.
 """
 
 from __future__ import annotations
@@ -28,8 +28,14 @@ MAX_POINTS = 4096
 #: Parts that each interval is divided into for the checks between, where the design does not say; and the most.
 DEFAULT_GRID, MAX_GRID = 8, 1000
 
-#: Names that the lookup uses for itself.
+#: Names that the lookup uses for itself; and what follows the name of the design in names of the code.
 LOOKUP_NAMES = ("coefficients", "first", "lower", "second", "share", "upper")
+CODE_NAMES = (
+    *("advance", "at", "between", "clear", "coefficients", "high", "integrate", "is_finite", "limit", "low", "nominal"),
+    *("output", "point_below", "points", "preset", "pushes", "selftest", "sets", "state", "update"),
+)
+
+Lists = tuple[tuple[str, tuple[Fraction, ...]], ...]
 
 _KEYS = ("variable", "unit", "points", "grid", "values", "plant_values")
 
@@ -41,13 +47,17 @@ class Place(NamedTuple):
     share: Fraction = Fraction(0)
 
 
-def read_schedule(root: Table, controller: Values, plant: PlantTable | None, written: object) -> Schedule | None:
+def read_schedule(
+    root: Table, design_name: str, controller: Values, plant: PlantTable | None, written: object
+) -> Schedule | None:
     """Read the operating points.
 
     Parameters
     ----------
     root : Table
         The file.
+    design_name : str
+        Prefix of the names of the code, which the variable must not take.
     controller : tuple of (str, Fraction)
         Values of the controller.
     plant : PlantTable or None
@@ -75,7 +85,7 @@ def read_schedule(root: Table, controller: Values, plant: PlantTable | None, wri
             "write [schedule.values] on a line, and below it a list with a number for each point",
         )
     return Schedule(
-        _variable(table, root.table("design").text("name")),
+        _variable(table, design_name),
         table.text("unit", MAX_UNIT) or "",
         points,
         table.integer("grid", 2, MAX_GRID) or DEFAULT_GRID,
@@ -85,14 +95,14 @@ def read_schedule(root: Table, controller: Values, plant: PlantTable | None, wri
     )
 
 
-def _variable(table: Table, design_name: str | None) -> str:
+def _variable(table: Table, design_name: str) -> str:
     name = table.text("variable")
     if name is None:
         found, allowed = "nothing", "the name of the variable that the lookup is given, a C identifier"
         raise table.error("variable", found, allowed, 'write variable = "speed"')
     checked_name(name, table.where("variable"))
-    if name in LOOKUP_NAMES or (design_name and name.startswith(f"{design_name}_")):
-        allowed = f"any name but {listed(LOOKUP_NAMES)}, and none that begins with the name of the design and _"
+    if name in LOOKUP_NAMES or name in [f"{design_name}_{own}" for own in CODE_NAMES]:
+        allowed = f"any name but {listed(LOOKUP_NAMES)}, and those of the functions of the design"
         found = f"the name {shown(name)}, which the code uses itself"
         raise table.error("variable", found, allowed, "say what it measures, as in web_speed")
     return name
@@ -112,7 +122,7 @@ def _points(table: Table) -> tuple[Fraction, ...]:
     return points
 
 
-def _changing(table: Table, key: str, known: Collection[str], count: int) -> tuple[tuple[str, tuple[Fraction, ...]], ...]:
+def _changing(table: Table, key: str, known: Collection[str], count: int) -> Lists:
     """Values that change, each with a number for every point."""
     lists = table.table(key)
     home = "[design.values]" if key == "values" else "[plant.values]"
@@ -151,7 +161,7 @@ def _written(table: Table, values: Values, overrides: Mapping[str, str]) -> dict
     in_file = table.table("values").entries
     entries = {key: value for key, value in table.entries.items() if key not in ("values", *_NOT_TRANSFER)}
     chosen = {name: overrides.get(name, in_file.get(name)) for name, _ in values}
-    return {key: _plain(value) for key, value in (entries | {"values": chosen}).items()}
+    return {key: _plain(value) for key, value in (entries | ({"values": chosen} if chosen else {})).items()}
 
 
 #: Keys of the table ``[design]`` that say nothing about the transfer function.
@@ -236,7 +246,7 @@ def placed(error: RealizeError, schedule: Schedule, place: Place) -> RealizeErro
 def _replaced(entries: Mapping[str, object], values: Mapping[str, Fraction], source: str, key: str) -> Table:
     in_file = entries.get("values", {})
     changed = {**(in_file if isinstance(in_file, Mapping) else {}), **{n: exact_text(v) for n, v in values.items()}}
-    return Table({**entries, "values": changed}, source, f"[{key}]")
+    return Table({**entries, "values": changed} if changed else entries, source, f"[{key}]")
 
 
 def nominal_note(design: Design) -> tuple[str, ...]:
@@ -247,8 +257,8 @@ def nominal_note(design: Design) -> tuple[str, ...]:
     nominal = dict(design.values)
     looked_at = ", ".join(f"{name} = {number_text(nominal[name])}" for name, _ in schedule.values)
     return (
-        f"there is a [schedule] of {len(schedule.points)} points by {schedule.variable}: this is about the nominal values "
-        f"alone, {looked_at}",
+        f"there is a [schedule] of {len(schedule.points)} points by {schedule.variable}: this is about the nominal "
+        f"values alone, {looked_at}",
     )
 
 

@@ -225,6 +225,7 @@ def _unprotected(emission: Emission, sample: Sample) -> list[str]:
         f"section {', '.join(lively)} has poles that do not decay (undamped or growing): such a pair is not protected "
         "from windup, the limit of the actuator notwithstanding"
     ]
+    moving = [] if emission.schedule is None else [f"a {emission.schedule.variable} that moves fast, or is wrong"]
     return [
         *limits,
         *(undamped if lively else []),
@@ -235,7 +236,7 @@ def _unprotected(emission: Emission, sample: Sample) -> list[str]:
         ),
         "finite inputs so large that a product overflows: the state stays infinite or NaN until it is cleared"
         + ("; the command stays within its limits (NaN counts as the low one)" if sample.low is not None else ""),
-        *([f"a {emission.schedule.variable} that moves fast against the closed loop, or is wrong"] if emission.schedule else []),
+        *moving,
         "a null pointer, a state that was never cleared, two calls on one state at the same time",
     ]
 

@@ -64,8 +64,7 @@ class Dialect(NamedTuple):
     def stored(self, steps: Sequence[Step]) -> dict[str, float]:
         """Field name and stored value of every coefficient, in the order of first use."""
         return {
-            self.field(name): -value if self._is_negated(name) else value
-            for name, value in coefficients(steps).items()
+            self.field(name): -value if self._is_negated(name) else value for name, value in coefficients(steps).items()
         }
 
     def coefficient(self, name: str) -> str:

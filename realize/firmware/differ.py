@@ -133,7 +133,13 @@ def _words(change: Change, *parts: Mapping[str, Any]) -> tuple[str, str, str]:
             return name, _with_unit(texts[0], _UNITS[ending]), _with_unit(texts[1], _UNITS[ending])
         case ("files", str(name)):
             return printable(name), value_text(change.old)[:_HASH_DIGITS], value_text(change.new)[:_HASH_DIGITS]
-        case ("sections" | "integral" | "direct_gain", *_) | ("schedule", "points", int(), ("sections" | "integral"), *_):
+        case ("sections" | "integral" | "direct_gain", *_) | (
+            "schedule",
+            "points",
+            int(),
+            ("sections" | "integral"),
+            *_,
+        ):
             return place_text(change.place), *value_texts(change.old, change.new)
         case _:
             return _plain(change.place, *parts), *value_texts(change.old, change.new)

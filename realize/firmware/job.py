@@ -158,7 +158,11 @@ def _common(comparison: Comparison, chosen: MethodResult) -> dict[str, Any]:
 def _particulars(comparison: Comparison) -> list[tuple[str, str]]:
     """Header lines on the values and on the roll-off."""
     design = comparison.design
-    return [("values", _named_values(design.values)), ("roll-off", _rolloff(comparison.causal)), ("band", comparison.band_rests_on)]
+    return [
+        ("values", _named_values(design.values)),
+        ("roll-off", _rolloff(comparison.causal)),
+        ("band", comparison.band_rests_on),
+    ]
 
 
 def _named_values(values: Iterable[tuple[str, Fraction]]) -> str:

@@ -353,7 +353,7 @@ def _answer(c: Wording) -> list[str]:
 
 
 def _played(c: Wording, samples: Samples) -> list[str]:
-    given = f"{c.name}_held_lines[k]"
+    given, looked_up = f"{c.name}_held_lines[k]", ", &coefficients" if c.scheduled else ""
     return [
         "/* The first line that differs, counted from 1; 0 for none. */",
         f"static int {c.name}_played(int in_two)",
@@ -367,7 +367,7 @@ def _played(c: Wording, samples: Samples) -> list[str]:
         *([f"        {c.name}_at({given}.variable, &coefficients);"] if c.scheduled else []),
         *statement(
             f"const {c.made} answer =",
-            ["", f"{c.name}_answer(&state{', &coefficients' if c.scheduled else ''}, {given}.input,", f"    {given}.samples, in_two)"],
+            ["", f"{c.name}_answer(&state{looked_up}, {given}.input,", f"    {given}.samples, in_two)"],
             " " * 8,
         ),
         f"        if ({_differs(c, 'answer', f'{given}.answer')}) {{",

@@ -37,7 +37,8 @@ def heading(command: str, design: Design) -> Document:
         "command": command,
         "design": {"name": design.name, "transfer": design.transfer_text},
     }
-    return document | {"nominal": note for note in nominal_note(design)}
+    note = nominal_note(design)
+    return document | ({"nominal": note[0]} if note else {})
 
 
 def error_document(command: str, error: RealizeError) -> Document:

@@ -23,8 +23,8 @@ def scheduled_text(found: Scheduled, paths: Sequence[str]) -> str:
     kept = "but for what is agreed" if found.accepted else "every check passed"
     reason = found.because if design.method == "auto" else f"named in the design, {kept}"
     what = (
-        f"{stored.structure} structure in {design.target.arithmetic}, {counted(len(stored.integral), 'integral state')}, "
-        f"{counted(len(stored.sections), 'section')}"
+        f"{stored.structure} structure in {design.target.arithmetic}, "
+        f"{counted(len(stored.integral), 'integral state')}, {counted(len(stored.sections), 'section')}"
     )
     blocks = [
         wrapped(f"yes: {design.name} is emitted by {found.method}, {at_all}: {reason}"),
@@ -44,8 +44,8 @@ def _checks(found: Scheduled) -> str:
     head = ["check", "difference", "tolerance", "verdict", f"worst at {found.schedule.variable}"]
     count = found.places_between
     notes = [
-        f"{says(found.schedule.grid)} ({count} places); the other checks also in the middle of each interval, against the "
-        "design whose scheduled values are interpolated there",
+        f"{says(found.schedule.grid)} ({count} places); the other checks also in the middle of each interval, against "
+        "the design whose scheduled values are interpolated there",
         f"all of it for a {found.schedule.variable} that stands still: let it change slowly against the closed loop",
     ]
     block = heading(f"Checks of {found.method} over {len(found.points)} points and between, each where it is worst")

@@ -148,6 +148,7 @@ def compare_text(comparison: Comparison) -> str:
 
 
 def pin_text(method: str) -> str:
+    """The lines that keep a method that was recommended."""
     return heading("To pin the method, under [method]") + f'name = "{method}"\n'
 
 
@@ -620,4 +621,5 @@ def _in_hz(rad_s: float) -> str:
 
 
 def counted(n: int, noun: str) -> str:
+    """A number of things."""
     return f"{n or 'no'} {noun}{'' if n == 1 else 's'}"

@@ -1,4 +1,4 @@
-"""What happens between two operating points: coefficients as the lookup computes them, on a grid. A grid is no proof."""
+"""What happens between two operating points, where coefficients are looked up: on a grid, which is no proof."""
 
 from __future__ import annotations
 

@@ -247,14 +247,16 @@ def _summed_up(design: Design, comparison: Comparison, good: _Attempt, candidate
 def _passed_over(method: str, candidates: Sequence[str]) -> str:
     count = candidates.index(method)
     others = f"{count} methods that are" if count > 1 else f"{candidates[0]}, which is"
-    return f"the next in the order of recommendation: {others} preferred at the first point, but out of tolerance elsewhere"
+    where = "preferred at the first point, but out of tolerance elsewhere"
+    return f"the next in the order of recommendation: {others} {where}"
 
 
 def worst_of(found: Sequence[Worst]) -> tuple[Worst, ...]:
     """Of each check the one that uses most of its tolerance; the first of equals."""
     names = dict.fromkeys(each.check.check for each in found)
     return tuple(
-        max((each for each in found if each.check.check == name), key=lambda each: severity(each.check)) for name in names
+        max((each for each in found if each.check.check == name), key=lambda each: severity(each.check))
+        for name in names
     )
 
 

@@ -18,8 +18,8 @@ from realize.errors import Refused
 from realize.schedule.following import followed
 
 _ADVICE = (
-    "keep a coefficient from vanishing at one point alone (a small number in place of 0), or make a design of each range "
-    "of the variable"
+    "keep a coefficient from vanishing at one point alone (a small number in place of 0), or make a design of each "
+    "range of the variable"
 )
 
 
@@ -95,9 +95,7 @@ class Layout(NamedTuple):
         return Realization(target, name, tuple(target.round(r) for r in integral), sections, period_s)
 
 
-def layout_of(
-    points: Sequence[Numbers], target: FloatFormat, structure: str, named: Callable[[int], str]
-) -> Layout:
+def layout_of(points: Sequence[Numbers], target: FloatFormat, structure: str, named: Callable[[int], str]) -> Layout:
     """Choose the layout.
 
     Parameters
@@ -114,8 +112,8 @@ def layout_of(
     Raises
     ------
     Refused
-        When a point has other poles, zeros or integral states in number, or a pair forms from roots that are apart; when
-        the structure cannot hold them.
+        When a point has other poles, zeros or integral states in number, or roots pair with different partners at
+        different points; when the structure cannot hold them.
     """
     for i, point in enumerate(points):
         _refuse_other_count(points[0], point, named(i))
@@ -178,11 +176,7 @@ def _point_of(slot: _Slot) -> float | None:
 
 
 def _slots(factors: Sequence[Factor]) -> tuple[_Slot, ...]:
-    return tuple(
-        _Slot(value, factor, number)
-        for number, factor in enumerate(factors)
-        for value in _members(factor)
-    )
+    return tuple(_Slot(value, factor, number) for number, factor in enumerate(factors) for value in _members(factor))
 
 
 def _members(factor: Factor) -> tuple[complex, ...]:
@@ -215,9 +209,7 @@ def _couples(
     return couples
 
 
-def _stand_ins(
-    row: tuple[_Slot, ...], couples: dict[tuple[int, int], Factor]
-) -> list[tuple[Factor, tuple[int, ...]]]:
+def _stand_ins(row: tuple[_Slot, ...], couples: dict[tuple[int, int], Factor]) -> list[tuple[Factor, tuple[int, ...]]]:
     """Factors of the first point with their places, pairs of other points in place of two real roots."""
     coupled = {place for places in couples for place in places}
     alone = [(slot.factor, (place,)) for place, slot in enumerate(row) if place not in coupled]

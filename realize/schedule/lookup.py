@@ -1,14 +1,16 @@
 """The lookup of coefficients as the firmware does it, bit for bit.
 
 For ``x_i <= x < x_{i+1}`` each coefficient is ``c_i + s (c_{i+1} - c_i)`` with ``s = (x - x_i)/(x_{i+1} - x_i)``, every
-operation rounded once to the format. At a point ``s = 0``: its coefficients come out as they are. Below the first point,
-and for a variable that is not a number, those of the first are taken; from the last on, those of the last.
+operation rounded once to the format. At a point ``s = 0``: its coefficients come out as they are. Below the first
+point, and for a variable that is not a number, those of the first are taken; from the last on, those of the last.
 
 Rounding is monotonic, so ``0 <= s <= 1``. The poles of a second-order section lie inside the unit circle where
-``(a_1, a_2)`` lies in the triangle ``|a_2| < 1, |a_1| < 1 + a_2`` (Jury), which is convex: with the same ``s`` for both, exact
-interpolation between two stable sections is stable at every ``s``; a first-order section likewise, in ``|a_1| < 1``. What is
-left is rounding, of half a unit in the last place here and there: it is looked at on a grid. All of this is about a
-variable that stands still. Sections that are stable one by one need not be so while they change from sample to sample.
+``(a_1, a_2)`` lies in the triangle ``|a_2| < 1, |a_1| < 1 + a_2`` (Jury). That is an intersection of half planes, hence
+convex: with the same ``s`` for both coefficients, exact interpolation between two stable sections is stable at every
+``s``; so is a first-order section, with ``|a_1| < 1``. The coefficients in delta depend linearly on these. What is left
+is rounding, of half a unit in the last place here and there: it is looked at on a grid. All of this is about a
+variable that stands still. A chain of sections that is stable at every fixed ``s`` need not be so while ``s`` changes from sample
+to sample.
 """
 
 from __future__ import annotations
@@ -17,6 +19,7 @@ from bisect import bisect_right
 from collections.abc import Sequence
 from dataclasses import replace
 from fractions import Fraction
+from itertools import pairwise
 from typing import Any
 
 import numpy as np
@@ -36,7 +39,7 @@ def breakpoints(points: Sequence[Fraction], target: FloatFormat) -> tuple[float,
         When two become the same number, or one or their distance is beyond the format.
     """
     stored = tuple(target.round(point) for point in points)
-    for i, (before, after) in enumerate(zip(stored, stored[1:], strict=False), 1):
+    for i, (before, after) in enumerate(pairwise(stored), 1):
         if before >= after:
             raise Refused(
                 "[schedule] points",

@@ -1,7 +1,7 @@
 """The table of coefficients that the firmware looks up: names, a set for every point, and the lookup in Python.
 
-What a sample does is described once for all points. A coefficient of exactly 0, 1 or -1 loses its multiplication only where
-it is that at every point; so the description is made from stand-ins for what changes, and the numbers go in by name.
+What a sample does is described once for all points. A coefficient of exactly 0, 1 or -1 loses its multiplication only
+where it is that at every point; so the description is made from stand-ins for what changes, and numbers go in by name.
 """
 
 from __future__ import annotations

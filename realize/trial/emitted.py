@@ -230,6 +230,7 @@ def read_vectors(file: str, content: bytes, code: Code) -> Vectors:
 
 
 def _row(file: str, number: int, line: str, code: Code) -> list[Value]:
+    variable = "a variable and " if code.scheduled else ""
     kinds = [*([code.input_type] if code.scheduled else []), code.input_type, code.output_type]
     try:
         return [read(kind, text) for kind, text in zip(kinds, line.split(","), strict=True)]
@@ -237,7 +238,7 @@ def _row(file: str, number: int, line: str, code: Code) -> list[Value]:
         raise RealizeError(
             f"{file} line {number}",
             shown(line),
-            f"{'a variable and ' if code.scheduled else ''}an input that is a {code.input_type} and an output that is a {code.output_type}",
+            f"{variable}an input that is a {code.input_type} and an output that is a {code.output_type}",
             "emit the design again",
         ) from None
 

@@ -1,8 +1,8 @@
 """How long a gain schedule takes, point by point: an order-3 controller at 125 to 1,000 points, and how that grows.
 
-``python -m tests.benchmarks.schedule`` prints a row for each number of points: seconds of the whole emission, in memory;
-milliseconds a point; how much longer it takes than with half the points; and bytes of the table and of the record. Linear
-growth is a ratio of 2. It must end within :data:`MOST_S`.
+``python -m tests.benchmarks.schedule`` prints a row for each number of points: seconds of the whole emission, in
+memory; milliseconds a point; how much longer it takes than with half the points; and bytes of the table and of the
+record. Linear growth is a ratio of 2. It must end within :data:`MOST_S`.
 """
 
 from __future__ import annotations

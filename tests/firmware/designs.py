@@ -130,12 +130,17 @@ def grid() -> Iterator[Emission]:
 
 
 def scheduled() -> Iterator[Emission]:
-    """Schedules: a coefficient that is 1 at one point alone, and one that is 1 at all; every structure; 2 to 5 points."""
+    """Schedules of 2 to 5 points: coefficients that are 1 at one point alone, and at all; every structure."""
     single, double = FORMATS["float32"], FORMATS["float64"]
     stored = {
         "s0": [
             Realization(single, "direct", rounded(single, k), (section(single, (b, "-0.7"), (a,)),), PERIOD_S)
-            for k, b, a in (("0.01", "1", "-0.5"), ("0.02", "1.5", "-0.25"), ("0.025", "2.25", "0.125"), ("0.5", "3", "0"))
+            for k, b, a in (
+                ("0.01", "1", "-0.5"),
+                ("0.02", "1.5", "-0.25"),
+                ("0.025", "2.25", "0.125"),
+                ("0.5", "3", "0"),
+            )
         ],
         "s1": [
             Realization(

@@ -31,8 +31,8 @@ def schedule_header_text(c: Dialect, table: Table, stored: Mapping[str, float]) 
         Name and value of every field of ``NAME_coefficients``.
     """
     says = (
-        f"{c.name}_schedule.h - coefficients by {table.variable}, emitted by realize; it belongs to {c.name}.c. Include "
-        f"{c.name}.h, which declares {c.name}_at, instead."
+        f"{c.name}_schedule.h - coefficients by {table.variable}, emitted by realize; it belongs to {c.name}.c. "
+        f"Include {c.name}.h, which declares {c.name}_at, instead."
     )
     lines = [
         *comment(wrapped(says)),
@@ -63,8 +63,13 @@ def schedule_header_text(c: Dialect, table: Table, stored: Mapping[str, float]) 
 
 def field_sets(c: Dialect, table: Table, stored: Mapping[str, float]) -> list[dict[str, float]]:
     """Every field of ``NAME_coefficients`` for each point; what no set names is the same at all."""
-    return [stored | {c.field(name): _signed(c, name, value) for name, value in each.items() if c.field(name) in stored}
-            for each in table.sets]  # fmt: skip
+    return [
+        {
+            **stored,
+            **{c.field(name): _signed(c, name, value) for name, value in each.items() if c.field(name) in stored},
+        }
+        for each in table.sets
+    ]
 
 
 def _signed(c: Dialect, name: str, value: float) -> float:
@@ -97,8 +102,8 @@ def lookup_prototype(c: Dialect, table: Table) -> list[str]:
     """The declaration, with what the function does."""
     says = (
         f"The coefficients for {table.variable}, for every function below: those of the points on both sides, "
-        f"interpolated. Below the first point, and where {table.variable} is NaN, those of the first; from the last on, "
-        "those of the last. It reads nothing but its argument and the table."
+        f"interpolated. Below the first point, and where {table.variable} is NaN, those of the first; from the last "
+        "on, those of the last. It reads nothing but its argument and the table."
     )
     return [*comment(wrapped(says)), lookup_signature(c, table) + ";", ""]
 
@@ -108,8 +113,8 @@ def lookup_definitions(c: Dialect, table: Table, fields: Sequence[str]) -> list[
 
     Notes
     -----
-    Each step of the search halves ``high - low``, so as many as it takes to halve the intervals to one suffice; one more
-    changes nothing. Where the two points are the same, what is added is 0 times 0.
+    Each step of the search halves ``high - low``, so as many as it takes to halve the intervals to one suffice; one
+    more changes nothing. Where the two points are the same, what is added is 0 times 0.
     """
     steps = max(1, (len(table.points) - 2).bit_length())
     variable, points, last = table.variable, f"{c.name}_points", f"{c.name}_LAST"
@@ -173,14 +178,13 @@ def _assigned(c: Dialect, field: str) -> list[str]:
 def schedule_says(emission: Emission, table: Table) -> str:
     """The paragraph of the header."""
     name, variable = emission.name, table.variable
-    intervals = len(table.points) - 1
     return (
-        f"the coefficients follow {variable}, at {len(table.points)} points from {range_text(table)}. Whenever {variable} is "
-        f"known anew, {name}_at looks them up into a {name}_coefficients of the caller's; its address goes to every function "
-        f"of a sample. {name}_nominal is the set of the first point. At each point every check was run on what is stored. "
-        f"Between two points stability was decided on a grid of {table.grid} parts, and the other checks were run in the "
-        f"middle ({intervals} of them): a grid, not a proof. All of it holds for a {variable} that stands still. Stability at "
-        f"every fixed {variable} does not prove stability while it moves: let it change slowly against the closed loop, and "
-        "filter it where it is noisy. The preset takes the gains at rest from the table as well: between two points it comes "
-        "near rest, and to rest at input 0."
+        f"the coefficients follow {variable}, at {len(table.points)} points from {range_text(table)}. Whenever "
+        f"{variable} is known anew, {name}_at looks them up into a {name}_coefficients of the caller's; its address goes "
+        f"to every function of a sample. {name}_nominal is the set of the first point. At each point every check was run "
+        f"on what is stored. Between two points stability was decided on a grid of {table.grid} parts, and the other "
+        f"checks were run in the middle: a grid, not a proof. All of it holds for a {variable} that stands still. "
+        f"Stability at every fixed {variable} does not prove stability while it moves: let it change slowly against the "
+        "closed loop, and filter it where it is noisy. The preset takes the gains at rest from the table as well: between "
+        "two points it comes near rest, and to rest at input 0."
     )

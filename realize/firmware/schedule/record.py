@@ -20,10 +20,11 @@ def schedule_entry(found: Scheduled, breakpoints: Sequence[float]) -> dict[str, 
     Returns
     -------
     dict
-        ``variable``, ``unit``, ``grid``, ``places_between`` and ``says``; ``points``, each with ``at`` (exact), ``stored``
-        (as the code has it), ``integral``, ``sections``, ``checks`` and ``worst``; ``middles`` between them, with ``at``,
-        ``checks`` and ``worst``. ``checks`` are the verdict and the difference of each check of stored numbers, by name,
-        in the units of the checks at the root of the record; ``worst`` is the one that uses most of its tolerance.
+        ``variable``, ``unit``, ``grid``, ``places_between`` and ``says``; ``points``, each with ``at`` (exact),
+        ``stored`` (as the code has it), ``integral``, ``sections``, ``checks`` and ``worst``; ``middles`` between them,
+        with ``at``, ``checks`` and ``worst``. ``checks`` are the verdict and the difference of each check of stored
+        numbers, by name, in the units of the checks at the root of the record; ``worst`` is the one that uses most of
+        its tolerance.
     """
     schedule = found.schedule
     return {
