@@ -31,8 +31,9 @@ DEFAULT_GRID, MAX_GRID = 8, 1000
 #: Names that the lookup uses for itself; and what follows the name of the design in names of the code.
 LOOKUP_NAMES = ("coefficients", "first", "lower", "second", "share", "upper")
 CODE_NAMES = (
-    *("advance", "at", "between", "clear", "coefficients", "high", "integrate", "is_finite", "limit", "low", "nominal"),
-    *("output", "point_below", "points", "preset", "pushes", "selftest", "sets", "state", "update"),
+    *("advance", "at", "between", "clear", "coefficients", "high", "integrate", "is_finite", "last", "limit", "low"),
+    *("nominal", "output", "output_high", "output_low", "period_denominator", "period_numerator", "point_below"),
+    *("points", "preset", "pushes", "selftest", "sets", "state", "update"),
 )
 
 Lists = tuple[tuple[str, tuple[Fraction, ...]], ...]
@@ -101,7 +102,7 @@ def _variable(table: Table, design_name: str) -> str:
         found, allowed = "nothing", "the name of the variable that the lookup is given, a C identifier"
         raise table.error("variable", found, allowed, 'write variable = "speed"')
     checked_name(name, table.where("variable"))
-    if name in LOOKUP_NAMES or name in [f"{design_name}_{own}" for own in CODE_NAMES]:
+    if name in LOOKUP_NAMES or name.lower() in [f"{design_name}_{own}".lower() for own in CODE_NAMES]:
         allowed = f"any name but {listed(LOOKUP_NAMES)}, and those of the functions of the design"
         found = f"the name {shown(name)}, which the code uses itself"
         raise table.error("variable", found, allowed, "say what it measures, as in web_speed")

@@ -9,7 +9,7 @@ Rounding is monotonic, so ``0 <= s <= 1``. The poles of a second-order section l
 convex: with the same ``s`` for both coefficients, exact interpolation between two stable sections is stable at every
 ``s``; so is a first-order section, with ``|a_1| < 1``. The coefficients in delta depend linearly on these. What is left
 is rounding, of half a unit in the last place here and there: it is looked at on a grid. All of this is about a
-variable that stands still. A chain of sections that is stable at every fixed ``s`` need not be so while ``s`` changes from sample
+variable that stands still: sections that are stable at every fixed ``s`` need not be so while ``s`` changes from sample
 to sample.
 """
 

@@ -10,6 +10,7 @@ from math import inf, nan, nextafter
 import numpy as np
 import pytest
 
+from realize.design.schedule import CODE_NAMES, LOOKUP_NAMES
 from realize.firmware import Emission, render_firmware
 from realize.firmware.schedule.variable import swept
 from realize.firmware.vectors import answers, vectors
@@ -132,3 +133,15 @@ def test_a_coefficient_that_is_1_or_0_at_some_points_alone_is_multiplied() -> No
     # 1 at both points of s1, 0 at all of s3
     assert "section1_b0" not in by_name["s1"]
     assert "section1_b0" not in by_name["s3"]
+
+
+def test_the_variable_can_take_no_name_that_the_code_has() -> None:
+    for emission in EMISSIONS:
+        files = render_firmware(emission)
+        code = "".join(text for name, text in files.items() if name in (f"{emission.name}.c", f"{emission.name}.h"))
+        bare = re.sub(r'/\*.*?\*/|#include ".*"', "", code, flags=re.DOTALL)
+        own = set(re.findall(rf"\b{emission.name}_(\w+)", bare)) - {"H"}
+        assert {name.lower() for name in own} <= set(CODE_NAMES)
+        (lookup,) = re.findall(rf"^void {emission.name}_at\([^;]*?\)\n\{{.*?^\}}", bare, re.DOTALL | re.MULTILINE)
+        locals_ = set(re.findall(r"(?:int|float|double|\*const) (\w+) =", lookup)) | {"coefficients"}
+        assert locals_ == set(LOOKUP_NAMES)
