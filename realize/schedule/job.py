@@ -6,11 +6,12 @@ middle by every check, against the design whose scheduled values are interpolate
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import replace
 from math import inf
 from typing import NamedTuple
 
+from realize.algebra.rounding import FloatFormat
 from realize.arithmetic.formats import FORMATS
 from realize.arithmetic.realization import Realization
 from realize.checks import Check
@@ -19,7 +20,7 @@ from realize.design import Accept, Design, Schedule
 from realize.design.schedule import Place, design_at, number_text, place_text, placed, variable_at
 from realize.errors import RealizeError, Refused
 from realize.schedule.between import MIDDLE, Between, places
-from realize.schedule.layout import layout_of
+from realize.schedule.layout import Layout, layout_of
 from realize.schedule.lookup import breakpoints
 from realize.schedule.points import Judged, Prepared, judge, prepared
 from realize.schedule.table import Table
@@ -27,6 +28,9 @@ from realize.workflow.compare import choose
 from realize.workflow.gate import failures_text, recommendation
 from realize.workflow.refusal import refuse_unacceptable
 from realize.workflow.results import Comparison, MethodResult
+
+#: How much of what is judged is looked at.
+LookedAt = Callable[[Iterator[Judged]], Iterator[Judged]]
 
 #: Of all that is out of tolerance, as many are named.
 _MOST_NAMED = 3
@@ -170,19 +174,20 @@ def _until_good(design: Design, candidates: Sequence[str]) -> Iterator[_Attempt 
     structure = design.target.structure
     structures = ("auto", "delta") if structure == "auto" else (structure,)
     refusal: Refused | None = None
-    figures = False
+    # The first is what a refusal tells of, so all of it is looked at; of the others it is enough that they fail.
+    looked_at: LookedAt = iter
     for name in candidates:
         try:
             series = _series(design, name)
             for each in structures:
-                attempt = _attempt(design, series, name, each)
-                figures = True
+                attempt = _attempt(design, series, name, each, looked_at)
+                looked_at = _up_to_the_first_out
                 yield attempt
                 if not attempt.blocking:
                     return
         except Refused as error:
             refusal = refusal or error
-    if refusal is not None and not figures:
+    if refusal is not None and looked_at is iter:
         raise refusal
     yield None
 
@@ -201,14 +206,21 @@ def _series(design: Design, method: str) -> _Series:
     return _Series(points, [prepared(design, Place(i, MIDDLE), method) for i in range(count - 1)])
 
 
-def _attempt(design: Design, series: _Series, method: str, structure: str) -> _Attempt:
+def _up_to_the_first_out(judged: Iterator[Judged]) -> Iterator[Judged]:
+    for each in judged:
+        yield each
+        if each.blocking:
+            return
+
+
+def _attempt(design: Design, series: _Series, method: str, structure: str, looked_at: LookedAt) -> _Attempt:
     schedule, target = design.schedule, FORMATS[design.target.arithmetic]
     assert schedule is not None
     names = [place_text(schedule, each.place) for each in series.points]
     layout = layout_of([each.numbers for each in series.points], target, structure, names.__getitem__)
-    stored = [layout.realized(i, target) for i in range(len(series.points))]
+    stored = [_realized(layout, schedule, each.place, target) for each in series.points]
     between = Between(schedule, stored)
-    points = tuple(judge(*each) for each in zip(series.points, stored, strict=True))
+    points = tuple(looked_at(judge(*each) for each in zip(series.points, stored, strict=True)))
     grid = tuple(
         Worst(between.stability(place, _worse_class(series.points[i : i + 2])), place)
         for i in range(len(series.middles))
@@ -216,10 +228,16 @@ def _attempt(design: Design, series: _Series, method: str, structure: str) -> _A
     )
     unstable = {each.place.point for each in grid if each.check.verdict == "out"}
     # Where stability is lost on the grid there is no response to compare.
-    middles = tuple(
-        judge(each, between.realization(each.place)) for each in series.middles if each.place.point not in unstable
-    )
+    settled = (each for each in series.middles if each.place.point not in unstable)
+    middles = tuple(looked_at(judge(each, between.realization(each.place)) for each in settled))
     return _Attempt(method, stored[0].structure, points, middles, grid)
+
+
+def _realized(layout: Layout, schedule: Schedule, place: Place, target: FloatFormat) -> Realization:
+    try:
+        return layout.realized(place.point, target)
+    except Refused as refusal:
+        raise placed(refusal, schedule, place) from None
 
 
 def _worse_class(ends: Sequence[Prepared]) -> str:

@@ -36,9 +36,12 @@ for line in sys.stdin:
 """
 
 
+FILES = {emission.name: render_firmware(emission) for emission in EMISSIONS}
+
+
 def fields(emission: Emission) -> list[str]:
     """Of the coefficients, as the header declares them."""
-    header = render_firmware(emission)[f"{emission.name}.h"]
+    header = FILES[emission.name][f"{emission.name}.h"]
     body = re.search(rf"typedef struct \{{([^}}]*)\}} {emission.name}_coefficients;", header)
     assert body is not None
     return re.findall(r"(\w+);", body[1])
@@ -92,7 +95,7 @@ def test_every_compiler_has_the_bits_of_the_model(bench: Bench, number: int) -> 
 
 @pytest.mark.parametrize("emission", EMISSIONS, ids=lambda emission: emission.name)
 def test_the_vectors_sweep_the_variable_past_both_ends_and_come_from_looked_up_coefficients(emission: Emission) -> None:
-    lines = render_firmware(emission)[f"{emission.name}_vectors.csv"].splitlines()
+    lines = FILES[emission.name][f"{emission.name}_vectors.csv"].splitlines()
     assert lines[0] == "variable,input,output"
     rows = [[float.fromhex(word) for word in line.split(",")] for line in lines[1:]]
     inputs, outputs = vectors(emission)
@@ -113,7 +116,7 @@ def test_the_vectors_sweep_the_variable_past_both_ends_and_come_from_looked_up_c
 
 @pytest.mark.parametrize("emission", EMISSIONS, ids=lambda emission: emission.name)
 def test_the_table_reads_back_to_the_stored_numbers_in_decimals_and_in_hexadecimals(emission: Emission) -> None:
-    text = render_firmware(emission)[f"{emission.name}_schedule.h"]
+    text = FILES[emission.name][f"{emission.name}_schedule.h"]
     pairs = re.findall(r"^ +(-?[0-9.e+-]+)f?, /\* (-?0x[0-9a-fp.+-]+|0x0p\+0) *(\w*) \*/$", text, re.MULTILINE)
     assert emission.schedule is not None
     names = fields(emission)
@@ -137,7 +140,7 @@ def test_a_coefficient_that_is_1_or_0_at_some_points_alone_is_multiplied() -> No
 
 def test_the_variable_can_take_no_name_that_the_code_has() -> None:
     for emission in EMISSIONS:
-        files = render_firmware(emission)
+        files = FILES[emission.name]
         code = "".join(text for name, text in files.items() if name in (f"{emission.name}.c", f"{emission.name}.h"))
         bare = re.sub(r'/\*.*?\*/|#include ".*"', "", code, flags=re.DOTALL)
         own = set(re.findall(rf"\b{emission.name}_(\w+)", bare)) - {"H"}
