@@ -376,6 +376,8 @@ def _preset_says(emission: Emission) -> str:
             "else the state at rest for the input, and 0. Possible is what the gain at rest times the input gives, "
             "within the rounding of the sample. "
         )
+    if emission.schedule is not None:
+        text += "Between points of the schedule gains at rest are interpolated too: there 1 means near rest. "
     if emission.output_range is not None:
         text += "An output beyond the clamp counts as the limit, and gives 0 unless the limit is what it rounds to. "
     return text + "Arguments that are NaN or infinite, and a state that would be, are refused: 0, nothing changed."

@@ -114,28 +114,14 @@ def lookup_definitions(c: Dialect, table: Table, fields: Sequence[str]) -> list[
     Notes
     -----
     Each step of the search halves ``high - low``, so as many as it takes to halve the intervals to one suffice; one
-    more changes nothing. Where the two points are the same, what is added is 0 times 0.
+    more changes nothing. Of two points there is one interval, and nothing to search. Where the two points are the same,
+    what is added is 0 times 0.
     """
-    steps = max(1, (len(table.points) - 2).bit_length())
     variable, points, last = table.variable, f"{c.name}_points", f"{c.name}_LAST"
     quotient = [f"({variable} - {points}[lower])", f"/ ({points}[upper] - {points}[lower])"]
+    searched = len(table.points) > 2
     return [
-        "/* The point at or below a value that lies from the first point to below the last. */",
-        f"static int {c.name}_point_below({c.real} value)",
-        "{",
-        "    int low = 0;",
-        f"    int high = {last};",
-        f"    for (int k = 0; k < {steps}; k++) {{",
-        "        const int middle = low + (high - low) / 2;",
-        f"        if (value < {points}[middle]) {{",
-        "            high = middle;",
-        "        } else {",
-        "            low = middle;",
-        "        }",
-        "    }",
-        "    return low;",
-        "}",
-        "",
+        *(_search(c, (len(table.points) - 2).bit_length()) if searched else []),
         f"static inline {c.real} {c.name}_between({c.real} first, {c.real} second, {c.real} share)",
         "{",
         f"    const {c.real} difference = second - first;",
@@ -153,12 +139,33 @@ def lookup_definitions(c: Dialect, table: Table, fields: Sequence[str]) -> list[
         f"        upper = {last};",
         "    }",
         f"    if ({variable} > {points}[0] && {variable} < {points}[{last}]) {{",
-        f"        lower = {c.name}_point_below({variable});",
+        *([f"        lower = {c.name}_point_below({variable});"] if searched else []),
         "        upper = lower + 1;",
         *statement("share = ", quotient, " " * 8),
         "    }",
         *(f"    const {c.name}_coefficients *const {which} = &{c.name}_sets[{end}];" for which, end in _ENDS.items()),
         *(line for field in fields for line in _assigned(c, field)),
+        "}",
+        "",
+    ]
+
+
+def _search(c: Dialect, steps: int) -> list[str]:
+    return [
+        "/* The point at or below a value that lies from the first point to below the last. */",
+        f"static int {c.name}_point_below({c.real} value)",
+        "{",
+        "    int low = 0;",
+        f"    int high = {c.name}_LAST;",
+        f"    for (int k = 0; k < {steps}; k++) {{",
+        "        const int middle = low + (high - low) / 2;",
+        f"        if (value < {c.name}_points[middle]) {{",
+        "            high = middle;",
+        "        } else {",
+        "            low = middle;",
+        "        }",
+        "    }",
+        "    return low;",
         "}",
         "",
     ]
