@@ -52,8 +52,7 @@ def _checks(found: Scheduled) -> str:
     block += table([head, *rows]) + bullets(notes)
     accepted = [f"{agreed_text(c, a.limit)}: {a.because} ({a.by})" for c, a in found.accepted]
     block += ("\n" + heading("Accepted deviations") + bullets(accepted)) if accepted else ""
-    own = found.points[0].notes
-    return block + (("\n" + heading("Notes on the first point") + bullets(own)) if own else "")
+    return block + (("\n" + heading("Notes on the first point") + bullets(found.notes)) if found.notes else "")
 
 
 def _row(found: Scheduled, worst: Worst, agreed: bool) -> list[str]:

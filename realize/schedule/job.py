@@ -89,9 +89,12 @@ class Scheduled(NamedTuple):
     def chosen(self) -> MethodResult:
         """The method, its checks the worst over all places."""
         checks = tuple(at_place(self.schedule, each) for each in self.worst)
-        return MethodResult(
-            self.method, None, None, self.points[0].realization, checks, (), self.accepted, self.points[0].notes
-        )
+        return MethodResult(self.method, None, None, self.points[0].realization, checks, (), self.accepted, self.notes)
+
+    @property
+    def notes(self) -> tuple[str, ...]:
+        """What the method has to say at the first point."""
+        return next(result.notes for result in self.comparison.methods if result.method == self.method)
 
 
 def table_of(found: Scheduled) -> Table:
@@ -219,6 +222,7 @@ def _attempt(design: Design, series: _Series, method: str, structure: str, looke
     names = [place_text(schedule, each.place) for each in series.points]
     layout = layout_of([each.numbers for each in series.points], target, structure, names.__getitem__)
     stored = [_realized(layout, schedule, each.place, target) for each in series.points]
+    _refuse_unchanging(stored)
     between = Between(schedule, stored)
     points = tuple(looked_at(judge(*each) for each in zip(series.points, stored, strict=True)))
     grid = tuple(
@@ -238,6 +242,16 @@ def _realized(layout: Layout, schedule: Schedule, place: Place, target: FloatFor
         return layout.realized(place.point, target)
     except Refused as refusal:
         raise placed(refusal, schedule, place) from None
+
+
+def _refuse_unchanging(stored: Sequence[Realization]) -> None:
+    if all(each == stored[0] for each in stored):
+        raise Refused(
+            "[schedule.values]",
+            "values that leave every stored coefficient as it is",
+            "values with which the transfer function changes",
+            "remove [schedule], or correct the lists",
+        )
 
 
 def _worse_class(ends: Sequence[Prepared]) -> str:

@@ -14,8 +14,10 @@ from realize.errors import RealizeError, Refused
 from realize.methods import Discretization
 from realize.schedule.layout import Numbers
 from realize.workflow.causal import band_of, make_causal
-from realize.workflow.compare import discretized, judged, loop_setting_of, with_unrounded
+from realize.workflow.compare import discretized, loop_setting_of, with_unrounded
 from realize.workflow.floats import checked_floats
+from realize.workflow.gate import gate
+from realize.workflow.results import MethodResult
 
 if TYPE_CHECKING:
     from realize.loop_design import LoopSetting
@@ -51,8 +53,6 @@ class Judged(NamedTuple):
         Those that are out and not agreed to.
     accepted : tuple of (Check, Accept)
         Those that are out, and the agreement that covers them.
-    notes : tuple of str
-        What the method has to say.
     """
 
     place: Place
@@ -60,7 +60,6 @@ class Judged(NamedTuple):
     checks: tuple[Check, ...]
     blocking: tuple[Check, ...]
     accepted: tuple[tuple[Check, Accept], ...]
-    notes: tuple[str, ...]
 
 
 def prepared(design: Design, place: Place, method: str) -> Prepared:
@@ -90,10 +89,10 @@ def prepared(design: Design, place: Place, method: str) -> Prepared:
 
 def judge(there: Prepared, stored: Realization) -> Judged:
     """Run every check of stored numbers at a place; at a point those of the exact numbers too."""
-    result = judged(
-        there.design, there.reference, there.setting, there.made, checked_floats(there.design, there.reference, stored)
-    )
+    design, reference, numbers = there.design, there.reference, checked_floats(there.design, there.reference, stored)
+    checks = numbers.checks + (there.setting.checks(numbers.pulse) if there.setting else ())
+    result = MethodResult(there.made.method, None, there.made, stored, checks, *gate(checks, design.accept))
     if not there.place.share:
-        result = with_unrounded(there.design, there.reference, result)
-    of_stored = tuple(c for c in result.checks if c.of == "stored" or c in result.blocking)
-    return Judged(there.place, stored, of_stored, result.blocking, result.accepted, result.notes)
+        result = with_unrounded(design, reference, result)
+    kept = tuple(c for c in result.checks if c.of == "stored" or c in result.blocking)
+    return Judged(there.place, stored, kept, result.blocking, result.accepted)

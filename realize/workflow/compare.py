@@ -17,7 +17,6 @@ from realize.transfer import TransferFunction
 from realize.workflow.causal import Causal, band_of, make_causal, signals_of
 from realize.workflow.gate import gate, recommendation
 from realize.workflow.results import Comparison, MethodResult, closest_of
-from realize.workflow.stored import Stored
 from realize.workflow.target import stored_numbers
 
 if TYPE_CHECKING:
@@ -65,8 +64,8 @@ def _comparison(design: Design, causal: Causal, names: Sequence[str], *, unround
     while True:
         recommended, because = recommendation(results)
         # Where none is acceptable, whether method or rounding is at fault shows in the closest.
-        looked_at = next((r for r in results if r.method == recommended), None) or closest_of(results)
-        place = None if looked_at is None else results.index(looked_at)
+        judged = next((r for r in results if r.method == recommended), None) or closest_of(results)
+        place = None if judged is None else results.index(judged)
         if unrounded_too or place is None or results[place].judged_unrounded:
             return Comparison(design, causal, period_s, band_rad_s, rests_on, tuple(results), recommended, because)
         results[place] = with_unrounded(design, reference, results[place])
@@ -89,18 +88,6 @@ def _result(design: Design, reference: ContinuousReference, setting: LoopSetting
         return MethodResult(name, f"{refusal.where}: {refusal.found}", advice=refusal.advice)
     except Unresolved:
         return MethodResult(name, "a coefficient cannot be told from a neighbour at any permitted precision")
-    return judged(design, reference, setting, made, stored)
-
-
-def judged(
-    design: Design,
-    reference: ContinuousReference,
-    setting: LoopSetting | None,
-    made: Discretization,
-    stored: Stored,
-) -> MethodResult:
-    """What a method made of a design, with the checks of the stored numbers gated."""
-    name = made.method
     loop = setting.result(made.pulse, stored.pulse) if setting else None
     checks = stored.checks + (loop.checks if loop else ())
     blocking, accepted = gate(checks, design.accept)

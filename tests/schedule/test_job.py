@@ -162,3 +162,16 @@ def test_an_agreed_deviation_holds_at_every_place_with_its_largest_figure() -> N
     assert check.difference == max(c.difference or 0 for c in judged)
     assert check.verdict == "out"
     assert check in [each.check for each in found.worst]
+
+
+def test_a_schedule_that_changes_nothing_is_refused() -> None:
+    error = refused("k/(0.01*s + 1)", {"k": [2, 2, 2]})
+    assert error.where == "[schedule.values]"
+    assert "leave every stored coefficient as it is" in error.found
+
+
+@pytest.mark.parametrize(("transfer", "values"), [("k", [1, 2, 4]), ("k/s", [1, 2, 4]), ("k/s^2 + 1/s", [1, 1.5, 2])])
+def test_gains_and_bare_integrals_can_be_scheduled(transfer: str, values: list[float]) -> None:
+    growth = '[[accept]]\ncheck = "stability"\nbecause = "a loop closes it"\nby = "the author"\n'
+    found = scheduled(design(transfer, {"k": values}, others=growth))
+    assert len({each.realization for each in found.points}) == 3
