@@ -12,7 +12,7 @@ from realize.report.documents import check_document
 from realize.report.paragraphs import bullets, heading, table, wrapped
 from realize.report.terminal import CAUTION, counted, figure_text, pin_text, setting_text, tolerance_text
 from realize.schedule import Scheduled
-from realize.schedule.job import Worst
+from realize.schedule.worst import Worst
 
 
 def scheduled_text(found: Scheduled, paths: Sequence[str]) -> str:

@@ -6,41 +6,27 @@ middle by every check, against the design whose scheduled values are interpolate
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Sequence
-from dataclasses import replace
-from math import inf
+from collections.abc import Iterator, Sequence
 from typing import NamedTuple
 
-from realize.algebra.rounding import FloatFormat
 from realize.arithmetic.formats import FORMATS
 from realize.arithmetic.realization import Realization
 from realize.checks import Check
-from realize.checks.schur import CLASSES
 from realize.design import Accept, Design, Schedule
-from realize.design.schedule import Place, design_at, number_text, place_text, placed, variable_at
+from realize.design.schedule import Place, design_at, place_text, placed
 from realize.errors import RealizeError, Refused
-from realize.schedule.between import MIDDLE, Between, places
-from realize.schedule.layout import Layout, layout_of
+from realize.schedule.attempt import Attempt, LookedAt, attempted, converted, up_to_the_first_out
 from realize.schedule.lookup import breakpoints
-from realize.schedule.points import Judged, Prepared, judge, prepared
+from realize.schedule.points import Judged
 from realize.schedule.table import Table
+from realize.schedule.worst import Worst, at_place, severity, worst_of
 from realize.workflow.compare import choose
 from realize.workflow.gate import failures_text, recommendation
 from realize.workflow.refusal import refuse_unacceptable
 from realize.workflow.results import Comparison, MethodResult
 
-#: How much of what is judged is looked at.
-LookedAt = Callable[[Iterator[Judged]], Iterator[Judged]]
-
 #: Of all that is out of tolerance, as many are named.
 _MOST_NAMED = 3
-
-
-class Worst(NamedTuple):
-    """A check, and where in the schedule it is so."""
-
-    check: Check
-    place: Place
 
 
 class Scheduled(NamedTuple):
@@ -103,22 +89,6 @@ def table_of(found: Scheduled) -> Table:
     return Table(schedule.variable, schedule.unit, schedule.points, schedule.grid, tuple(found.stored))
 
 
-class _Attempt(NamedTuple):
-    """All places by one method and structure."""
-
-    method: str
-    structure: str
-    points: tuple[Judged, ...]
-    middles: tuple[Judged, ...]
-    grid: tuple[Worst, ...]
-
-    @property
-    def blocking(self) -> list[Worst]:
-        """Everything that stands in the way."""
-        by_place = [Worst(check, each.place) for each in (*self.points, *self.middles) for check in each.blocking]
-        return by_place + [each for each in self.grid if each.check.verdict == "out"]
-
-
 def scheduled(design: Design) -> Scheduled:
     """Do the whole job for a design with a schedule.
 
@@ -172,7 +142,7 @@ def _candidates(comparison: Comparison) -> list[str]:
     return names
 
 
-def _until_good(design: Design, candidates: Sequence[str]) -> Iterator[_Attempt | None]:
+def _until_good(design: Design, candidates: Sequence[str]) -> Iterator[Attempt | None]:
     """Attempts, the last of which is good if any is; the last refusal is raised where no method came to figures."""
     structure = design.target.structure
     structures = ("auto", "delta") if structure == "auto" else (structure,)
@@ -181,10 +151,10 @@ def _until_good(design: Design, candidates: Sequence[str]) -> Iterator[_Attempt 
     looked_at: LookedAt = iter
     for name in candidates:
         try:
-            series = _series(design, name)
+            series = converted(design, name)
             for each in structures:
-                attempt = _attempt(design, series, name, each, looked_at)
-                looked_at = _up_to_the_first_out
+                attempt = attempted(design, series, name, each, looked_at)
+                looked_at = up_to_the_first_out
                 yield attempt
                 if not attempt.blocking:
                     return
@@ -195,70 +165,7 @@ def _until_good(design: Design, candidates: Sequence[str]) -> Iterator[_Attempt 
     yield None
 
 
-class _Series(NamedTuple):
-    """The design at every point and in every middle, converted by one method."""
-
-    points: list[Prepared]
-    middles: list[Prepared]
-
-
-def _series(design: Design, method: str) -> _Series:
-    assert design.schedule is not None
-    count = len(design.schedule.points)
-    points = [prepared(design, Place(i), method) for i in range(count)]
-    return _Series(points, [prepared(design, Place(i, MIDDLE), method) for i in range(count - 1)])
-
-
-def _up_to_the_first_out(judged: Iterator[Judged]) -> Iterator[Judged]:
-    for each in judged:
-        yield each
-        if each.blocking:
-            return
-
-
-def _attempt(design: Design, series: _Series, method: str, structure: str, looked_at: LookedAt) -> _Attempt:
-    schedule, target = design.schedule, FORMATS[design.target.arithmetic]
-    assert schedule is not None
-    names = [place_text(schedule, each.place) for each in series.points]
-    layout = layout_of([each.numbers for each in series.points], target, structure, names.__getitem__)
-    stored = [_realized(layout, schedule, each.place, target) for each in series.points]
-    _refuse_unchanging(stored)
-    between = Between(schedule, stored)
-    points = tuple(looked_at(judge(*each) for each in zip(series.points, stored, strict=True)))
-    grid = tuple(
-        Worst(between.stability(place, _worse_class(series.points[i : i + 2])), place)
-        for i in range(len(series.middles))
-        for place in places(schedule, i)
-    )
-    unstable = {each.place.point for each in grid if each.check.verdict == "out"}
-    # Where stability is lost on the grid there is no response to compare.
-    settled = (each for each in series.middles if each.place.point not in unstable)
-    middles = tuple(looked_at(judge(each, between.realization(each.place)) for each in settled))
-    return _Attempt(method, stored[0].structure, points, middles, grid)
-
-
-def _realized(layout: Layout, schedule: Schedule, place: Place, target: FloatFormat) -> Realization:
-    try:
-        return layout.realized(place.point, target)
-    except Refused as refusal:
-        raise placed(refusal, schedule, place) from None
-
-
-def _refuse_unchanging(stored: Sequence[Realization]) -> None:
-    if all(each == stored[0] for each in stored):
-        raise Refused(
-            "[schedule.values]",
-            "values that leave every stored coefficient as it is",
-            "values with which the transfer function changes",
-            "remove [schedule], or correct the lists",
-        )
-
-
-def _worse_class(ends: Sequence[Prepared]) -> str:
-    return max((each.reference.stability for each in ends), key=CLASSES.index)
-
-
-def _summed_up(design: Design, comparison: Comparison, good: _Attempt, candidates: Sequence[str]) -> Scheduled:
+def _summed_up(design: Design, comparison: Comparison, good: Attempt, candidates: Sequence[str]) -> Scheduled:
     judged = (*good.points, *good.middles)
     every = [Worst(check, each.place) for each in judged for check in each.checks if check.of == "stored"]
     first = f"at the first point {comparison.because}"
@@ -283,23 +190,6 @@ def _passed_over(method: str, candidates: Sequence[str]) -> str:
     return f"the next in the order of recommendation: {others} {where}"
 
 
-def worst_of(found: Sequence[Worst]) -> tuple[Worst, ...]:
-    """Of each check the one that uses most of its tolerance; the first of equals."""
-    names = dict.fromkeys(each.check.check for each in found)
-    return tuple(
-        max((each for each in found if each.check.check == name), key=lambda each: severity(each.check))
-        for name in names
-    )
-
-
-def severity(check: Check) -> tuple[bool, bool, float]:
-    """What is out before what is not, what has no figure to be out with first; then by the share of the tolerance."""
-    if check.difference is None:
-        return check.verdict == "out", check.verdict == "out", -inf
-    share = check.difference / check.tolerance if check.tolerance else check.difference
-    return check.verdict == "out", False, share
-
-
 def _agreed(accepted: Sequence[tuple[Check, Accept]]) -> tuple[tuple[Check, Accept], ...]:
     """Of each agreement the deviation that is largest."""
     worst: dict[str, tuple[Check, Accept]] = {}
@@ -310,20 +200,14 @@ def _agreed(accepted: Sequence[tuple[Check, Accept]]) -> tuple[tuple[Check, Acce
     return tuple(worst.values())
 
 
-def at_place(schedule: Schedule, each: Worst) -> Check:
-    """A check whose reason says where it is so."""
-    check = each.check
-    at = f"at {schedule.variable} = {number_text(variable_at(schedule, each.place))}"
-    return replace(check, reason=f"{at}: {check.reason}" if check.reason else at)
-
-
-def _refusal(schedule: Schedule, attempts: Sequence[_Attempt], candidates: Sequence[str]) -> Refused:
+def _refusal(schedule: Schedule, attempts: Sequence[Attempt], candidates: Sequence[str]) -> Refused:
     """Of the first attempt the worst few, and how many others there were."""
     first = attempts[0]
     blocking = sorted(first.blocking, key=lambda each: severity(each.check), reverse=True)
     named = [f"at {place_text(schedule, each.place)} {failures_text([each.check])}" for each in blocking[:_MOST_NAMED]]
     more = f"; and {len(blocking) - _MOST_NAMED} more" if len(blocking) > _MOST_NAMED else ""
-    others = f"; {len(candidates) - 1} other methods are out too" if len(candidates) > 1 else ""
+    count = len(candidates) - 1
+    others = f"; so {'is another method' if count == 1 else f'are {count} other methods'}" if count else ""
     between = any(each.place.share for each in blocking)
     return Refused(
         "checks",

@@ -10,8 +10,8 @@ from realize.design.schedule import variable_at
 from realize.firmware.c_text import hexadecimal
 from realize.firmware.record import stored_entries
 from realize.schedule import Scheduled
-from realize.schedule.job import severity
 from realize.schedule.points import Judged
+from realize.schedule.worst import severity
 
 
 def schedule_entry(found: Scheduled, breakpoints: Sequence[float]) -> dict[str, Any]:
