@@ -231,6 +231,10 @@ def emit(design: str, as_json: bool, out: str, dependencies: str | None, **optio
     if not out.strip():
         raise RealizeError("--out", "an empty name", "a directory for the files", "--out firmware, or --out . for here")
     loaded = _load(design, options)
+    if loaded.schedule is not None:
+        from realize.design.schedule import refuse_overridden
+
+        refuse_overridden(loaded.schedule, _values(options["values"]))
     rule = _rule(design, loaded, Path(out), dependencies)
     emitted = emit_design(loaded)
     paths = [str(path) for path in write_all(Path(out), emitted.files, rule(emitted.files))]

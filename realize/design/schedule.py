@@ -250,6 +250,25 @@ def _replaced(entries: Mapping[str, object], values: Mapping[str, Fraction], sou
     return Table({**entries, "values": changed} if changed else entries, source, f"[{key}]")
 
 
+def refuse_overridden(schedule: Schedule, overrides: Mapping[str, str]) -> None:
+    """Refuse values of the command line that would change nothing.
+
+    Raises
+    ------
+    RealizeError
+        When the schedule has a list for one of them.
+    """
+    changing = {name for lists in (schedule.values, schedule.plant_values) for name, _ in lists}
+    for name in overrides:
+        if name in changing:
+            raise RealizeError(
+                f"--value {name}",
+                "a value that the schedule changes, so that its nominal number is not emitted",
+                "values that are the same at every point",
+                "change its list in the design file; `realize compare` looks at a nominal value",
+            )
+
+
 def nominal_note(design: Design) -> tuple[str, ...]:
     """One line for what looks at the nominal values alone; nothing without a schedule."""
     schedule = design.schedule

@@ -53,3 +53,15 @@ def test_what_looks_at_the_nominal_values_says_so(command: str, capsys: pytest.C
     assert "there is a [schedule] of 4 points by gap: this is about the nominal values alone, kp = 4.2" in said
     main([command, str(FIXTURE), "--json"])
     assert json.loads(capsys.readouterr().out)["nominal"].startswith("there is a [schedule] of 4 points by gap")
+
+
+def test_a_value_of_the_command_line_that_the_schedule_changes_is_not_emitted(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    for value in ("kp=4", "v=20"):
+        with pytest.raises(SystemExit) as ended:
+            main(["emit", str(FIXTURE), "--out", str(tmp_path / "firmware"), "--value", value])
+        assert ended.value.code == 2
+        said = " ".join(capsys.readouterr().err.split())
+        assert f"--value {value.partition('=')[0]}: a value that the schedule changes" in said
+    assert not (tmp_path / "firmware").exists()
