@@ -90,16 +90,23 @@ def _stand_in(sections: Sequence[AnySection]) -> AnySection:
     first = sections[0]
     if all(each == first for each in sections):
         return first
+    gains = {_gain(section) for section in sections}
     for attempt in count(1):
         shift = attempt / 1024
         section = first._replace(
             b=tuple(_general([s.b[i] for s in sections], 0.5 + i / 64 + shift) for i in range(len(first.b))),
-            a=tuple(_general([s.a[i] for s in sections], 0.25 + i / 32) for i in range(len(first.a))),
+            a=tuple(_general([s.a[i] for s in sections], 0.25 + i / 32 + shift) for i in range(len(first.a))),
         )
-        b, a = section.in_z()
-        if float(sum(b) / (1 + sum(a))) not in _PLAIN:
+        # A gain of 0 at every point, as a zero at z = 1 gives it, may be left out of the steps.
+        if _gain(section) not in _PLAIN or gains == {_gain(section)}:
             return section
     raise AssertionError  # count() does not end
+
+
+def _gain(section: AnySection) -> float:
+    """At rest, of a section without a pole at z = 1."""
+    b, a = section.in_z()
+    return float(sum(b) / (1 + sum(a)))
 
 
 def _general(values: Sequence[float], otherwise: float) -> float:

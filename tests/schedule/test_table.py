@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+from fractions import Fraction
 from math import isfinite
 
 import pytest
 
-from realize.arithmetic.realization import Realization
+from realize.algebra.rounding import FLOAT64
+from realize.arithmetic.realization import AnySection, DeltaSection, Realization, Section
 from realize.arithmetic.recursion import Recursion
 from realize.arithmetic.sample import coefficients, describe
 from realize.arithmetic.settling import settle
@@ -66,3 +68,28 @@ def test_a_multiplication_is_left_out_only_where_it_is_at_every_point(emission: 
 
     table = table_of(emission)
     assert multiplied(table.stand_in) == set().union(*map(multiplied, table.stored))
+
+
+@pytest.mark.parametrize(
+    "sections",
+    [
+        # a zero at z = 1, beside a pole that moves
+        [Section((1.0, -1.0), (-0.5,)), Section((1.0, -1.0), (-0.25,))],
+        # a gain of 1 at one point alone, from coefficients that are multiplied
+        [Section((0.5,), ()), Section((1.0,), ())],
+        [Section((0.25, 0.25), (-0.5,)), Section((0.25, 0.25), (-0.75,))],
+        [DeltaSection((0.0, 0.25), (0.25,)), DeltaSection((0.0, 0.25), (0.5,))],
+        [DeltaSection((1.0, 0.0), (0.25,)), DeltaSection((1.0, 0.0), (0.5,))],
+    ],
+)
+def test_a_gain_is_left_out_only_where_it_is_the_same_at_every_point(sections: list[AnySection]) -> None:
+    structure = "delta" if isinstance(sections[0], DeltaSection) else "direct"
+    stored = tuple(Realization(FLOAT64, structure, (), (section,), Fraction(1, 100)) for section in sections)
+    table = Table("speed", "", (Fraction(0), Fraction(1)), 8, stored)
+    for point, alone in enumerate(map(Recursion, stored)):
+        model = Recursion(table.stand_in)
+        model.take(table.sets[point])
+        assert model.run([1.0, 0.5, -2.0]) == alone.run([1.0, 0.5, -2.0])
+        for value, output in ((1.0, 1.0), (0.5, 0.0), (0.0, 0.0)):
+            assert model.preset(value, output) == alone.preset(value, output)
+            assert model.output(0.5) == alone.output(0.5)
