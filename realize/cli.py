@@ -217,11 +217,12 @@ def emit(design: str, as_json: bool, out: str, dependencies: str | None, **optio
 
     Refused with exit status 1 when the design is improper, unstable or out of tolerance. A file
     whose content would stay the same is left alone, so that a build does not compile it again.
+    A design with a [schedule] also has a table of coefficients, and NAME_at, which looks them up.
 
     \b
     Example: realize emit roller_gap.toml --out firmware
     Writes firmware/roller_gap.h, .c, _selftest.c, _vectors.csv and
-    .record.json.
+    .record.json; with a schedule, _schedule.h.
     """
     from realize.firmware.files import write_all
     from realize.firmware.job import emit as emit_design
@@ -231,13 +232,17 @@ def emit(design: str, as_json: bool, out: str, dependencies: str | None, **optio
     if not out.strip():
         raise RealizeError("--out", "an empty name", "a directory for the files", "--out firmware, or --out . for here")
     loaded = _load(design, options)
+    if loaded.schedule is not None:
+        from realize.design.schedule import refuse_overridden
+
+        refuse_overridden(loaded.schedule, _values(options["values"]))
     rule = _rule(design, loaded, Path(out), dependencies)
     emitted = emit_design(loaded)
     paths = [str(path) for path in write_all(Path(out), emitted.files, rule(emitted.files))]
     if as_json:
         _print(emit_document(emitted, paths))
     else:
-        _print(emit_text(emitted.comparison, emitted.chosen, paths))
+        _print(emit_text(emitted, paths))
 
 
 def _rule(

@@ -66,6 +66,16 @@ guard_nonfinite = true            # a NaN or infinite input counts as the previo
 # improper: placement = "derivative"  # or "whole"
 # improper: pole = "auto"             # or "170 Hz"
 
+# Gains that follow what is measured while the controller runs, here the gap.
+# [schedule]
+# variable = "gap"
+# unit = "mm"
+# points = [2, 5, 12]
+
+# [schedule.values]
+# kp = [1, 0.8, 0.7]
+# ki = [5, 4, 3.5]
+
 # What the conversion may change; the values here are the defaults.
 # [tolerance]
 # pole_shift = "2 %"

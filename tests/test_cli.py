@@ -55,7 +55,7 @@ def test_help_has_a_worked_example(run: Any, command: str) -> None:
 
 def test_only_the_commands_that_are_built_exist() -> None:
     assert sorted(commands.commands) == [
-        *("assess", "audit", "compare", "differ", "emit", "new", "rates", "trial", "words"),
+        *("assess", "audit", "compare", "differ", "emit", "new", "rates", "report", "trial", "words"),
     ]
 
 

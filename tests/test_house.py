@@ -23,6 +23,7 @@ LAYERS = (
     ("arithmetic",),
     ("loop_design",),
     ("workflow",),
+    ("schedule",),
     ("firmware", "rates", "words"),
     ("trial",),
     ("report",),

@@ -40,12 +40,14 @@ def test_one_count_of_the_starter_moves_the_output_by_less_than_the_five_percent
 
 def test_every_line_that_is_commented_out_is_right_when_it_is_not() -> None:
     text = starter_text("x")
-    keys = re.sub(r"^# (?=\[+\w+\]+$|\w+ = )", "", text, flags=re.MULTILINE)
+    keys = re.sub(r"^# (?=\[+[\w.]+\]+$|\w+ = )", "", text, flags=re.MULTILINE)
     design = design_from_text(keys, "x.toml")
     assert design.requirement == "where this is asked for"
     assert design.author == "your initials"
     assert dict(design.tolerance) == {"pole_shift": F(2), "phase_in_band": F(5)}
     assert design.accept[0].check == "step deviation"
+    assert design.schedule is not None
+    assert [name for name, _ in design.schedule.values] == ["kp", "ki"]
     assert design.plant is not None
     assert design.loop.compute_delay_samples == 1
     assert (design.input.offset, design.output.offset, design.target.structure) == (0, 4200, "auto")

@@ -279,7 +279,7 @@ class Emission:
         return emit_document(self._emitted, [str(path) for path in self.paths])
 
     def __str__(self) -> str:
-        return emit_text(self._emitted.comparison, self._emitted.chosen, self._places())
+        return emit_text(self._emitted, self._places())
 
     def __repr__(self) -> str:
         where = str(self.paths[0].parent) if self.paths else "memory"

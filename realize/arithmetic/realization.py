@@ -9,7 +9,7 @@ little that rounding takes away, those of delta are that little.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from math import prod
@@ -120,9 +120,58 @@ def realization(pulse: PulseTransferFunction, target: FloatFormat, structure: st
     """
     integral, rest = split_integral(pulse)
     stored_integral = tuple(target.round(r) for r in integral)
-    sections = _SECTIONS[structure](rest, target)
-    name = ("direct" if len(sections) < 2 else "cascade") if structure == "auto" else structure
-    return Realization(target, name, stored_integral, sections, pulse.period_s)
+    sections = sections_of(parts_of(rest, target, structure), rest, target, structure)
+    return Realization(target, structure_name(structure, len(sections)), stored_integral, sections, pulse.period_s)
+
+
+def structure_name(asked: str, sections: int) -> str:
+    """What a structure is called that was asked for, with so many sections."""
+    return ("direct" if sections < 2 else "cascade") if asked == "auto" else asked
+
+
+def parts_of(rest: Rest, target: FloatFormat, structure: str) -> list[tuple[Group, Fraction]]:
+    """Groups in the order in which a sample passes them, each with the gain of its monic numerator.
+
+    Raises
+    ------
+    Refused
+        When ``direct`` is asked for and the rest has an order above 2.
+    """
+    if rest.gain == 0:
+        return []
+    if structure == "direct":
+        refuse_direct(rest)
+        return [(group(rest.poles, rest.zeros), rest.gain)]
+    if structure != "delta":
+        return cascaded(rest, target)
+    return _scaled(rest, lambda group: _rounded_delta_section(group, Fraction(1), target), _takes_any_gain)
+
+
+def carrier_of(groups: Sequence[Group], structure: str) -> int:
+    """Position of the section that takes the gain which the others leave; their gains are powers of two.
+
+    Rounding keeps a zero at z = -1 in delta too: see :func:`_takes_any_gain`.
+    """
+    return next(i for i, group in enumerate(groups) if structure != "delta" or _takes_any_gain(group))
+
+
+def sections_of(
+    parts: Sequence[tuple[Group, Fraction]], rest: Rest, target: FloatFormat, structure: str
+) -> tuple[AnySection, ...]:
+    """Round every coefficient of every part once.
+
+    Raises
+    ------
+    Refused
+        When rounding would move a pole or zero of ``direct`` off z = 1 or z = -1.
+    """
+    if structure == "delta":
+        return tuple(_rounded_delta_section(group, gain, target) for group, gain in parts)
+    sections = tuple(_rounded_section(group, gain, target) for group, gain in parts)
+    if structure == "direct":
+        for section in sections:
+            _refuse_moved(section, rest)
+    return sections
 
 
 def stored_pulse(stored: Realization) -> PulseTransferFunction:
@@ -131,6 +180,12 @@ def stored_pulse(stored: Realization) -> PulseTransferFunction:
         zip(*(_section_polynomials(s) for s in stored.sections), strict=True) if stored.sections else ((), ())
     )
     return exact_pulse(_product(tops) if tops else (), bottoms, tuple(map(Fraction, stored.integral)), stored.period_s)
+
+
+def stored_denominator(stored: Realization) -> poly.Rationals:
+    """Denominator that the stored numbers have, exactly, in descending powers of z; nothing is cancelled."""
+    bottoms = [_section_polynomials(section)[1] for section in stored.sections]
+    return _product([*bottoms, *[(Fraction(1), Fraction(-1))] * len(stored.integral)])
 
 
 def exact_pulse(
@@ -187,16 +242,6 @@ def _product(polynomials: Sequence[poly.Rationals]) -> poly.Rationals:
     return result
 
 
-def _direct(rest: Rest, target: FloatFormat) -> tuple[Section, ...]:
-    """The whole rest as one section."""
-    if rest.gain == 0:
-        return ()
-    refuse_direct(rest)
-    section = _rounded_section(group(rest.poles, rest.zeros), rest.gain, target)
-    _refuse_moved(section, rest)
-    return (section,)
-
-
 def refuse_direct(rest: Rest) -> None:
     """Refuse one section for the whole rest where its order is above 2."""
     order = degree(rest.poles)
@@ -222,25 +267,6 @@ def _refuse_moved(section: Section, rest: Rest) -> None:
                     "structures that keep it",
                     'structure = "cascade", or "auto"',
                 )
-
-
-def _cascade(rest: Rest, target: FloatFormat) -> tuple[Section, ...]:
-    return tuple(_rounded_section(group, gain, target) for group, gain in cascaded(rest, target))
-
-
-def _delta(rest: Rest, target: FloatFormat) -> tuple[DeltaSection, ...]:
-    """The cascade in delta. Rounding keeps a zero at z = -1 there too: see :func:`_takes_any_gain`."""
-    scaled = _scaled(rest, lambda group: _rounded_delta_section(group, Fraction(1), target), _takes_any_gain)
-    return tuple(_rounded_delta_section(group, gain, target) for group, gain in scaled)
-
-
-#: How each structure makes sections.
-_SECTIONS: Mapping[str, Callable[[Rest, FloatFormat], tuple[AnySection, ...]]] = {
-    "direct": _direct,
-    "cascade": _cascade,
-    "auto": _cascade,
-    "delta": _delta,
-}
 
 
 def cascaded(rest: Rest, target: FloatFormat) -> list[tuple[Group, Fraction]]:

@@ -6,7 +6,7 @@ prints them as C. float32 is computed with numpy's scalars, float64 with Python'
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from fractions import Fraction
 from math import isfinite
 from types import SimpleNamespace
@@ -56,6 +56,8 @@ class Recursion:
         self.realization = realization
         self.sample = describe(realization, output_range, anti_windup, tracking_time_s, guard_nonfinite)
         self._number: Any = np.float32 if realization.format.name == "float32" else float
+        self._taken: dict[str, Any] = {}
+        self._names: list[dict[str, Any]] = []
         self._functions = self._compiled_sample()
         self._settling: Settling | None = None
         self.clear()
@@ -63,6 +65,18 @@ class Recursion:
     def clear(self) -> None:
         """All state zero."""
         self._state = SimpleNamespace(**dict.fromkeys(self.sample.fields, self._number(0)))
+
+    def take(self, coefficients: Mapping[str, float]) -> None:
+        """Go on with other coefficients, by the names of the steps; the state stays.
+
+        Parameters
+        ----------
+        coefficients : mapping of str to float
+            Values of the format; ``settled_bound`` and ``settled_floor`` too, where the preset asks for them.
+        """
+        self._taken = {name: self._number(value) for name, value in coefficients.items()}
+        for names in self._names:
+            names |= self._taken
 
     def output(self, value: float) -> float:
         """The clamped command for an input; changes nothing but what ``advance`` needs."""
@@ -115,7 +129,11 @@ class Recursion:
             setattr(self._state, field, settled)
         if settling.integrating:
             return bool(value == 0 and reached == output)
-        margin = self._number(settling.bound) * (-value if value < 0 else value) + self._number(settling.floor)
+        bound, floor = (
+            self._taken.get(name, self._number(own))
+            for name, own in (("settled_bound", settling.bound), ("settled_floor", settling.floor))
+        )
+        margin = bound * (-value if value < 0 else value) + floor
         return bool(-margin <= reached - output <= margin)
 
     def _compiled_sample(self) -> dict[str, Any]:
@@ -138,8 +156,9 @@ class Recursion:
         values = values | {"zero": 0.0, "largest": largest(self.sample.format)}
         if self.sample.low is not None and self.sample.high is not None:
             values |= {"low": self.sample.low, "high": self.sample.high}
-        names = {name: self._number(value) for name, value in values.items()}
+        names = {name: self._number(value) for name, value in values.items()} | self._taken
         exec("\n".join(text), names)
+        self._names.append(names)
         return names
 
 

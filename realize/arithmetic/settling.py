@@ -69,8 +69,7 @@ def settle(realization: Realization, sample: Sample) -> Settling:
     ``s_1 = y - b_0 u``, ``s_{i+1} = a_i y - b_i u``. It hands on ``b_0 u + s_1``, as in the next sample. An integral
     chain is at rest only at input 0; ``I_{i+1} = -R_i x`` keeps all but the last still otherwise.
     """
-    exact = [_gain(section, k) for k, section in enumerate(realization.sections, 1)]
-    stored_gains = [realization.format.round(gain) for gain in exact]
+    stored_gains, bound, floor = rest_figures(realization)
     steps: list[Step] = []
     last = "input"
     for k, (section, gain) in enumerate(zip(realization.sections, stored_gains, strict=True), 1):
@@ -80,11 +79,24 @@ def settle(realization: Realization, sample: Sample) -> Settling:
         steps += _settled_integral(realization, last if realization.sections else None, sample)
         last = "unclamped"
     steps.append(Limit("command", last) if sample.low is not None else copied("command", last))
-    bound, floor = (0.0, 0.0) if realization.integral else _bound(realization, exact, stored_gains)
     stored = tuple((field, _settled_name(field)) for field in sample.fields)
     verdict = "wanted" if realization.integral else "command"
     read = needed(steps, {verdict, *(name for _, name in stored)})
     return Settling(read, stored, bool(realization.integral), bound, floor)
+
+
+def rest_figures(realization: Realization) -> tuple[list[float], float, float]:
+    """Gain at rest of every section, rounded; bound and floor of :class:`Settling`.
+
+    Raises
+    ------
+    RealizeError
+        When a stored section has a pole at z = 1.
+    """
+    exact = [_gain(section, k) for k, section in enumerate(realization.sections, 1)]
+    gains = [realization.format.round(gain) for gain in exact]
+    bound, floor = (0.0, 0.0) if realization.integral else _bound(realization, exact, gains)
+    return gains, bound, floor
 
 
 def _gain(section: AnySection, k: int) -> Fraction:

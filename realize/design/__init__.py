@@ -21,6 +21,7 @@ from realize.design.model import (
     PlantCase,
     PlantTable,
     Rolloff,
+    Schedule,
     Signal,
     Target,
 )
@@ -40,6 +41,7 @@ __all__ = [
     "PlantCase",
     "PlantTable",
     "Rolloff",
+    "Schedule",
     "Signal",
     "Target",
     "checked_name",

@@ -264,11 +264,6 @@ def described(value: object) -> str:
     return kinds.get(type(value), "a date or a time")
 
 
-def not_yet(where: str, subject: str, instead: str) -> RealizeError:
-    """Compose the answer to what is understood and planned, but not there yet."""
-    return RealizeError(where, f"{subject}, which is not supported yet", instead, "remove it for now")
-
-
 def _integers_near(value: object, low: int, high: int) -> str:
     """The allowed integers next to a number; any allowed one for what is none."""
     try:

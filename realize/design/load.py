@@ -14,6 +14,7 @@ from realize.design.controller import Controller, read_controller
 from realize.design.gate import Table, WrittenNumber
 from realize.design.model import DEFAULT_LOOP, Design, LoopTable, Overrides, PlantTable
 from realize.design.plant import MAX_RESPONSE_BYTES, names_in_plant, read_loop, read_plant
+from realize.design.schedule import read_schedule, written_tables
 from realize.design.tables import (
     read_accept,
     read_method,
@@ -23,15 +24,14 @@ from realize.design.tables import (
     read_signals,
     read_target,
     read_tolerance,
-    refuse_schedule,
 )
 from realize.errors import RealizeError, Refused
 
-#: Largest design file: twenty times one that uses every key.
-MAX_FILE_BYTES = 2**16
+#: Largest design file: a schedule of a thousand points with eight values that change, each a dozen characters long.
+MAX_FILE_BYTES = 2**17
 
 #: Longest line of a design file: the longest expression (4000 characters) and its key. The reader of TOML takes
-#: a time that grows with the square of the dots in a key; so bounded, and in a file of this size, under a second.
+#: a time that grows with the square of the dots in a key; so bounded, and in a file of this size, in two seconds.
 MAX_LINE = 4500
 
 #: Longest path worth looking for: what the common file systems allow for a name.
@@ -138,20 +138,23 @@ def design_from_document(
     plant = None
     if "plant" in root:
         plant = read_plant(root.table("plant"), overrides.values, partial(_response_text, folder))
-    return assemble(root, controller, plant, overrides)
+    written = written_tables(root, controller.values, plant, overrides.values) if "schedule" in root else None
+    return assemble(root, controller, plant, overrides, written)
 
 
-def assemble(root: Table, controller: Controller, plant: PlantTable | None, overrides: Overrides) -> Design:
-    """Put a design together from controller, plant and all other tables."""
-    refuse_schedule(root)
+def assemble(
+    root: Table, controller: Controller, plant: PlantTable | None, overrides: Overrides, written: object = None
+) -> Design:
+    """Put a design together from controller, plant and all other tables; the first two as written, for a schedule."""
     design = root.table("design")
     sampling = read_sampling(root.table("sampling"), overrides)
     method = read_method(root.table("method"), overrides.method)
     target = read_target(root.table("target"))
     signals = read_signals(root.table("signals"), target)
+    name = read_name(design, overrides.name)
     return Design(
         source=root.source,
-        name=read_name(design, overrides.name),
+        name=name,
         transfer=controller.transfer,
         transfer_text=controller.text,
         about=design.text("about"),
@@ -172,6 +175,7 @@ def assemble(root: Table, controller: Controller, plant: PlantTable | None, over
         target=target,
         tolerance=read_tolerance(root.table("tolerance")),
         accept=read_accept(root.tables("accept")),
+        schedule=read_schedule(root, name, controller.values, plant, written),
     )
 
 

@@ -204,6 +204,34 @@ class Accept(NamedTuple):
     by: str
 
 
+class Schedule(NamedTuple):
+    """Operating points: what changes with a variable that is measured while the controller runs.
+
+    Attributes
+    ----------
+    variable : str
+        Its name, a C identifier.
+    unit : str
+        Its unit, as text; may be empty.
+    points : tuple of Fraction
+        Where the values are given; each larger than the one before, at least two.
+    grid : int
+        Equal parts that each interval is divided into, for the checks between.
+    values, plant_values : tuple of (str, tuple of Fraction)
+        Values of controller and plant that change, each with a number for every point.
+    written : mapping
+        The tables ``design`` and ``plant`` as they were written: a transfer function at other values is made from them.
+    """
+
+    variable: str
+    unit: str
+    points: tuple[Fraction, ...]
+    grid: int
+    values: tuple[tuple[str, tuple[Fraction, ...]], ...]
+    plant_values: tuple[tuple[str, tuple[Fraction, ...]], ...]
+    written: Mapping[str, Mapping[str, Any]]
+
+
 class Overrides(NamedTuple):
     """What the command line says in place of the file, as text."""
 
@@ -252,6 +280,8 @@ class Design:
         Tolerances that differ from their defaults, in the order of :data:`TOLERANCE_KEYS` and in its units.
     accept : tuple of Accept
         Agreed deviations.
+    schedule : Schedule or None
+        Operating points, beside which all of the above is the nominal one.
     """
 
     source: str = field(compare=False)
@@ -276,6 +306,7 @@ class Design:
     target: Target = DEFAULT_TARGET
     tolerance: tuple[tuple[str, Fraction], ...] = ()
     accept: tuple[Accept, ...] = ()
+    schedule: Schedule | None = None
 
     def resolved(self) -> dict[str, Any]:
         """Return the whole design, defaults filled in, as a document that JSON can hold.

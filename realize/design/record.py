@@ -18,7 +18,7 @@ from realize.algebra.expression.tokens import MAX_LENGTH, listed
 from realize.design.controller import LONGEST_PLAIN, Controller, reduced
 from realize.design.gate import Table, checked_number, checked_quantity, described
 from realize.design.load import assemble
-from realize.design.model import TOLERANCE_KEYS, Design, Overrides, PlantCase, PlantTable, Signal
+from realize.design.model import TOLERANCE_KEYS, Design, Overrides, PlantCase, PlantTable, Schedule, Signal
 from realize.design.plant import MAX_CASE_NAME, checked_response, proper
 from realize.design.values import Values, checked_value_name
 from realize.errors import RealizeError
@@ -32,9 +32,10 @@ _AGAIN = "emit the design again"
 
 _KEYS = (
     *("name", *_TEXTS, "transfer", "numerator", "denominator", "cancelled", "values"),
-    *("sampling", "rolloff", "method", "plant", "loop", "signals", "target", "tolerance", "accept"),
+    *("sampling", "rolloff", "method", "plant", "loop", "signals", "target", "tolerance", "accept", "schedule"),
 )
 _PLANT_KEYS = ("transfer", "sensor", "response", "response_text", "cases")
+_SCHEDULE_KEYS = ("variable", "unit", "points", "grid", "values", "plant_values", "written")
 _TRANSFER_KEYS = ("numerator", "denominator", "cancelled")
 _CASE_KEYS = ("name", "values", *_TRANSFER_KEYS, "dead_time_s", "sensor")
 
@@ -62,9 +63,10 @@ def resolved(design: Design) -> dict[str, Any]:
         ``name``, ``about``, ``revision``, ``requirement``, ``author``; ``transfer`` (as written), ``numerator``,
         ``denominator``, ``cancelled`` (exact, descending powers of s; ``cancelled`` is empty where nothing was);
         ``values`` (a list of name and value); ``sampling``, ``rolloff`` (or null), ``method``, ``plant`` and ``loop``
-        (or null), ``signals``, ``target``, ``tolerance`` (those that differ from their defaults) and ``accept``.
+        (or null), ``signals``, ``target``, ``tolerance`` (those that differ from their defaults) and ``accept``; where
+        there is one, ``schedule``, whose lists are by the names of the values.
     """
-    return {
+    document = {
         "name": design.name,
         **{key: getattr(design, key) for key in _TEXTS},
         "transfer": design.transfer_text,
@@ -83,6 +85,16 @@ def resolved(design: Design) -> dict[str, Any]:
         "target": _with_exact_numbers(design.target._asdict()),
         "tolerance": _with_exact_numbers(dict(design.tolerance)),
         "accept": [_with_exact_numbers(entry._asdict()) for entry in design.accept],
+    }
+    return document if design.schedule is None else document | {"schedule": _written_schedule(design.schedule)}
+
+
+def _written_schedule(schedule: Schedule) -> dict[str, Any]:
+    return schedule._asdict() | {
+        "unit": schedule.unit or None,
+        "points": [exact_text(point) for point in schedule.points],
+        "values": {name: [exact_text(value) for value in values] for name, values in schedule.values},
+        "plant_values": {name: [exact_text(value) for value in values] for name, values in schedule.plant_values},
     }
 
 
@@ -103,7 +115,8 @@ def design_from_resolved(document: Mapping[str, object]) -> Design:
     record.only(_KEYS)
     root = Table(_file_document(record), record.source)
     plant = _plant(_without_twins(record.table("plant"))) if "plant" in record else None
-    return assemble(root, _controller(record), plant, Overrides())
+    written = record.table("schedule").entries.get("written")
+    return assemble(root, _controller(record), plant, Overrides(), written)
 
 
 def _file_document(record: Table) -> dict[str, object]:
@@ -115,6 +128,11 @@ def _file_document(record: Table) -> dict[str, object]:
     }
     signals = record.table("signals")
     signals.only(("input", "output"))
+    if "schedule" in record:
+        schedule = record.table("schedule")
+        schedule.only(_SCHEDULE_KEYS)
+        kept = {key: value for key, value in schedule.entries.items() if key != "written" and value is not None}
+        tables["schedule"] = kept
     return {
         **tables,
         "design": {key: record.entries[key] for key in ("name", *_TEXTS) if key in record},

@@ -16,7 +16,6 @@ from realize.design.gate import (
     checked_number,
     checked_quantity,
     described,
-    not_yet,
     within_range,
 )
 from realize.design.model import (
@@ -206,12 +205,6 @@ def read_method(table: Table, override: str | None) -> Method:
     if exact_at_rad_s is not None:
         _refuse_other_method(table, "exact_at", "a frequency", name, _PREWARPED)
     return Method(name, exact_at_rad_s, compensate_delay)
-
-
-def refuse_schedule(root: Table) -> None:
-    """Answer the table of gains that change while running, which is planned."""
-    if "schedule" in root:
-        raise not_yet(f"{root.source}, [schedule]", "a schedule of gains", "constant values")
 
 
 def read_target(table: Table) -> Target:

@@ -64,7 +64,7 @@ def header_text(emission: Emission, sample: Sample, stored: Mapping[str, float])
         "#endif",
         "",
         *_state(c, sample),
-        *(_table(c, stored) if c.table else []),
+        *(_table(c, emission, stored) if c.table else []),
         *_prototypes(c, emission, sample),
         "#ifdef __cplusplus",
         "}",
@@ -87,6 +87,7 @@ def _preamble(emission: Emission, sample: Sample) -> list[str]:
         *_provenance(emission, sample),
         "",
         *paragraph("Calls", calls(name)),
+        *_schedule(emission),
         *paragraph("Feed-through", _feed_through(emission)),
         *paragraph("Arithmetic", _arithmetic()),
         *loop_lines(emission.loop),
@@ -95,6 +96,14 @@ def _preamble(emission: Emission, sample: Sample) -> list[str]:
         *listed("Method notes", emission.notes),
         *paragraph("Caution", CAUTION)[:-1],
     ]
+
+
+def _schedule(emission: Emission) -> list[str]:
+    if emission.schedule is None:
+        return []
+    from realize.firmware.schedule.c_lookup import schedule_says
+
+    return paragraph("Schedule", schedule_says(emission, emission.schedule))
 
 
 def _provenance(emission: Emission, sample: Sample) -> list[str]:
@@ -205,13 +214,18 @@ def _arithmetic() -> str:
 
 
 def _unprotected(emission: Emission, sample: Sample) -> list[str]:
-    sections = emission.realization.sections
-    lively = [str(k) for k, section in enumerate(sections, 1) if not _decays(section)]
+    everywhere = [emission.realization] if emission.schedule is None else emission.schedule.stored
+    lively = [
+        str(k)
+        for k, _ in enumerate(emission.realization.sections, 1)
+        if not all(_decays(each.sections[k - 1]) for each in everywhere)
+    ]
     limits = [] if sample.low is not None else ["without an output range nothing limits the command"]
     undamped = [
         f"section {', '.join(lively)} has poles that do not decay (undamped or growing): such a pair is not protected "
         "from windup, the limit of the actuator notwithstanding"
     ]
+    moving = [] if emission.schedule is None else [f"a {emission.schedule.variable} that moves fast, or is wrong"]
     return [
         *limits,
         *(undamped if lively else []),
@@ -222,6 +236,7 @@ def _unprotected(emission: Emission, sample: Sample) -> list[str]:
         ),
         "finite inputs so large that a product overflows: the state stays infinite or NaN until it is cleared"
         + ("; the command stays within its limits (NaN counts as the low one)" if sample.low is not None else ""),
+        *moving,
         "a null pointer, a state that was never cleared, two calls on one state at the same time",
     ]
 
@@ -280,7 +295,8 @@ def _meaning(field: str) -> str:
     return f"section {number}, state {role}"
 
 
-def _table(c: Dialect, stored: Mapping[str, float]) -> list[str]:
+def _table(c: Dialect, emission: Emission, stored: Mapping[str, float]) -> list[str]:
+    own = "the design's own" if emission.schedule is None else "those of the first point of the schedule"
     fields = [f"    {c.real} {field};" for field in stored]
     says = wrapped(
         "Every multiplied coefficient. Those that are exactly 0, 1 or -1 are part of the code and not in the table. "
@@ -292,9 +308,18 @@ def _table(c: Dialect, stored: Mapping[str, float]) -> list[str]:
         *(fields or [f"    {c.real} unused; /* nothing is multiplied */"]),
         f"}} {c.name}_coefficients;",
         "",
-        f"extern const {c.name}_coefficients {c.name}_nominal; /* the design's own */",
+        f"extern const {c.name}_coefficients {c.name}_nominal; /* {own} */",
         "",
+        *_lookup(c, emission),
     ]
+
+
+def _lookup(c: Dialect, emission: Emission) -> list[str]:
+    if emission.schedule is None:
+        return []
+    from realize.firmware.schedule.c_lookup import lookup_prototype
+
+    return lookup_prototype(c, emission.schedule)
 
 
 # ---------------------------------------------------------------- functions
@@ -351,6 +376,8 @@ def _preset_says(emission: Emission) -> str:
             "else the state at rest for the input, and 0. Possible is what the gain at rest times the input gives, "
             "within the rounding of the sample. "
         )
+    if emission.schedule is not None:
+        text += "Between points of the schedule gains at rest are interpolated too: there 1 means near rest. "
     if emission.output_range is not None:
         text += "An output beyond the clamp counts as the limit, and gives 0 unless the limit is what it rounds to. "
     return text + "Arguments that are NaN or infinite, and a state that would be, are refused: 0, nothing changed."

@@ -146,10 +146,10 @@ def signatures(name: str, given: str, made: str, *, table: bool) -> tuple[str, s
     both = [state, *([f"const {name}_coefficients *coefficients"] if table else [])]
     return (
         f"void {name}_clear({state})",
-        _signature(f"{made} {name}_update", [*both, value]),
-        _signature(f"{made} {name}_output", [*both, value]),
-        _signature(f"void {name}_advance", [*both, value, f"{made} applied"]),
-        _signature(f"int {name}_preset", [*both, value, f"{made} output"]),
+        signature(f"{made} {name}_update", [*both, value]),
+        signature(f"{made} {name}_output", [*both, value]),
+        signature(f"void {name}_advance", [*both, value, f"{made} applied"]),
+        signature(f"int {name}_preset", [*both, value, f"{made} output"]),
     )
 
 
@@ -159,7 +159,7 @@ def selftest_prototype(name: str) -> list[str]:
     return [*comment(wrapped(says)), f"int {name}_selftest(void);", ""]
 
 
-def _signature(function: str, parameters: Sequence[str]) -> str:
+def signature(function: str, parameters: Sequence[str]) -> str:
     """On one line, or a line for each parameter."""
     line = f"{function}({', '.join(parameters)})"
     return line if len(line) < WIDTH else f"{function}(\n    " + ",\n    ".join(parameters) + ")"

@@ -51,10 +51,15 @@ _WIDEN = {
 def stored_coefficients(emission: Emission, sample: Sample, settling: Settling) -> dict[str, float]:
     """Field name and value of every coefficient the C text stores."""
     steps = (*sample.output, *sample.advance, *settling.steps)
-    stored = dict(sorted(dialect(emission).stored(steps).items(), key=_place))
-    if settling.integrating:
+    c = dialect(emission)
+    stored = dict(sorted(c.stored(steps).items(), key=_place))
+    if not settling.integrating:
+        stored |= {"settled_bound": settling.bound, "settled_floor": settling.floor}
+    if emission.schedule is None:
         return stored
-    return stored | {"settled_bound": settling.bound, "settled_floor": settling.floor}
+    from realize.firmware.schedule.c_lookup import field_sets
+
+    return field_sets(c, emission.schedule, stored)[0]
 
 
 def _place(item: tuple[str, float]) -> tuple[bool, int, bool, str]:
@@ -81,6 +86,7 @@ def source_text(emission: Emission, sample: Sample, settling: Settling, stored: 
     lines = [
         *comment(wrapped(f"{c.name}.c - a difference equation, emitted by realize; see {c.name}.h")),
         f'#include "{c.name}.h"',
+        *([f'#include "{c.name}_schedule.h"'] if emission.schedule else []),
         "",
         "#include <float.h>",
         "",
@@ -88,6 +94,7 @@ def source_text(emission: Emission, sample: Sample, settling: Settling, stored: 
         *_contraction_off(),
         *_constants(c, stored),
         *_helpers(c, sample),
+        *_lookup(c, emission, list(stored)),
         *_functions(c, sample, settling),
         *_contraction_restored(),
     ]
@@ -192,6 +199,14 @@ def _helpers(c: Dialect, sample: Sample) -> list[str]:
         *(_pushes(c) if any(step.applied for step in integrals) else []),
         *(_integrate(c) if any(step.rest for step in integrals) else []),
     ]
+
+
+def _lookup(c: Dialect, emission: Emission, fields: Sequence[str]) -> list[str]:
+    if emission.schedule is None:
+        return []
+    from realize.firmware.schedule.c_lookup import lookup_definitions
+
+    return lookup_definitions(c, emission.schedule, fields)
 
 
 def _finite(c: Dialect) -> list[str]:

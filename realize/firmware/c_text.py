@@ -64,13 +64,12 @@ class Dialect(NamedTuple):
     def stored(self, steps: Sequence[Step]) -> dict[str, float]:
         """Field name and stored value of every coefficient, in the order of first use."""
         return {
-            self._field(name): -value if self._is_negated(name) else value
-            for name, value in coefficients(steps).items()
+            self.field(name): -value if self._is_negated(name) else value for name, value in coefficients(steps).items()
         }
 
     def coefficient(self, name: str) -> str:
         """How a function refers to a coefficient."""
-        return ("coefficients->" if self.table else f"{self.name}_") + self._field(name)
+        return ("coefficients->" if self.table else f"{self.name}_") + self.field(name)
 
     def total(self, terms: Sequence[Term]) -> list[str]:
         """A sum as its pieces, each after the first with its operator: added from left to right."""
@@ -83,7 +82,8 @@ class Dialect(NamedTuple):
             pieces.append(operator + factor + variable(term.variable))
         return pieces or [self.literal(0.0)]
 
-    def _field(self, name: str) -> str:
+    def field(self, name: str) -> str:
+        """Name under which a coefficient is stored."""
         return name.replace("_a", "_minus_a") if self._is_negated(name) else name
 
     def _is_negated(self, name: str) -> bool:

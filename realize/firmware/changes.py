@@ -86,6 +86,8 @@ def place_text(place: Place) -> str:
             return f"section {k + 1}{_within_section(tuple(rest))}"
         case ("direct_gain",):
             return "direct gain"
+        case ("schedule", "points", int(i), ("sections" | "integral"), *_):
+            return f"point {i + 1}, {place_text(place[3:])}"
         case _:
             return dotted(place)
 

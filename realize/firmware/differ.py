@@ -36,6 +36,7 @@ _GROUPS: Mapping[str, tuple[str, ...]] = {
     "Design": ("design", "causal"),
     "Realization": ("method", "structure", "arithmetic"),
     "Coefficients": ("integral", "sections", "direct_gain", "numerators_anew"),
+    "Schedule": ("schedule",),
     "Words": ("signals", "output_error_counts", "quiet"),
     "Loop": ("loop",),
     "Accepted deviations": ("accepted",),
@@ -94,6 +95,7 @@ def differ(old_path: str, new_path: str) -> Difference:
         *told["Loop"],
         *_checks(old["checks"], new["checks"]),
         *told["Accepted deviations"],
+        *told["Schedule"],
         *told["Words"],
         *told["Coefficients"],
         *told["Files"],
@@ -131,7 +133,13 @@ def _words(change: Change, *parts: Mapping[str, Any]) -> tuple[str, str, str]:
             return name, _with_unit(texts[0], _UNITS[ending]), _with_unit(texts[1], _UNITS[ending])
         case ("files", str(name)):
             return printable(name), value_text(change.old)[:_HASH_DIGITS], value_text(change.new)[:_HASH_DIGITS]
-        case ("sections" | "integral" | "direct_gain", *_):
+        case ("sections" | "integral" | "direct_gain", *_) | (
+            "schedule",
+            "points",
+            int(),
+            ("sections" | "integral"),
+            *_,
+        ):
             return place_text(change.place), *value_texts(change.old, change.new)
         case _:
             return _plain(change.place, *parts), *value_texts(change.old, change.new)

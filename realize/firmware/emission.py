@@ -11,6 +11,7 @@ from realize.arithmetic.sample import HOLD_INTEGRAL
 
 if TYPE_CHECKING:
     from realize.arithmetic.realization import Realization
+    from realize.schedule.table import Table
 
 
 class Emission(NamedTuple):
@@ -53,6 +54,10 @@ class Emission(NamedTuple):
         the header.
     checks, accepted : sequence of mapping
         For the record; ``accepted`` (check, limit, unit, because, by) for the header too.
+    schedule : Table or None
+        Coefficients by a variable; then ``realization`` is that of the first point, and ``coefficients`` is ``table``.
+    schedule_entry : mapping or None
+        The schedule's account, for the record.
     """
 
     name: str
@@ -81,13 +86,23 @@ class Emission(NamedTuple):
     loop: Mapping[str, Any] | None = None
     checks: Sequence[Mapping[str, Any]] = ()
     accepted: Sequence[Mapping[str, Any]] = ()
+    schedule: Table | None = None
+    schedule_entry: Mapping[str, Any] | None = None
+
+    @property
+    def described(self) -> Realization:
+        """What the steps of a sample are listed from: with a schedule, what stands for every point."""
+        return self.realization if self.schedule is None else self.schedule.stand_in
 
     def recursion(self) -> Recursion:
-        """The bit-exact model, cleared."""
-        return Recursion(
-            self.realization,
+        """The bit-exact model, cleared; with a schedule, with the coefficients of the first point."""
+        model = Recursion(
+            self.described,
             self.output_range,
             self.anti_windup,
             self.tracking_time_s,
             self.guard_nonfinite,
         )
+        if self.schedule is not None:
+            model.take(self.schedule.sets[0])
+        return model

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import json
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import TYPE_CHECKING, Any
@@ -24,6 +24,7 @@ from realize.workflow import Causal, Comparison, MethodResult, choose, refuse_un
 if TYPE_CHECKING:
     from realize.loop import Ledger
     from realize.loop_design import LoopResult
+    from realize.schedule import Scheduled
 
 #: Decimals of the phases in the ledger, in deg. Each is a difference of angles in double precision, of up to 1e4 rad
 #: each to 1e-16 of itself (6e-11 deg); smaller phases than a millionth would be digits of that noise.
@@ -42,11 +43,14 @@ class Emitted:
         The one that is emitted.
     files : mapping
         File name to text.
+    schedule : Scheduled or None
+        Every operating point of a design that has some; the comparison is that of the first.
     """
 
     comparison: Comparison
     chosen: MethodResult
     files: Mapping[str, str]
+    schedule: Scheduled | None = None
 
     @property
     def record(self) -> dict[str, Any]:
@@ -65,11 +69,13 @@ def emit(design: Design) -> Emitted:
     RealizeError
         When it cannot be understood.
     """
+    if design.schedule is not None:
+        return _emit_scheduled(design)
     return emitted_from(choose(design))
 
 
 def emitted_from(comparison: Comparison) -> Emitted:
-    """What a comparison comes to, where its design asks for no roll-off that it does not name.
+    """What a comparison comes to, where its design has no schedule and asks for no roll-off that it does not name.
 
     Raises
     ------
@@ -80,25 +86,54 @@ def emitted_from(comparison: Comparison) -> Emitted:
     return Emitted(comparison, chosen, _rendered(comparison, chosen))
 
 
+def _emit_scheduled(design: Design) -> Emitted:
+    # Here, because a design without a schedule does not need it, and its start is short.
+    from realize.firmware.schedule.record import schedule_entry
+    from realize.schedule import scheduled, table_of
+
+    found = scheduled(design)
+    table, chosen, comparison = table_of(found), found.chosen, found.comparison
+    constants = {name: value for name, value in design.values if name not in dict(found.schedule.values)}
+    common = _common(comparison, chosen) | {
+        "design": design.resolved(),
+        "coefficients": "table",
+        "particulars": [
+            ("values", _named_values(constants.items())),
+            ("scheduled", f"{', '.join(dict(found.schedule.values))} by {found.schedule.variable}; see Schedule below"),
+            *_particulars(comparison)[1:],
+        ],
+    }
+    files = render_firmware(
+        Emission(
+            **common,
+            **_of_floats(design),
+            realization=table.stored[0],
+            schedule=table,
+            schedule_entry=schedule_entry(found, table.breakpoints),
+        )
+    )
+    return Emitted(comparison, chosen, files, found)
+
+
 def _rendered(comparison: Comparison, chosen: MethodResult) -> dict[str, str]:
-    design, target = comparison.design, comparison.design.target
     common = _common(comparison, chosen)
     if isinstance(chosen.realization, Realization):
-        return render_firmware(
-            Emission(
-                **common,
-                realization=chosen.realization,
-                input_count=_count(design.input),
-                output_count=_count(design.output),
-                guard_nonfinite=target.guard_nonfinite,
-            )
-        )
+        return render_firmware(Emission(**common, **_of_floats(comparison.design), realization=chosen.realization))
     # Here, because a design in floating point does not need it, and its start is short.
     from realize.firmware.integer.emission import IntegerEmission
     from realize.firmware.integer.render import render_integer_firmware
 
     assert chosen.realization is not None
     return render_integer_firmware(IntegerEmission(**common, realization=chosen.realization))
+
+
+def _of_floats(design: Design) -> dict[str, Any]:
+    """What an emission in floats says beside."""
+    return {
+        "input_count": _count(design.input),
+        "output_count": _count(design.output),
+        "guard_nonfinite": design.target.guard_nonfinite,
+    }
 
 
 def _common(comparison: Comparison, chosen: MethodResult) -> dict[str, Any]:
@@ -133,8 +168,15 @@ def _common(comparison: Comparison, chosen: MethodResult) -> dict[str, Any]:
 def _particulars(comparison: Comparison) -> list[tuple[str, str]]:
     """Header lines on the values and on the roll-off."""
     design = comparison.design
-    named = ", ".join(f"{name} = {number_text(value)}" for name, value in design.values)
-    return [("values", named), ("roll-off", _rolloff(comparison.causal)), ("band", comparison.band_rests_on)]
+    return [
+        ("values", _named_values(design.values)),
+        ("roll-off", _rolloff(comparison.causal)),
+        ("band", comparison.band_rests_on),
+    ]
+
+
+def _named_values(values: Iterable[tuple[str, Fraction]]) -> str:
+    return ", ".join(f"{name} = {number_text(value)}" for name, value in values)
 
 
 def _rolloff(causal: Causal) -> str:

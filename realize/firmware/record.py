@@ -15,7 +15,7 @@ from realize.firmware.c_text import hexadecimal
 from realize.version import VERSION
 
 if TYPE_CHECKING:
-    from realize.arithmetic.realization import AnySection
+    from realize.arithmetic.realization import AnySection, Realization
     from realize.firmware.emission import Emission
     from realize.firmware.integer.emission import IntegerEmission
 
@@ -47,10 +47,19 @@ def record(emission: Emission, files: Mapping[str, str]) -> dict[str, Any]:
     stored = {
         "structure": realization.structure,
         "arithmetic": realization.format.name,
+        **stored_entries(realization),
+    }
+    if emission.schedule_entry is not None:
+        stored["schedule"] = _figures(emission.schedule_entry)
+    return assembled(emission, stored, files)
+
+
+def stored_entries(realization: Realization) -> dict[str, Any]:
+    """The stored coefficients."""
+    return {
         "integral": [_coefficient(gain) for gain in realization.integral],
         "sections": [_section(section) for section in realization.sections],
     }
-    return assembled(emission, stored, files)
 
 
 def assembled(

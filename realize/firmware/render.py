@@ -1,10 +1,13 @@
-"""From an emission to the text of its five files."""
+"""From an emission to the text of its files: five, and with a schedule the table."""
 
 from __future__ import annotations
+
+from collections.abc import Mapping
 
 from realize.arithmetic.settling import settle
 from realize.firmware.c_header import header_text
 from realize.firmware.c_source import source_text, stored_coefficients
+from realize.firmware.c_text import dialect
 from realize.firmware.emission import Emission
 from realize.firmware.record import record_text
 from realize.firmware.selftest import selftest_text
@@ -12,7 +15,7 @@ from realize.firmware.vectors import vectors_text
 
 
 def render_firmware(emission: Emission) -> dict[str, str]:
-    """The five files of an emission.
+    """The files of an emission.
 
     Parameters
     ----------
@@ -22,8 +25,8 @@ def render_firmware(emission: Emission) -> dict[str, str]:
     Returns
     -------
     dict
-        File name and text of header, source, self-test, vectors and record, in this order. The same emission gives the
-        same bytes everywhere.
+        File name and text of header, source, table of the schedule if there is one, self-test, vectors and record, in
+        this order. The same emission gives the same bytes everywhere.
 
     Raises
     ------
@@ -33,12 +36,22 @@ def render_firmware(emission: Emission) -> dict[str, str]:
     """
     name = emission.name
     sample = emission.recursion().sample
-    settling = settle(emission.realization, sample)
+    settling = settle(emission.described, sample)
     stored = stored_coefficients(emission, sample, settling)
     files = {
         f"{name}.h": header_text(emission, sample, stored),
         f"{name}.c": source_text(emission, sample, settling, stored),
+        **_table(emission, stored),
         f"{name}_selftest.c": selftest_text(emission),
         f"{name}_vectors.csv": vectors_text(emission),
     }
     return files | {f"{name}.record.json": record_text(emission, files)}
+
+
+def _table(emission: Emission, stored: Mapping[str, float]) -> dict[str, str]:
+    if emission.schedule is None:
+        return {}
+    # Here, because a design without a schedule does not need it, and its start is short.
+    from realize.firmware.schedule.c_lookup import schedule_header_text
+
+    return {f"{emission.name}_schedule.h": schedule_header_text(dialect(emission), emission.schedule, stored)}

@@ -13,8 +13,9 @@ from math import copysign, inf, isfinite, nan
 from typing import TYPE_CHECKING, Any, NamedTuple, TypeVar
 
 from realize.arithmetic.sample import largest
+from realize.firmware.c_preamble import signature
 from realize.firmware.c_text import comment, dialect, statement, wrapped
-from realize.firmware.vectors import full_scale, in_format, vectors
+from realize.firmware.vectors import answers, full_scale, in_format, scheduled, vectors
 
 if TYPE_CHECKING:
     from realize.arithmetic.recursion import Recursion
@@ -28,14 +29,16 @@ RUN, STRETCH = 8, 40
 NONFINITE = (nan, inf, -inf)
 
 Value = TypeVar("Value", int, float)
+Row = TypeVar("Row")
 
 
 class Held(NamedTuple):
-    """An input, the number of samples it is held for, and the answer to the last of them."""
+    """An input, the number of samples it is held for, and the answer to the last; with a schedule at its variable."""
 
     input: float
     held: int
     answer: float
+    variable: float | None = None
 
 
 class Rest(NamedTuple):
@@ -83,6 +86,8 @@ class Wording(NamedTuple):
         Whether coefficients come by pointer.
     largest : str
         The largest finite number; empty in integers.
+    scheduled : bool
+        Whether coefficients are looked up.
     """
 
     name: str
@@ -92,12 +97,13 @@ class Wording(NamedTuple):
     made_text: Callable[[float], str]
     table: bool
     largest: str
+    scheduled: bool = False
 
 
 # ---------------------------------------------------------------- samples
 
 
-def chosen(inputs: Sequence[Value]) -> Iterator[tuple[Value, int]]:
+def chosen(inputs: Sequence[Row]) -> Iterator[tuple[Row, int]]:
     """Inputs and how long each is held: a long run is parted after 1, 2, 4, ... samples, to be compared there."""
     changing = 0
     for value, same in groupby(inputs):
@@ -122,18 +128,21 @@ def selftest_text(emission: Emission) -> str:
     def text(value: float) -> str:
         return f"-{c.literal(0.0)}" if value == 0 and copysign(1.0, value) < 0 else c.literal(value)
 
-    words = Wording(c.name, c.real, c.real, text, text, c.table, f"{c.macros}_MAX")
+    words = Wording(c.name, c.real, c.real, text, text, c.table, f"{c.macros}_MAX", emission.schedule is not None)
     return source_of(words, _samples(emission))
 
 
 def _samples(emission: Emission) -> Samples:
     model = emission.recursion()
     rows: list[Held] = []
-    for value, held in chosen([x for x in vectors(emission)[0] if isfinite(x)]):
-        answer = model.run([value] * held)[-1]
+    inputs = vectors(emission)[0]
+    variables: Sequence[float | None] = scheduled(emission, len(inputs)) or [None] * len(inputs)
+    pairs = [(x, v) for x, v in zip(inputs, variables, strict=True) if isfinite(x) and (v is None or isfinite(v))]
+    for (value, variable), held in chosen(pairs):
+        answer = answers(emission, model, [value] * held, [variable or 0.0] * held)[-1]
         if not isfinite(answer):
             return Samples(rows, (), _rests(emission, model))
-        rows.append(Held(value, held, answer))
+        rows.append(Held(value, held, answer, variable))
     guarded = model.run(NONFINITE) if emission.guard_nonfinite else ()
     return Samples(rows, guarded, _rests(emission, model))
 
@@ -148,6 +157,8 @@ def _rests(emission: Emission, model: Recursion) -> list[Rest]:
     beyond = min(2 * max(map(abs, ends)), most)
     levels = in_format([-beyond, ends[0] / 2 + ends[1] / 2, beyond], emission.realization.format)
     found = []
+    if emission.schedule is not None:
+        model.take(emission.schedule.sets[0])
     for value, then in turns(low, 0.0, high):
         model.clear()
         model.preset(value, levels[1])
@@ -203,12 +214,18 @@ def source_of(c: Wording, samples: Samples) -> str:
 
 
 def _held_table(c: Wording, rows: Sequence[Held]) -> list[str]:
-    values = [f"    {{{c.given_text(row.input)}, {c.made_text(row.answer)}, {row.held}}}," for row in rows]
+    at = ["" if row.variable is None else f"{c.given_text(row.variable)}, " for row in rows]
+    values = [
+        f"    {{{first}{c.given_text(row.input)}, {c.made_text(row.answer)}, {row.held}}},"
+        for first, row in zip(at, rows, strict=True)
+    ]
+    says = "An input, the answer to the last sample that it is held for, and their number."
     return [
         f"enum {{ {c.name}_HELD_LINES = {len(rows)} }};",
         "",
-        "/* An input, the answer to the last sample that it is held for, and their number. */",
+        *comment([f"The variable of the schedule. {says}" if c.scheduled else says]),
         f"static const struct {c.name}_held_line {{",
+        *([f"    {c.given} variable;"] if c.scheduled else []),
         f"    {c.given} input;",
         f"    {c.made} answer;",
         "    int samples;",
@@ -304,18 +321,29 @@ def _own(c: Wording) -> str:
     return f", &{c.name}_nominal" if c.table else ""
 
 
+def _looked_up(c: Wording) -> str:
+    """The coefficients that the variable calls for, else those of the design."""
+    return ", &coefficients" if c.scheduled else _own(c)
+
+
 def _answer(c: Wording) -> list[str]:
+    own = ", coefficients" if c.scheduled else _own(c)
+    parameters = [
+        f"{c.name}_state *state",
+        *([f"const {c.name}_coefficients *coefficients"] if c.scheduled else []),
+        *(f"{c.given} input", "int samples", "int in_two"),
+    ]
     return [
         "/* The answer to an input that is held, in one call a sample or in two. */",
-        f"static {c.made} {c.name}_answer({c.name}_state *state, {c.given} input, int samples, int in_two)",
+        *signature(f"static {c.made} {c.name}_answer", parameters).splitlines(),
         "{",
         f"    {c.made} answer = {c.made_text(0)};",
         "    for (int k = 0; k < samples; k++) {",
         "        if (in_two != 0) {",
-        f"            answer = {c.name}_output(state{_own(c)}, input);",
-        f"            {c.name}_advance(state{_own(c)}, input, answer);",
+        f"            answer = {c.name}_output(state{own}, input);",
+        f"            {c.name}_advance(state{own}, input, answer);",
         "        } else {",
-        f"            answer = {c.name}_update(state{_own(c)}, input);",
+        f"            answer = {c.name}_update(state{own}, input);",
         "        }",
         "    }",
         "    return answer;",
@@ -325,18 +353,21 @@ def _answer(c: Wording) -> list[str]:
 
 
 def _played(c: Wording, samples: Samples) -> list[str]:
-    given = f"{c.name}_held_lines[k]"
+    given, looked_up = f"{c.name}_held_lines[k]", ", &coefficients" if c.scheduled else ""
     return [
         "/* The first line that differs, counted from 1; 0 for none. */",
         f"static int {c.name}_played(int in_two)",
         "{",
         f"    {c.name}_state state;",
+        *([f"    {c.name}_coefficients coefficients;"] if c.scheduled else []),
         "    int differs = 0;",
         f"    {c.name}_clear(&state);",
+        *([f"    {c.name}_at({c.given_text(0)}, &coefficients);"] if c.scheduled else []),
         f"    for (int k = 0; k < {c.name}_HELD_LINES && differs == 0; k++) {{",
+        *([f"        {c.name}_at({given}.variable, &coefficients);"] if c.scheduled else []),
         *statement(
             f"const {c.made} answer =",
-            ["", f"{c.name}_answer(&state, {given}.input,", f"    {given}.samples, in_two)"],
+            ["", f"{c.name}_answer(&state{looked_up}, {given}.input,", f"    {given}.samples, in_two)"],
             " " * 8,
         ),
         f"        if ({_differs(c, 'answer', f'{given}.answer')}) {{",
@@ -357,10 +388,10 @@ def _guarded(c: Wording, answers: Sequence[float]) -> list[str]:
         f"        const {c.given} input = {c.name}_nonfinite(k);",
         f"        {c.made} answer;",
         "        if (in_two != 0) {",
-        f"            answer = {c.name}_output(&state{_own(c)}, input);",
-        f"            {c.name}_advance(&state{_own(c)}, input, input);",
+        f"            answer = {c.name}_output(&state{_looked_up(c)}, input);",
+        f"            {c.name}_advance(&state{_looked_up(c)}, input, input);",
         "        } else {",
-        f"            answer = {c.name}_update(&state{_own(c)}, input);",
+        f"            answer = {c.name}_update(&state{_looked_up(c)}, input);",
         "        }",
         f"        if ({_differs(c, 'answer', f'{c.name}_guarded[k]')}) {{",
         f"            differs = {c.name}_HELD_LINES + k + 1;",

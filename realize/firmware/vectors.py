@@ -6,7 +6,9 @@ full scale, times a power of two where the command is to stay within its limits 
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from fractions import Fraction
+from itertools import groupby
 from math import comb, isfinite
 from typing import TYPE_CHECKING
 
@@ -45,9 +47,34 @@ LEVELS = ((1, 0), (0, 512), (-1, 0), (0, -512), (-1, 0), (0, 512), (1, 0), (0, -
 
 
 def vectors_text(emission: Emission) -> str:
-    """Inputs and outputs as comma-separated C hexadecimal floats."""
-    rows = [f"{hexadecimal(x)},{hexadecimal(y)}" for x, y in zip(*vectors(emission), strict=True)]
-    return "\n".join(["input,output", *rows]) + "\n"
+    """Inputs and outputs as comma-separated C hexadecimal floats; before them the variable of a schedule."""
+    columns = list(vectors(emission))
+    if emission.schedule is not None:
+        columns.insert(0, scheduled(emission, len(columns[0])))
+    rows = [",".join(map(hexadecimal, row)) for row in zip(*columns, strict=True)]
+    heading = "input,output" if emission.schedule is None else "variable,input,output"
+    return "\n".join([heading, *rows]) + "\n"
+
+
+def scheduled(emission: Emission, count: int) -> list[float]:
+    """The variable of a schedule, for each sample; nothing without one."""
+    if emission.schedule is None:
+        return []
+    # Here, because a design without a schedule does not need it, and its start is short.
+    from realize.firmware.schedule.variable import swept
+
+    return swept(emission.schedule, count)
+
+
+def answers(emission: Emission, model: Recursion, inputs: Sequence[float], variables: Sequence[float]) -> list[float]:
+    """The model's answers; with a schedule, to coefficients that it looks up before each sample."""
+    if emission.schedule is None:
+        return model.run(inputs)
+    found = []
+    for value, same in groupby(zip(variables, inputs, strict=True), key=lambda pair: hexadecimal(pair[0])):
+        model.take(emission.schedule.at(float.fromhex(value)))
+        found += model.run([x for _, x in same])
+    return found
 
 
 def vectors(emission: Emission) -> tuple[list[float], list[float]]:
@@ -67,7 +94,7 @@ def vectors(emission: Emission) -> tuple[list[float], list[float]]:
     for drive in harder or [second]:
         inputs = in_format(_inputs(emission, quiet, (first, drive), low, high), target)
         model.clear()
-        outputs = model.run(inputs)
+        outputs = answers(emission, model, inputs, scheduled(emission, len(inputs)))
         if limits <= {None, *outputs[SATURATING:]}:
             break
     return inputs, outputs

@@ -9,7 +9,7 @@ from realize.arithmetic.realization import Realization, stored_pulse
 from realize.checks import ContinuousReference
 from realize.design import Design
 from realize.errors import Refused
-from realize.firmware.job import Emitted, emitted_from
+from realize.firmware.job import Emitted, emit, emitted_from
 from realize.realizability import Assessment
 from realize.transfer import PulseTransferFunction
 from realize.workflow import Comparison, MethodResult, assess_design, compare
@@ -53,7 +53,7 @@ class Known:
                 "add the lines that `realize assess` prints",
             )
         try:
-            return emitted_from(self.comparison)
+            return emitted_from(self.comparison) if self.design.schedule is None else emit(self.design)
         except Refused as refusal:
             return refusal
 

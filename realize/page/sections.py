@@ -15,6 +15,7 @@ from realize.page.blocks import Page, Section, Table, pairs
 from realize.page.drawings import drawings, window_drawing
 from realize.page.known import Known
 from realize.quantity import format_engineering
+from realize.report.scheduled import schedule_rows, schedule_sentences, schedule_title, schedule_verdict
 from realize.report.sentences import (
     CAUTION,
     accepted_sentences,
@@ -59,6 +60,8 @@ def page(known: Known) -> Page:
 
 
 def _verdict(known: Known) -> str:
+    if isinstance(known.emitted, Emitted) and known.emitted.schedule is not None:
+        return schedule_verdict(known.emitted.schedule) + "."
     if isinstance(known.emitted, Emitted):
         return emission_verdict(known.emitted.comparison, known.emitted.chosen) + "."
     causal = known.comparison.causal
@@ -167,9 +170,19 @@ def _emission(known: Known) -> list[Section]:
     sentence = f"The record, {known.design.name}.record.json, has the SHA-256 {sha256(text.encode()).hexdigest()}."
     what = stored_words(emitted.chosen, known.design)
     return [
+        *_schedule(emitted),
         Section("coefficients", "What is emitted", (_stopped(what),), tables=(_coefficients(record),)),
         Section("record", "The record", (sentence,), tables=(files,)),
     ]
+
+
+def _schedule(emitted: Emitted) -> list[Section]:
+    """What was found at the points of a schedule and between them."""
+    found = emitted.schedule
+    if found is None:
+        return []
+    table = Table(schedule_title(found), schedule_rows(found))
+    return [Section("schedule", "Over the schedule", items=tuple(schedule_sentences(found)), tables=(table,))]
 
 
 def _coefficients(record: dict[str, Any]) -> Table:
@@ -178,7 +191,8 @@ def _coefficients(record: dict[str, Any]) -> Table:
     for i, section in enumerate(record["sections"], 1):
         cells += [_row(f"section {i}, {name}", entry) for name, entry in _named(section)]
     note = "Recursion: y[k] = sum b x - sum a y, in ascending powers of 1/z. Values to 17 digits."
-    return Table("Coefficients", Rows(head, cells), note)
+    caption = "Coefficients of the first point" if record.get("schedule") else "Coefficients"
+    return Table(caption, Rows(head, cells), note)
 
 
 def _named(section: dict[str, Any]) -> list[tuple[str, dict[str, Any]]]:

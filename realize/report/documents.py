@@ -14,6 +14,7 @@ from realize.algebra.rounding import FLOAT64
 from realize.arithmetic.realization import Realization
 from realize.checks import Check
 from realize.design import Design
+from realize.design.schedule import nominal_note
 from realize.errors import RealizeError
 from realize.firmware.job import Emitted
 from realize.realizability import Assessment
@@ -31,11 +32,13 @@ Document = dict[str, Any]
 
 def heading(command: str, design: Design) -> Document:
     """What every document starts with."""
-    return {
+    document: Document = {
         "schema": SCHEMA,
         "command": command,
         "design": {"name": design.name, "transfer": design.transfer_text},
     }
+    note = nominal_note(design)
+    return document | ({"nominal": note[0]} if note else {})
 
 
 def error_document(command: str, error: RealizeError) -> Document:
@@ -170,7 +173,13 @@ def _sections(realization: Realization | IntegerRealization) -> list[Document]:
 
 def emit_document(emitted: Emitted, paths: Sequence[str]) -> Document:
     """The answer of `realize emit`."""
-    return heading("emit", emitted.comparison.design) | {"written": list(paths), "record": emitted.record}
+    document = heading("emit", emitted.comparison.design) | {"written": list(paths), "record": emitted.record}
+    if emitted.schedule is None:
+        return document
+    # Here, because a design without a schedule does not need it, and its start is short.
+    from realize.report.scheduled import scheduled_entry
+
+    return document | {"schedule": scheduled_entry(emitted.schedule)}
 
 
 def check_document(check: Check) -> Document:

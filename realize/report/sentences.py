@@ -7,6 +7,7 @@ from collections.abc import Sequence
 from realize.checks import Check
 from realize.checks.agreement import agreed_text
 from realize.design import Design
+from realize.design.schedule import nominal_note
 from realize.quantity import format_engineering
 from realize.realizability import Assessment
 from realize.report.values import count, hz, value_text
@@ -86,7 +87,7 @@ def setting(comparison: Comparison) -> list[str]:
     """Rate, band and roll-off: what every figure below rests on."""
     period = float(comparison.period_s)
     lines = [f"rate {format_engineering(1 / period, 'Hz')}, period {format_engineering(period, 's')}"]
-    lines.append(comparison.band_rests_on)
+    lines += [*nominal_note(comparison.design), comparison.band_rests_on]
     causal = comparison.causal
     if causal.proposal is not None:
         origin = "assumed, since the design has no [rolloff]" if causal.assumed else "as the design asks"

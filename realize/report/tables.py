@@ -338,7 +338,7 @@ def _check_row(stored: Check, exact: Check, is_agreed: bool, design: Design, dig
         value_text(stored.obtained, digits),
         "-" if stored.check in OF_ARITHMETIC else figure(exact.difference),
         figure(stored.difference),
-        _tolerance_text(stored, design),
+        tolerance_text(stored, design),
         verdict,
     ]
 
@@ -363,7 +363,7 @@ def _gain_unit(outgoing: str, incoming: str, k: int) -> str:
     return f"{ratio}/s" if k else "" if ratio == "1" else ratio
 
 
-def _tolerance_text(check: Check, design: Design) -> str:
+def tolerance_text(check: Check, design: Design) -> str:
     """How far off the value may be; where a limit of its own rules, that one."""
     if check.tolerance is None:
         return "-"

@@ -12,6 +12,8 @@ from typing import TYPE_CHECKING
 from realize.algebra.expression.printing import format_transfer
 from realize.algebra.roots import Root
 from realize.design import Design
+from realize.design.schedule import nominal_note
+from realize.firmware.job import Emitted
 from realize.quantity import format_engineering
 from realize.realizability import Assessment
 from realize.report.paragraphs import WIDTH, bullets, figures_table, heading, table, wrapped
@@ -60,7 +62,7 @@ def assess_text(design: Design, assessment: Assessment) -> str:
     if assessment.terms:
         blocks.append(heading("What makes it improper") + bullets(term.text for term in assessment.terms))
         blocks.append(_proposals_block(assessment.proposals) + bullets(margins_sentences(assessment)))
-    notes = [*assessment.notes, *(_unmeasured(design) if assessment.terms else ())]
+    notes = [*assessment.notes, *(_unmeasured(design) if assessment.terms else ()), *nominal_note(design)]
     if notes:
         blocks.append(heading("Notes") + bullets(notes))
     if assessment.proposals and design.rolloff is None:
@@ -82,7 +84,7 @@ def _unmeasured(design: Design) -> tuple[str, ...]:
 
 def compare_text(comparison: Comparison) -> str:
     """The screen of `realize compare`."""
-    blocks = [wrapped(comparison_verdict(comparison)), _setting(comparison), _methods_block(comparison.methods)]
+    blocks = [wrapped(comparison_verdict(comparison)), setting_text(comparison), _methods_block(comparison.methods)]
     blocks += [_loops_block(comparison)] if comparison.design.plant else []
     refused = [m for m in comparison.methods if m.refused]
     if refused:
@@ -90,24 +92,31 @@ def compare_text(comparison: Comparison) -> str:
     if comparison.closest and comparison.closest.refused is None:
         blocks.append(_checks_block(comparison.closest, comparison.design))
     if comparison.design.method == "auto" and comparison.recommended:
-        blocks.append(_pin(comparison.recommended))
+        blocks.append(pin_text(comparison.recommended))
     return "\n".join(blocks)
 
 
-def _pin(method: str) -> str:
+def pin_text(method: str) -> str:
+    """What to write to keep a method."""
     return heading("To pin the method, under [method]") + f'name = "{method}"\n'
 
 
-def emit_text(comparison: Comparison, chosen: MethodResult, paths: Sequence[str]) -> str:
+def emit_text(emitted: Emitted, paths: Sequence[str]) -> str:
     """The screen of `realize emit`."""
-    design = comparison.design
-    blocks = [wrapped(emission_verdict(comparison, chosen)), _setting(comparison), _checks_block(chosen, design)]
+    if emitted.schedule is not None:
+        # Here, because a design without a schedule does not need it, and its start is short.
+        from realize.report.scheduled import scheduled_text
+
+        return scheduled_text(emitted.schedule, paths)
+    comparison, chosen, design = emitted.comparison, emitted.chosen, emitted.comparison.design
+    blocks = [wrapped(emission_verdict(comparison, chosen)), setting_text(comparison), _checks_block(chosen, design)]
     blocks.append(heading(f"Written ({stored_words(chosen, design)})") + "".join(f"  {path}\n" for path in paths))
-    blocks += [_pin(chosen.method)] if design.method == "auto" else []
+    blocks += [pin_text(chosen.method)] if design.method == "auto" else []
     return "\n".join([*blocks, wrapped(CAUTION)])
 
 
-def _setting(comparison: Comparison) -> str:
+def setting_text(comparison: Comparison) -> str:
+    """Rate, band and roll-off: what every figure below rests on."""
     return "".join(wrapped(line, indent="  ") for line in setting(comparison))
 
 

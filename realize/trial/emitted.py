@@ -38,6 +38,8 @@ class Code(NamedTuple):
         Whether ``NAME_update`` takes a pointer to coefficients; it is given ``NAME_nominal``.
     functions : tuple of str
         Those that are kept in the program, without the prefix.
+    scheduled : bool
+        Whether coefficients are looked up by a variable, before every sample.
     """
 
     name: str
@@ -47,13 +49,22 @@ class Code(NamedTuple):
     output_type: str
     table: bool = False
     functions: tuple[str, ...] = FUNCTIONS
+    scheduled: bool = False
 
 
 class Vectors(NamedTuple):
-    """Inputs, and the answers from a cleared state."""
+    """Inputs, and the answers from a cleared state; with a schedule, the variable of each sample."""
 
     inputs: Sequence[Value]
     outputs: Sequence[Value]
+    variables: Sequence[Value] | None = None
+
+    @property
+    def given(self) -> list[Value]:
+        """What a program is fed: the inputs, each after its variable if there is one."""
+        if self.variables is None:
+            return list(self.inputs)
+        return [value for pair in zip(self.variables, self.inputs, strict=True) for value in pair]
 
 
 class Emitted(NamedTuple):
@@ -88,8 +99,9 @@ def read_emitted(path: str) -> Emitted:
     record = _record(path)
     name = _name(path, record)
     header, source, table = f"{name}.h", f"{name}.c", f"{name}_vectors.csv"
-    files = {file: _content(Path(path).with_name(file), f"{path} describes it") for file in (header, source, table)}
-    code = code_of(name, {file: files[file] for file in (header, source)})
+    compiled = (header, source, *([f"{name}_schedule.h"] if "schedule" in record else []))
+    files = {file: _content(Path(path).with_name(file), f"{path} describes it") for file in (*compiled, table)}
+    code = code_of(name, {file: files[file] for file in compiled})
     return Emitted(
         code,
         read_vectors(table, files[table], code),
@@ -193,7 +205,9 @@ def code_of(name: str, files: Mapping[str, bytes]) -> Code:
             f"TYPE {name}_update({name}_state *state, TYPE input); of {', '.join(LETTERS)}",
             "emit the design again",
         )
-    return Code(name, files, header, found["input"], found["output"], found["table"] is not None)
+    scheduled = f"{name}_schedule.h" in files
+    functions = (*FUNCTIONS, "at") if scheduled else FUNCTIONS
+    return Code(name, files, header, found["input"], found["output"], found["table"] is not None, functions, scheduled)
 
 
 def read_vectors(file: str, content: bytes, code: Code) -> Vectors:
@@ -205,23 +219,26 @@ def read_vectors(file: str, content: bytes, code: Code) -> Vectors:
         When a line is not an input and an output of the types of the code.
     """
     lines = content.decode("ascii", errors="replace").splitlines()
-    if not lines or lines[0] != "input,output" or len(lines) == 1:
+    heading = "variable,input,output" if code.scheduled else "input,output"
+    if not lines or lines[0] != heading or len(lines) == 1:
         raise RealizeError(
-            file, "no vectors", "the heading input,output and a line for each sample", "emit the design again"
+            file, "no vectors", f"the heading {heading} and a line for each sample", "emit the design again"
         )
     rows = [_row(file, number, line, code) for number, line in enumerate(lines[1:], 2)]
-    return Vectors([x for x, _ in rows], [y for _, y in rows])
+    variables = [row[0] for row in rows] if code.scheduled else None
+    return Vectors([row[-2] for row in rows], [row[-1] for row in rows], variables)
 
 
-def _row(file: str, number: int, line: str, code: Code) -> tuple[Value, Value]:
+def _row(file: str, number: int, line: str, code: Code) -> list[Value]:
+    variable = "a variable and " if code.scheduled else ""
+    kinds = [*([code.input_type] if code.scheduled else []), code.input_type, code.output_type]
     try:
-        x, y = line.split(",")
-        return read(code.input_type, x), read(code.output_type, y)
+        return [read(kind, text) for kind, text in zip(kinds, line.split(","), strict=True)]
     except (ValueError, OverflowError):
         raise RealizeError(
             f"{file} line {number}",
             shown(line),
-            f"an input that is a {code.input_type} and an output that is a {code.output_type}",
+            f"{variable}an input that is a {code.input_type} and an output that is a {code.output_type}",
             "emit the design again",
         ) from None
 

@@ -220,7 +220,7 @@ def _start(
     meter: _Meter,
 ) -> int:
     """Call ``trial_run``; the address of the answers."""
-    content = packed(code.input_type, vectors.inputs, "<")
+    content = packed(code.input_type, vectors.given, "<")
     answers = _DATA + _whole_pages(len(content))
     core.mem_map(_DATA, answers - _DATA + _whole_pages(len(vectors.inputs) * size(code.output_type)))
     core.mem_write(_DATA, content)

@@ -31,7 +31,8 @@ void trial_run(const {input} *inputs, {output} *outputs, unsigned long count)
     unsigned long k;
     {name}_clear(&trial_state);
     for (k = 0; k < count; k++) {{
-        outputs[k] = {name}_update({arguments}, inputs[k]);
+        const {input} *const given = inputs + {width} * k;
+        outputs[k] = {sample};
     }}
 }}
 
@@ -54,7 +55,7 @@ _ON_HOST = """
 /* Arguments: a file of inputs, and one for the answers. Prints the size of the state. */
 int main(int count, char **arguments)
 {{
-    {input} input;
+    {input} given[{width}];
     {output} output;
     FILE *inputs = count == 3 ? fopen(arguments[1], "rb") : NULL;
     FILE *outputs = count == 3 ? fopen(arguments[2], "wb") : NULL;
@@ -63,8 +64,8 @@ int main(int count, char **arguments)
     }}
     setvbuf(outputs, NULL, _IONBF, 0);
     {name}_clear(&trial_state);
-    while (fread(&input, sizeof input, 1, inputs) == 1) {{
-        output = {name}_update({arguments}, input);
+    while (fread(given, sizeof given, 1, inputs) == 1) {{
+        output = {sample};
         fwrite(&output, sizeof output, 1, outputs);
     }}
     printf("%lu\\n", (unsigned long)sizeof trial_state);
@@ -75,9 +76,23 @@ int main(int count, char **arguments)
 
 def harness_text(code: Code, *, on_host: bool) -> str:
     """The source beside the code: a program that works on files, or ``trial_run`` for an emulator to call."""
-    arguments = f"&trial_state, &{code.name}_nominal" if code.table else "&trial_state"
     kept = ",\n".join(f"    (trial_function){code.name}_{function}" for function in code.functions)
     body = (_ON_HOST if on_host else _ON_TARGET).format(
-        name=code.name, input=code.input_type, output=code.output_type, arguments=arguments, kept=kept
+        name=code.name,
+        input=code.input_type,
+        output=code.output_type,
+        sample=_sample(code),
+        width=2 if code.scheduled else 1,
+        kept=kept,
     )
-    return f'#include "{code.header}"\n\nstatic {code.name}_state trial_state;\n{body}'
+    coefficients = f"static {code.name}_coefficients trial_coefficients;\n" if code.scheduled else ""
+    return f'#include "{code.header}"\n\nstatic {code.name}_state trial_state;\n{coefficients}{body}'
+
+
+def _sample(code: Code) -> str:
+    """The answer to what is given: an input, or the variable of a schedule and an input."""
+    if code.scheduled:
+        looked_up = f"{code.name}_at(given[0], &trial_coefficients)"
+        return f"({looked_up}, {code.name}_update(&trial_state, &trial_coefficients, given[1]))"
+    arguments = f"&trial_state, &{code.name}_nominal" if code.table else "&trial_state"
+    return f"{code.name}_update({arguments}, given[0])"

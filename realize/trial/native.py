@@ -23,7 +23,7 @@ def run_native(program: Path, code: Code, vectors: Vectors) -> Run:
         When it cannot be started, crashes, or does not end.
     """
     inputs, answers = program.with_name("inputs"), program.with_name(f"{program.name}-answers")
-    inputs.write_bytes(packed(code.input_type, vectors.inputs, "="))
+    inputs.write_bytes(packed(code.input_type, vectors.given, "="))
     try:
         done = subprocess.run((program, inputs, answers), capture_output=True, timeout=TIMEOUT_S, check=False)
     except OSError as error:

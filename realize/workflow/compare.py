@@ -60,7 +60,7 @@ def _comparison(design: Design, causal: Causal, names: Sequence[str], *, unround
     setting = loop_setting_of(design, causal.transfer, period_s)
     results = [_result(design, reference, setting, name) for name in names]
     if unrounded_too:
-        results = [_with_unrounded(design, reference, result) for result in results]
+        results = [with_unrounded(design, reference, result) for result in results]
     while True:
         recommended, because = recommendation(results)
         # Where none is acceptable, whether method or rounding is at fault shows in the closest.
@@ -68,7 +68,7 @@ def _comparison(design: Design, causal: Causal, names: Sequence[str], *, unround
         place = None if judged is None else results.index(judged)
         if unrounded_too or place is None or results[place].judged_unrounded:
             return Comparison(design, causal, period_s, band_rad_s, rests_on, tuple(results), recommended, because)
-        results[place] = _with_unrounded(design, reference, results[place])
+        results[place] = with_unrounded(design, reference, results[place])
 
 
 def loop_setting_of(design: Design, controller: TransferFunction, period_s: Fraction) -> LoopSetting | None:
@@ -81,9 +81,8 @@ def loop_setting_of(design: Design, controller: TransferFunction, period_s: Frac
 
 
 def _result(design: Design, reference: ContinuousReference, setting: LoopSetting | None, name: str) -> MethodResult:
-    exact_at, notes = _exact_at(design, reference, name)
     try:
-        made = _discretized(design, reference, setting, name, exact_at)
+        made = discretized(design, reference, setting, name)
         stored = stored_numbers(design, reference, made.pulse)
     except Refused as refusal:
         return MethodResult(name, f"{refusal.where}: {refusal.found}", advice=refusal.advice)
@@ -92,18 +91,23 @@ def _result(design: Design, reference: ContinuousReference, setting: LoopSetting
     loop = setting.result(made.pulse, stored.pulse) if setting else None
     checks = stored.checks + (loop.checks if loop else ())
     blocking, accepted = gate(checks, design.accept)
+    notes = _exact_at(design, reference, name)[1]
     notes += made.conversion.notes + root_notes(made.pulse, reference.transfer) + (loop.notes if loop else ())
     notes += (stored.note,) if stored.note else ()
     return MethodResult(name, None, made, stored.realization, checks, blocking, accepted, notes, loop)
 
 
-def _discretized(
-    design: Design,
-    reference: ContinuousReference,
-    setting: LoopSetting | None,
-    name: str,
-    exact_at: Fraction | None,
+def discretized(
+    design: Design, reference: ContinuousReference, setting: LoopSetting | None, name: str
 ) -> Discretization:
+    """``Gd(z)`` by one method.
+
+    Raises
+    ------
+    Refused
+        When the method does not apply.
+    """
+    exact_at, _ = _exact_at(design, reference, name)
     if name not in LOOP_METHODS:
         return discretize(reference.transfer, reference.period_s, name, exact_at)
     from realize.loop_design import Band, loop_method
@@ -121,7 +125,7 @@ def _exact_at(design: Design, reference: ContinuousReference, name: str) -> tupl
     return reference.band_rad_s, ("exact at the band edge, since the design names no exact_at",)
 
 
-def _with_unrounded(design: Design, reference: ContinuousReference, result: MethodResult) -> MethodResult:
+def with_unrounded(design: Design, reference: ContinuousReference, result: MethodResult) -> MethodResult:
     """Add the checks of the exact numbers that differ in their figure from those of the stored ones."""
     made = result.discretization
     if made is None:

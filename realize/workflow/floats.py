@@ -91,7 +91,11 @@ def float_numbers(
     Refused
         When the format or the structure cannot hold the design.
     """
-    stored = realization(pulse, FORMATS[design.target.arithmetic], structure)
+    return checked_floats(design, reference, realization(pulse, FORMATS[design.target.arithmetic], structure))
+
+
+def checked_floats(design: Design, reference: ContinuousReference, stored: Realization) -> Stored:
+    """Stored floats with their checks."""
     as_stored = stored_pulse(stored)
     checks = checks_of_stored(design, reference, as_stored, lambda: _float_simulation(design, stored))
     return Stored(stored, as_stored, checks)

@@ -90,8 +90,13 @@ def _nothing_acceptable(results: Sequence[MethodResult]) -> str:
 
 def failures(result: MethodResult) -> str:
     """What is out, in words; a figure once, as stored where that is out too."""
+    return failures_text(result.blocking)
+
+
+def failures_text(blocking: Sequence[Check]) -> str:
+    """What some checks are out by, in words."""
     said: dict[str, str] = {}
-    for check in result.blocking:
+    for check in blocking:
         text = _failure(check)
         by_name = check.difference is not None and check.tolerance and not check.check.startswith("loop")
         said.setdefault(check.check if by_name else text, text)

@@ -433,13 +433,6 @@ def test_what_c_or_a_file_system_would_trip_over_is_no_name(name: str) -> None:
     assert "C identifier" in caught.value.allowed
 
 
-def test_what_is_planned_is_answered_and_never_ignored() -> None:
-    error = refusal("[schedule]")
-    assert error.where == "servo.toml, [schedule]"
-    assert "not supported yet" in error.found
-    assert error.advice == "remove it for now"
-
-
 @pytest.mark.parametrize("arithmetic", ["int16", "int32"])
 @pytest.mark.parametrize("structure", INTEGER_STRUCTURES)
 def test_every_structure_of_integers_can_be_named_with_the_type_of_a_converter(arithmetic: str, structure: str) -> None:

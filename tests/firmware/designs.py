@@ -12,6 +12,7 @@ from typing import Any
 from realize.arithmetic.formats import FORMATS, FloatFormat
 from realize.arithmetic.realization import DeltaSection, Realization, Section
 from realize.firmware import Emission
+from realize.schedule import Table
 
 Number = float | str | Fraction
 PERIOD_S = Fraction(1, 2000)
@@ -125,6 +126,57 @@ def grid() -> Iterator[Emission]:
         yield emission(
             name, Realization(bare.format, "direct", (0.25,), gain.sections, PERIOD_S), output_range=UNIT_RANGE
         )
+    yield from scheduled()
+
+
+def scheduled() -> Iterator[Emission]:
+    """Schedules of 2 to 5 points: coefficients that are 1 at one point alone, and at all; every structure."""
+    single, double = FORMATS["float32"], FORMATS["float64"]
+    stored = {
+        "s0": [
+            Realization(single, "direct", rounded(single, k), (section(single, (b, "-0.7"), (a,)),), PERIOD_S)
+            for k, b, a in (
+                ("0.01", "1", "-0.5"),
+                ("0.02", "1.5", "-0.25"),
+                ("0.025", "2.25", "0.125"),
+                ("0.5", "3", "0"),
+            )
+        ],
+        "s1": [
+            Realization(
+                double,
+                "cascade",
+                (),
+                (section(double, ("1", b, "0.25"), (a, "0.5")), section(double, ("-0.3", b), ("-0.9",))),
+                PERIOD_S,
+            )
+            for b, a in (("0.5", "-0.6"), ("-0.75", "-1.2"))
+        ],
+        "s2": [
+            Realization(single, "delta", rounded(single, k), (delta_section(single, (k, "0.3"), (a,)),), PERIOD_S)
+            for k, a in (("0.125", "0.0021"), ("0.3", "0.0034"), ("-0.7", "0.1"))
+        ],
+        "s3": [
+            Realization(
+                double,
+                "direct",
+                rounded(double, "0.02", k),
+                (section(double, ("0", k, "-0.2"), (k, "0.1")),),
+                PERIOD_S,
+            )
+            for k in ("0.1", "0.3", "-0.2", "0.7", "0.8")
+        ],
+    }
+    options: dict[str, dict[str, Any]] = {
+        "s0": {"output_range": UNIT_RANGE},
+        "s1": {"recursion_sign": "add", "guard_nonfinite": False},
+        "s2": {"output_range": UNIT_RANGE, "anti_windup": "back-calculation"},
+        "s3": {"output_range": RANGES[1], "anti_windup": "none", "recursion_sign": "add"},
+    }
+    for name, points in stored.items():
+        at = tuple(Fraction(k * k - 3, 7) for k in range(len(points)))
+        table = Table("speed", "m/s", at, 8, tuple(points))
+        yield emission(name, points[0], coefficients="table", schedule=table, **options[name])
 
 
 def emission(name: str, realization: Realization, **options: Any) -> Emission:

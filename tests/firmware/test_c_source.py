@@ -147,7 +147,8 @@ def test_each_file_compiles_on_its_own(language: tuple[str, ...], emission: Emis
 @pytest.mark.parametrize("name", KNOWN)
 def test_the_only_include_is_float_h_and_every_global_name_is_prefixed(name: str) -> None:
     text = render_firmware(KNOWN[name])[f"{name}.c"]
-    assert re.findall(r"#include (.*)", text) == [f'"{name}.h"', "<float.h>"]
+    table = [f'"{name}_schedule.h"'] if KNOWN[name].schedule else []
+    assert re.findall(r"#include (.*)", text) == [f'"{name}.h"', *table, "<float.h>"]
     names = re.findall(r"^(?:static inline |static )?(?:const )?\w+ \*?(\w+)[ (]", text, re.MULTILINE)
     assert len(names) > 4
     assert all(found.startswith(f"{name}_") for found in names if found not in ("struct",))

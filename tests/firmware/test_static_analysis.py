@@ -15,7 +15,7 @@ import pytest
 from realize.arithmetic.integer import STRUCTURES
 from realize.firmware import render_firmware, write_all
 from realize.firmware.integer import IntegerEmission, render_integer_firmware
-from tests.firmware.designs import grid
+from tests.firmware.designs import grid, scheduled
 from tests.firmware.integer.designs import WIDTHS
 from tests.firmware.integer.designs import grid as integer_grid
 
@@ -65,7 +65,7 @@ def files(tmp_path_factory: pytest.TempPathFactory) -> list[Path]:
     kinds = {
         (e.realization.format.name, e.realization.structure, e.anti_windup, e.coefficients): e for e in reversed(chosen)
     }
-    for each in kinds.values():
+    for each in (*kinds.values(), *scheduled()):
         write_all(where, render_firmware(each))
     found: dict[tuple[object, ...], IntegerEmission] = {}
     for one in integer_grid():

@@ -238,7 +238,7 @@ def _check_findings(recorded: list[Any], today: list[Any]) -> Iterator[Finding]:
 
 
 def _opinion(path: str, record: Mapping[str, Any], emitted: Emitted | None) -> tuple[Opinion | None, str]:
-    """The second opinion, or why there is none."""
+    """The second opinion, and what it leaves out: itself, where there is none."""
     if not is_available():
         return None, f"no second opinion: scipy is not installed; {INSTALL}"
     if emitted is None:
@@ -258,5 +258,5 @@ def _opinion(path: str, record: Mapping[str, Any], emitted: Emitted | None) -> t
             numbers,
             record,
         ),
-        "",
+        "" if emitted.schedule is None else "the second opinion is about the first point of the schedule alone",
     )
