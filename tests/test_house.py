@@ -14,7 +14,7 @@ PACKAGE = Path(realize.__file__).parent
 LAYERS = (
     ("errors", "version"),
     ("algebra",),
-    ("transfer", "quantity"),
+    ("transfer", "quantity", "schemas"),
     ("design", "starter"),
     ("band", "rolloff", "realizability"),
     ("methods",),
