@@ -7,6 +7,7 @@ import pytest
 from realize.design import load_design
 from realize.errors import Refused
 from realize.firmware.job import emit
+from tests.schemas.validation import complaint
 
 FIXTURES = Path(__file__).parent.parent / "fixtures"
 
@@ -31,6 +32,7 @@ def test_emits(name: str) -> None:
     emitted = emit(load_design(str(FIXTURES / f"{name}.toml")))
     assert sorted(emitted.files) == sorted(f"{name}{end}" for end in ENDS)
     assert emitted.chosen.acceptable
+    assert complaint(emitted.record, "record") is None
 
 
 @pytest.mark.parametrize("name", sorted(REFUSED))
