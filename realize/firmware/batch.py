@@ -9,6 +9,7 @@ import os
 import signal
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from concurrent.futures import ProcessPoolExecutor
+from contextlib import suppress
 from functools import partial
 from multiprocessing import active_children
 from pathlib import Path
@@ -153,7 +154,7 @@ def emit_all(
         In the order of the files, whatever the order they were finished in.
     """
     job = partial(_result, overrides=overrides._replace(values=dict(overrides.values)))
-    count = min(workers or _processors(), len(paths), _MOST_WORKERS)
+    count = min(workers or processors(), len(paths), _MOST_WORKERS)
     found = list(follow(map(job, paths))) if count < 2 else _side_by_side(job, paths, count, follow)
     return _written(_without_collisions(found), folder, rule_file)
 
@@ -189,31 +190,62 @@ def _listed(folder: str) -> list[str]:
     )
 
 
-def _processors() -> int:
+def processors() -> int:
     """How many this process may use."""
     return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
 
 
 def _side_by_side(job: Callable[[str], Result], paths: Sequence[str], workers: int, follow: Follow) -> list[Result]:
     others = set(active_children())
-    with ProcessPoolExecutor(workers, initializer=_end_at_interrupt) as pool:
+    with ProcessPoolExecutor(workers, initializer=_answer_interrupts) as pool:
         try:
-            return list(follow(pool.map(job, paths)))
+            return list(follow(pool.map(partial(_in_worker, job=job), paths)))
         except BaseException:
-            # Whoever stops the run does not want to wait for what is being computed.
+            # Whoever stops the run does not want to wait for what is being computed. A terminal interrupts the
+            # workers, too; from elsewhere the signal comes to this process alone.
             for process in set(active_children()) - others:
-                process.terminate()
+                _interrupt(process.pid)
             pool.shutdown(cancel_futures=True)
             raise
 
 
-def _end_at_interrupt() -> None:
-    """In a worker: Ctrl-C ends it without a word, since the process it works for answers."""
-    signal.signal(signal.SIGINT, signal.SIG_DFL)
+def _interrupt(worker: int | None) -> None:
+    # Elsewhere the call would kill the worker, perhaps in the middle of an answer, for whose end the pool then waits.
+    if worker is not None and os.name == "posix":
+        with suppress(ProcessLookupError):
+            os.kill(worker, signal.SIGINT)
+
+
+class _Work:
+    """Of a worker: whether it is computing, and whether it was told to stop."""
+
+    computing = False
+    stopped = False
+
+
+def _answer_interrupts() -> None:
+    """In a worker: an interrupt ends what it computes, but not the worker, which gives its answer and is dismissed."""
+
+    def stop(*_: object) -> None:
+        _Work.stopped = True
+        if _Work.computing:
+            raise KeyboardInterrupt
+
+    signal.signal(signal.SIGINT, stop)
+
+
+def _in_worker(path: str, job: Callable[[str], Result]) -> Result:
+    _Work.computing = True
+    try:
+        if _Work.stopped:
+            raise KeyboardInterrupt
+        return job(path)
+    finally:
+        _Work.computing = False
 
 
 def _result(path: str, overrides: Overrides) -> Result:
-    """One design, in a worker; nothing is written."""
+    """One design; nothing is written."""
     result = Result(path)
     try:
         design = load_design(path, overrides)

@@ -4,9 +4,12 @@ from __future__ import annotations
 
 import json
 import re
+import tomllib
 from collections.abc import Iterator
+from fnmatch import fnmatch
 from fractions import Fraction
 from importlib.resources import files
+from pathlib import Path
 from typing import Any
 
 import pytest
@@ -31,6 +34,7 @@ from realize.loop.checks import LOOP_DEFAULTS
 from realize.report.documents import SCHEMA
 from realize.schemas import NAMES, schema, schema_text, title
 
+ROOT = Path(__file__).parents[2]
 SHARED = json.loads(files("realize.schemas").joinpath("shared.schema.json").read_text(encoding="utf-8"))["$defs"]
 
 #: Commands whose answer is no JSON document.
@@ -60,8 +64,11 @@ def test_a_schema_is_named_without_an_address_and_refers_to_nothing_outside_itse
 
 
 @pytest.mark.parametrize("name", [*NAMES, "shared"])
-def test_a_schema_is_in_the_package(name: str) -> None:
+def test_a_schema_is_in_the_package_and_in_what_is_built_of_it(name: str) -> None:
     assert files("realize.schemas").joinpath(f"{name}.schema.json").is_file()
+    settings = tomllib.loads((ROOT / "pyproject.toml").read_text(encoding="utf-8"))
+    patterns = settings["tool"]["setuptools"]["package-data"]["realize"]
+    assert any(fnmatch(f"schemas/{name}.schema.json", pattern) for pattern in patterns)
 
 
 def test_every_schema_in_the_package_has_a_name_and_every_document_a_schema() -> None:
