@@ -231,7 +231,7 @@ def words(design: str, as_json: bool, **options: Any) -> None:
 @commands.command(short_help="Write the C files, the vectors and the record.")
 @_takes_rate
 @_takes_designs
-@click.option("--all", "folder", metavar="DIR", is_eager=True, help="Emit every design file in DIR, by name.")
+@click.option("--all", "folder", metavar="DIR", is_eager=True, help="Emit every design file in DIR (*.toml).")
 @click.option("--out", required=True, metavar="DIR", help="Directory for the files; made if missing.")
 @click.option("--dependencies", metavar="FILE", help="Write the rule that make and ninja read into FILE.")
 def emit(
@@ -244,12 +244,13 @@ def emit(
 
     Several design files are emitted side by side, each all or none: one that is refused does not
     stop the others. The exit status is then the worst of them: 0 when all are written, 1 when one is
-    refused, 2 when one is not understood. What overrides the file overrides each of them.
+    refused, 2 when one has an error. What overrides the file overrides each of them.
 
     \b
     Example: realize emit roller_gap.toml --out firmware
     Writes firmware/roller_gap.h, .c, _selftest.c, _vectors.csv and
     .record.json.
+             realize emit --all designs --out firmware
     """
     if not out.strip():
         raise RealizeError("--out", "an empty name", "a directory for the files", "--out firmware, or --out . for here")

@@ -9,7 +9,7 @@ import os
 import signal
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from concurrent.futures import ProcessPoolExecutor
-from contextlib import suppress
+from contextlib import contextmanager, suppress
 from functools import partial
 from multiprocessing import active_children
 from pathlib import Path
@@ -199,7 +199,9 @@ def _side_by_side(job: Callable[[str], Result], paths: Sequence[str], workers: i
     others = set(active_children())
     with ProcessPoolExecutor(workers, initializer=_answer_interrupts) as pool:
         try:
-            return list(follow(pool.map(partial(_in_worker, job=job), paths)))
+            with _interrupts_held():
+                results = pool.map(partial(_in_worker, job=job), paths)
+            return list(follow(results))
         except BaseException:
             # Whoever stops the run does not want to wait for what is being computed. A terminal interrupts the
             # workers, too; from elsewhere the signal comes to this process alone.
@@ -207,6 +209,19 @@ def _side_by_side(job: Callable[[str], Result], paths: Sequence[str], workers: i
                 _interrupt(process.pid)
             pool.shutdown(cancel_futures=True)
             raise
+
+
+@contextmanager
+def _interrupts_held() -> Iterator[None]:
+    """Keep an interrupt waiting: in the middle of starting a process it would be lost, or the process left to talk."""
+    if not hasattr(signal, "pthread_sigmask"):
+        yield
+        return
+    before = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
+    try:
+        yield
+    finally:
+        signal.pthread_sigmask(signal.SIG_SETMASK, before)
 
 
 def _interrupt(worker: int | None) -> None:
@@ -232,6 +247,8 @@ def _answer_interrupts() -> None:
             raise KeyboardInterrupt
 
     signal.signal(signal.SIGINT, stop)
+    if hasattr(signal, "pthread_sigmask"):
+        signal.pthread_sigmask(signal.SIG_UNBLOCK, {signal.SIGINT})
 
 
 def _in_worker(path: str, job: Callable[[str], Result]) -> Result:
