@@ -6,12 +6,8 @@ Everything is computed before the first file is written, so that a run that is s
 from __future__ import annotations
 
 import os
-import signal
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
-from concurrent.futures import ProcessPoolExecutor
-from contextlib import contextmanager, suppress
 from functools import partial
-from multiprocessing import active_children
 from pathlib import Path
 from typing import NamedTuple
 
@@ -21,13 +17,11 @@ from realize.errors import RealizeError, internal
 from realize.firmware.dependencies import prerequisites, rule_text
 from realize.firmware.files import write_all
 from realize.firmware.job import emit
+from realize.parallel import side_by_side
 from realize.workflow import MethodResult
 
 #: The ending of a design file.
 _ENDING = ".toml"
-
-#: Most processes: what every system lets a pool have.
-_MOST_WORKERS = 61
 
 
 class Summary(NamedTuple):
@@ -144,7 +138,7 @@ def emit_all(
     rule_file : Path, optional
         Takes the rules that make and ninja read, one for each design that is written.
     workers : int, optional
-        Processes; by default as many as there are processors, and no more than designs.
+        Processes; by default as many as there are processors.
     follow : callable
         Passes the results on one by one, to show progress.
 
@@ -154,8 +148,7 @@ def emit_all(
         In the order of the files, whatever the order they were finished in.
     """
     job = partial(_result, overrides=overrides._replace(values=dict(overrides.values)))
-    count = min(workers or processors(), len(paths), _MOST_WORKERS)
-    found = list(follow(map(job, paths))) if count < 2 else _side_by_side(job, paths, count, follow)
+    found = side_by_side(job, paths, workers, follow)
     return _written(_without_collisions(found), folder, rule_file)
 
 
@@ -188,77 +181,6 @@ def _listed(folder: str) -> list[str]:
     raise RealizeError(
         "--all", f"{printable(folder) or 'an empty name'}: {found}", "a directory of design files", "check the name"
     )
-
-
-def processors() -> int:
-    """How many this process may use."""
-    return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
-
-
-def _side_by_side(job: Callable[[str], Result], paths: Sequence[str], workers: int, follow: Follow) -> list[Result]:
-    others = set(active_children())
-    with ProcessPoolExecutor(workers, initializer=_answer_interrupts) as pool:
-        try:
-            with _interrupts_held():
-                results = pool.map(partial(_in_worker, job=job), paths)
-            return list(follow(results))
-        except BaseException:
-            # Whoever stops the run does not want to wait for what is being computed. A terminal interrupts the
-            # workers, too; from elsewhere the signal comes to this process alone.
-            for process in set(active_children()) - others:
-                _interrupt(process.pid)
-            pool.shutdown(cancel_futures=True)
-            raise
-
-
-@contextmanager
-def _interrupts_held() -> Iterator[None]:
-    """Keep an interrupt waiting: in the middle of starting a process it would be lost, or the process left to talk."""
-    if not hasattr(signal, "pthread_sigmask"):
-        yield
-        return
-    before = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
-    try:
-        yield
-    finally:
-        signal.pthread_sigmask(signal.SIG_SETMASK, before)
-
-
-def _interrupt(worker: int | None) -> None:
-    # Elsewhere the call would kill the worker, perhaps in the middle of an answer, for whose end the pool then waits.
-    if worker is not None and os.name == "posix":
-        with suppress(ProcessLookupError):
-            os.kill(worker, signal.SIGINT)
-
-
-class _Work:
-    """Of a worker: whether it is computing, and whether it was told to stop."""
-
-    computing = False
-    stopped = False
-
-
-def _answer_interrupts() -> None:
-    """In a worker: an interrupt ends what it computes, but not the worker, which gives its answer and is dismissed."""
-
-    def stop(*_: object) -> None:
-        _Work.stopped = True
-        if _Work.computing:
-            raise KeyboardInterrupt
-
-    signal.signal(signal.SIGINT, stop)
-    if hasattr(signal, "pthread_sigmask"):
-        signal.pthread_sigmask(signal.SIG_UNBLOCK, {signal.SIGINT})
-
-
-def _in_worker(path: str, job: Callable[[str], Result]) -> Result:
-    _Work.computing = True
-    try:
-        if _Work.stopped:
-            raise KeyboardInterrupt
-        return job(path)
-    finally:
-        _Work.computing = False
 
 
 def _result(path: str, overrides: Overrides) -> Result:

@@ -15,7 +15,7 @@ from pathlib import Path
 from statistics import median
 from tempfile import TemporaryDirectory
 
-from realize.firmware.batch import processors
+from realize.parallel import processors
 
 FIXTURES = Path("fixtures")
 
