@@ -19,7 +19,7 @@ from realize.errors import RealizeError
 from realize.quantity import Dimension, parse_quantity, quantity_allowed
 from realize.schemas import schema
 from realize.starter import starter_text
-from tests.schemas.validation import complaint
+from tests.schemas.validation import complaint, takes
 
 FIXTURES = Path(__file__).parents[2] / "fixtures"
 
@@ -167,7 +167,7 @@ def loader_takes(document: dict[str, Any]) -> bool:
 
 
 def schema_takes(document: dict[str, Any]) -> bool:
-    return complaint(as_json(document), "design") is None
+    return takes(as_json(document), "design")
 
 
 def places(node: Any, above: Path_ = ()) -> list[Path_]:

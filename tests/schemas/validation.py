@@ -23,6 +23,11 @@ def complaint(document: object, name: str) -> str | None:
     return None if error is None else f"{error.json_path}: {error.message}"
 
 
+def takes(document: object, name: str) -> bool:
+    """Whether the schema has nothing against a document; stops at the first it has."""
+    return bool(validator(name).is_valid(document))
+
+
 def validated(document: dict[str, Any]) -> dict[str, Any]:
     """The document, which its own schema must take as it goes out: NaN is none of JSON."""
     sent = json.loads(json.dumps(document, allow_nan=False))
