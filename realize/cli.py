@@ -41,10 +41,23 @@ _ARGUMENTS = {
 }
 
 
-def _takes_design(command: Command, method_help: str = _METHOD_HELP) -> Command:
+def _required_unless_all(context: click.Context, argument: click.Parameter, given: tuple[str, ...]) -> tuple[str, ...]:
+    """Ask for a design where no directory of them is given."""
+    if not given and context.params.get("folder") is None:
+        raise click.MissingParameter(ctx=context, param=argument)
+    return given
+
+
+_ONE_DESIGN = click.argument("design", metavar="DESIGN")
+_SOME_DESIGNS = click.argument("design", metavar="DESIGN...", nargs=-1, callback=_required_unless_all)
+
+
+def _takes_design(
+    command: Command, method_help: str = _METHOD_HELP, argument: Callable[[Command], Command] = _ONE_DESIGN
+) -> Command:
     """Add the argument and the options that every command on a design shares."""
     options = (
-        click.argument("design", metavar="DESIGN"),
+        argument,
         click.option("--name", metavar="IDENTIFIER", help="Name of the emitted functions and files."),
         click.option("--method", metavar="METHOD", help=method_help),
         click.option(
@@ -60,6 +73,11 @@ def _takes_design(command: Command, method_help: str = _METHOD_HELP) -> Command:
 def _takes_design_and_one_method(command: Command) -> Command:
     """As :func:`_takes_design`, for a command that looks at every method unless one is asked for."""
     return _takes_design(command, 'Look at this method alone; by default, and with "auto", at every method.')
+
+
+def _takes_designs(command: Command) -> Command:
+    """As :func:`_takes_design`, for a command that takes several designs, or a directory of them."""
+    return _takes_design(command, argument=_SOME_DESIGNS)
 
 
 def _takes_rate(command: Command) -> Command:
@@ -83,10 +101,12 @@ def commands() -> None:
     Which rate does it really need?   realize rates roller_gap.toml
     Which integers would do?          realize words roller_gap.toml
     Write the firmware files:         realize emit roller_gap.toml --out firmware
+    And those of many designs:        realize emit --all designs --out firmware
     Put all of it on one page:        realize report roller_gap.toml --out roller_gap.html
     Run them on the processor:        realize trial firmware/roller_gap.record.json --on all
     Are they still what they should?  realize audit firmware/roller_gap.record.json
     What changed between two records? realize differ old.record.json new.record.json
+    Let an editor check the file:     realize schema design --out realize-design.schema.json
     """
 
 
@@ -157,7 +177,9 @@ def rates(design: str, as_json: bool, low: str | None, high: str | None, points:
     count = _count(points, "--points")
     loaded = _load(design, options)
     only = options["method"] if options["method"] != "auto" else None
-    found = over_rates(loaded, low_hz=ends[0], high_hz=ends[1], points=count, only=only, follow=_with_progress(count))
+    found = over_rates(
+        loaded, low_hz=ends[0], high_hz=ends[1], points=count, only=only, follow=_with_progress(count, "rates")
+    )
     _print(rates_document(found) if as_json else rates_text(found))
 
 
@@ -170,17 +192,17 @@ def _count(text: str, where: str) -> int:
     return int(text)
 
 
-def _with_progress(length: int) -> Callable[[Iterator[Any]], Iterator[Any]]:
+def _with_progress(length: int, label: str) -> Callable[[Iterator[Any]], Iterator[Any]]:
     """Pass results on one by one; on standard error a bar, or a line for each tenth where that is no terminal."""
 
     def bar(results: Iterator[Any]) -> Iterator[Any]:
-        with click.progressbar(results, length=length, label="rates", file=sys.stderr) as shown:
+        with click.progressbar(results, length=length, label=label, file=sys.stderr) as shown:
             yield from shown
 
     def lines(results: Iterator[Any]) -> Iterator[Any]:
         for done, result in enumerate(results, 1):
             if done * 10 // length > (done - 1) * 10 // length:
-                click.echo(f"rates: {done} of {length}", err=True)
+                click.echo(f"{label}: {done} of {length}", err=True)
             yield result
 
     return bar if sys.stderr.isatty() else lines
@@ -209,33 +231,46 @@ def words(design: str, as_json: bool, **options: Any) -> None:
 
 @commands.command(short_help="Write the C files, the vectors and the record.")
 @_takes_rate
-@_takes_design
+@_takes_designs
+@click.option("--all", "folder", metavar="DIR", is_eager=True, help="Emit every design file in DIR (*.toml).")
 @click.option("--out", required=True, metavar="DIR", help="Directory for the files; made if missing.")
 @click.option("--dependencies", metavar="FILE", help="Write the rule that make and ninja read into FILE.")
-def emit(design: str, as_json: bool, out: str, dependencies: str | None, **options: Any) -> None:
+def emit(
+    design: tuple[str, ...], folder: str | None, as_json: bool, out: str, dependencies: str | None, **options: Any
+) -> None:
     """Do the whole job and write the C files, the vectors and the record: all or none.
 
     Refused with exit status 1 when the design is improper, unstable or out of tolerance. A file
     whose content would stay the same is left alone, so that a build does not compile it again.
     A design with a [schedule] also has a table of coefficients, and NAME_at, which looks them up.
 
+    Several design files are emitted side by side, each all or none: one that is refused does not
+    stop the others. The exit status is then the worst of them: 0 when all are written, 1 when one is
+    refused, 2 when one has an error. What overrides the file overrides each of them.
+
     \b
     Example: realize emit roller_gap.toml --out firmware
     Writes firmware/roller_gap.h, .c, _selftest.c, _vectors.csv and
     .record.json; with a schedule, _schedule.h.
+             realize emit --all designs --out firmware
     """
+    if not out.strip():
+        raise RealizeError("--out", "an empty name", "a directory for the files", "--out firmware, or --out . for here")
+    if folder is None and len(design) == 1:
+        _emit_one(design[0], as_json, out, dependencies, options)
+    else:
+        _emit_several(design, folder, as_json, out, dependencies, options)
+
+
+def _emit_one(design: str, as_json: bool, out: str, dependencies: str | None, options: dict[str, Any]) -> None:
+    from realize.design.schedule import refuse_overridden
     from realize.firmware.files import write_all
     from realize.firmware.job import emit as emit_design
     from realize.report.documents import emit_document
     from realize.report.terminal import emit_text
 
-    if not out.strip():
-        raise RealizeError("--out", "an empty name", "a directory for the files", "--out firmware, or --out . for here")
     loaded = _load(design, options)
-    if loaded.schedule is not None:
-        from realize.design.schedule import refuse_overridden
-
-        refuse_overridden(loaded.schedule, _values(options["values"]))
+    refuse_overridden(loaded, _values(options["values"]))
     rule = _rule(design, loaded, Path(out), dependencies)
     emitted = emit_design(loaded)
     paths = [str(path) for path in write_all(Path(out), emitted.files, rule(emitted.files))]
@@ -245,18 +280,46 @@ def emit(design: str, as_json: bool, out: str, dependencies: str | None, **optio
         _print(emit_text(emitted, paths))
 
 
+def _emit_several(
+    designs: tuple[str, ...],
+    folder: str | None,
+    as_json: bool,
+    out: str,
+    dependencies: str | None,
+    options: dict[str, Any],
+) -> None:
+    from realize.firmware.batch import design_files, emit_all, exit_status
+    from realize.report.several import several_document, several_text
+
+    paths = design_files(designs, folder)
+    if options["name"] is not None:
+        raise RealizeError(
+            "--name", "one name for several designs", "a name for one design", "write each name under [design]"
+        )
+    follow = _with_progress(len(paths), "emit")
+    found = emit_all(paths, Path(out), _overrides(options), _rule_file(dependencies), follow=follow)
+    _print(several_document(found) if as_json else several_text(found, out))
+    if exit_status(found):
+        sys.exit(exit_status(found))
+
+
 def _rule(
     argument: str, design: Any, folder: Path, dependencies: str | None
 ) -> Callable[[Iterable[str]], dict[Path, str]]:
     """From the names of emitted files to the rule that makes them, if one is asked for; refused before any work."""
-    if dependencies is None:
+    path = _rule_file(dependencies)
+    if path is None:
         return lambda _: {}
     from realize.firmware.dependencies import prerequisites, rule_text
 
-    if not dependencies.strip():
-        raise RealizeError("--dependencies", "an empty name", "a file for the rule", "--dependencies firmware.d")
     sources = prerequisites(argument, design)
-    return lambda names: {Path(dependencies): rule_text([str(folder / name) for name in names], sources)}
+    return lambda names: {path: rule_text([str(folder / name) for name in names], sources)}
+
+
+def _rule_file(dependencies: str | None) -> Path | None:
+    if dependencies is not None and not dependencies.strip():
+        raise RealizeError("--dependencies", "an empty name", "a file for the rule", "--dependencies firmware.d")
+    return None if dependencies is None else Path(dependencies)
 
 
 @commands.command(short_help="Write one page about a design: verdict, methods, figures, numbers.")
@@ -387,21 +450,59 @@ def new(name: str) -> None:
              realize emit roller_gap.toml --out firmware
     """
     from realize.firmware.files import write_new
-    from realize.starter import starter_text
+    from realize.starter import SCHEMA_FILE, starter_text
 
     path = Path(f"{name}.toml")
     write_new(path, starter_text(name))
     click.echo(f"yes: wrote {path}. Next: realize emit {path} --out firmware")
+    click.echo(f"For an editor that checks it: realize schema design --out {SCHEMA_FILE}")
+
+
+@commands.command(short_help="Print the schema of the design file or of a JSON document.")
+@click.argument("document", metavar="[NAME]", required=False)
+@click.option("--out", metavar="FILE", help="Write the schema into FILE instead.")
+def schema(document: str | None, out: str | None) -> None:
+    """Print the JSON Schema (draft 2020-12) of what NAME stands for; without NAME, list what has one.
+
+    An editor that knows TOML and is given the schema of the design file completes its keys, shows
+    units and defaults, and marks what is not allowed.
+
+    \b
+    Example: realize schema design --out realize-design.schema.json
+             realize schema compare
+    """
+    from realize.firmware.files import write_all
+    from realize.report.paragraphs import table
+    from realize.schemas import NAMES, schema_text, title
+
+    if document is None and out is not None:
+        raise RealizeError("NAME", "nothing", ", ".join(NAMES), f"realize schema design --out {out}")
+    if document is None:
+        _print(table([[name, title(name)] for name in NAMES]))
+    elif out is None:
+        _print(schema_text(document))
+    else:
+        path = Path(out)
+        text = schema_text(document)
+        if not path.name:
+            raise RealizeError("--out", "no name of a file", "a file for the schema", "--out NAME.schema.json")
+        write_all(path.parent, {path.name: text})
+        click.echo(f"yes: wrote {path}")
 
 
 def _load(design: str, options: dict[str, Any]) -> Any:
     """Read a design, with the overrides of the command line."""
-    from realize.design import Overrides, load_design
+    from realize.design import load_design
 
-    overrides = Overrides(
+    return load_design(design, _overrides(options))
+
+
+def _overrides(options: dict[str, Any]) -> Any:
+    from realize.design import Overrides
+
+    return Overrides(
         options.get("rate"), options.get("period"), options["name"], options["method"], _values(options["values"])
     )
-    return load_design(design, overrides)
 
 
 def _values(pairs: tuple[str, ...]) -> dict[str, str]:

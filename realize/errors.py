@@ -64,3 +64,9 @@ class Refused(RealizeError):
     """
 
     exit_status = 1
+
+
+def internal(error: Exception) -> RealizeError:
+    """Put a mistake of our own, which no input should be able to cause, into words."""
+    found = f"an error of realize itself, {type(error).__name__}: {error}"
+    return RealizeError("internal", found, "", "report it together with the design file")

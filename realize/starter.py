@@ -4,7 +4,11 @@ from __future__ import annotations
 
 from realize.design import checked_name
 
-_TEXT = """\
+#: Where an editor looks for the schema of the file, from its own directory.
+SCHEMA_FILE = "realize-design.schema.json"
+
+_TEXT = f"""\
+#:schema ./{SCHEMA_FILE}
 # Design of NAME: a starting point with invented data.
 # `realize emit` accepts it as it stands; replace the numbers by those of your controller.
 #

@@ -11,6 +11,7 @@ import pytest
 
 from realize.cli import commands, main
 from realize.methods import METHODS
+from tests.schemas.validation import validated
 
 FIXTURES = Path(__file__).parent.parent / "fixtures"
 ROLLER_GAP = str(FIXTURES / "roller_gap.toml")
@@ -29,7 +30,7 @@ class Answer:
         def refuse(constant: str) -> None:
             raise AssertionError(f"{constant} is no JSON")
 
-        return dict(json.loads(self.out, parse_constant=refuse))
+        return validated(dict(json.loads(self.out, parse_constant=refuse)))
 
 
 @pytest.fixture
@@ -55,7 +56,7 @@ def test_help_has_a_worked_example(run: Any, command: str) -> None:
 
 def test_only_the_commands_that_are_built_exist() -> None:
     assert sorted(commands.commands) == [
-        *("assess", "audit", "compare", "differ", "emit", "new", "rates", "report", "trial", "words"),
+        *("assess", "audit", "compare", "differ", "emit", "new", "rates", "report", "schema", "trial", "words"),
     ]
 
 

@@ -7,6 +7,7 @@ import pytest
 from realize.design import load_design
 from realize.errors import Refused
 from realize.firmware.job import emit
+from tests.schemas.validation import complaint
 
 FIXTURES = Path(__file__).parent.parent / "fixtures"
 
@@ -32,6 +33,7 @@ def test_emits(name: str) -> None:
     table = ("_schedule.h",) if emitted.schedule else ()
     assert sorted(emitted.files) == sorted(f"{name}{end}" for end in (*ENDS, *table))
     assert emitted.chosen.acceptable
+    assert complaint(emitted.record, "record") is None
 
 
 @pytest.mark.parametrize("name", sorted(REFUSED))

@@ -12,9 +12,9 @@ PACKAGE = Path(realize.__file__).parent
 
 #: From the bottom up; modules of one layer may import each other.
 LAYERS = (
-    ("errors", "version"),
+    ("errors", "parallel", "version"),
     ("algebra",),
-    ("transfer", "quantity"),
+    ("transfer", "quantity", "schemas"),
     ("design", "starter"),
     ("band", "rolloff", "realizability"),
     ("methods",),

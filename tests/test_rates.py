@@ -10,6 +10,7 @@ from realize.errors import RealizeError
 from realize.rates import answer, rates
 from realize.report.range_of_rates import rates_document, rates_text
 from realize.workflow import compare
+from tests.schemas.validation import validated
 
 LAG = '[design]\nname = "lag"\ntransfer = "1/(0.01*s + 1)"\n[sampling]\nband = "16 Hz"\n'
 
@@ -102,7 +103,7 @@ def test_a_named_method_that_is_never_acceptable_is_answered_by_name_with_the_re
 
 
 def test_screen_and_document_agree(found) -> None:  # type: ignore[no-untyped-def]
-    document, text = rates_document(found), rates_text(found)
+    document, text = validated(rates_document(found)), rates_text(found)
     assert document["answer"] == answer(found)
     assert text.startswith(("yes: ", "no: "))
     assert max(len(line) for line in text.splitlines()) <= 100

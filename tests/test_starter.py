@@ -9,7 +9,7 @@ import pytest
 
 from realize.design import design_from_text, require_period
 from realize.errors import RealizeError
-from realize.starter import starter_text
+from realize.starter import SCHEMA_FILE, starter_text
 
 F = Fraction
 
@@ -71,6 +71,10 @@ def test_the_lines_fit_a_terminal_and_the_data_is_called_invented() -> None:
     assert max(map(len, text.splitlines())) <= 100
     assert "invented" in text
     assert "NAME" not in text
+
+
+def test_the_first_line_names_the_schema_to_an_editor_from_the_directory_of_the_file() -> None:
+    assert starter_text("x").splitlines()[0] == f"#:schema ./{SCHEMA_FILE}"
 
 
 @pytest.mark.parametrize("name", ["int", "a b", "../x", "", "NAME'"])

@@ -15,6 +15,7 @@ from realize.errors import RealizeError
 from realize.report.word_lengths import words_document, words_text
 from realize.words import Words, words
 from realize.workflow import choose
+from tests.schemas.validation import validated
 
 FIXTURES = Path(__file__).parent.parent / "fixtures"
 ORDER_FOUR = """
@@ -109,7 +110,7 @@ def test_the_screen_fits_and_names_every_structure(which: str, request: pytest.F
 
 
 def test_the_document_holds_what_the_screen_shows(four: Words) -> None:
-    document = json.loads(json.dumps(words_document(four), allow_nan=False))
+    document = json.loads(json.dumps(validated(words_document(four)), allow_nan=False))
     assert (document["schema"], document["command"]) == ("realize/1", "words")
     assert len(document["rows"]) == len(four.rows)
     for row, entry in zip(four.rows, document["rows"], strict=True):

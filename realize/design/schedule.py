@@ -250,7 +250,7 @@ def _replaced(entries: Mapping[str, object], values: Mapping[str, Fraction], sou
     return Table({**entries, "values": changed} if changed else entries, source, f"[{key}]")
 
 
-def refuse_overridden(schedule: Schedule, overrides: Mapping[str, str]) -> None:
+def refuse_overridden(design: Design, overrides: Mapping[str, str]) -> None:
     """Refuse values of the command line that would change nothing.
 
     Raises
@@ -258,7 +258,8 @@ def refuse_overridden(schedule: Schedule, overrides: Mapping[str, str]) -> None:
     RealizeError
         When the schedule has a list for one of them.
     """
-    changing = {name for lists in (schedule.values, schedule.plant_values) for name, _ in lists}
+    schedule = design.schedule
+    changing = {name for lists in (schedule.values, schedule.plant_values) for name, _ in lists} if schedule else ()
     for name in overrides:
         if name in changing:
             raise RealizeError(

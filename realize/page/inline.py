@@ -11,8 +11,6 @@ from xml.etree import ElementTree
 
 from realize.page.plots.style import DESIGN, FAINT, INK, LIMIT, MARK, SECOND, STORED
 
-_SVG, _LINK = "http:" + "//www.w3.org/2000/svg", "http:" + "//www.w3.org/1999/xlink"
-
 #: Colours of the figures, and the names under which the page knows them.
 COLORS = {
     INK: "ink",
@@ -40,10 +38,10 @@ def inlined(svg: str, key: str, title: str, alternative: str) -> str:
     title, alternative : str
         What a screen reader says.
     """
-    ElementTree.register_namespace("", _SVG)
-    ElementTree.register_namespace("xlink", _LINK)
     root = ElementTree.fromstring(svg)
-    for child in root.findall(f"{{{_SVG}}}metadata"):
+    space = root.tag.removesuffix("svg")
+    ElementTree.register_namespace("", space.strip("{}"))
+    for child in root.findall(f"{space}metadata"):
         root.remove(child)
     for element in root.iter():
         _renamed(element, key)
@@ -52,7 +50,7 @@ def inlined(svg: str, key: str, title: str, alternative: str) -> str:
     root.set("role", "img")
     root.set("aria-labelledby", f"{key}-title {key}-words")
     for place, (tag, text) in enumerate((("title", title), ("desc", alternative))):
-        words = ElementTree.Element(f"{{{_SVG}}}{tag}", {"id": f"{key}-{'words' if place else 'title'}"})
+        words = ElementTree.Element(f"{space}{tag}", {"id": f"{key}-{'words' if place else 'title'}"})
         words.text = text
         root.insert(place, words)
     return ElementTree.tostring(root, encoding="unicode")
@@ -60,14 +58,13 @@ def inlined(svg: str, key: str, title: str, alternative: str) -> str:
 
 def _renamed(element: ElementTree.Element, key: str) -> None:
     """Names with the key in front of them, colours as variables with themselves as default."""
-    for name, value in element.attrib.items():
+    for name, value in list(element.attrib.items()):
         if name == "id":
-            value = f"{key}-{value}"
-        elif name.endswith("href") and value.startswith("#"):
-            value = f"#{key}-{value[1:]}"
+            element.set(name, f"{key}-{value}")
+        elif name.endswith("}href"):
+            # As SVG 2 has it, without a name space of its own.
+            del element.attrib[name]
+            element.set("href", f"#{key}-{value.removeprefix('#')}")
         else:
             value = _REFERENCE.sub(rf"url(#{key}-\1)", value)
-            value = _COLOR.sub(lambda found: f"var(--{COLORS[found[0]]}, {found[0]})", value)
-        element.set(name, value)
-    if element.text and element.tag == f"{{{_SVG}}}style":
-        element.text = ""
+            element.set(name, _COLOR.sub(lambda found: f"var(--{COLORS[found[0]]}, {found[0]})", value))

@@ -8,6 +8,7 @@ from pathlib import Path
 import pytest
 
 from realize.cli import main
+from tests.schemas.validation import complaint
 
 FIXTURES = Path(__file__).parents[2] / "fixtures"
 SIEVE = str(FIXTURES / "sieve_resonance.toml")
@@ -37,6 +38,7 @@ def test_json_names_what_was_written_and_what_the_figures_show(
 ) -> None:
     assert run("report", SIEVE, "--out", str(tmp_path / "page.html"), "--json") == 0
     document = json.loads(capsys.readouterr().out)
+    assert complaint(document, "report") is None
     assert document["command"] == "report"
     assert document["answer"] == "no"
     assert document["written"] == [str(tmp_path / "page.html")]

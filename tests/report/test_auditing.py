@@ -10,6 +10,7 @@ import pytest
 
 from realize.cli import main
 from tests.firmware.audit.written import LEAD, document, rewrite, written
+from tests.schemas.validation import validated
 
 ROOT = Path(__file__).parents[2]
 
@@ -75,7 +76,7 @@ def strict(text: str) -> Any:
     def refuse(constant: str) -> None:
         raise AssertionError(f"{constant} is no JSON")
 
-    return json.loads(text, parse_constant=refuse)
+    return validated(json.loads(text, parse_constant=refuse))
 
 
 def test_the_document_of_an_audit(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:

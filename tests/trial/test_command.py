@@ -10,6 +10,7 @@ from typing import Any
 import pytest
 
 from realize.cli import main
+from tests.schemas.validation import validated
 from tests.trial.by_hand import write
 
 TRIPLE = "(void)state; return 3 * input;"
@@ -25,7 +26,7 @@ def _status(*arguments: str) -> int:
 
 def _document(capsys: pytest.CaptureFixture[str], *arguments: str) -> tuple[int, Any]:
     status = _status(*arguments, "--json")
-    return status, json.loads(capsys.readouterr().out)
+    return status, validated(json.loads(capsys.readouterr().out))
 
 
 def test_equal_is_status_0_and_says_yes(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
