@@ -1,6 +1,7 @@
 """The commands from outside: exit status, screens, JSON, and that nothing heavy is loaded."""
 
 import json
+import re
 import subprocess
 import sys
 from itertools import pairwise
@@ -52,6 +53,16 @@ def test_help_has_a_worked_example(run: Any, command: str) -> None:
     answer = run(command, "--help")
     assert answer.status == 0
     assert f"Example: realize {command}" in answer.out
+
+
+@pytest.mark.parametrize("command", sorted(commands.commands))
+def test_help_says_what_each_exit_status_means_and_what_to_read_next(run: Any, command: str) -> None:
+    """As a manual does; a status that a command never has is not listed."""
+    shown = run(command, "--help").out
+    assert "Exit status:\n" in shown
+    assert re.findall(r"^    ([012])  \w", shown, re.MULTILINE) in (["0", "1", "2"], ["0", "2"])
+    others = "|".join(set(commands.commands) - {command})
+    assert re.search(rf"See also: (?:{others})\b", shown)
 
 
 def test_only_the_commands_that_are_built_exist() -> None:
@@ -360,7 +371,7 @@ def test_rates_looks_at_the_named_method_alone_and_its_help_says_so(run: Any) ->
 
 
 def test_the_list_of_commands_is_not_cut(run: Any) -> None:
-    listed = run("--help").out.partition("\nCommands:\n")[2].splitlines()
+    listed = run("--help").out.partition("\nCommands:\n")[2].partition("\n\n")[0].splitlines()
     assert [line.split()[0] for line in listed] == sorted(commands.commands)
     assert all(line.endswith(".") and not line.endswith("...") for line in listed)
 
