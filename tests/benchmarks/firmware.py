@@ -133,9 +133,9 @@ def pairs() -> list[Pair]:
         *(
             Pair(f"{says}, proven in range", kernel, words, integers(form, name, 32, 64, per_count), beyond=NAMES)
             for says, kernel, form, name, per_count in (
-                ("int32 direct", "int32_direct_one", one, "direct", 4),
-                ("int32 error feedback", "int32_error_feedback", one, "error-feedback", 4),
-                ("int32 cascade of two", "int32_two_sections", two, "cascade", 16),
+                ("int32 direct", "int32_direct_one", one, "direct", 2),
+                ("int32 error feedback", "int32_error_feedback", one, "error-feedback", 2),
+                ("int32 cascade of two", "int32_two_sections", two, "cascade", 4),
             )
         ),
         Pair("int16 direct", "int16_direct_one", shorts, direct_16, beyond=NAMES),

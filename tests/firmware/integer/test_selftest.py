@@ -35,10 +35,9 @@ def test_every_compiler_passes_without_a_warning_or_a_trap(
 def never(emission: IntegerEmission) -> set[str]:
     """Helpers that hold something to a limit which cannot be met, or not soon."""
     program, name = emission.realization.program, emission.name
-    found = {f"{name}_add"}  # has a branch for each sign of a coefficient, and a design may have one sign only
     if program.integral is None:  # the input that attains the peak gain is among the vectors, and both its signs
-        found.add(f"{name}_limited")
-        return found
+        return {f"{name}_{helper}" for helper in ("limited", "saturated", "within")}
+    found = set()
     for i, (gain, limits) in enumerate(zip(program.integral.stored, program.integral.limits, strict=True), 1):
         reach = min(abs(end) for end in program.interface.input[:2] if end)
         # Back-calculation draws it back from its limits; in a chain, one state drives another.
