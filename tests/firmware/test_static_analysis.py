@@ -71,7 +71,7 @@ def files(tmp_path_factory: pytest.TempPathFactory) -> list[Path]:
     for each in kinds.values():
         write_all(where, render_firmware(each))
     found: dict[tuple[object, ...], IntegerEmission] = {}
-    for one in integer_grid():
+    for one in sorted(integer_grid(), key=lambda one: one.coefficients):  # inline first: it has two ways to multiply
         found.setdefault((one.realization.structure, one.realization.widths), one)
         found.setdefault((one.anti_windup, one.coefficients, one.realization.widths.bits), one)
     assert {(structure, widths) for structure in STRUCTURES for widths in WIDTHS} - {*found} == set()
@@ -98,7 +98,7 @@ def complaints(tool: str, options: tuple[str, ...], after: tuple[str, ...], file
 def with_short_products(files: list[Path]) -> list[Path]:
     """Those that have other code for processors without a long multiply."""
     found = [path for path in files if "SHORT_PRODUCTS" in path.read_text()]
-    assert len(found) > len(STRUCTURES) // 2
+    assert len(found) >= len(STRUCTURES)
     return found
 
 
