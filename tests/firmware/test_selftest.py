@@ -4,11 +4,14 @@ branch."""
 from __future__ import annotations
 
 import re
+from fractions import Fraction
+from random import Random
 
 import pytest
 
+from realize.arithmetic.sample import largest
 from realize.firmware import Emission, render_firmware, write_all
-from realize.firmware.selftest import STRETCH, chosen
+from realize.firmware.selftest import STRETCH, chosen, refusals
 from tests.firmware.bench import SHARE, Bench, toolchains
 from tests.firmware.designs import grid
 from tests.firmware.selftests import missed, returned
@@ -26,12 +29,28 @@ def test_every_compiler_passes_without_a_warning_or_a_trap(bench: Bench, number:
     assert returned(bench, bench.emitted(designs), names, toolchains()[number]) == dict.fromkeys(names, 0)
 
 
-def test_it_reaches_every_branch_but_those_of_the_preset_that_nothing_finite_takes(bench: Bench) -> None:
-    """It refuses each number of its state that is not finite, and hardly a design can make every one so."""
+def drawn(emission: Emission) -> set[str | None]:
+    """Fields that the preset refuses for some finite arguments, of every size and sign."""
+    model, draw, most = emission.recursion(), Random(1), largest(emission.realization.format)
+    pairs = (
+        (draw.choice((1, -1)) * most * 2 ** -draw.uniform(0, 40), draw.choice((0, most, -most))) for _ in range(300)
+    )
+    return {model.refused(emission.realization.format.round(Fraction(x)), y) for x, y in pairs} - {None}
+
+
+def test_it_reaches_every_branch_but_refusals_that_no_finite_argument_makes(bench: Bench) -> None:
     some = GRID[::3]
-    names = [emission.name for emission in some]
-    found = missed(bench, bench.emitted(some), names)
-    assert {function for function in found if not function.endswith("_preset")} == set()
+    where = bench.emitted(some)
+    expected = {}
+    for emission in some:
+        model = emission.recursion()
+        played = {model.refused(*pair) for pair in refusals(model, largest(emission.realization.format))}
+        assert drawn(emission) <= played - {None}
+        preset = (
+            (where / f"{emission.name}.c").read_text().partition(f"int {emission.name}_preset(")[2].partition("\n}")[0]
+        )
+        expected[f"{emission.name}_preset"] = preset.count("_is_finite(") - len(("input", "output")) - len(played)
+    assert missed(bench, where, [emission.name for emission in some]) == {f: n for f, n in expected.items() if n}
 
 
 def wrong(emission: Emission, pattern: str, to: str) -> dict[str, str]:
