@@ -211,8 +211,8 @@ def _proven(emission: IntegerEmission, c: Spelling) -> list[str]:
     return [
         "from a cleared state, and from one set by preset, no state and no sum overflows, whatever the input; the "
         f"least room is {bits}, in the sum for {where}.{table}",
-        f"while no limit acts, rounding moves the output by at most {ceiling_text(proof.output_error)} counts, its own "
-        "rounding included",
+        f"from a cleared state, while no limit acts, rounding moves the output by at most "
+        f"{ceiling_text(proof.output_error)} counts, its own rounding included",
     ]
 
 
