@@ -236,7 +236,7 @@ def test_a_value_that_the_type_does_not_hold_is_named(row: str, kind: str, tmp_p
 
 def test_other_files_are_no_record(tmp_path: Path) -> None:
     write(tmp_path, IDENTITY, [(1, 1)])
-    with pytest.raises(RealizeError, match="not JSON(.|\n)*a record that realize emit wrote"):
+    with pytest.raises(RealizeError, match=r"not JSON(.|\n)*a record that realize emit wrote"):
         trial(str(tmp_path / "hand.c"))
 
 

@@ -186,7 +186,7 @@ def test_header_says_what_is_saturated_where_there_is_no_rest_and_what_is_proven
     assert "uint16_t; 1 count = 0.0005 mm; count 32768 stands for 0" in first
     assert "clamped to -1 to 1: counts 800 to 9200" in first
     assert "no state and no sum overflows" in first
-    assert "rounding moves the output by at most" in first
+    assert "from a cleared state, while no limit acts, rounding moves the output by at most" in first
     rest = " ".join(text.replace("\n * ", " ").split())
     assert "no steady state exists but at input 32768" in rest
     assert "#define x_INPUT_LOW 16768" in text
