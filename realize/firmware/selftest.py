@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING, Any, NamedTuple, TypeVar
 
 from realize.arithmetic.sample import largest
 from realize.firmware.c_text import comment, dialect, statement, wrapped
-from realize.firmware.vectors import full_scale, in_format, vectors
+from realize.firmware.vectors import full_scale, in_format
 
 if TYPE_CHECKING:
     from realize.arithmetic.recursion import Recursion
@@ -123,21 +123,21 @@ def _parts(length: int) -> Iterator[int]:
         done += part
 
 
-def selftest_text(emission: Emission) -> str:
-    """The self-test of an emission in floats."""
+def selftest_text(emission: Emission, inputs: Sequence[float]) -> str:
+    """The self-test of an emission in floats, from the inputs of its vectors."""
     c = dialect(emission)
 
     def text(value: float) -> str:
         return f"-{c.literal(0.0)}" if value == 0 and copysign(1.0, value) < 0 else c.literal(value)
 
     words = Wording(c.name, c.real, c.real, text, text, c.table, f"{c.macros}_MAX")
-    return source_of(words, _samples(emission))
+    return source_of(words, _samples(emission, inputs))
 
 
-def _samples(emission: Emission) -> Samples:
+def _samples(emission: Emission, inputs: Sequence[float]) -> Samples:
     model = emission.recursion()
     rows: list[Held] = []
-    for value, held in chosen([x for x in vectors(emission)[0] if isfinite(x)]):
+    for value, held in chosen([x for x in inputs if isfinite(x)]):
         answer = model.run([value] * held)[-1]
         if not isfinite(answer):
             return Samples(rows, (), _rests(emission, model))

@@ -6,6 +6,7 @@ full scale, times a power of two where the command is to stay within its limits 
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from fractions import Fraction
 from math import comb, isfinite
 from typing import TYPE_CHECKING
@@ -44,9 +45,9 @@ HEADROOM = 2.0**-40
 LEVELS = ((1, 0), (0, 512), (-1, 0), (0, -512), (-1, 0), (0, 512), (1, 0), (0, -512))
 
 
-def vectors_text(emission: Emission) -> str:
+def vectors_text(inputs: Sequence[float], outputs: Sequence[float]) -> str:
     """Inputs and outputs as comma-separated C hexadecimal floats."""
-    rows = [f"{hexadecimal(x)},{hexadecimal(y)}" for x, y in zip(*vectors(emission), strict=True)]
+    rows = [f"{hexadecimal(x)},{hexadecimal(y)}" for x, y in zip(inputs, outputs, strict=True)]
     return "\n".join(["input,output", *rows]) + "\n"
 
 

@@ -13,9 +13,11 @@ import pytest
 from realize.arithmetic.formats import FORMATS
 from realize.arithmetic.realization import Realization
 from realize.firmware import Emission, render_firmware
-from tests.firmware.bench import WARNINGS, ZIG, Bench
+from tests.firmware.bench import WARNINGS, ZIG, Bench, rendered
 from tests.firmware.designs import PERIOD_S, UNIT_RANGE, grid, parts, rounded
 from tests.firmware.designs import emission as emission_of
+
+pytestmark = pytest.mark.xdist_group("floats")
 
 CLANG, GCC = (*ZIG, "cc"), ("gcc",)
 COMPILERS = [CLANG, *([GCC] if shutil.which("gcc") else [])]
@@ -146,7 +148,7 @@ def test_each_file_compiles_on_its_own(language: tuple[str, ...], emission: Emis
 
 @pytest.mark.parametrize("name", KNOWN)
 def test_the_only_include_is_float_h_and_every_global_name_is_prefixed(name: str) -> None:
-    text = render_firmware(KNOWN[name])[f"{name}.c"]
+    text = rendered(KNOWN[name])[f"{name}.c"]
     assert re.findall(r"#include (.*)", text) == [f'"{name}.h"', "<float.h>"]
     names = re.findall(r"^(?:static inline |static )?(?:const )?\w+ \*?(\w+)[ (]", text, re.MULTILINE)
     assert len(names) > 4

@@ -10,13 +10,15 @@ import pytest
 from elftools.elf.elffile import ELFFile
 from elftools.elf.sections import SymbolTableSection
 
-from realize.firmware import render_firmware, write_all
+from realize.firmware import write_all
 from realize.firmware.integer import render_integer_firmware
 from realize.trial.compile import LEVELS
 from realize.trial.targets import targets_named
-from tests.firmware.bench import ZIG, Bench
+from tests.firmware.bench import ZIG, Bench, rendered
 from tests.firmware.designs import grid
 from tests.firmware.integer.designs import grid as integer_grid
+
+pytestmark = pytest.mark.xdist_group("calls")
 
 (SMALLEST,) = targets_named("cortex-m0")
 
@@ -30,7 +32,7 @@ def place(bench: Bench) -> Path:
     """One file of designs in floats and in integers, and of their self-tests."""
     where, names = bench.directory(), []
     for real in list(grid())[::20]:
-        write_all(where, render_firmware(real))
+        write_all(where, rendered(real))
         names.append(real.name)
     for whole in list(integer_grid())[::11]:
         names.append(f"i{whole.name}")

@@ -10,11 +10,13 @@ from random import Random
 import pytest
 
 from realize.arithmetic.sample import largest
-from realize.firmware import Emission, render_firmware, write_all
+from realize.firmware import Emission, write_all
 from realize.firmware.selftest import STRETCH, chosen, refusals
-from tests.firmware.bench import SHARE, Bench, toolchains
+from tests.firmware.bench import SHARE, Bench, rendered, toolchains
 from tests.firmware.designs import grid
 from tests.firmware.selftests import missed, returned
+
+pytestmark = pytest.mark.xdist_group("floats")
 
 GRID = list(grid())
 #: The first compiler, silent about what is wrong.
@@ -54,7 +56,7 @@ def test_it_reaches_every_branch_but_refusals_that_no_finite_argument_makes(benc
 
 
 def wrong(emission: Emission, pattern: str, to: str) -> dict[str, str]:
-    files = render_firmware(emission)
+    files = rendered(emission)
     source = files[f"{emission.name}.c"]
     changed = re.sub(pattern, to, source, count=1)
     assert changed != source
@@ -100,7 +102,7 @@ def test_a_line_of_c_that_is_wrong_is_found(bench: Bench, pattern: str, to: str)
 @pytest.mark.parametrize("line", [1, 2, 77, -1])
 def test_it_returns_the_number_of_the_first_line_that_differs(bench: Bench, line: int) -> None:
     emission = integrating()[0]
-    files = render_firmware(emission)
+    files = rendered(emission)
     name = f"{emission.name}_selftest.c"
     start = files[name].index("_held_lines[")
     lines = re.findall(r"^    \{.*\},$", files[name][start:].partition("};")[0], re.MULTILINE)
@@ -113,8 +115,8 @@ def test_it_returns_the_number_of_the_first_line_that_differs(bench: Bench, line
 
 
 def test_a_zero_of_the_other_sign_differs(bench: Bench) -> None:
-    emission = next(e for e in GRID if ", 0.0f, " in render_firmware(e)[f"{e.name}_selftest.c"])
-    files = render_firmware(emission)
+    emission = next(e for e in GRID if ", 0.0f, " in rendered(e)[f"{e.name}_selftest.c"])
+    files = rendered(emission)
     name = f"{emission.name}_selftest.c"
     where = bench.directory()
     write_all(where, files | {name: files[name].replace(", 0.0f, ", ", -0.0f, ", 1)})
@@ -134,5 +136,5 @@ def test_a_stretch_between_runs_is_cut_and_the_runs_are_whole() -> None:
 
 def test_it_holds_a_few_hundred_lines() -> None:
     for emission in GRID:
-        rows = re.findall(r"^    \{.*\},$", render_firmware(emission)[f"{emission.name}_selftest.c"], re.MULTILINE)
+        rows = re.findall(r"^    \{.*\},$", rendered(emission)[f"{emission.name}_selftest.c"], re.MULTILINE)
         assert 100 < len(rows) < 500

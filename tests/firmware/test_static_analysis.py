@@ -13,11 +13,14 @@ from pathlib import Path
 import pytest
 
 from realize.arithmetic.integer import STRUCTURES
-from realize.firmware import render_firmware, write_all
+from realize.firmware import write_all
 from realize.firmware.integer import IntegerEmission, render_integer_firmware
+from tests.firmware.bench import rendered
 from tests.firmware.designs import grid
 from tests.firmware.integer.designs import WIDTHS
 from tests.firmware.integer.designs import grid as integer_grid
+
+pytestmark = pytest.mark.xdist_group("static analysis")
 
 TOOLS = Path(sys.executable).parent
 
@@ -69,7 +72,7 @@ def files(tmp_path_factory: pytest.TempPathFactory) -> list[Path]:
         (e.realization.format.name, e.realization.structure, e.anti_windup, e.coefficients): e for e in reversed(chosen)
     }
     for each in kinds.values():
-        write_all(where, render_firmware(each))
+        write_all(where, rendered(each))
     found: dict[tuple[object, ...], IntegerEmission] = {}
     for one in sorted(integer_grid(), key=lambda one: one.coefficients):  # inline first: it has two ways to multiply
         found.setdefault((one.realization.structure, one.realization.widths), one)

@@ -5,12 +5,16 @@ from __future__ import annotations
 import re
 from collections.abc import Iterator
 
+import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from realize.firmware.integer import IntegerEmission, render_integer_firmware
+from realize.firmware.integer import IntegerEmission
 from realize.firmware.integer.c_halves import Product, grouped, halves
+from tests.firmware.bench import rendered
 from tests.firmware.integer.designs import WIDTHS, grid
+
+pytestmark = pytest.mark.xdist_group("integers")
 
 GRID = [one for one in grid() if one.realization.widths == WIDTHS[2] and one.coefficients == "inline"]
 
@@ -55,7 +59,7 @@ def products(text: str) -> list[tuple[str, str]]:
 
 def checked(one: IntegerEmission) -> int:
     """The number of groups in the text of a design, each of which holds what it must, and together all products."""
-    source = render_integer_firmware(one)[f"{one.name}.c"]
+    source = rendered(one)[f"{one.name}.c"]
     stored = table(source)
     largest = {bound.variable: bound.largest + 1 for bound in one.realization.proof.bounds}
 

@@ -19,9 +19,11 @@ from realize.design import Signal
 from realize.firmware import write_all
 from realize.firmware.integer import IntegerEmission, render_integer_firmware
 from realize.firmware.integer.vectors import vectors
-from tests.firmware.bench import ZIG, Program, Toolchain, bits
+from tests.firmware.bench import ZIG, Program, Toolchain, bits, inputs_of, rendered
 from tests.firmware.integer.bench import ZIG_TRAPS, IntegerBench, toolchains
 from tests.firmware.integer.designs import INPUTS, OUTPUTS, WIDE_INPUTS, WIDTHS, emission, grid, signal, some_count
+
+pytestmark = pytest.mark.xdist_group("integers")
 
 TOOLCHAINS = toolchains()
 GRID = list(grid())
@@ -60,7 +62,7 @@ def exercise(index: int, emission: IntegerEmission) -> Exercise:
     work, draw = Exercise(emission), Random(index)
     interface = emission.realization.program.interface
     incoming, outgoing = type_range(interface.input.type), type_range(interface.output.type)
-    work.update(vectors(emission)[0])
+    work.update([*map(int, inputs_of(emission))])
     for _ in range(12):
         work.preset(some_count(draw, *incoming), some_count(draw, *outgoing))
         for _ in range(6):
@@ -216,7 +218,7 @@ def test_limits_beyond_what_a_variable_holds_are_those_of_the_model(integer_benc
     ends = [(WIDE_INPUTS["all of int32"], output_of_int32(*limits)) for limits in LIMITS]
     forms = [("direct", pair) for pair in ends] + [(form, ends[1]) for form in ("cascade", "error-feedback")]
     works = [exercise(k, emission(f"late{k}", "notch", form, WIDTHS[2], pair)) for k, (form, pair) in enumerate(forms)]
-    sources = [render_integer_firmware(work.emission)[f"{work.emission.name}.c"] for work in works]
+    sources = [rendered(work.emission)[f"{work.emission.name}.c"] for work in works]
     powers = [re.findall(r"The command, (\d+) times what is given, held", source) for source in sources]
     assert all(powers)
     for power, way in (("2", "_saturated("), ("4", "_within("), ("4", "if (unclamped >="), ("8", "if (unclamped >=")):

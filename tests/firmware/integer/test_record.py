@@ -16,7 +16,10 @@ from realize.errors import Refused
 from realize.firmware.integer import IntegerEmission, render_integer_firmware
 from realize.firmware.integer.c_header import FORMS
 from realize.firmware.integer.record import ceiling_text
+from tests.firmware.bench import rendered
 from tests.firmware.integer.designs import TRANSFERS, WIDTHS, emission
+
+pytestmark = pytest.mark.xdist_group("integers")
 
 Entry = dict[str, Any]
 
@@ -25,7 +28,7 @@ SETTLING = 3000
 
 
 def document(one: IntegerEmission) -> Entry:
-    return dict(json.loads(render_integer_firmware(one)[f"{one.name}.record.json"]))
+    return dict(json.loads(rendered(one)[f"{one.name}.record.json"]))
 
 
 def designs() -> list[tuple[str, IntegerEmission]]:
