@@ -11,8 +11,6 @@ from realize.firmware import Emission
 from tests.firmware.bench import ZIG, Bench, Program, Toolchain, inputs_of, rendered
 from tests.firmware.designs import grid
 
-pytestmark = pytest.mark.xdist_group("floats")
-
 # every function visible, every branch as written
 INSTRUMENTED = Toolchain(
     "instrumented",

@@ -15,8 +15,6 @@ from realize.firmware.c_text import WIDTH
 from tests.firmware.bench import ZIG, Bench, rendered
 from tests.firmware.designs import UNIT_RANGE, delta_section, grid, section
 
-pytestmark = pytest.mark.xdist_group("floats")
-
 
 def servo(target: FloatFormat = FLOAT32, period_s: Fraction = Fraction(1, 2000), **options: Any) -> Emission:
     rest = (section(target, ("4.2", "-3.1"), ("-0.38",)),)

@@ -17,8 +17,6 @@ from tests.firmware.bench import WARNINGS, ZIG, Bench, rendered
 from tests.firmware.designs import PERIOD_S, UNIT_RANGE, grid, parts, rounded
 from tests.firmware.designs import emission as emission_of
 
-pytestmark = pytest.mark.xdist_group("floats")
-
 CLANG, GCC = (*ZIG, "cc"), ("gcc",)
 COMPILERS = [CLANG, *([GCC] if shutil.which("gcc") else [])]
 KNOWN = {emission.name: emission for emission in grid()}

@@ -18,8 +18,6 @@ from tests.firmware.bench import ZIG, Bench, rendered
 from tests.firmware.designs import grid
 from tests.firmware.integer.designs import grid as integer_grid
 
-pytestmark = pytest.mark.xdist_group("calls")
-
 (SMALLEST,) = targets_named("cortex-m0")
 
 #: Run-time ABI for the Arm architecture, tables 2 to 5 and 9: arithmetic and comparisons of numbers, in floats and in

@@ -14,8 +14,6 @@ from realize.firmware import Emission
 from tests.firmware.bench import Bench, Toolchain, bits, inputs_of, toolchains
 from tests.firmware.designs import grid, in_delta, random_emission
 
-pytestmark = pytest.mark.xdist_group("floats")
-
 NAMES = [toolchain.name for toolchain in toolchains()]
 GRID = list(grid())
 

@@ -15,8 +15,6 @@ from realize.version import VERSION
 from tests.firmware.bench import rendered
 from tests.firmware.designs import UNIT_RANGE, grid
 
-pytestmark = pytest.mark.xdist_group("floats")
-
 DESIGNS = list(grid())
 
 

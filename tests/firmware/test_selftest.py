@@ -16,8 +16,6 @@ from tests.firmware.bench import SHARE, Bench, rendered, toolchains
 from tests.firmware.designs import grid
 from tests.firmware.selftests import missed, returned
 
-pytestmark = pytest.mark.xdist_group("floats")
-
 GRID = list(grid())
 #: The first compiler, silent about what is wrong.
 WHATEVER = toolchains()[0]._replace(code=(*toolchains()[0].code, "-w"))

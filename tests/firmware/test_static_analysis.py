@@ -20,8 +20,6 @@ from tests.firmware.designs import grid
 from tests.firmware.integer.designs import WIDTHS
 from tests.firmware.integer.designs import grid as integer_grid
 
-pytestmark = pytest.mark.xdist_group("static analysis")
-
 TOOLS = Path(sys.executable).parent
 
 #: Families of clang-tidy that are on.

@@ -18,8 +18,6 @@ from realize.firmware.patterns import IMPULSE, SWEEP
 from realize.firmware.vectors import HELD, LEVELS, NOISE, QUIET, SATURATING, STEP, vectors, vectors_text
 from tests.firmware.designs import PERIOD_S, UNIT_RANGE, emission, grid, random_emission, section
 
-pytestmark = pytest.mark.xdist_group("floats")
-
 LIMITED = [e for e in grid() if e.output_range]
 
 

@@ -5,7 +5,6 @@ from __future__ import annotations
 import re
 from collections.abc import Iterator
 
-import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
@@ -13,8 +12,6 @@ from realize.firmware.integer import IntegerEmission
 from realize.firmware.integer.c_halves import Product, grouped, halves
 from tests.firmware.bench import rendered
 from tests.firmware.integer.designs import WIDTHS, grid
-
-pytestmark = pytest.mark.xdist_group("integers")
 
 GRID = [one for one in grid() if one.realization.widths == WIDTHS[2] and one.coefficients == "inline"]
 

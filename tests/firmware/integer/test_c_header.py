@@ -11,8 +11,6 @@ from realize.firmware.integer import IntegerEmission
 from tests.firmware.bench import rendered
 from tests.firmware.integer.designs import INPUTS, OUTPUTS, WIDTHS, emission, grid
 
-pytestmark = pytest.mark.xdist_group("integers")
-
 LISTED = list(grid())
 
 

@@ -16,8 +16,6 @@ from realize.firmware.integer.spelling import Spelling, constant
 from tests.firmware.bench import rendered
 from tests.firmware.integer.designs import INPUTS, OUTPUTS, WIDE_INPUTS, WIDTHS, emission, grid, made
 
-pytestmark = pytest.mark.xdist_group("integers")
-
 WIDTH = 100
 GRID = list(grid())[::4]
 

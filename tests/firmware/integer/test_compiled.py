@@ -23,8 +23,6 @@ from tests.firmware.bench import ZIG, Program, Toolchain, bits, inputs_of, rende
 from tests.firmware.integer.bench import ZIG_TRAPS, IntegerBench, toolchains
 from tests.firmware.integer.designs import INPUTS, OUTPUTS, WIDE_INPUTS, WIDTHS, emission, grid, signal, some_count
 
-pytestmark = pytest.mark.xdist_group("integers")
-
 TOOLCHAINS = toolchains()
 GRID = list(grid())
 

@@ -22,8 +22,6 @@ from tests.firmware.bench import ZIG
 from tests.firmware.integer.bench import IntegerBench
 from tests.firmware.integer.designs import INPUTS, OUTPUTS, WIDTHS, emission
 
-pytestmark = pytest.mark.xdist_group("noise")
-
 Floats = NDArray[np.float64]
 
 #: Bounds in standard deviations: a fair sample is outside once in 5e8.

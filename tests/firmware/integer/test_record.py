@@ -18,8 +18,6 @@ from realize.firmware.integer.record import ceiling_text
 from tests.firmware.bench import rendered
 from tests.firmware.integer.designs import WIDTHS, emission, grid
 
-pytestmark = pytest.mark.xdist_group("integers")
-
 Entry = dict[str, Any]
 
 #: Samples after which every pole of the designs has decayed to nothing of its first size, 1e-9 and less.

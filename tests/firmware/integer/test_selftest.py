@@ -13,8 +13,6 @@ from tests.firmware.integer.bench import SHARE, IntegerBench, toolchains
 from tests.firmware.integer.designs import grid
 from tests.firmware.selftests import missed, returned
 
-pytestmark = pytest.mark.xdist_group("integers")
-
 #: A third of the designs, 3 being prime to what the grid turns over: every structure, format and option is among them.
 GRID = list(grid())[::3]
 DESIGNS = {emission.name: emission for emission in GRID}

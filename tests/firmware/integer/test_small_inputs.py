@@ -25,8 +25,6 @@ from tests.firmware.bench import ZIG
 from tests.firmware.integer.bench import IntegerBench
 from tests.firmware.integer.designs import WIDTHS, emission, signal
 
-pytestmark = pytest.mark.xdist_group("small inputs")
-
 #: A PI with an integral time of 40 s at 10 kHz: a count adds 2.5e-6 counts a sample. Counts and limits are powers of
 #: two, so that a product with an input of one count, and the limit, are exact in every format.
 PI = ("1 + 1/(40*s)", "10 kHz")

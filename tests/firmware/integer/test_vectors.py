@@ -20,8 +20,6 @@ from realize.firmware.integer.vectors import (
 from realize.firmware.patterns import IMPULSE, UNIT, noise
 from tests.firmware.integer.designs import INPUTS, OUTPUTS, WIDTHS, emission, grid
 
-pytestmark = pytest.mark.xdist_group("integers")
-
 GRID = [(one, *vectors(one)) for one in list(grid())[::5]]
 NAMES = [f"{one.name} {one.realization.structure}" for one, _, _ in GRID]
 
