@@ -105,14 +105,11 @@ class Program:
 
 
 class Bench:
-    """A place to compile in, with the compiler's cache in it."""
+    """A place to compile in, with the compiler's cache in it, but for its runtime: that is built once for all."""
 
     def __init__(self, place: Path) -> None:
         self.place = place
-        self._environment = os.environ | {
-            "ZIG_GLOBAL_CACHE_DIR": str(place / "zig-global"),
-            "ZIG_LOCAL_CACHE_DIR": str(place / "zig-local"),
-        }
+        self._environment = os.environ | {"ZIG_LOCAL_CACHE_DIR": str(place / "zig-local")}
         self._count = 0
 
     def compiler(self, command: Sequence[str], where: Path) -> subprocess.CompletedProcess[str]:
