@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 from realize.arithmetic.sample import BACK_CALCULATION, HOLD_INTEGRAL, Sample, variables
 from realize.firmware.c_preamble import (
     CAUTION,
-    Wording,
+    Provenance,
     accepted_text,
     calls,
     counted,
@@ -66,7 +66,7 @@ def _preamble(emission: Emission, sample: Sample) -> list[str]:
         *wrapped(f"{name}.h - a difference equation, emitted by realize; its account is {name}.record.json"),
         "",
         *([*wrapped(emission.about), ""] if emission.about else []),
-        *provenance(emission, _wording(emission, sample)),
+        *provenance(emission, _provenance(emission, sample)),
         "",
         *paragraph("Calls", calls(name)),
         *paragraph("Feed-through", _feed_through(emission)),
@@ -79,8 +79,8 @@ def _preamble(emission: Emission, sample: Sample) -> list[str]:
     ]
 
 
-def _wording(emission: Emission, sample: Sample) -> Wording:
-    return Wording(
+def _provenance(emission: Emission, sample: Sample) -> Provenance:
+    return Provenance(
         structure=_structure(emission),
         arithmetic=f"{emission.realization.format.name}, every operation rounded once, to nearest",
         input=_input_text(emission),

@@ -71,7 +71,7 @@ def skeleton(
     return "\n".join(lines) + "\n"
 
 
-class Wording(NamedTuple):
+class Provenance(NamedTuple):
     """What an arithmetic says of itself in the provenance.
 
     Attributes
@@ -95,7 +95,7 @@ class Wording(NamedTuple):
     more: tuple[tuple[str, str | None], ...]
 
 
-def provenance(emission: Emission | IntegerEmission, words: Wording) -> list[str]:
+def provenance(emission: Emission | IntegerEmission, words: Provenance) -> list[str]:
     """Where the code comes from, label by label."""
     period_s = emission.realization.period_s
     return labelled(

@@ -10,7 +10,7 @@ from realize.arithmetic.integer.quiet import Answered, IntegrationTimes, Quiet
 from realize.arithmetic.sample import BACK_CALCULATION, HOLD_INTEGRAL
 from realize.firmware.c_preamble import (
     CAUTION,
-    Wording,
+    Provenance,
     accepted_text,
     calls,
     counted,
@@ -64,7 +64,7 @@ def _preamble(emission: IntegerEmission, c: Spelling, silence: Quiet) -> list[st
         ),
         "",
         *([*wrapped(emission.about), ""] if emission.about else []),
-        *provenance(emission, _wording(emission)),
+        *provenance(emission, _provenance(emission)),
         "",
         *paragraph("Calls", calls(name)),
         *paragraph("Feed-through", _feed_through(c)),
@@ -79,9 +79,9 @@ def _preamble(emission: IntegerEmission, c: Spelling, silence: Quiet) -> list[st
     ]
 
 
-def _wording(emission: IntegerEmission) -> Wording:
+def _provenance(emission: IntegerEmission) -> Provenance:
     interface = emission.realization.program.interface
-    return Wording(
+    return Provenance(
         structure=_structure(emission),
         arithmetic=_widths(emission),
         input=_input_text(emission),
