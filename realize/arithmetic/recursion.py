@@ -113,13 +113,25 @@ class Recursion:
         RealizeError
             When a stored section has a pole at z = 1.
         """
-        if self._settling is None:
-            self._settling = settle(self.realization, self.sample)
-            self._functions |= self._compiled_settling(self._settling)
+        settling = self._way_to_rest()
         if not (isfinite(value) and isfinite(output)):
             return False
         with np.errstate(all="ignore"):
-            return self._preset(self._settling, self._number(value), self._number(output))
+            return self._preset(settling, self._number(value), self._number(output))
+
+    def refused(self, value: float, output: float) -> str | None:
+        """The first field of the state that ``preset`` refuses to set for finite arguments; None if there is none."""
+        settling = self._way_to_rest()
+        with np.errstate(all="ignore"):
+            stored, _ = self._functions["settle"](self._number(value), self._number(output))
+        fields = zip(settling.stored, stored, strict=True)
+        return next((field for (field, _), settled in fields if not isfinite(settled)), None)
+
+    def _way_to_rest(self) -> Settling:
+        if self._settling is None:
+            self._settling = settle(self.realization, self.sample)
+            self._functions |= self._compiled_settling(self._settling)
+        return self._settling
 
     def _preset(self, settling: Settling, value: Any, output: Any) -> bool:
         stored, reached = self._functions["settle"](value, output)

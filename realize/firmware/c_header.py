@@ -9,18 +9,18 @@ from typing import TYPE_CHECKING
 from realize.arithmetic.sample import BACK_CALCULATION, HOLD_INTEGRAL, Sample, variables
 from realize.firmware.c_preamble import (
     CAUTION,
+    Provenance,
     accepted_text,
     calls,
     counted,
-    labelled,
     listed,
     loop_lines,
     paragraph,
-    period_macros,
-    period_text,
+    prototypes,
+    provenance,
     range_text,
-    selftest_prototype,
     signatures,
+    skeleton,
     unprotected,
 )
 from realize.firmware.c_text import (
@@ -52,27 +52,13 @@ def header_text(emission: Emission, sample: Sample, stored: Mapping[str, float])
         Field name and value of every coefficient; used with ``coefficients = "table"``.
     """
     c = dialect(emission)
-    lines = [
-        *comment(_preamble(emission, sample)),
-        f"#ifndef {c.name}_H",
-        f"#define {c.name}_H",
-        "",
-        *period_macros(c.name, emission.realization.period_s),
-        *_limits(c, sample),
-        "#ifdef __cplusplus",
-        'extern "C" {',
-        "#endif",
-        "",
+    declared = [
         *_state(c, sample),
         *(_table(c, emission, stored) if c.table else []),
         *_prototypes(c, emission, sample),
-        "#ifdef __cplusplus",
-        "}",
-        "#endif",
-        "",
-        f"#endif /* {c.name}_H */",
     ]
-    return "\n".join(lines) + "\n"
+    preamble, period_s = _preamble(emission, sample), emission.realization.period_s
+    return skeleton(c.name, preamble, period_s, limits=_limits(c, sample), declared=declared)
 
 
 # ---------------------------------------------------------------- the first comment
@@ -84,7 +70,7 @@ def _preamble(emission: Emission, sample: Sample) -> list[str]:
         *wrapped(f"{name}.h - a difference equation, emitted by realize; its account is {name}.record.json"),
         "",
         *([*wrapped(emission.about), ""] if emission.about else []),
-        *_provenance(emission, sample),
+        *provenance(emission, _provenance(emission, sample)),
         "",
         *paragraph("Calls", calls(name)),
         *_schedule(emission),
@@ -106,27 +92,16 @@ def _schedule(emission: Emission) -> list[str]:
     return paragraph("Schedule", schedule_says(emission, emission.schedule))
 
 
-def _provenance(emission: Emission, sample: Sample) -> list[str]:
-    realization = emission.realization
-    rate = number_text(1 / realization.period_s)
-    entries = [
-        ("revision", emission.revision),
-        ("requirement", emission.requirement),
-        ("author", emission.author),
-        ("transfer", f"G(s) = {emission.transfer_text}"),
-        *emission.particulars,
-        ("method", emission.method),
-        ("sample period", f"{period_text(realization.period_s)} s (rate {rate} Hz)"),
-        ("structure", _structure(emission)),
-        ("arithmetic", f"{realization.format.name}, every operation rounded once, to nearest"),
-        ("input", f"the input (for a controller the error, reference minus measurement){_input_text(emission)}"),
-        ("input count", _count_text(emission.input_count, emission.input_unit)),
-        ("output", f"the output (for a controller the command; so called below){_output_text(emission, sample)}"),
-        ("output count", _count_text(emission.output_count, emission.output_unit)),
-        ("anti-windup", _anti_windup(emission, sample)),
-        ("input guard", _guard(emission)),
-    ]
-    return labelled(entries)
+def _provenance(emission: Emission, sample: Sample) -> Provenance:
+    return Provenance(
+        structure=_structure(emission),
+        arithmetic=f"{emission.realization.format.name}, every operation rounded once, to nearest",
+        input=_input_text(emission),
+        input_count=_count_text(emission.input_count, emission.input_unit),
+        output=_output_text(emission, sample),
+        output_count=_count_text(emission.output_count, emission.output_unit),
+        more=(("anti-windup", _anti_windup(emission, sample)), ("input guard", _guard(emission))),
+    )
 
 
 def _structure(emission: Emission) -> str:
@@ -326,26 +301,14 @@ def _lookup(c: Dialect, emission: Emission) -> list[str]:
 
 
 def _prototypes(c: Dialect, emission: Emission, sample: Sample) -> list[str]:
-    declared = signatures(c.name, c.real, c.real, table=c.table)
-    clear, update, output, advance, preset = (signature + ";" for signature in declared)
-    return [
-        "/* All state zero. */",
-        clear,
-        "",
-        *comment(wrapped("One sample: the command for the input, then the state moved on with it.")),
-        update,
-        "",
-        *comment(wrapped(_output_says(sample))),
-        output,
-        "",
-        *comment(wrapped(_advance_says(emission, sample))),
-        advance,
-        "",
-        *comment(wrapped(_preset_says(emission))),
-        preset,
-        "",
-        *selftest_prototype(c.name),
-    ]
+    says = (
+        "All state zero.",
+        "One sample: the command for the input, then the state moved on with it.",
+        _output_says(sample),
+        _advance_says(emission, sample),
+        _preset_says(emission),
+    )
+    return prototypes(c.name, signatures(c.name, c.real, c.real, table=c.table), says)
 
 
 def _output_says(sample: Sample) -> str:

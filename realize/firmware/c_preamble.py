@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
 from fractions import Fraction
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, NamedTuple
 
 from realize.arithmetic.sample import BACK_CALCULATION
 from realize.checks.agreement import agreed_text
@@ -25,6 +25,106 @@ CAUTION = (
     "codes, or the judgement of a licensed engineer where one is required. Code-generating tools earn credit only "
     "through verification of their output."
 )
+
+
+def skeleton(
+    name: str,
+    preamble: Sequence[str],
+    period_s: Fraction,
+    *,
+    includes: Sequence[str] = (),
+    limits: Sequence[str],
+    declared: Sequence[str],
+) -> str:
+    """A header from its parts.
+
+    Parameters
+    ----------
+    name : str
+        Prefix of every name.
+    preamble : sequence of str
+        Lines of the first comment.
+    period_s : Fraction
+        Sample period.
+    includes, limits, declared : sequence of str
+        Lines before and after the period's macros, and types and functions.
+    """
+    lines = [
+        *comment(preamble),
+        f"#ifndef {name}_H",
+        f"#define {name}_H",
+        "",
+        *includes,
+        *period_macros(name, period_s),
+        *limits,
+        "#ifdef __cplusplus",
+        'extern "C" {',
+        "#endif",
+        "",
+        *declared,
+        "#ifdef __cplusplus",
+        "}",
+        "#endif",
+        "",
+        f"#endif /* {name}_H */",
+    ]
+    return "\n".join(lines) + "\n"
+
+
+class Provenance(NamedTuple):
+    """What an arithmetic says of itself in the provenance.
+
+    Attributes
+    ----------
+    structure, arithmetic : str
+        Of the realization.
+    input, output : str
+        What stands behind the meaning of each.
+    input_count, output_count : str or None
+        What a count is.
+    more : tuple of (str, str or None)
+        Further labels and their texts.
+    """
+
+    structure: str
+    arithmetic: str
+    input: str
+    input_count: str | None
+    output: str
+    output_count: str | None
+    more: tuple[tuple[str, str | None], ...]
+
+
+def provenance(emission: Emission | IntegerEmission, words: Provenance) -> list[str]:
+    """Where the code comes from, label by label."""
+    period_s = emission.realization.period_s
+    return labelled(
+        [
+            ("revision", emission.revision),
+            ("requirement", emission.requirement),
+            ("author", emission.author),
+            ("transfer", f"G(s) = {emission.transfer_text}"),
+            *emission.particulars,
+            ("method", emission.method),
+            ("sample period", f"{period_text(period_s)} s (rate {number_text(1 / period_s)} Hz)"),
+            ("structure", words.structure),
+            ("arithmetic", words.arithmetic),
+            ("input", f"the input (for a controller the error, reference minus measurement){words.input}"),
+            ("input count", words.input_count),
+            ("output", f"the output (for a controller the command; so called below){words.output}"),
+            ("output count", words.output_count),
+            *words.more,
+        ]
+    )
+
+
+def prototypes(name: str, declared: Sequence[str], says: Sequence[str]) -> list[str]:
+    """Clear, update, output, advance and preset, each with what it does, and the self-test."""
+    functions = zip(says, declared, strict=True)
+    return [
+        *(line for text, signature in functions for line in (*comment(wrapped(text)), f"{signature};", "")),
+        *selftest_prototype(name),
+    ]
 
 
 def labelled(entries: Iterable[tuple[str, str | None]]) -> list[str]:

@@ -155,8 +155,20 @@ def recorded_numbers(record: Mapping[str, Any], path: str) -> Recorded:
         Fraction(0) if direct is None else _value(direct, f"{where}, direct_gain"),
         tuple(_value(entry, f"{where}, integral gain {i}") for i, entry in enumerate(record["integral"], 1)),
         _scale(design, where) if record["arithmetic"].startswith("int") else Fraction(1),
-        _number(_at(design, "sampling", "period_s"), f"{where}, design.sampling.period_s", positive=True),
+        recorded_period_s(record, path),
     )
+
+
+def recorded_period_s(record: Mapping[str, Any], path: str) -> Fraction:
+    """The sample period.
+
+    Raises
+    ------
+    RealizeError
+        When it is no exact time above zero.
+    """
+    where = f"{printable(path)}, design.sampling.period_s"
+    return _number(_at(record["design"], "sampling", "period_s"), where, positive=True)
 
 
 def _section(entry: object, where: str) -> RecordedSection:

@@ -11,7 +11,7 @@ from realize.firmware.c_text import dialect
 from realize.firmware.emission import Emission
 from realize.firmware.record import record_text
 from realize.firmware.selftest import selftest_text
-from realize.firmware.vectors import vectors_text
+from realize.firmware.vectors import vectors, vectors_text
 
 
 def render_firmware(emission: Emission) -> dict[str, str]:
@@ -38,12 +38,13 @@ def render_firmware(emission: Emission) -> dict[str, str]:
     sample = emission.recursion().sample
     settling = settle(emission.described, sample)
     stored = stored_coefficients(emission, sample, settling)
+    inputs, outputs = vectors(emission)
     files = {
         f"{name}.h": header_text(emission, sample, stored),
         f"{name}.c": source_text(emission, sample, settling, stored),
         **_table(emission, stored),
-        f"{name}_selftest.c": selftest_text(emission),
-        f"{name}_vectors.csv": vectors_text(emission),
+        f"{name}_selftest.c": selftest_text(emission, inputs),
+        f"{name}_vectors.csv": vectors_text(emission, inputs, outputs),
     }
     return files | {f"{name}.record.json": record_text(emission, files)}
 

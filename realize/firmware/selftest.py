@@ -8,14 +8,14 @@ more through output and advance; then the state is preset, and the actuator give
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Sequence
-from itertools import groupby
+from itertools import groupby, pairwise, product
 from math import copysign, inf, isfinite, nan
 from typing import TYPE_CHECKING, Any, NamedTuple, TypeVar
 
 from realize.arithmetic.sample import largest
 from realize.firmware.c_preamble import signature
 from realize.firmware.c_text import comment, dialect, statement, wrapped
-from realize.firmware.vectors import answers, full_scale, in_format, scheduled, vectors
+from realize.firmware.vectors import answers, full_scale, in_format, scheduled
 
 if TYPE_CHECKING:
     from realize.arithmetic.recursion import Recursion
@@ -27,6 +27,14 @@ RUN, STRETCH = 8, 40
 
 #: Inputs that are not finite, in the order in which the C makes them.
 NONFINITE = (nan, inf, -inf)
+
+#: Inputs that the preset refuses are looked for from the largest finite one down by powers of two, in steps that reach
+#: below every gain; between two that differ the step is halved so often. Beside the largest output, sums overflow now
+#: and then by their rounding alone: there the first steps are small. They are fractions, so that no two inputs have
+#: alike digits.
+COARSE = tuple(0.97 * k for k in range(66))
+FINE = (*(0.07 * k for k in range(100)), *(octaves for octaves in COARSE if octaves > 7))
+HALVINGS = 9
 
 Value = TypeVar("Value", int, float)
 Row = TypeVar("Row")
@@ -121,21 +129,20 @@ def _parts(length: int) -> Iterator[int]:
         done += part
 
 
-def selftest_text(emission: Emission) -> str:
-    """The self-test of an emission in floats."""
+def selftest_text(emission: Emission, inputs: Sequence[float]) -> str:
+    """The self-test of an emission in floats, from the inputs of its vectors."""
     c = dialect(emission)
 
     def text(value: float) -> str:
         return f"-{c.literal(0.0)}" if value == 0 and copysign(1.0, value) < 0 else c.literal(value)
 
     words = Wording(c.name, c.real, c.real, text, text, c.table, f"{c.macros}_MAX", emission.schedule is not None)
-    return source_of(words, _samples(emission))
+    return source_of(words, _samples(emission, inputs))
 
 
-def _samples(emission: Emission) -> Samples:
+def _samples(emission: Emission, inputs: Sequence[float]) -> Samples:
     model = emission.recursion()
     rows: list[Held] = []
-    inputs = vectors(emission)[0]
     variables: Sequence[float | None] = scheduled(emission, len(inputs)) or [None] * len(inputs)
     pairs = [(x, v) for x, v in zip(inputs, variables, strict=True) if isfinite(x) and (v is None or isfinite(v))]
     for (value, variable), held in chosen(pairs):
@@ -164,7 +171,46 @@ def _rests(emission: Emission, model: Recursion) -> list[Rest]:
         model.preset(value, levels[1])
         for output in (*levels, model.output(value)):
             found += [rest_of(model, (value, then), output, applied) for applied in levels if isfinite(output)]
+    found += [rest_of(model, (value, 0.0), output, levels[1]) for value, output in refusals(model, most)]
     return [each for each in found if isfinite(each.answer) and isfinite(each.after)]
+
+
+def refusals(model: Recursion, most: float) -> list[tuple[float, float]]:
+    """Finite inputs and outputs that preset refuses, for each field of the state that it can do so for one pair.
+
+    Notes
+    -----
+    A field is refused for where it overflows and those before it do not. Where two neighbouring sizes of the input have
+    different answers, the ratio of the two is halved :data:`HALVINGS` times: a band that is narrower, and holds none of
+    the sizes, is not found.
+    """
+    outputs = (0.0, most, -most) if model.sample.low is None and model.realization.integral else (0.0,)
+    found: dict[str, tuple[float, float]] = {}
+    for sign, output in product((1.0, -1.0), outputs):
+
+        def asked(octaves: float, sign: float = sign, output: float = output) -> str | None:
+            (value,) = in_format([sign * most * 2.0**-octaves], model.realization.format)
+            field = model.refused(value, output)
+            if field is not None:
+                found.setdefault(field, (value, output))
+            return field
+
+        places = [(octaves, asked(octaves)) for octaves in (FINE if output else COARSE)]
+        for (low, at_low), (high, at_high) in pairwise(places):
+            _between(asked, low, at_low, high, at_high, HALVINGS)
+    return list(found.values())
+
+
+def _between(
+    asked: Callable[[float], str | None], low: float, at_low: str | None, high: float, at_high: str | None, depth: int
+) -> None:
+    """Ask between two places until neighbours answer alike or are close."""
+    if at_low == at_high or depth == 0:
+        return
+    middle = (low + high) / 2
+    answer = asked(middle)
+    _between(asked, low, at_low, middle, answer, depth - 1)
+    _between(asked, middle, answer, high, at_high, depth - 1)
 
 
 def turns(low: Value, zero: Value, high: Value) -> tuple[tuple[Value, Value], ...]:

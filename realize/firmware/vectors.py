@@ -46,11 +46,11 @@ HEADROOM = 2.0**-40
 LEVELS = ((1, 0), (0, 512), (-1, 0), (0, -512), (-1, 0), (0, 512), (1, 0), (0, -512))
 
 
-def vectors_text(emission: Emission) -> str:
+def vectors_text(emission: Emission, inputs: Sequence[float], outputs: Sequence[float]) -> str:
     """Inputs and outputs as comma-separated C hexadecimal floats; before them the variable of a schedule."""
-    columns = list(vectors(emission))
+    columns = [list(inputs), list(outputs)]
     if emission.schedule is not None:
-        columns.insert(0, scheduled(emission, len(columns[0])))
+        columns.insert(0, scheduled(emission, len(inputs)))
     rows = [",".join(map(hexadecimal, row)) for row in zip(*columns, strict=True)]
     heading = "input,output" if emission.schedule is None else "variable,input,output"
     return "\n".join([heading, *rows]) + "\n"

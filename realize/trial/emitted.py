@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 import re
 from collections.abc import Mapping, Sequence
 from fractions import Fraction
@@ -12,13 +11,11 @@ from typing import Any, NamedTuple
 
 from realize.algebra.expression.tokens import printable, shown
 from realize.errors import RealizeError
-from realize.firmware.record import SCHEMA
+from realize.firmware.recorded import read_record, recorded_period_s
 from realize.trial.c_types import LETTERS, Value, read
 
 #: What every emission has besides update, which is the one that runs.
 FUNCTIONS = ("clear", "update", "output", "advance", "preset")
-
-_ENDING = ".record.json"
 
 
 class Code(NamedTuple):
@@ -96,7 +93,7 @@ def read_emitted(path: str) -> Emitted:
     RealizeError
         When the record or one of the files is missing, or cannot be understood.
     """
-    record = _record(path)
+    record = read_record(path)
     name = _name(path, record)
     header, source, table = f"{name}.h", f"{name}.c", f"{name}_vectors.csv"
     compiled = (header, source, *([f"{name}_schedule.h"] if "schedule" in record else []))
@@ -105,64 +102,17 @@ def read_emitted(path: str) -> Emitted:
     return Emitted(
         code,
         read_vectors(table, files[table], code),
-        str(_entry(path, record, "design", "transfer", kind=str)),
-        _period_s(path, record),
-        _changed(record, files),
+        record["design"]["transfer"],
+        recorded_period_s(record, path),
+        tuple(file for file, content in files.items() if record["files"].get(file) != sha256(content).hexdigest()),
     )
 
 
-def _record(path: str) -> dict[str, Any]:
-    if not path.endswith(_ENDING):
-        raise RealizeError(
-            shown(path), "not the name of a record", f"a file that ends in {_ENDING}", "the one that realize emit wrote"
-        )
-    content = _content(Path(path), "a record that realize emit wrote")
-    try:
-        record = json.loads(content)
-    except (ValueError, RecursionError):
-        raise RealizeError(path, "not JSON", "a record that realize emit wrote", "emit the design again") from None
-    schema = record.get("schema") if isinstance(record, dict) else None
-    if schema != SCHEMA:
-        raise _other_schema(path, schema)
-    return dict(record)
-
-
-def _other_schema(path: str, schema: object) -> RealizeError:
-    kind, _, number = str(schema).partition("/")
-    ours = int(SCHEMA.partition("/")[2])
-    if kind == SCHEMA.partition("/")[0] and number.isdecimal() and int(number) > ours:
-        return RealizeError(
-            path, f"a record of the newer schema {shown(str(schema))}", SCHEMA, "use the realize that wrote it"
-        )
-    found = "a file without a schema" if schema is None else f"the unknown schema {shown(str(schema))}"
-    return RealizeError(path, found, SCHEMA, "name a record that realize emit wrote")
-
-
-def _entry(path: str, record: Mapping[str, Any], *keys: str, kind: type) -> Any:
-    value: Any = record
-    for key in keys:
-        value = value.get(key) if isinstance(value, dict) else None
-    if not isinstance(value, kind):
-        raise RealizeError(path, f"no {'.'.join(keys)}", "a record as realize emit wrote it", "emit the design again")
-    return value
-
-
 def _name(path: str, record: Mapping[str, Any]) -> str:
-    name = str(_entry(path, record, "design", "name", kind=str))
+    name = str(record["design"]["name"])
     if not (name.isascii() and name.isidentifier()):
-        raise RealizeError(f"{path} design.name", shown(name), "a C identifier", "emit the design again")
+        raise RealizeError(f"{printable(path)}, design.name", shown(name), "a C identifier", "emit the design again")
     return name
-
-
-def _period_s(path: str, record: Mapping[str, Any]) -> Fraction:
-    text = str(_entry(path, record, "design", "sampling", "period_s", kind=str))
-    try:
-        period_s = Fraction(text)
-    except (ValueError, ZeroDivisionError):
-        period_s = Fraction(0)
-    if period_s <= 0:
-        raise RealizeError(f"{path} sampling.period_s", shown(text), "a time above zero", "emit the design again")
-    return period_s
 
 
 def _content(path: Path, what: str) -> bytes:
@@ -241,9 +191,3 @@ def _row(file: str, number: int, line: str, code: Code) -> list[Value]:
             f"{variable}an input that is a {code.input_type} and an output that is a {code.output_type}",
             "emit the design again",
         ) from None
-
-
-def _changed(record: Mapping[str, Any], files: Mapping[str, bytes]) -> tuple[str, ...]:
-    described = record.get("files")
-    hashes = described if isinstance(described, dict) else {}
-    return tuple(name for name, content in files.items() if hashes.get(name) != sha256(content).hexdigest())

@@ -6,11 +6,25 @@ Needs the extra ``target``.
 ``kernels.c`` and ``kernels.h`` beside this file are the yardstick: difference equations written by hand, of several
 formulations the one with the fewest instructions on each processor. They may use what emitted code may not: intrinsics,
 inline assembly, right shifts of negative numbers. Like is put beside like: the same coefficients, no clamp, no guard
-against what is not finite, where the kernel has none. The kernels of 32 bits keep the limited output in their history,
-where emitted code keeps the unlimited one in a word that holds it, here half as fine or a quarter: it multiplies by two
-or four after it has compared. Beside them stand the same equations with an output whose counts are so coarse that no
-limit can be reached: there emitted code compares nothing, as is proven, and the kernels still do. The two controllers
-keep the clamped output in their history, which emitted code must not do; theirs serve as a measure of cost only.
+against what is not finite, where the kernel has none.
+
+The kernels of 32 bits, and the two controllers, keep the limited output in their history, which emitted code must not
+do: it keeps the unlimited one. They serve as a measure of cost only, and say "beside" where the others have a goal. In
+32 bits the unlimited output needs a 33rd bit here, in the cascade a 34th: emitted code keeps it half as fine or a
+quarter, and multiplies by two or four while it limits. Like for like are the same equations with an output whose counts
+are so coarse that no limit can be reached: there emitted code compares nothing, as is proven, and the kernels still do.
+
+What stays above a tenth, beside the kernels of 32 bits and of packed samples, by instructions:
+
+- direct on cortex-m3, 27 to 24: one loads the pointer to the table of coefficients, which the kernel hides from the
+  compiler by inline assembly (without a table it would be four more); two are of the limit. Twice the kept output,
+  saturated, is ``adds, mov, it, eor`` after ``lsrs, orr``, where the kernel's ``lsls, cmp, ittt, orr`` decides and then
+  leaves what it expects to be rare to a branch, for which the C standard has no word.
+- cascade on rv32imac, 113 to 101: nine limit to a quarter of the range and multiply by four (``lui, blt, lui, addi,
+  blt, sub, srli, slli, or``), and are not there where no limit acts; the other three, one of them the load of the
+  pointer, are there as well.
+- int16 packed on cortex-m4f and cortex-m7f, 21 and 23 to 16: intrinsics multiply two pairs of halves and add both
+  products in one instruction, and load and pack two samples at once.
 
 Compiled alike, with ``-O2`` and nothing contracted; fed with the same inputs, saturating ones among them.
 """
@@ -54,14 +68,35 @@ PID = (Fraction("2.35"), Fraction("-3.61"), Fraction("1.37"))
 PID_POLE = Fraction("0.37")
 CLAMP = (Fraction("-0.9"), Fraction("1.1"))
 
-#: Where the kernels use inline assembly to keep a register, and an intrinsic to clamp.
-PINNED, CLAMPED_AT_ONCE = ("cortex-m4f",), ("cortex-m7f",)
+#: Where the kernels use inline assembly to keep a register.
+PINNED = ("cortex-m4f",)
+
+#: In place of a goal where the kernel keeps the limited output.
+BESIDE = "beside"
 
 Sections = Sequence[tuple[Sequence[str], Sequence[str]]]
 
 
 class Pair(NamedTuple):
-    """Emitted code and the kernel beside it; ``beyond`` are the processors where that uses more than the standard."""
+    """Emitted code and the kernel beside it.
+
+    Attributes
+    ----------
+    says : str
+        What it is.
+    kernel : str
+        Name of the kernel.
+    kinds : tuple of str
+        C types of input and output.
+    files : mapping
+        What is emitted.
+    scale : float
+        Of the inputs.
+    beyond : tuple of str
+        Processors where the kernel uses more than the standard.
+    alike : bool
+        Whether both compute the same: else the kernel keeps the limited output in its history.
+    """
 
     says: str
     kernel: str
@@ -69,6 +104,7 @@ class Pair(NamedTuple):
     files: Mapping[str, str]
     scale: float = 1.0
     beyond: tuple[str, ...] = ()
+    alike: bool = True
 
 
 def floats(
@@ -123,19 +159,18 @@ def pairs() -> list[Pair]:
         Pair("float32 section", "float32_transposed_two", real, floats(one), beyond=PINNED),
         Pair("float32 section, by hand in direct form I", "float32_direct_one", real, floats(one)),
         Pair("float32 cascade of two", "float32_two_sections", real, floats(two), beyond=PINNED),
-        Pair("float32 PI, clamped", "float32_pi", real, proportional_integral(), 2.0, CLAMPED_AT_ONCE),
-        Pair("float32 PID, clamped", "float32_pid", real, with_derivative(), 2.0, CLAMPED_AT_ONCE),
-        Pair("int32 direct", "int32_direct_one", words, integers(one, "direct", 32, 64), beyond=NAMES),
-        Pair(
-            "int32 error feedback", "int32_error_feedback", words, integers(one, "error-feedback", 32, 64), beyond=NAMES
-        ),
-        Pair("int32 cascade of two", "int32_two_sections", words, integers(two, "cascade", 32, 64), beyond=NAMES),
+        Pair("float32 PI, clamped", "float32_pi", real, proportional_integral(), 2.0, alike=False),
+        Pair("float32 PID, clamped", "float32_pid", real, with_derivative(), 2.0, alike=False),
         *(
-            Pair(f"{says}, proven in range", kernel, words, integers(form, name, 32, 64, per_count), beyond=NAMES)
-            for says, kernel, form, name, per_count in (
-                ("int32 direct", "int32_direct_one", one, "direct", 4),
-                ("int32 error feedback", "int32_error_feedback", one, "error-feedback", 4),
-                ("int32 cascade of two", "int32_two_sections", two, "cascade", 16),
+            pair
+            for says, kernel, form, name, coarse in (
+                ("int32 direct", "int32_direct_one", one, "direct", 2),
+                ("int32 error feedback", "int32_error_feedback", one, "error-feedback", 2),
+                ("int32 cascade of two", "int32_two_sections", two, "cascade", 4),
+            )
+            for pair in (
+                Pair(f"{says}, limited", kernel, words, integers(form, name, 32, 64), alike=False),
+                Pair(f"{says}, proven in range", kernel, words, integers(form, name, 32, 64, coarse), beyond=NAMES),
             )
         ),
         Pair("int16 direct", "int16_direct_one", shorts, direct_16, beyond=NAMES),
@@ -175,8 +210,8 @@ def rows(pair: Pair, targets: Sequence[Target]) -> list[list[str]]:
             name,
             *map(str, emitted[name]),
             *map(str, kernel[name]),
-            f"{ratio:.2f}{'!' * (ratio > goals[name])}",
-            f"{goals[name]}",
+            f"{ratio:.2f}{'!' * (pair.alike and ratio > goals[name])}",
+            f"{goals[name]}" if pair.alike else BESIDE,
         ]
         for name in emitted
         for ratio in [emitted[name][1] / kernel[name][1]]
@@ -190,7 +225,8 @@ def main(names: Sequence[str]) -> None:
         ["", "", "emitted", "", "", "by hand", "", "", "ratio of", "goal"],
         ["", "", "least", "median", "most", "least", "median", "most", "medians", ""],
     ]
-    print("instructions per sample, not cycles; ! above the goal")
+    print("instructions per sample, not cycles; ! above the goal; beside: by hand the limited output is kept, which")
+    print("emitted code must not do")
     print(figures_table(head, [row for pair in pairs() for row in rows(pair, targets)], first=2), end="")
 
 

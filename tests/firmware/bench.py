@@ -16,6 +16,7 @@ from pathlib import Path
 from typing import NamedTuple
 
 from realize.firmware import Emission, render_firmware, write_all
+from realize.firmware.integer import IntegerEmission, render_integer_firmware
 
 WARNINGS = (
     *("-pedantic", "-Wall", "-Wextra", "-Wconversion", "-Wdouble-promotion", "-Wshadow", "-Werror"),
@@ -28,6 +29,28 @@ GCC_TRAPS = ("-fsanitize=undefined", "-fsanitize-undefined-trap-on-error")
 #: One design in so many: prime to the number of options in the grid, so that every share has them all.
 SHARE = 5
 RUNNER = Path(__file__).with_name("runner.py")
+
+
+_RENDERED: dict[int, tuple[object, dict[str, str]]] = {}
+
+
+def rendered(emission: Emission | IntegerEmission) -> dict[str, str]:
+    """The files of an emission, made once for each object: designs of the grids are the same in every module."""
+    if id(emission) not in _RENDERED:
+        files = render_firmware(emission) if isinstance(emission, Emission) else render_integer_firmware(emission)
+        _RENDERED[id(emission)] = emission, files
+    return _RENDERED[id(emission)][1]
+
+
+def inputs_of(emission: Emission | IntegerEmission) -> list[str]:
+    """Inputs of the vectors, as their file has them."""
+    return [value for value, _ in vectors_of(emission)]
+
+
+def vectors_of(emission: Emission | IntegerEmission) -> list[tuple[str, str]]:
+    """Inputs and outputs of the vectors, as their file has them; what a schedule's variable is stands before them."""
+    rows = (line.split(",") for line in rendered(emission)[f"{emission.name}_vectors.csv"].splitlines()[1:])
+    return [(row[-2], row[-1]) for row in rows]
 
 
 class Toolchain(NamedTuple):
@@ -88,14 +111,11 @@ class Program:
 
 
 class Bench:
-    """A place to compile in, with the compiler's cache in it."""
+    """A place to compile in, with the compiler's cache in it, but for its runtime: that is built once for all."""
 
     def __init__(self, place: Path) -> None:
         self.place = place
-        self._environment = os.environ | {
-            "ZIG_GLOBAL_CACHE_DIR": str(place / "zig-global"),
-            "ZIG_LOCAL_CACHE_DIR": str(place / "zig-local"),
-        }
+        self._environment = os.environ | {"ZIG_LOCAL_CACHE_DIR": str(place / "zig-local")}
         self._count = 0
 
     def compiler(self, command: Sequence[str], where: Path) -> subprocess.CompletedProcess[str]:
@@ -119,7 +139,7 @@ class Bench:
         """A directory with the files of the emissions."""
         where = self.directory()
         for emission in emissions:
-            write_all(where, render_firmware(emission))
+            write_all(where, rendered(emission))
         return where
 
     def build(self, emissions: Sequence[Emission], toolchain: Toolchain, beside: str = "") -> Program:

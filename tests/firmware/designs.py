@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from fractions import Fraction
+from functools import cache
 from itertools import product
 from math import cos, pi
 from random import Random
@@ -85,7 +86,13 @@ def chains(target: FloatFormat) -> tuple[tuple[float, ...], ...]:
     return tuple(rounded(target, *chain) for chain in gains)
 
 
-def grid() -> Iterator[Emission]:
+@cache
+def grid() -> tuple[Emission, ...]:
+    """What :func:`made` makes, once: every module has the same objects."""
+    return tuple(made())
+
+
+def made() -> Iterator[Emission]:
     """Every kind of rest, chain, range, anti-windup, guard, storage and sign, in both formats; then odd ones."""
     kinds = ("hold-integral", "back-calculation", "none")
     options = list(product(kinds, (True, False), ("inline", "table"), ("subtract", "add")))

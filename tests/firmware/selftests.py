@@ -23,9 +23,6 @@ INSTRUMENTED = Toolchain(
 )
 
 
-#: Unoptimised, the compiler sets a structure to zero with it.
-MEMSET = "void *memset(void *to, int value, uintptr_t n) { char *p = to; while (n--) *p++ = (char)value; return to; }\n"
-
 #: Run by a process of its own, so that a trap ends that one: takes a library and a count, prints what it answers.
 RUN = """
 import ctypes, sys
@@ -48,7 +45,7 @@ def missed(bench: Bench, where: Path, names: Sequence[str], *flags: str) -> dict
     asked = [f"{f} ? branches((uintptr_t){f}, 1) : 0" for f in functions]
     declared = "".join(f"extern __attribute__((weak)) void {f}(void);" for f in functions)
     toolchain = INSTRUMENTED._replace(code=(*INSTRUMENTED.code, *flags))
-    found = _run(bench, where, names, toolchain, COVERAGE.read_text() + MEMSET + declared, [*tests, *asked])
+    found = _run(bench, where, names, toolchain, COVERAGE.read_text() + declared, [*tests, *asked])
     return {function: count for function, count in zip(functions, found[len(names) :], strict=True) if count}
 
 

@@ -8,8 +8,7 @@ from pathlib import Path
 import pytest
 
 from realize.firmware import Emission
-from realize.firmware.vectors import vectors
-from tests.firmware.bench import ZIG, Bench, Program, Toolchain
+from tests.firmware.bench import ZIG, Bench, Program, Toolchain, inputs_of, vectors_of
 from tests.firmware.designs import grid
 
 # every function visible, every branch as written
@@ -48,13 +47,12 @@ def called_by(emission: Emission, program: Path, *public: str) -> list[str]:
 
 
 def updates(emission: Emission) -> list[str]:
-    return [f"u {x.hex()}" for x in vectors(emission)[0]]
+    return [f"u {x}" for x in inputs_of(emission)]
 
 
 def obstructed(emission: Emission) -> list[str]:
     """The vectors through output and advance, the command applied; then some of the actuator's own, or no number."""
-    inputs, commands = vectors(emission)
-    work = [f"o {x.hex()}\na {x.hex()} {command.hex()}" for x, command in zip(inputs, commands, strict=True)]
+    work = [f"o {x}\na {x} {command}" for x, command in vectors_of(emission)]
     odd = [f"o {x.hex()}\na {x.hex()} {applied}" for x in (1.0, -1.0) for applied in ("-0x1p+100", "0x1p+100")]
     return [*work, *odd, *(["a 0x1p+0 nan", "a 0x1p+0 inf"] if emission.guard_nonfinite else [])]
 

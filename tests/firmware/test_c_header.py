@@ -12,7 +12,7 @@ from realize.arithmetic.formats import FLOAT32, FLOAT64, FloatFormat
 from realize.arithmetic.realization import Realization, Section
 from realize.firmware import Emission, render_firmware
 from realize.firmware.c_text import WIDTH
-from tests.firmware.bench import ZIG, Bench
+from tests.firmware.bench import ZIG, Bench, rendered
 from tests.firmware.designs import UNIT_RANGE, delta_section, grid, section
 
 
@@ -243,7 +243,7 @@ def test_without_a_range_there_are_no_limits_to_rely_on() -> None:
 
 def test_every_line_fits_and_every_field_says_what_it_holds() -> None:
     for emission in grid():
-        files = render_firmware(emission)
+        files = rendered(emission)
         text = files[f"{emission.name}.h"]
         fields = text.partition("typedef struct {\n")[2].partition("}")[0].splitlines()
         assert fields

@@ -13,7 +13,7 @@ import pytest
 from realize.arithmetic.formats import FORMATS
 from realize.arithmetic.realization import Realization
 from realize.firmware import Emission, render_firmware
-from tests.firmware.bench import WARNINGS, ZIG, Bench
+from tests.firmware.bench import WARNINGS, ZIG, Bench, rendered
 from tests.firmware.designs import PERIOD_S, UNIT_RANGE, grid, parts, rounded
 from tests.firmware.designs import emission as emission_of
 
@@ -146,7 +146,7 @@ def test_each_file_compiles_on_its_own(language: tuple[str, ...], emission: Emis
 
 @pytest.mark.parametrize("name", KNOWN)
 def test_the_only_include_is_float_h_and_every_global_name_is_prefixed(name: str) -> None:
-    text = render_firmware(KNOWN[name])[f"{name}.c"]
+    text = rendered(KNOWN[name])[f"{name}.c"]
     table = [f'"{name}_schedule.h"'] if KNOWN[name].schedule else []
     assert re.findall(r"#include (.*)", text) == [f'"{name}.h"', *table, "<float.h>"]
     names = re.findall(r"^(?:static inline |static )?(?:const )?\w+ \*?(\w+)[ (]", text, re.MULTILINE)

@@ -11,8 +11,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from realize.firmware import Emission
-from realize.firmware.vectors import vectors
-from tests.firmware.bench import Bench, Toolchain, bits, toolchains
+from tests.firmware.bench import Bench, Toolchain, bits, inputs_of, toolchains
 from tests.firmware.designs import grid, in_delta, random_emission
 
 NAMES = [toolchain.name for toolchain in toolchains()]
@@ -51,7 +50,7 @@ def exercise(index: int, emission: Emission) -> Exercise:
     """The vectors, then odd values, actuators that do not obey, and bumpless starts."""
     work = Exercise(emission)
     draw = Random(index)
-    work.update(vectors(emission)[0])
+    work.update([*map(float.fromhex, inputs_of(emission))])
     for _ in range(12):
         work.preset(_odd(draw, emission), _odd(draw, emission))
         for _ in range(6):

@@ -12,13 +12,14 @@ import pytest
 from realize.firmware import Emission, render_firmware
 from realize.firmware.record import record
 from realize.version import VERSION
+from tests.firmware.bench import rendered
 from tests.firmware.designs import UNIT_RANGE, grid
 
 DESIGNS = list(grid())
 
 
 def recorded(emission: Emission) -> dict[str, Any]:
-    return dict(json.loads(render_firmware(emission)[f"{emission.name}.record.json"]))
+    return dict(json.loads(rendered(emission)[f"{emission.name}.record.json"]))
 
 
 def test_its_keys_are_those_others_rely_on() -> None:

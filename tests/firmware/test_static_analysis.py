@@ -13,8 +13,9 @@ from pathlib import Path
 import pytest
 
 from realize.arithmetic.integer import STRUCTURES
-from realize.firmware import render_firmware, write_all
+from realize.firmware import write_all
 from realize.firmware.integer import IntegerEmission, render_integer_firmware
+from tests.firmware.bench import rendered
 from tests.firmware.designs import grid, scheduled
 from tests.firmware.integer.designs import WIDTHS
 from tests.firmware.integer.designs import grid as integer_grid
@@ -56,6 +57,9 @@ FLOAT_H = (
     *("-DDBL_MANT_DIG=53", "-DDBL_MIN_EXP=-1021", "-DDBL_MAX_EXP=1024"),
 )
 
+#: What a compiler for a processor without a long multiply defines.
+SHORT = "-D__ARM_ARCH_6M__"
+
 
 @pytest.fixture(scope="module")
 def files(tmp_path_factory: pytest.TempPathFactory) -> list[Path]:
@@ -66,9 +70,9 @@ def files(tmp_path_factory: pytest.TempPathFactory) -> list[Path]:
         (e.realization.format.name, e.realization.structure, e.anti_windup, e.coefficients): e for e in reversed(chosen)
     }
     for each in (*kinds.values(), *scheduled()):
-        write_all(where, render_firmware(each))
+        write_all(where, rendered(each))
     found: dict[tuple[object, ...], IntegerEmission] = {}
-    for one in integer_grid():
+    for one in sorted(integer_grid(), key=lambda one: one.coefficients):  # inline first: it has two ways to multiply
         found.setdefault((one.realization.structure, one.realization.widths), one)
         found.setdefault((one.anti_windup, one.coefficients, one.realization.widths.bits), one)
     assert {(structure, widths) for structure in STRUCTURES for widths in WIDTHS} - {*found} == set()
@@ -92,6 +96,13 @@ def complaints(tool: str, options: tuple[str, ...], after: tuple[str, ...], file
         return "".join(pool.map(run, (files[::2], files[1::2])))
 
 
+def with_short_products(files: list[Path]) -> list[Path]:
+    """Those that have other code for processors without a long multiply."""
+    found = [path for path in files if "SHORT_PRODUCTS" in path.read_text()]
+    assert len(found) >= len(STRUCTURES)
+    return found
+
+
 def tidy(off: dict[str, str]) -> tuple[str, ...]:
     checks = ",".join(("-*", *(f"{family}-*" for family in FAMILIES), *(f"-{check}" for check in off)))
     return "--quiet", f"--checks={checks}"
@@ -108,13 +119,24 @@ def test_clang_tidy_finds_nothing(files: list[Path]) -> None:
 
 
 def test_clang_tidy_finds_nothing_in_the_code_for_short_products(files: list[Path]) -> None:
-    integers = [path for path in files if path.name.startswith("i") and "selftest" not in path.name]
-    after = ("--", "-std=c99", "-D__ARM_ARCH_6M__")
-    assert complaints("clang-tidy", tidy(OFF), after, integers) == ""
+    assert complaints("clang-tidy", tidy(OFF), ("--", "-std=c99", SHORT), with_short_products(files)) == ""
 
 
 def test_cppcheck_finds_nothing(files: list[Path]) -> None:
     assert complaints("cppcheck", CPPCHECK, (), files) == ""
+
+
+def test_cppcheck_finds_nothing_in_the_code_for_short_products(files: list[Path]) -> None:
+    assert complaints("cppcheck", (*CPPCHECK, SHORT), (), with_short_products(files)) == ""
+
+
+def test_cppcheck_reads_the_code_for_short_products_where_it_is_told_to(tmp_path: Path) -> None:
+    fault = next(source for source, (tool, _) in FAULTS.items() if tool == "cppcheck")
+    path = tmp_path / "fault.c"
+    path.write_text(
+        f"#if defined(__ARM_ARCH_6M__)\n#define x_SHORT_PRODUCTS\n#endif\n#ifdef x_SHORT_PRODUCTS\n{fault}\n#endif\n"
+    )
+    assert [bool(complaints("cppcheck", (*CPPCHECK, *more), (), [path])) for more in ((), (SHORT,))] == [False, True]
 
 
 FAULTS = {

@@ -47,6 +47,15 @@ def write(
     record = {
         "schema": "realize/1",
         "design": {"name": "hand", "transfer": "1", "sampling": {"period_s": "1/100"}},
+        "causal": {},
+        "method": "",
+        "structure": "",
+        "arithmetic": "",
+        "integral": [],
+        "sections": [],
+        "checks": [],
+        "accepted": [],
+        "tool": {},
         "files": {name: sha256(text.encode()).hexdigest() for name, text in files.items()},
     }
     path = directory / "hand.record.json"

@@ -188,14 +188,14 @@ DAMAGE: dict[str, tuple[Callable[[Path], object], str]] = {
     "no record": (_without(RECORD), "there is no such file"),
     "not JSON": (_written(RECORD, b"{"), "not JSON"),
     "not text": (_written(RECORD, b"\xff\xfe\x00"), "not JSON"),
-    "a list": (_written(RECORD, b"[1]"), "without a schema"),
+    "a list": (_written(RECORD, b"[1]"), "no record: it names no schema"),
     "deep": (_written(RECORD, b"[" * 200_000), "not JSON"),
     "newer schema": (_replaced(RECORD, "realize/1", "realize/2"), 'a record of the newer schema "realize/2"'),
     "other schema": (_replaced(RECORD, "realize/1", "other"), 'the unknown schema "other"'),
-    "no name": (_replaced(RECORD, '"name"', '"nome"'), "no design.name"),
+    "no name": (_replaced(RECORD, '"name"', '"nome"'), "design.name: nothing"),
     "a path for a name": (_replaced(RECORD, '"hand"', '"../hand"'), "a C identifier"),
-    "no period": (_replaced(RECORD, '"1/100"', '"1/0"'), "a time above zero"),
-    "period a number": (_replaced(RECORD, '"1/100"', "5"), "no design.sampling.period_s"),
+    "no period": (_replaced(RECORD, '"1/100"', '"1/0"'), "design.sampling.period_s"),
+    "period a number": (_replaced(RECORD, '"1/100"', "5"), "design.sampling.period_s"),
     "no declaration": (_replaced("hand.h", "hand_update", "hand_later"), "no declaration of hand_update"),
     "unknown type": (_replaced("hand.h", "int32_t input);", "long input);"), "no declaration of hand_update"),
     "no heading": (_replaced("hand_vectors.csv", "input,output", "1,1"), "no vectors"),
@@ -234,14 +234,15 @@ def test_a_value_that_the_type_does_not_hold_is_named(row: str, kind: str, tmp_p
         trial(write(tmp_path, IDENTITY, [(x, y)], (kind, kind)))
 
 
-def test_other_names_are_no_record(tmp_path: Path) -> None:
-    with pytest.raises(RealizeError, match="not the name of a record"):
-        trial(str(tmp_path / "hand.toml"))
+def test_other_files_are_no_record(tmp_path: Path) -> None:
+    write(tmp_path, IDENTITY, [(1, 1)])
+    with pytest.raises(RealizeError, match=r"not JSON(.|\n)*a record that realize emit wrote"):
+        trial(str(tmp_path / "hand.c"))
 
 
 def test_a_directory_is_no_record(tmp_path: Path) -> None:
     (tmp_path / "a.record.json").mkdir()
-    with pytest.raises(RealizeError, match="cannot be read"):
+    with pytest.raises(RealizeError, match="a directory"):
         trial(str(tmp_path / "a.record.json"))
 
 

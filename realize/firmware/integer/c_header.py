@@ -10,18 +10,18 @@ from realize.arithmetic.integer.quiet import Answered, IntegrationTimes, Quiet
 from realize.arithmetic.sample import BACK_CALCULATION, HOLD_INTEGRAL
 from realize.firmware.c_preamble import (
     CAUTION,
+    Provenance,
     accepted_text,
     calls,
     counted,
-    labelled,
     listed,
     loop_lines,
     paragraph,
-    period_macros,
-    period_text,
+    prototypes,
+    provenance,
     range_text,
-    selftest_prototype,
     signatures,
+    skeleton,
     unprotected,
 )
 from realize.firmware.c_text import comment, integer_constant, number_text, wrapped
@@ -43,29 +43,14 @@ FORMS = {
 
 def header_text(emission: IntegerEmission, c: Spelling, silence: Quiet) -> str:
     """The whole header."""
-    lines = [
-        *comment(_preamble(emission, c, silence)),
-        f"#ifndef {c.name}_H",
-        f"#define {c.name}_H",
-        "",
-        "#include <stdint.h>",
-        "",
-        *period_macros(c.name, emission.realization.period_s),
-        *_limits(c),
-        "#ifdef __cplusplus",
-        'extern "C" {',
-        "#endif",
-        "",
-        *_state(c),
-        *(_table(c) if c.table else []),
-        *_prototypes(c),
-        "#ifdef __cplusplus",
-        "}",
-        "#endif",
-        "",
-        f"#endif /* {c.name}_H */",
-    ]
-    return "\n".join(lines) + "\n"
+    return skeleton(
+        c.name,
+        _preamble(emission, c, silence),
+        emission.realization.period_s,
+        includes=["#include <stdint.h>", ""],
+        limits=_limits(c),
+        declared=[*_state(c), *(_table(c) if c.table else []), *_prototypes(c)],
+    )
 
 
 # ---------------------------------------------------------------- the first comment
@@ -79,7 +64,7 @@ def _preamble(emission: IntegerEmission, c: Spelling, silence: Quiet) -> list[st
         ),
         "",
         *([*wrapped(emission.about), ""] if emission.about else []),
-        *_provenance(emission),
+        *provenance(emission, _provenance(emission)),
         "",
         *paragraph("Calls", calls(name)),
         *paragraph("Feed-through", _feed_through(c)),
@@ -94,27 +79,17 @@ def _preamble(emission: IntegerEmission, c: Spelling, silence: Quiet) -> list[st
     ]
 
 
-def _provenance(emission: IntegerEmission) -> list[str]:
-    realization = emission.realization
-    interface = realization.program.interface
-    entries = [
-        ("revision", emission.revision),
-        ("requirement", emission.requirement),
-        ("author", emission.author),
-        ("transfer", f"G(s) = {emission.transfer_text}"),
-        *emission.particulars,
-        ("method", emission.method),
-        ("sample period", f"{period_text(realization.period_s)} s (rate {number_text(1 / realization.period_s)} Hz)"),
-        ("structure", _structure(emission)),
-        ("arithmetic", _widths(emission)),
-        ("input", f"the input (for a controller the error, reference minus measurement){_input_text(emission)}"),
-        ("input count", _count_text(interface.input, emission.input_unit)),
-        ("output", f"the output (for a controller the command; so called below){_output_text(emission)}"),
-        ("output count", _count_text(interface.output, emission.output_unit)),
-        ("gain", _gain(emission)),
-        ("anti-windup", _anti_windup(emission)),
-    ]
-    return labelled(entries)
+def _provenance(emission: IntegerEmission) -> Provenance:
+    interface = emission.realization.program.interface
+    return Provenance(
+        structure=_structure(emission),
+        arithmetic=_widths(emission),
+        input=_input_text(emission),
+        input_count=_count_text(interface.input, emission.input_unit),
+        output=_output_text(emission),
+        output_count=_count_text(interface.output, emission.output_unit),
+        more=(("gain", _gain(emission)), ("anti-windup", _anti_windup(emission))),
+    )
 
 
 def _structure(emission: IntegerEmission) -> str:
@@ -211,8 +186,8 @@ def _proven(emission: IntegerEmission, c: Spelling) -> list[str]:
     return [
         "from a cleared state, and from one set by preset, no state and no sum overflows, whatever the input; the "
         f"least room is {bits}, in the sum for {where}.{table}",
-        f"while no limit acts, rounding moves the output by at most {ceiling_text(proof.output_error)} counts, its own "
-        "rounding included",
+        f"from a cleared state, while no limit acts, rounding moves the output by at most "
+        f"{ceiling_text(proof.output_error)} counts, its own rounding included",
     ]
 
 
@@ -389,36 +364,20 @@ def _table(c: Spelling) -> list[str]:
 
 def _prototypes(c: Spelling) -> list[str]:
     interface = c.program.interface
-    declared = signatures(c.name, port_type(interface.input), port_type(interface.output), table=c.table)
-    clear, update, output, advance, preset = (signature + ";" for signature in declared)
-    return [
-        "/* All state zero: at rest at the input that stands for zero. */",
-        clear,
-        "",
-        *comment(wrapped("One sample: the command for the input, then the state moved on with it.")),
-        update,
-        "",
-        *comment(wrapped(_OUTPUT_SAYS)),
-        output,
-        "",
-        *comment(wrapped(_advance_says(c))),
-        advance,
-        "",
-        *comment(wrapped(_preset_says(c))),
-        preset,
-        "",
-        *selftest_prototype(c.name),
-    ]
+    says = (
+        "All state zero: at rest at the input that stands for zero.",
+        "One sample: the command for the input, then the state moved on with it.",
+        "The clamped command for the input, with the least work before the actuator; the state does not move on yet.",
+        _advance_says(c),
+        _preset_says(c),
+    )
+    types = port_type(interface.input), port_type(interface.output)
+    return prototypes(c.name, signatures(c.name, *types, table=c.table), says)
 
 
 def _uses_applied(c: Spelling) -> bool:
     integral = c.program.integral
     return integral is not None and (c.program.hold or integral.tracking != 0)
-
-
-_OUTPUT_SAYS = (
-    "The clamped command for the input, with the least work before the actuator; the state does not move on yet."
-)
 
 
 def _advance_says(c: Spelling) -> str:

@@ -10,7 +10,7 @@ from realize.firmware.integer.emission import IntegerEmission
 from realize.firmware.integer.record import record_text
 from realize.firmware.integer.selftest import selftest_text
 from realize.firmware.integer.spelling import Spelling
-from realize.firmware.integer.vectors import vectors_text
+from realize.firmware.integer.vectors import vectors, vectors_text
 
 
 def render_integer_firmware(emission: IntegerEmission) -> dict[str, str]:
@@ -35,10 +35,11 @@ def render_integer_firmware(emission: IntegerEmission) -> dict[str, str]:
     name = emission.name
     spelling = Spelling(emission, settle(emission.realization.program))
     silence = quiet(emission.realization, FEW_SAMPLES, FEW_STATES)
+    inputs, outputs = vectors(emission)
     files = {
         f"{name}.h": header_text(emission, spelling, silence),
         f"{name}.c": source_text(spelling),
-        f"{name}_selftest.c": selftest_text(emission),
-        f"{name}_vectors.csv": vectors_text(emission),
+        f"{name}_selftest.c": selftest_text(emission, inputs),
+        f"{name}_vectors.csv": vectors_text(inputs, outputs),
     }
     return files | {f"{name}.record.json": record_text(emission, files, silence)}

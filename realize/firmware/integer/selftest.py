@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from fractions import Fraction
 from math import ceil
 
@@ -10,15 +11,14 @@ from realize.arithmetic.integer.program import Program
 from realize.firmware.c_text import integer_constant
 from realize.firmware.integer.emission import IntegerEmission
 from realize.firmware.integer.spelling import port_type
-from realize.firmware.integer.vectors import vectors
 from realize.firmware.selftest import Held, Samples, Wording, chosen, rest_of, source_of, turns
 
 #: The most samples an input is held for, to wind an integral up: more would take longer than all else in an emission.
 MOST_WINDING = 8192
 
 
-def selftest_text(emission: IntegerEmission) -> str:
-    """The self-test of an emission in integers."""
+def selftest_text(emission: IntegerEmission, inputs: Sequence[int]) -> str:
+    """The self-test of an emission in integers, from the inputs of its vectors."""
     interface = emission.realization.program.interface
     words = Wording(
         emission.name,
@@ -29,7 +29,7 @@ def selftest_text(emission: IntegerEmission) -> str:
         emission.coefficients == "table",
         "",
     )
-    return source_of(words, _samples(emission))
+    return source_of(words, _samples(emission, inputs))
 
 
 def _constant(value: float) -> str:
@@ -38,10 +38,10 @@ def _constant(value: float) -> str:
     return text
 
 
-def _samples(emission: IntegerEmission) -> Samples:
+def _samples(emission: IntegerEmission, inputs: Sequence[int]) -> Samples:
     model, port = emission.recursion(), emission.realization.program.interface
-    inputs = [*vectors(emission)[0], *_winding(emission.realization.program)]
-    rows = [Held(value, held, model.run([value] * held)[-1]) for value, held in chosen(inputs)]
+    played = [*inputs, *_winding(emission.realization.program)]
+    rows = [Held(value, held, model.run([value] * held)[-1]) for value, held in chosen(played)]
     least, most = type_range(port.output.type)
     levels = (least, port.output.offset + (port.output.low + port.output.high) // 2, most)
     rests = []

@@ -26,6 +26,9 @@ NARROW, WIDE = 32, 64
 #: Bits of a constant that processors hold in an instruction; they put longer ones together, or load them.
 SHORT = 16
 
+#: Terms of a sum of which the order does not matter.
+_FEW = 2
+
 #: Local of the input, less its offset and within its limits; the parameter has the shorter name.
 INPUT_COUNT = "input_count"
 
@@ -165,25 +168,45 @@ class Spelling:
         return INPUT_COUNT if name == INPUT else name.replace("state.", "state->")
 
     def pieces(self, terms: Sequence[Term], bits: int, first: str | None = None) -> list[str]:
-        """A sum in an accumulator, each piece after the first with its operator: added from left to right."""
-        signed = [(False, self.cast(first, bits))] if first else []
-        for _, run in groupby(terms, key=lambda term: self._shared_shift(term, bits)):
+        """A sum in an accumulator, each piece after the first with its operator: added from left to right.
+
+        Notes
+        -----
+        Sums of long products alone begin with the recursion, the first product of it before ``first``, and end with
+        the newest input: of all orders of the sums that ``tests/benchmarks`` measures that is the one which costs
+        least on the whole. Its registers are free soon, and what is widened is added to a product instead of becoming
+        an accumulator.
+        """
+        together = bits == WIDE and len(terms) > _FEW and all(self.in_halves(term) for term in terms)
+        signed = []
+        for _, run in groupby(_by_age(terms) if together else terms, key=lambda term: self._shared_shift(term, bits)):
             signed += self._run(tuple(run), bits)
+        if first:
+            signed.insert(1 if together else 0, (False, self.cast(first, bits)))
         return joined(signed) or ["0"]
 
-    def by_columns(self, terms: Sequence[Term], bits: int) -> bool:
-        """Whether a sum can be added up by columns of halves: where its products are long and their factors known."""
-        return bits == WIDE and any(self.in_columns(term) for term in terms)
+    def by_halves(self, terms: Sequence[Term], bits: int) -> bool:
+        """Whether a sum can be added up by halves: where its products are long and their factors known."""
+        return bits == WIDE and any(self.in_halves(term) for term in terms)
 
-    def in_columns(self, term: Term) -> bool:
+    def in_halves(self, term: Term) -> bool:
         """Whether a term is a product of two long words with nothing to shift."""
         short = self.variable_bits(term.variable) == NARROW
         return term.name is not None and term.shift == 0 and short and bool(self.looked_up)
 
-    def column(self, term: Term) -> tuple[str, str]:
-        """Coefficient, its sign included, and variable of a term in columns."""
+    def factors(self, term: Term) -> tuple[str, str]:
+        """Coefficient, its sign included, and variable of a product."""
         field, _, minus = self._found(self.fields, term)
         return f"{'-' if minus else ''}{self.coefficient(field)}", self.variable(term.variable)
+
+    def factor(self, term: Term) -> int:
+        """The coefficient that :meth:`factors` names."""
+        _, stored, minus = self._found(self.fields, term)
+        return -stored if minus else stored
+
+    def largest_upper(self, variable: str) -> int:
+        """No larger magnitude has the upper half of a variable."""
+        return max(1, self._size(variable) >> SHORT)
 
     def _shared_shift(self, term: Term, bits: int) -> int:
         """The shift that a product leaves to those beside it; 0 for one that has it in its constant."""
@@ -193,7 +216,7 @@ class Spelling:
     def _run(self, terms: tuple[Term, ...], bits: int) -> list[tuple[bool, str]]:
         """Products that share a power of two, added up before they are multiplied by it, where that sum has room."""
         power = 1 << self._shared_shift(terms[0], bits)
-        largest = sum(self._factor(term) * self._size(term.variable) * power for term in terms if term.name)
+        largest = sum(self._largest_factor(term) * self._size(term.variable) * power for term in terms if term.name)
         if power == 1 or len(terms) == 1 or largest >> bits - 1:
             return [self.piece(term, bits) for term in terms]
         (minus, first), *others = (self.piece(term._replace(shift=0), bits) for term in terms)
@@ -211,9 +234,9 @@ class Spelling:
         if term.name is None:
             return term.stored < 0, self.cast(term.variable, bits) + times(power)
         field, _, minus = self._found(self.fields, term)
-        return minus, self._product(field, self._factor(term), power, term.variable, bits)
+        return minus, self._product(field, self._largest_factor(term), power, term.variable, bits)
 
-    def _factor(self, term: Term) -> int:
+    def _largest_factor(self, term: Term) -> int:
         """No larger magnitude can stand for a coefficient."""
         return 1 << self.program.bits - 1 if self.table else abs(term.stored)
 
@@ -266,6 +289,13 @@ class Spelling:
             count += 1
             field = f"{name}_{count}"
         return field, stored, minus
+
+
+def _by_age(terms: Sequence[Term]) -> list[Term]:
+    """A sum's terms, the recursion first, then from the oldest input to the newest."""
+    recursion = [term for term in terms if is_recursive(str(term.name))]
+    others = [term for term in terms if not is_recursive(str(term.name))]
+    return [*recursion, *sorted(others, key=lambda term: str(term.name), reverse=True)]
 
 
 def joined(signed: Sequence[tuple[bool, str]]) -> list[str]:

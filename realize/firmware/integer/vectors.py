@@ -34,9 +34,9 @@ MOST_HELD = 384
 LEVELS = (UNIT, -512, -UNIT, 512, UNIT, 512, -UNIT, -512)
 
 
-def vectors_text(emission: IntegerEmission) -> str:
+def vectors_text(inputs: Sequence[int], outputs: Sequence[int]) -> str:
     """Inputs and outputs as comma-separated integers."""
-    rows = [f"{x},{y}" for x, y in zip(*vectors(emission), strict=True)]
+    rows = [f"{x},{y}" for x, y in zip(inputs, outputs, strict=True)]
     return "\n".join(["input,output", *rows]) + "\n"
 
 

@@ -7,8 +7,8 @@ from collections.abc import Sequence
 from pathlib import Path
 
 from realize.firmware import write_all
-from realize.firmware.integer import IntegerEmission, render_integer_firmware
-from tests.firmware.bench import WARNINGS, ZIG, Bench, Program, Toolchain
+from realize.firmware.integer import IntegerEmission
+from tests.firmware.bench import WARNINGS, ZIG, Bench, Program, Toolchain, rendered
 
 INTEGER_WARNINGS = (*WARNINGS, "-Wsign-conversion", "-Wsign-compare", "-Wstrict-overflow=2")
 #: The wrapper around clang reads ``undefined`` only where it stands alone.
@@ -45,7 +45,7 @@ class IntegerBench(Bench):
         """A directory with the files of the emissions."""
         where = self.directory()
         for emission in emissions:
-            write_all(where, render_integer_firmware(emission))
+            write_all(where, rendered(emission))
         return where
 
     def build_integers(self, emissions: Sequence[IntegerEmission], toolchain: Toolchain) -> Program:

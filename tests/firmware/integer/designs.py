@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 from fractions import Fraction
+from functools import cache
 from itertools import product
 from random import Random
 
@@ -116,7 +117,13 @@ def emission(
     )
 
 
-def grid() -> Iterator[IntegerEmission]:
+@cache
+def grid() -> tuple[IntegerEmission, ...]:
+    """What :func:`made` makes, once: every module has the same objects."""
+    return tuple(made())
+
+
+def made() -> Iterator[IntegerEmission]:
     """Every transfer, structure and width that go together; ends and options in turn."""
     options = list(product(ANTI_WINDUP, ("inline", "table"), ("subtract", "add")))
     for count, (transfer, structure, widths) in enumerate(product(TRANSFERS, STRUCTURES, WIDTHS)):

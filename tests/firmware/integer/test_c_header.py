@@ -7,7 +7,8 @@ from fractions import Fraction
 import pytest
 
 from realize.arithmetic.integer.quiet import FEW_SAMPLES, FEW_STATES, quiet
-from realize.firmware.integer import IntegerEmission, render_integer_firmware
+from realize.firmware.integer import IntegerEmission
+from tests.firmware.bench import rendered
 from tests.firmware.integer.designs import INPUTS, OUTPUTS, WIDTHS, emission, grid
 
 LISTED = list(grid())
@@ -15,7 +16,7 @@ LISTED = list(grid())
 
 def prose(one: IntegerEmission) -> str:
     """The first comment, as running text."""
-    text = render_integer_firmware(one)[f"{one.name}.h"]
+    text = rendered(one)[f"{one.name}.h"]
     return " ".join(text.partition("*/")[0].replace("\n * ", " ").replace("\n *", " ").split())
 
 

@@ -6,7 +6,7 @@ import re
 import subprocess
 import sys
 from collections.abc import Sequence
-from itertools import product
+from fractions import Fraction
 from random import Random
 
 import pytest
@@ -19,7 +19,7 @@ from realize.design import Signal
 from realize.firmware import write_all
 from realize.firmware.integer import IntegerEmission, render_integer_firmware
 from realize.firmware.integer.vectors import vectors
-from tests.firmware.bench import ZIG, Program, Toolchain, bits
+from tests.firmware.bench import ZIG, Program, Toolchain, bits, inputs_of, rendered
 from tests.firmware.integer.bench import ZIG_TRAPS, IntegerBench, toolchains
 from tests.firmware.integer.designs import INPUTS, OUTPUTS, WIDE_INPUTS, WIDTHS, emission, grid, signal, some_count
 
@@ -60,7 +60,7 @@ def exercise(index: int, emission: IntegerEmission) -> Exercise:
     work, draw = Exercise(emission), Random(index)
     interface = emission.realization.program.interface
     incoming, outgoing = type_range(interface.input.type), type_range(interface.output.type)
-    work.update(vectors(emission)[0])
+    work.update([*map(int, inputs_of(emission))])
     for _ in range(12):
         work.preset(some_count(draw, *incoming), some_count(draw, *outgoing))
         for _ in range(6):
@@ -198,25 +198,29 @@ def test_coefficients_are_swapped_whole_between_samples(integer_bench: IntegerBe
     assert built.run(commands) == expected
 
 
-def output_of_int32(low: int, high: int) -> Signal:
-    """Counts of the size of those of the input."""
-    scale = 200_000_000
-    return signal(f"{low}/{scale}", f"{high}/{scale}", f"1/{scale}", 0, "int32")
+def output_of_int32(low: int, high: int, finer: str) -> Signal:
+    """Counts of the size of those of the input, or so many times finer."""
+    scale = 200_000_000 * Fraction(finer)
+    return signal(str(low / scale), str(high / scale), str(1 / scale), 0, "int32")
 
 
-#: Limits of a command that is a power of two times what 32 bits hold: at the ends of the type, odd, on one side.
-LIMITS = [(-(2**31), 2**31 - 1), (-1_000_000_001, 1_500_000_003), (0, 2**31 - 1), (-2_000_000_001, 0), (-5, 3)]
+#: Limits of a command that is a power of two times what 32 bits hold: at the ends of the type, odd, on one side. How
+#: many times finer its counts are than those of the input.
+LIMITS = [
+    *((-(2**31), 2**31 - 1, finer) for finer in ("1/2", "1", "3/2", "2")),
+    *((-1_000_000_001, 1_500_000_003, "1"), (0, 2**31 - 1, "1"), (-2_000_000_001, 0, "1"), (-5, 3, "1")),
+]
 
 
 def test_limits_beyond_what_a_variable_holds_are_those_of_the_model(integer_bench: IntegerBench) -> None:
     ends = [(WIDE_INPUTS["all of int32"], output_of_int32(*limits)) for limits in LIMITS]
-    forms = ("direct", "cascade", "error-feedback")
-    works = [
-        exercise(k, emission(f"late{k}", "notch", form, WIDTHS[2], pair))
-        for k, (form, pair) in enumerate(product(forms, ends))
-    ]
-    sources = [render_integer_firmware(work.emission)[f"{work.emission.name}.c"] for work in works]
-    assert all(re.search(r"The command, \d+ times what is given, held", source) for source in sources)
+    forms = [("direct", pair) for pair in ends] + [(form, ends[1]) for form in ("cascade", "error-feedback")]
+    works = [exercise(k, emission(f"late{k}", "notch", form, WIDTHS[2], pair)) for k, (form, pair) in enumerate(forms)]
+    sources = [rendered(work.emission)[f"{work.emission.name}.c"] for work in works]
+    powers = [re.findall(r"The command, (\d+) times what is given, held", source) for source in sources]
+    assert all(powers)
+    for power, way in (("2", "_saturated("), ("4", "_within("), ("4", "if (unclamped >="), ("8", "if (unclamped >=")):
+        assert any(way in source and power == found for source, (found,) in zip(sources, powers, strict=True))
     program = integer_bench.build_integers([work.emission for work in works], TOOLCHAINS[0])
     assert mismatches(program.run([command for work in works for command in work.commands]), works) == []
 

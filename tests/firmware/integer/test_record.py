@@ -10,13 +10,13 @@ from typing import Any
 
 import pytest
 
-from realize.arithmetic.integer import STRUCTURES, stored_integer_pulse
+from realize.arithmetic.integer import STRUCTURES, Widths, stored_integer_pulse
 from realize.arithmetic.integer.quiet import FEW_SAMPLES, FEW_STATES, quiet
-from realize.errors import Refused
 from realize.firmware.integer import IntegerEmission, render_integer_firmware
 from realize.firmware.integer.c_header import FORMS
 from realize.firmware.integer.record import ceiling_text
-from tests.firmware.integer.designs import TRANSFERS, WIDTHS, emission
+from tests.firmware.bench import rendered
+from tests.firmware.integer.designs import WIDTHS, emission, grid
 
 Entry = dict[str, Any]
 
@@ -25,23 +25,19 @@ SETTLING = 3000
 
 
 def document(one: IntegerEmission) -> Entry:
-    return dict(json.loads(render_integer_firmware(one)[f"{one.name}.record.json"]))
+    return dict(json.loads(rendered(one)[f"{one.name}.record.json"]))
 
 
-def designs() -> list[tuple[str, IntegerEmission]]:
-    found = []
-    for transfer in TRANSFERS:
-        for structure in STRUCTURES:
-            for widths in WIDTHS[::2]:
-                try:
-                    one = emission("x", transfer, structure, widths, options=("hold-integral", "table", "add"))
-                except Refused:
-                    continue
-                found.append((f"{transfer} {structure} {widths.bits}", one))
-    return found
+#: Designs of 16 and 32 bits with the widest sums, by what they are.
+DESIGNS = {
+    f"{one.name} {one.realization.structure} {one.realization.widths.bits}": one
+    for one in grid()
+    if one.realization.widths in WIDTHS[::2]
+}
 
 
-DESIGNS = dict(designs())
+def chosen(transfer: str, structure: str, widths: Widths) -> IntegerEmission:
+    return emission("x", transfer, structure, widths, options=("hold-integral", "table", "add"))
 
 
 def value(entry: Entry) -> Fraction:
@@ -101,7 +97,7 @@ def evaluated(p: tuple[Fraction, ...], z: Fraction) -> Fraction:
 
 
 def test_delta_record_gives_the_stored_numbers_under_their_names() -> None:
-    section = document(DESIGNS["notch delta 16"])["sections"][0]
+    section = document(chosen("notch", "delta", WIDTHS[0]))["sections"][0]
     assert set(section["coefficients"]) == {"d", "c1", "c2", "a1", "a2"}
     stored = {name: value(entry) for name, entry in section["coefficients"].items()}
     # z^2 + a1 z + a2 = (z - 1)^2 + A1 (z - 1) + A2
@@ -110,14 +106,14 @@ def test_delta_record_gives_the_stored_numbers_under_their_names() -> None:
 
 
 def test_normal_record_gives_the_stored_numbers_under_their_names() -> None:
-    section = document(DESIGNS["notch normal 32"])["sections"][0]
+    section = document(chosen("notch", "normal", WIDTHS[2]))["sections"][0]
     stored = {name: value(entry) for name, entry in section["coefficients"].items()}
     assert set(stored) == {"s", "w", "c1", "c2", "d"}
     assert [value(a) for a in section["a"]] == [-2 * stored["s"], stored["s"] ** 2 + stored["w"] ** 2]
 
 
 def test_signals_are_the_words_and_sums_with_room_to_spare() -> None:
-    signals = document(DESIGNS["pid error-feedback 16"])["signals"]
+    signals = document(chosen("pid", "error-feedback", WIDTHS[0]))["signals"]
     words = {entry["name"]: entry for entry in signals["words"]}
     sums = {entry["name"]: entry for entry in signals["accumulators"]}
     assert {"input", "integral1", "section1_output"} <= set(words)
@@ -128,7 +124,7 @@ def test_signals_are_the_words_and_sums_with_room_to_spare() -> None:
 
 
 def test_files_are_those_of_the_emission_and_the_tool_is_named() -> None:
-    one = DESIGNS["pi cascade 16"]
+    one = chosen("pi", "cascade", WIDTHS[0])
     files = render_integer_firmware(one)
     record = document(one)
     own = {name: sha256(text.encode()).hexdigest() for name, text in files.items() if not name.endswith(".json")}

@@ -84,7 +84,7 @@ def test_attaining_input_attains_the_largest_command_of_all_inputs() -> None:
 
 def test_text_is_a_line_for_each_sample_under_a_heading() -> None:
     one = emission("x", "pi", "cascade", WIDTHS[0])
-    lines = vectors_text(one).splitlines()
+    lines = vectors_text(*vectors(one)).splitlines()
     assert lines[0] == "input,output"
     assert lines[1:] == [f"{x},{y}" for x, y in zip(*vectors(one), strict=True)]
 
