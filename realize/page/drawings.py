@@ -282,8 +282,7 @@ def _ledger_words(ledger: Ledger) -> str:
 def _words(known: Known) -> Drawing | None:
     assert known.shown is not None
     assert known.shown.realization is not None
-    chosen = known.comparison.chosen
-    if chosen is not known.shown or not known.design.target.arithmetic.startswith("int"):
+    if known.comparison.chosen is not known.shown or not known.design.target.arithmetic.startswith("int"):
         return None
     from realize.words import bounds_by_word
 

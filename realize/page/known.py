@@ -30,16 +30,23 @@ class Known:
     ----------
     assessment : Assessment
     comparison : Comparison
-    shown : MethodResult or None
-        The method whose figures are drawn: the chosen one, else the closest; None where every method was refused.
     """
 
     def __init__(self, design: Design) -> None:
         self.design = design
         self.assessment: Assessment = assess_design(design)
         self.comparison: Comparison = compare(design)
-        closest = self.comparison.closest
-        self.shown: MethodResult | None = closest if closest and closest.realization is not None else None
+
+    @cached_property
+    def shown(self) -> MethodResult | None:
+        """The method whose figures are drawn: the one that is emitted, else the closest; None where all were refused.
+
+        Of a schedule that is the method of all points, here at the nominal values.
+        """
+        found, methods = self.comparison.closest, self.comparison.methods
+        if isinstance(self.emitted, Emitted) and self.emitted.schedule is not None:
+            found = next((m for m in methods if m.method == self.emitted.chosen.method), None)
+        return found if found is not None and found.realization is not None else None
 
     @cached_property
     def emitted(self) -> Emitted | Refused:

@@ -53,7 +53,8 @@ def page(known: Known) -> Page:
     sections = [_asked(known), _realizability(known), _methods(known)]
     if known.shown is not None:
         found = drawings(known)
-        sections.append(Section("figures", f"What {known.shown.method} makes of it", drawings=found))
+        where = " at the nominal values" if known.design.schedule is not None else ""
+        sections.append(Section("figures", f"What {known.shown.method} makes of it{where}", drawings=found))
         sections.append(Section("numbers", "The numbers behind the figures", tables=tuple(d.table for d in found)))
     sections += _emission(known)
     return Page(known.design.name, known.design.about or "", answer, verdict, tuple(sections), CAUTION)
@@ -150,7 +151,11 @@ def _methods(known: Known) -> Section:
         )
         tables += [Table(f"The loop with {shown.method}", _loop(shown.loop))] if shown.loop else []
     return Section(
-        "methods", "The methods side by side", (_stopped(comparison.because),), tuple(items), tables=tuple(tables)
+        "methods",
+        "The methods side by side",
+        (_stopped(comparison_verdict(comparison).split(": ", 1)[1]),),
+        tuple(items),
+        tables=tuple(tables),
     )
 
 

@@ -218,3 +218,12 @@ def test_any_transfer_function_has_a_page(transfer: str) -> None:
 
 def _cells(section: Section) -> list[list[str]]:
     return [row for table in section.tables for row in table.rows.cells]
+
+
+def test_a_schedule_is_shown_by_the_method_that_is_emitted() -> None:
+    """At the nominal values another one is recommended, which no point takes."""
+    made = report(FIXTURES / "sheeter_gap.toml")
+    titles = {section.key: section.title for section in made.page.sections}
+    assert "by blended-difference" in made.page.verdict
+    assert titles["figures"] == "What blended-difference makes of it at the nominal values"
+    assert [section.key for section in made.page.sections][-3:] == ["schedule", "coefficients", "record"]
