@@ -10,6 +10,7 @@ import numpy as np
 
 from realize.page.blocks import Drawing, Table
 from realize.page.curves.frequency import FrequencyCurves, frequency_curves
+from realize.page.curves.loop_gain import LoopGain, loop_gain
 from realize.page.curves.plane import Mapped, Plane, plane
 from realize.page.curves.step import LoopCurves, StepCurves, loop_curves, step_curves
 from realize.page.known import Known
@@ -34,7 +35,15 @@ _WORDS = range(8, 33, 2)
 
 def drawings(known: Known) -> tuple[Drawing, ...]:
     """Those that the design has, in the order of the page."""
-    found = [_step(known), _loop(known), _frequency(known), _plane(known), _ledger(known), _words(known)]
+    found = [
+        _step(known),
+        _loop(known),
+        _frequency(known),
+        _plane(known),
+        _loop_gain(known),
+        _ledger(known),
+        _words(known),
+    ]
     return tuple(drawing for drawing in found if drawing is not None)
 
 
@@ -117,10 +126,14 @@ def _loop(known: Known) -> Drawing | None:
     if not shown:
         return None
 
+    # Behind a sensor of gain 1 the output is in the unit of the error, which is that of the input.
+    alike = all(r.plant.sensor.low_frequency_gain == 1 for r in known.loops)
+    unit = known.design.input.unit if alike else ""
+
     def draw() -> Figure:
         from realize.page.plots.step import loop_figure
 
-        return loop_figure(shown, "")
+        return loop_figure(shown, unit)
 
     head = (("case",), ("loop",), ("highest",), ("at",), ("last shown",))
     rows = [row for name, curves in shown for row in _loop_cells(name, curves)]
@@ -250,6 +263,39 @@ def _plane_rows(found: Plane) -> Rows:
 
 def _delta(place: complex | None) -> str:
     return "-" if place is None else complex_text(place)
+
+
+def _loop_gain(known: Known) -> Drawing | None:
+    curves = loop_gain(known.loops[0], known.stored) if known.loops else None
+    if curves is None:
+        return None
+
+    def draw() -> Figure:
+        from realize.page.plots.loop_gain import loop_gain_figure
+
+        return loop_gain_figure(curves)
+
+    case = known.loops[0].plant.case
+    at = in_hz(2 * pi * curves.crossover_hz)
+    return Drawing(
+        "loopgain",
+        f"Open loop, with its margin at {at}{f', case {case}' if case else ''}",
+        f"Gain in dB and phase in deg of the open loop against frequency, continuous and sampled. The sampled loop's "
+        f"gain passes 1 at {at}, where {curves.phase_margin_deg:.4g} deg are left to -180 deg.",
+        Table("Open loop", _loop_gain_rows(curves)),
+        draw,
+    )
+
+
+def _loop_gain_rows(curves: LoopGain) -> Rows:
+    head = (("frequency", ""), ("continuous", "dB"), ("sampled", "dB"), ("continuous", "deg"), ("sampled", "deg"))
+    columns = (curves.continuous_db, curves.sampled_db, curves.continuous_deg, curves.sampled_deg)
+    wanted = np.append(np.geomspace(curves.frequency_hz[0], curves.frequency_hz[-1], _ROWS - 1), curves.crossover_hz)
+    chosen = np.unique(np.clip(np.searchsorted(curves.frequency_hz, np.sort(wanted)), 0, len(curves.frequency_hz) - 1))
+    return Rows(
+        head,
+        [[in_hz(2 * pi * float(curves.frequency_hz[i])), *(f"{float(c[i]):.2f}" for c in columns)] for i in chosen],
+    )
 
 
 def _ledger(known: Known) -> Drawing | None:

@@ -26,7 +26,9 @@ def html_text(page: Page) -> str:
     """The whole file."""
     environment = Environment(autoescape=True, undefined=StrictUndefined, trim_blocks=True, lstrip_blocks=True)
     template = environment.from_string((files("realize.page") / "page.html.jinja").read_text(encoding="utf-8"))
-    text = template.render(page=page, svg=_svg, head=_head, cell_class=_cell_class, is_broad=_is_broad)
+    text = template.render(
+        page=page, svg=_svg, head=_head, flush_right=_flush_right, cell_class=_cell_class, is_broad=_is_broad
+    )
     return text.rstrip() + "\n"
 
 
@@ -36,17 +38,21 @@ def _svg(drawing: Drawing) -> str:
     return inlined(svg_text(figure), drawing.key, drawing.title, drawing.alternative)
 
 
-def _head(table: Table) -> list[tuple[str, bool]]:
-    """The words above each column in one line, and whether it holds figures; empty where there are no words."""
+def _head(table: Table) -> list[str]:
+    """The words above each column in one line; none where there are no words."""
     words = [one_line(lines) for lines in table.rows.head]
-    columns = zip(*table.rows.cells, strict=True)
-    of_figures = [2 * sum(map(_is_figure, column)) > len(column) for column in columns]
-    return list(zip(words, of_figures, strict=True)) if any(words) else []
+    return words if any(words) else []
 
 
-def _cell_class(table: Table, cell: str) -> Markup:
-    """The class of a cell, as an attribute: figures are flush right where columns have heads, marks are coloured."""
-    names = ["figure"] if _head(table) and _is_figure(cell) else []
+def _flush_right(table: Table) -> list[bool]:
+    """For each column whether it holds figures, most of it: then all of it is flush right."""
+    columns = list(zip(*table.rows.cells, strict=True))
+    return [bool(_head(table)) and 2 * sum(map(_is_figure, column)) > len(column) for column in columns]
+
+
+def _cell_class(cell: str, flush_right: bool) -> Markup:
+    """The class of a cell, as an attribute: marks are coloured, long texts may be broken anywhere."""
+    names = ["figure"] if flush_right else []
     if cell.endswith((OUT, AGREED)) and len(cell) > 1:
         names.append("bad" if cell.endswith(OUT) else "agreed")
     elif cell in _MARKED:

@@ -15,6 +15,7 @@ from realize.checks import ContinuousReference
 from realize.loop import LoopReference, Plant
 from realize.methods import discretize
 from realize.page.curves.frequency import frequency_curves
+from realize.page.curves.loop_gain import loop_gain
 from realize.page.curves.plane import plane
 from realize.page.curves.step import FIRST_SAMPLES, StepCurves, loop_curves, step_curves
 from realize.transfer import PulseTransferFunction, TransferFunction
@@ -143,8 +144,28 @@ def test_loop_curves_peak_where_the_figures_say() -> None:
         assert (np.diff(times_s) >= 0).all()
 
 
+def test_the_open_loop_is_the_product_of_its_parts_and_crosses_where_the_margins_say() -> None:
+    controller = TransferFunction.from_polynomials([4, 20], [1, 0])
+    plant = Plant(TransferFunction.from_polynomials([10], [1, 12, 20]), Fraction(1, 200))
+    reference = LoopReference(controller, plant, Fraction(1, 100), Fraction(1, 100))
+    pulse = discretize(controller, reference.period_s, "bilinear", None).pulse
+    curves = loop_gain(reference, pulse)
+    assert curves is not None
+    s = 2j * pi * curves.frequency_hz
+    expected = (4 * s + 20) / s * 10 / (s**2 + 12 * s + 20) * np.exp(-s / 200)
+    shown = 10 ** (curves.continuous_db / 20) * np.exp(1j * np.radians(curves.continuous_deg))
+    assert np.abs(shown / expected - 1).max() < 1e-12
+    assert np.interp(curves.crossover_hz, curves.frequency_hz, curves.sampled_db) == pytest.approx(0, abs=1e-3)
+    left = np.interp(curves.crossover_hz, curves.frequency_hz, curves.sampled_deg) + 180
+    # Between neighbouring frequencies, 1.5 % apart, the phase bends by less than a hundredth of a degree.
+    assert left == pytest.approx(curves.phase_margin_deg, abs=0.01)
+    assert curves.frequency_hz[-1] == pytest.approx(50, rel=1e-5)
+
+
 def test_a_loop_that_does_not_settle_has_no_curve() -> None:
     controller = TransferFunction.from_polynomials([400], [1])
     plant = Plant(TransferFunction.from_polynomials([10], [1, 12, 20, 0]), Fraction(0))
     reference = LoopReference(controller, plant, Fraction(1, 100), Fraction(1, 100))
-    assert loop_curves(reference, discretize(controller, reference.period_s, "bilinear", None).pulse) is None
+    pulse = discretize(controller, reference.period_s, "bilinear", None).pulse
+    assert loop_curves(reference, pulse) is None
+    assert loop_gain(reference, pulse) is None
