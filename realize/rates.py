@@ -150,7 +150,8 @@ def rates(
     names = methods_for(design) if only is None else (only,)
     methods = tuple(_summary(name, grid, [_of(name, outcomes) for outcomes in found]) for name in names)
     able = any(method.lowest_hz is not None for method in methods)
-    hindrance = "" if able else _hindrance(design, grid[-1])
+    lacking = not able and all(_lacks_margin(method.outcomes[-1]) for method in methods)
+    hindrance = _hindrance(design, grid[-1]) if lacking else ""
     return Rates(design, grid, methods, sentence, _rules(design, float(base_hz)), hindrance)
 
 
@@ -179,6 +180,11 @@ def lowest_text(method: MethodRates) -> str:
 
 def _hz(rate: Fraction | None) -> str:
     return format_engineering(rate or Fraction(0), "Hz")
+
+
+def _lacks_margin(outcome: Outcome) -> bool:
+    """Whether it is out on phase margin, or does not apply."""
+    return outcome.refused is not None or "loop phase margin" in outcome.out
 
 
 def _hindrance(design: Design, rate_hz: Fraction) -> str:

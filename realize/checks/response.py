@@ -263,7 +263,7 @@ class _Grid:
         resolved = response.rate(self.times[:-1]) * step <= _RESOLVED
         left, right = value[:-1], value[1:]
         self._slopes = slope[:-1], slope[1:]
-        turns = resolved & (slope[:-1] * slope[1:] < 0)
+        turns = resolved & (np.sign(slope[:-1]) * np.sign(slope[1:]) < 0)
         extreme = left.copy()
         extreme[turns], after = _cubic_extreme(
             left[turns], right[turns], slope[:-1][turns], slope[1:][turns], step[turns]

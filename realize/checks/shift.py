@@ -63,30 +63,12 @@ def check_shift(
     left = sorted(deltas, key=abs)[origin:]
     images = [logarithm(d) / period_s for d in left]
     shift = _shifts(finite, images)
-    partner = _assigned(shift)
+    partner = assigned(shift)
     worst = max(counted, key=lambda i: (shift[i, partner[i]], -abs(finite[i])))
     reason = f"greatest for the one at {in_words(finite[worst])}; {len(counted)} of {len(roots)} count"
     if partner[worst] >= len(images):
         return asked.failed(finite[worst], None, f"nothing is left of the one at {in_words(finite[worst])}")
     return asked.measured(finite[worst], images[partner[worst]], 100 * float(shift[worst, partner[worst]]), reason)
-
-
-def counterparts(roots: Sequence[complex], deltas: Sequence[complex], period_s: float) -> list[complex | None]:
-    """For each root in s the root in ``z - 1`` that stands for it; None where there is none left.
-
-    Roots at s = 0 take those at z = 1 first; the others are paired by the least total of their shifts.
-    """
-    left = sorted(deltas, key=abs)
-    at_one = [left.pop(0) for _ in range(min(roots.count(0), deltas.count(0)))]
-    others = [i for i, root in enumerate(roots) if root]
-    found: list[complex | None] = [None] * len(roots)
-    for i, delta in zip((i for i, root in enumerate(roots) if not root), at_one, strict=False):
-        found[i] = delta
-    if others:
-        images = [logarithm(delta) / period_s for delta in left]
-        for i, j in zip(others, _assigned(_shifts([roots[i] for i in others], images)), strict=True):
-            found[i] = left[j] if j < len(left) else None
-    return found
 
 
 def root_notes(discrete: PulseTransferFunction, transfer: TransferFunction) -> tuple[str, ...]:
@@ -118,7 +100,7 @@ def _shifts(roots: Sequence[complex], images: Sequence[complex]) -> Real:
     return np.append(np.minimum(shift, _NO_PARTNER / 2), np.full((len(roots), lacking), _NO_PARTNER), axis=1)
 
 
-def _assigned(cost: Real) -> list[int]:
+def assigned(cost: Real) -> list[int]:
     """Column of each row in the assignment of least total cost; no more rows than columns.
 
     Notes

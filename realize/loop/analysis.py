@@ -60,15 +60,14 @@ class LoopFigures:
             return step_figures(self.loop)
         return continuous_step(self.loop) if isinstance(self.loop, ContinuousLoop) else None
 
-    @cached_property
-    def curve(self) -> tuple[Real, Real] | None:
+    def curve(self, end_s: float) -> tuple[Real, Real] | None:
         """Times in s and values of the plant's output after a unit step of the reference; None where there is no step.
 
         Between the samples too; see :func:`realize.loop.simulation.step_curve`.
         """
         if isinstance(self.loop, SampledLoop):
-            return step_curve(self.loop)
-        return continuous_curve(self.loop) if isinstance(self.loop, ContinuousLoop) else None
+            return step_curve(self.loop, end_s)
+        return continuous_curve(self.loop, end_s) if isinstance(self.loop, ContinuousLoop) else None
 
     def document(self) -> Figures:
         """The figures of a loop as JSON documents hold them; None where there is none."""

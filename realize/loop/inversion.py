@@ -10,7 +10,7 @@ they overlap. Measured against responses known in closed form the error is below
 from __future__ import annotations
 
 from collections.abc import Sequence
-from math import comb, inf, pi
+from math import ceil, comb, inf, log2, pi
 from typing import NamedTuple
 
 import numpy as np
@@ -33,6 +33,10 @@ _FIRST_WINDOW = 30.0
 _DELAYS = 6.0
 _WINDOW_RATIO = 8.0
 _MOST_WINDOWS = 14
+
+#: A curve that is drawn: points to a radian of the bandwidth, and how far beyond its end the sum goes.
+_PER_RADIAN = 16
+_PAST_END = 1.01
 
 #: The bandwidth is where the response to the reference has fallen to this share of its greatest value.
 _BANDWIDTH = 0.03
@@ -73,19 +77,24 @@ def continuous_step(loop: ContinuousLoop) -> StepFigures | None:
     return StepFigures(final, 100 * (top - 1) if beyond else 0.0, at if beyond else None, rise, settling)
 
 
-def step_curve(loop: ContinuousLoop) -> tuple[Real, Real] | None:
-    """The plant's output after a unit step of the reference, until it rests; None where there are no figures of it.
+def step_curve(loop: ContinuousLoop, end_s: float) -> tuple[Real, Real] | None:
+    """The plant's output after a unit step of the reference, up to a time; None where there are no figures of it.
 
     Returns
     -------
     times_s, values : array
-        Ascending from 0 on.
+        At equal distances from 0 on: 16 to a radian of the bandwidth, as far as the most points allow.
     """
-    followed = _response(loop)
-    if followed is None:
+    final = final_value(loop.controller, loop.plant)
+    if final is None or not loop.verdict.is_stable:
         return None
-    times, values, final = followed
-    return times, final * values
+    transform = _Transform(loop, final)
+    length_s = _PAST_END * end_s
+    wanted = 2 * _PER_RADIAN * length_s * transform.bandwidth_rad_s
+    points = min(_MOST_POINTS, max(_POINTS, 1 << ceil(log2(max(wanted, 1.0)))))
+    window = transform.window(length_s, points)
+    shown = window.times_s <= end_s
+    return window.times_s[shown], final * window.values[shown]
 
 
 def _response(loop: ContinuousLoop) -> tuple[Real, Real, float] | None:

@@ -135,9 +135,9 @@ def _loop(known: Known) -> Drawing | None:
 
         return loop_figure(shown, unit)
 
-    head = (("case",), ("loop",), ("highest",), ("at",), ("last shown",))
+    head = (("case",), ("loop",), ("highest",), ("at",), ("final",), ("within 2 % from",))
     rows = [row for name, curves in shown for row in _loop_cells(name, curves)]
-    words = "; ".join(f"{row[0]} {row[1]}: highest {row[2]} at {row[3]}".strip() for row in rows)
+    words = "; ".join(f"{row[0]} {row[1]}: highest {row[2]} at {row[3]}, final {row[4]}".strip() for row in rows)
     missing = [name for name, curves in cases if curves is None]
     note = f"Without a step that settles: {', '.join(missing)}." if missing else ""
     return Drawing(
@@ -151,10 +151,11 @@ def _loop(known: Known) -> Drawing | None:
 
 def _loop_cells(name: str, curves: LoopCurves) -> list[list[str]]:
     cells = []
-    for kind, (times_s, values) in (("continuous", curves.continuous), ("sampled", curves.sampled)):
-        top = int(np.argmax(values))
-        when = format_engineering(float(times_s[top]), "s")
-        cells.append([name, kind, _g(values[top]), when, _g(values[-1])])
+    for kind, figures in (("continuous", curves.continuous_figures), ("sampled", curves.sampled_figures)):
+        highest = figures.final * (1 + figures.overshoot_percent / 100)
+        when = "-" if figures.peak_s is None else format_engineering(figures.peak_s, "s")
+        settled = "-" if figures.settling_time_s is None else format_engineering(figures.settling_time_s, "s")
+        cells.append([name, kind, _g(highest), when, _g(figures.final), settled])
     return cells
 
 
@@ -169,20 +170,26 @@ def _frequency(known: Known) -> Drawing:
     return Drawing(
         "frequency",
         "Frequency response, and its error below it",
-        _frequency_words(curves),
+        _frequency_words(known, curves),
         Table("Frequency response", _frequency_rows(curves)),
         draw,
     )
 
 
-def _frequency_words(curves: FrequencyCurves) -> str:
-    inside = curves.frequency_hz <= curves.band_hz
-    worst = [float(np.abs(error[inside]).max(initial=0.0)) for error in (curves.error_db, curves.error_deg)]
+def _frequency_words(known: Known, curves: FrequencyCurves) -> str:
+    """What is out in the band is said as the checks have it: point by point it has no bound next to a zero."""
+    assert known.shown is not None
+    apart = {check.check: check.difference for check in known.shown.stored_checks}
+    at_end = (
+        "the stored numbers have a zero there"
+        if any(root.value == -2 for root in known.stored.zeros)
+        else f"they differ by {figure(float(curves.error_db[-1]))} dB and {figure(float(curves.error_deg[-1]))} deg"
+    )
     return (
         f"Magnitude in dB and phase in deg of the design and of the stored numbers against frequency up to half the "
-        f"rate, {in_hz(2 * pi * curves.nyquist_hz)}. Up to the band edge, {in_hz(2 * pi * curves.band_hz)}, they "
-        f"differ by at most {figure(worst[0])} dB and {figure(worst[1])} deg; at half the rate by "
-        f"{figure(float(curves.error_db[-1]))} dB and {figure(float(curves.error_deg[-1]))} deg."
+        f"rate, {in_hz(2 * pi * curves.nyquist_hz)}; {at_end}. Up to the band edge, {in_hz(2 * pi * curves.band_hz)}, "
+        f"the stored numbers are {figure(apart['magnitude in band'])} dB and {figure(apart['phase in band'])} deg off "
+        "what the design does within 2 % of each frequency."
     )
 
 
@@ -348,7 +355,9 @@ def _words(known: Known) -> Drawing | None:
         f"What rounding does to the output, against word length ({structure})",
         _words_words(bounds),
         Table(
-            "Round-off against word length", Rows(head, _words_cells(bounds)), "Sums in 64 bits; - cannot be stored."
+            "Round-off against word length",
+            Rows(head, _words_cells(bounds)),
+            "Sums in 64 bits; from a cleared state, while no limit acts; - cannot be stored.",
         ),
         draw,
     )
@@ -356,7 +365,10 @@ def _words(known: Known) -> Drawing | None:
 
 def _words_words(bounds: Sequence[Bound]) -> str:
     known = ", ".join(f"{b.bits} bits {figure(b.percent)} %" for b in bounds if b.percent is not None)
-    return f"Proven bound of the error of the output in % of its range: {known}."
+    return (
+        "Proven bound of what rounding moves the output by, from a cleared state and while no limit acts, in % of its "
+        f"range: {known}."
+    )
 
 
 def _words_cells(bounds: Sequence[Bound]) -> list[list[str]]:

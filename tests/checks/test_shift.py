@@ -14,7 +14,7 @@ from scipy.optimize import linear_sum_assignment
 from realize.checks import Check, root_notes
 from realize.checks.check import Asked
 from realize.checks.modes import logarithm
-from realize.checks.shift import _assigned, check_shift
+from realize.checks.shift import assigned, check_shift
 from tests.checks.designs import answers, converted, pulse, reference, transfer
 
 _MP = mpmath.mp.clone()
@@ -51,7 +51,7 @@ def test_a_root_at_z_0_has_a_finite_rate_beyond_all_others() -> None:
 @given(st.integers(1, 7), st.integers(0, 3), st.randoms(use_true_random=False))
 def test_the_pairing_has_the_least_total(rows: int, more: int, random: object) -> None:
     cost = np.array([[float(random.randrange(20)) for _ in range(rows + more)] for _ in range(rows)])  # type: ignore[attr-defined]
-    columns = _assigned(cost)
+    columns = assigned(cost)
     assert len(set(columns)) == rows
     i, j = linear_sum_assignment(cost)
     assert cost[np.arange(rows), columns].sum() == cost[i, j].sum()

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from math import log, log10, pi
+from math import ceil, log, log10, pi
 from typing import NamedTuple
 
 import numpy as np
@@ -14,13 +14,13 @@ from realize.checks.modes import logarithm
 from realize.loop.response import Continuous, Real, Sampled
 from realize.transfer import PulseTransferFunction
 
-#: Frequencies in equal ratios; those around lightly damped roots come in addition.
-_POINTS = 500
+#: Frequencies to a decade, in equal ratios; those around lightly damped roots come in addition.
+_POINTS = 80
 
 #: The axis starts this far below the lowest corner and the band edge, whichever is lower.
 _BELOW = 10.0
 
-#: Decades that are shown at the most, the highest ones.
+#: Decades that are shown at the most, the highest ones; more where the band lies lower still.
 _MOST_DECADES = 7
 
 #: The last frequency is short of half the sample rate by this share: there a zero at z = -1 has no logarithm.
@@ -83,8 +83,9 @@ def _frequencies(reference: ContinuousReference, stored: PulseTransferFunction, 
     roots = [*reference.zeros, *reference.poles]
     marks = [abs(root) for root in roots if 0 < abs(root) < nyquist]
     low = min([*marks, min(float(reference.band_rad_s), nyquist)]) / _BELOW
-    low, high = max(low, nyquist / 10**_MOST_DECADES), nyquist * (1 - _SHORT)
-    grid = np.logspace(log10(low), log10(high), _POINTS)
+    low = min(max(low, nyquist / 10**_MOST_DECADES), float(reference.band_rad_s) / _BELOW)
+    high = nyquist * (1 - _SHORT)
+    grid = np.geomspace(low, high, ceil(_POINTS * log10(high / low)))
     images = [logarithm(r.value) / float(reference.period_s) for r in (*stored.zeros, *stored.poles)]
     details = np.concatenate([bends(roots, high), bends(images, high)])
     return distinct(np.append(grid, details[(details > low) & (details < high)]))

@@ -9,8 +9,11 @@ import numpy as np
 
 from realize.checks import ContinuousReference
 from realize.checks.modes import every
-from realize.checks.shift import counterparts
+from realize.checks.shift import assigned
 from realize.transfer import PulseTransferFunction
+
+#: Distance of a root without a partner: above any that two places in the figure can have.
+_NO_PARTNER = 1e12
 
 
 class Mapped(NamedTuple):
@@ -48,13 +51,26 @@ def plane(reference: ContinuousReference, stored: PulseTransferFunction) -> Plan
 
 
 def _mapped(roots: Sequence[complex], deltas: Sequence[complex], period_s: float) -> tuple[Mapped, ...]:
-    partners = counterparts(list(roots), list(deltas), period_s)
-    pairs = [Mapped(s, _image(s * period_s), d) for s, d in zip(roots, partners, strict=True)]
+    """Each root with the stored one it is nearest to, so that the distances are least in all; then the others."""
+    images = [_image(s * period_s) for s in roots]
+    partners = _nearest(images, deltas)
+    pairs = [Mapped(s, image, delta) for s, image, delta in zip(roots, images, partners, strict=True)]
     left = list(deltas)
     for partner in partners:
         if partner is not None:
             left.remove(partner)
     return (*pairs, *(Mapped(None, None, delta) for delta in left))
+
+
+def _nearest(images: Sequence[complex | None], deltas: Sequence[complex]) -> list[complex | None]:
+    if not images:
+        return []
+    lacking = max(0, len(images) - len(deltas))
+    cost = np.full((len(images), len(deltas) + lacking), _NO_PARTNER)
+    for i, image in enumerate(images):
+        if image is not None:
+            cost[i, : len(deltas)] = [min(abs(image - delta), _NO_PARTNER / 2) for delta in deltas]
+    return [deltas[j] if j < len(deltas) else None for j in assigned(cost)]
 
 
 def _image(exponent: complex) -> complex | None:

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from math import ceil
 from typing import NamedTuple
 
 import numpy as np
@@ -11,7 +10,7 @@ from realize.algebra.arrays import distinct
 from realize.checks import ContinuousReference
 from realize.checks.counterpart import Counterpart
 from realize.checks.step import SampledResponse
-from realize.loop import LoopFigures, LoopReference
+from realize.loop import LoopReference, StepFigures
 from realize.loop.response import Real, Whole
 from realize.transfer import PulseTransferFunction
 
@@ -77,7 +76,9 @@ def step_curves(reference: ContinuousReference, stored: PulseTransferFunction) -
     response, period_s = reference.step, float(reference.period_s)
     if response.last < 1:
         return None
-    sampled = SampledResponse(Counterpart(stored), _looked_at(response.last))
+    # Those that the checks look at hold the extremes.
+    looked_at = distinct(np.concatenate([_looked_at(response.last), response.samples]))
+    sampled = SampledResponse(Counterpart(stored), looked_at)
     last = int(sampled.samples[-1])
 
     def stretch(samples: Whole, times: Real) -> Stretch:
@@ -128,32 +129,38 @@ class LoopCurves(NamedTuple):
         Times in s and values without hold and compute delay.
     sampled : pair of array
         Of the loop with the stored numbers, between the samples too.
-    settled_s : float
-        When both are at rest for a reader: the end of the axis.
+    continuous_figures, sampled_figures : StepFigures
+        Their peaks and final values, which no curve of some points has to the last digit.
+    end_s : float
+        End of the axis: both are at rest for a reader, or so many samples are drawn as can be.
     """
 
     continuous: tuple[Real, Real]
     sampled: tuple[Real, Real]
-    settled_s: float
+    continuous_figures: StepFigures
+    sampled_figures: StepFigures
+    end_s: float
 
 
 def loop_curves(reference: LoopReference, stored: PulseTransferFunction) -> LoopCurves | None:
     """Of one case of the plant; None where one of the loops has no step that settles."""
-    loops = reference.continuous, reference.sampled(stored)
-    curves = [loop.curve for loop in loops]
-    if curves[0] is None or curves[1] is None:
+    before, after = reference.continuous, reference.sampled(stored)
+    figures = before.step, after.step
+    if figures[0] is None or figures[1] is None:
         return None
-    end = _BEYOND_SETTLING * max(_settled_s(loop, curve[0]) for loop, curve in zip(loops, curves, strict=True) if curve)
-    return LoopCurves(_until(end, *curves[0]), _until(end, *curves[1]), end)
+    settled = [f.settling_time_s for f in figures if f is not None and f.settling_time_s is not None]
+    if not settled:
+        return None
+    sampled = after.curve(_BEYOND_SETTLING * max(*settled, float(reference.period_s)))
+    if sampled is None:
+        return None
+    end_s = float(sampled[0][-1])
+    continuous = before.curve(end_s)
+    assert continuous is not None
+    return LoopCurves(_from_start(*continuous), _from_start(*sampled), figures[0], figures[1], end_s)
 
 
-def _settled_s(loop: LoopFigures, times_s: Real) -> float:
-    settling = None if loop.step is None else loop.step.settling_time_s
-    return float(times_s[-1]) if settling is None else settling
-
-
-def _until(end_s: float, times_s: Real, values: Real) -> tuple[Real, Real]:
-    """Up to a time, with no more points than can be seen; before the first the output is 0."""
-    shown = int(np.searchsorted(times_s, end_s, side="right"))
-    chosen = distinct(np.append(np.arange(0, shown, ceil(max(shown, 1) / _POINTS)), max(shown - 1, 0)))
-    return np.concatenate([[0.0, times_s[0]], times_s[chosen]]), np.concatenate([[0.0, 0.0], values[chosen]])
+def _from_start(times_s: Real, values: Real) -> tuple[Real, Real]:
+    """With no more points than can be seen; before the first the output is 0."""
+    shown = _outline(times_s, values)
+    return np.concatenate([[0.0, times_s[0]], shown[0]]), np.concatenate([[0.0, 0.0], shown[1]])

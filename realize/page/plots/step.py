@@ -46,11 +46,11 @@ def loop_figure(cases: Sequence[tuple[str, LoopCurves]], output_unit: str) -> Fi
     figure = canvas(3.0 if len(cases) == 1 else 2.5 * len(cases))
     panels = figure.subplots(len(cases), 1, squeeze=False)[:, 0]
     for axes, (name, curves) in zip(panels, cases, strict=True):
-        scale, unit = time_unit(curves.settled_s)
+        scale, unit = time_unit(curves.end_s)
         axes.plot(curves.continuous[0] * scale, curves.continuous[1], color=DESIGN, label="continuous")
         sampled = curves.sampled
         axes.plot(sampled[0] * scale, sampled[1], color=STORED, linestyle=(0, (5, 2)), label="sampled, as stored")
-        axes.set_xlim(0, curves.settled_s * scale)
+        axes.set_xlim(0, curves.end_s * scale)
         axes.set_ylabel(with_unit("plant output", output_unit))
         axes.set_xlabel(f"time after a unit step of the reference in {unit}")
         if name:
