@@ -340,7 +340,7 @@ def _preset_says(emission: Emission) -> str:
             "within the rounding of the sample. "
         )
     if emission.schedule is not None:
-        text += "Between points of the schedule gains at rest are interpolated too: there 1 means near rest. "
+        text += "Between points of the schedule only input 0 is known to be at rest: any other gives 0. "
     if emission.output_range is not None:
         text += "An output beyond the clamp counts as the limit, and gives 0 unless the limit is what it rounds to. "
     return text + "Arguments that are NaN or infinite, and a state that would be, are refused: 0, nothing changed."

@@ -100,7 +100,7 @@ def _emit_scheduled(design: Design) -> Emitted:
         "particulars": [
             ("values", _named_values(constants.items())),
             ("scheduled", f"{', '.join(dict(found.schedule.values))} by {found.schedule.variable}; see Schedule below"),
-            *_particulars(comparison)[1:],
+            *((name, f"{text} (at the first point)") for name, text in _particulars(comparison)[1:] if text),
         ],
     }
     files = render_firmware(

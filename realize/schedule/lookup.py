@@ -78,6 +78,10 @@ class Lookup:
             found: list[float] = (first + share * (self._sets[upper] - first)).tolist()
         return found
 
+    def is_between(self, variable: float) -> bool:
+        """Whether two sets are interpolated for a value of the variable."""
+        return bool(self._place(variable)[2] > 0)
+
     def _place(self, variable: float) -> tuple[int, int, Any]:
         """The two points, and how far from the first to the second."""
         last = len(self._ascending) - 1

@@ -16,6 +16,9 @@ from realize.arithmetic.realization import AnySection, Realization
 from realize.arithmetic.settling import rest_figures
 from realize.schedule.lookup import Lookup, breakpoints
 
+#: Name of the share of the input that the output at rest may be off by; and what it is where rest is not known.
+BOUND, NO_REST = "settled_bound", -1.0
+
 #: What loses its multiplication: see :func:`realize.arithmetic.sample.product`.
 _PLAIN = (0.0, 1.0, -1.0)
 
@@ -63,8 +66,18 @@ class Table:
         return tuple(_named(each) for each in self.stored)
 
     def at(self, variable: float) -> Mapping[str, float]:
-        """The coefficients that the lookup gives for a value of the variable."""
-        return dict(zip(self.sets[0], self._lookup.at(variable), strict=True))
+        """The coefficients that the lookup gives for a value of the variable.
+
+        Notes
+        -----
+        Between points a section's gain at rest is not the interpolated one: ``sum b/(1 + sum a)`` is no linear function
+        of what is interpolated. So there the preset is given a bound that only an input of 0 keeps, which is at rest
+        whatever the coefficients are.
+        """
+        found = dict(zip(self.sets[0], self._lookup.at(variable), strict=True))
+        if BOUND in found and self._lookup.is_between(variable):
+            found[BOUND] = NO_REST
+        return found
 
     @cached_property
     def _lookup(self) -> Lookup:
@@ -81,7 +94,7 @@ def _named(stored: Realization) -> dict[str, float]:
         named[f"section{k}_gain"] = gain
     named |= {f"integral{i}_gain": gain for i, gain in enumerate(stored.integral, 1)}
     if not stored.integral:
-        named |= {"settled_bound": bound, "settled_floor": floor}
+        named |= {BOUND: bound, "settled_floor": floor}
     return {name: value + 0.0 for name, value in named.items()}
 
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from fractions import Fraction
+from itertools import pairwise
 from math import isfinite
 
 import pytest
@@ -93,3 +94,19 @@ def test_a_gain_is_left_out_only_where_it_is_the_same_at_every_point(sections: l
         for value, output in ((1.0, 1.0), (0.5, 0.0), (0.0, 0.0)):
             assert model.preset(value, output) == alone.preset(value, output)
             assert model.output(0.5) == alone.output(0.5)
+
+
+@pytest.mark.parametrize("emission", EMISSIONS, ids=lambda emission: emission.name)
+def test_a_preset_that_says_yes_is_at_rest_between_points_too(emission: Emission) -> None:
+    """Gains at rest are no linear function of the coefficients: there only input 0 has a state that is known."""
+    table = table_of(emission)
+    for before, after in pairwise(table.breakpoints):
+        model = emission.recursion()
+        model.take(table.at(emission.realization.format.round(Fraction(before) / 2 + Fraction(after) / 2)))
+        for value in (0.5, -1.0, 2.0):
+            for _ in range(2):
+                model.preset(value, 0.0)
+                # What it would put out next: the nearest that it takes for the state at rest.
+                assert not model.preset(value, model.output(value))
+        assert model.preset(0.0, 0.0)
+        assert model.run([0.0] * 50) == [0.0] * 50

@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING
 from realize.arithmetic.sample import is_recursive
 from realize.design.schedule import number_text
 from realize.firmware.c_text import WIDTH, Dialect, comment, hexadecimal, statement, wrapped
+from realize.schedule.table import BOUND, NO_REST
 
 if TYPE_CHECKING:
     from realize.firmware.emission import Emission
@@ -175,6 +176,10 @@ _ENDS = {"first": "lower", "second": "upper"}
 
 
 def _assigned(c: Dialect, field: str) -> list[str]:
+    if field == BOUND:
+        # Where gains at rest are not those of the coefficients, the preset keeps no bound but at input 0.
+        share = f"share > {c.literal(0.0)}"
+        return [f"    coefficients->{field} = {share} ? {c.literal(NO_REST)} : first->{field};"]
     line = f"    coefficients->{field} = {c.name}_between(first->{field}, second->{field}, share);"
     if len(line) <= WIDTH:
         return [line]
@@ -193,6 +198,6 @@ def schedule_says(emission: Emission, table: Table) -> str:
         f"was run on what is stored{where}. Between two points stability was decided on a grid of {table.grid} parts, "
         "and the other checks were run in the middle: a grid, not a proof. All of it holds for a variable that stands "
         f"still. Stability at every fixed {variable} does not prove stability while it moves: let it change slowly "
-        "against the closed loop, and filter it where it is noisy. The preset takes the gains at rest from the table "
-        "as well: between two points it comes near rest, and to rest at input 0."
+        "against the closed loop, and filter it where it is noisy. Between two points only input 0 has a state at "
+        "rest that is known: the preset answers 0 at any other, and takes one between those of the points."
     )
