@@ -38,17 +38,34 @@ def breakpoints(points: Sequence[Fraction], target: FloatFormat) -> tuple[float,
     Refused
         When two become the same number, or one or their distance is beyond the format.
     """
-    stored = tuple(target.round(point) for point in points)
+    stored = tuple(_stored(point, f"point {i}", target) for i, point in enumerate(points, 1))
     for i, (before, after) in enumerate(pairwise(stored), 1):
-        if before >= after:
+        if before < after:
+            _stored(Fraction(after) - Fraction(before), f"the distance of points {i} and {i + 1}", target)
+        if before >= after or target.round((Fraction(before) + Fraction(after)) / 2) in (before, after):
+            apart = "the same number" if before >= after else "neighbours, with nothing between"
             raise Refused(
                 "[schedule] points",
-                f"points {i} and {i + 1} are the same number in {target.name}: {before!r}",
+                f"points {i} and {i + 1} are {apart} in {target.name}: {before!r}",
                 f"points that {target.name} tells apart",
                 'points farther apart, or arithmetic = "float64"',
             )
-        target.round(Fraction(after) - Fraction(before))
     return stored
+
+
+def _stored(value: Fraction, what: str, target: FloatFormat) -> float:
+    """A number of the lookup in the format of the code."""
+    try:
+        return target.round(value)
+    except Refused as refusal:
+        raise Refused(
+            "[schedule] points",
+            f"{what} is beyond {target.name}: about {float(value):.3g}"
+            if abs(value) < 10**300
+            else f"{what} is too large",
+            f"numbers that {target.name} can hold",
+            "another unit of the variable",
+        ) from refusal
 
 
 class Lookup:

@@ -123,8 +123,10 @@ def test_points_that_the_format_does_not_tell_apart_are_refused() -> None:
     with pytest.raises(Refused) as caught:
         breakpoints(points, FLOAT32)
     assert "points 1 and 2 are the same number in float32" in caught.value.found
-    with pytest.raises(Refused, match="beyond the largest float32"):
+    with pytest.raises(Refused, match="point 2 is beyond float32"):
         breakpoints((Fraction(0), Fraction(10**39)), FLOAT32)
+    with pytest.raises(Refused, match="neighbours, with nothing between in float64"):
+        breakpoints((Fraction(1), 1 + Fraction(1, 2**52)), FLOAT64)
     # Each is a number of the format, but their distance is not.
-    with pytest.raises(Refused, match="beyond the largest float32"):
+    with pytest.raises(Refused, match="the distance of points 1 and 2 is beyond float32"):
         breakpoints((Fraction(-(10**38) * 3), Fraction(10**38 * 3)), FLOAT32)
