@@ -14,7 +14,7 @@ from realize.algebra.expression import evaluate_constant, read_exact
 from realize.algebra.expression.ratio import MAX_BITS, UnfitError
 from realize.algebra.expression.tokens import VALUES_TABLE, listed, literal, nearest, shown
 from realize.errors import RealizeError
-from realize.quantity import Dimension, parse_quantity, quantity_allowed
+from realize.quantity import Dimension, parse_quantity, plain_number, quantity_allowed
 
 #: Longest line of text (about, requirement, ...): two lines of a comment of 100 columns.
 MAX_TEXT = 200
@@ -214,6 +214,7 @@ def checked_number(
     if exact is not None:
         return exact
     if isinstance(value, str):
+        _refuse_quantity(value, values, where)
         return evaluate_constant(value, values, where, values_table)
     raise RealizeError(where, described(value), _NUMBER, "write a number")
 
@@ -262,6 +263,13 @@ def described(value: object) -> str:
         return "nothing"
     kinds = {list: "a list", dict: "a table", float: "a binary number"}
     return kinds.get(type(value), "a date or a time")
+
+
+def _refuse_quantity(text: str, names: Mapping[str, Fraction], where: str) -> None:
+    """Refuse a time or frequency where a plain number is wanted; a named value may be called as a unit is."""
+    found = plain_number(text)
+    if found is not None and found[0] not in names:
+        raise RealizeError(where, shown(text), "a plain number, in SI units: it has no unit here", f"write {found[1]}")
 
 
 def _integers_near(value: object, low: int, high: int) -> str:

@@ -327,6 +327,8 @@ def test_the_decimal_twin_has_20_digits(text: str, digits: str) -> None:
         ("1.2.3", 4, '".3" right after "1.2"', "write"),
         ("0x10", 2, '"x10" right after "0"', "write"),
         ("2e", 2, '"e" right after "2"', "write"),
+        ("2 ms*s + 1", 3, '"ms" right after "2"', r"write 2\*ms and define ms under .*; a unit is not written"),
+        ("2 Tau", 3, '"Tau" right after "2"', r"write 2\*Tau$"),
         ("(1 2)", 4, '"2" right after "1"', "write"),
         (f"({'9' * 50} 2)", 53, "right after", r"write a \* between them"),
         ("s**2", 2, r"\*\*", r"s\^2 instead of s\*\*2"),
