@@ -8,6 +8,7 @@ from __future__ import annotations
 from collections.abc import Iterable, Mapping, Sequence
 from fractions import Fraction
 from math import ceil, floor
+from types import MappingProxyType
 from typing import TypeGuard
 
 from realize.algebra.expression import evaluate_constant, read_exact
@@ -134,9 +135,11 @@ class Table:
             raise self.error(key, described(value), "an expression in s, in quotes", f'write {key} = "{example}"')
         return value
 
-    def choice(self, key: str, options: Sequence[str], default: str) -> str:
-        """Read one word of several."""
-        return checked_choice(self.entries.get(key, default), options, self.where(key))
+    def choice(
+        self, key: str, options: Sequence[str], default: str, meant: Mapping[str, str] = MappingProxyType({})
+    ) -> str:
+        """Read one word of several; what other words are meant for may be told."""
+        return checked_choice(self.entries.get(key, default), options, self.where(key), meant)
 
     def flag(self, key: str, default: bool) -> bool:
         """Read true or false."""
@@ -240,11 +243,13 @@ def within_range(value: Fraction, where: str) -> Fraction:
     return value
 
 
-def checked_choice(value: object, options: Sequence[str], where: str) -> str:
-    """Read one word of several."""
+def checked_choice(
+    value: object, options: Sequence[str], where: str, meant: Mapping[str, str] = MappingProxyType({})
+) -> str:
+    """Read one word of several; what other words are meant for may be told."""
     if isinstance(value, str) and value in options:
         return value
-    like = nearest(value, options) if isinstance(value, str) else None
+    like = (meant.get(value.lower()) or nearest(value, options)) if isinstance(value, str) else None
     advice = f'did you mean "{like}"?' if like else "write one of these, in quotes"
     raise RealizeError(where, described(value), listed(options), advice)
 
