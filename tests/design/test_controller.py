@@ -121,7 +121,7 @@ def test_a_broken_value_that_is_replaced_does_no_harm() -> None:
         ('transfer = "0*s"', "[design] transfer", "that is zero", "check the values"),
         ("numerator = [0, 0.0]\ndenominator = [1]", "[design] numerator", "that is zero", "check the values"),
         ("numerator = []\ndenominator = [1]", "[design] numerator", "that is zero", "check the values"),
-        ("numerator = [1]\ndenominator = [0]", "[design] numerator", "a denominator of zero", "coefficients"),
+        ("numerator = [1]\ndenominator = [0]", "[design] denominator", "a denominator of zero", "coefficients"),
         ("numerator = 1\ndenominator = [1]", "[design] numerator", "the number 1", "write numerator = [..]"),
         ("numerator = [1]\ndenominator = [true]", "[design] denominator, entry 1", "true", "write a number"),
         ("numerator = [[1]]\ndenominator = [1]", "[design] numerator, entry 1", "a list", "write a number"),
