@@ -65,6 +65,22 @@ def test_help_says_what_each_exit_status_means_and_what_to_read_next(run: Any, c
     assert re.search(rf"See also: (?:{others})\b", shown)
 
 
+@pytest.mark.parametrize("command", sorted(commands.commands))
+def test_help_says_what_an_exit_status_means_in_one_place(run: Any, command: str) -> None:
+    prose, _ = run(command, "--help").out.split("Options:")
+    assert not re.search(r"[Ee]xit status\s+[012]", prose)
+
+
+def test_help_of_all_commands_leaves_the_meaning_of_status_1_to_each(run: Any) -> None:
+    assert "    1  the answer is no: see the command's own help\n" in run("--help").out
+
+
+def test_help_of_emit_shows_a_directory_in_place_of_designs(run: Any) -> None:
+    shown = " ".join(run("emit", "--help").out.split())
+    assert shown.startswith("Usage: realize emit [OPTIONS] [DESIGN]... ")
+    assert "or --all DIR in their place." in shown
+
+
 def test_only_the_commands_that_are_built_exist() -> None:
     assert sorted(commands.commands) == [
         *("assess", "audit", "compare", "differ", "emit", "new", "rates", "report", "schema", "trial", "words"),

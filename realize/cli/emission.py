@@ -25,13 +25,15 @@ def emit(
 ) -> None:
     """Do the whole job and write the C files, the vectors and the record: all or none.
 
-    Refused with exit status 1 when the design is improper, unstable or out of tolerance. A file
-    whose content would stay the same is left alone, so that a build does not compile it again.
-    A design with a [schedule] also has a table of coefficients, and NAME_at, which looks them up.
+    Give one DESIGN, several design files, or --all DIR in their place.
+
+    A file whose content would stay the same is left alone, so that a build does not compile it
+    again. A design with a [schedule] also has a table of coefficients, and NAME_at, which looks them
+    up.
 
     Several design files are emitted side by side, each all or none: one that is refused does not
-    stop the others. The exit status is then the worst of them: 0 when all are written, 1 when one is
-    refused, 2 when one has an error. What overrides the file overrides each of them.
+    stop the others. The exit status is then the worst of them. What overrides the file overrides
+    each of them.
 
     \b
     Example: realize emit roller_gap.toml --out firmware
