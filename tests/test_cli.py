@@ -171,6 +171,16 @@ def test_emit_writes_five_files_and_the_same_bytes_again(run: Any, tmp_path: Pat
     assert all((first / name).read_bytes() == (second / name).read_bytes() for name in names)
 
 
+def test_emit_tells_of_the_table_of_a_schedule_that_is_no_more(run: Any, tmp_path: Path) -> None:
+    designs = ["1/(0.1*s + 1)", "--rate", "1 kHz", "--name", "gap", "--out", str(tmp_path)]
+    told = f"left from an earlier emission: {tmp_path / 'gap_schedule.h'}; nothing includes it"
+    assert told not in run("emit", *designs).out
+    (tmp_path / "gap_schedule.h").write_text("of before\n", encoding="utf-8")
+    assert run("emit", *designs).out.splitlines()[-1] == told
+    json.loads(run("emit", *designs, "--json").out)
+    assert (tmp_path / "gap_schedule.h").read_text(encoding="utf-8") == "of before\n"
+
+
 def test_emit_document_holds_the_record(run: Any, tmp_path: Path) -> None:
     document = run("emit", ROLLER_GAP, "--out", str(tmp_path), "--json").document
     assert [Path(path).name for path in document["written"]] == [
