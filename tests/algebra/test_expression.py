@@ -359,6 +359,7 @@ def test_the_decimal_twin_has_20_digits(text: str, digits: str) -> None:
         ("(s).__class__", 4, "a point that belongs to no number", "no points"),
         ("s[0]", 2, r"the character \"\[\"", r"write \("),
         ("0,5*s", 2, 'the character ","', "a decimal point"),
+        ("2 %", 3, 'the character "%"', "write /100"),
         ("s \N{MINUS SIGN} 1", 3, r"U\+2212", "write -"),
         ("2\N{MULTIPLICATION SIGN}s", 2, r"U\+00D7", r"write \*"),
         ("s\N{SUPERSCRIPT TWO}", 2, r"U\+00B2", r"write \^2"),
