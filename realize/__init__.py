@@ -61,7 +61,7 @@ _HOMES = {
 
 def __getattr__(name: str) -> object:
     if name not in _HOMES:
-        raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
+        raise AttributeError(f"module {__name__!r} has no attribute {name!r}; it has {', '.join(__all__)}")
     from importlib import import_module
 
     found: object = getattr(import_module(_HOMES[name]), name)
@@ -71,4 +71,4 @@ def __getattr__(name: str) -> object:
 
 
 def __dir__() -> list[str]:
-    return sorted({*globals(), *__all__})
+    return sorted({*__all__, *(name for name in globals() if name.startswith("__"))})

@@ -11,7 +11,7 @@ from decimal import ROUND_HALF_EVEN, Decimal
 from fractions import Fraction
 from typing import Literal
 
-from realize.algebra.expression.printing import MAX_EXACT_DIGITS, read_exact, rounded
+from realize.algebra.expression.printing import MAX_EXACT_DIGITS, format_polynomial, read_exact, rounded
 from realize.algebra.expression.ratio import UnfitError
 from realize.algebra.expression.tokens import literal, nearest, shown
 from realize.algebra.irrational import pi
@@ -46,6 +46,30 @@ _UNITS: dict[Dimension, dict[str, Fraction]] = {
     "angle": {"deg": Fraction(1)},
     "samples": {"samples": Fraction(1), "sample": Fraction(1)},
 }
+
+#: Units as people spell them out; plurals, since one letter less is still like them.
+_SPELLED_OUT = {
+    "hertz": "Hz",
+    "kilohertz": "kHz",
+    "megahertz": "MHz",
+    "radians per second": "rad/s",
+    "sec": "s",
+    "seconds": "s",
+    "milliseconds": "ms",
+    "microseconds": "us",
+    "nanoseconds": "ns",
+    "minutes": "min",
+    "hours": "h",
+    "percent": "%",
+    "decibels": "dB",
+    "degrees": "deg",
+}
+
+#: What a plain number is in, where it stands for a quantity of each dimension.
+_SI_UNITS: dict[Dimension, str] = {"time": "s", "rate": "Hz", "angular frequency": "rad/s"}
+
+#: Longest number that an advice repeats.
+_LONGEST_ADVISED = 40
 
 #: A quantity of each dimension, to show what is meant.
 _EXAMPLES: dict[Dimension, str] = {
@@ -98,6 +122,43 @@ def quantity_allowed(dimension: Dimension) -> str:
     # One of the two micro signs is enough: they look the same.
     units = [unit for unit in _UNITS[dimension] if "\N{GREEK SMALL LETTER MU}" not in unit]
     return f'a number with its unit ({", ".join(units)}), such as "{_EXAMPLES[dimension]}"'
+
+
+def plain_number(text: str) -> tuple[str, str] | None:
+    """Say what to write where a plain number is wanted, and a time or frequency stands.
+
+    Parameters
+    ----------
+    text : str
+        What stands there.
+
+    Returns
+    -------
+    tuple of str or None
+        The unit, and the number in s, in rad/s, or of a frequency in Hz both in Hz and in rad/s. ``None`` where the
+        text is no such quantity, or its number is too long to repeat.
+    """
+    try:
+        number, unit = _split(text)
+    except UnfitError:
+        return None
+    dimension = next((known for known in _SI_UNITS if unit in _UNITS[known]), None)
+    if dimension is None:
+        return None
+    value = format_polynomial([number * _UNITS[dimension][unit]])
+    plain = f'"{value}"' if "/" in value else value
+    turned = f', or "2*pi*{value}" for rad/s' if dimension == "rate" else ""
+    return (unit, f"{plain} for {_SI_UNITS[dimension]}{turned}") if len(value) <= _LONGEST_ADVISED else None
+
+
+def dimension_meant(text: str, choices: tuple[Dimension, ...]) -> Dimension:
+    """Which of several dimensions a text is most likely meant to have: the first where nothing tells."""
+    try:
+        _, unit = _split(text)
+    except UnfitError:
+        return choices[0]
+    named = [dimension for dimension in choices if unit in _UNITS[dimension]]
+    return next(iter(named + [dimension for dimension in choices if _nearest_unit(unit, dimension)]), choices[0])
 
 
 def round_significant(value: Fraction, digits: int, rounding: str = ROUND_HALF_EVEN) -> Fraction:
@@ -158,13 +219,20 @@ def _size(unit: str, dimension: Dimension) -> Fraction:
     units = _UNITS[dimension]
     if unit not in units:
         others = [other for other, known in _UNITS.items() if unit in known]
-        like = nearest(unit, units)
+        like = _nearest_unit(unit, dimension)
         raise UnfitError(
             f"the unit {shown(unit)}" + (f", which belongs to {_with_article(others[0])}" if others else ""),
             "",
             f"did you mean {like}?" if like and not others else f"give {_with_article(dimension)}",
         )
     return units[unit] * (2 * pi() if dimension == "angular frequency" and unit in _HERTZ else 1)
+
+
+def _nearest_unit(unit: str, dimension: Dimension) -> str | None:
+    """The unit of a dimension that another text is most like: as it is written first, then spelled out."""
+    units = _UNITS[dimension]
+    spelled_out = {word: sign for word, sign in _SPELLED_OUT.items() if sign in units}
+    return nearest(unit, units) or spelled_out.get(nearest(unit, spelled_out) or "")
 
 
 def _with_article(dimension: Dimension) -> str:

@@ -209,7 +209,7 @@ def test_the_way_out_leads_out(transfer: str, emit: Emit) -> None:
     for structure in ("delta", "auto"):
         answer = emit(design(transfer, "100 kHz", structure=structure))
         assert answer.status == 0
-        assert "delta: 1 section in the operator z - 1" in answer.text(".h")
+        assert "delta: 1 section in the operator z - 1;" in answer.text(".h")
 
 
 # ---------------------------------------------------------------- not understood

@@ -65,6 +65,22 @@ def test_help_says_what_each_exit_status_means_and_what_to_read_next(run: Any, c
     assert re.search(rf"See also: (?:{others})\b", shown)
 
 
+@pytest.mark.parametrize("command", sorted(commands.commands))
+def test_help_says_what_an_exit_status_means_in_one_place(run: Any, command: str) -> None:
+    prose, _ = run(command, "--help").out.split("Options:")
+    assert not re.search(r"[Ee]xit status\s+[012]", prose)
+
+
+def test_help_of_all_commands_leaves_the_meaning_of_status_1_to_each(run: Any) -> None:
+    assert "    1  the answer is no: see the command's own help\n" in run("--help").out
+
+
+def test_help_of_emit_shows_a_directory_in_place_of_designs(run: Any) -> None:
+    shown = " ".join(run("emit", "--help").out.split())
+    assert shown.startswith("Usage: realize emit [OPTIONS] [DESIGN]... ")
+    assert "or --all DIR in their place." in shown
+
+
 def test_only_the_commands_that_are_built_exist() -> None:
     assert sorted(commands.commands) == [
         *("assess", "audit", "compare", "differ", "emit", "new", "rates", "report", "schema", "trial", "words"),
@@ -153,6 +169,16 @@ def test_emit_writes_five_files_and_the_same_bytes_again(run: Any, tmp_path: Pat
         *("roller_gap.c", "roller_gap.h", "roller_gap.record.json", "roller_gap_selftest.c", "roller_gap_vectors.csv")
     ]
     assert all((first / name).read_bytes() == (second / name).read_bytes() for name in names)
+
+
+def test_emit_tells_of_the_table_of_a_schedule_that_is_no_more(run: Any, tmp_path: Path) -> None:
+    designs = ["1/(0.1*s + 1)", "--rate", "1 kHz", "--name", "gap", "--out", str(tmp_path)]
+    told = f"left from an earlier emission: {tmp_path / 'gap_schedule.h'}; nothing includes it"
+    assert told not in run("emit", *designs).out
+    (tmp_path / "gap_schedule.h").write_text("of before\n", encoding="utf-8")
+    assert run("emit", *designs).out.splitlines()[-1] == told
+    json.loads(run("emit", *designs, "--json").out)
+    assert (tmp_path / "gap_schedule.h").read_text(encoding="utf-8") == "of before\n"
 
 
 def test_emit_document_holds_the_record(run: Any, tmp_path: Path) -> None:

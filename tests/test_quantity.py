@@ -11,7 +11,15 @@ from hypothesis import example, given
 from hypothesis import strategies as st
 
 from realize.errors import RealizeError
-from realize.quantity import MAX_LENGTH, Dimension, format_engineering, parse_quantity, round_significant
+from realize.quantity import (
+    MAX_LENGTH,
+    Dimension,
+    dimension_meant,
+    format_engineering,
+    parse_quantity,
+    plain_number,
+    round_significant,
+)
 
 F = Fraction
 
@@ -72,6 +80,10 @@ def test_hertz_become_radians_right_to_400_digits(text: str, hertz: Fraction) ->
     ("text", "dimension", "found", "allowed", "advice"),
     [
         ("2 khz", "rate", 'the unit "khz"', "Hz, kHz, MHz", "did you mean kHz"),
+        ("2 kiloherz", "rate", 'the unit "kiloherz"', "Hz, kHz, MHz", "did you mean kHz?"),
+        ("2 second", "time", 'the unit "second"', "s, ms, us", "did you mean s?"),
+        ("1 sampels", "samples", 'the unit "sampels"', "samples, sample", "did you mean samples?"),
+        ("2 hertz", "time", 'the unit "hertz"', "s, ms, us", "give a time"),
         ("2 msec", "time", 'the unit "msec"', "ms, us", "did you mean ms"),
         ("20 rad/sec", "angular frequency", 'the unit "rad/sec"', "rad/s", "did you mean rad/s"),
         ("5 V", "time", 'the unit "V"', "s, ms, us", "give a time"),
@@ -104,6 +116,30 @@ def test_each_mistake_names_the_key_what_is_allowed_and_what_to_try(
     assert found in caught.value.found
     assert allowed in caught.value.allowed
     assert advice in caught.value.advice
+
+
+@pytest.mark.parametrize(
+    ("text", "told"),
+    [
+        ("2 ms", ("ms", "0.002 for s")),
+        ("-1/3 ms", ("ms", '"-1/3000" for s')),
+        ("20 kHz", ("kHz", '20000 for Hz, or "2*pi*20000" for rad/s')),
+        ("5 rad/s", ("rad/s", "5 for rad/s")),
+        ("2 V", None),
+        ("2*ms", None),
+        ("1" * 41 + " s", None),
+    ],
+)
+def test_a_time_or_frequency_is_told_as_the_plain_number_it_is(text: str, told: tuple[str, str] | None) -> None:
+    assert plain_number(text) == told
+
+
+@pytest.mark.parametrize(
+    ("text", "meant"),
+    [("1 sample", "samples"), ("1 sampels", "samples"), ("100 us", "time"), ("1 msec", "time"), ("1 V", "time")],
+)
+def test_the_dimension_that_was_meant_is_told_by_the_unit(text: str, meant: Dimension) -> None:
+    assert dimension_meant(text, ("time", "samples")) == meant
 
 
 pieces = st.lists(

@@ -8,6 +8,7 @@ from pathlib import Path
 from typing import Any, TypeAlias, TypedDict
 
 from realize.algebra.expression import exact_text, format_transfer
+from realize.algebra.expression.tokens import nearest, shown
 from realize.api.discrete import period_of, rate_of, transfer_of
 from realize.api.entries import Number, Real, Reals, entry, text_of
 from realize.api.transfer import TransferFunction
@@ -66,6 +67,32 @@ def design_of(
     overrides = Overrides(rate_of(rate, rate_hz), period_of(period, period_s), name, method, numbers)
     with in_keywords():
         return _loaded(design, overrides)
+
+
+def design_for(call: str, design: DesignLike, changes: Changes, *own: str) -> Design:
+    """Read a design for a public function, as :func:`design_of`.
+
+    Parameters
+    ----------
+    call : str
+        Name of the function.
+    design, changes
+        As they were given to it.
+    *own : str
+        Keywords that it has besides those of a design.
+
+    Raises
+    ------
+    TypeError
+        When it has no such keyword.
+    """
+    known = (*Changes.__annotations__, *own)
+    for key in changes:
+        if key not in known:
+            like = nearest(key, known)
+            advice = f"did you mean {like}?" if like else f"help(realize.{call})"
+            raise TypeError(str(RealizeError(call, f"the unknown keyword {shown(key)}", ", ".join(known), advice)))
+    return design_of(design, **changes)
 
 
 def _loaded(design: DesignLike, overrides: Overrides) -> Design:

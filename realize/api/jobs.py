@@ -5,7 +5,7 @@ from __future__ import annotations
 import os
 from typing import Unpack
 
-from realize.api.designs import Changes, DesignLike, design_of
+from realize.api.designs import Changes, DesignLike, design_for
 from realize.api.results import Assessment, Comparison, Emission
 from realize.api.wording import in_keywords
 from realize.errors import RealizeError
@@ -39,6 +39,8 @@ def assess(design: DesignLike, **changes: Unpack[Changes]) -> Assessment:
         When the design cannot be read or understood; it has ``where``, ``found``, ``allowed`` and ``advice``.
     Refused
         When a cancellation in it hides a growing mode, or its plant is improper.
+    TypeError
+        When there is no such keyword.
 
     Examples
     --------
@@ -47,7 +49,7 @@ def assess(design: DesignLike, **changes: Unpack[Changes]) -> Assessment:
     >>> found.realizable, found.proposals[0].pole_rad_s
     (False, Fraction(1070, 1))
     """
-    read = design_of(design, **changes)
+    read = design_for("assess", design, changes)
     with in_keywords():
         return Assessment(read, assess_design(read))
 
@@ -64,7 +66,7 @@ def compare(design: DesignLike, **changes: Unpack[Changes]) -> Comparison:
     ------
     RealizeError
         As for :func:`assess`, and when the design has no sample rate.
-    Refused
+    Refused, TypeError
         As for :func:`assess`.
 
     Examples
@@ -75,7 +77,7 @@ def compare(design: DesignLike, **changes: Unpack[Changes]) -> Comparison:
     >>> found.acceptable, found.chosen.discrete.denominator.tolist()
     (True, [1.0, -0.9900498337491681])
     """
-    read = design_of(design, **changes)
+    read = design_for("compare", design, changes)
     with in_keywords():
         return Comparison(compare_methods(read))
 
@@ -96,6 +98,8 @@ def emit(design: DesignLike, out: str | os.PathLike[str] | None = None, **change
         As for :func:`compare`, and when a file cannot be written.
     Refused
         When the design is improper without a roll-off, unstable, or out of tolerance.
+    TypeError
+        As for :func:`assess`.
 
     Examples
     --------
@@ -106,7 +110,7 @@ def emit(design: DesignLike, out: str | os.PathLike[str] | None = None, **change
     """
     if out is not None and not os.fspath(out).strip():
         raise RealizeError("out", "an empty name", "a directory for the files", 'out="firmware", or out="." for here')
-    read = design_of(design, **changes)
+    read = design_for("emit", design, changes, "out")
     with in_keywords():
         emitted = emit_design(read)
         return Emission(emitted, () if out is None else write_all(os.fspath(out), emitted.files))

@@ -45,8 +45,6 @@ def assess(design: str, as_json: bool, **options: Any) -> None:
 def compare(design: str, as_json: bool, **options: Any) -> None:
     """Put every method side by side at the chosen rate, with what it did to the design.
 
-    Exit status 0 when the named or the recommended method is acceptable, else 1.
-
     \b
     Example: realize compare "5*(0.2*s + 1)/(0.02*s + 1)" --rate "200 Hz"
     """
@@ -71,8 +69,7 @@ def rates(design: str, as_json: bool, low: str | None, high: str | None, points:
     A method's rate is the lowest from which all higher ones in the range pass every check. The
     design's own rate is not needed, and a method that the design file names does not hide the
     others: --method does. Progress goes to standard error: a bar on a terminal, else a line for
-    each tenth. Exit status 0 whether or not a method has such a rate; 2 when the design has an error
-    that no rate mends.
+    each tenth.
 
     \b
     Example: realize rates roller_gap.toml --from "200 Hz" --to "20 kHz"
@@ -99,7 +96,6 @@ def words(design: str, as_json: bool, **options: Any) -> None:
     """Put structures and word lengths side by side: what integers of 16 and 32 bits do to DESIGN.
 
     Needs range and per_count of both signals; the arithmetic that the design names does not matter.
-    Exit status 0 when there is a structure that is within every tolerance, else 1.
 
     \b
     Example: realize words roller_gap.toml

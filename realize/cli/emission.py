@@ -25,13 +25,15 @@ def emit(
 ) -> None:
     """Do the whole job and write the C files, the vectors and the record: all or none.
 
-    Refused with exit status 1 when the design is improper, unstable or out of tolerance. A file
-    whose content would stay the same is left alone, so that a build does not compile it again.
-    A design with a [schedule] also has a table of coefficients, and NAME_at, which looks them up.
+    Give one DESIGN, several design files, or --all DIR in their place.
+
+    A file whose content would stay the same is left alone, so that a build does not compile it
+    again. A design with a [schedule] also has a table of coefficients, and NAME_at, which looks them
+    up.
 
     Several design files are emitted side by side, each all or none: one that is refused does not
-    stop the others. The exit status is then the worst of them: 0 when all are written, 1 when one is
-    refused, 2 when one has an error. What overrides the file overrides each of them.
+    stop the others. The exit status is then the worst of them. What overrides the file overrides
+    each of them.
 
     \b
     Example: realize emit roller_gap.toml --out firmware
@@ -61,6 +63,7 @@ def _emit_one(design: str, as_json: bool, out: str, dependencies: str | None, op
         show(emit_document(emitted, paths))
     else:
         show(emit_text(emitted, paths))
+        _tell_left_over(out, loaded.name, emitted.files)
 
 
 def _emit_several(
@@ -82,8 +85,21 @@ def _emit_several(
     follow = with_progress(len(paths), "emit")
     found = emit_all(paths, Path(out), overrides(options), _rule_file(dependencies), follow=follow)
     show(several_document(found) if as_json else several_text(found, out))
+    for result in found:
+        if result.name and result.summary and not as_json:
+            _tell_left_over(out, result.name, result.summary.files)
     if exit_status(found):
         sys.exit(exit_status(found))
+
+
+def _tell_left_over(out: str, name: str, written: Iterable[str]) -> None:
+    """Tell what a build that takes every file of the directory would take for a part of the design."""
+    from realize.algebra.expression.tokens import printable
+    from realize.firmware.files import left_over
+
+    found = left_over(out, name, written)
+    if found is not None:
+        click.echo(f"left from an earlier emission: {printable(str(found))}; nothing includes it")
 
 
 def _rule(

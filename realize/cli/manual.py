@@ -7,7 +7,7 @@ from collections.abc import Mapping
 #: What an exit status says, where a command has nothing more to say about it.
 _GOOD, _REFUSED, _UNREADABLE = (
     "done",
-    "refused, or out of tolerance; nothing was written",
+    "the answer is no: see the command's own help",
     "the input is not understood",
 )
 

@@ -39,7 +39,7 @@ def _required_unless_all(context: click.Context, argument: click.Parameter, give
 
 _ONE_DESIGN = click.argument("design", metavar="DESIGN")
 
-_SOME_DESIGNS = click.argument("design", metavar="DESIGN...", nargs=-1, callback=_required_unless_all)
+_SOME_DESIGNS = click.argument("design", metavar="[DESIGN]...", nargs=-1, callback=_required_unless_all)
 
 
 def takes_design(

@@ -21,8 +21,8 @@ def trial(record: str, on: str, compiler: str | None, clock: str | None, as_json
     """Compile the emitted code, run it on CPU against its vectors, and compare bit for bit.
 
     CPU is host, cortex-m0, cortex-m3, cortex-m4f, cortex-m7f, rv32imac, or all of them. Says what
-    the code takes there: bytes, stack, and instructions per sample. Exit status 1 at a difference.
-    The compiler and the emulator come with: pip install "realize[target]"
+    the code takes there: bytes, stack, and instructions per sample. The compiler and the emulator
+    come with: pip install "realize[target]"
 
     \b
     Example: realize trial firmware/roller_gap.record.json --on cortex-m0 --clock "48 MHz"
@@ -48,9 +48,9 @@ def trial(record: str, on: str, compiler: str | None, clock: str | None, as_json
 def audit(record: str, design: str | None, as_json: bool) -> None:
     """Compute everything in RECORD anew and compare: files, coefficients, checks, and what scipy says.
 
-    One line and exit status 0 when nothing differs; else every difference in words, and 1. What the
-    command line overrode at emission counts as a difference from the design file. The second
-    opinion needs scipy: pip install "realize[audit]"
+    One line when nothing differs, else every difference in words. What the command line overrode at
+    emission counts as a difference from the design file. The second opinion needs scipy:
+    pip install "realize[audit]"
 
     \b
     Example: realize audit firmware/roller_gap.record.json --design roller_gap.toml
@@ -71,7 +71,7 @@ def audit(record: str, design: str | None, as_json: bool) -> None:
 def differ(old: str, new: str, as_json: bool) -> None:
     """Say what changed between two records, in engineering terms: for a review.
 
-    Gains, poles, margins, words, checks, files and all else. Exit status 0 when nothing differs, else 1.
+    Gains, poles, margins, words, checks, files and all else.
 
     \b
     Example: realize differ released/roller_gap.record.json firmware/roller_gap.record.json

@@ -67,14 +67,23 @@ def read_controller(table: Table, overrides: Mapping[str, str], elsewhere: Colle
             raise useless(name, f"--value {name}", known)
     values = resolve(written)
     numerator, denominator = _POLYNOMIALS[form](table, values)
-    transfer = reduced(numerator, denominator, table.where(form[0]))
+    transfer = reduced(numerator, denominator, table.where(form[0]), table.where(form[1]) if form[1:] else "")
     refuse_unused(table.table("values"), overrides, roots)
     text = str(table.entries["transfer"]) if "transfer" in table else _readable(numerator, denominator)
     return Controller(transfer, " ".join(text.split()), tuple(values.items()))
 
 
-def reduced(numerator: poly.Rationals, denominator: poly.Rationals, where: str) -> TransferFunction:
+def reduced(
+    numerator: poly.Rationals, denominator: poly.Rationals, where: str, where_denominator: str = ""
+) -> TransferFunction:
     """Reduce to lowest terms; what cannot be is refused by the name of the place.
+
+    Parameters
+    ----------
+    numerator, denominator : tuple of Fraction
+        Descending powers.
+    where, where_denominator : str
+        The places they stand in, as the user knows them; by default one for both.
 
     Raises
     ------
@@ -84,7 +93,8 @@ def reduced(numerator: poly.Rationals, denominator: poly.Rationals, where: str) 
         When a cancellation hides a growing mode.
     """
     if not any(denominator):
-        raise RealizeError(where, "a denominator of zero", "a denominator other than zero", "check the coefficients")
+        place = where_denominator or where
+        raise RealizeError(place, "a denominator of zero", "a denominator other than zero", "check the coefficients")
     if not any(numerator):
         raise RealizeError(
             where,

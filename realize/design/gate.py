@@ -8,13 +8,14 @@ from __future__ import annotations
 from collections.abc import Iterable, Mapping, Sequence
 from fractions import Fraction
 from math import ceil, floor
+from types import MappingProxyType
 from typing import TypeGuard
 
 from realize.algebra.expression import evaluate_constant, read_exact
 from realize.algebra.expression.ratio import MAX_BITS, UnfitError
 from realize.algebra.expression.tokens import VALUES_TABLE, listed, literal, nearest, shown
 from realize.errors import RealizeError
-from realize.quantity import Dimension, parse_quantity, quantity_allowed
+from realize.quantity import Dimension, parse_quantity, plain_number, quantity_allowed
 
 #: Longest line of text (about, requirement, ...): two lines of a comment of 100 columns.
 MAX_TEXT = 200
@@ -134,9 +135,11 @@ class Table:
             raise self.error(key, described(value), "an expression in s, in quotes", f'write {key} = "{example}"')
         return value
 
-    def choice(self, key: str, options: Sequence[str], default: str) -> str:
-        """Read one word of several."""
-        return checked_choice(self.entries.get(key, default), options, self.where(key))
+    def choice(
+        self, key: str, options: Sequence[str], default: str, meant: Mapping[str, str] = MappingProxyType({})
+    ) -> str:
+        """Read one word of several; what other words are meant for may be told."""
+        return checked_choice(self.entries.get(key, default), options, self.where(key), meant)
 
     def flag(self, key: str, default: bool) -> bool:
         """Read true or false."""
@@ -214,6 +217,7 @@ def checked_number(
     if exact is not None:
         return exact
     if isinstance(value, str):
+        _refuse_quantity(value, values, where)
         return evaluate_constant(value, values, where, values_table)
     raise RealizeError(where, described(value), _NUMBER, "write a number")
 
@@ -239,11 +243,13 @@ def within_range(value: Fraction, where: str) -> Fraction:
     return value
 
 
-def checked_choice(value: object, options: Sequence[str], where: str) -> str:
-    """Read one word of several."""
+def checked_choice(
+    value: object, options: Sequence[str], where: str, meant: Mapping[str, str] = MappingProxyType({})
+) -> str:
+    """Read one word of several; what other words are meant for may be told."""
     if isinstance(value, str) and value in options:
         return value
-    like = nearest(value, options) if isinstance(value, str) else None
+    like = (meant.get(value.lower()) or nearest(value, options)) if isinstance(value, str) else None
     advice = f'did you mean "{like}"?' if like else "write one of these, in quotes"
     raise RealizeError(where, described(value), listed(options), advice)
 
@@ -262,6 +268,13 @@ def described(value: object) -> str:
         return "nothing"
     kinds = {list: "a list", dict: "a table", float: "a binary number"}
     return kinds.get(type(value), "a date or a time")
+
+
+def _refuse_quantity(text: str, names: Mapping[str, Fraction], where: str) -> None:
+    """Refuse a time or frequency where a plain number is wanted; a named value may be called as a unit is."""
+    found = plain_number(text)
+    if found is not None and found[0] not in names:
+        raise RealizeError(where, shown(text), "a plain number, in SI units: it has no unit here", f"write {found[1]}")
 
 
 def _integers_near(value: object, low: int, high: int) -> str:

@@ -22,7 +22,7 @@ from realize.design.values import (
     written_values,
 )
 from realize.errors import RealizeError, Refused
-from realize.quantity import format_engineering
+from realize.quantity import dimension_meant, format_engineering
 from realize.transfer import TransferFunction
 
 #: Most cases beside the nominal one: both ends of five values.
@@ -136,13 +136,13 @@ def read_loop(table: Table) -> LoopTable:
     jitter_s = table.quantity("jitter", "time", zero=True)
     if "compute_delay" not in table:
         return LoopTable(jitter_s=jitter_s)
-    in_samples = "sample" in str(table.entries["compute_delay"])
+    dimension = dimension_meant(str(table.entries["compute_delay"]), ("time", "samples"))
     try:
-        delay = table.quantity("compute_delay", "samples" if in_samples else "time", zero=True)
+        delay = table.quantity("compute_delay", dimension, zero=True)
     except RealizeError as error:
         allowed = 'a number of samples, or a time: "1 sample", "100 us"'
         raise RealizeError(error.where, error.found, allowed, error.advice) from None
-    return LoopTable(delay, None, jitter_s) if in_samples else LoopTable(None, delay, jitter_s)
+    return LoopTable(delay, None, jitter_s) if dimension == "samples" else LoopTable(None, delay, jitter_s)
 
 
 def _refuse_two_descriptions(table: Table) -> None:

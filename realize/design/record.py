@@ -194,7 +194,7 @@ def _transfer(table: Table) -> TransferFunction:
     numerator, denominator = (
         poly.multiply(_coefficients(table, key), cancelled) for key in ("numerator", "denominator")
     )
-    return reduced(numerator, denominator, table.where("numerator"))
+    return reduced(numerator, denominator, table.where("numerator"), table.where("denominator"))
 
 
 def _coefficients(table: Table, key: str) -> poly.Rationals:

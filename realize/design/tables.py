@@ -64,6 +64,9 @@ _DEFAULT_NAME = "controller"
 _INTEGER_TYPES = ("int16", "int32")
 _FLOAT_TYPES = {"float": "float32", "float32": "float32", "double": "float64", "float64": "float64"}
 
+#: What is meant by the names C has for numbers, where a width is asked for; int is 32 bits wide on most processors.
+_C_NAMES = {"float": "float32", "double": "float64", "int": "int32", "short": "int16"}
+
 _TARGET_KEYS = (
     *("arithmetic", "structure", "coefficients", "recursion_sign"),
     *("anti_windup", "tracking_time", "guard_nonfinite"),
@@ -211,7 +214,7 @@ def read_target(table: Table) -> Target:
     """Read what the code is written for."""
     default = DEFAULT_TARGET
     table.only(_TARGET_KEYS)
-    arithmetic = table.choice("arithmetic", ("float32", "float64", *_INTEGER_TYPES), default.arithmetic)
+    arithmetic = table.choice("arithmetic", ("float32", "float64", *_INTEGER_TYPES), default.arithmetic, _C_NAMES)
     target = Target(
         arithmetic=arithmetic,
         structure=table.choice("structure", _structures(arithmetic), default.structure),
@@ -413,7 +416,7 @@ def _signal_type(table: Table, target: Target) -> str | None:
     """The C type at the interface: of counts in integer arithmetic, else that of the arithmetic."""
     if "type" not in table:
         return None
-    name = table.choice("type", (*_FLOAT_TYPES, *COUNT_TYPES), target.arithmetic)
+    name = table.choice("type", (*_FLOAT_TYPES, *COUNT_TYPES), target.arithmetic, _C_NAMES)
     if target.arithmetic in _INTEGER_TYPES and name in COUNT_TYPES:
         return name
     if target.arithmetic in _INTEGER_TYPES:

@@ -158,6 +158,18 @@ def exit_status(results: Iterable[Result]) -> int:
     return max((result.error.exit_status for result in results if result.error), default=0)
 
 
+def shared_names(results: Iterable[Result]) -> dict[str, list[str]]:
+    """Names that several designs have, in small letters, with the paths of their files.
+
+    Names that differ in capitals alone are the same to some file systems.
+    """
+    paths: dict[str, list[str]] = {}
+    for result in results:
+        if result.name is not None:
+            paths.setdefault(result.name.lower(), []).append(result.path)
+    return {name: found for name, found in paths.items() if len(found) > 1}
+
+
 def _refuse_no_file(design: str) -> None:
     if design.lower().endswith(_ENDING):
         return
@@ -208,30 +220,27 @@ def _summary(chosen: MethodResult, arithmetic: str, files: Mapping[str, str], so
 
 
 def _without_collisions(results: Sequence[Result]) -> list[Result]:
-    """Refuse every design whose name another one has: there is one set of files for both.
-
-    Names that differ in capitals alone are the same to some file systems.
-    """
-    paths: dict[str, list[str]] = {}
-    for result in results:
-        if result.name is not None:
-            paths.setdefault(result.name.lower(), []).append(result.path)
-    return [_refused_name(result, paths[result.name.lower()]) if result.name else result for result in results]
+    """Refuse every design whose name another one has: there is one set of files for both."""
+    shared = shared_names(results)
+    return [
+        _refused_name(result, shared[result.name.lower()]) if result.name and result.name.lower() in shared else result
+        for result in results
+    ]
 
 
 def _refused_name(result: Result, paths: Sequence[str]) -> Result:
-    if len(paths) < 2:
-        return result
-    others = list(paths)
-    others.remove(result.path)
-    return result.failed(
-        RealizeError(
-            f"{printable(result.path)}, [design] name",
-            f"the name {result.name}, whose files those of {' and '.join(map(printable, others))} would replace",
-            "a name of its own for every design of one run; capitals make no difference",
-            "rename one, or emit it into another directory",
-        )
-    )
+    found, advice = _shared_name(result.name or "", [printable(path) for path in paths])
+    allowed = "a name of its own for every design of one run"
+    return result.failed(RealizeError(f"{printable(result.path)}, [design] name", found, allowed, advice))
+
+
+def _shared_name(name: str, paths: Sequence[str]) -> tuple[str, str]:
+    """What is said of a name that several have, and what to try."""
+    *others, last = dict.fromkeys(paths)
+    if not others:
+        return f"the name {name} again: the file is given {len(paths)} times", "give it once"
+    have = f"{', '.join(others)} and {last} {'both' if len(others) == 1 else 'all'} have"
+    return f"the name {name}, which {have} (capitals make no difference)", "rename one, or give each a directory"
 
 
 def _written(results: Iterable[Result], folder: Path, rule_file: Path | None) -> tuple[Result, ...]:

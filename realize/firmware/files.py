@@ -8,7 +8,7 @@ so that a build does not compile it again.
 from __future__ import annotations
 
 import os
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from pathlib import Path
 
 from realize.errors import RealizeError
@@ -58,6 +58,22 @@ def write_all(
             "name another directory with --out; nothing was written",
         ) from error
     return [folder / name for name in contents]
+
+
+def left_over(directory: Path | str, name: str, written: Iterable[str]) -> Path | None:
+    """Find the table of an earlier emission, whose design had a schedule; it is nobody's any more.
+
+    Parameters
+    ----------
+    directory : Path or str
+        Where the files of the design were written.
+    name : str
+        Name of the design.
+    written : iterable of str
+        Names of its files.
+    """
+    path = Path(directory) / f"{name}_schedule.h"
+    return path if path.name not in written and path.is_file() else None
 
 
 def write_new(path: Path | str, text: str) -> Path:

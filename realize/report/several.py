@@ -9,7 +9,7 @@ from collections.abc import Sequence
 from realize.algebra.expression.tokens import printable
 from realize.design.tables import MAX_NAME
 from realize.errors import RealizeError
-from realize.firmware.batch import Result, Summary
+from realize.firmware.batch import Result, Summary, shared_names
 from realize.firmware.recorded import ENDING
 from realize.report.documents import SCHEMA, Document, error_document
 from realize.report.paragraphs import AGREED, WIDTH, bullets, heading, table, wrapped
@@ -44,10 +44,12 @@ def several_text(results: Sequence[Result], out: str) -> str:
     blocks = [wrapped(_first(results, out)), _table(results) + wrapped(_KEY)]
     agreed = [f"{r.name}: {', '.join(r.summary.agreed)}" for r in results if r.summary and r.summary.agreed]
     blocks += [heading("Accepted deviations") + bullets(agreed)] if agreed else []
+    colliding = {path for paths in shared_names(results).values() for path in paths}
     for status, (_, title) in _VERDICTS.items():
-        told = [_error_text(r.path, r.error) for r in results if r.error and r.error.exit_status == status]
+        failed = [(r.path, r.error) for r in results if r.error and r.error.exit_status == status]
+        told = [_error_text(path, error, with_advice=path in colliding) for path, error in failed]
         blocks += [heading(title) + bullets(told)] if told else []
-    blocks += [wrapped(_ALONE)] if any(r.error for r in results) else []
+    blocks += [wrapped(_ALONE)] if any(r.error and r.path not in colliding for r in results) else []
     return "\n".join([*blocks, wrapped(CAUTION)] if any(r.written for r in results) else blocks)
 
 
@@ -92,9 +94,9 @@ def _emitted_cells(summary: Summary) -> list[str]:
     return [summary.method, summary.structure, summary.arithmetic, check, share + (AGREED if agreed else "")]
 
 
-def _error_text(path: str, error: RealizeError) -> str:
-    """The first line of an error, with the file it is about."""
-    said = f"{error.where}: {error.found.splitlines()[0]}"
+def _error_text(path: str, error: RealizeError, *, with_advice: bool) -> str:
+    """The first line of an error, with the file it is about; the advice where that design by itself has no error."""
+    said = f"{error.where}: {error.found.splitlines()[0]}" + (f"; {error.advice}" if with_advice else "")
     return said if error.where.startswith(printable(path)) else f"{printable(path)}: {said}"
 
 

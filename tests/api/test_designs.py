@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import tomllib
+from collections.abc import Callable
 from fractions import Fraction
 from pathlib import Path
 from typing import Any
@@ -12,7 +13,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from realize import RealizeError, TransferFunction, assess, compare
+from realize import RealizeError, TransferFunction, assess, compare, emit
 from realize.api.designs import design_of
 from realize.design import load_design
 
@@ -105,9 +106,24 @@ def test_what_cannot_be_read_is_refused_by_its_place(
     assert "--" not in str(refusal.value)
 
 
-def test_an_unknown_keyword_is_python_s() -> None:
-    with pytest.raises(TypeError, match="unexpected keyword argument 'rat'"):
-        assess("1/s", rat="1 Hz")  # type: ignore[call-arg]
+@pytest.mark.parametrize(
+    ("call", "keyword", "advice"),
+    [
+        (assess, "rat", "did you mean rate?"),
+        (compare, "mehtod", "did you mean method?"),
+        (emit, "ouut", "did you mean out?"),
+        (compare, "xyzzy", "help(realize.compare)"),
+    ],
+)
+def test_an_unknown_keyword_is_python_s_error_and_names_the_function(
+    call: Callable[..., object], keyword: str, advice: str
+) -> None:
+    with pytest.raises(TypeError) as caught:
+        call("1/s", **{keyword: "1 Hz"})
+    first, allowed, last = str(caught.value).splitlines()
+    assert first == f'{call.__name__}: the unknown keyword "{keyword}"'
+    assert allowed.startswith("  allowed: rate, period, ")
+    assert last == f"  try: {advice}"
 
 
 def test_a_design_without_a_rate_is_told_in_keywords() -> None:

@@ -37,6 +37,11 @@ def test_every_name_is_there_and_documented(name: str) -> None:
     assert name in vars(realize)
 
 
-def test_a_name_that_is_not_there_is_told_as_python_tells_it() -> None:
-    with pytest.raises(AttributeError, match="module 'realize' has no attribute 'disctretize'"):
+def test_a_name_that_is_not_there_is_told_as_python_tells_it_with_those_that_are() -> None:
+    with pytest.raises(AttributeError, match=r"module 'realize' has no attribute 'disctretize'; it has .*, emit"):
         realize.__getattr__("disctretize")
+
+
+def test_the_names_it_lists_are_those_it_offers() -> None:
+    assert [name for name in dir(realize) if not name.startswith("__")] == sorted(realize.__all__)
+    assert {"__doc__", "__name__", "__all__"} <= set(dir(realize))

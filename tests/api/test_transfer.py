@@ -169,7 +169,7 @@ def test_a_loop_around_an_unstable_plant_is_closed_but_division_would_hide_its_m
         (lambda g: g * float("nan"), "TransferFunction", "nan, which is no finite number"),
         (lambda g: g**40, "TransferFunction", "a polynomial of degree 40 in s"),
         (lambda g: g**0.5, "TransferFunction", "an exponent that is not an integer"),
-        (lambda g: TransferFunction([1], [0, 0]), "TransferFunction, numerator", "a denominator of zero"),
+        (lambda g: TransferFunction([1], [0, 0]), "TransferFunction, denominator", "a denominator of zero"),
         (
             lambda g: TransferFunction([1, "x"]),
             "TransferFunction, numerator, entry 2, column 1",

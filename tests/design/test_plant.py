@@ -336,7 +336,8 @@ J = '[plant]\ntransfer = "1/(J*s)"\n[plant.values]\nJ = 2\n'
         ('[plant]\ntransfer = "exp(-0.05*s)/s"\ndead_time = "1 ms"', "[plant] dead_time", TWICE, "one of the two"),
         ('[plant]\ntransfer = "exp(-0.05*s)/s"\ndead_time = "0 s"', "[plant] dead_time", "stands twice", "their sum"),
         (J + CASE.format("a", '"K-1" = 1'), "[[plant.case]] number 1, values, K-1", '"K-1"', "rename"),
-        (J + CASE.format("a", 'J = "2s"'), "[[plant.case]] number 1, values, J, column 2", "right after", "2*s"),
+        (J + CASE.format("a", 'J = "2 pi"'), "[[plant.case]] number 1, values, J, column 3", "right after", "2*pi"),
+        (J + CASE.format("a", 'J = "2s"'), "[[plant.case]] number 1, values, J", '"2s"', "write 2 for s"),
         (J + CASE.format("a", 'J = "M"'), "[[plant.case]] number 1, values, J, column 1", '"M"', "[plant.values]"),
         (J + CASE.format("a", "J = 0"), '[plant] transfer, case "a", column 2', "division by zero", "values"),
         (
@@ -350,6 +351,7 @@ J = '[plant]\ntransfer = "1/(J*s)"\n[plant.values]\nJ = 2\n'
         ('[plant]\ntransfer = "1"\n[loop]\ndelay = 1', "[loop]", 'the unknown key "delay"', "compute_delay?"),
         ('[plant]\ntransfer = "1"\n[loop]\ncompute_delay = 1', "[loop] compute_delay", "the number 1", "in quotes"),
         ('[plant]\ntransfer = "1"\n[loop]\ncompute_delay = "1 V"', "[loop] compute_delay", 'the unit "V"', "a time"),
+        ('[plant]\ntransfer = "1"\n[loop]\ncompute_delay = "1 sampels"', "[loop] compute_delay", "sampels", "samples?"),
         ('[plant]\ntransfer = "1"\n[loop]\ncompute_delay = "-1 sample"', "[loop] compute_delay", '"-1 s', "sign"),
         ('[plant]\ntransfer = "1"\n[loop]\njitter = "1"', "[loop] jitter", "without a unit", "add the unit"),
         ('[plant]\ntransfer = "1"\n[loop]\njitter = "1 sample"', "[loop] jitter", "number of samples", "a time"),

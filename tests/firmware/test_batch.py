@@ -117,11 +117,12 @@ def test_designs_of_one_name_are_refused_by_both_paths_and_the_others_written(tm
     first, second = lag(tmp_path, "one", LAG.replace("NAME", "gap")), lag(tmp_path, "two", LAG.replace("NAME", other))
     found = emit_all([first, lag(tmp_path, "lone"), second], tmp_path / "out", Overrides(), workers=1)
     assert [result.error is None for result in found] == [False, True, False]
-    for result, own, rival in ((found[0], first, second), (found[2], second, first)):
+    for result, own in ((found[0], first), (found[2], second)):
         assert result.error is not None
         assert result.error.exit_status == 2
         assert result.error.where.startswith(own)
-        assert rival in result.error.found
+        assert f"which {first} and {second} both have (capitals make no difference)" in result.error.found
+        assert result.error.advice == "rename one, or give each a directory"
     assert {name.split(".")[0].split("_")[0] for name in contents(tmp_path / "out")} == {"lone"}
 
 
@@ -129,7 +130,18 @@ def test_the_same_file_twice_is_refused(tmp_path: Path) -> None:
     path = lag(tmp_path, "one")
     found = emit_all([path, path], tmp_path / "out", Overrides(), workers=1)
     assert exit_status(found) == 2
+    assert {result.error and result.error.found for result in found} == {
+        "the name one again: the file is given 2 times"
+    }
     assert contents(tmp_path / "out") == {}
+
+
+def test_three_of_one_name_are_all_listed(tmp_path: Path) -> None:
+    paths = [lag(tmp_path, name, LAG.replace("NAME", "gap")) for name in ("a", "b", "c")]
+    found = emit_all(paths, tmp_path / "out", Overrides(), workers=1)
+    for result in found:
+        assert result.error is not None
+        assert f"which {paths[0]}, {paths[1]} and {paths[2]} all have" in result.error.found
 
 
 def test_the_rules_of_all_that_is_written_stand_in_one_file(tmp_path: Path) -> None:

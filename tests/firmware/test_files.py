@@ -8,7 +8,7 @@ from pathlib import Path
 import pytest
 
 from realize.errors import RealizeError
-from realize.firmware.files import write_all, write_new
+from realize.firmware.files import left_over, write_all, write_new
 
 TEXTS = {"a.h": "header\n", "a.c": "source \u00b5\n", "a.record.json": "{}\n"}
 
@@ -140,3 +140,10 @@ def test_a_file_beside_is_of_the_same_set(tmp_path: Path, monkeypatch: pytest.Mo
     before = aged(rule)
     write_all(tmp_path / "out", TEXTS, {rule: "rule\n"})
     assert rule.stat().st_mtime_ns == before
+
+
+def test_the_table_of_an_earlier_schedule_is_left_over_where_it_is_and_was_not_written(tmp_path: Path) -> None:
+    assert left_over(tmp_path, "gap", ["gap.h"]) is None
+    (tmp_path / "gap_schedule.h").touch()
+    assert left_over(tmp_path, "gap", ["gap.h"]) == tmp_path / "gap_schedule.h"
+    assert left_over(tmp_path, "gap", ["gap.h", "gap_schedule.h"]) is None

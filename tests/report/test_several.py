@@ -110,6 +110,29 @@ def test_refused_is_status_1_and_nothing_written_has_no_caution(
     assert not Path("out").exists()
 
 
+def test_the_table_of_a_schedule_that_is_no_more_is_told(designs: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    Path("out").mkdir()
+    for name in ("good", "improper"):
+        Path("out", f"{name}_schedule.h").write_text("", encoding="utf-8")
+    _, out, _ = run(capsys, "emit", "designs/good.toml", "designs/improper.toml", "--out", "out")
+    left = [line for line in out.splitlines() if line.startswith("left from an earlier emission: ")]
+    assert left == [f"left from an earlier emission: {Path('out', 'good_schedule.h')}; nothing includes it"]
+
+
+def test_of_names_that_collide_it_says_what_to_try_and_nothing_on_emitting_alone(
+    designs: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    alone = "`realize emit` on one of these by itself"
+    (designs / "twin.toml").write_text(LAG.replace("NAME", "good"), encoding="utf-8")
+    status, out, _ = run(capsys, "emit", "designs/good.toml", "designs/twin.toml", "--out", "out")
+    assert status == 2
+    told = " ".join(out.split())
+    assert "which designs/good.toml and designs/twin.toml both have (capitals make no difference); rename one" in told
+    assert alone not in out
+    _, out, _ = run(capsys, "emit", "designs/good.toml", "designs/twin.toml", "designs/improper.toml", "--out", "out")
+    assert alone in out
+
+
 def strict(text: str) -> dict[str, Any]:
     def refuse(constant: str) -> None:
         raise AssertionError(f"{constant} is no JSON")

@@ -300,11 +300,20 @@ class _Reader:
         if token.text == ")":
             return UnfitError("a ) without its (", "as many ) as (", "remove it, or open it")
         product = f"{before.text}*{token.text}"
+        advice = f"write {product}" if len(product) <= 40 else "write a * between them"
+        is_word = (before.kind, token.kind) == ("number", "name")
+        looks_like_a_unit = is_word and token.text != "exp" and not self._like(token.text)
         return UnfitError(
             f"{shown(token.text)} right after {shown(before.text)}",
             "an operator between two operands; a product is never implied",
-            f"write {product}" if len(product) <= 40 else "write a * between them",
+            self._without_unit(token.text, advice) if looks_like_a_unit else advice,
         )
+
+    def _without_unit(self, name: str, product: str) -> str:
+        """What to do about a number with an unknown word behind it: a unit, or in a transfer a name yet to be given."""
+        if not self._with_variable:
+            return "a value has no unit: write the number alone"
+        return f"{product} and {self._define(name)}; a unit is not written"
 
     def _known(self) -> list[str]:
         return [
@@ -324,14 +333,20 @@ class _Reader:
             return UnfitError(f"{name}, which is no finite number", "finite numbers", "write a number")
         if name == "exp":
             return self._no_exponential(allowed)
-        reserved = ("s", "pi", *self._functions)
-        like = next((r for r in reserved if r == name.casefold()), None) or nearest(name, self._values)
-        define = f"define {shown(name)[1:-1]} under {self._source.values_table}, or give it with --value"
+        like, define = self._like(name), self._define(name)
         return UnfitError(
             f"the unknown name {shown(name)}",
             allowed,
             f"did you mean {like}? If not, {define}" if like else define,
         )
+
+    def _like(self, name: str) -> str | None:
+        """The name that was meant, where one is like it."""
+        reserved = (*(["s"] if self._with_variable else []), "pi", *self._functions)
+        return next((r for r in reserved if r == name.casefold()), None) or nearest(name, self._values)
+
+    def _define(self, name: str) -> str:
+        return f"define {shown(name)[1:-1]} under {self._source.values_table}, or give it with --value"
 
     def _no_exponential(self, allowed: str) -> UnfitError:
         if not self._with_variable:

@@ -59,6 +59,7 @@ _STAND_INS = {
     "\N{SQUARE ROOT}": "sqrt(...)",
     "\N{NO-BREAK SPACE}": "a plain space",
     ",": ". (a decimal point)",
+    "%": "/100",
     "[": "(",
     "]": ")",
     "{": "(",

@@ -30,13 +30,16 @@ from realize.firmware.integer.emission import IntegerEmission
 from realize.firmware.integer.record import ceiling_text
 from realize.firmware.integer.spelling import Spelling, ctype, port_type
 
+#: How several sections stand to each other.
+_ARRANGEMENTS = ("one after the other", "beside each other")
+
 #: What a section is in each structure.
 FORMS = {
     "direct": "in direct form I",
     "cascade": "in direct form I, one after the other",
     "error-feedback": "in direct form I, one after the other; what rounding discards is added back in the next sample",
     "delta": "in the operator z - 1, one after the other",
-    "normal": "one after the other, pairs of poles in normal (coupled) form",
+    "normal": "in normal (coupled) form where poles are a pair, one after the other",
     "parallel": "in direct form I, beside each other",
 }
 
@@ -98,9 +101,17 @@ def _structure(emission: IntegerEmission) -> str:
     integral = realization.program.integral
     states = counted(len(integral.stored) if integral else 0, "integral state")
     bits = f" of {integral.word.bits} bits with {integral.word.fraction_bits} fraction bits" if integral else ""
-    form = f" {FORMS[realization.structure]}" if sections else ""
+    form = f" {_form(realization.structure, len(sections))}" if sections else ""
     anew = "; numerators chosen anew for the rounded denominators" if realization.numerators_anew else ""
     return f"{realization.structure}: {counted(len(sections), 'section')}{form}; {states}{bits}{anew}"
+
+
+def _form(structure: str, count: int) -> str:
+    """What the sections are; how they are arranged only where there are several."""
+    text = FORMS[structure]
+    for arranged in _ARRANGEMENTS if count == 1 else ():
+        text = text.replace(f", {arranged}", "")
+    return text
 
 
 def _widths(emission: IntegerEmission) -> str:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import re
 from fractions import Fraction
 from hashlib import sha256
 from random import Random
@@ -142,6 +143,17 @@ def test_a_bound_is_rounded_so_that_it_stays_one(bound: str, text: str) -> None:
 
 def test_every_structure_has_words_in_the_header() -> None:
     assert set(FORMS) == set(STRUCTURES)
+
+
+@pytest.mark.parametrize("name", DESIGNS)
+def test_the_header_says_how_sections_are_arranged_where_there_are_several(name: str) -> None:
+    one = DESIGNS[name]
+    count = len(one.realization.sections)
+    text = re.sub(r"\s+\*\s+", " ", rendered(one)[f"{one.name}.h"])
+    found = re.search(rf"{count or 'no'} sections?( in [^;]*)?;", text)
+    assert found
+    arranged = [words in (found[1] or "") for words in ("one after the other", "beside each other")]
+    assert sum(arranged) == (count > 1)
 
 
 @pytest.mark.parametrize("name", DESIGNS)
