@@ -31,6 +31,7 @@ from realize.firmware.c_text import (
     hexadecimal,
     integer_constant,
     number_text,
+    own_set,
     wrapped,
 )
 from realize.firmware.emission import Emission
@@ -271,7 +272,8 @@ def _meaning(field: str) -> str:
 
 
 def _table(c: Dialect, emission: Emission, stored: Mapping[str, float]) -> list[str]:
-    own = "the design's own" if emission.schedule is None else "those of the first point of the schedule"
+    scheduled = emission.schedule is not None
+    own = "those of the first point of the schedule" if scheduled else "the design's own"
     fields = [f"    {c.real} {field};" for field in stored]
     says = wrapped(
         "Every multiplied coefficient. Those that are exactly 0, 1 or -1 are part of the code and not in the table. "
@@ -283,7 +285,7 @@ def _table(c: Dialect, emission: Emission, stored: Mapping[str, float]) -> list[
         *(fields or [f"    {c.real} unused; /* nothing is multiplied */"]),
         f"}} {c.name}_coefficients;",
         "",
-        f"extern const {c.name}_coefficients {c.name}_nominal; /* {own} */",
+        f"extern const {c.name}_coefficients {own_set(c.name, scheduled=scheduled)}; /* {own} */",
         "",
         *_lookup(c, emission),
     ]

@@ -189,9 +189,9 @@ def schedule_says(emission: Emission, table: Table) -> str:
     return (
         f"the coefficients follow {variable}, at {len(table.points)} points from {range_text(table)}. Whenever "
         f"{variable} is known anew, {name}_at looks them up into a {name}_coefficients of the caller's; its address "
-        f"goes to every function of a sample. {name}_nominal is the set of the first point. At each point every check "
-        f"was run on what is stored{where}. Between two points stability was decided on a grid of {table.grid} parts, "
-        "and the other checks were run in the middle: a grid, not a proof. All of it holds for a variable that stands "
+        f"goes to every function of a sample. {name}_first_point is the set of the first point. At each point every "
+        f"check was run on what is stored{where}. Between two points stability was decided on a grid of {table.grid} "
+        "parts, and the other checks were run in the middle: a grid, not a proof. All of it holds for a variable that stands "
         f"still. Stability at every fixed {variable} does not prove stability while it moves: let it change slowly "
         "against the closed loop, and filter it where it is noisy. The preset takes the gains at rest from the table "
         "as well: between two points it comes near rest, and to rest at input 0."

@@ -138,6 +138,16 @@ def test_a_coefficient_that_is_1_or_0_at_some_points_alone_is_multiplied() -> No
     assert "section1_b0" not in by_name["s3"]
 
 
+def test_the_set_of_the_first_point_has_a_name_that_does_not_promise_the_nominal_values() -> None:
+    for emission in EMISSIONS:
+        files = FILES[emission.name]
+        text = "".join(files.values())
+        assert f"{emission.name}_nominal" not in text
+        first = re.findall(r"/\* (\S+) \w+ \*/", files[f"{emission.name}_schedule.h"].partition("{ /* point 1")[2])
+        (named,) = re.findall(rf"{emission.name}_first_point = \{{(.*?)\}};", text, re.DOTALL)
+        assert re.findall(r"/\* (\S+) \w+ \*/", named) == first[: named.count(",")]
+
+
 def test_the_variable_can_take_no_name_that_the_code_has() -> None:
     for emission in EMISSIONS:
         files = FILES[emission.name]
