@@ -287,16 +287,16 @@ def _table(c: Dialect, emission: Emission, stored: Mapping[str, float]) -> list[
         "",
         f"extern const {c.name}_coefficients {own_set(c.name, scheduled=scheduled)}; /* {own} */",
         "",
-        *_lookup(c, emission),
+        *_lookup(c, emission, len(stored)),
     ]
 
 
-def _lookup(c: Dialect, emission: Emission) -> list[str]:
+def _lookup(c: Dialect, emission: Emission, count: int) -> list[str]:
     if emission.schedule is None:
         return []
     from realize.firmware.schedule.c_lookup import lookup_prototype
 
-    return lookup_prototype(c, emission.schedule)
+    return lookup_prototype(c, emission.schedule, count)
 
 
 # ---------------------------------------------------------------- functions
