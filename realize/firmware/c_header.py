@@ -15,6 +15,7 @@ from realize.firmware.c_preamble import (
     counted,
     listed,
     loop_lines,
+    loop_paragraph,
     paragraph,
     prototypes,
     provenance,
@@ -77,7 +78,7 @@ def _preamble(emission: Emission, sample: Sample) -> list[str]:
         *_schedule(emission),
         *paragraph("Feed-through", _feed_through(emission)),
         *paragraph("Arithmetic", _arithmetic()),
-        *loop_lines(emission.loop),
+        *_loop(emission),
         *listed("Accepted deviations", [accepted_text(entry, emission.checks) for entry in emission.accepted]),
         *listed("Not protected", _unprotected(emission, sample)),
         *listed("Method notes", emission.notes),
@@ -91,6 +92,16 @@ def _schedule(emission: Emission) -> list[str]:
     from realize.firmware.schedule.c_lookup import schedule_says
 
     return paragraph("Schedule", schedule_says(emission, emission.schedule))
+
+
+def _loop(emission: Emission) -> list[str]:
+    """The loops of the design, or of all points of its schedule."""
+    entry = emission.schedule_entry
+    if entry is None or entry["loop"] is None:
+        return loop_lines(emission.loop)
+    from realize.firmware.schedule.loop_text import scheduled_loop_entries
+
+    return loop_paragraph(entry["loop"], scheduled_loop_entries(entry))
 
 
 def _provenance(emission: Emission, sample: Sample) -> Provenance:
