@@ -72,6 +72,21 @@ class LoopResult(NamedTuple):
     notes: tuple[str, ...]
 
 
+class JudgedLoop(NamedTuple):
+    """One controller in the loops of a design, without the continuous ones beside them.
+
+    Attributes
+    ----------
+    checks : tuple of Check
+        Each loop check, of the worst case.
+    figures : tuple of dict
+        For scripts, one a case: ``case``, and the figures of its sampled loop.
+    """
+
+    checks: tuple[Check, ...]
+    figures: tuple[dict[str, Any], ...]
+
+
 def plants_of(design: Design) -> tuple[Plant | MeasuredPlant, ...]:
     """The plant of every case, or the measured one; empty without a plant."""
     measured = measured_plant(design)
@@ -225,12 +240,16 @@ class LoopSetting:
             _notes(cases) + self._jitter_notes(nominal),
         )
 
-    def checks(self, stored: PulseTransferFunction) -> tuple[Check, ...]:
-        """The checks of :meth:`result` alone, which cost less: for where nobody reads the figures of the loops."""
+    def judged(self, stored: PulseTransferFunction) -> JudgedLoop:
+        """Of :meth:`result` what one of many operating points needs, which costs half."""
         if self.measured is not None:
-            return self._measured_result(self.measured, stored).checks
+            result = self._measured_result(self.measured, stored)
+            return JudgedLoop(result.checks, tuple(_sampled_alone(entry) for entry in result.entries))
         pairs = [(reference, reference.sampled(stored)) for reference in self.references]
-        return _worst([loop_checks(*pair, "stored", self._given) for pair in pairs])
+        return JudgedLoop(
+            _worst([loop_checks(*pair, "stored", self._given) for pair in pairs]),
+            tuple({"case": reference.plant.case, **sampled.document()} for reference, sampled in pairs),
+        )
 
     @property
     def _given(self) -> dict[str, Fraction]:
@@ -320,6 +339,10 @@ def _closed_loop_weight(reference: LoopReference) -> Weight:
 def loop_setting(design: Design, controller: TransferFunction, period_s: Fraction) -> LoopSetting | None:
     """The loops of a design; None without a plant."""
     return LoopSetting(design, controller, period_s) if design.plant is not None else None
+
+
+def _sampled_alone(entry: dict[str, Any]) -> dict[str, Any]:
+    return {"case": entry["case"], **entry["discrete"]}
 
 
 def _worst(by_case: Sequence[Sequence[Check]]) -> tuple[Check, ...]:

@@ -14,7 +14,7 @@ from realize.design.controller import Controller, read_controller
 from realize.design.gate import Table, WrittenNumber
 from realize.design.model import DEFAULT_LOOP, Design, LoopTable, Overrides, PlantTable
 from realize.design.plant import MAX_RESPONSE_BYTES, names_in_plant, read_loop, read_plant
-from realize.design.schedule import read_schedule, written_tables
+from realize.design.schedule import read_schedule, refuse_inline, written_tables
 from realize.design.tables import (
     read_accept,
     read_method,
@@ -138,7 +138,10 @@ def design_from_document(
     plant = None
     if "plant" in root:
         plant = read_plant(root.table("plant"), overrides.values, partial(_response_text, folder))
-    written = written_tables(root, controller.values, plant, overrides.values) if "schedule" in root else None
+    written = None
+    if "schedule" in root:
+        refuse_inline(root.table("target"))
+        written = written_tables(root, controller.values, plant, overrides.values)
     return assemble(root, controller, plant, overrides, written)
 
 
@@ -150,6 +153,8 @@ def assemble(
     sampling = read_sampling(root.table("sampling"), overrides)
     method = read_method(root.table("method"), overrides.method)
     target = read_target(root.table("target"))
+    if "schedule" in root:
+        target = target._replace(coefficients="table")
     signals = read_signals(root.table("signals"), target)
     name = read_name(design, overrides.name)
     return Design(

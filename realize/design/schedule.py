@@ -6,6 +6,7 @@ of controller and plant are kept as they were written: a transfer function at ot
 
 from __future__ import annotations
 
+import re
 from collections.abc import Collection, Mapping, Sequence
 from dataclasses import replace
 from fractions import Fraction
@@ -31,9 +32,30 @@ DEFAULT_GRID, MAX_GRID = 8, 1000
 #: Names that the lookup uses for itself; and what follows the name of the design in names of the code.
 LOOKUP_NAMES = ("coefficients", "first", "lower", "second", "share", "upper")
 CODE_NAMES = (
-    *("advance", "at", "between", "clear", "coefficients", "high", "integrate", "is_finite", "last", "limit", "low"),
-    *("nominal", "output", "output_high", "output_low", "period_denominator", "period_numerator", "point_below"),
+    *(
+        "advance",
+        "at",
+        "between",
+        "clear",
+        "coefficients",
+        "first_point",
+        "high",
+        "integrate",
+        "is_finite",
+        "last",
+        "limit",
+        "low",
+    ),
+    *("output", "output_high", "output_low", "period_denominator", "period_numerator", "point_below"),
     *("points", "preset", "pushes", "selftest", "sets", "state", "update"),
+)
+
+#: Macros that the argument of the lookup would be replaced by: those of ``<float.h>``, decimal and extended formats and
+#: C23 among them, and what compilers define without an underscore for their system or processor.
+_LIMITS_OF_FLOATS = re.compile(r"(?:FLT|DBL|LDBL|DEC)[0-9]*X?_[A-Z0-9_]+|DECIMAL_DIG|INFINITY|NAN")
+_PLATFORMS = (
+    *("AVR", "MIPSEB", "MIPSEL", "WIN32", "WIN64", "WINNT", "hpux", "i386", "linux", "m68k", "mips", "pdp11", "sparc"),
+    *("sun", "unix", "vax"),
 )
 
 Lists = tuple[tuple[str, tuple[Fraction, ...]], ...]
@@ -96,12 +118,28 @@ def read_schedule(
     )
 
 
+def refuse_inline(target: Table) -> None:
+    """Refuse coefficients that are part of the code, where a schedule looks them up.
+
+    Raises
+    ------
+    RealizeError
+        When the table ``[target]`` says so.
+    """
+    if target.entries.get("coefficients") == "inline":
+        found = 'coefficients = "inline" beside [schedule], whose coefficients change and so cannot be part of the code'
+        raise target.error("coefficients", found, '"table", or nothing', "remove it: with [schedule] it is a table")
+
+
 def _variable(table: Table, design_name: str) -> str:
     name = table.text("variable")
     if name is None:
         found, allowed = "nothing", "the name of the variable that the lookup is given, a C identifier"
         raise table.error("variable", found, allowed, 'write variable = "speed"')
     checked_name(name, table.where("variable"))
+    if _LIMITS_OF_FLOATS.fullmatch(name) or name in _PLATFORMS:
+        found = f"the name {shown(name)}, a macro of <float.h> or of a compiler for its platform"
+        raise table.error("variable", found, "a name that no macro has", f"write {name.lower()}_measured")
     if name in LOOKUP_NAMES or name.lower() in [f"{design_name}_{own}".lower() for own in CODE_NAMES]:
         allowed = f"any name but {listed(LOOKUP_NAMES)}, and those of the functions of the design"
         found = f"the name {shown(name)}, which the code uses itself"

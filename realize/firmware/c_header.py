@@ -15,6 +15,7 @@ from realize.firmware.c_preamble import (
     counted,
     listed,
     loop_lines,
+    loop_paragraph,
     paragraph,
     prototypes,
     provenance,
@@ -31,6 +32,7 @@ from realize.firmware.c_text import (
     hexadecimal,
     integer_constant,
     number_text,
+    own_set,
     wrapped,
 )
 from realize.firmware.emission import Emission
@@ -76,7 +78,7 @@ def _preamble(emission: Emission, sample: Sample) -> list[str]:
         *_schedule(emission),
         *paragraph("Feed-through", _feed_through(emission)),
         *paragraph("Arithmetic", _arithmetic()),
-        *loop_lines(emission.loop),
+        *_loop(emission),
         *listed("Accepted deviations", [accepted_text(entry, emission.checks) for entry in emission.accepted]),
         *listed("Not protected", _unprotected(emission, sample)),
         *listed("Method notes", emission.notes),
@@ -90,6 +92,16 @@ def _schedule(emission: Emission) -> list[str]:
     from realize.firmware.schedule.c_lookup import schedule_says
 
     return paragraph("Schedule", schedule_says(emission, emission.schedule))
+
+
+def _loop(emission: Emission) -> list[str]:
+    """The loops of the design, or of all points of its schedule."""
+    entry = emission.schedule_entry
+    if entry is None or entry["loop"] is None:
+        return loop_lines(emission.loop)
+    from realize.firmware.schedule.loop_text import scheduled_loop_entries
+
+    return loop_paragraph(entry["loop"], scheduled_loop_entries(entry))
 
 
 def _provenance(emission: Emission, sample: Sample) -> Provenance:
@@ -271,7 +283,8 @@ def _meaning(field: str) -> str:
 
 
 def _table(c: Dialect, emission: Emission, stored: Mapping[str, float]) -> list[str]:
-    own = "the design's own" if emission.schedule is None else "those of the first point of the schedule"
+    scheduled = emission.schedule is not None
+    own = "those of the first point of the schedule" if scheduled else "the design's own"
     fields = [f"    {c.real} {field};" for field in stored]
     says = wrapped(
         "Every multiplied coefficient. Those that are exactly 0, 1 or -1 are part of the code and not in the table. "
@@ -283,18 +296,18 @@ def _table(c: Dialect, emission: Emission, stored: Mapping[str, float]) -> list[
         *(fields or [f"    {c.real} unused; /* nothing is multiplied */"]),
         f"}} {c.name}_coefficients;",
         "",
-        f"extern const {c.name}_coefficients {c.name}_nominal; /* {own} */",
+        f"extern const {c.name}_coefficients {own_set(c.name, scheduled=scheduled)}; /* {own} */",
         "",
-        *_lookup(c, emission),
+        *_lookup(c, emission, len(stored)),
     ]
 
 
-def _lookup(c: Dialect, emission: Emission) -> list[str]:
+def _lookup(c: Dialect, emission: Emission, count: int) -> list[str]:
     if emission.schedule is None:
         return []
     from realize.firmware.schedule.c_lookup import lookup_prototype
 
-    return lookup_prototype(c, emission.schedule)
+    return lookup_prototype(c, emission.schedule, count)
 
 
 # ---------------------------------------------------------------- functions

@@ -179,8 +179,13 @@ def loop_lines(loop: Mapping[str, Any] | None) -> list[str]:
     """The loops the design was checked in."""
     if loop is None:
         return []
-    entries = [line for entry in loop_entries(loop) for line in wrapped(entry, "- ", "  ")]
-    return [*wrapped(f"Loop: {loop_sentence(loop)}"), *entries, ""]
+    return loop_paragraph(loop, loop_entries(loop))
+
+
+def loop_paragraph(loop: Mapping[str, Any], entries: Sequence[str]) -> list[str]:
+    """With which delay the loops were checked, and what was found in them."""
+    lines = [line for entry in entries for line in wrapped(entry, "- ", "  ")]
+    return [*wrapped(f"Loop: {loop_sentence(loop)}"), *lines, ""]
 
 
 def unprotected(emission: Emission | IntegerEmission, sensor: str, *, follows_applied: bool) -> list[str]:

@@ -18,6 +18,7 @@ from realize.firmware.c_text import (
     definition,
     dialect,
     hexadecimal,
+    own_set,
     reads,
     statement,
     variable,
@@ -92,7 +93,7 @@ def source_text(emission: Emission, sample: Sample, settling: Settling, stored: 
         "",
         *_refusals(c),
         *_contraction_off(),
-        *_constants(c, stored),
+        *_constants(c, emission, stored),
         *_helpers(c, sample),
         *_lookup(c, emission, list(stored)),
         *_functions(c, sample, settling),
@@ -171,11 +172,11 @@ def _contraction_restored() -> list[str]:
 # ---------------------------------------------------------------- numbers and helpers
 
 
-def _constants(c: Dialect, stored: Mapping[str, float]) -> list[str]:
+def _constants(c: Dialect, emission: Emission, stored: Mapping[str, float]) -> list[str]:
     if c.table:
         values = [f"    {c.literal(value)}, /* {hexadecimal(value)} {name} */" for name, value in stored.items()]
         return [
-            f"const {c.name}_coefficients {c.name}_nominal = {{",
+            f"const {c.name}_coefficients {own_set(c.name, scheduled=emission.schedule is not None)} = {{",
             *(values or [f"    {c.literal(0.0)}"]),
             "};",
             "",

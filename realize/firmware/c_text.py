@@ -107,6 +107,11 @@ def dialect(emission: Emission) -> Dialect:
     return Dialect(name, "double", "", 17, "DBL", table, adds)
 
 
+def own_set(name: str, *, scheduled: bool) -> str:
+    """The constant coefficients in a table: the design's own, or with a schedule those of its first point."""
+    return f"{name}_first_point" if scheduled else f"{name}_nominal"
+
+
 def variable(name: str) -> str:
     """A step's variable in C."""
     return name.replace("state.", "state->")

@@ -10,13 +10,15 @@ from realize.firmware.c_text import number_text
 from realize.quantity import format_engineering
 
 #: Figures of a case: key, name, unit.
-_FIGURES = (
+FIGURES = (
     ("phase_margin_deg", "phase margin", " deg"),
     ("gain_margin_db", "gain margin", " dB"),
     ("gain_reduction_margin_db", "margin to a lower gain", " dB"),
     ("maximum_sensitivity", "maximum sensitivity", ""),
     ("step_overshoot_percent", "step overshoot", " %"),
 )
+
+MEASURED = "the plant is a measured response: whether the loop is stable was not judged"
 
 _STABILITY = {True: "stable", False: "NOT STABLE", None: "stability not judged"}
 
@@ -35,7 +37,7 @@ def loop_entries(loop: Mapping[str, Any]) -> list[str]:
     return [
         *(_case(entry["case"], entry["discrete"]) for entry in loop["cases"]),
         *_jitter(loop["jitter_margin_s"], len(loop["cases"]) > 1),
-        *(["the plant is a measured response: whether the loop is stable was not judged"] if loop["measured"] else []),
+        *([MEASURED] if loop["measured"] else []),
         *loop["notes"],
     ]
 
@@ -45,7 +47,7 @@ def _samples_text(samples: Fraction) -> str:
 
 
 def _case(case: str, figures: Mapping[str, Any]) -> str:
-    found = [(name, figures[key], unit) for key, name, unit in _FIGURES]
+    found = [(name, figures[key], unit) for key, name, unit in FIGURES]
     shown = [f"{name} {value:.5g}{unit}" for name, value, unit in found if value is not None]
     return (f"case {case}: " if case else "") + ", ".join([_STABILITY[figures["stable"]], *shown])
 

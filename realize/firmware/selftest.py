@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING, Any, NamedTuple, TypeVar
 
 from realize.arithmetic.sample import largest
 from realize.firmware.c_preamble import signature
-from realize.firmware.c_text import comment, dialect, statement, wrapped
+from realize.firmware.c_text import comment, dialect, own_set, statement, wrapped
 from realize.firmware.vectors import answers, full_scale, in_format, scheduled
 
 if TYPE_CHECKING:
@@ -364,7 +364,7 @@ def _differs(c: Wording, left: str, right: str) -> str:
 
 
 def _own(c: Wording) -> str:
-    return f", &{c.name}_nominal" if c.table else ""
+    return f", &{own_set(c.name, scheduled=c.scheduled)}" if c.table else ""
 
 
 def _looked_up(c: Wording) -> str:

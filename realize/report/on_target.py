@@ -37,6 +37,13 @@ _KEY = (
 )
 
 
+#: What the key adds where coefficients are looked up.
+_LOOKUP = (
+    " Instructions of a sample are those of {name}_at and {name}_update: the lookup before every sample, which is more "
+    "often than it need be."
+)
+
+
 def trial_text(found: Trial, clock_hz: Fraction | None) -> str:
     """The screen of `realize trial`."""
     emitted = found.emitted
@@ -48,7 +55,8 @@ def trial_text(found: Trial, clock_hz: Fraction | None) -> str:
     else:
         verdict = f"yes: {emitted.code.name}: the compiled code answers the {samples} bit for bit."
     counted = any(attempt.run.instructions for attempt in found.attempts)
-    key = wrapped(_key(rate, clock_hz), indent="  ") if counted else ""
+    lookup = _LOOKUP.format(name=emitted.code.name) if emitted.code.scheduled else ""
+    key = wrapped(_key(rate, clock_hz) + lookup, indent="  ") if counted else ""
     blocks = [wrapped(verdict), _table(found.attempts, rate, clock_hz) + key]
     if differing:
         blocks.append(heading("First difference") + bullets(map(_difference_text, differing)))

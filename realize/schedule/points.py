@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING, NamedTuple
+from typing import TYPE_CHECKING, Any, NamedTuple
 
 from realize.algebra.enclosure import Unresolved
 from realize.arithmetic.grouping import split_integral
@@ -13,6 +13,7 @@ from realize.design.schedule import Place, design_at, place_text, placed
 from realize.errors import RealizeError, Refused
 from realize.methods import Discretization
 from realize.schedule.layout import Numbers
+from realize.schedule.worst import severity
 from realize.workflow.causal import band_of, make_causal
 from realize.workflow.compare import discretized, loop_setting_of, with_unrounded
 from realize.workflow.floats import checked_floats
@@ -53,6 +54,8 @@ class Judged(NamedTuple):
         Those that are out and not agreed to.
     accepted : tuple of (Check, Accept)
         Those that are out, and the agreement that covers them.
+    loop : tuple of dict
+        With a plant, for each of its cases ``case`` and the figures of the sampled loop.
     """
 
     place: Place
@@ -60,6 +63,13 @@ class Judged(NamedTuple):
     checks: tuple[Check, ...]
     blocking: tuple[Check, ...]
     accepted: tuple[tuple[Check, Accept], ...]
+    loop: tuple[dict[str, Any], ...] = ()
+
+    @property
+    def worst(self) -> Check:
+        """Of stored numbers the check that uses the largest share of its tolerance."""
+        stored = [check for check in self.checks if check.of == "stored"]
+        return max((check for check in stored if check.tolerance and check.difference is not None), key=severity)
 
 
 def prepared(design: Design, place: Place, method: str) -> Prepared:
@@ -90,9 +100,10 @@ def prepared(design: Design, place: Place, method: str) -> Prepared:
 def judge(there: Prepared, stored: Realization) -> Judged:
     """Run every check of stored numbers at a place; at a point those of the exact numbers too."""
     design, reference, numbers = there.design, there.reference, checked_floats(there.design, there.reference, stored)
-    checks = numbers.checks + (there.setting.checks(numbers.pulse) if there.setting else ())
+    loop = there.setting.judged(numbers.pulse) if there.setting else None
+    checks = numbers.checks + (loop.checks if loop else ())
     result = MethodResult(there.made.method, None, there.made, stored, checks, *gate(checks, design.accept))
     if not there.place.share:
         result = with_unrounded(design, reference, result)
     kept = tuple(c for c in result.checks if c.of == "stored" or c in result.blocking)
-    return Judged(there.place, stored, kept, result.blocking, result.accepted)
+    return Judged(there.place, stored, kept, result.blocking, result.accepted, loop.figures if loop else ())

@@ -2,10 +2,10 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 from math import inf
-from typing import NamedTuple
+from typing import Any, NamedTuple
 
 from realize.checks import Check
 from realize.design import Schedule
@@ -26,6 +26,31 @@ def worst_of(found: Sequence[Worst]) -> tuple[Worst, ...]:
         max((each for each in found if each.check.check == name), key=lambda each: severity(each.check))
         for name in names
     )
+
+
+class WorstFigure(NamedTuple):
+    """A figure of the loop where it is worst: its value, the case of the plant, and where in the schedule."""
+
+    value: float
+    case: str
+    place: Place
+
+
+#: Figures of a loop, and which of two is the worse.
+FIGURES = {
+    "phase_margin_deg": min,
+    "gain_margin_db": min,
+    "gain_reduction_margin_db": min,
+    "maximum_sensitivity": max,
+    "step_overshoot_percent": max,
+}
+
+
+def worst_figure(key: str, loops: Sequence[tuple[Place, Sequence[Mapping[str, Any]]]]) -> WorstFigure | None:
+    """Over all places and cases; the first of equals, None where none has the figure."""
+    known = [WorstFigure(case[key], case["case"], place) for place, cases in loops for case in cases]
+    known = [each for each in known if each.value is not None]
+    return FIGURES[key](known, key=lambda each: each.value) if known else None
 
 
 def severity(check: Check) -> tuple[bool, bool, float]:

@@ -48,6 +48,11 @@ class Code(NamedTuple):
     functions: tuple[str, ...] = FUNCTIONS
     scheduled: bool = False
 
+    @property
+    def entry(self) -> str:
+        """The function that a sample begins with: with a schedule, the lookup."""
+        return f"{self.name}_at" if self.scheduled else f"{self.name}_update"
+
 
 class Vectors(NamedTuple):
     """Inputs, and the answers from a cleared state; with a schedule, the variable of each sample."""

@@ -144,7 +144,7 @@ def emulate(image: Image, target: Target, code: Code, vectors: Vectors) -> Run:
     _enable_fpu(core, target)
     meter = _Meter(_Lengths(core, target.architecture == "thumb", image.symbols[RUN]))
     top: list[int] = []
-    entry = image.symbols[f"{code.name}_update"].address
+    entry = image.symbols[code.entry].address
 
     def enter(_core: unicorn.Uc, _address: int, _length: int, _data: Any) -> None:
         top[:] = top or [core.reg_read(registers.stack)]

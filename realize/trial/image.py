@@ -59,7 +59,7 @@ class Image(NamedTuple):
         )
 
 
-def read_image(path: Path, architecture: str, update: str) -> Image:
+def read_image(path: Path, architecture: str, entry: str) -> Image:
     """Read a linked program.
 
     Parameters
@@ -67,8 +67,8 @@ def read_image(path: Path, architecture: str, update: str) -> Image:
     path : Path
     architecture : str
         Of the processor it must be for.
-    update : str
-        The function on trial, which must be there.
+    entry : str
+        The function that a sample begins with, which must be there.
 
     Raises
     ------
@@ -77,14 +77,14 @@ def read_image(path: Path, architecture: str, update: str) -> Image:
     """
     try:
         with path.open("rb") as file:
-            return _image(ELFFile(file), architecture, update)
+            return _image(ELFFile(file), architecture, entry)
     except (ELFError, ValueError, UnicodeDecodeError) as error:
         if isinstance(error, RealizeError):
             raise
         raise _unfit("a file that is no program in the ELF format") from None
 
 
-def _image(file: ELFFile, architecture: str, update: str) -> Image:
+def _image(file: ELFFile, architecture: str, entry: str) -> Image:
     if file["e_machine"] != _MACHINES[architecture] or file.elfclass != 32 or not file.little_endian:
         raise _unfit(f"a program for another processor ({file['e_machine']}, {file.elfclass} bits)")
     if file["e_type"] == "ET_REL":
@@ -95,7 +95,7 @@ def _image(file: ELFFile, architecture: str, update: str) -> Image:
         if segment["p_memsz"]
     )
     symbols = dict(_symbols(file))
-    missing = [name for name in (RUN, STATE, update) if name not in symbols]
+    missing = [name for name in (RUN, STATE, entry) if name not in symbols]
     if missing:
         raise _unfit(f"a program without the symbol {missing[0]}")
     return Image(segments, symbols)

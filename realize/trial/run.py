@@ -91,7 +91,7 @@ def _run(program: Path, code: Code, vectors: Vectors, target: Target) -> Run:
     from realize.trial.emulate import emulate
     from realize.trial.image import read_image
 
-    image = read_image(program, target.architecture, f"{code.name}_update")
+    image = read_image(program, target.architecture, code.entry)
     return emulate(image, target, code, vectors)
 
 

@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import json
+import re
+import subprocess
 from fractions import Fraction
 from pathlib import Path
 
@@ -11,6 +13,7 @@ import pytest
 from realize.design import Design, Overrides, design_from_resolved, design_from_text
 from realize.design.schedule import LOOKUP_NAMES, Place, design_at, nominal_note, place_text, values_at, variable_at
 from realize.errors import RealizeError, Refused
+from tests.firmware.bench import ZIG
 
 BASE = """[design]
 name = "web"
@@ -155,6 +158,33 @@ def test_a_mistake_is_named_with_what_is_allowed_and_what_to_try(
 @pytest.mark.parametrize("name", LOOKUP_NAMES)
 def test_a_name_that_the_lookup_has_for_itself_is_refused(name: str) -> None:
     assert "the code uses itself" in refusal("web_speed", name).found
+
+
+@pytest.mark.parametrize("target", ["x86_64-linux-gnu", "mips-linux-musleabi"])
+def test_a_name_that_a_compiler_has_for_a_macro_is_refused(target: str) -> None:
+    macros = subprocess.run(
+        (*ZIG, "cc", "-target", target, "-std=gnu11", "-include", "float.h", "-dM", "-E", "-x", "c", "-"),
+        input="",
+        capture_output=True,
+        text=True,
+        check=True,
+    )
+    names = [line.split()[1] for line in macros.stdout.splitlines()]
+    own = [name for name in names if re.fullmatch(r"[A-Za-z][A-Za-z0-9]*(_[A-Za-z0-9]+)*", name)]
+    assert {"FLT_MAX", "linux", "unix"} <= set(own)
+    for name in own:
+        assert "macro" in refusal("web_speed", name).found
+    text = (BASE + SCHEDULE).replace("web_speed", "FLT_MAX_speed")
+    assert read(text).schedule is not None
+
+
+def test_coefficients_in_the_code_are_refused_beside_a_schedule() -> None:
+    error = refusal("[schedule]\n", '[target]\ncoefficients = "inline"\n[schedule]\n')
+    assert error.where == "web.toml, [target] coefficients"
+    assert "[schedule]" in error.found
+    assert read().target.coefficients == "table"
+    assert read().resolved()["target"]["coefficients"] == "table"
+    assert read(BASE).target.coefficients == "inline"
 
 
 def test_a_schedule_of_plant_values_needs_a_plant() -> None:

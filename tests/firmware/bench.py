@@ -16,6 +16,7 @@ from pathlib import Path
 from typing import NamedTuple
 
 from realize.firmware import Emission, render_firmware, write_all
+from realize.firmware.c_text import own_set
 from realize.firmware.integer import IntegerEmission, render_integer_firmware
 
 WARNINGS = (
@@ -158,7 +159,11 @@ def _wrappers(emission: Emission) -> str:
     """Functions on doubles around the functions of a design, with one state."""
     name = emission.name
     real = {"float32": "float", "float64": "double"}[emission.realization.format.name]
-    own = f"&{name}_s, &{name}_nominal" if emission.coefficients == "table" else f"&{name}_s"
+    own = (
+        f"&{name}_s, &{own_set(name, scheduled=emission.schedule is not None)}"
+        if emission.coefficients == "table"
+        else f"&{name}_s"
+    )
     return (
         f'#include "{name}.h"\nstatic {name}_state {name}_s;\n'
         f"void {name}_clear_(void) {{ {name}_clear(&{name}_s); }}\n"

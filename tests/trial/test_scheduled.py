@@ -8,8 +8,10 @@ from pathlib import Path
 import pytest
 
 from realize.errors import RealizeError
+from realize.report.on_target import trial_text
 from realize.trial.emitted import Vectors, code_of, read_emitted, read_vectors
 from realize.trial.harness import harness_text
+from realize.trial.outcome import Attempt, Run, Trial
 from realize.trial.run import attempts
 from realize.trial.targets import HOST, targets_named
 
@@ -43,6 +45,16 @@ def test_a_number_of_the_table_that_was_changed_is_found(emitted: Callable[[str]
     variable = (found.vectors.variables or ())[attempt.difference.sample]
     # Between the neighbours of the point that was moved.
     assert 5 < variable < 30
+
+
+def test_a_sample_begins_with_its_lookup_and_the_key_says_so(emitted: Callable[[str], Path]) -> None:
+    found = read_emitted(str(emitted(NAME)))
+    plain = found.code._replace(scheduled=False)
+    assert (found.code.entry, plain.entry) == (f"{NAME}_at", f"{NAME}_update")
+    attempt = Attempt("cortex-m4f", "O2", Run([], 28, instructions=(80, 100)), None)
+    for code, said in ((found.code, True), (plain, False)):
+        text = " ".join(trial_text(Trial(found._replace(code=code), [attempt]), None).split())
+        assert (f"those of {NAME}_at and {NAME}_update" in text) == said
 
 
 @pytest.mark.parametrize("text", ["input,output\n0x1p+0,0x1p+0\n", "variable,input,output\n0x1p+0,0x1p+0\n"])

@@ -99,14 +99,22 @@ def lookup_signature(c: Dialect, table: Table) -> str:
     return f"void {c.name}_at({c.real} {table.variable}, {c.name}_coefficients *coefficients)"
 
 
-def lookup_prototype(c: Dialect, table: Table) -> list[str]:
-    """The declaration, with what the function does."""
+def lookup_prototype(c: Dialect, table: Table, count: int) -> list[str]:
+    """The declaration, with what the function does, and what that costs for so many coefficients."""
+    comparisons = 2 + search_steps(len(table.points))
     says = (
         f"The coefficients for {table.variable}, for every function below: those of the points on both sides, "
         f"interpolated. Below the first point, and where {table.variable} is NaN, those of the first; from the last "
-        "on, those of the last. It reads nothing but its argument and the table."
+        f"on, those of the last. It reads nothing but its argument and the table. It takes {comparisons} comparisons "
+        f"at most, a division and two subtractions; and for each of {count} coefficients a multiplication and two "
+        f"additions. It need not be called every sample: call it when {table.variable} has moved enough to matter."
     )
     return [*comment(wrapped(says)), lookup_signature(c, table) + ";", ""]
+
+
+def search_steps(points: int) -> int:
+    """Comparisons that halve the intervals between so many points to one: the logarithm of their number, rounded up."""
+    return (points - 2).bit_length()
 
 
 def lookup_definitions(c: Dialect, table: Table, fields: Sequence[str]) -> list[str]:
@@ -122,7 +130,7 @@ def lookup_definitions(c: Dialect, table: Table, fields: Sequence[str]) -> list[
     quotient = [f"({variable} - {points}[lower])", f"/ ({points}[upper] - {points}[lower])"]
     searched = len(table.points) > 2
     return [
-        *(_search(c, (len(table.points) - 2).bit_length()) if searched else []),
+        *(_search(c, search_steps(len(table.points))) if searched else []),
         f"static inline {c.real} {c.name}_between({c.real} first, {c.real} second, {c.real} share)",
         "{",
         f"    const {c.real} difference = second - first;",
@@ -194,10 +202,11 @@ def schedule_says(emission: Emission, table: Table) -> str:
     return (
         f"the coefficients follow {variable}, at {len(table.points)} points from {range_text(table)}. Whenever "
         f"{variable} is known anew, {name}_at looks them up into a {name}_coefficients of the caller's; its address "
-        f"goes to every function of a sample. {name}_nominal is the set of the first point. At each point every check "
-        f"was run on what is stored{where}. Between two points stability was decided on a grid of {table.grid} parts, "
-        "and the other checks were run in the middle: a grid, not a proof. All of it holds for a variable that stands "
-        f"still. Stability at every fixed {variable} does not prove stability while it moves: let it change slowly "
-        "against the closed loop, and filter it where it is noisy. Between two points only input 0 has a state at "
-        "rest that is known: the preset answers 0 at any other, and takes one between those of the points."
+        f"goes to every function of a sample. {name}_first_point is the set of the first point. At each point every "
+        f"check was run on what is stored{where}. Between two points stability was decided on a grid of "
+        f"{table.grid} parts, and the other checks were run in the middle: a grid, not a proof. All of it holds for a "
+        f"variable that stands still. Stability at every fixed {variable} does not prove stability while it moves: let "
+        "it change slowly against the closed loop, and filter it where it is noisy. Between two points only "
+        "input 0 has a state at rest that is known: the preset answers 0 at any other, and takes one between those of "
+        "the points."
     )

@@ -11,7 +11,7 @@ from realize.firmware.c_text import hexadecimal
 from realize.firmware.record import stored_entries
 from realize.schedule import Scheduled
 from realize.schedule.points import Judged
-from realize.schedule.worst import severity
+from realize.schedule.worst import FIGURES, severity, worst_figure
 
 
 def schedule_entry(found: Scheduled, breakpoints: Sequence[float]) -> dict[str, Any]:
@@ -20,11 +20,12 @@ def schedule_entry(found: Scheduled, breakpoints: Sequence[float]) -> dict[str, 
     Returns
     -------
     dict
-        ``variable``, ``unit``, ``grid``, ``places_between`` and ``says``; ``points``, each with ``at`` (exact),
-        ``stored`` (as the code has it), ``integral``, ``sections``, ``checks`` and ``worst``; ``middles`` between them,
-        with ``at``, ``checks`` and ``worst``. ``checks`` are the verdict and the difference of each check of stored
-        numbers, by name, in the units of the checks at the root of the record; ``worst`` is the one that uses most of
-        its tolerance.
+        ``variable``, ``unit``, ``grid``, ``places_between`` and ``says``; ``loop``, the delay that the loops were
+        checked with and where each of their figures is worst, None without a plant; ``points``, each with ``at``
+        (exact), ``stored`` (as the code has it), ``integral``, ``sections``, ``checks``, ``worst`` and ``loop``;
+        ``middles`` between them, without what is stored. ``checks`` are the verdict and the difference of each check
+        of stored numbers, by name, in the units of the checks at the root of the record; ``worst`` is the one that
+        uses most of its tolerance; ``loop`` has the figures of the sampled loop for each case of the plant.
     """
     schedule = found.schedule
     return {
@@ -33,16 +34,21 @@ def schedule_entry(found: Scheduled, breakpoints: Sequence[float]) -> dict[str, 
         "grid": schedule.grid,
         "places_between": found.places_between,
         "says": says(schedule.grid),
+        "loop": _loop(found),
         "points": [
             {
                 "at": exact_text(variable_at(schedule, each.place)),
                 "stored": hexadecimal(stored),
                 **stored_entries(each.realization),
                 **_checks(each),
+                "loop": each.loop,
             }
             for each, stored in zip(found.points, breakpoints, strict=True)
         ],
-        "middles": [{"at": exact_text(variable_at(schedule, each.place)), **_checks(each)} for each in found.middles],
+        "middles": [
+            {"at": exact_text(variable_at(schedule, each.place)), **_checks(each), "loop": each.loop}
+            for each in found.middles
+        ],
     }
 
 
@@ -53,8 +59,32 @@ def says(grid: int) -> str:
 
 def _checks(each: Judged) -> dict[str, Any]:
     stored = [check for check in each.checks if check.of == "stored"]
-    worst = max((check for check in stored if check.tolerance and check.difference is not None), key=severity)
     return {
         "checks": {check.check: {"verdict": check.verdict, "difference": check.difference} for check in stored},
-        "worst": {"check": worst.check, "share_of_tolerance": severity(worst)[-1]},
+        "worst": {"check": each.worst.check, "share_of_tolerance": severity(each.worst)[-1]},
     }
+
+
+def _loop(found: Scheduled) -> dict[str, Any] | None:
+    """With which delay the loops were checked, and where each of their figures is worst; None without a plant."""
+    if found.design.plant is None:
+        return None
+    # Here, because what analyses loops is loaded only where there is a plant.
+    from realize.loop_design import compute_delay_s
+
+    period_s = found.comparison.period_s
+    delay_s = compute_delay_s(found.design, period_s)
+    return {
+        "compute_delay_s": delay_s,
+        "compute_delay_samples": delay_s / period_s,
+        "measured": found.design.plant.response_text is not None,
+        "worst": {key: _worst_figure(found, key) for key in FIGURES},
+    }
+
+
+def _worst_figure(found: Scheduled, key: str) -> dict[str, Any] | None:
+    worst = worst_figure(key, [(each.place, each.loop) for each in (*found.points, *found.middles)])
+    if worst is None:
+        return None
+    at = exact_text(variable_at(found.schedule, worst.place))
+    return {"value": worst.value, "at": at, "between_points": bool(worst.place.share), "case": worst.case}

@@ -5,13 +5,14 @@ from __future__ import annotations
 import re
 import subprocess
 import sys
-from math import inf, nan, nextafter
+from math import ceil, inf, log2, nan, nextafter
 
 import numpy as np
 import pytest
 
 from realize.design.schedule import CODE_NAMES, LOOKUP_NAMES
 from realize.firmware import Emission, render_firmware
+from realize.firmware.schedule.c_lookup import search_steps
 from realize.firmware.schedule.variable import swept
 from realize.firmware.vectors import answers, vectors
 from tests.firmware.bench import SHARE, Bench, bits, toolchains
@@ -136,6 +137,31 @@ def test_a_coefficient_that_is_1_or_0_at_some_points_alone_is_multiplied() -> No
     # 1 at both points of s1, 0 at all of s3
     assert "section1_b0" not in by_name["s1"]
     assert "section1_b0" not in by_name["s3"]
+
+
+@pytest.mark.parametrize("points", [2, 3, 4, 5, 6, 9, 10, 4096])
+def test_the_steps_of_the_search_are_the_logarithm_of_the_intervals(points: int) -> None:
+    assert search_steps(points) == ceil(log2(points - 1))
+
+
+def test_the_header_says_what_a_lookup_costs() -> None:
+    for emission in EMISSIONS:
+        assert emission.schedule is not None
+        header = " ".join(FILES[emission.name][f"{emission.name}.h"].replace("\n *", "").split())
+        points, names = len(emission.schedule.points), fields(emission)
+        assert f"It takes {2 + ceil(log2(points - 1))} comparisons at most, a division" in header
+        assert f"for each of {len(names)} coefficients a multiplication and two additions" in header
+        assert "It need not be called every sample" in header
+
+
+def test_the_set_of_the_first_point_has_a_name_that_does_not_promise_the_nominal_values() -> None:
+    for emission in EMISSIONS:
+        files = FILES[emission.name]
+        text = "".join(files.values())
+        assert f"{emission.name}_nominal" not in text
+        first = re.findall(r"/\* (\S+) \w+ \*/", files[f"{emission.name}_schedule.h"].partition("{ /* point 1")[2])
+        (named,) = re.findall(rf"{emission.name}_first_point = \{{(.*?)\}};", text, re.DOTALL)
+        assert re.findall(r"/\* (\S+) \w+ \*/", named) == first[: named.count(",")]
 
 
 def test_the_variable_can_take_no_name_that_the_code_has() -> None:

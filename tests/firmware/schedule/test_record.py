@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import json
+import re
 import shutil
+from dataclasses import replace
 from fractions import Fraction
 from pathlib import Path
 from typing import Any
@@ -11,6 +13,7 @@ from typing import Any
 import pytest
 
 from realize.design import load_design
+from realize.design.schedule import Place, design_at
 from realize.firmware import write_all
 from realize.firmware.audit import audit
 from realize.firmware.differ import differ
@@ -60,6 +63,41 @@ def test_the_checks_at_its_root_are_the_worst_of_all_places_and_say_where(emitte
     for place in places:
         assert place["worst"]["check"] in place["checks"]
         assert 0 < place["worst"]["share_of_tolerance"] < 1
+
+
+def test_the_loops_of_every_point_are_those_of_a_design_of_that_point_alone(emitted: Emitted) -> None:
+    design = load_design(str(FIXTURE))
+    schedule = emitted.record["schedule"]
+    for number in (0, 2):
+        alone = emit(replace(design_at(design, Place(number)), method=emitted.record["method"])).record["loop"]
+        (case,) = schedule["points"][number]["loop"]
+        assert case == {"case": "", **alone["cases"][0]["discrete"]}
+        for key in ("compute_delay_s", "compute_delay_samples", "measured"):
+            assert schedule["loop"][key] == alone[key]
+
+
+def test_each_figure_of_the_loops_is_named_where_it_is_worst_in_record_and_header(emitted: Emitted) -> None:
+    schedule = emitted.record["schedule"]
+    header = " ".join(emitted.files[f"{NAME}.h"].replace("\n *", "").split())
+    assert "Loop: checked with the command reaching the actuator 1 sample (500 us) after" in header
+    assert "stable at every point, and in the middle of every interval" in header
+    places = [*schedule["points"], *schedule["middles"]]
+    names = {"phase_margin_deg": "phase margin", "gain_margin_db": "gain margin"} | {
+        "maximum_sensitivity": "maximum sensitivity",
+        "step_overshoot_percent": "step overshoot",
+    }
+    for key, worst in schedule["loop"]["worst"].items():
+        values = [place["loop"][0][key] for place in places]
+        if worst is None:
+            assert set(values) == {None}
+            continue
+        assert worst["value"] == (min if "margin" in key else max)(values)
+        at = next(place for place in places if place["at"] == worst["at"])
+        assert at["loop"][0][key] == worst["value"]
+        assert worst["between_points"] == (at in schedule["middles"])
+        between = ", between two points" if worst["between_points"] else ""
+        said = rf"{names[key]} {worst['value']:.5g}( \S+)?, worst at gap = {float(Fraction(at['at'])):g} mm{between}"
+        assert re.search(said, header)
 
 
 def test_the_same_design_has_the_same_bytes(emitted: Emitted) -> None:
