@@ -121,12 +121,17 @@ def test_a_difference_is_told_in_the_unit_of_its_tolerance(emitted: Emitted) -> 
     assert float(cells["loop sensitivity"][1]) == pytest.approx(sensitivity.difference or 0, rel=5e-3)
 
 
-@pytest.mark.parametrize("command", ["assess", "compare"])
-def test_what_looks_at_the_nominal_values_says_so(command: str, capsys: pytest.CaptureFixture[str]) -> None:
-    main([command, str(FIXTURE)])
+@pytest.mark.parametrize("command", ["assess", "compare", "words", "rates --points 2 --method bilinear"])
+def test_what_looks_at_the_nominal_values_says_so_and_advises_nothing_for_all_points(
+    command: str, capsys: pytest.CaptureFixture[str]
+) -> None:
+    command, *options = command.split()
+    main([command, str(FIXTURE), *options])
     said = " ".join(capsys.readouterr().out.split())
+    assert "To pin" not in said
+    assert "To take" not in said
     assert "there is a [schedule] of 4 points by gap: this is about the nominal values alone, kp = 4.2" in said
-    main([command, str(FIXTURE), "--json"])
+    main([command, str(FIXTURE), *options, "--json"])
     assert json.loads(capsys.readouterr().out)["nominal"].startswith("there is a [schedule] of 4 points by gap")
 
 
