@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from realize.design.schedule import nominal_note
 from realize.quantity import format_engineering
 from realize.rates import REFUSED, MethodRates, Rates, answer, lowest_text
 from realize.report.documents import Document
@@ -17,7 +18,7 @@ def rates_text(found: Rates) -> str:
     setting = [f"{len(found.rates_hz)} rates from {low} to {high}, on a logarithmic grid", found.rests_on]
     head = ["method", "lowest rate", "what binds there"]
     rows = [[m.method, lowest_text(m), _binding(m)] for m in found.methods]
-    setting += _own_rate(found)
+    setting += [*_own_rate(found), *nominal_note(found.design)]
     blocks = [first, "".join(wrapped(line, indent="  ") for line in setting), table([head, *rows])]
     refused = [f"{m.method}: {(m.binding or '').removeprefix(REFUSED)}" for m in found.methods if _is_refused(m)]
     blocks += [heading("Refused") + bullets(refused)] if refused else []

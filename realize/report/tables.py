@@ -367,11 +367,29 @@ def tolerance_text(check: Check, design: Design) -> str:
     """How far off the value may be; where a limit of its own rules, that one."""
     if check.tolerance is None:
         return "-"
+    return _limit_text(check, check.tolerance, design) or difference_text(check, check.tolerance)
+
+
+def room_text(check: Check, design: Design) -> str:
+    """How far off the value may be, as a difference; where a limit of its own leaves so much, that one behind it."""
+    if check.tolerance is None:
+        return "-"
+    limit = _limit_text(check, check.tolerance, design)
+    return difference_text(check, check.tolerance) + (f" ({limit})" if limit else "")
+
+
+def difference_text(check: Check, difference: float | None) -> str:
+    """A difference of what a check compares, with its unit."""
+    text = figure(difference)
+    if difference is not None and check.check in _IN_POINTS:
+        return f"{text} point{'' if text == '1' else 's'}"
+    return text if difference is None else f"{text} {check.unit}".strip()
+
+
+def _limit_text(check: Check, tolerance: float, design: Design) -> str:
+    """The limit of a check that is held to one, rather than to a difference."""
     if check.check == "loop sensitivity":
         return f"at most {_loop_limits(design)[1][1]:.3g}"
-    if check.check == "loop phase margin" and check.tolerance < _loop_limits(design)[1][0]:
+    if check.check == "loop phase margin" and tolerance < _loop_limits(design)[1][0]:
         return f"at least {_loop_limits(design)[0]:.3g} deg"
-    tolerance = figure(check.tolerance)
-    if check.check in _IN_POINTS:
-        return f"{tolerance} point{'' if tolerance == '1' else 's'}"
-    return f"{tolerance} {check.unit}".strip()
+    return ""

@@ -91,7 +91,8 @@ def compare_text(comparison: Comparison) -> str:
         blocks.append(heading("Refused") + bullets(f"{m.method}: {m.refused}" for m in refused))
     if comparison.closest and comparison.closest.refused is None:
         blocks.append(_checks_block(comparison.closest, comparison.design))
-    if comparison.design.method == "auto" and comparison.recommended:
+    # What is chosen for the nominal values need not suit the points of a schedule.
+    if comparison.design.method == "auto" and comparison.recommended and comparison.design.schedule is None:
         blocks.append(pin_text(comparison.recommended))
     return "\n".join(blocks)
 

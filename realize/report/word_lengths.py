@@ -6,6 +6,7 @@ from realize.algebra.expression import exact_text
 from realize.algebra.irrational import pi
 from realize.arithmetic.integer import IntegerRealization
 from realize.arithmetic.integer.quiet import Quiet, SectionCycles
+from realize.design.schedule import nominal_note
 from realize.quantity import format_engineering
 from realize.report.documents import Document, check_document
 from realize.report.documents import heading as document_heading
@@ -45,7 +46,7 @@ def words_text(found: Words) -> str:
     rows = [["yes" if row.acceptable else "no", *_cells(row)] for row in found.rows]
     blocks = [
         wrapped(f"{'yes' if found.recommended else 'no'}: {design.name}: {_answer(found)}."),
-        wrapped(setting, indent="  "),
+        "".join(wrapped(line, indent="  ") for line in (setting, *nominal_note(design))),
         figures_table(head, rows, first=2) + wrapped(_KEY),
         heading("Shortest words") + bullets(_needs(each) for each in found.structures),
     ]
@@ -53,7 +54,9 @@ def words_text(found: Words) -> str:
     reasons += [f"{name}: {reason}" for name, reason in found.refused.items()]
     blocks += [heading("Why not") + bullets(reasons)] if reasons else []
     blocks.append(heading("In floating point") + bullets(_float_words(each) for each in found.floats))
-    blocks += [heading("To take it, in the design file") + _lines_to_add(found)] if found.recommended else []
+    # What is chosen for the nominal values need not suit the points of a schedule.
+    if found.recommended and design.schedule is None:
+        blocks.append(heading("To take it, in the design file") + _lines_to_add(found))
     return "\n".join(blocks)
 
 
