@@ -16,7 +16,15 @@ from realize.page.blocks import Page, Section, Table, pairs
 from realize.page.drawings import drawings, window_drawing
 from realize.page.known import Known
 from realize.quantity import format_engineering
-from realize.report.scheduled import schedule_rows, schedule_sentences, schedule_title, schedule_verdict
+from realize.report.scheduled import (
+    points_key,
+    points_rows,
+    points_title,
+    schedule_rows,
+    schedule_sentences,
+    schedule_title,
+    schedule_verdict,
+)
 from realize.report.sentences import (
     CAUTION,
     accepted_sentences,
@@ -239,8 +247,11 @@ def _schedule(emitted: Emitted) -> list[Section]:
     found = emitted.schedule
     if found is None:
         return []
-    table = Table(schedule_title(found), schedule_rows(found))
-    return [Section("schedule", "Over the schedule", items=tuple(schedule_sentences(found)), tables=(table,))]
+    tables = (
+        Table(schedule_title(found), schedule_rows(found)),
+        Table(points_title(found), points_rows(found), points_key(found)),
+    )
+    return [Section("schedule", "Over the schedule", items=tuple(schedule_sentences(found)), tables=tables)]
 
 
 def _tables_of(record: dict[str, Any]) -> tuple[Table, ...]:
