@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from fractions import Fraction
 from math import pi
 
@@ -99,6 +100,19 @@ def test_frequency_curves_are_those_of_scipy(method: str) -> None:
     assert curves.error_db == pytest.approx(20 * np.log10(np.abs(stored / design)), abs=1e-5)
     assert curves.nyquist_hz == 100
     assert np.abs(np.diff(curves.design_deg)).max() < 20
+
+
+def test_a_zero_that_rounding_moved_outside_the_circle_does_not_turn_the_phase_by_a_whole_turn() -> None:
+    """A notch whose stored zeros lie 1e-7 outside: its phase jumps down by 180 deg where the design's jumps up."""
+    w = 314
+    known = pair([1, 0, w * w], [1, w, w * w], 2000)
+    pulse = known[1]
+    outside = tuple(replace(root, value=root.value * (1 - 1e-7j)) for root in pulse.zeros)
+    moved = replace(pulse, zeros=outside)
+    assert abs(1 + outside[0].value) > 1
+    curves = frequency_curves(known[0], moved)
+    away = np.abs(curves.frequency_hz / (w / (2 * pi)) - 1) > 0.05
+    assert np.abs(curves.stored_deg - curves.design_deg)[away].max() < 20
 
 
 def test_the_plane_shows_where_each_root_went() -> None:

@@ -36,7 +36,8 @@ class FrequencyCurves(NamedTuple):
     ----------
     frequency_hz : array
     design_db, design_deg, stored_db, stored_deg : array
-        Phases unwrapped, that of the stored numbers on the branch nearest to the design's at the lowest frequency.
+        Phases unwrapped, that of the stored numbers on the branch nearest to the design's at every frequency: which way
+        round a zero on the axis it turns depends on the last bit.
     error_db, error_deg : array
         Stored less design.
     band_hz, nyquist_hz : float
@@ -60,17 +61,15 @@ def frequency_curves(reference: ContinuousReference, stored: PulseTransferFuncti
     w = _frequencies(reference, stored, nyquist)
     design_size, design_phase = Continuous(reference.transfer).at(w)
     stored_size, stored_phase = Sampled(stored).at(w)
-    design_deg, stored_deg = np.degrees(design_phase), np.degrees(stored_phase)
     finite = np.isfinite(design_size) & np.isfinite(stored_size)
-    first = int(np.argmax(finite))
-    stored_deg = stored_deg - 360 * np.round((stored_deg[first] - design_deg[first]) / 360)
-    error_deg = np.remainder(stored_deg - design_deg + 180, 360) - 180
+    design_deg = np.degrees(design_phase)
+    error_deg = np.remainder(np.degrees(stored_phase) - design_deg + 180, 360) - 180
     return FrequencyCurves(
         w[finite] / (2 * pi),
         _DB * design_size[finite],
         design_deg[finite],
         _DB * stored_size[finite],
-        stored_deg[finite],
+        (design_deg + error_deg)[finite],
         _DB * (stored_size - design_size)[finite],
         error_deg[finite],
         band / (2 * pi),
