@@ -21,7 +21,7 @@ from realize.design.model import Design, PlantTable, Schedule
 from realize.design.plant import read_plant
 from realize.design.tables import MAX_UNIT, checked_name
 from realize.design.values import Values
-from realize.errors import RealizeError
+from realize.errors import RealizeError, Refused
 
 #: Most operating points: a table that a person could still look over, and some minutes of checks.
 MAX_POINTS = 4096
@@ -274,6 +274,37 @@ def design_at(design: Design, place: Place) -> Design:
     except RealizeError as error:
         raise placed(error, schedule, place) from None
     return replace(design, transfer=controller.transfer, values=controller.values, plant=plant, schedule=None)
+
+
+def refuse_vanishing(design: Design, place: Place) -> None:
+    """Refuse a place that is improper because a scheduled value is 0 there: a roll-off for all places is no remedy.
+
+    Raises
+    ------
+    Refused
+        When with another of its values the transfer function has as many poles as zeros.
+    """
+    schedule = design.schedule
+    assert schedule is not None
+    own, _ = values_at(schedule, place)
+    written = schedule.written.get("design", {})
+
+    def is_proper(values: Mapping[str, Fraction]) -> bool:
+        table = _replaced(written, values, design.source, "design")
+        return read_controller(table, {}).transfer.relative_degree >= 0
+
+    others = {name: next((n for n in numbers if n), None) for name, numbers in schedule.values if own[name] == 0}
+    if design.rolloff is not None or not others or is_proper(own):
+        return
+    causes = [name for name, other in others.items() if other is not None and is_proper({**own, name: other})]
+    if causes:
+        raise Refused(
+            f"[schedule.values] {causes[0]}",
+            f"0 at {place_text(schedule, place)}, where the transfer function then has more zeros than poles, which "
+            "nothing can realize",
+            "values with which it has as many poles as zeros, or more, at every point",
+            f"another number than 0 for point {place.point + 1}",
+        )
 
 
 def placed(error: RealizeError, schedule: Schedule, place: Place) -> RealizeError:

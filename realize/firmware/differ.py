@@ -28,6 +28,7 @@ from realize.firmware.changes import (
     value_texts,
 )
 from realize.firmware.recorded import Recorded, read_record, recorded_numbers, recorded_pulse
+from realize.firmware.schedule.changes import others, schedule_changes
 from realize.quantity import format_engineering
 from realize.transfer import PulseTransferFunction
 
@@ -36,7 +37,6 @@ _GROUPS: Mapping[str, tuple[str, ...]] = {
     "Design": ("design", "causal"),
     "Realization": ("method", "structure", "arithmetic"),
     "Coefficients": ("integral", "sections", "direct_gain", "numerators_anew"),
-    "Schedule": ("schedule",),
     "Words": ("signals", "output_error_counts", "quiet"),
     "Loop": ("loop",),
     "Accepted deviations": ("accepted",),
@@ -44,7 +44,7 @@ _GROUPS: Mapping[str, tuple[str, ...]] = {
 }
 
 #: Entries that are compared in their own way.
-_APART = ("schema", "checks", "tool")
+_APART = ("schema", "checks", "tool", "schedule")
 
 #: Units as keys end in them; the longest first.
 _UNITS = {"_rad_s": "rad/s", "_percent": "%", "_deg": "deg", "_db": "dB", "_s": "s"}
@@ -95,7 +95,7 @@ def differ(old_path: str, new_path: str) -> Difference:
         *told["Loop"],
         *_checks(old["checks"], new["checks"]),
         *told["Accepted deviations"],
-        *told["Schedule"],
+        *_schedule(*parts),
         *told["Words"],
         *told["Coefficients"],
         *told["Files"],
@@ -112,6 +112,19 @@ def _told(group: str, keys: Iterable[str], old: Mapping[str, Any], new: Mapping[
     for change in telling(changes(parts[0], parts[1])):
         if not _is_nothing(change.old) or not _is_nothing(change.new):
             yield Row(group, *_words(change, *parts))
+
+
+def _schedule(old: Mapping[str, Any], new: Mapping[str, Any]) -> Iterator[Row]:
+    """Every place of a schedule in words; by keys where one record has none, or one that cannot be understood."""
+    records = [old, new]
+    if all("schedule" in record for record in records):
+        try:
+            yield from [Row("Schedule", *texts) for texts in schedule_changes(old, new)]
+            counts = {kind: min(len(record["schedule"][kind]) for record in records) for kind in ("points", "middles")}
+            records = [{"schedule": others(record["schedule"], counts)} for record in records]
+        except (AttributeError, KeyError, TypeError, ValueError, UnfitError):
+            records = [old, new]
+    yield from _told("Schedule", ("schedule",), *records)
 
 
 def _is_nothing(value: object) -> bool:

@@ -13,20 +13,18 @@ from realize.arithmetic.formats import FORMATS
 from realize.arithmetic.realization import Realization
 from realize.checks import Check
 from realize.design import Accept, Design, Schedule
-from realize.design.schedule import Place, design_at, place_text, placed
+from realize.design.schedule import Place, design_at, placed, refuse_vanishing
 from realize.errors import RealizeError, Refused
 from realize.schedule.attempt import Attempt, LookedAt, attempted, converted, up_to_the_first_out
 from realize.schedule.lookup import breakpoints
 from realize.schedule.points import Judged
+from realize.schedule.refusal import refusal_of
 from realize.schedule.table import Table
-from realize.schedule.worst import Worst, at_place, severity, worst_of
+from realize.schedule.worst import Worst, at_place, worst_of
 from realize.workflow.compare import choose
-from realize.workflow.gate import failures_text, recommendation
+from realize.workflow.gate import recommendation
 from realize.workflow.refusal import refuse_unacceptable
 from realize.workflow.results import Comparison, MethodResult
-
-#: Of all that is out of tolerance, as many are named.
-_MOST_NAMED = 3
 
 
 class Scheduled(NamedTuple):
@@ -116,7 +114,7 @@ def scheduled(design: Design) -> Scheduled:
     attempts = list(_until_good(design, candidates))
     good = attempts[-1]
     if good is None or good.blocking:
-        raise _refusal(schedule, [each for each in attempts if each is not None], candidates)
+        raise refusal_of(schedule, [each for each in attempts if each is not None], candidates)
     return _summed_up(design, comparison, good, candidates)
 
 
@@ -125,6 +123,7 @@ def _first_comparison(design: Design) -> Comparison:
     schedule, first = design.schedule, Place(0)
     assert schedule is not None
     there = design_at(design, first)
+    refuse_vanishing(design, first)
     try:
         comparison = choose(there)
         refuse_unacceptable(comparison)
@@ -198,21 +197,3 @@ def _agreed(accepted: Sequence[tuple[Check, Accept]]) -> tuple[tuple[Check, Acce
         if known is None or (check.difference or 0.0) > (known[0].difference or 0.0):
             worst[check.check] = (check, agreement)
     return tuple(worst.values())
-
-
-def _refusal(schedule: Schedule, attempts: Sequence[Attempt], candidates: Sequence[str]) -> Refused:
-    """Of the first attempt the worst few, and how many others there were."""
-    first = attempts[0]
-    blocking = sorted(first.blocking, key=lambda each: severity(each.check), reverse=True)
-    named = [f"at {place_text(schedule, each.place)} {failures_text([each.check])}" for each in blocking[:_MOST_NAMED]]
-    more = f"; and {len(blocking) - _MOST_NAMED} more" if len(blocking) > _MOST_NAMED else ""
-    count = len(candidates) - 1
-    others = f"; so {'is another method' if count == 1 else f'are {count} other methods'}" if count else ""
-    between = any(each.place.share for each in blocking)
-    return Refused(
-        "checks",
-        f"{first.method} ({first.structure}) is out of tolerance: {'; '.join(named)}{more}{others}",
-        "every check within its tolerance at every point, and between them on the grid",
-        ("another point where it is out, between the two; or " if between else "")
-        + "another method, a higher sample rate, or [[accept]] with a limit and a reason",
-    )

@@ -9,7 +9,7 @@ from realize.arithmetic.grouping import split_integral
 from realize.arithmetic.realization import Realization
 from realize.checks import Check, ContinuousReference
 from realize.design import Accept, Design, require_period
-from realize.design.schedule import Place, design_at, place_text, placed
+from realize.design.schedule import Place, design_at, place_text, placed, refuse_vanishing
 from realize.errors import RealizeError, Refused
 from realize.methods import Discretization
 from realize.schedule.layout import Numbers
@@ -83,6 +83,7 @@ def prepared(design: Design, place: Place, method: str) -> Prepared:
     schedule = design.schedule
     assert schedule is not None
     there = design_at(design, place)
+    refuse_vanishing(design, place)
     try:
         causal = make_causal(there, assume=False)
         period_s = require_period(there)

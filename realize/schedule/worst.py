@@ -64,5 +64,5 @@ def severity(check: Check) -> tuple[bool, bool, float]:
 def at_place(schedule: Schedule, each: Worst) -> Check:
     """A check whose reason says where it is so."""
     check = each.check
-    at = f"at {schedule.variable} = {number_text(variable_at(schedule, each.place))}"
+    at = f"at {schedule.variable} = {number_text(variable_at(schedule, each.place))} {schedule.unit}".rstrip()
     return replace(check, reason=f"{at}: {check.reason}" if check.reason else at)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import re
 import tomllib
 from collections.abc import Callable
 from fractions import Fraction
@@ -174,6 +175,13 @@ def test_every_table_has_a_caption_and_headers_with_a_scope() -> None:
         for row in each.find("tbody"):
             assert [cell.tag for cell in row] == ["th", *["td"] * (width - 1)]
             assert row[0].get("scope") == "row"
+
+
+def test_a_check_of_a_schedule_says_where_it_is_worst_with_the_unit_of_the_variable() -> None:
+    html = emit(str(FIXTURES / "sheeter_gap.toml"))._repr_html_()
+    places = re.findall(r"at gap = [0-9.]+[^:<]*", html)
+    assert len(places) > 10
+    assert all(place.endswith(" mm") for place in places)
 
 
 @pytest.mark.parametrize("html", [paragraph(TAGS), items([TAGS]), table(TAGS, [TAGS], [[TAGS, TAGS]])])

@@ -123,7 +123,7 @@ def test_points_too_far_apart_are_refused_with_the_place_between_them() -> None:
     assert "is out of tolerance: at load = 2.5 (between points 2 and 3) pole shift differs by" in far.found
     assert far.found.endswith(" other methods")
     assert "at every point, and between them on the grid" in far.allowed
-    assert far.advice.startswith("another point where it is out, between the two")
+    assert far.advice.startswith("another point between the two where it is out")
     near = scheduled(design("1/(t*s + 1)", {"t": [0.01 * 1.3**k for k in range(9)]}, others="[tolerance]\n"))
     assert near.points[-1].blocking == ()
 
@@ -132,6 +132,28 @@ def test_a_named_method_is_refused_with_the_point_where_it_is_out() -> None:
     error = refused("w/(s + w)", {"w": [450, 500, 520]}, others='[method]\nname = "bilinear"\n', band="90 Hz")
     assert error.found.startswith("bilinear (direct) is out of tolerance: ")
     assert "at load = 3 (point 3) pole shift differs by 2." in error.found
+
+
+PLANT = '[plant]\ntransfer = "1/(s*(0.05*s + 1))"\n'
+
+
+def test_a_loop_that_is_not_stable_at_a_point_is_said_once_and_first() -> None:
+    error = refused("k", {"k": [5, 5000, 6]}, others=PLANT)
+    told = error.found.partition("is out of tolerance: ")[2]
+    assert told.startswith("at load = 2 (point 2) loop stability: the sampled loop is not stable; ")
+    assert told.count("(point 2)") == told.count("loop stability") == 1
+    assert "at load = 1.5 (between points 1 and 2) likewise" in told
+    assert not any(name in told for name in ("phase margin", "sensitivity", "overshoot"))
+    assert "between" not in error.advice
+    assert error.advice.startswith("other values where the loop is not stable")
+
+
+@pytest.mark.parametrize(("values", "number"), [([0.01, 0, 0.02], 2), ([0, 0.01, 0.02], 1)])
+def test_a_value_of_0_that_makes_a_point_improper_is_named(values: list[float], number: int) -> None:
+    error = refused("k + 0.1*s/(t*s + 1)", {"k": [0, 0, 0.1], "t": values})
+    assert error.where == "[schedule.values] t"
+    assert f"0 at load = {number} (point {number})" in error.found
+    assert error.advice == f"another number than 0 for point {number}"
 
 
 def test_a_first_point_without_a_method_is_refused_by_name() -> None:

@@ -59,7 +59,7 @@ def test_the_checks_at_its_root_are_the_worst_of_all_places_and_say_where(emitte
     for check in record["checks"]:
         found = [place["checks"][check["check"]]["difference"] for place in places]
         assert check["difference"] == max(found, key=lambda each: -1.0 if each is None else each)
-        assert check["reason"].startswith("at gap = ")
+        assert re.match(r"at gap = [0-9.]+ mm(: |$)", check["reason"])
     for place in places:
         assert place["worst"]["check"] in place["checks"]
         assert 0 < place["worst"]["share_of_tolerance"] < 1
@@ -163,6 +163,53 @@ def test_a_review_is_told_which_values_and_which_coefficients_changed(written: P
     told = [row.what for row in rows if row.group == "Schedule"]
     assert "point 3, section 1 b0" in told
     assert not any(what.startswith("point 2") for what in told)
+
+
+def test_a_review_is_told_of_figures_by_place_and_name_with_their_units(written: Path, tmp_path: Path) -> None:
+    document = json.loads(written.read_text())
+    points = document["schedule"]["points"]
+    name, found = "converter step", points[0]["checks"]["converter step"]["difference"]
+    points[0]["checks"][name]["difference"] = 2.5
+    points[1]["checks"]["loop overshoot"]["verdict"] = "out"
+    points[2]["loop"][0]["phase_margin_deg"] *= 1 + 1e-7
+    points[3]["loop"][0]["phase_margin_deg"] = 45.5
+    document["schedule"]["middles"][0]["checks"][name]["difference"] = None
+    document["schedule"]["loop"]["worst"]["maximum_sensitivity"] |= {"value": 1.5, "at": "5"}
+    document["schedule"]["more"] = 1
+    new = tmp_path / written.name
+    new.write_text(json.dumps(document))
+    told = {row.what: (row.old, row.new) for row in differ(str(written), str(new)).rows}
+    assert told.pop("point 1, gap 2 mm: converter step") == (f"{found:.5g} % off", "2.5 % off")
+    old, now = told.pop("point 2, gap 5 mm: loop overshoot")
+    assert now == f"out {old}"
+    assert old.endswith(" points off")
+    assert told.pop("point 4, gap 30 mm: in the loop, phase margin")[1] == "45.5 deg"
+    assert told.pop("middle 1, gap 3.5 mm: converter step")[1] == "within"
+    assert told.pop("worst maximum sensitivity")[1] == "1.5 at 5 mm"
+    assert told.pop("schedule.more") == ("nothing", "1")
+    assert told == {}
+
+
+def test_a_schedule_that_cannot_be_understood_is_told_by_its_keys(written: Path, tmp_path: Path) -> None:
+    document = json.loads(written.read_text())
+    document["schedule"]["points"][1]["checks"] = 7
+    new = tmp_path / written.name
+    new.write_text(json.dumps(document))
+    (row,) = differ(str(written), str(new)).rows
+    assert (row.what, row.new) == ("schedule.points.2.checks", "7")
+
+
+def test_a_review_is_told_of_points_that_moved_or_came(written: Path, tmp_path: Path) -> None:
+    text = FIXTURE.read_text(encoding="utf-8")
+    longer = text.replace("[2, 5, 12, 30]", "[2, 6, 12, 30, 31]").replace("3.6]", "3.6, 3.6]").replace("15]", "15, 15]")
+    longer = longer.replace("0.077]", "0.077, 0.077]").replace("22, 26]", "22, 26, 26]")
+    (tmp_path / f"{NAME}.toml").write_text(longer)
+    files = emit(load_design(str(tmp_path / f"{NAME}.toml"))).files
+    new = next(path for path in write_all(tmp_path, files) if path.name.endswith(".record.json"))
+    told = {row.what: (row.old, row.new) for row in differ(str(written), str(new)).rows}
+    assert told["point 2: gap"] == ("5 mm", "6 mm")
+    assert told["point 5, gap 31 mm"] == ("none", "there")
+    assert told["middle 4, gap 30.5 mm"] == ("none", "there")
 
 
 def test_a_review_of_a_design_that_got_a_schedule_is_told(written: Path, tmp_path: Path) -> None:
