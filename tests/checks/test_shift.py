@@ -12,9 +12,10 @@ from hypothesis import strategies as st
 from scipy.optimize import linear_sum_assignment
 
 from realize.checks import Check, root_notes
+from realize.checks.assignment import assigned
 from realize.checks.check import Asked
 from realize.checks.modes import logarithm
-from realize.checks.shift import assigned, check_shift
+from realize.checks.shift import check_shift
 from tests.checks.designs import answers, converted, pulse, reference, transfer
 
 _MP = mpmath.mp.clone()

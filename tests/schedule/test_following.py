@@ -8,7 +8,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from realize.schedule.following import assigned, followed
+from realize.schedule.following import followed
 
 PARTS = st.integers(-20, 20)
 NUMBERS = st.builds(complex, PARTS, PARTS)
@@ -32,15 +32,6 @@ def test_no_pairing_moves_the_roots_less(rows: tuple[list[complex], list[complex
     assert sorted(found) == list(range(len(before)))
     least = min(cost(before, after, order) for order in permutations(range(len(before))))
     assert cost(before, after, found) == pytest.approx(least, abs=1e-9)
-
-
-@given(two_rows())
-def test_the_assignment_is_the_least_where_every_root_has_its_own_nearest_too(
-    rows: tuple[list[complex], list[complex]],
-) -> None:
-    before, after = rows
-    costs = [[abs(new - old) for new in after] for old in before]
-    assert cost(before, after, assigned(costs)) == pytest.approx(cost(before, after, followed(before, after)), abs=1e-9)
 
 
 def test_one_root_gives_way_where_two_would_have_the_same() -> None:

@@ -8,8 +8,8 @@ from typing import NamedTuple
 import numpy as np
 
 from realize.checks import ContinuousReference
+from realize.checks.assignment import assigned
 from realize.checks.modes import every
-from realize.checks.shift import assigned
 from realize.transfer import PulseTransferFunction
 
 #: Distance of a root without a partner: above any that two places in the figure can have.
