@@ -5,15 +5,19 @@ from __future__ import annotations
 import os
 import signal
 import threading
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Callable, Collection, Iterator, Sequence
 from concurrent.futures import ProcessPoolExecutor
 from contextlib import contextmanager, suppress
 from functools import partial
 from multiprocessing import active_children
+from multiprocessing.process import BaseProcess
 from typing import TypeVar
 
 Item = TypeVar("Item")
 Answer = TypeVar("Answer")
+
+#: Between two interrupts of a worker that has not ended.
+_AGAIN_S = 0.05
 
 #: Most processes: what every system lets a pool have.
 _MOST_WORKERS = 61
@@ -61,9 +65,8 @@ def side_by_side(
         except BaseException:
             # Whoever stops the run does not want to wait for what is being computed. A terminal interrupts the
             # workers, too; from elsewhere the signal comes to this process alone.
-            for process in set(active_children()) - others:
-                _interrupt(process.pid)
-            pool.shutdown(cancel_futures=True)
+            with _interrupted(set(active_children()) - others):
+                pool.shutdown(cancel_futures=True)
             raise
 
 
@@ -75,6 +78,7 @@ class _Interrupts:
     """
 
     def __init__(self) -> None:
+        self._process = os.getpid()
         self._waiting = False
         self._through = False
         # Handlers are for the first thread alone; and who ignores interrupts, or handles them, goes on to do so.
@@ -104,10 +108,39 @@ class _Interrupts:
             self._through = False
 
     def _note(self, *_: object) -> None:
+        if os.getpid() != self._process:
+            # A worker that has not come to its own handler yet: the signal is for its first job.
+            _stop()
+            return
         self._waiting = True
         if self._through:
             self._through = False
             raise KeyboardInterrupt
+
+
+@contextmanager
+def _interrupted(workers: Collection[BaseProcess]) -> Iterator[None]:
+    """Interrupt workers again and again until what is done meanwhile is over.
+
+    Once is not enough: a process forgets the signals that reach it before it has run at all.
+    """
+    over = threading.Event()
+
+    def tell() -> None:
+        while True:
+            for process in workers:
+                if process.exitcode is None:
+                    _interrupt(process.pid)
+            if over.wait(_AGAIN_S):
+                return
+
+    teller = threading.Thread(target=tell, daemon=True)
+    teller.start()
+    try:
+        yield
+    finally:
+        over.set()
+        teller.join()
 
 
 def _interrupt(worker: int | None) -> None:

@@ -107,3 +107,22 @@ def test_who_ignores_interrupts_goes_on_to_do_so() -> None:
         assert side_by_side(square, range(4), 2, interrupt_this_process) == [0, 1, 4, 9]
     finally:
         signal.signal(signal.SIGINT, before)
+
+
+def test_a_worker_that_forgot_its_first_interrupt_is_told_again(monkeypatch: pytest.MonkeyPatch) -> None:
+    """As one does that was not run yet when it came."""
+    sent: list[int | None] = []
+
+    def forgotten_at_first(worker: int | None) -> None:
+        sent.append(worker)
+        if sent.count(worker) > 1 and worker is not None:
+            os.kill(worker, signal.SIGINT)
+
+    def give_up(answers: Iterator[int]) -> Iterator[int]:
+        yield next(answers)
+        raise StopError
+
+    monkeypatch.setattr("realize.parallel._interrupt", forgotten_at_first)
+    with pytest.raises(StopError):
+        side_by_side(for_ever, [0, 1, 1], 2, give_up)
+    assert max(map(sent.count, sent)) > 1
