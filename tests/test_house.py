@@ -12,7 +12,7 @@ PACKAGE = Path(realize.__file__).parent
 
 #: From the bottom up; modules of one layer may import each other.
 LAYERS = (
-    ("errors", "parallel", "version"),
+    ("errors", "extras", "parallel", "version"),
     ("algebra",),
     ("transfer", "quantity", "schemas"),
     ("design", "starter"),

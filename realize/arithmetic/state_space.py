@@ -191,10 +191,6 @@ def _adjugate(A: Integers) -> tuple[list[Integers], list[int]]:
     return adjugate, bottom
 
 
-def _identity(n: int) -> Matrix:
-    return tuple(tuple(Fraction(i == j) for j in range(n)) for i in range(n))
-
-
 def _multiply(first: Integers, second: Integers) -> Integers:
     columns = list(zip(*second, strict=True))
     return tuple(tuple(sum(map(mul, row, column)) for column in columns) for row in first)

@@ -1,12 +1,8 @@
-"""The packages that only the page needs, and what to say where they are not installed."""
+"""The packages that only the page needs."""
 
 from __future__ import annotations
 
-from importlib.util import find_spec
-
-from realize.errors import RealizeError
-
-INSTALL = 'pip install "realize[report]"'
+from realize.extras import require as require_packages
 
 
 def require() -> None:
@@ -17,11 +13,5 @@ def require() -> None:
     RealizeError
         When one of them is missing.
     """
-    missing = [name for name in ("matplotlib", "jinja2") if find_spec(name) is None]
-    if missing:
-        raise RealizeError(
-            "realize report",
-            f"{' and '.join(missing)} not installed",
-            "the library that draws (matplotlib) and the one that fills the page (jinja2)",
-            INSTALL,
-        )
+    purpose = "the library that draws (matplotlib) and the one that fills the page (jinja2)"
+    require_packages("realize report", ("matplotlib", "jinja2"), purpose, "report")

@@ -1,12 +1,10 @@
-"""The packages that only a trial needs, and what to say where they are not installed."""
+"""The packages that only a trial needs."""
 
 from __future__ import annotations
 
-from importlib.util import find_spec
+from realize.extras import require as require_packages
 
-from realize.errors import RealizeError
-
-INSTALL = 'pip install "realize[target]"'
+_PURPOSE = "the compiler (ziglang), the emulator (unicorn) and the reader of its programs (pyelftools)"
 
 
 def require(*packages: str) -> None:
@@ -17,11 +15,4 @@ def require(*packages: str) -> None:
     RealizeError
         When one of them is missing.
     """
-    missing = [name for name in packages if find_spec(name) is None]
-    if missing:
-        raise RealizeError(
-            "realize trial",
-            f"{' and '.join(missing)} not installed",
-            "the compiler (ziglang), the emulator (unicorn) and the reader of its programs (pyelftools)",
-            INSTALL,
-        )
+    require_packages("realize trial", packages, _PURPOSE, "target")

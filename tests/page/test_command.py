@@ -78,7 +78,7 @@ def test_bad_input_is_answered_and_nothing_is_written(
 def test_missing_packages_are_named_with_the_line_that_installs_them(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
 ) -> None:
-    monkeypatch.setattr("realize.page.extra.find_spec", lambda name: None)
+    monkeypatch.setattr("realize.extras.find_spec", lambda name: None)
     assert run("report", SIEVE, "--out", str(tmp_path / "page.html")) == 2
     said = capsys.readouterr().err
     assert "matplotlib and jinja2 not installed" in said

@@ -11,7 +11,7 @@ from pathlib import Path
 import pytest
 
 from realize.errors import RealizeError
-from realize.trial import extra, native
+from realize.trial import native
 from realize.trial.outcome import Difference
 from realize.trial.run import trial
 from tests.trial.by_hand import write
@@ -263,14 +263,14 @@ def test_one_command_does_not_compile_for_all(tmp_path: Path) -> None:
 def test_without_the_packages_the_line_that_installs_them(
     missing: str, on: str, compiler: str | None, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    monkeypatch.setattr(extra, "find_spec", lambda name: None if name == missing else object())
+    monkeypatch.setattr("realize.extras.find_spec", lambda name: None if name == missing else object())
     with pytest.raises(RealizeError, match=missing) as refused:
         trial(write(tmp_path, IDENTITY, [(1, 1)]), on, compiler)
     assert refused.value.advice == 'pip install "realize[target]"'
 
 
 def test_an_own_compiler_for_this_machine_needs_no_packages(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(extra, "find_spec", lambda name: None)
+    monkeypatch.setattr("realize.extras.find_spec", lambda name: None)
     assert trial(write(tmp_path, IDENTITY, [(1, 1)]), "host", OWN).equal
 
 
